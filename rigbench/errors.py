@@ -1,0 +1,153 @@
+"""Every error of rigbench, one tree.
+
+::
+
+    RigbenchError              exit code 1
+    ├── InputFaults            2  what the user declared is at fault; carries every Fault found
+    ├── LawError                  a law raised an exception; ends as a row, not as an exit
+    ├── EngineError               the physics engine refused or died; ends as a row
+    ├── Stopped                3  a campaign stopped before its end and can be resumed
+    └── StoreError             5  the store or the disk
+        ├── StoreBusy             another process writes to it
+        └── StoreForeign          it belongs to another experiment, or isn't a store at all
+
+Arguments go to ``super().__init__`` and the sentence is built in ``__str__``, so that an error
+survives pickling on its way out of a worker.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from dataclasses import dataclass
+from difflib import get_close_matches
+from pathlib import Path
+
+__all__ = [
+    "EngineError",
+    "Fault",
+    "InputFaults",
+    "LawError",
+    "RigbenchError",
+    "Stopped",
+    "StoreBusy",
+    "StoreError",
+    "StoreForeign",
+    "nearest",
+]
+
+
+def nearest(name: str, valid: Iterable[str]) -> str | None:
+    """Return the valid name closest to ``name``, or None if none resembles it."""
+    found = get_close_matches(name, list(valid), n=1, cutoff=0.55)
+    return found[0] if found else None
+
+
+@dataclass(frozen=True)
+class Fault:
+    """One fault in a file, with its address.
+
+    ``file`` as the user named it; ``line`` from 1, or None where no line can be named; ``key`` the
+    path of keys joined by dots; ``problem`` what is wrong, with the value given; ``expected`` what
+    would be right; ``near`` the nearest valid name.
+    """
+
+    file: str
+    line: int | None
+    key: str
+    problem: str
+    expected: str = ""
+    near: str | None = None
+
+    def __str__(self) -> str:
+        where = self.file if self.line is None else f"{self.file}:{self.line}"
+        text = f"{where}: {self.key}: {self.problem}" if self.key else f"{where}: {self.problem}"
+        if self.expected:
+            text += f"; expected {self.expected}"
+        if self.near is not None:
+            text += f" (did you mean '{self.near}'?)"
+        return text
+
+
+class RigbenchError(Exception):
+    """Root of all errors that rigbench raises on purpose."""
+
+    exit_code = 1
+
+
+class InputFaults(RigbenchError):
+    """The declared input is at fault; ``faults`` holds every fault found, in file order."""
+
+    exit_code = 2
+
+    def __init__(self, faults: Iterable[Fault]) -> None:
+        self.faults: tuple[Fault, ...] = tuple(faults)
+        super().__init__(self.faults)
+
+    def __str__(self) -> str:
+        return "\n".join(str(fault) for fault in self.faults)
+
+    @classmethod
+    def one(
+        cls, file: str | Path, key: str, problem: str, expected: str = "", line: int | None = None
+    ) -> InputFaults:
+        """Build the error of a single fault."""
+        return cls([Fault(str(file), line, key, problem, expected)])
+
+
+class LawError(RigbenchError):
+    """A law raised; ``trace`` is the law's own traceback as text, ``summary`` its last line."""
+
+    def __init__(self, law: str, summary: str, trace: str) -> None:
+        self.law, self.summary, self.trace = law, summary, trace
+        super().__init__(law, summary, trace)
+
+    def __str__(self) -> str:
+        return f"law '{self.law}' raised {self.summary}\n{self.trace}"
+
+
+class EngineError(RigbenchError):
+    """The physics engine refused; ``doing`` says what was asked of it, ``said`` what it answered."""
+
+    def __init__(self, doing: str, said: str) -> None:
+        self.doing, self.said = doing, said
+        super().__init__(doing, said)
+
+    def __str__(self) -> str:
+        return f"the physics engine failed while {self.doing}: {self.said}"
+
+
+class Stopped(RigbenchError):
+    """A campaign stopped before its end; what is done is stored."""
+
+    exit_code = 3
+
+    def __init__(self, done: int, planned: int, resume: str) -> None:
+        self.done, self.planned, self.resume = done, planned, resume
+        super().__init__(done, planned, resume)
+
+    def __str__(self) -> str:
+        return (
+            f"stopped with {self.done} of {self.planned} runs stored; "
+            f"nothing is lost: '{self.resume}' goes on from here"
+        )
+
+
+class StoreError(RigbenchError):
+    """The store can't be read or written; ``problem`` says why and what to do."""
+
+    exit_code = 5
+
+    def __init__(self, path: str, problem: str) -> None:
+        self.path, self.problem = path, problem
+        super().__init__(path, problem)
+
+    def __str__(self) -> str:
+        return f"{self.path}: {self.problem}"
+
+
+class StoreBusy(StoreError):
+    """Another process is writing to the store."""
+
+
+class StoreForeign(StoreError):
+    """The store belongs to another experiment, or the file is no store."""

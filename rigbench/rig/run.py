@@ -1,0 +1,81 @@
+"""The run: one law, one motion, one plant, from start to end, as a value that any worker can do."""
+
+from __future__ import annotations
+
+import hashlib
+import json
+from dataclasses import dataclass, field
+from typing import Any
+
+from rigbench.arm.files import ArmFiles
+from rigbench.arm.mismatch import Mismatch
+from rigbench.laws.registry import LawChoice
+from rigbench.motion.motion import Motion
+
+__all__ = ["NUMERICS", "Rates", "Run"]
+
+NUMERICS = 1
+"""Raised by hand whenever a change of ours alters the numbers that a run yields: stored rows of the
+old number are then not taken for the new. Golden rows in the tests tell when that has happened."""
+
+
+@dataclass(frozen=True)
+class Rates:
+    """How often the law is called and how finely the engine steps [Hz]; physics_hz / control_hz is whole."""
+
+    control_hz: float = 1000.0
+    physics_hz: float = 2000.0
+
+
+@dataclass(frozen=True)
+class Run:
+    """Everything that a run's result depends on, frozen and picklable.
+
+    It carries the texts of arm and law files, so it can be done on a machine that has none of them.
+    ``sources`` are the mismatch sources that act, at ``level``, in the direction of draw number
+    ``draw`` (None where nothing is random). Angles in rad, lengths in m unless the name says otherwise.
+    """
+
+    arm: ArmFiles
+    law: LawChoice
+    motion: Motion
+    rates: Rates
+    gain_pose: tuple[float, ...]
+    settle_band_mm: float
+    seed: int = 0
+    model: ArmFiles | None = None  # what the law believes; None: the arm itself
+    mismatch: Mismatch = field(default_factory=Mismatch)
+    level: float = 0.0
+    sources: tuple[str, ...] = ()
+    draw: int | None = None
+    start_offset: tuple[float, ...] = ()
+    gravity: tuple[float, float, float] = (0.0, 0.0, -9.81)
+
+    def inputs(self) -> dict[str, Any]:
+        """Return the canonical inputs, defaults included, of which the key is the digest.
+
+        Only what acts is in it: a source that is declared but not active here does not count, nor
+        does the seed where nothing is random. So another source, condition, law or draw in the
+        experiment changes no key of the runs that were there before.
+        """
+        acts = self.level > 0 and self.sources != ()
+        return {
+            "numerics": NUMERICS,
+            "arm": self.arm.digest,
+            "model": None if self.model is None else self.model.digest,
+            "law": self.law.inputs(),
+            "motion": self.motion.inputs(),
+            "rates": [self.rates.control_hz, self.rates.physics_hz],
+            "gain_pose": list(self.gain_pose),
+            "settle_band_mm": self.settle_band_mm,
+            "start_offset": list(self.start_offset),
+            "gravity": list(self.gravity),
+            "mismatch": self.mismatch.inputs(self.sources if acts else ()),
+            "level": self.level if acts else 0.0,
+            "draw": [self.seed, self.draw] if acts else None,
+        }
+
+    def key(self) -> str:
+        """Return the run's key: a digest of all that its row depends on (hex, 40 digits)."""
+        text = json.dumps(self.inputs(), sort_keys=True, separators=(",", ":"), allow_nan=False)
+        return hashlib.blake2b(text.encode(), digest_size=20).hexdigest()

@@ -1,0 +1,67 @@
+"""Compile every kernel that a run needs, before workers start."""
+
+from __future__ import annotations
+
+import contextlib
+
+import numpy as np
+
+from rigbench.arm.arm import Arm, Drives
+from rigbench.arm.dynamics import tool_path
+from rigbench.laws.law import CLOCK, Setup
+from rigbench.laws.model import Model
+from rigbench.laws.registry import registered
+from rigbench.rig.drive import ROWS, machine_array, read_state, step_drive
+
+__all__ = ["warm_up"]
+
+
+def warm_up() -> None:
+    """Call every kernel once on an arm of one joint; they are then compiled, here and on disk.
+
+    Seconds when nothing is cached, a fraction of one otherwise. A law whose kernels fail here is left
+    to fail in its own runs, where the reason is kept.
+    """
+    arm = _one_joint()
+    gravity = (0.0, 0.0, -9.81)
+    model, io, machine = Model(arm, gravity), np.zeros((ROWS, 1)), machine_array(arm, 1e-3)
+    read_state(machine, io)
+    step_drive(model.chain, machine, io)
+    tool_path(model.chain, np.zeros((1, 1)))
+    limits = arm.drives.torque_limit, arm.drives.speed_limit
+    setup = Setup(arm.joints, model, 1000.0, np.zeros(1), *limits)
+    model.inverse_dynamics(*np.zeros((3, 1)))
+    for entry in registered().laws.values():
+        with contextlib.suppress(Exception):
+            law = entry.cls()
+            law.start(setup)
+            compiled = law.compiled()
+            if compiled is not None:
+                seen, held = io[: CLOCK + 1], np.zeros(compiled.held_size)
+                own = np.ascontiguousarray(compiled.own)
+                if compiled.model_term is not None:
+                    compiled.model_term(seen, held, model.chain, own)
+                compiled.torque(seen, held, model.chain, own)
+
+
+def _one_joint() -> Arm:
+    zero, one = np.zeros(1), np.ones(1)
+    drives = Drives(
+        gear_ratio=one, rotor_inertia=zero, viscous=zero, coulomb=one, static=one, stribeck_speed=one,
+        torque_limit=one, speed_limit=one, torque_lag=zero,
+    )  # fmt: skip
+    return Arm(
+        name="one joint",
+        joints=("joint",),
+        links=("link",),
+        kinds=zero,
+        rotation=np.eye(3)[None],
+        position=np.zeros((1, 3)),
+        axis=np.array([[0.0, 0.0, 1.0]]),
+        parameters=np.array([[1.0, 0, 0, 0, 1, 0, 1, 0, 0, 1]]),
+        tool_rotation=np.eye(3),
+        tool_position=np.zeros(3),
+        lower=-one,
+        upper=one,
+        drives=drives,
+    )

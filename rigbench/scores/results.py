@@ -1,0 +1,134 @@
+"""The results of a campaign, as everything that reports them reads them."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+
+__all__ = ["Cell", "Column", "LawStanding", "Measure", "MotionCell", "Results", "Tolerance", "Tolerated"]
+
+
+@dataclass(frozen=True)
+class Tolerance:
+    """The limits that a run must keep, each 'at most', and the share of draws that must keep them.
+
+    ``limits`` maps a score's name (tool_peak_mm, settle_ms, joint_peak_deg.j1 ...) to its limit in
+    the unit that the name carries.
+    """
+
+    limits: Mapping[str, float]
+    required_share: float = 0.95
+
+
+@dataclass(frozen=True)
+class Column:
+    """A condition: its name, its level (None for nominal's absence of one), whether draws differ in it.
+
+    ``ladder`` is true for the columns in which all sources act together (and for nominal, level 0):
+    they carry the tolerated level.
+    """
+
+    name: str
+    level: float | None
+    random: bool
+    ladder: bool
+
+
+@dataclass(frozen=True)
+class Measure:
+    """Median and 95th percentile of a score over draws, each with its 95 % interval.
+
+    Values may be inf; ``p95_high`` is inf where the draws don't reach. In a cell where nothing is
+    random all six are the one exact value.
+    """
+
+    median: float
+    median_low: float
+    median_high: float
+    p95: float
+    p95_low: float
+    p95_high: float
+
+
+@dataclass(frozen=True)
+class MotionCell:
+    """One motion's part of a cell."""
+
+    passed: int
+    draws: int
+    measures: Mapping[str, Measure]
+
+
+@dataclass(frozen=True)
+class Cell:
+    """One law under one condition.
+
+    ``draws`` is the number of draws that count (every motion has a machine's verdict), ``incomplete``
+    those that don't yet or can't, ``passed`` those that keep every motion's tolerance. ``verdict`` is
+    'keeps', 'misses' or 'open'; without a tolerance it is '' and the shares are None.
+    """
+
+    sheet: str
+    law: str
+    condition: str
+    level: float | None
+    draws: int
+    incomplete: int
+    passed: int
+    pass_share: float | None
+    pass_low: float | None
+    pass_high: float | None
+    verdict: str
+    measures: Mapping[str, Measure]  # per score, the worst motion of each draw
+    motions: Mapping[str, MotionCell]
+    best: bool = False  # better than every other law of its column beyond the interval
+    unfinished: int = 0  # of the draws that count, those in which some motion did not finish
+
+
+@dataclass(frozen=True)
+class Tolerated:
+    """Tolerated level: ``low`` shown to keep, ``high`` shown to miss (inf: none was), ``value`` between.
+
+    ``value`` is None where the pass share does not cross the required share within the levels run.
+    """
+
+    value: float | None
+    low: float
+    high: float
+
+
+@dataclass(frozen=True)
+class LawStanding:
+    """One law across the columns."""
+
+    sheet: str
+    law: str
+    tolerated: Tolerated | None  # None without a tolerance
+
+
+@dataclass(frozen=True)
+class Results:
+    """Everything that the matrix, the terminal and the JSON show."""
+
+    title: str
+    arm: str
+    motions: tuple[str, ...]
+    tolerance: Tolerance | None
+    draws: int
+    sheets: tuple[str, ...]  # ('',) where nothing is swept
+    laws: tuple[str, ...]
+    columns: tuple[Column, ...]
+    cells: tuple[Cell, ...]  # every sheet x law x column, in that order
+    standings: tuple[LawStanding, ...]
+    planned: int
+    done: int
+    failed: int
+    advice: str
+    break_even: tuple[Mapping[str, object], ...] = field(default_factory=tuple)
+
+    def cell(self, sheet: str, law: str, condition: str) -> Cell:
+        """Return the one cell of that name; KeyError if there is none."""
+        for cell in self.cells:
+            if (cell.sheet, cell.law, cell.condition) == (sheet, law, condition):
+                return cell
+        raise KeyError((sheet, law, condition))
