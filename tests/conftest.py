@@ -26,7 +26,9 @@ def build_drives(n: int, **given: Any) -> Drives:
     return Drives(**{name: np.broadcast_to(np.asarray(v, float), (n,)).copy() for name, v in values.items()})
 
 
-def build_arm(parameters: Any, position: Any, axis: Any, kinds: Any = None, tool: Any = (0, 0, 0), **drives: Any) -> Arm:
+def build_arm(
+    parameters: Any, position: Any, axis: Any, kinds: Any = None, tool: Any = (0, 0, 0), **drives: Any
+) -> Arm:
     """A chain whose joint frames are all parallel at q = 0, without position limits."""
     parameters = np.atleast_2d(np.asarray(parameters, float))
     n = len(parameters)
@@ -66,7 +68,11 @@ def published_two_link() -> Callable[..., Arm]:
     def build(scale: float = 1.0, **drives: Any) -> Arm:
         links = [bar(6.5225, 0.0983, 0.1213), bar(2.0458, 0.0229, 0.0116)]
         return build_arm(
-            scale * np.array(links), [[0, 0, 0], [0, 0, -0.26]], [[0, -1, 0], [0, -1, 0]], tool=(0, 0, -0.26), **drives
+            scale * np.array(links),
+            [[0, 0, 0], [0, 0, -0.26]],
+            [[0, -1, 0], [0, -1, 0]],
+            tool=(0, 0, -0.26),
+            **drives,
         )
 
     return build

@@ -18,12 +18,12 @@ from rigbench.arm.kernel import kernel
 
 __all__ = [
     "bias_torque",
+    "composite_inertia",
     "forward_kinematics",
     "gravity_torque",
     "inverse_dynamics",
     "mass_matrix",
     "newton_euler",
-    "composite_inertia",
     "place",
     "tool_jacobian",
     "tool_path",
@@ -55,9 +55,7 @@ def place(chain: Floats, q: Floats, placed: Floats) -> None:
 
 
 @kernel
-def newton_euler(
-    chain: Floats, placed: Floats, v: Floats, a: Floats, turned: bool, tau: Floats
-) -> None:
+def newton_euler(chain: Floats, placed: Floats, v: Floats, a: Floats, turned: bool, tau: Floats) -> None:
     """Fill ``tau`` (n,) with the inverse dynamics at the placement ``placed``.
 
     ``turned`` False leaves out ``a`` (taken as zero). Gravity enters as an upward acceleration of the base.
@@ -101,7 +99,11 @@ def newton_euler(
         force[i, 0] = m * ax + by * cz - bz * cy + wy * uz - wz * uy
         force[i, 1] = m * ay + bz * cx - bx * cz + wz * ux - wx * uz
         force[i, 2] = m * az + bx * cy - by * cx + wx * uy - wy * ux
-        hx, hy, hz = ixx * wx + ixy * wy + ixz * wz, ixy * wx + iyy * wy + iyz * wz, ixz * wx + iyz * wy + izz * wz
+        hx, hy, hz = (
+            ixx * wx + ixy * wy + ixz * wz,
+            ixy * wx + iyy * wy + iyz * wz,
+            ixz * wx + iyz * wy + izz * wz,
+        )
         force[i, 3] = ixx * bx + ixy * by + ixz * bz + wy * hz - wz * hy + cy * az - cz * ay
         force[i, 4] = ixy * bx + iyy * by + iyz * bz + wz * hx - wx * hz + cz * ax - cx * az
         force[i, 5] = ixz * bx + iyz * by + izz * bz + wx * hy - wy * hx + cx * ay - cy * ax
@@ -141,7 +143,11 @@ def composite_inertia(chain: Floats, placed: Floats, mass: Floats) -> None:
         zx, zy, zz = chain[i, 13], chain[i, 14], chain[i, 15]
         if chain[i, 0] == 0.0:
             fx, fy, fz = zy * cz - zz * cy, zz * cx - zx * cz, zx * cy - zy * cx
-            gx, gy, gz = ixx * zx + ixy * zy + ixz * zz, ixy * zx + iyy * zy + iyz * zz, ixz * zx + iyz * zy + izz * zz
+            gx, gy, gz = (
+                ixx * zx + ixy * zy + ixz * zz,
+                ixy * zx + iyy * zy + iyz * zz,
+                ixz * zx + iyz * zy + izz * zz,
+            )
             mass[i, i] = zx * gx + zy * gy + zz * gz
         else:
             fx, fy, fz = m * zx, m * zy, m * zz
@@ -171,9 +177,21 @@ def composite_inertia(chain: Floats, placed: Floats, mass: Floats) -> None:
             r6, r7, r8 = placed[i, 6], placed[i, 7], placed[i, 8]
             dx, dy, dz = r0 * cx + r1 * cy + r2 * cz, r3 * cx + r4 * cy + r5 * cz, r6 * cx + r7 * cy + r8 * cz
             # I R^T, then R (I R^T)
-            a00, a01, a02 = ixx * r0 + ixy * r1 + ixz * r2, ixx * r3 + ixy * r4 + ixz * r5, ixx * r6 + ixy * r7 + ixz * r8
-            a10, a11, a12 = ixy * r0 + iyy * r1 + iyz * r2, ixy * r3 + iyy * r4 + iyz * r5, ixy * r6 + iyy * r7 + iyz * r8
-            a20, a21, a22 = ixz * r0 + iyz * r1 + izz * r2, ixz * r3 + iyz * r4 + izz * r5, ixz * r6 + iyz * r7 + izz * r8
+            a00, a01, a02 = (
+                ixx * r0 + ixy * r1 + ixz * r2,
+                ixx * r3 + ixy * r4 + ixz * r5,
+                ixx * r6 + ixy * r7 + ixz * r8,
+            )
+            a10, a11, a12 = (
+                ixy * r0 + iyy * r1 + iyz * r2,
+                ixy * r3 + iyy * r4 + iyz * r5,
+                ixy * r6 + iyy * r7 + iyz * r8,
+            )
+            a20, a21, a22 = (
+                ixz * r0 + iyz * r1 + izz * r2,
+                ixz * r3 + iyz * r4 + izz * r5,
+                ixz * r6 + iyz * r7 + izz * r8,
+            )
             dot = 2.0 * (px * dx + py * dy + pz * dz) + m * (px * px + py * py + pz * pz)
             whole[i - 1, 0] += m
             whole[i - 1, 1] += dx + m * px
@@ -258,7 +276,9 @@ def tool_jacobian(chain: Floats, q: Floats) -> Floats:
         axis = np.empty(3)
         for r in range(3):
             axis[r] = (
-                poses[i, 3 * r] * chain[i, 13] + poses[i, 3 * r + 1] * chain[i, 14] + poses[i, 3 * r + 2] * chain[i, 15]
+                poses[i, 3 * r] * chain[i, 13]
+                + poses[i, 3 * r + 1] * chain[i, 14]
+                + poses[i, 3 * r + 2] * chain[i, 15]
             )
         if chain[i, 0] == 0.0:
             dx, dy, dz = poses[n, 9] - poses[i, 9], poses[n, 10] - poses[i, 10], poses[n, 11] - poses[i, 11]

@@ -11,7 +11,7 @@ from rigbench.arm.dynamics import composite_inertia, newton_euler, place
 from rigbench.arm.kernel import kernel
 from rigbench.laws.feedback import model_rate
 from rigbench.laws.gains import PdLaw
-from rigbench.laws.law import A_REF, Q_REF, TAU, V_REF, Compiled, Q, Reference, Setup, V, option
+from rigbench.laws.law import A_REF, Q_REF, TAU, V_REF, Compiled, Q, Reference, V, option
 from rigbench.laws.model import FrictionTerm, friction_torque
 
 __all__ = ["ComputedTorque"]
@@ -29,7 +29,10 @@ class ComputedTorque(PdLaw):
 
     model_hz: float | None = model_rate()
     friction: FrictionTerm = option(
-        "full", "", "believed friction to add, at the reference's velocity", choices=("none", "viscous", "full")
+        "full",
+        "",
+        "believed friction to add, at the reference's velocity",
+        choices=("none", "viscous", "full"),
     )
 
     def model_term(self, t: float, q: Floats, v: Floats, ref: Reference) -> Floats:

@@ -5,7 +5,7 @@ from __future__ import annotations
 from rigbench.arm.arm import Floats
 from rigbench.arm.kernel import kernel
 from rigbench.laws.gains import PdLaw
-from rigbench.laws.law import TAU, V_REF, Q, Q_REF, Reference, V, option
+from rigbench.laws.law import Q_REF, TAU, V_REF, Q, Reference, V, option
 
 __all__ = ["HeldTermLaw", "feedback_on_held", "model_rate"]
 

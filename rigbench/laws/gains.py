@@ -42,7 +42,10 @@ class PdLaw(Law):
     )
 
     friction: FrictionTerm = option(
-        "none", "", "believed friction to add, at the reference's velocity", choices=("none", "viscous", "full")
+        "none",
+        "",
+        "believed friction to add, at the reference's velocity",
+        choices=("none", "viscous", "full"),
     )
 
     @classmethod

@@ -8,8 +8,8 @@ from rigbench.arm.arm import Floats
 from rigbench.arm.dynamics import newton_euler, place
 from rigbench.arm.kernel import kernel
 from rigbench.laws.feedback import HeldTermLaw, feedback_on_held
-from rigbench.laws.law import V_REF, Compiled, Q, Reference, Setup, option
-from rigbench.laws.model import FrictionTerm, friction_torque
+from rigbench.laws.law import V_REF, Compiled, Q, Reference
+from rigbench.laws.model import friction_torque
 
 __all__ = ["GravityCompensated"]
 

@@ -2,13 +2,11 @@
 
 from __future__ import annotations
 
-import numpy as np
-
 from rigbench.arm.arm import Floats
 from rigbench.arm.kernel import kernel
 from rigbench.laws.gains import PdLaw
-from rigbench.laws.law import Q, Q_REF, TAU, V, V_REF, Compiled, Reference, Setup, option
-from rigbench.laws.model import FrictionTerm, friction_torque
+from rigbench.laws.law import Q_REF, TAU, V_REF, Compiled, Q, Reference, V
+from rigbench.laws.model import friction_torque
 
 __all__ = ["IndependentJoint"]
 

@@ -12,7 +12,20 @@ import numpy as np
 from rigbench.arm.arm import Floats
 from rigbench.laws.model import Model
 
-__all__ = ["A_REF", "CLOCK", "Q", "Q_REF", "TAU", "V", "V_REF", "Compiled", "Law", "Reference", "Setup", "option"]
+__all__ = [
+    "A_REF",
+    "CLOCK",
+    "Q_REF",
+    "TAU",
+    "V_REF",
+    "Compiled",
+    "Law",
+    "Q",
+    "Reference",
+    "Setup",
+    "V",
+    "option",
+]
 
 Q, V, Q_REF, V_REF, A_REF, TAU, CLOCK = range(7)
 """Rows of ``io``, shape (7, n), by which a compiled law reads its inputs and writes its torque:
@@ -83,7 +96,8 @@ def option(
     return field(default=default, metadata=about)
 
 
-@dataclass_transform(kw_only_default=True, field_specifiers=(option, dataclasses.field))
+@dataclass_transform(kw_only_default=True, eq_default=False, field_specifiers=(option, dataclasses.field))
+@dataclass(kw_only=True, eq=False)
 class Law:
     """A control law: options as typed fields, ``start`` and ``torque``; the rest is optional.
 
@@ -127,6 +141,3 @@ class Law:
     def compiled(self) -> Compiled | None:
         """Return the law's kernels after ``start``, or None for a law in plain Python."""
         return None
-
-
-dataclass(kw_only=True, eq=False)(Law)

@@ -50,10 +50,11 @@ def options_model(cls: type[Law]) -> type[BaseModel]:
         if field.default_factory is not dataclasses.MISSING:
             default = field.default_factory()
         fields[field.name] = (_annotation(hints[field.name], field), default)
+    validators: dict[str, Any] = {"_conflict": pydantic.model_validator(mode="after")(_conflict_check(cls))}
     return pydantic.create_model(
         f"{cls.__name__}Options",
         __config__=ConfigDict(extra="forbid", allow_inf_nan=False, frozen=True),
-        __validators__={"_conflict": pydantic.model_validator(mode="after")(_conflict_check(cls))},
+        __validators__=validators,
         **fields,
     )
 
@@ -77,7 +78,7 @@ def _annotation(hint: Any, field: dataclasses.Field[Any]) -> Any:
     return Annotated[_bounded(hint, {k: v for k, v in bounds.items() if v is not None}), described]
 
 
-def _bounded(hint: Any, bounds: dict[str, float]) -> Any:
+def _bounded(hint: Any, bounds: dict[str, Any]) -> Any:
     """Put the bounds on every number inside ``hint``, make scalars strict, and read lists as tuples."""
     if hint in (int, float):
         return Annotated[hint, Field(strict=True, **bounds)]
@@ -85,7 +86,8 @@ def _bounded(hint: Any, bounds: dict[str, float]) -> Any:
         return Annotated[hint, Field(strict=True)]
     origin, arguments = get_origin(hint), get_args(hint)
     if origin in (tuple, list, Sequence):
-        return tuple[_bounded(arguments[0], bounds), ...]
+        item: Any = _bounded(arguments[0], bounds)
+        return tuple[item, ...]
     if arguments and type(None) in arguments:
         inner = [argument for argument in arguments if argument is not type(None)]
         if len(inner) == 1:

@@ -3,9 +3,11 @@
 from __future__ import annotations
 
 import ast
+import atexit
 import hashlib
 import importlib.util
 import inspect
+import shutil
 import sys
 import tempfile
 import traceback
@@ -65,7 +67,7 @@ def check_class(cls: object) -> type[Law]:
     for name in ("start", "torque"):
         if getattr(cls, name) is getattr(Law, name):
             raise TypeError(f"{cls.__name__} does not define '{name}'")
-    options_model(cls)
+    options_model(cls)  # type: ignore[arg-type]  # mypy takes the instances' __hash__ for the class's
     return cls
 
 
@@ -112,10 +114,7 @@ class LawChoice:
 
     def inputs(self) -> dict[str, Any]:
         """Return what the run's key covers: name, options and a digest of the law's sources."""
-        if self.files:
-            digest = _digest(self.files)
-        else:
-            digest = _source_digest(registered().laws[self.plugin].cls)
+        digest = _digest(self.files) if self.files else _package_digest(self.plugin)
         return {"law": self.plugin, "options": [list(pair) for pair in self.options], "source": digest}
 
     def law_class(self) -> type[Law]:
@@ -145,9 +144,9 @@ def _digest(files: Files) -> str:
 
 
 @cache
-def _source_digest(cls: type[Law]) -> str:
+def _package_digest(plugin: str) -> str:
     """Digest all sources of the package (or the one module) that a registered law lives in."""
-    module = sys.modules[cls.__module__]
+    module = sys.modules[registered().laws[plugin].cls.__module__]
     path = Path(module.__file__ or "")
     sources = sorted(path.parent.glob("**/*.py")) if module.__package__ else [path]
     return _digest(tuple((str(p.relative_to(path.parent)), p.read_text("utf-8")) for p in sources))
@@ -207,18 +206,21 @@ def _import_files(files: Files, class_name: str, shown: str | None = None) -> ty
     may each have a ``helpers.py``. Importing from the carried texts, on every machine alike, is what
     makes the key's digest the truth about what ran.
     """
-    holder = tempfile.TemporaryDirectory(prefix="rigbench-law-")
-    folder = Path(holder.name)
+    folder = Path(tempfile.mkdtemp(prefix="rigbench-law-"))
+    atexit.register(shutil.rmtree, folder, ignore_errors=True)  # till then: tracebacks and late imports
     for name, text in files:
         (folder / name).parent.mkdir(parents=True, exist_ok=True)
         (folder / name).write_text(text, "utf-8")
     shown = shown or files[0][0]
     module = _execute(folder / files[0][0], f"rigbench_law_{_digest(files)}", shown)
-    vars(module)["_rigbench_folder"] = holder  # lives as long as the module: tracebacks and late imports
     found = getattr(module, class_name, None)
     if found is None:
-        names = [n for n, v in vars(module).items() if inspect.isclass(v) and issubclass(v, Law) and v is not Law]
-        raise InputFaults.one(shown, class_name, "no such class in this file", f"one of {names}" if names else "a Law")
+        names = [
+            n for n, v in vars(module).items() if inspect.isclass(v) and issubclass(v, Law) and v is not Law
+        ]
+        raise InputFaults.one(
+            shown, class_name, "no such class in this file", f"one of {names}" if names else "a Law"
+        )
     try:
         return check_class(found)
     except TypeError as problem:

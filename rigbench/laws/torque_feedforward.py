@@ -8,7 +8,7 @@ from rigbench.arm.arm import Floats
 from rigbench.arm.dynamics import newton_euler, place
 from rigbench.arm.kernel import kernel
 from rigbench.laws.feedback import HeldTermLaw, feedback_on_held
-from rigbench.laws.law import A_REF, Q_REF, V_REF, Compiled, Reference, Setup, option
+from rigbench.laws.law import A_REF, Q_REF, V_REF, Compiled, Reference, option
 from rigbench.laws.model import FrictionTerm, friction_torque
 
 __all__ = ["TorqueFeedforward"]
@@ -24,7 +24,10 @@ class TorqueFeedforward(HeldTermLaw):
     """
 
     friction: FrictionTerm = option(
-        "full", "", "believed friction to add, at the reference's velocity", choices=("none", "viscous", "full")
+        "full",
+        "",
+        "believed friction to add, at the reference's velocity",
+        choices=("none", "viscous", "full"),
     )
 
     def model_term(self, t: float, q: Floats, v: Floats, ref: Reference) -> Floats:

@@ -15,6 +15,8 @@ class Motion(Protocol):
     Positions are in rad (m for a prismatic joint), one column per joint in the chain's order.
     """
 
+    def __hash__(self) -> int: ...
+
     @property
     def duration_s(self) -> float:
         """Time from the first point to the end of the last rest [s]."""

@@ -12,6 +12,10 @@ from rigbench.arm.arm import Floats
 
 __all__ = ["ViaMotion"]
 
+ARRIVED = 1e-9
+"""Share of a leg before its end that counts as its end, so that rounding in t leaves no trace in a rest;
+the position is the same in double precision there, as s differs from 1 by 1e-26."""
+
 
 @dataclass(frozen=True)
 class ViaMotion:
@@ -68,6 +72,7 @@ class ViaMotion:
         # A time a rounding error short of a leg's start falls into the leg before it, at x = 1: the same.
         leg = np.minimum((t / period).astype(int), self._legs - 1)
         x = np.clip((t - leg * period) / self._leg, 0.0, 1.0)[:, None]
+        x = np.where(x > 1 - ARRIVED, 1.0, x)
         start, end = points[leg], points[leg + 1]
         step = end - start
         s = x**3 * (10 + x * (6 * x - 15))

@@ -19,11 +19,12 @@ Left out: the rotor's gyroscopic coupling to the other links, of order 1/G.
 from __future__ import annotations
 
 import numpy as np
+from numpy.typing import NDArray
 
 from rigbench.arm.arm import Arm, Floats
 from rigbench.arm.dynamics import composite_inertia, newton_euler, place
 from rigbench.arm.kernel import kernel
-from rigbench.laws.law import Q, TAU, V
+from rigbench.laws.law import TAU, Q, V
 
 __all__ = [
     "BEYOND_BOUNDS",
@@ -48,7 +49,9 @@ step's acceleration; the sliding sign (-1, 0, 1) of the step before; ``io[ERROR,
 difference between foreseen and actual velocity [rad/s]."""
 ROWS = 16
 
-REFLECTED, VISCOUS, COULOMB, STATIC, STRIBECK, TORQUE_LIMIT, SPEED_LIMIT, LAG, LOWER, UPPER, BOUND, STEP = range(12)
+REFLECTED, VISCOUS, COULOMB, STATIC, STRIBECK, TORQUE_LIMIT, SPEED_LIMIT, LAG, LOWER, UPPER, BOUND, STEP = (
+    range(12)
+)
 """Rows of ``machine`` (12, n); ``machine[STEP, 0]`` is dt, BOUND the speed beyond which a run diverged."""
 
 OK, NOT_FINITE, BEYOND_BOUNDS, HIT_STOP = range(4)
@@ -226,7 +229,14 @@ def solve_friction(
 
 @kernel
 def _solve_block(
-    mass: Floats, momentum: Floats, f: Floats, dt: float, moving: Floats, count: int, factor: Floats, v: Floats
+    mass: Floats,
+    momentum: Floats,
+    f: Floats,
+    dt: float,
+    moving: NDArray[np.int64],
+    count: int,
+    factor: Floats,
+    v: Floats,
 ) -> None:
     """Solve the sliding joints' block by Cholesky; the others' velocities are 0."""
     for a in range(count):

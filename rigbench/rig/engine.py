@@ -6,7 +6,6 @@ import contextlib
 import os
 import tempfile
 from collections.abc import Callable, Iterator, Sequence
-from pathlib import Path
 from typing import Any
 
 import pybullet
@@ -45,7 +44,6 @@ class Engine:
             self._client = int(pybullet.connect(pybullet.DIRECT))
         if self._client < 0:
             raise EngineError("connecting", "no client to be had")
-        self._folder = tempfile.TemporaryDirectory(prefix="rigbench-plant-")
         self.read: Callable[[], Sequence[Sequence[Any]]]
         self.apply: Callable[[list[float]], None]
         self.step: Callable[[], None]
@@ -54,7 +52,6 @@ class Engine:
         """Disconnect."""
         with contextlib.suppress(pybullet.error):
             pybullet.disconnect(self._client)
-        self._folder.cleanup()
 
     def load(self, arm: Arm, q: Floats, v: Floats, gravity: tuple[float, float, float], dt: float) -> None:
         """Load ``arm`` as the plant, at position ``q`` and velocity ``v`` of the engine's own reading.
@@ -62,13 +59,16 @@ class Engine:
         Everything that the engine adds to rigid-body dynamics by default is switched off: joint
         motors, damping of joints and bodies, the clamp on joint speed. Raises EngineError.
         """
-        path = Path(self._folder.name) / "plant.urdf"
-        path.write_text(plant_urdf(arm), "utf-8")
-        try:
-            with _quiet():
-                self._load(str(path), arm.n, q, v, gravity, dt)
-        except pybullet.error as problem:
-            raise EngineError("loading the plant", str(problem)) from None
+        with tempfile.NamedTemporaryFile(
+            "w", prefix="rigbench-plant-", suffix=".urdf", encoding="utf-8"
+        ) as file:
+            file.write(plant_urdf(arm))
+            file.flush()
+            try:
+                with _quiet():
+                    self._load(file.name, arm.n, q, v, gravity, dt)
+            except pybullet.error as problem:
+                raise EngineError("loading the plant", str(problem)) from None
 
     def _load(
         self, path: str, n: int, q: Floats, v: Floats, gravity: tuple[float, float, float], dt: float

@@ -7,12 +7,13 @@ import time
 import traceback
 from collections.abc import Callable
 from functools import lru_cache
+
 import numpy as np
 
 from rigbench.arm.arm import Arm, Floats
 from rigbench.arm.mismatch import believed, plant
-from rigbench.errors import EngineError, LawError
-from rigbench.laws.law import A_REF, CLOCK, Q_REF, TAU, Law, Q, Reference, Setup, V
+from rigbench.errors import LawError
+from rigbench.laws.law import A_REF, CLOCK, Q_REF, TAU, V_REF, Law, Q, Reference, Setup, V
 from rigbench.laws.model import Model
 from rigbench.motion.motion import Motion
 from rigbench.rig.drive import (
@@ -166,10 +167,15 @@ class _Loop:
         io, chain, machine, tick = self.io, self._chain, self._machine, self._tick
         read, apply, step = self._engine.read, self._engine.apply, self._engine.step
         n, count = io.shape[1], len(t)
-        pack, fill = struct.Struct(f"{2 * n}d").pack_into, memoryview(io).cast("B")
+        pack, fill = struct.Struct(f"{2 * n}d").pack_into, io.data.cast("B")
         offset = Q_ENGINE * n * 8
         self.log = log = np.empty((count, 4, n))
-        wanted, state, motor, torque = io[Q_REF : A_REF + 1], io[Q : V + 1], io[MOTOR : LIMITED + 1], io[TAU_ENGINE]
+        wanted, state, motor, torque = (
+            io[Q_REF : A_REF + 1],
+            io[Q : V + 1],
+            io[MOTOR : LIMITED + 1],
+            io[TAU_ENGINE],
+        )
         clock = io[CLOCK]
         substeps, last = range(self._substeps), count - 1
         for k in range(count):
@@ -237,7 +243,9 @@ class _Loop:
                 held = np.asarray(law.model_term(t, q, v, ref), dtype=float)
             torque = np.asarray(law.torque(t, q, v, ref, held), dtype=float)
             if torque.shape != (n,):
-                raise LawError(name, f"a torque of shape {torque.shape}; expected ({n},)", f"at t = {t:.4f} s")
+                raise LawError(
+                    name, f"a torque of shape {torque.shape}; expected ({n},)", f"at t = {t:.4f} s"
+                )
             io[TAU] = torque
 
         return tick

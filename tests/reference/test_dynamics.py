@@ -84,7 +84,9 @@ def test_thousand_states_equal_pinocchio(both):
         close(dynamics.mass_matrix(chain, q), symmetric(pin.crba(model, data, q)), 1e-10)
         close(dynamics.bias_torque(chain, q, v), pin.nle(model, data, q, v), 1e-10)
         gravity = pin.computeGeneralizedGravity(model, data, q)
-        assert np.abs(dynamics.gravity_torque(chain, q) - gravity).max() <= 1e-10 * (1 + np.abs(gravity).max())
+        assert np.abs(dynamics.gravity_torque(chain, q) - gravity).max() <= 1e-10 * (
+            1 + np.abs(gravity).max()
+        )
 
 
 def test_kinematics_equal_pinocchio(both):
@@ -98,11 +100,17 @@ def test_kinematics_equal_pinocchio(both):
             np.testing.assert_allclose(poses[i, 9:], data.oMi[i + 1].translation, atol=1e-12)
             np.testing.assert_allclose(poses[i, :9].reshape(3, 3), data.oMi[i + 1].rotation, atol=1e-12)
         step = 1e-6
-        (before, after), (turned_from, turned_to) = dynamics.tool_path(chain, np.array([q - step * v, q + step * v]))
+        (before, after), (turned_from, turned_to) = dynamics.tool_path(
+            chain, np.array([q - step * v, q + step * v])
+        )
         twist = dynamics.tool_jacobian(chain, q) @ v
-        np.testing.assert_allclose(twist[:3], (after - before) / (2 * step), atol=1e-7 * (1 + np.abs(v).max()) ** 2)
         np.testing.assert_allclose(
-            twist[3:], pin.log3(turned_to @ turned_from.T) / (2 * step), atol=1e-7 * (1 + np.abs(v).max()) ** 2
+            twist[:3], (after - before) / (2 * step), atol=1e-7 * (1 + np.abs(v).max()) ** 2
+        )
+        np.testing.assert_allclose(
+            twist[3:],
+            pin.log3(turned_to @ turned_from.T) / (2 * step),
+            atol=1e-7 * (1 + np.abs(v).max()) ** 2,
         )
 
 
@@ -155,6 +163,8 @@ def test_published_two_link_vector(published_two_link):
     np.testing.assert_allclose(dynamics.mass_matrix(chain, q), mass, atol=1e-9)
     np.testing.assert_allclose(dynamics.gravity_torque(chain, q), [5.381323, -0.135817], atol=1e-6)
     np.testing.assert_allclose(
-        dynamics.bias_torque(chain, q, v) - dynamics.gravity_torque(chain, q), [-0.010398, -0.012583], atol=1e-6
+        dynamics.bias_torque(chain, q, v) - dynamics.gravity_torque(chain, q),
+        [-0.010398, -0.012583],
+        atol=1e-6,
     )
     np.testing.assert_allclose(dynamics.inverse_dynamics(chain, q, v, a), [6.011983, -0.144100], atol=1e-6)
