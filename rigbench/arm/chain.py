@@ -41,7 +41,10 @@ def chain_of(robot: Robot, tool: str, lock: Mapping[str, float]) -> tuple[Chain 
     above = {joint.child: joint for joint in robot.joints.values()}
     path = _path(above, tool)
     moving = [joint for joint in path if joint.movable and joint.name not in lock]
-    faults = [*_path_faults(robot, path, moving, tool), *_branch_faults(robot, path, moving, lock)]
+    if not moving:
+        problem = f"no joint moves between the base link and '{tool}'"
+        return None, [Fault(robot.file, robot.line, "", problem, "a tool at the end of the chain")]
+    faults = [*_path_faults(robot, path, moving), *_branch_faults(robot, path, moving, lock)]
     if faults:
         return None, faults
     return _merge(robot, above, moving, tool, lock)
@@ -80,7 +83,7 @@ def _path(above: Mapping[str, Joint], link: str) -> list[Joint]:
     return path
 
 
-def _path_faults(robot: Robot, path: list[Joint], moving: list[Joint], tool: str) -> Iterable[Fault]:
+def _path_faults(robot: Robot, path: list[Joint], moving: list[Joint]) -> Iterable[Fault]:
     for joint in path:
         if joint.kind in ("floating", "planar"):
             yield robot.fault(
@@ -93,9 +96,6 @@ def _path_faults(robot: Robot, path: list[Joint], moving: list[Joint], tool: str
         elif joint.lower == joint.upper:
             problem = f"its limits are both {joint.lower:g}, so it can't move"
             yield robot.fault(joint, problem, _lock_line([joint]))
-    if not moving:
-        problem = f"no joint moves between the base link and '{tool}'"
-        yield Fault(robot.file, robot.line, "", problem, "a tool at the end of the chain")
 
 
 def _lock_line(joints: Iterable[Joint]) -> str:

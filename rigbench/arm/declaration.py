@@ -14,15 +14,16 @@ from rigbench.yamlfile import Declared
 
 __all__ = ["ArmDeclaration", "DriveDeclaration", "drives_of"]
 
-AtLeastZero = Annotated[float, Field(ge=0)]
-AboveZero = Annotated[float, Field(gt=0)]
+AtLeastZero = Annotated[float, Field(ge=0, le=1e9)]
+AboveZero = Annotated[float, Field(gt=0, le=1e9)]
+Ratio = Annotated[float, Field(gt=0, le=1e6)]
 Name = Annotated[str, Field(min_length=1)]
 
 
 class DriveDeclaration(Declared):
     """Motor, gearbox and friction of one joint. Prismatic joints: m and N for rad and N m."""
 
-    gear_ratio: AboveZero = Field(1.0, description="motor turns per joint turn; 1 for a direct drive")
+    gear_ratio: Ratio = Field(1.0, description="motor turns per joint turn; 1 for a direct drive")
     rotor_inertia: AtLeastZero = Field(0.0, description="kg m^2, on the motor's side")
     motor_torque_limit: AboveZero | None = Field(
         None, description="N m, at the motor: times gear_ratio at the joint"
@@ -99,6 +100,8 @@ def drives_of(declared: Sequence[DriveDeclaration], effort: Floats, velocity: Fl
     )
     static, stribeck_speed = array("static", "stribeck_speed")
     static = np.where(np.isinf(static), coulomb, static)
+    with np.errstate(over="ignore"):  # a gear_ratio next to 0 leaves no limit
+        motor_speed = motor_speed / gear
     return Drives(
         gear_ratio=gear,
         rotor_inertia=rotor,
@@ -107,6 +110,6 @@ def drives_of(declared: Sequence[DriveDeclaration], effort: Floats, velocity: Fl
         static=static + gear * motor_coulomb,
         stribeck_speed=np.where(static > coulomb, stribeck_speed, 1.0),
         torque_limit=np.minimum(np.minimum(torque, gear * motor_torque), effort),
-        speed_limit=np.minimum(np.minimum(speed, motor_speed / gear), velocity),
+        speed_limit=np.minimum(np.minimum(speed, motor_speed), velocity),
         torque_lag=1e-3 * lag,
     )

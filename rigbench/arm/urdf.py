@@ -26,6 +26,9 @@ MOVABLE = ("revolute", "continuous", "prismatic")
 DEEPEST = 60
 """Levels of XML nesting that a file may have; a URDF needs about six."""
 
+LARGEST = 1e9
+"""Magnitude above which a number is taken for a slip; squares of it are still far from overflow."""
+
 ROUNDING = 1e-9
 """Share of a link's inertia by which its published digits may miss the triangle inequality."""
 
@@ -186,6 +189,8 @@ def _parse(file: str, text: str) -> tuple[_Element | None, list[Fault]]:
         parser.Parse(text, True)
     except expat.ExpatError as error:
         return None, [Fault(file, error.lineno, "", f"not valid XML: {expat.ErrorString(error.code)}")]
+    except ValueError as error:  # lone surrogates can't be encoded
+        return None, [Fault(file, None, "", f"not valid XML: {error}")]
     except _RefusedError as error:
         return None, [Fault(file, parser.CurrentLineNumber, "", str(error), "a plain URDF")]
     root = top.children[0]
@@ -276,7 +281,7 @@ class _Reader:
     def _numbers(self, element: _Element, attribute: str, given: str, count: int, key: str) -> Floats:
         words = given.split()
         numbers = [float(word) for word in words if _NUMBER.fullmatch(word)]
-        if len(words) != count or len(numbers) != count or not np.isfinite(numbers).all():
+        if len(words) != count or len(numbers) != count or max(map(abs, numbers)) > LARGEST:
             expected = "a number" if count == 1 else f"{count} numbers"
             self.fault(element, key, f'{attribute}="{given}" of <{element.tag}> is not {expected}', expected)
             return np.zeros(count)

@@ -6,14 +6,16 @@ import math
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 
 from rigbench.arm.arm import PRISMATIC, Arm, Floats
 from rigbench.motion.motion import Motion
 
-__all__ = ["Passing", "check_motion", "passings", "shown"]
+__all__ = ["Passing", "beyond", "check_motion", "passings", "shown", "unit_of"]
 
 SLACK = 1e-9
-"""Share of a limit by which it may be passed: a motion that ends on it is not beyond it by rounding."""
+"""By how much a limit may be passed, in SI units and as a share of it: a motion that stands on its limit
+is not beyond it by rounding."""
 
 
 @dataclass(frozen=True)
@@ -40,9 +42,22 @@ class Passing:
         )
 
 
+def unit_of(arm: Arm, i: int) -> tuple[str, float]:
+    """Return the unit that people read joint i's position in, and how many of it make the SI unit."""
+    return ("mm", 1e3) if arm.kinds[i] == PRISMATIC else ("deg", math.degrees(1))
+
+
+def beyond(excess: Floats, bound: float) -> NDArray[np.intp]:
+    """Return where (indices) a limit is passed by ``excess``, both in SI units; nowhere if it is infinite."""
+    if not math.isfinite(bound):
+        return np.empty(0, np.intp)
+    return np.flatnonzero(excess > SLACK * max(1.0, abs(bound)))
+
+
 def shown(value: float, bound: float) -> tuple[str, str]:
     """Write two numbers with as many digits, at least four, as it takes to tell them apart."""
-    for digits in range(4, 17):
+    whole = max(len(f"{abs(number):.0f}") for number in (value, bound))
+    for digits in range(min(max(4, whole), 16), 17):
         if f"{value:.{digits}g}" != f"{bound:.{digits}g}":
             return f"{value:.{digits}g}", f"{bound:.{digits}g}"
     return f"{value:.17g}", f"{bound:.17g}"
@@ -58,19 +73,17 @@ def passings(motion: Motion, arm: Arm, times: Floats) -> list[Passing]:
         raise ValueError(f"the motion moves {q.shape[1]} joints, the arm has {arm.n}")
     found = []
     for i, joint in enumerate(arm.joints):
-        unit, scale = ("mm", 1e3) if arm.kinds[i] == PRISMATIC else ("deg", math.degrees(1))
+        unit, scale = unit_of(arm, i)
         speed = arm.drives.speed_limit[i]
-        for limit, value, bound, beyond in (
+        for limit, value, bound, excess in (
             ("lower limit", q[:, i], arm.lower[i], arm.lower[i] - q[:, i]),
             ("upper limit", q[:, i], arm.upper[i], q[:, i] - arm.upper[i]),
             ("speed limit", np.abs(v[:, i]), speed, np.abs(v[:, i]) - speed),
         ):
-            if not math.isfinite(bound):
-                continue
-            over = np.flatnonzero(beyond > SLACK * abs(bound))
+            over = beyond(excess, bound)
             if over.size:
                 per = f"{unit}/s" if limit == "speed limit" else unit
-                worst, first = float(value[beyond.argmax()]) * scale, float(times[over[0]])
+                worst, first = float(value[excess.argmax()]) * scale, float(times[over[0]])
                 found.append(Passing(joint, limit, first, worst, float(bound) * scale, per))
     return found
 

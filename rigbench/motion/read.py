@@ -14,7 +14,7 @@ from numpy.typing import NDArray
 
 from rigbench.arm.arm import PRISMATIC, Arm, Floats
 from rigbench.errors import Fault, InputFaults, nearest
-from rigbench.motion.limits import SLACK, passings, shown
+from rigbench.motion.limits import SLACK, beyond, passings, shown, unit_of
 from rigbench.motion.table import LEAST_STEP_S, TableMotion
 
 __all__ = ["read_table"]
@@ -23,6 +23,9 @@ Line = tuple[int, list[str]]
 
 TIME = "t_s"
 NUMBER = re.compile(r"[+-]?(\d+\.?\d*|\.\d+)(e[+-]?\d+)?", re.ASCII | re.IGNORECASE)
+MOST_NUMBER = 1e12
+"""Largest time, angle or length that makes sense to anyone; beyond it differences lose their digits."""
+
 MOST_FAULTS = 20
 """Faults of a table's cells and times are told up to this number, and the rest are counted."""
 
@@ -43,10 +46,6 @@ class _Sheet:
 
     def fault(self, row: int | np.intp, key: str, problem: str, expected: str) -> Fault:
         return Fault(self.file, int(self.lines[row]), key, problem, expected)
-
-    def unit(self, i: int) -> tuple[str, float]:
-        """Return the unit of a joint's column, and how many of it make the SI unit."""
-        return ("mm", 1e3) if self.arm.kinds[i] == PRISMATIC else ("deg", math.degrees(1))
 
 
 def read_table(file: str, text: str, arm: Arm, pace: float = 1.0) -> TableMotion:
@@ -74,7 +73,7 @@ def read_table(file: str, text: str, arm: Arm, pace: float = 1.0) -> TableMotion
         bad = [*bad[:MOST_FAULTS], Fault(file, None, "", f"and {rest} more faults of cells and times")]
     faults += bad
     if len(lines) < 3:
-        faults.append(Fault(file, lines[-1][0], "", f"{len(lines) - 1} rows", "2 or more"))
+        faults.append(Fault(file, lines[-1][0], "", _count(len(lines) - 1, "row"), "2 or more"))
     for joint, at in column.items():
         i = arm.joints.index(joint)
         faults += _check_positions(sheet, table[:, at], i)
@@ -131,15 +130,21 @@ def _numbers(file: str, lines: list[Line], header: list[str]) -> tuple[Floats, l
     faults = []
     for row, (line, cells) in enumerate(lines):
         if len(cells) != len(header):
-            faults.append(Fault(file, line, "", f"{len(cells)} cells", f"{len(header)}, as in the header"))
+            faults.append(
+                Fault(file, line, "", _count(len(cells), "cell"), f"{len(header)}, as in the header")
+            )
             continue
         for at, cell in enumerate(cells):
             value = float(cell) if NUMBER.fullmatch(cell) else math.nan
-            if math.isfinite(value):
+            if abs(value) <= MOST_NUMBER:
                 table[row, at] = value
             else:
-                problem = f"'{_short(cell)}' is not a finite number" if cell else "empty"
-                faults.append(Fault(file, line, header[at], problem, "a number"))
+                problem = (
+                    f"'{_short(cell)}' is not a number"
+                    if math.isnan(value)
+                    else f"{_short(cell)} is too large"
+                )
+                faults.append(Fault(file, line, header[at], problem if cell else "empty", "a finite number"))
     return table, faults
 
 
@@ -153,33 +158,35 @@ def _check_times(sheet: _Sheet, times: Floats) -> list[Fault]:
     shifted = times[at] - times[at[:1]]
     faults = []
     for k in np.flatnonzero(np.diff(shifted) < LEAST_STEP_S) + 1:
-        problem = f"{times[at[k]]!r} s after {times[at[k - 1]]!r} s"
+        problem = f"{float(times[at[k]])} s after {float(times[at[k - 1]])} s"
         faults.append(sheet.fault(at[k], TIME, problem, "times that rise by 1e-6 s or more"))
     return faults
 
 
 def _more(count: int) -> str:
-    return "" if count == 0 else f" (and in {count} more row{'s' if count > 1 else ''})"
+    return "" if count == 0 else f" (and in {count} more {'row' if count == 1 else 'rows'})"
+
+
+def _count(count: int, thing: str) -> str:
+    return f"{count} {thing}" if count == 1 else f"{count} {thing}s"
 
 
 def _check_positions(sheet: _Sheet, column: Floats, i: int) -> list[Fault]:
     """Find the first row beyond the joint's lower limit and the first beyond its upper one."""
-    unit, scale = sheet.unit(i)
+    unit, scale = unit_of(sheet.arm, i)
     faults = []
     for side, sign, bound in (("least", -1, sheet.arm.lower[i]), ("most", 1, sheet.arm.upper[i])):
-        if not np.isfinite(bound):
-            continue
-        beyond = np.flatnonzero(sign * (column / scale - bound) > SLACK * abs(bound))
-        if beyond.size:
-            value, limit = shown(column[beyond[0]], bound * scale)
-            problem = f"{value} {unit} is beyond the joint's limit{_more(beyond.size - 1)}"
-            faults.append(sheet.fault(beyond[0], sheet.arm.joints[i], problem, f"at {side} {limit} {unit}"))
+        rows = beyond(sign * (column / scale - bound), bound)
+        if rows.size:
+            value, limit = shown(column[rows[0]], bound * scale)
+            problem = f"{value} {unit} is beyond the joint's limit{_more(rows.size - 1)}"
+            faults.append(sheet.fault(rows[0], sheet.arm.joints[i], problem, f"at {side} {limit} {unit}"))
     return faults
 
 
 def _check_steps(sheet: _Sheet, times: Floats, column: Floats, i: int) -> list[Fault]:
     """Find the first step between neighbouring rows that is a jump."""
-    unit, scale = sheet.unit(i)
+    unit, scale = unit_of(sheet.arm, i)
     limited = np.isfinite(sheet.arm.drives.speed_limit[i])
     bound = sheet.arm.drives.speed_limit[i] * scale if limited else MOST_SPEED[unit]
     with np.errstate(over="ignore", invalid="ignore"):

@@ -108,10 +108,11 @@ class TableMotion:
             q = np.repeat(self._rows[:1], len(t), axis=0)
             return q, np.zeros_like(q), np.zeros_like(q)
         q, v, a = (spline(at) for spline in self._splines)
-        resting = self._moving < len(self.rows) - 1
-        held = (t < 0) | (t > self.duration_s) | ((t * self.pace >= end) & resting)
+        arrived = at >= end * (1 - 4 * np.finfo(float).eps)  # not short of it by the rounding of t * pace
+        rests = arrived & (self._moving < len(self.rows) - 1)
+        held = (t < 0) | (t > self.duration_s) | rests
         v[held] = a[held] = 0.0
-        q[at >= end] = self._rows[-1]  # a spline meets its last row to rounding only
+        q[arrived] = self._rows[-1]  # a spline meets its last row to rounding only
         return q, v * self.pace, a * self.pace**2
 
     def inputs(self) -> dict[str, Any]:

@@ -1,0 +1,52 @@
+"""The names and limits under which a store's runs are shown, without the experiment file at hand."""
+
+from __future__ import annotations
+
+import dataclasses
+import json
+from dataclasses import dataclass
+
+from rigbench.campaign.plan import Plan
+from rigbench.scores.results import Column, Tolerance
+
+__all__ = ["Labels"]
+
+
+@dataclass(frozen=True)
+class Labels:
+    """What a store says about its campaign; the fields are those of the :class:`Plan` it was given last."""
+
+    title: str
+    arm: str
+    sheets: tuple[str, ...]
+    laws: tuple[str, ...]
+    motions: tuple[str, ...]
+    columns: tuple[Column, ...]
+    draws: int
+    tolerance: Tolerance | None
+    resume: str
+
+    @classmethod
+    def of(cls, plan: Plan) -> Labels:
+        """Return the labels of a plan."""
+        return cls(**{field.name: getattr(plan, field.name) for field in dataclasses.fields(cls)})
+
+    def to_json(self) -> str:
+        """Return the labels as one JSON object."""
+        values = {field.name: getattr(self, field.name) for field in dataclasses.fields(self)}
+        values["columns"] = [dataclasses.asdict(column) for column in self.columns]
+        if self.tolerance is not None:
+            limits, share = dict(self.tolerance.limits), self.tolerance.required_share
+            values["tolerance"] = {"limits": limits, "required_share": share}
+        return json.dumps(values)
+
+    @classmethod
+    def from_json(cls, text: str) -> Labels:
+        """Read what :meth:`to_json` wrote."""
+        found = json.loads(text)
+        for name in ("sheets", "laws", "motions"):
+            found[name] = tuple(found[name])
+        found["columns"] = tuple(Column(**column) for column in found["columns"])
+        if found["tolerance"] is not None:
+            found["tolerance"] = Tolerance(**found["tolerance"])
+        return cls(**found)

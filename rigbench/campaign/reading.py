@@ -1,0 +1,234 @@
+"""Reading a store: what is planned, what is done, and what came of it."""
+
+from __future__ import annotations
+
+import contextlib
+import json
+import math
+import sqlite3
+import sys
+from collections.abc import Iterator
+from dataclasses import dataclass
+from pathlib import Path
+from types import TracebackType
+from typing import Self
+
+from rigbench.campaign.connection import connect, owner, speaking_plainly
+from rigbench.campaign.labels import Labels
+from rigbench.campaign.plan import Entry, Plan
+from rigbench.errors import StoreError
+from rigbench.scores.results import Results
+from rigbench.scores.row import HOST_OUTCOMES, MACHINE_OUTCOMES, Row
+
+__all__ = ["Counts", "Reader", "Record"]
+
+SETTLED = (*MACHINE_OUTCOMES, "law-error")
+"""Outcomes that the same run would have again. The others are tried anew by the next campaign."""
+
+
+@dataclass(frozen=True)
+class Counts:
+    """How far a campaign is, in planned runs.
+
+    ``done`` have the machine's verdict, ``failed`` the host's trouble; the rest has not been run.
+    """
+
+    planned: int
+    done: int
+    failed: int
+
+
+@dataclass(frozen=True)
+class Record:
+    """A row with what the store knows beyond it."""
+
+    row: Row
+    key: str
+    trace: str
+    sources: tuple[str, ...]  # the mismatch sources that act
+    residual: float | None  # rad/s
+    wall_s: float | None
+
+
+class Reader:
+    """An open store, to be read. Use it in a ``with``."""
+
+    def __init__(self, path: Path, connection: sqlite3.Connection) -> None:
+        self.path = path
+        self._connection = connection
+
+    @staticmethod
+    def open_for_reading(path: str | Path) -> Reader:
+        """Open a store that holds a campaign; StoreError if there is none at ``path``."""
+        path = Path(path).resolve()
+        with speaking_plainly(path):
+            connection = connect(path, writing=False)
+            try:
+                if owner(connection) is None:
+                    raise StoreError(str(path), "holds no campaign yet; 'rigbench run' puts one in")
+            except BaseException:
+                connection.close()
+                raise
+        return Reader(path, connection)
+
+    def close(self) -> None:
+        """Close the file."""
+        self._connection.close()
+
+    def __enter__(self) -> Self:
+        return self
+
+    def __exit__(
+        self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
+    ) -> None:
+        self.close()
+
+    @contextlib.contextmanager
+    def one_moment(self) -> Iterator[None]:
+        """Read all that is read within as it was at one moment, however a writer goes on meanwhile."""
+        with self._transaction("DEFERRED"):
+            yield
+
+    @contextlib.contextmanager
+    def _transaction(self, how: str = "IMMEDIATE") -> Iterator[sqlite3.Connection]:
+        """Do all that is done within, or nothing."""
+        with speaking_plainly(self.path):
+            self._connection.execute(f"BEGIN {how}")
+            try:
+                yield self._connection
+                self._connection.execute("COMMIT")
+            except BaseException:
+                if self._connection.in_transaction:
+                    self._connection.execute("ROLLBACK")
+                raise
+
+    def missing(self, plan: Plan) -> list[Entry]:
+        """Return the entries to run, in order, one for each key.
+
+        What has the machine's verdict is not run again, nor is a 'law-error', which would come again
+        (another text of the law is another key; :meth:`forget` helps where something else was amended).
+        What timed out or crashed is tried again.
+        """
+        marks = ", ".join("?" * len(SETTLED))
+        with speaking_plainly(self.path):
+            query = self._connection.execute(f"SELECT key FROM runs WHERE outcome IN ({marks})", SETTLED)
+            seen = {key for (key,) in query}
+        missing = []
+        for entry in plan.entries:
+            if entry.key not in seen:
+                seen.add(entry.key)
+                missing.append(entry)
+        return missing
+
+    @property
+    def labels(self) -> Labels:
+        """The names and limits that the campaign is shown with."""
+        with speaking_plainly(self.path):
+            return Labels.from_json(self._connection.execute("SELECT labels FROM campaign").fetchone()[0])
+
+    @property
+    def experiment(self) -> tuple[str, str]:
+        """Path and text of the experiment file."""
+        with speaking_plainly(self.path):
+            query = self._connection.execute("SELECT experiment_path, experiment_text FROM campaign")
+            path, text = query.fetchone()
+        return path, text
+
+    @property
+    def files(self) -> list[tuple[str, str]]:
+        """Paths and texts of the arm, URDF and law files that the present plan is made of."""
+        with speaking_plainly(self.path):
+            query = self._connection.execute("SELECT path, text FROM files WHERE planned ORDER BY path")
+            return query.fetchall()
+
+    def counts(self) -> Counts:
+        """Count the planned runs, and of those the ones that are done and those that failed."""
+        found = self.outcomes()
+        return Counts(
+            sum(found.values()),
+            sum(found.get(outcome, 0) for outcome in MACHINE_OUTCOMES),
+            sum(found.get(outcome, 0) for outcome in HOST_OUTCOMES),
+        )
+
+    def outcomes(self) -> dict[str, int]:
+        """Count the planned runs by their outcome, '' for those without one."""
+        with speaking_plainly(self.path):
+            return dict(
+                self._connection.execute(
+                    "SELECT coalesce(outcome, ''), count(*) FROM plan LEFT JOIN runs USING (key) GROUP BY 1"
+                )
+            )
+
+    def records(self) -> Iterator[Record]:
+        """Yield what is stored of the planned runs, in the order of the plan."""
+        with speaking_plainly(self.path):
+            query = self._connection.execute(
+                "SELECT sheet, law, motion, condition, level, draw, outcome, scores, host_scores,"
+                " reason, key, trace, sources, residual_rad_s, wall_s"
+                " FROM plan JOIN runs USING (key) ORDER BY position"
+            )
+            for found in query:
+                yield _record(*found)
+
+    def rows(self) -> list[Row]:
+        """Return the rows of the planned runs that are stored, in the order of the plan."""
+        return [record.row for record in self.records()]
+
+    def draw_values(self) -> dict[int, dict[str, float]]:
+        """Return the stored factors u of the campaign's seed, by draw and parameter."""
+        values: dict[int, dict[str, float]] = {}
+        with speaking_plainly(self.path):
+            for draw, name, u in self._connection.execute(
+                "SELECT draw, parameter, u FROM draw_values WHERE seed = (SELECT seed FROM campaign)"
+            ):
+                values.setdefault(draw, {})[name] = u
+        return values
+
+    def results(self) -> Results:
+        """Return the cells and standings of all that is stored, as of one moment."""
+        from rigbench.scores.summary import summarise  # scipy: slow to import
+
+        with self.one_moment():
+            labels, counts, rows = self.labels, self.counts(), self.rows()
+        return summarise(
+            rows,
+            title=labels.title,
+            arm=labels.arm,
+            motions=labels.motions,
+            tolerance=labels.tolerance,
+            draws=labels.draws,
+            sheets=labels.sheets,
+            laws=labels.laws,
+            columns=labels.columns,
+            planned=counts.planned,
+            done=counts.done,
+            failed=counts.failed,
+        )
+
+
+def _record(
+    sheet: str,
+    law: str,
+    motion: str,
+    condition: str,
+    level: float | None,
+    draw: int | None,
+    outcome: str,
+    scores: str,
+    host_scores: str,
+    reason: str,
+    key: str,
+    trace: str,
+    sources: str,
+    residual: float | None,
+    wall_s: float | None,
+) -> Record:
+    every = _scores(scores) | _scores(host_scores)
+    row = Row(sheet, law, motion, condition, level, draw, outcome, every, reason)
+    return Record(row, key, trace, tuple(filter(None, sources.split(","))), residual, wall_s)
+
+
+def _scores(text: str) -> dict[str, float]:
+    """Read a run's scores; names are shared between all rows, null is infinite."""
+    found = json.loads(text)
+    return {sys.intern(name): math.inf if value is None else value for name, value in found.items()}

@@ -1,0 +1,149 @@
+"""The command line: parse, call, print. What a command does is in the module of its name.
+
+Heavy imports are made inside the commands, so that ``rigbench --help`` answers at once.
+"""
+
+from __future__ import annotations
+
+import sys
+from typing import Annotated
+
+import typer
+
+from rigbench import __version__
+from rigbench.cli.output import pipes_may_break, telling
+
+__all__ = ["app", "main"]
+
+app = typer.Typer(
+    name="rigbench",
+    help="A software test rig for the joint control of robot arms: which law still meets the tolerance on a "
+    "machine that is not the one in the model?",
+    epilog="Exit codes: 0 done; 1 an error that nobody foresaw; 2 the input is at fault; 3 a campaign "
+    "stopped before its end and can be resumed; 5 the store or the disk.",
+    no_args_is_help=True,
+    add_completion=False,
+    rich_markup_mode=None,
+    pretty_exceptions_enable=False,
+)
+
+Experiment = Annotated[str, typer.Argument(metavar="FILE", help="the experiment file (YAML)")]
+StoreFile = Annotated[str, typer.Argument(metavar="STORE", help="the store that 'run' filled")]
+Json = Annotated[
+    bool, typer.Option("--json", help="print the result, or the faults, as one JSON document on stdout")
+]
+
+
+def _version(wanted: bool) -> None:
+    if wanted:
+        print(f"rigbench {__version__}")
+        raise typer.Exit
+
+
+@app.callback()
+def _root(
+    version: Annotated[
+        bool, typer.Option("--version", callback=_version, is_eager=True, help="print the version")
+    ] = False,
+) -> None:
+    del version
+
+
+@app.command(epilog="Example: rigbench check experiments/first_look.yaml")
+def check(file: Experiment, as_json: Json = False) -> None:
+    """Validate an experiment and print its plan, the draws it needs and an estimated time.
+
+    All faults of all its files are printed at once. One run of each law is done to measure the time.
+    """
+    with telling(as_json):
+        from rigbench.cli.check import check_experiment
+
+        check_experiment(file, as_json)
+
+
+@app.command(epilog="Example: rigbench run experiments/first_look.yaml --jobs 2")
+def run(
+    file: Experiment,
+    jobs: Annotated[
+        int | None,
+        typer.Option(min=0, max=4096, help="worker processes; one a core if left out; 0: in this process"),
+    ] = None,
+    store: Annotated[
+        str | None,
+        typer.Option(help="where the runs are stored; results/NAME_OF_FILE.sqlite if left out"),
+    ] = None,
+    as_json: Json = False,
+) -> None:
+    """Do the runs that are not stored yet; print the results matrix and draw it beside the store.
+
+    Ctrl-C stops after the runs in hand; the same command goes on from there.
+    """
+    with telling(as_json):
+        from rigbench.cli.run import run_experiment
+
+        run_experiment(file, jobs, store, as_json)
+
+
+@app.command(epilog="Example: rigbench status results/first_look.sqlite")
+def status(store: StoreFile, as_json: Json = False) -> None:
+    """Print how far a campaign is and how the laws stand so far, also while it runs."""
+    with telling(as_json):
+        from rigbench.cli.stored import print_status
+
+        print_status(store, as_json)
+
+
+@app.command(epilog="Example: rigbench matrix results/first_look.sqlite -o matrix.svg")
+def matrix(
+    store: StoreFile,
+    output: Annotated[
+        str | None,
+        typer.Option(
+            "--output",
+            "-o",
+            help="a .png, .svg or .pdf file; STORE's name and -matrix.png if left out",
+        ),
+    ] = None,
+    as_json: Json = False,
+) -> None:
+    """Draw the results matrix of what is stored."""
+    with telling(as_json):
+        from rigbench.cli.stored import draw_matrix
+
+        draw_matrix(store, output, as_json)
+
+
+@app.command(epilog="Example: rigbench export results/first_look.sqlite -o runs.csv")
+def export(
+    store: StoreFile,
+    output: Annotated[
+        str | None, typer.Option("--output", "-o", help="a CSV file; standard output if left out")
+    ] = None,
+    as_json: Annotated[bool, typer.Option("--json", help="say as JSON what was written; needs -o")] = False,
+) -> None:
+    """Write what is stored as CSV, one row a run, with its scores and the values of its draw."""
+    if as_json and output is None:
+        raise typer.BadParameter("--json needs -o: without it the table itself goes to standard output")
+    with telling(as_json):
+        from rigbench.cli.stored import export_runs
+
+        export_runs(store, output, as_json)
+
+
+@app.command(epilog="Example: rigbench laws computed-torque")
+def laws(
+    name: Annotated[str | None, typer.Argument(metavar="[NAME]", help="a registered law")] = None,
+    as_json: Json = False,
+) -> None:
+    """List the registered laws; with NAME print its equation and its options."""
+    with telling(as_json):
+        from rigbench.cli.laws import print_laws
+
+        print_laws(name, as_json)
+
+
+def main() -> None:
+    """Run the command line and leave the process with its exit code."""
+    with pipes_may_break():
+        app()
+    sys.exit(1)  # pragma: no cover - app() leaves by SystemExit

@@ -1,0 +1,170 @@
+"""``rigbench check``: the plan of an experiment, and what it will take."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import asdict, dataclass, replace
+from pathlib import Path
+from typing import Any
+
+from rigbench.campaign.plan import Plan
+from rigbench.campaign.store import Store
+from rigbench.campaign.work import Outcome, do
+from rigbench.campaign.workers import usable_cores
+from rigbench.cli.output import print_json, show, tell_notes
+from rigbench.cli.progress import duration_words
+from rigbench.cli.run import store_path
+from rigbench.errors import Fault, InputFaults, StoreError
+from rigbench.experiment import Experiment, load_experiment
+from rigbench.scores.intervals import draws_needed, misses_allowed
+
+__all__ = ["check_experiment"]
+
+
+@dataclass(frozen=True)
+class Estimate:
+    """What a campaign will take, judged by one run of each law: ``seconds`` on so many ``cores``."""
+
+    seconds: float | None
+    cores: int
+    notes: tuple[Fault, ...]
+
+
+@dataclass(frozen=True)
+class Stored:
+    """How many of the planned runs the store at ``path`` holds; None where there is no such store."""
+
+    path: Path
+    runs: int | None
+    notes: tuple[Fault, ...] = ()
+
+
+def check_experiment(file: str, as_json: bool) -> None:
+    """Print the plan of an experiment that is in order."""
+    experiment = load_experiment(file)
+    plan = experiment.plan()
+    stored = _stored(plan, store_path(file, None))
+    estimate = _estimate(experiment, plan, stored)
+    tell_notes([*experiment.notes, *stored.notes, *estimate.notes])
+    if as_json:
+        print_json(_document(experiment, plan, stored, estimate))
+    else:
+        show("\n".join(_lines(experiment, plan, stored, estimate)))
+
+
+def _stored(plan: Plan, path: Path) -> Stored:
+    if not path.exists():
+        return Stored(path, None)
+    try:
+        with Store.open_for_reading(path) as store:
+            owner = store.labels.title
+            missing = {entry.key for entry in store.missing(plan)}
+    except StoreError as error:
+        return Stored(path, None, (Fault(error.path, None, "", error.problem),))
+    if owner != plan.title:
+        problem = f"belongs to the experiment '{owner}': 'run' will want another one, named with --store"
+        return Stored(path, None, (Fault(str(path), None, "", problem),))
+    return Stored(path, sum(entry.key not in missing for entry in plan.entries))
+
+
+def _estimate(experiment: Experiment, plan: Plan, stored: Stored) -> Estimate:
+    """Do the nominal run of each law along the shortest motion, and scale its time to all that is missing.
+
+    A run takes a time in proportion to its motion's. InputFaults if a law raises in it.
+    """
+    from rigbench.rig import warm_up
+
+    warm_up()
+    name, motion = min(experiment.motions.items(), key=lambda item: item[1].duration_s)
+    notes: list[Fault] = []
+    faults: list[Fault] = []
+    seconds: float | None = 0.0
+    total_s = sum(reference.duration_s for reference in experiment.motions.values())
+    for law, choice in experiment.laws.items():
+        outcome = do(replace(experiment.first, law=choice, motion=motion, level=0.0, sources=(), draw=None))
+        if outcome.outcome == "law-error":
+            problem = f"raised {outcome.reason}\n{outcome.trace}".rstrip()
+            faults.append(Fault(experiment.path, None, f"laws.{law}", problem))
+        elif outcome.outcome != "finished":
+            said = f"does not finish motion {name} even in nominal ({outcome.outcome}): {outcome.reason}"
+            notes.append(Fault(experiment.path, None, f"laws.{law}", f"{said}\n{outcome.trace}".rstrip()))
+        seconds = _added(seconds, outcome, total_s / motion.duration_s)
+    if faults:
+        raise InputFaults(faults)
+    if seconds is not None:
+        columns = len(plan.entries) / (len(plan.laws) * len(plan.motions))
+        left = 1 - (stored.runs or 0) / len(plan.entries)
+        seconds *= columns * left / usable_cores()
+    return Estimate(seconds, usable_cores(), tuple(notes))
+
+
+def _added(seconds: float | None, outcome: Outcome, times: float) -> float | None:
+    """A run that broke off early says nothing about how long a whole one takes."""
+    if seconds is None or outcome.outcome != "finished" or outcome.wall_s is None:
+        return None
+    return seconds + outcome.wall_s * times
+
+
+def _lines(experiment: Experiment, plan: Plan, stored: Stored, estimate: Estimate) -> Iterator[str]:
+    yield f"{plan.title}: in order"
+    yield f"plan: {_product(plan)} = {_count(len(plan.entries), 'run')}"
+    yield f"conditions: {', '.join(column.name for column in plan.columns)}"
+    if stored.runs is not None:
+        yield f"stored: {stored.runs} of them, in {stored.path}"
+    yield from _draws_lines(experiment)
+    if stored.runs == len(plan.entries):
+        yield "time: none, all is stored"
+    elif estimate.seconds is None:
+        yield "time: can't be told, for not every law finishes its nominal run"
+    else:
+        cores = _count(estimate.cores, "core")
+        yield f"time: {duration_words(estimate.seconds)} on {cores}; an estimate, from one run of each law"
+
+
+def _product(plan: Plan) -> str:
+    """Say how many runs there are as the product that makes them."""
+    random = sum(column.random for column in plan.columns)
+    conditions = _count(len(plan.columns), "condition")
+    if random:
+        exact, draws = len(plan.columns) - random, _count(plan.draws, "draw")
+        conditions = f"({exact} exact + {_count(random, 'random condition')} x {draws})"
+    sizes = {"sheet": len(plan.sheets), "law": len(plan.laws), "motion": len(plan.motions)}
+    return " x ".join([*(_count(number, what) for what, number in sizes.items()), conditions])
+
+
+def _count(number: int, what: str) -> str:
+    return f"{number} {what}" if number == 1 else f"{number} {what}s"
+
+
+def _draws_lines(experiment: Experiment) -> Iterator[str]:
+    """Say how many draws it takes to show the required share, and what the declared number allows."""
+    if experiment.tolerance is None or not experiment.random:
+        return
+    share = experiment.tolerance.required_share
+    allowed = misses_allowed(share, experiment.draws)
+    said = f"draws: to show a share of {share:g} takes {draws_needed(share)} that all keep the tolerance"
+    if allowed is None:
+        yield f"{said}; {experiment.draws} can't"
+    else:
+        yield f"{said}; of {experiment.draws} {allowed or 'none'} may miss it"
+
+
+def _document(experiment: Experiment, plan: Plan, stored: Stored, estimate: Estimate) -> dict[str, Any]:
+    share = (
+        None if experiment.tolerance is None or not experiment.random else experiment.tolerance.required_share
+    )
+    return {
+        "title": plan.title,
+        "arm": plan.arm,
+        "sheets": list(plan.sheets),
+        "laws": list(plan.laws),
+        "motions": list(plan.motions),
+        "conditions": [asdict(column) for column in plan.columns],
+        "draws": plan.draws if experiment.random else None,
+        "required_share": share,
+        "draws_needed": None if share is None else draws_needed(share),
+        "misses_allowed": None if share is None else misses_allowed(share, plan.draws),
+        "runs": {"planned": len(plan.entries), "stored": stored.runs},
+        "estimate": {"seconds": estimate.seconds, "cores": estimate.cores},
+        "notes": [asdict(note) for note in (*experiment.notes, *stored.notes, *estimate.notes)],
+    }

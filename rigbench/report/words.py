@@ -1,0 +1,181 @@
+"""How figures, scores and verdicts are put into words, the same in picture and terminal."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable
+
+from rigbench.scores import names
+from rigbench.scores.results import Column, Results, Tolerated
+
+__all__ = [
+    "any_random",
+    "arm_words",
+    "figure",
+    "has_levels",
+    "interval",
+    "level",
+    "level_words",
+    "main_limit",
+    "main_score",
+    "percent",
+    "quantity",
+    "runs_words",
+    "score_words",
+    "tolerance_words",
+    "tolerated_words",
+]
+
+UNITS = {"mm": "mm", "deg": "deg", "ms": "ms", "us": "us", "percent": "%", "j": "J"}
+NAMES = {
+    "settle_ms": "settling time",
+    "law_us": "law's time per tick",
+    "law_share_percent": "law's share of the control period",
+}
+MOST_DIGITS = 6
+
+
+def score_words(name: str) -> tuple[str, str]:
+    """Return a score's name in words and its unit ('' for none), both taken from the name itself.
+
+    ``tool_peak_mm`` -> ('tool peak', 'mm'); ``joint_peak_deg.j1`` -> ('joint peak of j1', 'deg').
+    """
+    stem, _, joint = name.partition(".")
+    head, _, tail = stem.rpartition("_")
+    unit = UNITS.get(tail, "") if head else ""
+    words = NAMES.get(stem, (head if unit else stem).replace("_", " "))
+    return (f"{words} of {joint}" if joint else words), unit
+
+
+def _digits_that_agree(write: Callable[[int], str], first: int, agrees: Callable[[float], bool]) -> str:
+    """Write with the fewest digits, from ``first`` on, whose reading still ``agrees`` with the value."""
+    for digits in range(first, first + MOST_DIGITS):
+        if agrees(float(write(digits))):
+            return write(digits)
+    return write(first)
+
+
+def figure(value: float, limit: float | None = None) -> str:
+    """Return a finite number to 2 significant digits, 3 from 100 on: 0.064, 1.8, 12, 140, 1230.
+
+    An exponent stands only below 1e-4 and from 1e6 on. With a ``limit`` it gets as many digits as it
+    takes to be read on its own side of it: 3.004 against 3 is not written 3.0.
+    """
+    if value == 0:
+        return "0"
+
+    def write(digits: int) -> str:
+        rounded = float(f"{value:.{digits - 1}e}")
+        if not 1e-4 <= abs(rounded) < 1e6:
+            return f"{value:.{digits - 1}e}"
+        return f"{rounded:.{max(digits - 1 - math.floor(math.log10(abs(rounded))), 0)}f}"
+
+    first = 3 if abs(value) >= 99.5 else 2
+    return _digits_that_agree(write, first, lambda read: limit is None or (read <= limit) == (value <= limit))
+
+
+def percent(share: float, required: float | None = None, exact: bool = False) -> str:
+    """Return a share (0 to 1) in percent, without decimals unless they matter.
+
+    They matter where the rounded figure would stand on the other side of the ``required`` share, and,
+    if ``exact``, where it would hide a draw: 511 of 512 is 99.8 and not 100.
+    """
+    value = 100 * share
+
+    def agrees(read: float) -> bool:
+        hides = exact and ((read == 0) != (share == 0) or (read == 100) != (share == 1))
+        return not hides and (required is None or (read >= 100 * required) == (share >= required))
+
+    return _digits_that_agree(lambda decimals: f"{value:.{decimals}f}", 0, agrees)
+
+
+def quantity(value: float, score: str, limit: float | None = None) -> str:
+    """Return a score's value with its unit, or what an infinite one means."""
+    if math.isnan(value):
+        return "no value"
+    if math.isinf(value):
+        return "did not settle" if score.startswith("settle") else "did not finish"
+    unit = score_words(score)[1]
+    return f"{figure(value, limit)} {unit}".rstrip()
+
+
+def interval(low: float, high: float) -> str:
+    """Return an interval of figures, '1.6 to 2.1'; an infinite end is 'no end'."""
+    return " to ".join("no end" if math.isinf(end) else figure(end) for end in (low, high))
+
+
+def level(value: float) -> str:
+    """Return a level to 3 significant digits: 0.25, 1, 1.37."""
+    return f"{value:.3g}"
+
+
+def main_score(results: Results) -> str:
+    """Return the score that the cells show: the one by which laws are compared."""
+    return names.main_score(results.tolerance.limits if results.tolerance else ())
+
+
+def main_limit(results: Results) -> float | None:
+    """Return the limit of the main score, or None if it has none."""
+    return results.tolerance.limits.get(main_score(results)) if results.tolerance else None
+
+
+def any_random(results: Results) -> bool:
+    """Tell whether anything is random in any condition."""
+    return any(column.random for column in results.columns)
+
+
+def arm_words(results: Results) -> str:
+    """Say which arm moves, and how."""
+    return (
+        f"Arm: {results.arm}. Motion{'s' if len(results.motions) > 1 else ''}: {', '.join(results.motions)}."
+    )
+
+
+def tolerance_words(results: Results) -> str:
+    """Say what a run must keep, and on which share of the draws."""
+    tolerance = results.tolerance
+    if tolerance is None:
+        return "No tolerance is declared."
+    limits = []
+    for name, limit in tolerance.limits.items():
+        words, unit = score_words(name)
+        limits.append(f"{words} at most {limit:g} {unit}".rstrip())
+    motions = ", in every motion" if len(results.motions) > 1 else ""
+    if not any_random(results):
+        return f"Tolerance: {', '.join(limits)}{motions}."
+    share = percent(tolerance.required_share)
+    return f"Tolerance: {', '.join(limits)}. {share} % of the draws must keep it{motions}."
+
+
+def runs_words(results: Results) -> str:
+    """Say how many draws there are, and how many of the planned runs are done and failed."""
+    draws = f"{results.draws} draw{'s' if results.draws != 1 else ''}. " if any_random(results) else ""
+    runs = f"{results.planned} run{'s' if results.planned != 1 else ''} planned"
+    done = "all done" if results.done == results.planned else f"{results.done} done"
+    return f"{draws}{runs}, {done}, {results.failed or 'none'} failed."
+
+
+def level_words(column: Column) -> str:
+    """Return a condition's level in words; '' for level 0, or where its name carries the level already."""
+    if not column.level or level(column.level) in column.name.replace(",", " ").split():
+        return ""
+    return f"level {level(column.level)}"
+
+
+def has_levels(results: Results) -> bool:
+    """Tell whether there is a tolerated level to show: a tolerance and a level beyond nominal."""
+    return results.tolerance is not None and any(column.ladder and column.level for column in results.columns)
+
+
+def tolerated_words(tolerated: Tolerated | None) -> str:
+    """Say a tolerated level: '0.7 (0.5 to 1)', '2 or more', 'below 0.25', 'not shown yet'."""
+    if tolerated is None:
+        return ""
+    low, high, value = tolerated.low, tolerated.high, tolerated.value
+    if high == 0:
+        return "none: misses at level 0"
+    if value is None:
+        if math.isinf(high):
+            return f"{level(low)} or more" if low > 0 else "not shown yet"
+        return f"{level(low)} to {level(high)}" if low > 0 else f"below {level(high)}"
+    return f"{value:.2g} ({level(low)} to {'no end' if math.isinf(high) else level(high)})"

@@ -1,0 +1,1 @@
+"""Scores: of a run, of a cell, across cells."""

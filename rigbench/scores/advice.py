@@ -1,0 +1,220 @@
+"""One sentence of advice."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Sequence
+from math import isfinite
+
+from rigbench.scores.intervals import draws_to_decide
+from rigbench.scores.results import Results
+from rigbench.scores.standing import SheetStanding
+
+__all__ = ["advise"]
+
+MOST = 3
+"""So many names are spelled out; of the others the number is given."""
+
+
+def advise(results: Results) -> str:
+    """Return what to take away from the results, in one sentence.
+
+    The law to take is the one that keeps something and that no other law is shown to be ahead of (see
+    :meth:`SheetStanding.ahead`); where there are several of these it is too close to call. What stays
+    open is said too, with the number of draws that would decide it, and which runs are missing.
+    """
+    if not any(cell.draws for cell in results.cells):
+        said = "no run has a result yet, so there is nothing to advise"
+    elif len(results.sheets) == 1:
+        said = "; ".join(_of_sheet(SheetStanding(results, results.sheets[0])))
+    else:
+        said = _of_sheets(results)
+    said = "; ".join([said, *_missing(results)])
+    return said[0].upper() + said[1:] + "."
+
+
+def _missing(results: Results) -> Iterator[str]:
+    """Yield what the campaign has not shown."""
+    left = results.planned - results.done - results.failed
+    if left > 0:
+        yield f"{left} of {results.planned} runs are still to do"
+    if results.failed:
+        runs = _number(results.failed, "run")
+        yield f"{runs} failed (law's code, time limit or crash), for or against no law"
+
+
+def _of_sheets(results: Results) -> str:
+    """Return the advice of several sheets, of which those that agree are named together."""
+    groups: dict[str, list[str]] = {}
+    for sheet in results.sheets:
+        groups.setdefault(_of_sheet(SheetStanding(results, sheet))[0], []).append(sheet)
+    if len(groups) == 1:
+        return f"in all {len(results.sheets)} sheets: {next(iter(groups))}"
+    said = [f"in {_names(sheets)}: {head}" for head, sheets in list(groups.items())[:MOST]]
+    rest = sum(len(sheets) for sheets in list(groups.values())[MOST:])
+    return "; ".join([*said, *([f"{_number(rest, 'sheet')} more differ from these"] if rest else [])])
+
+
+def _of_sheet(sheet: SheetStanding) -> list[str]:
+    """Return the clauses of one sheet's advice, the first of which can stand alone."""
+    if sheet.tolerance is None:
+        return _without_tolerance(sheet)
+    keepers = [law for law in sheet.laws if sheet.columns_that("keeps", law)]
+    if not keepers:
+        return _nothing_kept(sheet)
+    front = [a for a in keepers if not any(sheet.ahead(b, a) for b in keepers)] or keepers
+    if len(front) > 1:
+        return [*_too_close(sheet, front), *_would_decide(sheet, front)]
+    law = front[0]
+    verb = f"'{law}'" if len(sheet.laws) == 1 else f"take '{law}', which"
+    said = [f"{verb} {_shown(sheet, law)}", *_elsewhere(sheet, law), *_by_score(sheet, law)]
+    others = [other for other in sheet.laws if other != law and not sheet.ahead(law, other)]
+    close = [other for other in others if sheet.has_result(other)]
+    if close:
+        said.append(f"against {_names(close)} it is too close to call")
+    silent = [other for other in others if other not in close]
+    if silent:
+        said.append(f"{_names(silent)} {'has' if len(silent) == 1 else 'have'} no result")
+    return [*said, *_would_decide(sheet, [law, *close])]
+
+
+def _by_score(sheet: SheetStanding, law: str) -> Iterator[str]:
+    """Yield over which laws only the main score decides, and up to which level it is in their favour."""
+    rivals = [
+        other
+        for other in sheet.laws
+        if other != law and sheet.ahead(law, other) and not sheet.told_apart_by_tolerance(law, other)
+    ]
+    if not rivals:
+        return
+    levels = {rival: sheet.better_below(rival, law) for rival in rivals}
+    behind = [f"'{rival}' below level {level:.2g}" for rival, level in levels.items() if level is not None]
+    but = f", and behind {', '.join(behind[:MOST])}" if behind else ""
+    yield f"it is ahead of {_names(rivals)} by {sheet.main} alone{but}"
+
+
+def _too_close(sheet: SheetStanding, front: Sequence[str]) -> Iterator[str]:
+    """Yield what is shown of laws of which none is ahead of all the others."""
+    shown: dict[str, list[str]] = {}
+    for law in front:
+        shown.setdefault(_shown(sheet, law), []).append(law)
+    if len(shown) == 1:
+        yield f"too close to call between {_names(front)}, which {_plural(next(iter(shown)), len(front))}"
+        return
+    said = [f"{_names(laws)} {_plural(words, len(laws))}" for words, laws in list(shown.items())[:MOST]]
+    yield f"too close to call between {_names(front)}: {', '.join(said)}"
+
+
+def _nothing_kept(sheet: SheetStanding) -> list[str]:
+    """Return the clauses for a sheet in which no cell keeps the tolerance."""
+    one = len(sheet.laws) == 1
+    known = [law for law in sheet.laws if sheet.has_result(law)]
+    if not known:
+        return ["there is no result yet"]
+    if any(sheet.columns_that("open", law) for law in sheet.laws):
+        who = f"'{sheet.laws[0]}' is not" if one else "no law is"
+        return [f"{who} shown to keep the tolerance yet", *_would_decide(sheet, known)]
+    who = f"'{sheet.laws[0]}'" if one else "every law"
+    return [f"{who} misses the tolerance under every condition", *_nearest(sheet, known)]
+
+
+def _nearest(sheet: SheetStanding, laws: Sequence[str]) -> Iterator[str]:
+    """Yield which law comes nearest to the main score's limit in the first column."""
+    limit = sheet.tolerance.limits.get(sheet.main) if sheet.tolerance else None
+    column = sheet.columns[0]
+    medians = {
+        law: sheet.cell(law, column).measures[sheet.main].median
+        for law in laws
+        if sheet.main in sheet.cell(law, column).measures
+    }
+    if limit is None or not medians:
+        return
+    law = min(medians, key=lambda law: medians[law])
+    if isfinite(medians[law]):
+        who = "it has" if len(sheet.laws) == 1 else f"nearest is '{law}' with"
+        yield f"{who} {sheet.main} {medians[law]:.3g} under '{column.name}', where {limit:g} is allowed"
+
+
+def _shown(sheet: SheetStanding, law: str) -> str:
+    """Say what a law is shown to keep: 'is shown to keep the tolerance up to level 0.5 ...'."""
+    if not sheet.has_levels:
+        count, kept = len(sheet.columns), len(sheet.columns_that("keeps", law))
+        under = f"{kept} of {count} conditions"
+        if kept == count:
+            under = f"all {count} conditions" if count > 1 else f"'{sheet.columns[0].name}'"
+        return f"is shown to keep the tolerance under {under}"
+    level = sheet.level(law)
+    if level.high == 0.0:
+        return "misses the tolerance at level 0 already"
+    keeping = [step for step in sheet.steps if sheet.cell(law, step).verdict == "keeps"]
+    if not any((step.level or 0.0) < level.high for step in keeping):
+        said = "is not shown to keep the tolerance at any level"
+    elif level.low > 0.0:
+        said = f"is shown to keep the tolerance up to level {level.low:g}"
+    else:
+        said = "is shown to keep the tolerance at level 0 only"
+    if isfinite(level.high):
+        return f"{said} and to miss it from level {level.high:g}"
+    top = max(column.level or 0.0 for column in sheet.steps)
+    return f"{said}, the highest run" if level.low == top else f"{said} (higher ones are open)"
+
+
+def _elsewhere(sheet: SheetStanding, law: str) -> Iterator[str]:
+    """Yield under which conditions off the ladder the law misses or is open."""
+    beside = sheet.has_levels
+    for verdict, words in (("misses", "it misses under"), ("open", "it is open under")):
+        columns = sheet.columns_that(verdict, law, beside_ladder=beside)
+        if columns:
+            yield f"{words} {_names(columns)}"
+
+
+def _would_decide(sheet: SheetStanding, laws: Sequence[str]) -> Iterator[str]:
+    """Yield how many draws would decide the first open cell that the declared draws will not."""
+    steps = {column.name for column in sheet.steps}
+    for column in (*sheet.steps, *(c for c in sheet.columns if c.name not in steps)):
+        for law in laws:
+            cell = sheet.cell(law, column)
+            if sheet.tolerance is None or cell.verdict != "open" or cell.pass_share is None:
+                continue
+            needed = draws_to_decide(cell.pass_share, sheet.tolerance.required_share)
+            if needed is not None and needed > sheet.draws:
+                yield (
+                    f"about {needed} draws would decide '{law}' under '{column.name}' "
+                    f"({cell.passed} of {cell.draws} pass so far)"
+                )
+                return
+
+
+def _without_tolerance(sheet: SheetStanding) -> list[str]:
+    """Return the clauses for a campaign that declares no tolerance: laws by their main score alone."""
+    said = "no tolerance is declared, so nothing is kept or missed"
+    best = {
+        law: [column.name for column in sheet.columns if sheet.cell(law, column).best] for law in sheet.laws
+    }
+    leaders = [law for law in sheet.laws if best[law]]
+    if len(sheet.laws) == 1:
+        return [said]
+    if not leaders:
+        return [f"{said}, and by {sheet.main} the laws are too close to call"]
+    under = ", ".join(f"'{law}' under {_names(best[law])}" for law in leaders[:MOST])
+    return [f"{said}; by {sheet.main}, better than every other law beyond the interval: {under}"]
+
+
+def _number(count: int, noun: str) -> str:
+    """Return '1 run', '2 runs'."""
+    return f"{count} {noun}" if count == 1 else f"{count} {noun}s"
+
+
+def _plural(words: str, count: int) -> str:
+    """Turn 'is shown ...' or 'misses ...' to the plural where it speaks of several."""
+    if count == 1:
+        return words
+    verb, _, rest = words.partition(" ")
+    return f"{ {'is': 'are', 'misses': 'miss'}.get(verb, verb) } {rest}"
+
+
+def _names(names: Sequence[str]) -> str:
+    """Return 'a', 'b' and 'c', quoted; beyond MOST the number of the rest."""
+    quoted = [f"'{name}'" for name in names[:MOST]]
+    if len(names) > MOST:
+        quoted.append(f"{len(names) - MOST} more")
+    return quoted[0] if len(quoted) == 1 else f"{', '.join(quoted[:-1])} and {quoted[-1]}"

@@ -1,0 +1,162 @@
+"""Invented results of any extent, for the tests of what reports them."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable, Sequence
+
+import pytest
+
+from rigbench.scores.results import (
+    Cell,
+    Column,
+    LawStanding,
+    Measure,
+    MotionCell,
+    Results,
+    Tolerance,
+    Tolerated,
+)
+
+LAWS = (
+    "computed torque",
+    "feedforward (model_hz 100)",
+    "pd + gravity",
+    "joint pd",
+    "feedforward (model_hz 50)",
+    "feedforward (model_hz 500)",
+    "mine",
+    "sliding",
+    "computed torque (natural_hz 8, damping 0.7)",
+    "passive",
+    "adaptive",
+    "robust",
+)
+SOURCES = ("link mass", "link cog", "link inertia", "payload", "coulomb", "viscous", "rotor inertia")
+CASES = ("full tray", "cold morning", "worn gearbox", "two trays", "oven door")
+LEVELS = (0.25, 0.5, 1, 1.5, 2, 3, 4)
+LIMITS = {"tool_peak_mm": 3.0, "tool_angle_peak_deg": 0.5, "settle_ms": 250.0, "joint_peak_deg.j1": 0.05}
+
+
+def wilson(passed: int, draws: int) -> tuple[float, float]:
+    """The Wilson interval at 95 %, as in Wilson (1927)."""
+    z2 = 1.959964**2 / draws
+    share = passed / draws
+    half = math.sqrt(z2 * (share * (1 - share) + z2 / 4))
+    return max((share + z2 / 2 - half) / (1 + z2), 0.0), min((share + z2 / 2 + half) / (1 + z2), 1.0)
+
+
+def columns_of(count: int) -> tuple[Column, ...]:
+    nominal = Column("nominal", 0.0, random=False, ladder=True)
+    alone = [Column(name, 1.0, random=True, ladder=False) for name in SOURCES]
+    together = [Column(f"together {level:g}", level, random=True, ladder=True) for level in LEVELS]
+    cases = [
+        Column(name, 1.0 if number % 2 else None, random=bool(number % 2), ladder=False)
+        for number, name in enumerate(CASES)
+    ]
+    if count <= len(LEVELS) + 1:
+        return (nominal, *together)[:count]
+    return (nominal, *alone, *together, *cases)[:count]
+
+
+def cell_of(
+    sheet: str,
+    law: str,
+    column: Column,
+    *,
+    passed: int,
+    draws: int,
+    incomplete: int = 0,
+    median: float = 1.8,
+    tolerance: bool = True,
+    best: bool = False,
+    unfinished: int = 0,
+) -> Cell:
+    low, high, share, verdict = None, None, None, "open" if tolerance else ""
+    if tolerance and draws:
+        share = passed / draws
+        low, high = wilson(passed, draws) if column.random else (share, share)
+        verdict = "keeps" if low >= 0.95 else "misses" if high < 0.95 else "open"
+    if column.random:
+        peak = Measure(median, median * 0.9, median * 1.2, median * 2, median * 1.6, math.inf)
+        settle = Measure(120.0, 110.0, 130.0, 200.0, 180.0, math.inf)
+    else:
+        peak, settle = Measure(*[median] * 6), Measure(*[120.0] * 6)
+    measures = {"tool_peak_mm": peak, "settle_ms": settle} if draws else {}
+    motions = {"load tray": MotionCell(passed, draws, measures)}
+    return Cell(
+        sheet, law, column.name, column.level, draws, incomplete, passed, share, low, high, verdict,
+        measures, motions, best, unfinished,
+    )  # fmt: skip
+
+
+def build(
+    laws: int | Sequence[str] = 4,
+    columns: int | Sequence[Column] = 8,
+    *,
+    draws: int = 128,
+    incomplete: int = 0,
+    tolerance: bool = True,
+    sheets: Sequence[str] = ("",),
+    title: str = "Trays of unknown mass",
+    unstable: bool = False,
+    best: bool = True,
+) -> Results:
+    """Results in which laws get worse down the list, and all of them with the level.
+
+    ``incomplete`` draws lack in every third cell; ``unstable``: the last law mostly does not finish.
+    """
+    names = LAWS[:laws] if isinstance(laws, int) else tuple(laws)
+    heads = columns_of(columns) if isinstance(columns, int) else tuple(columns)
+    cells, standings = [], []
+    for sheet in sheets:
+        for row, law in enumerate(names):
+            ladder = []
+            for place, column in enumerate(heads):
+                harm = (column.level or 0.2) * (1 + 0.4 * row) * (1.0 if column.ladder else 0.4)
+                planned = draws if column.random else 1
+                missing = min(incomplete, planned) if (row + place) % 3 == 2 else 0
+                counted = planned - missing
+                passed = round(counted / (1 + math.exp(4 * harm - 7)))
+                bad = unstable and row == len(names) - 1 and counted > 0
+                cell = cell_of(
+                    sheet, law, column, passed=0 if bad else passed, draws=counted, incomplete=missing,
+                    median=math.inf if bad else 0.6 * (1 + harm) ** 1.5, tolerance=tolerance,
+                    best=best and row == 0 and place % 3 == 1, unfinished=(3 * counted + 3) // 4 if bad else 0,
+                )  # fmt: skip
+                cells.append(cell)
+                if column.ladder:
+                    ladder.append(cell)
+            high = min((c.level or 0.0 for c in ladder if c.verdict == "misses"), default=math.inf)
+            kept = [c.level or 0.0 for c in ladder if c.verdict == "keeps" and (c.level or 0.0) < high]
+            low = max(kept, default=0.0)
+            value = None if math.isinf(high) else (low + high) / 2
+            standings.append(LawStanding(sheet, law, Tolerated(value, low, high) if tolerance else None))
+    planned = sum(c.draws + c.incomplete for c in cells)
+    missing = sum(c.incomplete for c in cells)
+    return Results(
+        title=title,
+        arm="tray6",
+        motions=("load tray", "rim"),
+        tolerance=Tolerance(LIMITS, 0.95) if tolerance else None,
+        draws=draws,
+        sheets=tuple(sheets),
+        laws=names,
+        columns=heads,
+        cells=tuple(cells),
+        standings=tuple(standings),
+        planned=planned,
+        done=planned - missing,
+        failed=min(missing, 2),
+        advice="Computed torque is shown to keep the tolerance up to level 1; feedforward is too close to call.",
+    )
+
+
+@pytest.fixture
+def make_results() -> Callable[..., Results]:
+    return build
+
+
+@pytest.fixture
+def make_cell() -> Callable[..., Cell]:
+    return cell_of

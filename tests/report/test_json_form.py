@@ -1,0 +1,89 @@
+"""The JSON document of the results."""
+
+from __future__ import annotations
+
+import json
+import math
+from collections.abc import Callable
+from dataclasses import replace
+
+import numpy as np
+import pytest
+
+from rigbench.report.json_form import results_json
+from rigbench.scores.results import Measure, Results
+
+CROSSING = {
+    "sheet": "",
+    "laws": ["computed torque", "joint pd"],
+    "score": "tool_peak_mm",
+    "level": {"value": np.float64(0.7), "low": 0.5, "high": math.inf},
+    "better_below": "computed torque",
+}
+
+
+def test_the_document_has_its_declared_shape(make_results: Callable[..., Results]) -> None:
+    """Key by key, as the commands promise it."""
+    results = replace(make_results(2, 3), break_even=(CROSSING,))
+    document = results_json(results, "results/trays.sqlite")
+    assert list(document) == ["store", "runs", "cells", "laws", "break_even", "advice"]
+    assert document["store"] == "results/trays.sqlite"
+    assert document["runs"] == {"planned": results.planned, "done": results.done, "failed": results.failed}
+    assert document["advice"] == results.advice
+    assert document["break_even"] == [{**CROSSING, "level": {"value": 0.7, "low": 0.5, "high": None}}]
+    assert [(c["sheet"], c["law"], c["condition"]) for c in document["cells"]] == [
+        (c.sheet, c.law, c.condition) for c in results.cells
+    ]
+    cell, source = document["cells"][1], results.cells[1]
+    assert list(cell)[:10] == [
+        "sheet", "law", "condition", "level", "draws", "incomplete", "pass_share", "pass_low", "pass_high", "verdict",
+    ]  # fmt: skip
+    assert (cell["draws"], cell["pass_low"], cell["verdict"]) == (128, source.pass_low, source.verdict)
+    peak = source.measures["tool_peak_mm"]
+    expected = {
+        "median": peak.median,
+        "p95": peak.p95,
+        "median_low": peak.median_low,
+        "median_high": peak.median_high,
+        "p95_low": peak.p95_low,
+        "p95_high": None,
+    }
+    assert cell["tool_peak_mm"] == expected
+    motion = cell["motions"]["load tray"]
+    assert (motion["draws"], motion["passed"], motion["pass_share"]) == (128, source.passed, source.passed / 128)
+    assert motion["tool_peak_mm"] == expected
+    standing = results.standings[0]
+    assert standing.tolerated is not None
+    high = None if math.isinf(standing.tolerated.high) else standing.tolerated.high
+    assert document["laws"][0] == {
+        "sheet": "",
+        "law": "computed torque",
+        "tolerated_level": {"value": standing.tolerated.value, "low": standing.tolerated.low, "high": high},
+    }
+
+
+@pytest.mark.parametrize("tolerance", [True, False])
+@pytest.mark.parametrize("draws", [0, 1, 128])
+def test_it_is_strict_json(make_results: Callable[..., Results], tolerance: bool, draws: int) -> None:
+    """No infinity and no NaN reaches the document, whatever the results hold; numpy's numbers pass."""
+    results = make_results(3, 6, draws=draws, incomplete=1, unstable=True, tolerance=tolerance)
+    odd = replace(
+        results.cells[0],
+        draws=np.int64(1),
+        measures={"tool_peak_mm": Measure(math.nan, -math.inf, np.float64(math.inf), np.float32(1), 2, 3)},
+    )
+    results = replace(results, cells=(odd, *results.cells[1:]))
+    document = results_json(results, "store")
+    assert json.loads(json.dumps(document, allow_nan=False)) == document
+    peak = document["cells"][0]["tool_peak_mm"]
+    assert [peak[key] for key in ("median", "median_low", "median_high", "p95")] == [None, None, None, 1.0]
+
+
+def test_without_a_tolerance_there_is_no_verdict(make_results: Callable[..., Results]) -> None:
+    """Shares, verdicts and tolerated levels are null; the scores are there."""
+    document = results_json(make_results(2, 3, tolerance=False), "store")
+    for cell in document["cells"]:
+        assert [cell[key] for key in ("pass_share", "pass_low", "pass_high", "verdict")] == [None] * 4
+        assert cell["motions"]["load tray"]["pass_share"] is None
+        assert cell["tool_peak_mm"]["median"] > 0
+    assert all(law["tolerated_level"] is None for law in document["laws"])
