@@ -8,11 +8,13 @@ from dataclasses import dataclass
 import numpy as np
 
 from rigbench.arm.arm import PRISMATIC, REVOLUTE, Floats
-from rigbench.arm.physical import from_inertia, impossible, inertia
+from rigbench.arm.physical import from_inertia, inertia, possible
 from rigbench.arm.urdf import Joint, Robot
 from rigbench.errors import Fault
 
 __all__ = ["Chain", "chain_of"]
+
+POSSIBLE = "a mass above 0 and positive principal inertias, each at most the sum of the other two"
 
 
 @dataclass(frozen=True, eq=False)
@@ -44,7 +46,7 @@ def chain_of(robot: Robot, tool: str, lock: Mapping[str, float]) -> tuple[Chain 
     if not moving:
         problem = f"no joint moves between the base link and '{tool}'"
         return None, [Fault(robot.file, robot.line, "", problem, "a tool at the end of the chain")]
-    faults = [*_path_faults(robot, path, moving), *_branch_faults(robot, path, moving, lock)]
+    faults = [*_path_faults(robot, path, moving, lock), *_branch_faults(robot, path, moving, lock)]
     if faults:
         return None, faults
     return _merge(robot, above, moving, tool, lock)
@@ -83,7 +85,9 @@ def _path(above: Mapping[str, Joint], link: str) -> list[Joint]:
     return path
 
 
-def _path_faults(robot: Robot, path: list[Joint], moving: list[Joint]) -> Iterable[Fault]:
+def _path_faults(
+    robot: Robot, path: list[Joint], moving: list[Joint], lock: Mapping[str, float]
+) -> Iterable[Fault]:
     for joint in path:
         if joint.kind in ("floating", "planar"):
             yield robot.fault(
@@ -92,14 +96,16 @@ def _path_faults(robot: Robot, path: list[Joint], moving: list[Joint]) -> Iterab
     for joint in moving:
         if joint.follows is not None:
             problem = f"it follows joint '{joint.follows}' (mimic), so no drive of its own moves it"
-            yield robot.fault(joint, problem, _lock_line([joint]))
+            yield robot.fault(joint, problem, _lock_line([joint], lock))
         elif joint.lower == joint.upper:
             problem = f"its limits are both {joint.lower:g}, so it can't move"
-            yield robot.fault(joint, problem, _lock_line([joint]))
+            yield robot.fault(joint, problem, _lock_line([joint], lock))
 
 
-def _lock_line(joints: Iterable[Joint]) -> str:
-    inside = ", ".join(f"{joint.name}: {joint.resting!r}" for joint in joints)
+def _lock_line(joints: Iterable[Joint], lock: Mapping[str, float]) -> str:
+    """Return the line for the arm file that locks these joints too, ready to be pasted."""
+    positions = {**lock, **{joint.name: joint.resting for joint in joints}}
+    inside = ", ".join(f"{name}: {position!r}" for name, position in positions.items())
     return f"'lock: {{{inside}}}' in the arm file"
 
 
@@ -120,7 +126,7 @@ def _branch_faults(
         return
     said = ", ".join(f"{joint.name} (line {joint.line})" for joint in loose)
     verb = "is not part" if len(loose) == 1 else "are not part"
-    yield robot.fault(loose[0], f"{said} {verb} of the chain to the tool", _lock_line(loose))
+    yield robot.fault(loose[0], f"{said} {verb} of the chain to the tool", _lock_line(loose, lock))
     carrier = _carriers(robot, moving + loose)
     for joint in moving:
         beside = [other for other in loose if carrier[other.parent] == carrier[joint.parent]]
@@ -156,11 +162,12 @@ def _merge(
         if link.inertial is None:
             continue
         if link.inertial.impossible:
-            fault = Fault(robot.file, link.inertial.line, f"link {name}", link.inertial.impossible)
+            said, line = link.inertial.impossible, link.inertial.line
             if head is None:
-                notes.append(_harmless(fault))
+                said += " (without effect: it is part of the base)"
+                notes.append(Fault(robot.file, line, f"link {name}", said))
             else:
-                faults.append(fault)
+                faults.append(Fault(robot.file, line, f"link {name}", said, POSSIBLE))
         elif head is not None:
             parameters[head] += moved(link.inertial.parameters, turned, shifted)
     for i, joint in enumerate(moving):
@@ -175,11 +182,6 @@ def _merge(
         tuple(moving), kinds, rotation, position, parameters, tool_rotation, tool_position, tuple(notes)
     )
     return chain, []
-
-
-def _harmless(fault: Fault) -> Fault:
-    problem = f"{fault.problem} (without effect: it is part of the base)"
-    return Fault(fault.file, fault.line, fault.key, problem)
 
 
 def _place(
@@ -206,15 +208,14 @@ def moved(parameters: Floats, rotation: Floats, position: Floats) -> Floats:
 
 
 def _body_faults(robot: Robot, moving: list[Joint], parameters: Floats) -> list[Fault]:
-    """Return a fault for each moving body that has no mass or can't exist."""
+    """Return a fault for each moving body that has no mass, or no extent in some direction."""
     faults = []
     for joint, ten in zip(moving, parameters, strict=True):
         link = robot.links[joint.child]
-        reason = impossible(ten)
         if not ten.any():
             problem = f"it moves (joint {joint.name}) but has no mass, nor has what is fixed to it"
             faults.append(robot.fault(link, problem, "an <inertial> with a mass above 0"))
-        elif reason:
-            problem = f"with all that is fixed to it, {reason}"
-            faults.append(robot.fault(link, problem, "the inertia of a body with extent in all directions"))
+        elif not possible(ten):
+            problem = "with all that is fixed to it, it is a point, a rod or a lamina"
+            faults.append(robot.fault(link, problem, "a body with extent in every direction"))
     return faults

@@ -97,7 +97,8 @@ def _arm(files: ArmFiles) -> Arm:
     if chain is not None:
         faults += _drive_faults(document, [joint.name for joint in chain.joints], robot)
     if faults or declaration is None or robot is None or chain is None:
-        raise InputFaults(faults)
+        # the arm file's first, each file's in the order of its lines
+        raise InputFaults(sorted(faults, key=lambda fault: (fault.file != files.path, fault.line or 0)))
     notes = (*chain.notes, *_mesh_notes(robot), *_encoder_notes(document, declaration))
     return _assembled(robot.name, chain, declaration.drives, notes)
 
@@ -181,7 +182,9 @@ def _drive_faults(document: Document, joints: Sequence[str], robot: Robot | None
     missing = [joint for joint in joints if joint not in declared and joint not in meant]
     if missing and (isinstance(document.data.get("drives"), dict) or "drives" not in document.data):
         block = "\n".join(["drives:", *(f"  {joint}: {EMPTY_DRIVE}" for joint in missing)])
-        yield document.fault(("drives",), f"missing for {', '.join(missing)}", f"\n{block}\n")
+        yield document.fault(
+            ("drives",), f"missing for {', '.join(missing)}", f"this, with your numbers:\n{block}"
+        )
 
 
 def _mesh_notes(robot: Robot) -> Iterator[Fault]:

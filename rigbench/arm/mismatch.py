@@ -146,7 +146,7 @@ def believed(arm: Arm, mismatch: Mismatch) -> Arm:
     return arm if mass == 0 else arm.replaced(_loaded(arm, arm.parameters, mass, np.zeros(3)))
 
 
-def plant(  # noqa: PLR0917 - what a run says of its plant, in the run's order
+def plant(
     arm: Arm, mismatch: Mismatch, level: float, sources: Iterable[str], seed: int, draw: int | None
 ) -> Arm:
     """Return the arm as the given draw has it when ``sources`` act at ``level``.

@@ -8,23 +8,20 @@ from __future__ import annotations
 
 import math
 import re
-from collections.abc import Iterator, Mapping
-from dataclasses import dataclass, field
-from xml.parsers import expat
+from collections.abc import Mapping
+from dataclasses import dataclass
 
 import numpy as np
 
 from rigbench.arm.arm import Floats
 from rigbench.arm.physical import from_inertia, second_moments
+from rigbench.arm.xmlfile import Element, parse_xml
 from rigbench.errors import Fault, nearest
 
 __all__ = ["Inertial", "Joint", "Link", "Robot", "read_urdf", "turn"]
 
 JOINT_KINDS = ("revolute", "continuous", "prismatic", "fixed", "floating", "planar")
 MOVABLE = ("revolute", "continuous", "prismatic")
-
-DEEPEST = 60
-"""Levels of XML nesting that a file may have; a URDF needs about six."""
 
 LARGEST = 1e9
 """Magnitude above which a number is taken for a slip; squares of it are still far from overflow."""
@@ -118,8 +115,10 @@ def read_urdf(file: str, text: str) -> tuple[Robot | None, list[Fault]]:
 
     Returns the robot, None where a fault left parts of it unknown, and all faults in line order.
     """
-    root, faults = _parse(file, text)
-    if root is None:
+    root, faults = parse_xml(file, text)
+    if root is not None and root.tag != "robot":
+        faults.append(Fault(file, root.line, "", f"its outermost element is <{root.tag}>", "<robot>"))
+    if root is None or faults:
         return None, faults
     reader = _Reader(file, faults)
     links = [reader.link(element) for element in root.children if element.tag == "link"]
@@ -140,65 +139,6 @@ def read_urdf(file: str, text: str) -> tuple[Robot | None, list[Fault]]:
     return Robot(file, name, {k.name: k for k in links}, {j.name: j for j in joints}, root.line), []
 
 
-@dataclass(eq=False)
-class _Element:
-    tag: str
-    attributes: Mapping[str, str]
-    line: int
-    children: list[_Element] = field(default_factory=list)
-
-    def child(self, tag: str) -> _Element | None:
-        return next((child for child in self.children if child.tag == tag), None)
-
-    def all(self, tag: str) -> Iterator[_Element]:
-        """Yield every element of a tag below this one (DEEPEST bounds the recursion)."""
-        for child in self.children:
-            if child.tag == tag:
-                yield child
-            yield from child.all(tag)
-
-
-class _RefusedError(Exception):
-    """The XML holds what no URDF needs."""
-
-
-def _parse(file: str, text: str) -> tuple[_Element | None, list[Fault]]:
-    """Parse XML into elements that know their line, without entities or a document type."""
-    top = _Element("", {}, 1)
-    stack = [top]
-    parser = expat.ParserCreate()
-
-    def start(tag: str, attributes: dict[str, str]) -> None:
-        if len(stack) > DEEPEST:
-            raise _RefusedError(f"nested more than {DEEPEST} deep")
-        if tag.startswith("xacro:"):
-            raise _RefusedError(f"<{tag}> belongs to a template, not to a URDF: expand it first")
-        element = _Element(tag, attributes, parser.CurrentLineNumber)
-        stack[-1].children.append(element)
-        stack.append(element)
-
-    def end(_: str) -> None:
-        stack.pop()
-
-    def doctype(*_: object) -> None:
-        raise _RefusedError("a document type (DOCTYPE) is not allowed")
-
-    parser.StartElementHandler, parser.EndElementHandler = start, end
-    parser.StartDoctypeDeclHandler = doctype
-    try:
-        parser.Parse(text, True)
-    except expat.ExpatError as error:
-        return None, [Fault(file, error.lineno, "", f"not valid XML: {expat.ErrorString(error.code)}")]
-    except ValueError as error:  # lone surrogates can't be encoded
-        return None, [Fault(file, None, "", f"not valid XML: {error}")]
-    except _RefusedError as error:
-        return None, [Fault(file, parser.CurrentLineNumber, "", str(error), "a plain URDF")]
-    root = top.children[0]
-    if root.tag != "robot":
-        return None, [Fault(file, root.line, "", f"its outermost element is <{root.tag}>", "<robot>")]
-    return root, []
-
-
 class _Reader:
     """Turns elements into links and joints and notes what is wrong with them."""
 
@@ -207,11 +147,11 @@ class _Reader:
         self.names: dict[str, dict[str, int]] = {"link": {}, "joint": {}}
 
     def fault(
-        self, element: _Element, key: str, problem: str, expected: str = "", near: str | None = None
+        self, element: Element, key: str, problem: str, expected: str = "", near: str | None = None
     ) -> None:
         self.faults.append(Fault(self.file, element.line, key, problem, expected, near))
 
-    def link(self, element: _Element) -> Link:
+    def link(self, element: Element) -> Link:
         name = self._name(element)
         meshes = tuple(
             (mesh.line, mesh.attributes["filename"])
@@ -222,7 +162,7 @@ class _Reader:
         inertial = None if part is None else self._inertial(part, f"link {name}")
         return Link(name, element.line, inertial, meshes)
 
-    def joint(self, element: _Element) -> Joint:
+    def joint(self, element: Element) -> Joint:
         name = self._name(element)
         key = f"joint {name}"
         kind = element.attributes.get("type", "")
@@ -251,7 +191,7 @@ class _Reader:
             follows,
         )
 
-    def _name(self, element: _Element) -> str:
+    def _name(self, element: Element) -> str:
         name = element.attributes.get("name", "")
         taken = self.names[element.tag]
         if not name:
@@ -262,14 +202,14 @@ class _Reader:
         taken.setdefault(name, element.line)
         return name
 
-    def _end(self, element: _Element, tag: str, key: str) -> str:
+    def _end(self, element: Element, tag: str, key: str) -> str:
         part = element.child(tag)
         name = "" if part is None else part.attributes.get("link", "")
         if not name:
             self.fault(part or element, key, f"no {tag} link is given", f'<{tag} link="..."/>')
         return name
 
-    def _number(self, element: _Element, attribute: str, key: str, default: float | None = None) -> float:
+    def _number(self, element: Element, attribute: str, key: str, default: float | None = None) -> float:
         given = element.attributes.get(attribute)
         if given is None:
             if default is None:
@@ -278,7 +218,7 @@ class _Reader:
         numbers = self._numbers(element, attribute, given, 1, key)
         return float(numbers[0])
 
-    def _numbers(self, element: _Element, attribute: str, given: str, count: int, key: str) -> Floats:
+    def _numbers(self, element: Element, attribute: str, given: str, count: int, key: str) -> Floats:
         words = given.split()
         numbers = [float(word) for word in words if _NUMBER.fullmatch(word)]
         if len(words) != count or len(numbers) != count or max(map(abs, numbers)) > LARGEST:
@@ -287,10 +227,10 @@ class _Reader:
             return np.zeros(count)
         return np.array(numbers)
 
-    def _vector(self, element: _Element, attribute: str, key: str, default: str) -> Floats:
+    def _vector(self, element: Element, attribute: str, key: str, default: str) -> Floats:
         return self._numbers(element, attribute, element.attributes.get(attribute, default), 3, key)
 
-    def _origin(self, element: _Element, key: str) -> tuple[Floats, Floats]:
+    def _origin(self, element: Element, key: str) -> tuple[Floats, Floats]:
         """Return an element's <origin>: rotation Rz(yaw) Ry(pitch) Rx(roll) and position [m]."""
         origin = element.child("origin")
         if origin is None:
@@ -299,7 +239,7 @@ class _Reader:
         x, y, z = np.eye(3)
         return turn(z, yaw) @ turn(y, pitch) @ turn(x, roll), self._vector(origin, "xyz", key, "0 0 0")
 
-    def _axis(self, element: _Element, key: str) -> Floats:
+    def _axis(self, element: Element, key: str) -> Floats:
         part = element.child("axis")
         if part is None:
             return np.array([1.0, 0.0, 0.0])  # the format's default
@@ -312,7 +252,7 @@ class _Reader:
             return np.array([1.0, 0.0, 0.0])
         return axis / length
 
-    def _limits(self, element: _Element, key: str, kind: str) -> tuple[float, float, float, float]:
+    def _limits(self, element: Element, key: str, kind: str) -> tuple[float, float, float, float]:
         """Return lower, upper, effort and velocity; an effort or velocity of 0 stands for none."""
         part = element.child("limit")
         bounded = kind in ("revolute", "prismatic")
@@ -328,7 +268,7 @@ class _Reader:
             lower, upper = -math.inf, math.inf
         return lower, upper, effort if effort > 0 else math.inf, velocity if velocity > 0 else math.inf
 
-    def _inertial(self, element: _Element, key: str) -> Inertial | None:
+    def _inertial(self, element: Element, key: str) -> Inertial | None:
         """Return an <inertial>; None for one without mass and inertia."""
         known = len(self.faults)
         rotation, cog = self._origin(element, key)
@@ -355,6 +295,4 @@ def _impossible(mass: float, tensor: Floats) -> str:
     if np.linalg.eigvalsh(second_moments(tensor))[0] >= -ROUNDING * abs(np.trace(tensor)):
         return ""
     said = ", ".join(f"{moment:.6g}" for moment in np.linalg.eigvalsh(tensor))
-    return (
-        f"its principal inertias are {said} kg m^2: one of them is negative or above the sum of the other two"
-    )
+    return f"its principal inertias are {said} kg m^2, which no body has"

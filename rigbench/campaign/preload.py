@@ -2,14 +2,9 @@
 
 from __future__ import annotations
 
-import os
+import sys
 
 from rigbench.campaign.worker import prepare_server
 
-__all__ = ["SERVER_OF"]
-
-SERVER_OF = "RIGBENCH_SERVER_OF"
-"""Environment variable that holds the id of the process that starts a server."""
-
-if os.environ.get(SERVER_OF) == str(os.getppid()):
+if any("multiprocessing.forkserver" in argument for argument in sys.orig_argv):
     prepare_server()

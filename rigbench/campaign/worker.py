@@ -22,6 +22,10 @@ from rigbench.campaign.work import summary
 
 __all__ = ["Trouble", "prepare_server", "prepare_worker", "serve"]
 
+LIBRARIES = ("OMP", "OPENBLAS", "MKL", "BLIS", "NUMEXPR", "NUMBA")
+ONE_THREAD = {f"{library}_NUM_THREADS": "1" for library in LIBRARIES}
+"""Every core has a worker of its own, so the libraries in it must not start threads of theirs."""
+
 PR_SET_PDEATHSIG = 1
 """Linux, prctl(2)."""
 
@@ -37,6 +41,7 @@ class Trouble:
 def prepare_server() -> None:
     """Make the server ready to fork workers: all is loaded and compiled; it ends with its parent."""
     _die_with_parent()
+    os.environ.update(ONE_THREAD)  # read when the libraries are loaded, so before that
     os.dup2(2, 1)  # stdout belongs to the command's own result, not to what a law or the engine prints
     with contextlib.suppress(Exception):  # whatever is wrong, the runs will meet it, and each says so
         import rigbench.scores.of_run  # noqa: F401
@@ -51,6 +56,7 @@ def prepare_worker(folder: str) -> None:
     parent = multiprocessing.parent_process()
     if parent is not None and not parent.is_alive():
         os._exit(1)  # it died before the line above could tell
+    os.environ.update(ONE_THREAD)  # as in the server, should that have been started by somebody else
     os.dup2(2, 1)
     signal.signal(signal.SIGINT, signal.SIG_IGN)  # Ctrl-C reaches the whole group; the parent decides
     signal.signal(signal.SIGTERM, signal.SIG_DFL)  # at once, even from within a kernel that never returns

@@ -3,28 +3,23 @@
 from __future__ import annotations
 
 import contextlib
-import multiprocessing
 import os
 import signal
-import sys
 import tempfile
 from collections.abc import Iterator
 from concurrent.futures import Future
 from multiprocessing import forkserver, resource_tracker
+from multiprocessing.context import ForkServerContext
+from multiprocessing.synchronize import RLock
 from pathlib import Path
 from types import TracebackType
 
 from pebble import ProcessPool
 
-from rigbench.campaign.preload import SERVER_OF
 from rigbench.campaign.worker import prepare_worker, serve
 from rigbench.errors import RigbenchError
 
 __all__ = ["Crew", "usable_cores"]
-
-LIBRARIES = ("OMP", "OPENBLAS", "MKL", "BLIS", "NUMEXPR", "NUMBA")
-ONE_THREAD = {f"{library}_NUM_THREADS": "1" for library in LIBRARIES}
-"""Every core has its own worker, so the libraries within it must not start threads of theirs."""
 
 
 def usable_cores() -> int:
@@ -39,12 +34,13 @@ class Crew:
 
     def __init__(self, size: int) -> None:
         self._folder = tempfile.TemporaryDirectory(prefix="rigbench-workers-")
+        self._context = _Context()
         _start_server()
         self._pool = ProcessPool(
             max_workers=size,
             initializer=prepare_worker,
             initargs=(self._folder.name,),
-            context=multiprocessing.get_context("forkserver"),
+            context=self._context,
         )
 
     def __enter__(self) -> Crew:
@@ -82,6 +78,7 @@ class Crew:
         """End all workers at once, whatever they are doing."""
         self._pool.stop()  # type: ignore[no-untyped-call]
         self._pool.join()
+        self._context.locks.clear()
         self._folder.cleanup()
 
 
@@ -89,33 +86,42 @@ class BrokenCrew(RigbenchError):
     """Worker processes can't be had."""
 
 
+class _Context(ForkServerContext):
+    """Keeps the pool's locks until the crew has gone: a worker still starting would miss them, loudly."""
+
+    def __init__(self) -> None:
+        super().__init__()
+        self.locks: list[RLock] = []
+
+    def RLock(self) -> RLock:
+        lock = super().RLock()
+        self.locks.append(lock)
+        return lock
+
+
 def _start_server() -> None:
     """Start the process from which workers are forked, unless it runs already.
 
-    It looks for modules where this process does, holds native libraries to one thread, and never sees
-    Ctrl-C, not even while it starts.
+    It looks for no module in the current folder, and never sees Ctrl-C, not even while it starts.
     """
-    context = multiprocessing.get_context("forkserver")
-    context.set_forkserver_preload(["rigbench.campaign.preload"])
-    resource_tracker.ensure_running()  # it meddles with the signal mask, so it must not start within
-    places = os.pathsep.join(place or os.getcwd() for place in sys.path)
-    surroundings = {**ONE_THREAD, SERVER_OF: str(os.getpid()), "PYTHONPATH": places, "PYTHONSAFEPATH": "1"}
-    with _environment(surroundings), _interrupts_held_back():
-        forkserver.ensure_running()
+    forkserver.set_forkserver_preload(["rigbench.campaign.preload"])
+    with _environment("PYTHONSAFEPATH", "1"):
+        resource_tracker.ensure_running()  # it sets the signal mask itself, so it must not start below
+        with _interrupts_held_back():
+            forkserver.ensure_running()
 
 
 @contextlib.contextmanager
-def _environment(values: dict[str, str]) -> Iterator[None]:
-    before = {name: os.environ.get(name) for name in values}
-    os.environ.update(values)
+def _environment(name: str, value: str) -> Iterator[None]:
+    before = os.environ.get(name)
+    os.environ[name] = value
     try:
         yield
     finally:
-        for name, value in before.items():
-            if value is None:
-                del os.environ[name]
-            else:
-                os.environ[name] = value
+        if before is None:
+            del os.environ[name]
+        else:
+            os.environ[name] = before
 
 
 @contextlib.contextmanager

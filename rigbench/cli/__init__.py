@@ -49,7 +49,7 @@ def _root(
     del version
 
 
-@app.command(epilog="Example: rigbench check experiments/first_look.yaml")
+@app.command(epilog="Example: rigbench check experiments/first-look.yaml")
 def check(file: Experiment, as_json: Json = False) -> None:
     """Validate an experiment and print its plan, the draws it needs and an estimated time.
 
@@ -61,7 +61,7 @@ def check(file: Experiment, as_json: Json = False) -> None:
         check_experiment(file, as_json)
 
 
-@app.command(epilog="Example: rigbench run experiments/first_look.yaml --jobs 2")
+@app.command(epilog="Example: rigbench run experiments/first-look.yaml --jobs 2")
 def run(
     file: Experiment,
     jobs: Annotated[
@@ -84,7 +84,7 @@ def run(
         run_experiment(file, jobs, store, as_json)
 
 
-@app.command(epilog="Example: rigbench status results/first_look.sqlite")
+@app.command(epilog="Example: rigbench status results/first-look.sqlite")
 def status(store: StoreFile, as_json: Json = False) -> None:
     """Print how far a campaign is and how the laws stand so far, also while it runs."""
     with telling(as_json):
@@ -93,7 +93,7 @@ def status(store: StoreFile, as_json: Json = False) -> None:
         print_status(store, as_json)
 
 
-@app.command(epilog="Example: rigbench matrix results/first_look.sqlite -o matrix.svg")
+@app.command(epilog="Example: rigbench matrix results/first-look.sqlite -o matrix.svg")
 def matrix(
     store: StoreFile,
     output: Annotated[
@@ -113,7 +113,7 @@ def matrix(
         draw_matrix(store, output, as_json)
 
 
-@app.command(epilog="Example: rigbench export results/first_look.sqlite -o runs.csv")
+@app.command(epilog="Example: rigbench export results/first-look.sqlite -o runs.csv")
 def export(
     store: StoreFile,
     output: Annotated[

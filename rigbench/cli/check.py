@@ -16,9 +16,12 @@ from rigbench.cli.progress import duration_words
 from rigbench.cli.run import store_path
 from rigbench.errors import Fault, InputFaults, StoreError
 from rigbench.experiment import Experiment, load_experiment
+from rigbench.rig.run import Run
 from rigbench.scores.intervals import draws_needed, misses_allowed
 
 __all__ = ["check_experiment"]
+
+QUICK_S = 2.0
 
 
 @dataclass(frozen=True)
@@ -76,33 +79,34 @@ def _estimate(experiment: Experiment, plan: Plan, stored: Stored) -> Estimate:
 
     warm_up()
     name, motion = min(experiment.motions.items(), key=lambda item: item[1].duration_s)
-    notes: list[Fault] = []
-    faults: list[Fault] = []
-    seconds: float | None = 0.0
-    total_s = sum(reference.duration_s for reference in experiment.motions.values())
-    for law, choice in experiment.laws.items():
-        outcome = do(replace(experiment.first, law=choice, motion=motion, level=0.0, sources=(), draw=None))
+    run = replace(experiment.first, motion=motion, level=0.0, sources=(), draw=None)
+    outcomes = {law: _measured(replace(run, law=choice)) for law, choice in experiment.laws.items()}
+    faults, notes = [], []
+    for law, outcome in outcomes.items():
+        line, key = experiment.law_lines[law], f"laws.{law}"
         if outcome.outcome == "law-error":
             problem = f"raised {outcome.reason}\n{outcome.trace}".rstrip()
-            faults.append(Fault(experiment.path, None, f"laws.{law}", problem))
+            faults.append(Fault(experiment.path, line, key, problem))
         elif outcome.outcome != "finished":
-            said = f"does not finish motion {name} even in nominal ({outcome.outcome}): {outcome.reason}"
-            notes.append(Fault(experiment.path, None, f"laws.{law}", f"{said}\n{outcome.trace}".rstrip()))
-        seconds = _added(seconds, outcome, total_s / motion.duration_s)
+            problem = f"does not finish motion {name} even in nominal ({outcome.outcome}): {outcome.reason}"
+            notes.append(Fault(experiment.path, line, key, f"{problem}\n{outcome.trace}".rstrip()))
     if faults:
         raise InputFaults(faults)
-    if seconds is not None:
+    seconds = None
+    times = [outcome.wall_s for outcome in outcomes.values() if outcome.wall_s is not None]
+    if not notes and len(times) == len(outcomes):  # a run that broke off says nothing about a whole one
+        along_all = sum(each.duration_s for each in experiment.motions.values()) / motion.duration_s
         columns = len(plan.entries) / (len(plan.laws) * len(plan.motions))
         left = 1 - (stored.runs or 0) / len(plan.entries)
-        seconds *= columns * left / usable_cores()
+        seconds = sum(times) * along_all * columns * left / usable_cores()
     return Estimate(seconds, usable_cores(), tuple(notes))
 
 
-def _added(seconds: float | None, outcome: Outcome, times: float) -> float | None:
-    """A run that broke off early says nothing about how long a whole one takes."""
-    if seconds is None or outcome.outcome != "finished" or outcome.wall_s is None:
-        return None
-    return seconds + outcome.wall_s * times
+def _measured(run: Run) -> Outcome:
+    """Do a run; twice if it is quick, for the first of a process may have something to compile."""
+    outcome = do(run)
+    quick = outcome.outcome == "finished" and outcome.wall_s is not None and outcome.wall_s < QUICK_S
+    return do(run) if quick else outcome
 
 
 def _lines(experiment: Experiment, plan: Plan, stored: Stored, estimate: Estimate) -> Iterator[str]:
@@ -146,7 +150,7 @@ def _draws_lines(experiment: Experiment) -> Iterator[str]:
     if allowed is None:
         yield f"{said}; {experiment.draws} can't"
     else:
-        yield f"{said}; of {experiment.draws} {allowed or 'none'} may miss it"
+        yield f"{said}; of {experiment.draws}, {allowed or 'none'} may miss it"
 
 
 def _document(experiment: Experiment, plan: Plan, stored: Stored, estimate: Estimate) -> dict[str, Any]:

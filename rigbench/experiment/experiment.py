@@ -45,8 +45,9 @@ MOST_RUNS = 2_000_000
 class Experiment:
     """All that an experiment file declares, defaults included.
 
-    ``path`` as the user named it; ``draws`` the machines drawn in each random condition; ``notes`` what
-    the user should know but need not change.
+    ``path`` as the user named it; ``first`` the first run, which holds what all of them share; ``draws``
+    the machines drawn in each random condition; ``law_lines`` where the laws stand in the file; ``notes``
+    what the user should know but need not change.
     """
 
     path: str
@@ -59,6 +60,7 @@ class Experiment:
     conditions: tuple[Condition, ...]
     draws: int
     tolerance: Tolerance | None
+    law_lines: Mapping[str, int | None]
     notes: tuple[Fault, ...] = ()
 
     @property
@@ -163,6 +165,7 @@ def _check(keys: ExperimentKeys, findings: Findings, path: Path, text: str) -> E
         conditions=conditions_of(mismatch, keys.conditions),
         draws=keys.draws,
         tolerance=tolerance,
+        law_lines={name: findings.document.line(("laws", name)) for name in laws},
     )
     _look_over(experiment, keys, findings)
     return replace(experiment, notes=tuple(dict.fromkeys(findings.notes)))

@@ -117,7 +117,7 @@ def _columns(file: str, header: Line, arm: Arm) -> tuple[dict[str, int], list[Fa
             faults.append(Fault(file, line, "", f"no joint '{_short(name)}'", "joints of the arm", near))
         elif name in column:
             faults.append(Fault(file, line, name, "two columns of this name", "one"))
-        column.setdefault(name, at)
+        column[name] = at
     for joint in arm.joints:
         if joint not in column:
             faults.append(Fault(file, line, joint, "missing", "a column for every joint of the arm"))

@@ -28,7 +28,7 @@ Column = tuple[int, list[list[str]]]
 """Width; then the lines of the head and of each row."""
 
 BETWEEN = 2
-HEAD_WIDTH = 12
+HEAD_WIDTH = 15
 NARROWEST = 40
 LAW_PART = 0.25
 """The most that the laws' names take of the width before they are broken."""

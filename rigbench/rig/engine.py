@@ -8,8 +8,6 @@ import tempfile
 from collections.abc import Callable, Iterator, Sequence
 from typing import Any
 
-import pybullet
-
 from rigbench.arm.arm import Arm, Floats
 from rigbench.arm.plant_urdf import plant_urdf
 from rigbench.errors import EngineError
@@ -18,16 +16,22 @@ __all__ = ["Engine"]
 
 
 @contextlib.contextmanager
-def _quiet() -> Iterator[None]:
-    """Keep what the engine's C code prints off our standard output, where a caller's JSON goes."""
-    saved, sink = os.dup(1), os.open(os.devnull, os.O_WRONLY)
+def _quiet(*streams: int) -> Iterator[None]:
+    """Keep what the engine's C code prints off these file descriptors (1: where a caller's JSON goes)."""
+    saved, sink = [os.dup(stream) for stream in streams], os.open(os.devnull, os.O_WRONLY)
     try:
-        os.dup2(sink, 1)
+        for stream in streams:
+            os.dup2(sink, stream)
         yield
     finally:
-        os.dup2(saved, 1)
-        os.close(saved)
+        for stream, copy in zip(streams, saved, strict=True):
+            os.dup2(copy, stream)
+            os.close(copy)
         os.close(sink)
+
+
+with _quiet(1, 2):  # its import prints a banner
+    import pybullet
 
 
 class Engine:
@@ -40,7 +44,7 @@ class Engine:
     """
 
     def __init__(self) -> None:
-        with _quiet():
+        with _quiet(1):
             self._client = int(pybullet.connect(pybullet.DIRECT))
         if self._client < 0:
             raise EngineError("connecting", "no client to be had")
@@ -65,7 +69,7 @@ class Engine:
             file.write(plant_urdf(arm))
             file.flush()
             try:
-                with _quiet():
+                with _quiet(1):
                     self._load(file.name, arm.n, q, v, gravity, dt)
             except pybullet.error as problem:
                 raise EngineError("loading the plant", str(problem)) from None

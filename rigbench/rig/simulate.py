@@ -20,19 +20,16 @@ from rigbench.rig.drive import (
     BEYOND_BOUNDS,
     ERROR,
     HIT_STOP,
-    LIMITED,
-    MOTOR,
     OK,
     Q_ENGINE,
     ROWS,
     TAU_ENGINE,
     machine_array,
-    read_state,
-    step_drive,
 )
 from rigbench.rig.engine import Engine
 from rigbench.rig.log import Log
 from rigbench.rig.run import Run
+from rigbench.rig.tick import LOG_ROWS, begin_step, end_step
 
 __all__ = ["simulate", "worker_engine"]
 
@@ -164,41 +161,38 @@ class _Loop:
 
     def go(self, t: Floats, reference: Floats) -> tuple[int, int]:
         """Run to the end or to where it breaks off; return the status and the number of ticks logged."""
-        io, chain, machine, tick = self.io, self._chain, self._machine, self._tick
+        io, chain, machine, law_tick = self.io, self._chain, self._machine, self._tick
         read, apply, step = self._engine.read, self._engine.apply, self._engine.step
         n, count = io.shape[1], len(t)
         pack, fill = struct.Struct(f"{2 * n}d").pack_into, io.data.cast("B")
-        offset = Q_ENGINE * n * 8
-        self.log = log = np.empty((count, 4, n))
-        wanted, state, motor, torque = (
-            io[Q_REF : A_REF + 1],
-            io[Q : V + 1],
-            io[MOTOR : LIMITED + 1],
-            io[TAU_ENGINE],
-        )
-        clock = io[CLOCK]
-        substeps, last = range(self._substeps), count - 1
+        offset = Q_ENGINE * n * io.itemsize
+        self.log = log = np.empty((count, LOG_ROWS, n))
+        torque, clock, times = io[TAU_ENGINE], io[CLOCK], t.tolist()
+        between, last = range(self._substeps - 1), count - 1
         for k in range(count):
-            wanted[:] = reference[k]
-            clock[0] = t[k]
-            for substep in substeps:
+            states = read()
+            pack(fill, offset, *[s[0] for s in states], *[s[1] for s in states])
+            status = begin_step(machine, io, reference, k)
+            if status != OK:
+                return status, k
+            clock[0] = times[k]
+            try:
+                law_tick(k)
+            except Exception as problem:
+                raise _law_error(self._name, problem) from None
+            if not end_step(chain, machine, io, log, k):
+                raise LawError(self._name, "a torque that is not a number", f"at t = {times[k]:.4f} s")
+            if k == last:
+                break
+            apply(torque.tolist())
+            step()
+            for _ in between:
                 states = read()
                 pack(fill, offset, *[s[0] for s in states], *[s[1] for s in states])
-                status = read_state(machine, io)
+                status = begin_step(machine, io, reference, k)
                 if status != OK:
-                    return status, k + (substep > 0)
-                if substep == 0:
-                    try:
-                        tick(k)
-                    except Exception as problem:
-                        raise _law_error(self._name, problem) from None
-                if not step_drive(chain, machine, io):
-                    raise LawError(self._name, "a torque that is not a number", f"at t = {t[k]:.4f} s")
-                if substep == 0:
-                    log[k, :2] = state
-                    log[k, 2:] = motor
-                    if k == last:
-                        break
+                    return status, k + 1
+                end_step(chain, machine, io, log, -1)
                 apply(torque.tolist())
                 step()
         return OK, count
@@ -206,37 +200,29 @@ class _Loop:
     def _law_tick(self, law: Law, model: Model) -> Callable[[int], None]:
         compiled = law.compiled()
         if compiled is None:
-            return self._timed(self._plain_tick(law))
+            return self._plain_tick(law)
         seen, held = self.io[:LAW_SEES], np.zeros(compiled.held_size)
         own, chain, every = np.ascontiguousarray(compiled.own), model.chain, self._every
         torque, model_term = compiled.torque, compiled.model_term
-
-        def tick(k: int) -> None:
-            if model_term is not None and k % every == 0:
-                model_term(seen, held, chain, own)
-            torque(seen, held, chain, own)
-
-        return self._timed(tick)
-
-    def _timed(self, bare: Callable[[int], None]) -> Callable[[int], None]:
         keep, now = self.law_ns.append, time.perf_counter_ns
 
         def tick(k: int) -> None:
-            if k % TIMED_EVERY:
-                bare(k)
-                return
-            before = now()
-            bare(k)
-            keep(now() - before)
+            before = now() if k % TIMED_EVERY == 0 else 0
+            if model_term is not None and k % every == 0:
+                model_term(seen, held, chain, own)
+            torque(seen, held, chain, own)
+            if before:
+                keep(now() - before)
 
         return tick
 
     def _plain_tick(self, law: Law) -> Callable[[int], None]:
         io, every, name, n = self.io, self._every, self._name, self.io.shape[1]
-        held = np.empty(0)
+        held, keep, now = np.empty(0), self.law_ns.append, time.perf_counter_ns
 
         def tick(k: int) -> None:
             nonlocal held
+            before = now()
             t, q, v = float(io[CLOCK, 0]), io[Q].copy(), io[V].copy()
             ref = Reference(io[Q_REF].copy(), io[V_REF].copy(), io[A_REF].copy())
             if k % every == 0:
@@ -247,5 +233,6 @@ class _Loop:
                     name, f"a torque of shape {torque.shape}; expected ({n},)", f"at t = {t:.4f} s"
                 )
             io[TAU] = torque
+            keep(now() - before)
 
         return tick

@@ -11,7 +11,8 @@ from rigbench.arm.dynamics import tool_path
 from rigbench.laws.law import CLOCK, Setup
 from rigbench.laws.model import Model
 from rigbench.laws.registry import registered
-from rigbench.rig.drive import ROWS, machine_array, read_state, step_drive
+from rigbench.rig.drive import ROWS, machine_array
+from rigbench.rig.tick import LOG_ROWS, begin_step, end_step
 
 __all__ = ["warm_up"]
 
@@ -25,8 +26,8 @@ def warm_up() -> None:
     arm = _one_joint()
     gravity = (0.0, 0.0, -9.81)
     model, io, machine = Model(arm, gravity), np.zeros((ROWS, 1)), machine_array(arm, 1e-3)
-    read_state(machine, io)
-    step_drive(model.chain, machine, io)
+    begin_step(machine, io, np.zeros((1, 3, 1)), 0)
+    end_step(model.chain, machine, io, np.zeros((1, LOG_ROWS, 1)), 0)
     tool_path(model.chain, np.zeros((1, 1)))
     limits = arm.drives.torque_limit, arm.drives.speed_limit
     setup = Setup(arm.joints, model, 1000.0, np.zeros(1), *limits)

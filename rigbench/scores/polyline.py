@@ -35,16 +35,18 @@ def farthest(points: Floats, path: Floats) -> float:
 
 @kernel
 def to_segment(point: Floats, path: Floats, k: int) -> float:
-    """Return the squared distance of ``point`` (3,) from the segment that ends at vertex k (k = 0: from it)."""
+    """Return the squared distance of ``point`` (3,) from the segment before vertex k (or from vertex 0)."""
     e0, e1, e2 = point[0] - path[k, 0], point[1] - path[k, 1], point[2] - path[k, 2]
     if k > 0:
         s0, s1, s2 = path[k - 1, 0] - path[k, 0], path[k - 1, 1] - path[k, 1], path[k - 1, 2] - path[k, 2]
         along = e0 * s0 + e1 * s1 + e2 * s2
         length = s0 * s0 + s1 * s1 + s2 * s2
-        if along > 0.0 and length > 0.0:  # the square of a tiny span may underflow; its end then stands for it
+        if (
+            along > 0.0 and length > 0.0
+        ):  # the square of a tiny span may underflow; its end then stands for it
             along = min(1.0, along / length)
             e0, e1, e2 = e0 - along * s0, e1 - along * s1, e2 - along * s2
-    return e0 * e0 + e1 * e1 + e2 * e2
+    return float(e0 * e0 + e1 * e1 + e2 * e2)
 
 
 @kernel
@@ -53,7 +55,7 @@ def nearest(point: Floats, path: Floats) -> float:
     least = np.inf
     for k in range(path.shape[0]):
         least = min(least, to_segment(point, path, k))
-    return np.sqrt(least)
+    return float(np.sqrt(least))
 
 
 @kernel
@@ -83,6 +85,4 @@ def walk(points: Floats, path: Floats) -> Floats:
 @kernel
 def to_vertex(point: Floats, path: Floats, k: int) -> float:
     """Return the squared distance of ``point`` (3,) from vertex k."""
-    return float(
-        (point[0] - path[k, 0]) ** 2 + (point[1] - path[k, 1]) ** 2 + (point[2] - path[k, 2]) ** 2
-    )
+    return float((point[0] - path[k, 0]) ** 2 + (point[1] - path[k, 1]) ** 2 + (point[2] - path[k, 2]) ** 2)

@@ -171,6 +171,16 @@ def test_principal_directions_rebuild_the_tensor(moments, seed):
     np.testing.assert_allclose(found[0] @ np.diag(values[0]) @ found[0].T, sigma[0], atol=1e-13)
 
 
+@pytest.mark.parametrize(
+    "moments", [(1, 1, 3), (1, 3, 1), (3, 1, 1), (1, 3, 3), (3, 3, 1), (3, 1, 3), (2, 2, 2)]
+)
+def test_principal_directions_of_a_round_link_are_the_frames_own(moments):
+    """A link that is round about an axis of its frame has the frame's axes for principal directions."""
+    values, found = principal_moments(np.diag(np.array(moments, float))[None])
+    np.testing.assert_array_equal(values[0], np.sort(moments))
+    np.testing.assert_allclose(np.sort(np.abs(found[0]), axis=0), [[0] * 3, [0] * 3, [1] * 3], atol=1e-15)
+
+
 @pytest.mark.parametrize("moments", [(1, 1, 3), (1, 3, 3), (2, 2, 2)])
 @pytest.mark.parametrize("seed", range(6))
 def test_principal_directions_of_equal_moments_ignore_rounding(moments, seed):

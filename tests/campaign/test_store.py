@@ -55,7 +55,9 @@ def test_rows_come_back_exactly_in_the_order_of_the_plan(path: Path, make_plan: 
     """Every float is the same bits, infinite is infinite, and rows are in plan order whatever order they came in."""
     plan = make_plan(draws=2)
     values = [math.inf, 0.1 + 0.2, 5e-324, 1.7976931348623157e308, 0.0, 1 / 3, 1e16, 2**-52, 123456.789, 1.0]
-    scores = {e.key: {"settle_ms": v, "joint_peak_deg.j1": v / 7} for e, v in zip(plan.entries, values, strict=True)}
+    scores = {
+        e.key: {"settle_ms": v, "joint_peak_deg.j1": v / 7} for e, v in zip(plan.entries, values, strict=True)
+    }
     with Store.open_for_writing(path, plan.title) as store:
         store.record_plan(plan)
         for entry in reversed(plan.entries):
@@ -341,7 +343,9 @@ def test_a_read_only_folder_can_be_read_and_not_written(read_only: Path, make_pl
 # --- power cuts and full disks
 
 
-def test_a_full_disk_is_said_plainly_and_costs_only_what_did_not_fit(path: Path, make_plan: PlanMaker) -> None:
+def test_a_full_disk_is_said_plainly_and_costs_only_what_did_not_fit(
+    path: Path, make_plan: PlanMaker
+) -> None:
     """SQLite's own 'full' (its limit of pages stands in for the disk's) is a StoreError; whole rows stay."""
     plan = make_plan(draws=100)
     added = 0
@@ -380,7 +384,9 @@ def test_a_killed_writer_leaves_whole_groups_only(path: Path) -> None:
     """After SIGKILL, three times over: the store opens clean, each group is whole, none that was told is lost."""
     for attempt in range(3):
         path = path.with_name(f"{attempt}.sqlite")
-        writer = subprocess.Popen([sys.executable, "-c", KILLED_WRITER, path], stdout=subprocess.PIPE, text=True)
+        writer = subprocess.Popen(
+            [sys.executable, "-c", KILLED_WRITER, path], stdout=subprocess.PIPE, text=True
+        )
         assert writer.stdout is not None
         for _ in range(20):
             told = int(writer.stdout.readline())
@@ -404,7 +410,9 @@ def test_what_a_killed_writer_left_can_be_read_at_once(path: Path, make_plan: Pl
     plan = make_plan()
     filled(path, plan)
     code = KILLED_WRITER.replace("range(1_000_000)", "range(1)") + "\n    import os; os._exit(1)\n"
-    code = code.replace("\n    import os", "\n    import os, signal").replace("os._exit(1)", "os.kill(os.getpid(), 9)")
+    code = code.replace("\n    import os", "\n    import os, signal").replace(
+        "os._exit(1)", "os.kill(os.getpid(), 9)"
+    )
     subprocess.run([sys.executable, "-c", code, path], check=False, stdout=subprocess.DEVNULL)
     log = path.with_name(path.name + "-wal")
     before = path.read_bytes(), log.read_bytes()

@@ -88,9 +88,12 @@ def quintic_plan(rest_rows: int):
     return np.arange(len(rows)) * 0.02, rows
 
 
-@pytest.mark.parametrize("pace", [1.0, 4.0, 0.7, 1.3, 2.2])
+@pytest.mark.parametrize("pace", [1.0, 4.0, 0.7, 49.0])
 def test_a_constant_tail_is_a_rest(pace):
-    """A plan that ends on equal rows for 0.1 s rests there: to the bit, its time scaled with all else."""
+    """A plan that ends on equal rows for 0.1 s rests there: to the bit, its time scaled with all else.
+
+    At a pace of 49 the leg's end, times the pace, rounds to just short of it.
+    """
     motion = table(*quintic_plan(10), pace)
     assert motion.rests == (pytest.approx((1.0 / pace, 1.2 / pace)),)
     q, v, a = motion.reference(np.linspace(1.0 / pace, 1.2 / pace, 33))
@@ -180,8 +183,9 @@ def test_inputs_tell_tables_apart():
         table(UNEVEN, other),
         table(UNEVEN, PLAN, 1.1),
         table(UNEVEN, PLAN[:, :1]),
-        table([0, 1, 2], [[0, 0]] * 3),
-        table([0, 0.5], [[0, 0, 1, 0, 2, 0, 0]] * 2),
+        # The same eight numbers row by row, in two shapes.
+        table([0, 0.5], [[1, 0.25, 2], [3, 0.75, 4]]),
+        table([0, 0.25, 0.5, 0.75], [[1], [2], [3], [4]]),
     ]
     assert len({json.dumps(motion.inputs()) for motion in different}) == len(different)
 

@@ -53,7 +53,9 @@ def test_incomplete_and_unfinished_draws_are_counted(say: Callable[..., Grid]) -
 
 @pytest.mark.parametrize("column", [NOMINAL, TOGETHER])
 @pytest.mark.parametrize("tolerance", [True, False])
-def test_a_cell_without_draws_claims_nothing(say: Callable[..., Grid], column: Column, tolerance: bool) -> None:
+def test_a_cell_without_draws_claims_nothing(
+    say: Callable[..., Grid], column: Column, tolerance: bool
+) -> None:
     """No share, no shade: only that there is no result and how many draws lack."""
     words = say(column, passed=0, draws=0, incomplete=5, tolerance=tolerance).words("", "mine", column)
     assert (words.figure, words.unit, words.interval, words.ink) == ("-", "", "", None)
@@ -139,7 +141,9 @@ def test_without_a_tolerance_rows_stand_as_declared(make_results: Callable[..., 
 
 def test_the_limit_of_another_score_is_not_the_main_one(say: Callable[..., Grid]) -> None:
     """With a limit on the angle, the cells show the angle, or say that there is none."""
-    results = replace(say(TOGETHER, passed=9, draws=9).results, tolerance=Tolerance({"tool_angle_peak_deg": 0.5}))
+    results = replace(
+        say(TOGETHER, passed=9, draws=9).results, tolerance=Tolerance({"tool_angle_peak_deg": 0.5})
+    )
     assert Grid(results).words("", "mine", TOGETHER).lines == ()
     exact = say(NOMINAL, passed=1, draws=1).results
     exact = replace(exact, tolerance=Tolerance({"tool_angle_peak_deg": 0.5}))

@@ -50,7 +50,11 @@ def test_the_document_has_its_declared_shape(make_results: Callable[..., Results
     }
     assert cell["tool_peak_mm"] == expected
     motion = cell["motions"]["load tray"]
-    assert (motion["draws"], motion["passed"], motion["pass_share"]) == (128, source.passed, source.passed / 128)
+    assert (motion["draws"], motion["passed"], motion["pass_share"]) == (
+        128,
+        source.passed,
+        source.passed / 128,
+    )
     assert motion["tool_peak_mm"] == expected
     standing = results.standings[0]
     assert standing.tolerated is not None

@@ -101,5 +101,9 @@ def test_names_cannot_break_the_terminal(make_results: Callable[..., Results]) -
     assert text.startswith("a b c\n")
     assert "bad [31m name" in text
     assert "[bold]mine[/bold]" in text
-    starts = {cell_len(line[: line.index(" mm") - 4]) for line in text.splitlines() if re.search(r"\d mm (k|m)", line)}
+    starts = {
+        cell_len(line[: line.index(" mm") - 4])
+        for line in text.splitlines()
+        if re.search(r"\d mm (k|m)", line)
+    }
     assert len(starts) == 1  # the first column stands in line beside each of them

@@ -147,7 +147,10 @@ def test_the_head_says_what_was_run(make_results: Callable[..., Results]) -> Non
     assert "tool peak at most 3 mm" in said
     assert "joint peak of j1 at most 0.05 deg" in said
     assert "95 % of the draws must keep it, in every motion" in said
-    assert runs_words(replace(results, planned=7, done=5, failed=2)) == "128 draws. 7 runs planned, 5 done, 2 failed."
+    assert (
+        runs_words(replace(results, planned=7, done=5, failed=2))
+        == "128 draws. 7 runs planned, 5 done, 2 failed."
+    )
     one = replace(make_results(1, 1), planned=1, done=1, failed=0, motions=("rim",))
     assert runs_words(one) == "1 run planned, all done, none failed."
     assert "draws" not in tolerance_words(one)

@@ -45,7 +45,11 @@ def log_of(motion: ViaMotion, error: Any, arm: Arm | None = None, hz: float = 10
     t = np.arange(round(motion.duration_s * hz) + 1) / hz
     q_ref, v_ref, _ = motion.reference(t)
     off = np.broadcast_to(np.asarray(error(t), float).reshape(len(t), -1), q_ref.shape)
-    given: dict[str, Any] = {"torque": np.zeros_like(q_ref), "limited": np.zeros(q_ref.shape, bool), "v": v_ref}
+    given: dict[str, Any] = {
+        "torque": np.zeros_like(q_ref),
+        "limited": np.zeros(q_ref.shape, bool),
+        "v": v_ref,
+    }
     return Log(
         t=t,
         q_ref=q_ref,
@@ -71,7 +75,9 @@ def test_a_turned_tool_is_off_by_the_chord_of_the_angle() -> None:
     assert scores["tool_rms_mm"] == pytest.approx(chord, rel=1e-10)
     assert scores["tool_angle_peak_deg"] == pytest.approx(np.degrees(error), rel=1e-10)
     assert scores["joint_peak_deg"] == pytest.approx(np.degrees(error), rel=1e-10)
-    assert scores["joint_rms_deg"] == scores["joint_rms_deg.j1"] == pytest.approx(np.degrees(error), rel=1e-10)
+    assert (
+        scores["joint_rms_deg"] == scores["joint_rms_deg.j1"] == pytest.approx(np.degrees(error), rel=1e-10)
+    )
 
 
 @pytest.mark.parametrize("angle", [1e-7, 0.3, 3.0])
@@ -92,7 +98,9 @@ def test_rms_over_time_is_of_the_norm_over_joints() -> None:
     assert scores["joint_rms_deg"] == pytest.approx(np.degrees(0.01), rel=1e-12)
     both = scores["joint_rms_deg.j1"] ** 2 + scores["joint_rms_deg.j2"] ** 2
     assert both == pytest.approx(scores["joint_rms_deg"] ** 2, rel=1e-12)
-    assert scores["joint_peak_deg.j2"] == scores["joint_peak_deg"] == pytest.approx(np.degrees(0.01), rel=1e-12)
+    assert (
+        scores["joint_peak_deg.j2"] == scores["joint_peak_deg"] == pytest.approx(np.degrees(0.01), rel=1e-12)
+    )
 
 
 def test_prismatic_joints_are_scored_in_mm_apart_from_revolute_ones() -> None:
@@ -175,6 +183,7 @@ def test_overshoot_is_that_of_a_second_order_system() -> None:
 
 def test_a_tool_that_only_comes_nearer_does_not_overshoot() -> None:
     """Critically damped, from either side in turn: it never gets beyond its target."""
+
     def creeping(t: np.ndarray) -> np.ndarray:
         off = np.zeros_like(t)
         for (start, end), sign in zip(TURN.rests, (1.0, -1.0), strict=True):
@@ -195,7 +204,9 @@ def test_settling_ends_when_the_tool_is_in_its_band_for_good() -> None:
     def error(t: np.ndarray) -> np.ndarray:
         off = np.zeros_like(t)
         for (start, end), amplitude in zip(TURN.rests, amplitudes, strict=True):
-            off = np.where((t >= start - 1e-9) & (t <= end + 1e-9), amplitude * np.exp(-rate * (t - start)), off)
+            off = np.where(
+                (t >= start - 1e-9) & (t <= end + 1e-9), amplitude * np.exp(-rate * (t - start)), off
+            )
         return off
 
     band = 0.5
@@ -222,7 +233,9 @@ def test_settling_is_immediate_or_never_or_not_defined() -> None:
     outside = log_of(TURN, lambda t: np.where(t > TURN.duration_s - 5e-4, 0.01, 0.0))
     assert score_run(outside, TURN, 0.5)["settle_ms"] == np.inf
     straight_on = ViaMotion(points=((0.0,), (1.0,)), leg_s=0.5)
-    assert not {"settle_ms", "overshoot_mm"} & set(score_run(log_of(straight_on, lambda t: 0 * t), straight_on, 0.5))
+    assert not {"settle_ms", "overshoot_mm"} & set(
+        score_run(log_of(straight_on, lambda t: 0 * t), straight_on, 0.5)
+    )
 
 
 def test_a_leg_that_leaves_the_tool_in_place_has_no_beyond() -> None:
@@ -296,4 +309,4 @@ def test_every_score_is_a_float_of_a_known_name() -> None:
     for name, value in scores.items():
         assert score_info(name) is not None, name
         assert type(value) is float, name
-        assert value == value
+        assert not np.isnan(value)

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from itertools import pairwise
+
 import numpy as np
 import pytest
 from hypothesis import given, settings
@@ -15,7 +17,7 @@ def by_every_segment(points: np.ndarray, path: np.ndarray) -> float:
     worst = 0.0
     for point in points:
         nearest = min(np.linalg.norm(point - vertex) for vertex in path)
-        for start, end in zip(path[:-1], path[1:], strict=True):
+        for start, end in pairwise(path):
             span = end - start
             if span @ span > 0:
                 along = np.clip((point - start) @ span / (span @ span), 0, 1)
@@ -44,6 +46,14 @@ def test_the_nearest_vertex_may_belong_to_another_segment() -> None:
 def test_a_path_that_stands_still_is_a_point() -> None:
     """Its distance is that of the point."""
     assert farthest(np.array([[3.0, 4.0, 0.0]]), np.zeros((5, 3))) == pytest.approx(5.0)
+
+
+def test_a_walk_that_ends_in_the_wrong_valley_is_put_right() -> None:
+    """Along a hairpin, points that jump across to the other arm are nearest to where a walk would not go."""
+    there = np.linspace(0, 1, 50)[:, None] * [1.0, 0.0, 0.0]
+    path = np.vstack((there, there[::-1] + np.array([0.0, 0.5, 0.0])))
+    points = there[::7] + np.array([0.0, 0.4, 0.0])
+    assert farthest(points, path) == pytest.approx(0.1, rel=1e-12)
 
 
 def test_points_on_the_path_have_no_distance() -> None:
