@@ -108,7 +108,11 @@ def test_an_import_against_the_order_is_found(source: str, module: str, is_packa
     ("source", "module", "is_package"),
     [
         ("from rigbench import __version__\nfrom rigbench.errors import Fault", "rigbench.cli", False),
-        ("from . import schema\nfrom .checks import x\nfrom ..rig.run import Run", "rigbench.experiment", True),
+        (
+            "from . import schema\nfrom .checks import x\nfrom ..rig.run import Run",
+            "rigbench.experiment",
+            True,
+        ),
         ("import numpy\nfrom rigbench.laws.law import Law", "rigbench.laws.registry", False),
     ],
 )

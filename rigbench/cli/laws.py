@@ -42,10 +42,10 @@ def _named(name: str, registry: Registry) -> Registered:
     broken = dict(registry.broken)
     if name in broken:
         problem = f"'{name}' is registered but can't be used: {broken[name]}"
-        raise InputFaults([Fault("", None, "NAME", problem)])
+        raise InputFaults([Fault("rigbench laws", None, "", problem)])
     near = nearest(name, registry.laws)
     expected = "" if near else "one of " + ", ".join(registry.laws)
-    raise InputFaults([Fault("", None, "NAME", f"'{name}' is not a registered law", expected, near)])
+    raise InputFaults([Fault("rigbench laws", None, "", f"'{name}' is not a registered law", expected, near)])
 
 
 def _doc(law: Registered) -> str:

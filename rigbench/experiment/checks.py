@@ -11,7 +11,7 @@ from rigbench.arm.arm import Arm
 from rigbench.arm.files import ArmFiles
 from rigbench.arm.mismatch import Mismatch, Payload
 from rigbench.errors import Fault, InputFaults
-from rigbench.experiment.findings import Findings, entries
+from rigbench.experiment.findings import Findings, entries, unreadable
 from rigbench.experiment.laws import is_whole
 from rigbench.experiment.motions import check_position, to_si
 from rigbench.experiment.schema import ExperimentKeys, MismatchKeys, RatesKeys
@@ -29,16 +29,21 @@ __all__ = [
     "rates_of",
 ]
 
+FORMAT = 1
+"""Version of the experiment file's format."""
+
 MOST_LEVEL = 100.0
 
 REQUIRED = ("rigbench", "arm", "motions", "laws")
 
 
 def check_names(keys: ExperimentKeys, findings: Findings) -> None:
-    """Check that what is required is there, and that the user's own names can be shown in a line."""
+    """Check that what is required is there, the format's version, and that the user's names fit a line."""
     for key in REQUIRED:
         if getattr(keys, key) is None and findings.clean(key):
             findings.take([Fault(findings.document.file, None, key, "missing")])
+    if keys.rigbench not in (None, FORMAT):
+        findings.fault(("rigbench",), f"{keys.rigbench} is not a version that is read here", str(FORMAT))
     for section in ("motions", "laws"):
         for name in getattr(keys, section) or {}:
             if not name or name != " ".join(name.split()):
@@ -51,9 +56,9 @@ def arm_files(key: str, name: str | None, findings: Findings, folder: Path) -> t
     if name is None:
         return None
     path = folder / name
-    if not path.is_file():
-        what = "is a folder" if path.is_dir() else "does not exist"
-        findings.fault((key,), f"'{name}' {what}", f"an arm file, relative to {folder}")
+    problem = unreadable(path)
+    if problem is not None:
+        findings.fault((key,), f"'{name}' {problem}", f"an arm file, relative to {folder}")
         return None
     try:
         files = ArmFiles.read(path)
@@ -143,12 +148,10 @@ def check_conditions(keys: ExperimentKeys, sources: tuple[str, ...], findings: F
     together = keys.conditions.together or []
     for i, level in enumerate(together):
         path = ("conditions", "together", i)
-        if level <= 0:
-            findings.fault(
-                path, f"{level:g} is out of range", "levels above 0; level 0 is the column nominal"
-            )
-        elif level > 100:
-            findings.fault(path, f"{level:g} is out of range", "at most 100")
+        if level == 0:
+            findings.fault(path, "level 0 is the column 'nominal', which is always there", "above 0")
+        elif not 0 < level <= MOST_LEVEL:
+            findings.fault(path, f"{level:g} is out of range", f"above 0, at most {MOST_LEVEL:g}")
         elif i and level <= together[i - 1]:
             findings.fault(path, f"{level:g} after {together[i - 1]:g}", "levels that rise, each once")
     if sources or not findings.clean("mismatch"):

@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+import stat
 from collections.abc import Iterable
+from pathlib import Path
 
 from rigbench.errors import Fault
 from rigbench.yamlfile import Document, KeyPath, key_text
 
-__all__ = ["Findings", "entries"]
+__all__ = ["Findings", "entries", "unreadable"]
 
 
 class Findings:
@@ -43,6 +45,18 @@ class Findings:
 
 def _within(key: str, path: str) -> bool:
     return key == path or key.startswith((f"{path}.", f"{path}["))
+
+
+def unreadable(path: Path) -> str | None:
+    """Say why ``path`` can't be a file to read; None if it is one."""
+    try:
+        if stat.S_ISDIR(path.stat().st_mode):
+            return "is a folder"
+    except (FileNotFoundError, NotADirectoryError):
+        return "does not exist"
+    except (OSError, ValueError) as error:  # ValueError: a name that no file can have
+        return f"can't be read ({error.strerror if isinstance(error, OSError) else error})"
+    return None
 
 
 def entries(count: int) -> str:

@@ -34,7 +34,8 @@ def law_choices(
             continue
         cls, files = found
         given = dict(keys.model_extra or {})
-        options, faults = validate(findings.document, options_model(cls), ("laws", name), given)
+        model = options_model(cls)  # type: ignore[arg-type]  # mypy takes the instances' __hash__ for the class's
+        options, faults = validate(findings.document, model, ("laws", name), given)
         findings.take(faults)
         if n is not None:
             _check_lengths(name, cls, given, n, findings)

@@ -10,7 +10,7 @@ import numpy as np
 
 from rigbench.arm.arm import PRISMATIC, Arm, Floats
 from rigbench.errors import InputFaults
-from rigbench.experiment.findings import Findings, entries
+from rigbench.experiment.findings import Findings, entries, unreadable
 from rigbench.experiment.schema import MotionKeys
 from rigbench.motion.limits import SLACK, check_motion, shown
 from rigbench.motion.motion import Motion
@@ -97,8 +97,9 @@ def _table(path: KeyPath, keys: MotionKeys, findings: Findings, folder: Path, ar
         if key in keys.model_fields_set:
             findings.fault((*path, key), "goes with via_deg, not with file", "via_deg, or the key left out")
     file = folder / keys.file
-    if not file.is_file():
-        findings.fault((*path, "file"), f"'{keys.file}' does not exist", f"a CSV file, relative to {folder}")
+    problem = unreadable(file)
+    if problem is not None:
+        findings.fault((*path, "file"), f"'{keys.file}' {problem}", f"a CSV file, relative to {folder}")
         return None
     try:
         return read_table(str(file), read_text(file, str(file)), arm, keys.pace_percent / 100.0)

@@ -6,7 +6,7 @@ afterwards, in :mod:`rigbench.experiment.checks`.
 
 from __future__ import annotations
 
-from typing import Any, Literal
+from typing import Any
 
 from pydantic import ConfigDict, Field
 
@@ -144,7 +144,7 @@ class ExperimentKeys(Declared):
     model_config = ConfigDict(json_schema_extra={"required": ["rigbench", "arm", "motions", "laws"]})
 
     # What is required is optional to this class, so that a fault in one key leaves the others to be checked.
-    rigbench: Literal[1] | None = Field(default=None, description="version of this file's format: 1")
+    rigbench: int | None = Field(default=None, description="version of this file's format: 1")
     title: str | None = Field(
         default=None,
         min_length=1,

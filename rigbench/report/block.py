@@ -157,7 +157,7 @@ class Block:
             self._draw_row(x, top, law, f"{number}-{row}")
             tolerated = standings[law].tolerated if law in standings else None
             if self.strip and tolerated:
-                self.strip.row((strip_x, top), self.row_height, tolerated, f"level-{number}-{row}")
+                self.strip.row((strip_x, top), self.row_height, tolerated, f"{number}-{row}")
             top += self.row_height + GAP
         return top - GAP
 

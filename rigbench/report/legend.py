@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Iterator
 
 from rigbench.report.cells import Grid
@@ -55,7 +56,7 @@ def entries(paper: Paper, grid: Grid, strip: LevelStrip | None) -> Iterator[Entr
         yield (
             0,
             None,
-            "incomplete: draws not run yet or not through by the computer's fault; they don't count.",
+            "incomplete: draws not run yet, or ended by an error or a time limit; they don't count.",
         )
     if strip and results.tolerance:
         required = percent(results.tolerance.required_share)
@@ -67,12 +68,16 @@ def entries(paper: Paper, grid: Grid, strip: LevelStrip | None) -> Iterator[Entr
                 f"crosses {required} %"
             ),
         )
-        yield 40, _level(paper, strip, True), "not shown to miss at any level run"
+        ends = (standing.tolerated.high for standing in results.standings if standing.tolerated)
+        if any(math.isinf(end) for end in ends):
+            yield 40, _level(paper, strip, True), "not shown to miss at any level run"
 
 
 def _share_entries(paper: Paper, grid: Grid, required: str, random: bool) -> Iterator[Entry]:
     if not random:
         yield GAUGE_WIDTH, _gauge(paper, "keeps"), "keeps the tolerance"
+        if any(cell.verdict == "open" for cell in grid.results.cells):
+            yield GAUGE_WIDTH, _gauge(paper, "open"), "open: no result"
         yield GAUGE_WIDTH, _gauge(paper, "misses"), "misses the tolerance"
         return
     yield GAUGE_WIDTH, _gauge(paper, "keeps"), f"keeps: the interval's low end reaches {required} %"
@@ -122,7 +127,7 @@ def _ramp(paper: Paper) -> Glyph:
 def _level(paper: Paper, strip: LevelStrip, open_end: bool) -> Glyph:
     def draw(x: float, top: float) -> None:
         middle = top + GLYPH_HEIGHT / 2
-        strip.bar(x + 1, x + 39, middle, open_end)
+        strip.bar(x + 1, x + 39, middle, open_end=open_end)
         if not open_end:
             paper.dot(x + 18, middle, 8, GAUGE)
 

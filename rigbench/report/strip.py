@@ -60,19 +60,19 @@ class LevelStrip:
         left = self.place(x, low)
         right = x + self.width if math.isinf(high) else self.place(x, high)
         said = tolerated_words(tolerated)
-        self.bar(left, right, middle, open_end=math.isinf(high))
+        self.bar(left, right, middle, open_end=math.isinf(high), name=f"bar-{name}")
         if tolerated.value is not None:
             self.paper.dot(self.place(x, tolerated.value), middle, 8, GAUGE)
         beneath = middle + 7
         wide = self.paper.width(said, self.size) + 4
         # Over the rails, so that none runs through the figures.
         self.paper.box(x + LEFT - 2, beneath, wide, LINE * self.size, fill="white", order=1.8)
-        self.paper.text(x + LEFT, beneath, said, self.size, name=name)
+        self.paper.text(x + LEFT, beneath, said, self.size, name=f"level-{name}")
 
-    def bar(self, left: float, right: float, middle: float, open_end: bool) -> None:
+    def bar(self, left: float, right: float, middle: float, *, open_end: bool, name: str = "") -> None:
         """Draw a bar between two places; an open end is an arrow, a closed one a stop."""
         head = right - ARROW if open_end else right
-        self.paper.box(left, middle - 2, head - left, 4, fill=BAR, order=2)
+        self.paper.box(left, middle - 2, head - left, 4, fill=BAR, name=name, order=2)
         self._stop(left, middle)
         if open_end:
             self.paper.shape([(head, middle - 5), (right, middle), (head, middle + 5)], BAR)

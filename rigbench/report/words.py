@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import re
 from collections.abc import Callable
 
 from rigbench.scores import names
@@ -157,9 +158,18 @@ def runs_words(results: Results) -> str:
 
 def level_words(column: Column) -> str:
     """Return a condition's level in words; '' for level 0, or where its name carries the level already."""
-    if not column.level or level(column.level) in column.name.replace(",", " ").split():
+    if not column.level or any(
+        _number(part) == column.level for part in re.split(r"[\s,;:=()]+", column.name)
+    ):
         return ""
     return f"level {level(column.level)}"
+
+
+def _number(text: str) -> float | None:
+    try:
+        return float(text)
+    except ValueError:
+        return None
 
 
 def has_levels(results: Results) -> bool:

@@ -33,7 +33,13 @@ class Problem(NamedTuple):
 def problems_of(model: type[BaseModel], data: Any, error: ValidationError) -> list[Problem]:
     """Return what a validation of ``data`` found, in words."""
     details = [_detail(data, entry) for entry in error.errors(include_url=False)]
+    details = [detail for detail in details if not _miscounted(data, detail)]
     return list(dict.fromkeys(_words(model, data, details, 0)))
+
+
+def _miscounted(data: Any, detail: _Detail) -> bool:
+    """Tell whether a list is called too short only because pydantic leaves out its faulty items."""
+    return detail.type == "too_short" and len(at(data, detail.path)) >= detail.context["min_length"]
 
 
 def not_a(kind: str, value: Any) -> tuple[str, str]:

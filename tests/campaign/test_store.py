@@ -348,20 +348,24 @@ def test_a_full_disk_is_said_plainly_and_costs_only_what_did_not_fit(
 ) -> None:
     """SQLite's own 'full' (its limit of pages stands in for the disk's) is a StoreError; whole rows stay."""
     plan = make_plan(draws=100)
-    added = 0
+    stored: list[str] = []
     with Store.open_for_writing(path, plan.title) as store:
         store.record_plan(plan)
         pages = store._connection.execute("PRAGMA page_count").fetchone()[0]
         store._connection.execute(f"PRAGMA max_page_count = {pages + 20}")
-        with pytest.raises(StoreError, match="disk is full") as caught:
+
+        def fill() -> Iterator[str]:
             for entry in plan.entries:
                 store.add([replace(outcome_of(entry.key), trace="x" * 3000)])
-                added += 1
+                yield entry.key
+
+        with pytest.raises(StoreError, match="disk is full") as caught:
+            stored.extend(fill())
     assert caught.value.exit_code == 5
-    assert 0 < added < len(plan.entries)
+    assert 0 < len(stored) < len(plan.entries)
     with Store.open_for_writing(path, plan.title) as store:
-        assert len(store.rows()) == added
-        assert len(store.missing(plan)) == len(plan.entries) - added
+        assert len(store.rows()) == len(stored)
+        assert len(store.missing(plan)) == len(plan.entries) - len(stored)
         store.add(outcome_of(entry.key) for entry in store.missing(plan))
 
 

@@ -18,7 +18,7 @@ def rig(monkeypatch: pytest.MonkeyPatch) -> SimpleNamespace:
     """The rig and the scores, to be replaced by what a test needs."""
     log = SimpleNamespace(outcome="finished", reason="", residual=1e-9, law_us=2.0)
     stand_in = SimpleNamespace(simulate=lambda run: log, scores={"tool_peak_mm": 1.5, "law_us": 2.0}, log=log)
-    monkeypatch.setattr("rigbench.rig.simulate", lambda run: stand_in.simulate(run))
+    monkeypatch.setattr("rigbench.rig.simulate", lambda run: stand_in.simulate(run))  # noqa: PLW0108
     monkeypatch.setattr("rigbench.scores.of_run.score_run", lambda log, motion, band: dict(stand_in.scores))
     return stand_in
 

@@ -64,7 +64,7 @@ class Mine(Law):
 
     k: float = option(100.0, "N m/rad", "stiffness", above=0)
     bounds: tuple[float, ...] | None = option(None, "N m", "bounds", per_joint=True)
-    model_hz: float | None = option(400.0, "Hz", "rate", above=0)
+    model_hz: float | None = option(500.0, "Hz", "rate", above=0)
 
     def start(self, setup):
         pass

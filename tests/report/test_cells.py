@@ -33,6 +33,7 @@ def test_a_random_cell_says_share_interval_and_main_score(say: Callable[..., Gri
     assert (words.head, words.figure, words.unit, words.interval) == ("open", "97", "%", "92 to 99")
     assert words.lines == ("tool peak 1.8 mm",)
     assert words.ink == 124 / 128
+    assert say(TOGETHER, passed=511, draws=512).words("", "mine", TOGETHER).figure == "99.8"
 
 
 def test_an_exact_cell_says_its_score_and_no_share(say: Callable[..., Grid]) -> None:

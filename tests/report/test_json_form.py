@@ -78,6 +78,7 @@ def test_it_is_strict_json(make_results: Callable[..., Results], tolerance: bool
     )
     results = replace(results, cells=(odd, *results.cells[1:]))
     document = results_json(results, "store")
+    assert type(document["cells"][0]["draws"]) is int
     assert json.loads(json.dumps(document, allow_nan=False)) == document
     peak = document["cells"][0]["tool_peak_mm"]
     assert [peak[key] for key in ("median", "median_low", "median_high", "p95")] == [None, None, None, 1.0]

@@ -16,7 +16,7 @@ import pytest
 from matplotlib.colors import to_rgb
 from matplotlib.figure import Figure
 from matplotlib.image import imread
-from matplotlib.patches import Rectangle
+from matplotlib.patches import Polygon, Rectangle
 from matplotlib.transforms import Bbox
 
 from rigbench.errors import InputFaults, StoreError
@@ -112,7 +112,7 @@ def test_long_names_are_broken_and_not_cut(
 
 
 @pytest.mark.parametrize(
-    "name", ["$x^2$", "a\nb\tc\x1b[0m", "計算トルク", "\\alpha & 50 %", "🙂", "ÀÉÎ gjpqy"]
+    "name", ["$x^2$", "$\\frac{$", "a\nb\tc\x1b[0m", "計算トルク", "\\alpha & 50 %", "🙂", "ÀÉÎ gjpqy"]
 )
 def test_any_name_can_be_drawn(make_results: Callable[..., Results], name: str) -> None:
     """Formula signs are text, control characters blanks, and signs without a glyph no reason to fail."""
@@ -150,6 +150,8 @@ def test_the_legend_explains_what_occurs_and_no_more(make_results: Callable[...,
     """An exact result speaks of no interval; without best or incomplete cells nobody reads of them."""
     exact = said(matrix_figure(make_results(2, 1, best=False), DATE))
     assert not re.search("interval|draws|best|incomplete|tolerated level", exact)
+    assert "open" not in exact
+    assert "open: no result" in said(matrix_figure(make_results(3, 1, incomplete=1), DATE))
     full = said(matrix_figure(make_results(4, 9, incomplete=3), DATE))
     assert all(
         word in full for word in ("interval", "best: better", "incomplete: draws", "tolerated level: ")
@@ -236,8 +238,27 @@ def test_the_axis_of_levels_rises_through_the_levels_that_were_run(
     places = [strip.place(100, at) for at in strip.levels]
     assert np.diff(places) == pytest.approx(np.diff(places)[0])
     assert strip.place(100, 0.75) == pytest.approx((places[2] + places[3]) / 2)
-    assert 100 < places[0]
+    assert places[0] > 100
     assert places[-1] < 100 + strip.width - 10
+
+
+def test_bars_show_the_interval_and_arrows_an_open_end(make_results: Callable[..., Results]) -> None:
+    """A bar goes from shown to keep to shown to miss; where nothing was shown to miss it is an arrow."""
+    results = make_results(["a", "b"], 5)
+    levels = (Tolerated(None, 0.5, float("inf")), Tolerated(0.4, 0.25, 1.0))
+    standings = tuple(LawStanding("", law, level) for law, level in zip("ab", levels, strict=True))
+    figure = matrix_figure(replace(results, standings=standings), DATE)
+    ticks = {t.get_text(): b.x0 / 2 + b.x1 / 2 for t, b in text_boxes(figure) if t.get_ha() == "center"}
+    bars = rectangles(figure, "bar-")
+    closed, arrow = bars["bar-0-1"], bars["bar-0-0"]
+    ends = [closed.get_x(), closed.get_x() + closed.get_width(), arrow.get_x()]
+    assert ends == pytest.approx([ticks["0.25"], ticks["1"], ticks["0.5"]], abs=0.5)  # a pixel is 0.5 pt
+    heads = [patch for patch in figure.findobj(Polygon) if type(patch) is Polygon]
+    assert len(heads) == 2  # the other is the legend's
+    tip = min(
+        float(head.get_xy()[:, 0].max()) - ticks["1.5"] for head in heads if head.get_xy()[0, 0] > ends[2]
+    )
+    assert tip > 0
 
 
 @pytest.mark.parametrize("suffix", [".png", ".svg", ".pdf", ".PNG"])

@@ -16,6 +16,7 @@ from rigbench.report.words import (
     has_levels,
     interval,
     level,
+    level_words,
     main_limit,
     main_score,
     percent,
@@ -26,7 +27,7 @@ from rigbench.report.words import (
     tolerated_words,
 )
 from rigbench.scores.names import SCORES
-from rigbench.scores.results import Results, Tolerance, Tolerated
+from rigbench.scores.results import Column, Results, Tolerance, Tolerated
 
 
 @pytest.mark.parametrize(
@@ -174,3 +175,20 @@ def test_a_tolerated_level_takes_a_tolerance_and_levels(make_results: Callable[.
     assert not has_levels(make_results(1, 1))
     assert not has_levels(make_results(1, 2, tolerance=False))
     assert level(0.25) == "0.25"
+
+
+@pytest.mark.parametrize(
+    ("name", "at", "said"),
+    [
+        ("link mass", 1.0, "level 1"),
+        ("together 0.5", 0.5, ""),
+        ("together 1.0", 1.0, ""),
+        ("full tray (level 0.25)", 0.25, ""),
+        ("full tray 2", 0.25, "level 0.25"),
+        ("nominal", 0.0, ""),
+        ("full tray", None, ""),
+    ],
+)
+def test_a_level_is_said_once(name: str, at: float | None, said: str) -> None:
+    """A condition's head tells its level, unless its name does already or there is none."""
+    assert level_words(Column(name, at, random=True, ladder=False)) == said

@@ -127,13 +127,13 @@ def test_another_law_changes_no_cell_of_the_others() -> None:
 
 
 def test_sheets_do_not_touch_each_other() -> None:
-    """Draws of one sheet count in it alone."""
+    """Draws of one sheet count in it alone; the first ten, all mild, show no change of places."""
     rows = rows_of(linear, ["a"], ["pd", "computed"], 80) + rows_of(linear, ["b"], ["pd", "computed"], 10)
     results = results_of(rows, sheets=["a", "b"])
     assert results.cell("a", "pd", "level 1").draws == 80
     assert results.cell("b", "pd", "level 1").draws == 10
     assert results.cell("b", "pd", "level 1").incomplete == 70
-    assert {found["sheet"] for found in results.break_even} == {"a", "b"}
+    assert {found["sheet"] for found in results.break_even} == {"a"}
 
 
 def test_a_campaign_without_rows_has_all_its_cells_and_says_so() -> None:
