@@ -299,14 +299,16 @@ def test_a_law_that_raises_shows_its_own_traceback(trial: Path) -> None:
 
 
 def test_a_law_that_does_not_finish_is_noted(trial: Path) -> None:
-    """A loop that is unstable even in nominal is told by check, which then gives no time."""
-    text = TRIAL.replace("natural_hz: 3}\nmismatch", "kp: [1e6, 1e6], kd: [0, 0]}\nmismatch")
-    trial.write_text(text, encoding="utf-8")
+    """A law that pushes the arm onto a joint's limit: check says so and then gives no time."""
+    Path("bad.py").write_text(BAD_LAW.replace("no_such_name", "0 * q + [90, 30]"), encoding="utf-8")
+    text = TRIAL.replace(
+        "computed torque: {law: computed-torque, natural_hz: 3}", "push: {law: 'bad.py:Bad'}"
+    )
+    trial.write_text(text.replace("leg_s: 0.3", "leg_s: 3"), encoding="utf-8")
     checked = call("check", "trial.yaml")
     assert checked.exit_code == 0
-    assert (
-        "trial.yaml:9: laws.computed torque: does not finish motion swing even in nominal" in checked.stderr
-    )
+    noted = "note: trial.yaml:9: laws.push: does not finish motion swing even in nominal (hit-stop)"
+    assert noted in checked.stderr
     assert "can't be told" in checked.stdout
 
 

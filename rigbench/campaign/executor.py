@@ -118,18 +118,19 @@ class Processes:
     def run_all(self, entries: Iterable[Entry]) -> Generator[Outcome]:
         """See :class:`Executor`. RigbenchError if worker processes can't be had at all."""
         source, again = iter(entries), deque[_Task]()
-        idle_crews = 0
+        idle_crews, reason = 0, ""
         while idle_crews < CREWS:
             idle_crews += 1
-            with Crew(self.jobs) as crew:
-                shift = _Shift(self, crew, source, again)
-                for outcome in shift.outcomes():
-                    idle_crews = 0
-                    yield outcome
-                if shift.ended:
-                    return
+            try:
+                with Crew(self.jobs) as crew:
+                    for outcome in _Shift(self, crew, source, again).outcomes():
+                        idle_crews = 0
+                        yield outcome
+                return
+            except (BrokenCrew, BrokenProcessPool) as error:
+                reason = str(error)
         raise RigbenchError(
-            "worker processes can't be started or don't stay alive; '--jobs 0' does without them"
+            f"worker processes can't be started or don't stay alive ({reason}); '--jobs 0' does without them"
         )
 
 
@@ -140,15 +141,16 @@ class _Shift:
         self._how, self._crew, self._source, self._again = how, crew, source, again
         self._in_hand: dict[Future[bytes], _Task] = {}
         self._last_sign = time.monotonic()
-        self.ended = False
 
     def outcomes(self) -> Iterator[Outcome]:
-        """Yield outcomes; what was in hand when the crew broke down is put back into ``again``."""
+        """Yield outcomes until nothing is left to do.
+
+        BrokenCrew or BrokenProcessPool if the crew breaks down, with what it had in hand put into ``again``.
+        """
         try:
             while True:
                 yield from self._give()
                 if not self._in_hand:
-                    self.ended = True
                     return
                 done, _ = wait(self._in_hand, timeout=1.0, return_when=FIRST_COMPLETED)
                 for future in done:
@@ -156,6 +158,7 @@ class _Shift:
                 self._check(bool(done))
         except (BrokenCrew, BrokenProcessPool):
             self._again.extend(self._in_hand.values())
+            raise
 
     def _give(self) -> Iterator[Outcome]:
         while len(self._in_hand) < IN_HAND * self._how.jobs:

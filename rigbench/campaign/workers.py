@@ -19,7 +19,7 @@ from pebble import ProcessPool
 from rigbench.campaign.worker import prepare_worker, serve
 from rigbench.errors import RigbenchError
 
-__all__ = ["Crew", "usable_cores"]
+__all__ = ["BrokenCrew", "Crew", "usable_cores"]
 
 
 def usable_cores() -> int:
@@ -30,12 +30,18 @@ def usable_cores() -> int:
 
 
 class Crew:
-    """Worker processes, each of which does one run at a time; one that dies is replaced."""
+    """Worker processes, each of which does one run at a time; one that dies is replaced.
+
+    BrokenCrew if the system refuses them (no temporary folder, too many processes ...).
+    """
 
     def __init__(self, size: int) -> None:
-        self._folder = tempfile.TemporaryDirectory(prefix="rigbench-workers-")
         self._context = _Context()
-        _start_server()
+        try:
+            _start_server()
+            self._folder = tempfile.TemporaryDirectory(prefix="rigbench-workers-")
+        except OSError as error:
+            raise BrokenCrew(str(error)) from error
         self._pool = ProcessPool(
             max_workers=size,
             initializer=prepare_worker,
@@ -60,7 +66,7 @@ class Crew:
         try:
             future: Future[bytes] = self._pool.schedule(serve, args=(payload,), timeout=limit_s)
         except RuntimeError as error:
-            raise BrokenCrew(str(error)) from error
+            raise BrokenCrew(str(error.__cause__ or error)) from error
         return future
 
     @property

@@ -37,7 +37,7 @@ from rigbench.yamlfile import load, partial, read_text
 
 __all__ = ["Experiment", "load_experiment"]
 
-MOST_RUNS = 2_000_000
+MOST_RUNS = 1_000_000
 """Runs that an experiment may declare; each of them has to be held in memory."""
 
 

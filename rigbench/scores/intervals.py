@@ -108,7 +108,7 @@ def _ranks(n: int, share: float) -> tuple[int, int, int]:
     with B binomial (n, share): whatever the scores' distribution, ties included. To agree with the pass
     share's verdict, an end must hold by the Wilson interval too (this alone makes 73 of 72 draws).
     """
-    point = min(n, max(1, ceil(share * n - 1e-9)))
+    point = min(n, max(1, ceil(share * n)))
     counts = np.arange(n + 1)
     below = bdtr(counts, n, share)  # P(B <= k)
     low = int(np.sum(below[:n] <= TAIL))

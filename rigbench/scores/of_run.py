@@ -99,8 +99,9 @@ def _rests(
     A rest lasts from the end of its leg to the start of the next. settle_ms: from the end of the leg
     until the tool point is within ``band_mm`` of its target for all that is left of the rest
     (interpolated between ticks; inf if it is outside when the rest ends). overshoot_mm: how far the
-    tool point gets beyond the target during the rest, along the direction in which the commanded path
-    arrives there; 0 if it never gets beyond, or where the leg doesn't move the tool point.
+    tool point gets beyond the target, along the direction in which the commanded path arrives there,
+    once it has been within the band or short of the target in this rest; so an arm that hangs beyond
+    it throughout does not overshoot, it does not settle. 0 where the leg doesn't move the tool point.
     """
     overshoot, settle = [], []
     before = 0
@@ -109,9 +110,10 @@ def _rests(
         last = int(np.searchsorted(t, rest_end + ROUNDING_S))
         if rest_end <= leg_end or first >= last:
             continue
-        off = miss[first:last]
-        settle.append(_settle_s(t[first:last] - leg_end, np.linalg.norm(off, axis=1) - 1e-3 * band_mm))
-        overshoot.append(max(0.0, float((off @ _arrival(commanded[before : first + 1])).max())))
+        beyond = miss[first:last] @ _arrival(commanded[before : first + 1])
+        excess = np.linalg.norm(miss[first:last], axis=1) - 1e-3 * band_mm
+        settle.append(_settle_s(t[first:last] - leg_end, excess))
+        overshoot.append(_overshoot_m(beyond, excess))
         before = last - 1
     return {"overshoot_mm": 1e3 * max(overshoot), "settle_ms": 1e3 * max(settle)} if settle else {}
 
@@ -126,6 +128,12 @@ def _settle_s(since: Floats, excess: Floats) -> float:
         return np.inf
     share = excess[k] / (excess[k] - excess[k + 1])
     return float(since[k] + share * (since[k + 1] - since[k]))
+
+
+def _overshoot_m(beyond: Floats, excess: Floats) -> float:
+    """Return the largest distance ``beyond`` the target from the first tick in band or short of it on."""
+    entered = np.flatnonzero((excess <= 0.0) | (beyond <= 0.0))
+    return max(0.0, float(beyond[entered[0] :].max())) if entered.size else 0.0
 
 
 def _arrival(leg: Floats) -> Floats:

@@ -3,7 +3,9 @@
 from __future__ import annotations
 
 import importlib
-from collections.abc import Callable
+import os
+import tempfile
+from collections.abc import Callable, Iterator
 from pathlib import Path
 from types import ModuleType
 from typing import Any
@@ -19,6 +21,13 @@ def doing(monkeypatch: pytest.MonkeyPatch) -> ModuleType:
     """The module doing.py, under a name that worker processes can import too: they inherit sys.path."""
     monkeypatch.syspath_prepend(Path(__file__).parent)
     return importlib.import_module("doing")
+
+
+@pytest.fixture
+def surroundings() -> Iterator[dict[str, str]]:
+    """The environment of a program that will be killed: what it can't tidy up goes with this fixture."""
+    with tempfile.TemporaryDirectory(prefix="t") as folder:  # short: it takes a socket, whose path is limited
+        yield os.environ | {"TMPDIR": folder}
 
 
 @pytest.fixture

@@ -194,7 +194,7 @@ if __name__ == "__main__":
 """
 
 
-def start(tmp_path: Path, doing: ModuleType) -> subprocess.Popen[str]:
+def start(tmp_path: Path, doing: ModuleType, surroundings: dict[str, str]) -> subprocess.Popen[str]:
     script = tmp_path / "script.py"
     script.write_text(SCRIPT)
     return subprocess.Popen(
@@ -202,13 +202,16 @@ def start(tmp_path: Path, doing: ModuleType) -> subprocess.Popen[str]:
         stdout=subprocess.PIPE,
         stderr=subprocess.PIPE,
         text=True,
+        env=surroundings,
         start_new_session=True,
     )
 
 
-def test_ctrl_c_in_a_terminal_is_quiet(tmp_path: Path, doing: ModuleType) -> None:
+def test_ctrl_c_in_a_terminal_is_quiet(
+    tmp_path: Path, doing: ModuleType, surroundings: dict[str, str]
+) -> None:
     """SIGINT to the whole group, as a terminal sends it: exit 3, one sentence, no traceback of any process."""
-    main = start(tmp_path, doing)
+    main = start(tmp_path, doing, surroundings)
     assert main.stdout is not None
     while main.stdout.readline().strip() != "5":
         assert main.poll() is None
@@ -220,11 +223,14 @@ def test_ctrl_c_in_a_terminal_is_quiet(tmp_path: Path, doing: ModuleType) -> Non
     with Store.open_for_reading(tmp_path / "s.sqlite") as reader:
         assert len(reader.rows()) == int(said.split()[-1])
     assert sorted(p.name for p in tmp_path.iterdir()) == ["s.sqlite", "script.py"]
+    assert list(Path(surroundings["TMPDIR"]).iterdir()) == []
 
 
-def test_a_killed_campaign_goes_on_where_it_was(tmp_path: Path, doing: ModuleType) -> None:
+def test_a_killed_campaign_goes_on_where_it_was(
+    tmp_path: Path, doing: ModuleType, surroundings: dict[str, str]
+) -> None:
     """After SIGKILL every run that was told done is stored whole, and the store can be written to again."""
-    main = start(tmp_path, doing)
+    main = start(tmp_path, doing, surroundings)
     assert main.stdout is not None
     while main.stdout.readline().strip() != "20":
         assert main.poll() is None

@@ -19,7 +19,7 @@ import pytest
 from rigbench.campaign.executor import Executor, InProcess, Processes, executor_for, time_limit_s
 from rigbench.campaign.plan import Entry
 from rigbench.campaign.work import Outcome
-from rigbench.campaign.workers import usable_cores
+from rigbench.campaign.workers import Crew, usable_cores
 from rigbench.errors import RigbenchError
 
 EntryMaker = Callable[..., list[Entry]]
@@ -81,9 +81,40 @@ def test_a_run_whose_worker_died_is_done_once_more(
 
 
 def test_a_crew_that_breaks_down_is_replaced(
+    doing: ModuleType, make_entries: EntryMaker, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """What it had in hand is done by the next crew, and nothing twice."""
+    answers = iter([True, True, False])
+    monkeypatch.setattr(Crew, "whole", property(lambda crew: next(answers, True)))
+    acts = {f"good {i}": ("finish", {"seconds": 0.02}) for i in range(20)}
+    outcomes = by_name(Processes(3, doing.work), make_entries(**acts))
+    assert next(answers, None) is None
+    assert {o.outcome for o in outcomes.values()} == {"finished"}
+
+
+def test_a_worker_killed_while_idle_costs_nothing(
     doing: ModuleType, make_entries: EntryMaker, tmp_path: Path
 ) -> None:
-    """With the server killed all workers die at once; a new crew finishes what they had in hand."""
+    """The pool breaks whole when that happens; the campaign doesn't."""
+    entries = make_entries(**{name: ("finish", {"folder": str(tmp_path)}) for name in "abc"})
+
+    def source() -> Iterator[Entry]:
+        yield entries[0]
+        while not (tmp_path / "began-a").exists():
+            time.sleep(0.05)
+        time.sleep(0.2)
+        os.kill(int((tmp_path / "began-a").read_text()), signal.SIGKILL)
+        time.sleep(0.5)
+        yield from entries[1:]
+
+    outcomes = list(Processes(1, doing.work).run_all(source()))
+    assert sorted((o.key, o.outcome) for o in outcomes) == sorted((e.key, "finished") for e in entries)
+
+
+def test_a_server_that_is_killed_costs_nothing(
+    doing: ModuleType, make_entries: EntryMaker, tmp_path: Path
+) -> None:
+    """All workers die with it at once; what they had in hand is done by new ones."""
     more = {"folder": str(tmp_path), "seconds": 0.05}
     acts = {f"good {i}": ("finish", more) for i in range(20)}
     entries = make_entries(unlucky=("kill the server once", more), **acts)
@@ -95,9 +126,16 @@ def test_a_crew_that_breaks_down_is_replaced(
 def test_no_crew_at_all_is_an_error_and_not_a_hang(
     doing: ModuleType, make_entries: EntryMaker, monkeypatch: pytest.MonkeyPatch
 ) -> None:
-    """Workers that can't be set up end in an error that names the way out."""
+    """Workers that can't be set up, or a server that can't, end in an error that names the way out."""
     monkeypatch.setattr("rigbench.campaign.workers.prepare_worker", doing.leave)
     with pytest.raises(RigbenchError, match="--jobs 0"):
+        list(Processes(2, doing.work).run_all(make_entries(good=("finish", {}))))
+
+    def refuse() -> None:
+        raise OSError("AF_UNIX path too long")
+
+    monkeypatch.setattr("multiprocessing.forkserver.ensure_running", refuse)
+    with pytest.raises(RigbenchError, match=r"AF_UNIX path too long.*--jobs 0"):
         list(Processes(2, doing.work).run_all(make_entries(good=("finish", {}))))
 
 
@@ -198,7 +236,9 @@ def processes() -> dict[int, tuple[str, int]]:
 
 
 @pytest.mark.skipif(sys.platform != "linux", reason="only Linux ends a process with its parent")
-def test_nothing_is_left_of_a_killed_campaign(doing: ModuleType, tmp_path: Path) -> None:
+def test_nothing_is_left_of_a_killed_campaign(
+    doing: ModuleType, tmp_path: Path, surroundings: dict[str, str]
+) -> None:
     """After SIGKILL of its process, hung workers and their server are gone within seconds.
 
     It is started as any program is, in a folder whose modules would break it if it looked there.
@@ -212,6 +252,7 @@ def test_nothing_is_left_of_a_killed_campaign(doing: ModuleType, tmp_path: Path)
     main = subprocess.Popen(
         [sys.executable, script, Path(doing.__file__).parent, tmp_path],
         cwd=folder,
+        env=surroundings,
         stdout=subprocess.DEVNULL,
         stderr=subprocess.DEVNULL,
     )

@@ -206,6 +206,16 @@ def test_faults_of_all_files_come_together(faults: Faults, folder: Path) -> None
     assert [Path(fault.file).name for fault in found] == ["trial.yaml", "bad.yaml", "bad.yaml", "m.csv"]
 
 
+def test_a_file_named_twice_is_faulted_once(faults: Faults, folder: Path) -> None:
+    """An arm file that is the model too tells its faults once."""
+    text = (folder / "arm.yaml").read_text("utf-8").replace("gear_ratio: 50", "gear_ratio: -50")
+    (folder / "bad.yaml").write_text(text, encoding="utf-8")
+    assert [fault.key for fault in faults(arm="bad.yaml", model="bad.yaml")] == [
+        "drives.j1.gear_ratio",
+        "drives.j2.gear_ratio",
+    ]
+
+
 def test_a_law_that_fails_to_import_shows_its_own_traceback(faults: Faults, folder: Path) -> None:
     """The traceback of a user's file stands in the fault, with the line that failed."""
     (folder / "mine.py").write_text("import math\n\nhalf = 1 / 0\n", encoding="utf-8")

@@ -134,6 +134,23 @@ def test_a_cell_in_which_nothing_is_random_is_exact() -> None:
         assert {getattr(measure, name) for name in measure.__dataclass_fields__} == {peak}
 
 
+def test_draw_numbers_have_no_meaning_where_nothing_is_random() -> None:
+    """Two rows of an exact cell are one run, stored twice."""
+    rows = [row(None, 9.0, condition="nominal"), row(7, 1.0, condition="nominal")]
+    cell = cell_of(rows, NOMINAL)
+    assert (cell.draws, cell.passed, cell.incomplete) == (1, 1, 0)
+
+
+def test_a_motion_has_the_scores_that_it_defines_also_when_it_fails() -> None:
+    """A motion without rests does not settle late because it once diverged."""
+    rows = [row(0, 1.0), row(1, None), row(2, None)]
+    rows += [row(d, 1.0, "rim", more={"settle_ms": 100.0}) for d in range(3)]
+    cell = cell_of(rows, motions=("load", "rim"))
+    assert set(cell.motions["load"].measures) == {"tool_peak_mm", "law_us"}
+    assert cell.motions["rim"].measures["settle_ms"].median == 100.0
+    assert medians(cell)["settle_ms"] == INF
+
+
 def test_an_exact_run_that_is_missing_is_one_incomplete_draw() -> None:
     """However many draws the random cells have."""
     cell = cell_of([], NOMINAL, draws=128)

@@ -29,8 +29,9 @@ def test_wilson_is_scipy_s(draws: int) -> None:
 
 def test_wilson_touches_its_ends_exactly() -> None:
     """No draw fails: up to 1, not 1 less a rounding error; and nothing is known of no draws."""
-    assert wilson(9, 9)[1] == 1.0
-    assert wilson(0, 9)[0] == 0.0
+    for draws in range(1, 50):
+        assert wilson(draws, draws)[1] == 1.0
+        assert wilson(0, draws)[0] == 0.0
     assert wilson(0, 0) == (0.0, 1.0)
 
 

@@ -194,6 +194,25 @@ def test_a_tool_that_only_comes_nearer_does_not_overshoot() -> None:
     assert score_run(log_of(TURN, creeping), TURN, 0.5)["overshoot_mm"] == 0.0
 
 
+def test_an_arm_that_hangs_beyond_its_target_has_not_overshot_it() -> None:
+    """It was never there: it does not settle. What counts is what comes after it has been there."""
+    assert TURN.rests[0][1] - TURN.rests[0][0] > 0.2
+    start, end = TURN.rests[0]
+    hanging = log_of(TURN, lambda t: np.where((t >= start - 0.01) & (t <= end + 1e-9), -0.01, 0.0))
+    scores = score_run(hanging, TURN, 0.5)
+    assert (scores["overshoot_mm"], scores["settle_ms"]) == (0.0, np.inf)
+
+    def ahead_then_ringing(t: np.ndarray) -> np.ndarray:
+        since = t - start
+        return np.where((since >= -1e-9) & (t <= end), -0.01 * np.exp(-10 * since) * np.cos(40 * since), 0.0)
+
+    # Ahead by 10 mrad at first, then short, then beyond again at the second maximum: tan(wt) = -10 / 40.
+    peak = (2 * np.pi - np.arctan(10 / 40)) / 40
+    beyond = 0.01 * np.exp(-10 * peak) * np.cos(40 * peak)
+    scores = score_run(log_of(TURN, ahead_then_ringing), TURN, 0.5)
+    assert scores["overshoot_mm"] == pytest.approx(1e3 * REACH * beyond, rel=2e-3)
+
+
 def test_settling_ends_when_the_tool_is_in_its_band_for_good() -> None:
     """An exponential approach settles at ln(amplitude / band) / rate after its leg, the slower rest counting.
 
@@ -244,6 +263,27 @@ def test_a_leg_that_leaves_the_tool_in_place_has_no_beyond() -> None:
     scores = score_run(log_of(motion, lambda t: np.where(t < 0.3, 0.01, 0.0)), motion, 0.5)
     assert scores["overshoot_mm"] == 0.0
     assert 99 <= scores["settle_ms"] <= 100
+
+
+def test_a_leg_s_direction_is_its_own() -> None:
+    """A leg that stays where the one before it arrived has no beyond either; 5 mm off is unsettled alone."""
+    motion = ViaMotion(points=((0.0,), (1.0,), (1.0,)), leg_s=0.2, rest_s=0.2)
+    late = lambda t: np.where((t > 0.6) & (t < 0.7), -0.01, 0.0)  # noqa: E731
+    scores = score_run(log_of(motion, late), motion, 0.5)
+    assert scores["overshoot_mm"] == 0.0
+    assert 99 <= scores["settle_ms"] <= 100
+
+
+def test_a_rest_of_no_duration_is_none() -> None:
+    """There is no time to settle in, so it can't be missed."""
+
+    class Passing(ViaMotion):
+        @property
+        def rests(self) -> tuple[tuple[float, float], ...]:
+            return ((self.leg_s, self.leg_s),)
+
+    motion = Passing(points=((0.0,), (1.0,)), leg_s=0.2)
+    assert "settle_ms" not in score_run(log_of(motion, lambda t: 0 * t + 0.1), motion, 0.5)
 
 
 def test_torque_is_measured_against_each_joint_s_limit() -> None:

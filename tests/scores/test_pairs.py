@@ -149,6 +149,20 @@ def test_a_difference_of_zero_on_a_level_crosses_there() -> None:
     assert not break_even({0: [1.0], 1: [2.0] * 9}, {0: [1.0], 1: [3.0] * 9})
 
 
+def test_a_change_too_weak_to_be_sure_of_reaches_down_to_the_lowest_level() -> None:
+    """Equal at level 0; at 1 seven draws of 13 favour one law, at 2 all the other: often, 1 shows no lead."""
+    one = {0: [1.0], 1: [1.0] * 7 + [3.0] * 6, 2: [3.0] * 13}
+    (found,) = break_even(one, {0: [1.0], 1: [2.0] * 13, 2: [2.0] * 13})
+    assert (found.value, found.low, found.high, found.below) == (1.5, 0.0, 1.5, "one")
+
+
+def test_a_change_too_weak_to_be_sure_of_has_no_upper_end() -> None:
+    """At the highest level seven draws of 13 show it, six don't."""
+    one = {0: [1.0], 1: [1.0] * 6 + [3.0] * 7}
+    (found,) = break_even(one, {0: [2.0], 1: [2.0] * 13})
+    assert (found.value, found.low, found.high) == (0.5, 0.5, inf)
+
+
 def test_levels_share_their_draws() -> None:
     """A draw that misses at one level is left out at all: what is left crosses as if it had not been."""
     one, other = {0: [1.0], 1: [3.0] * 9}, {0: [2.0], 1: [1.0] * 9}
