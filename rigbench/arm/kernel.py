@@ -46,10 +46,11 @@ def kernel(function: Function) -> Function:
     Kernels are exempt from the house rule on clarity first: a plain numpy twin in the tests says what
     each computes.
     """
-    before = numba.config.CACHE_DIR
+    config: Any = numba.config
+    before = config.CACHE_DIR
     # The folder is read while the cache is enabled, so this setting does not reach other users of numba.
-    numba.config.CACHE_DIR = str(kernel_cache())
+    config.CACHE_DIR = str(kernel_cache())
     try:
         return cast(Function, numba.njit(cache=True, error_model="numpy")(function))
     finally:
-        numba.config.CACHE_DIR = before
+        config.CACHE_DIR = before

@@ -61,7 +61,10 @@ def options_model(cls: type[Law]) -> type[BaseModel]:
 
 def _conflict_check(cls: type[Law]) -> Any:
     def check(self: BaseModel) -> BaseModel:
-        problem = cls.conflict(frozenset(self.model_fields_set))
+        try:
+            problem = cls.conflict(frozenset(self.model_fields_set))
+        except Exception as raised:  # a law's own code: whatever it raises is told as its verdict
+            problem = f"{cls.__name__}.conflict raised {type(raised).__name__}: {raised}"
         if problem is not None:
             raise ValueError(problem)
         return self

@@ -5,8 +5,8 @@ from __future__ import annotations
 import ast
 import atexit
 import hashlib
-import importlib.util
 import inspect
+import linecache
 import shutil
 import sys
 import tempfile
@@ -120,7 +120,8 @@ class LawChoice:
     def law_class(self) -> type[Law]:
         """Return the law's class; LawError if a user's file can't be imported here."""
         if self.files:
-            return _import_files(self.files, self.plugin.rsplit(":", 1)[1])
+            shown, name = self.plugin.rsplit(":", 1)
+            return _import_files(self.files, name, shown)
         found = registered().laws.get(self.plugin)
         if found is None:
             raise LawError(self.plugin, "no such law is registered here", "")
@@ -199,7 +200,7 @@ def _neighbours(text: str, folder: Path) -> list[Path]:
 
 
 @cache
-def _import_files(files: Files, class_name: str, shown: str | None = None) -> type[Law]:
+def _import_files(files: Files, class_name: str, shown: str) -> type[Law]:
     """Write the texts into a folder of their own and import the first.
 
     Neighbours are imported from that folder alone and then taken out of sys.modules again, so two laws
@@ -211,8 +212,7 @@ def _import_files(files: Files, class_name: str, shown: str | None = None) -> ty
     for name, text in files:
         (folder / name).parent.mkdir(parents=True, exist_ok=True)
         (folder / name).write_text(text, "utf-8")
-    shown = shown or files[0][0]
-    module = _execute(folder / files[0][0], f"rigbench_law_{_digest(files)}", shown)
+    module = _execute(folder, files[0][1], f"rigbench_law_{_digest(files)}", shown)
     found = getattr(module, class_name, None)
     if found is None:
         names = [
@@ -227,24 +227,25 @@ def _import_files(files: Files, class_name: str, shown: str | None = None) -> ty
         raise InputFaults.one(shown, class_name, str(problem)) from None
 
 
-def _execute(path: Path, name: str, shown: str) -> ModuleType:
-    spec = importlib.util.spec_from_file_location(name, path)
-    if spec is None or spec.loader is None:
-        raise InputFaults.one(shown, "", "is not a Python file", "a name that ends in .py")
-    module = importlib.util.module_from_spec(spec)
+def _execute(folder: Path, text: str, name: str, shown: str) -> ModuleType:
+    """Run ``text`` as a module under the path that the user knows, so that tracebacks name it."""
+    module = ModuleType(name)
+    module.__file__ = shown
+    linecache.cache[shown] = (len(text), None, text.splitlines(keepends=True), shown)
     before = set(sys.modules)
-    sys.path.insert(0, str(path.parent))
+    sys.path.insert(0, str(folder))
     sys.modules[name] = module
     try:
-        spec.loader.exec_module(module)
+        exec(compile(text, shown, "exec"), module.__dict__)
     except Exception as problem:
         del sys.modules[name]
-        trace = traceback.format_exc().replace(str(path), shown)
+        ours = problem.__traceback__
+        trace = "".join(traceback.format_exception(type(problem), problem, ours and ours.tb_next))
         raise LawError(shown, f"{type(problem).__name__}: {problem}", trace) from None
     finally:
-        sys.path.remove(str(path.parent))
+        sys.path.remove(str(folder))
         for other in set(sys.modules) - before - {name}:
             origin = getattr(sys.modules[other], "__file__", None) or ""
-            if origin.startswith(str(path.parent)):
+            if origin.startswith(str(folder)):
                 del sys.modules[other]
     return module

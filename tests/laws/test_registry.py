@@ -144,3 +144,21 @@ def test_a_law_that_is_not_here_is_a_law_error():
     """A run from elsewhere whose plugin is not installed here says so."""
     with pytest.raises(LawError, match="no such law"):
         LawChoice("someone-elses-law").make()
+
+
+def test_a_law_that_raises_in_a_run_is_told_with_its_own_lines(tmp_path):
+    """The traceback names the user's file and shows the line, on a machine that never had the file."""
+    path = tmp_path / "bad.py"
+    path.write_text(
+        SPRING.replace("from helpers import STIFFNESS", "STIFFNESS = 3.0").replace("pass", "nonsense()")
+    )
+    cls, files = load_file_law(path, "Spring")
+    choice = pickle.loads(pickle.dumps(choose(f"{path}:Spring", options_model(cls)(), files)))
+    path.unlink()
+    with pytest.raises(NameError) as caught:
+        choice.make().start(None)
+    import traceback
+
+    trace = "".join(traceback.format_exception(caught.value))
+    assert str(path) in trace
+    assert "nonsense()" in trace

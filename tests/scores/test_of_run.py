@@ -196,7 +196,6 @@ def test_a_tool_that_only_comes_nearer_does_not_overshoot() -> None:
 
 def test_an_arm_that_hangs_beyond_its_target_has_not_overshot_it() -> None:
     """It was never there: it does not settle. What counts is what comes after it has been there."""
-    assert TURN.rests[0][1] - TURN.rests[0][0] > 0.2
     start, end = TURN.rests[0]
     hanging = log_of(TURN, lambda t: np.where((t >= start - 0.01) & (t <= end + 1e-9), -0.01, 0.0))
     scores = score_run(hanging, TURN, 0.5)
