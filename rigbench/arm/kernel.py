@@ -27,7 +27,7 @@ def kernel_cache() -> Path:
     """
     package = Path(__file__).resolve().parent.parent
     digest = hashlib.blake2b(numba.__version__.encode(), digest_size=8)
-    for room in ("arm", "laws", "rig"):
+    for room in ("arm", "laws", "rig", "scores"):
         for source in sorted((package / room).glob("*.py")):
             digest.update(source.read_bytes())
     home = Path(os.environ.get("XDG_CACHE_HOME") or Path.home() / ".cache")
