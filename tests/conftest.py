@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -16,14 +17,11 @@ GRAVITY = (0.0, 0.0, -9.81)
 
 
 def build_drives(n: int, **given: Any) -> Drives:
-    """Drives of n joints, ideal unless said: direct, no rotor, no friction, no limits."""
-    values = {
-        "gear_ratio": 1.0, "rotor_inertia": 0.0, "viscous": 0.0, "coulomb": 0.0, "stribeck_speed": 1.0,
-        "torque_limit": np.inf, "speed_limit": np.inf, "torque_lag": 0.0,
-    }  # fmt: skip
-    values.update(given)
-    values.setdefault("static", values["coulomb"])
-    return Drives(**{name: np.broadcast_to(np.asarray(v, float), (n,)).copy() for name, v in values.items()})
+    """Drives of n joints, ideal unless said; static is coulomb unless given."""
+    if "coulomb" in given:
+        given.setdefault("static", given["coulomb"])
+    arrays = {name: np.broadcast_to(np.asarray(value, float), (n,)).copy() for name, value in given.items()}
+    return replace(Drives.ideal(n), **arrays)
 
 
 def build_arm(

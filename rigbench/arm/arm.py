@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass, fields, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -26,10 +26,11 @@ ROTATION, POSITION, AXIS, LINK = slice(1, 10), slice(10, 13), slice(13, 16), sli
 
 @dataclass(frozen=True, eq=False)
 class Drives:
-    """Motor, gearbox and friction of every joint; arrays of shape (n,), at the joint unless said.
+    """Motor, gearbox, friction and encoder of every joint; arrays of shape (n,), at the joint unless said.
 
     Motor-side friction has been carried over the gear already (viscous by G^2, Coulomb by G), and of
-    two limits the tighter one stands here. Units are rad, N m, s; for a prismatic joint m, N, s.
+    two limits the tighter one stands here. Units are rad, N m, s; for a prismatic joint m, N, s. The
+    fields with a default in :meth:`ideal` are imperfections, off unless declared.
     """
 
     gear_ratio: Floats  # motor turns per joint turn (rad/m for a prismatic joint)
@@ -38,9 +39,32 @@ class Drives:
     coulomb: Floats  # N m
     static: Floats  # N m, breakaway; equals coulomb where none is declared
     stribeck_speed: Floats  # rad/s; 1 where static equals coulomb (then without effect)
+    bristle_stiffness: Floats  # N m/rad, sigma0 of LuGre; 0 for dry friction without presliding
+    bristle_damping: Floats  # N m s/rad, sigma1 of LuGre
+    gear_loss: Floats  # share of the transmitted torque that acts as dry friction besides; 0 for none
+    stiffness: Floats  # N m/rad, of the elastic transmission; inf for a rigid one
+    spring_damping: Floats  # N m s/rad, of the elastic transmission
     torque_limit: Floats  # N m, inf where none is declared
     speed_limit: Floats  # rad/s, inf where none is declared
+    stall_torque: Floats  # N m, of the motor's torque-speed line; inf for none
+    no_load_speed: Floats  # rad/s, where that line reaches no torque; inf for none
     torque_lag: Floats  # s, time constant of the current loop; 0 for none
+    torque_step: Floats  # N m, to which commands are rounded; 0 for none
+    torque_gain: Floats  # torque given over torque asked for: the torque constant's error; 1 for none
+    torque_bias: Floats  # N m, given without being asked for
+    ripple: Floats  # N m, amplitude of a torque that goes with the motor's angle
+    ripple_periods: Floats  # periods of it in a motor turn
+    encoder_step: Floats  # rad, one count of the encoder; 0 for exact positions
+    encoder_offset: Floats  # rad, by how much the encoder reads too much
+
+    @classmethod
+    def ideal(cls, n: int) -> Drives:
+        """Return n direct drives without rotors, friction, limits or imperfections."""
+        given = {"gear_ratio": 1.0, "stribeck_speed": 1.0, "torque_gain": 1.0}
+        given |= dict.fromkeys(
+            ("stiffness", "torque_limit", "speed_limit", "stall_torque", "no_load_speed"), np.inf
+        )
+        return cls(**{field.name: np.full(n, given.get(field.name, 0.0)) for field in fields(cls)})
 
     @property
     def reflected(self) -> Floats:

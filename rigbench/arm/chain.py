@@ -8,11 +8,14 @@ from dataclasses import dataclass
 import numpy as np
 
 from rigbench.arm.arm import PRISMATIC, REVOLUTE, Floats
-from rigbench.arm.physical import from_inertia, inertia, possible
+from rigbench.arm.physical import from_inertia, impossible, inertia, possible
 from rigbench.arm.urdf import Joint, Robot
 from rigbench.errors import Fault
 
 __all__ = ["Chain", "chain_of"]
+
+ROUNDING = 1e-9
+"""Share of a link's inertia by which its published digits may miss 0."""
 
 POSSIBLE = "a mass above 0 and positive principal inertias, each at most the sum of the other two"
 
@@ -157,6 +160,7 @@ def _merge(
     rotation, position, parameters = np.zeros((n, 3, 3)), np.zeros((n, 3)), np.zeros((n, 10))
     faults: list[Fault] = []
     notes: list[Fault] = []
+    burdened: set[str] = set()
     for name, link in robot.links.items():
         head, turned, shifted = _place(above, heads, name, lock)
         if link.inertial is None:
@@ -165,15 +169,20 @@ def _merge(
             said, line = link.inertial.impossible, link.inertial.line
             if head is None:
                 said += " (without effect: it is part of the base)"
-                notes.append(Fault(robot.file, line, f"link {name}", said))
+            elif name not in heads and _adds_inertia(link.inertial.parameters):
+                carrier = moving[head].child
+                said += f" (added as it stands to link {carrier}, which carries it)"
+                burdened.add(carrier)
             else:
                 faults.append(Fault(robot.file, line, f"link {name}", said, POSSIBLE))
-        elif head is not None:
+                continue
+            notes.append(Fault(robot.file, line, f"link {name}", said))
+        if head is not None:
             parameters[head] += moved(link.inertial.parameters, turned, shifted)
     for i, joint in enumerate(moving):
         _, turned, shifted = _place(above, heads, joint.parent, lock)
         rotation[i], position[i] = turned @ joint.rotation, shifted + turned @ joint.position
-    faults += [] if faults else _body_faults(robot, moving, parameters)
+    faults += [] if faults else _body_faults(robot, moving, parameters, burdened)
     if faults:
         return None, faults
     _, tool_rotation, tool_position = _place(above, heads, tool, lock)
@@ -182,6 +191,16 @@ def _merge(
         tuple(moving), kinds, rotation, position, parameters, tool_rotation, tool_position, tuple(notes)
     )
     return chain, []
+
+
+def _adds_inertia(parameters: Floats) -> bool:
+    """Tell whether a link without mass has inertia that may be added to the body that carries it.
+
+    Published files hold such links. They are no bodies, so all that is asked of them is that they take
+    no inertia away; the body that they are added to is judged as any other.
+    """
+    mass, _, tensor = inertia(parameters)
+    return bool(mass == 0 and np.linalg.eigvalsh(tensor)[0] >= -ROUNDING * np.trace(tensor))
 
 
 def _place(
@@ -207,15 +226,19 @@ def moved(parameters: Floats, rotation: Floats, position: Floats) -> Floats:
     return from_inertia(mass, rotation @ cog + position, rotation @ tensor @ rotation.T)
 
 
-def _body_faults(robot: Robot, moving: list[Joint], parameters: Floats) -> list[Fault]:
-    """Return a fault for each moving body that has no mass, or no extent in some direction."""
+def _body_faults(robot: Robot, moving: list[Joint], parameters: Floats, burdened: set[str]) -> list[Fault]:
+    """Return a fault for each moving body that has no mass, or no extent in some direction.
+
+    ``burdened``: links to which inertia without mass was added, so they may be no body at all.
+    """
     faults = []
     for joint, ten in zip(moving, parameters, strict=True):
         link = robot.links[joint.child]
-        if not ten.any():
+        if ten[0] == 0:
             problem = f"it moves (joint {joint.name}) but has no mass, nor has what is fixed to it"
             faults.append(robot.fault(link, problem, "an <inertial> with a mass above 0"))
         elif not possible(ten):
-            problem = "with all that is fixed to it, it is a point, a rod or a lamina"
+            shape = impossible(ten) if joint.child in burdened else "it is a point, a rod or a lamina"
+            problem = f"with all that is fixed to it, {shape}"
             faults.append(robot.fault(link, problem, "a body with extent in every direction"))
     return faults

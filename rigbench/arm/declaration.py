@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 from typing import Annotated
 
 import numpy as np
@@ -43,12 +44,36 @@ class DriveDeclaration(Declared):
     stribeck_speed: AboveZero | None = Field(
         None, description="rad/s, at the joint: how fast friction falls from static to coulomb"
     )
+    lugre_stiffness: AboveZero | None = Field(
+        None, description="N m/rad, sigma0 of LuGre friction; dry friction without presliding if absent"
+    )
+    lugre_damping: AtLeastZero = Field(0.0, description="N m s/rad, sigma1 of LuGre friction")
+    gear_efficiency: Annotated[float, Field(gt=0, le=1)] = Field(
+        1.0, description="share of the transmitted torque that arrives; the rest acts as dry friction"
+    )
+    stiffness: AboveZero | None = Field(
+        None, description="N m/rad, of an elastic transmission, at the joint; rigid if absent"
+    )
+    spring_damping: AtLeastZero = Field(0.0, description="N m s/rad, of the elastic transmission")
     torque_limit: AboveZero | None = Field(None, description="N m, at the joint: the gearbox's rating")
     speed_limit: AboveZero | None = Field(None, description="rad/s, at the joint")
     encoder_counts: Annotated[int, Field(ge=1)] | None = Field(
         None, description="counts per motor turn; exact positions if absent"
     )
     torque_lag_ms: AtLeastZero = Field(0.0, description="ms, time constant of the current loop; 0 for none")
+    motor_stall_torque: AboveZero | None = Field(
+        None, description="N m, at the motor: where its torque-speed line stands still"
+    )
+    motor_no_load_speed: AboveZero | None = Field(
+        None, description="rad/s, at the motor: where its torque-speed line reaches no torque"
+    )
+    motor_torque_step: AtLeastZero = Field(0.0, description="N m, at the motor: commands are rounded to it")
+    motor_ripple: AtLeastZero = Field(
+        0.0, description="N m, at the motor: amplitude of a torque that goes with its angle"
+    )
+    ripple_periods: Annotated[int, Field(ge=1)] = Field(
+        1, description="periods of the ripple in a motor turn"
+    )
 
     @model_validator(mode="after")
     def _breakaway(self) -> DriveDeclaration:
@@ -58,6 +83,18 @@ class DriveDeclaration(Declared):
             raise _fault("stribeck_speed is given without static", "static in N m")
         if self.static is not None and self.static < self.coulomb:
             raise _fault(f"static {self.static:g} is below coulomb {self.coulomb:g}", "at least coulomb")
+        return self
+
+    @model_validator(mode="after")
+    def _whole(self) -> DriveDeclaration:
+        if (self.motor_stall_torque is None) != (self.motor_no_load_speed is None):
+            raise _fault("half of a torque-speed line", "motor_stall_torque and motor_no_load_speed together")
+        if self.lugre_stiffness is not None and self.coulomb + self.motor_coulomb == 0:
+            raise _fault("lugre_stiffness is given without dry friction", "coulomb above 0")
+        if self.stiffness is not None and self.rotor_inertia == 0:
+            raise _fault(
+                "stiffness is given without a rotor for the spring to act on", "rotor_inertia above 0"
+            )
         return self
 
 
@@ -91,25 +128,44 @@ def drives_of(declared: Sequence[DriveDeclaration], effort: Floats, velocity: Fl
         rows = [[getattr(drive, name) for drive in declared] for name in names]
         return [np.array([np.inf if value is None else value for value in row], float) for row in rows]
 
-    gear, rotor, lag = array("gear_ratio", "rotor_inertia", "torque_lag_ms")
+    gear, rotor, lag, efficiency = array("gear_ratio", "rotor_inertia", "torque_lag_ms", "gear_efficiency")
     viscous, coulomb, motor_viscous, motor_coulomb = array(
         "viscous", "coulomb", "motor_viscous", "motor_coulomb"
     )
-    torque, motor_torque, speed, motor_speed = array(
-        "torque_limit", "motor_torque_limit", "speed_limit", "motor_speed_limit"
+    torque, motor_torque, speed, motor_speed, stall_torque, no_load_speed = array(
+        "torque_limit", "motor_torque_limit", "speed_limit", "motor_speed_limit", "motor_stall_torque",
+        "motor_no_load_speed",
+    )  # fmt: skip
+    static, stribeck_speed, stiffness, spring_damping = array(
+        "static", "stribeck_speed", "stiffness", "spring_damping"
     )
-    static, stribeck_speed = array("static", "stribeck_speed")
+    bristle_stiffness, bristle_damping = array("lugre_stiffness", "lugre_damping")
+    torque_step, ripple, periods, counts = array(
+        "motor_torque_step", "motor_ripple", "ripple_periods", "encoder_counts"
+    )
     static = np.where(np.isinf(static), coulomb, static)
     with np.errstate(over="ignore"):  # a gear_ratio next to 0 leaves no limit
-        motor_speed = motor_speed / gear
-    return Drives(
+        motor_speed, no_load_speed = motor_speed / gear, no_load_speed / gear
+    return replace(
+        Drives.ideal(len(declared)),
         gear_ratio=gear,
         rotor_inertia=rotor,
         viscous=viscous + gear**2 * motor_viscous,
         coulomb=coulomb + gear * motor_coulomb,
         static=static + gear * motor_coulomb,
         stribeck_speed=np.where(static > coulomb, stribeck_speed, 1.0),
+        bristle_stiffness=np.where(np.isinf(bristle_stiffness), 0.0, bristle_stiffness),
+        bristle_damping=bristle_damping,
+        gear_loss=1.0 - efficiency,
+        stiffness=stiffness,
+        spring_damping=spring_damping,
         torque_limit=np.minimum(np.minimum(torque, gear * motor_torque), effort),
         speed_limit=np.minimum(np.minimum(speed, motor_speed), velocity),
+        stall_torque=gear * stall_torque,
+        no_load_speed=no_load_speed,
         torque_lag=1e-3 * lag,
+        torque_step=gear * torque_step,
+        ripple=gear * ripple,
+        ripple_periods=periods,
+        encoder_step=2.0 * np.pi / (gear * counts),
     )

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import hashlib
 from collections.abc import Iterable, Iterator, Mapping, Sequence
-from dataclasses import astuple, dataclass
+from dataclasses import astuple, dataclass, replace
 from functools import lru_cache
 from pathlib import Path
 from typing import Any
@@ -14,6 +14,7 @@ import numpy as np
 from rigbench.arm.arm import Arm
 from rigbench.arm.chain import Chain, chain_of
 from rigbench.arm.declaration import ArmDeclaration, DriveDeclaration, drives_of
+from rigbench.arm.drive_changes import DriveChange, changed_drives
 from rigbench.arm.urdf import Robot, read_urdf
 from rigbench.errors import Fault, InputFaults, nearest
 from rigbench.yamlfile import Document, load, partial, read_text, validate
@@ -25,12 +26,17 @@ EMPTY_DRIVE = "{gear_ratio: 1, rotor_inertia: 0, viscous: 0, coulomb: 0}"
 
 @dataclass(frozen=True)
 class ArmFiles:
-    """The arm file and its URDF, as text, each with the name that the user knows it by."""
+    """The arm file and its URDF, as text, each with the name that the user knows it by.
+
+    ``drive_changes``: ((joint or 'all', key of a drive, value), ...), which stand in place of what the
+    arm file declares.
+    """
 
     path: str
     text: str
     urdf_path: str
     urdf_text: str
+    drive_changes: tuple[DriveChange, ...] = ()
 
     @classmethod
     def read(cls, path: Path | str) -> ArmFiles:
@@ -53,10 +59,18 @@ class ArmFiles:
             raise InputFaults([*unread, *validate(document, ArmDeclaration)[1]]) from None
         return cls(name, text, urdf_path, urdf_text)
 
-    def arm(self) -> Arm:
-        """Return the arm that the files declare, the same object each time.
+    def with_drives(self, changes: Iterable[DriveChange]) -> ArmFiles:
+        """Return the same files with these changes too; what is wrong with them :meth:`arm` says.
 
-        Raises InputFaults with every fault of both files.
+        A change of one joint goes before one of 'all', whichever comes first; else the later one counts.
+        """
+        return replace(self, drive_changes=(*self.drive_changes, *changes))
+
+    def arm(self) -> Arm:
+        """Return the arm that the files and the changes declare, the same object each time.
+
+        Raises InputFaults with every fault of both files, or else with those of the changes: these are
+        addressed to drives.<joint or all>.<key> of the arm file, without a line.
         """
         return _arm(self)
 
@@ -77,7 +91,7 @@ def _at_urdf(document: Document, path: str, fault: Fault) -> Fault:
     return document.fault(("urdf",), fault.problem, fault.expected, near)
 
 
-@lru_cache(maxsize=64)
+@lru_cache(maxsize=512)  # a sweep of the drives has an arm for each sheet
 def _arm(files: ArmFiles) -> Arm:
     document = load(files.path, files.text)
     declaration, faults = partial(document, ArmDeclaration)
@@ -99,8 +113,11 @@ def _arm(files: ArmFiles) -> Arm:
     if faults or declaration is None or robot is None or chain is None:
         # the arm file's first, each file's in the order of its lines
         raise InputFaults(sorted(faults, key=lambda fault: (fault.file != files.path, fault.line or 0)))
+    drives, faults = changed_drives(files.path, declaration.drives, files.drive_changes)
+    if faults:
+        raise InputFaults(faults)
     notes = (*chain.notes, *_mesh_notes(robot), *_encoder_notes(document, declaration))
-    return _assembled(robot.name, chain, declaration.drives, notes)
+    return _assembled(robot.name, chain, drives, notes)
 
 
 def _assembled(
@@ -217,7 +234,7 @@ def _encoder_notes(document: Document, declaration: ArmDeclaration) -> Iterator[
         yield document.fault(("drives", names[0], "encoder_counts"), problem)
 
 
-@lru_cache(maxsize=64)
+@lru_cache(maxsize=512)  # a sweep of the drives has an arm for each sheet
 def _digest(files: ArmFiles) -> str:
     arm = files.arm()
     drives: Iterable[Any] = astuple(arm.drives)

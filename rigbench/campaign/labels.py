@@ -25,6 +25,7 @@ class Labels:
     draws: int
     tolerance: Tolerance | None
     resume: str
+    absent: tuple[tuple[str, str, str], ...] = ()
 
     @classmethod
     def of(cls, plan: Plan) -> Labels:
@@ -36,8 +37,11 @@ class Labels:
         values = {field.name: getattr(self, field.name) for field in dataclasses.fields(self)}
         values["columns"] = [dataclasses.asdict(column) for column in self.columns]
         if self.tolerance is not None:
-            limits, share = dict(self.tolerance.limits), self.tolerance.required_share
-            values["tolerance"] = {"limits": limits, "required_share": share}
+            values["tolerance"] = {
+                "limits": dict(self.tolerance.limits),
+                "required_share": self.tolerance.required_share,
+                "motions": {motion: dict(limits) for motion, limits in self.tolerance.motions.items()},
+            }
         return json.dumps(values)
 
     @classmethod
@@ -49,4 +53,5 @@ class Labels:
         found["columns"] = tuple(Column(**column) for column in found["columns"])
         if found["tolerance"] is not None:
             found["tolerance"] = Tolerance(**found["tolerance"])
+        found["absent"] = tuple(tuple(place) for place in found.get("absent", ()))
         return cls(**found)

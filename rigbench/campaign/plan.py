@@ -62,6 +62,7 @@ class Plan:
     tolerance: Tolerance | None
     entries: tuple[Entry, ...]
     resume: str  # the command line that goes on where a stopped campaign ended
+    absent: tuple[tuple[str, str, str], ...] = ()  # (sheet, law, condition) that can't be combined: no runs
 
     @property
     def seed(self) -> int | None:

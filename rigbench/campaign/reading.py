@@ -203,6 +203,7 @@ class Reader:
             planned=counts.planned,
             done=counts.done,
             failed=counts.failed,
+            absent=labels.absent,
         )
 
 

@@ -73,14 +73,14 @@ def _stored(plan: Plan, path: Path) -> Stored:
 def _estimate(experiment: Experiment, plan: Plan, stored: Stored) -> Estimate:
     """Do the nominal run of each law along the shortest motion, and scale its time to all that is missing.
 
-    A run takes a time in proportion to its motion's. InputFaults if a law raises in it.
+    It is done in the first sheet that has the law. A run takes a time in proportion to its steps.
+    InputFaults if a law raises in it.
     """
     from rigbench.rig import warm_up
 
     warm_up()
-    name, motion = min(experiment.motions.items(), key=lambda item: item[1].duration_s)
-    run = replace(experiment.first, motion=motion, level=0.0, sources=(), draw=None)
-    outcomes = {law: _measured(replace(run, law=choice)) for law, choice in experiment.laws.items()}
+    firsts = {law: _shortest(experiment, law) for law in experiment.laws}
+    outcomes = {law: _measured(run) for law, (_, run) in firsts.items()}
     faults, notes = [], []
     for law, outcome in outcomes.items():
         line, key = experiment.law_lines[law], f"laws.{law}"
@@ -88,6 +88,7 @@ def _estimate(experiment: Experiment, plan: Plan, stored: Stored) -> Estimate:
             problem = f"raised {outcome.reason}\n{outcome.trace}".rstrip()
             faults.append(Fault(experiment.path, line, key, problem))
         elif outcome.outcome != "finished":
+            name = firsts[law][0]
             problem = f"does not finish motion {name} even in nominal ({outcome.outcome}): {outcome.reason}"
             notes.append(Fault(experiment.path, line, key, f"{problem}\n{outcome.trace}".rstrip()))
     if faults:
@@ -95,11 +96,35 @@ def _estimate(experiment: Experiment, plan: Plan, stored: Stored) -> Estimate:
     seconds = None
     times = [outcome.wall_s for outcome in outcomes.values() if outcome.wall_s is not None]
     if not notes and len(times) == len(outcomes):  # a run that broke off says nothing about a whole one
-        along_all = sum(each.duration_s for each in experiment.motions.values()) / motion.duration_s
-        columns = len(plan.entries) / (len(plan.laws) * len(plan.motions))
+        per_step = {law: outcome.wall_s / _steps(firsts[law][1]) for law, outcome in outcomes.items() if outcome.wall_s}
         left = 1 - (stored.runs or 0) / len(plan.entries)
-        seconds = sum(times) * along_all * columns * left / usable_cores()
+        steps = _steps_by_law(experiment)
+        seconds = sum(steps[law] * time for law, time in per_step.items()) * left / usable_cores()
     return Estimate(seconds, usable_cores(), tuple(notes))
+
+
+def _shortest(experiment: Experiment, law: str) -> tuple[str, Run]:
+    """Return the nominal run of a law along the shortest motion, with the motion's name."""
+    sheet = next(sheet for sheet in experiment.sheets if law in sheet.laws)
+    name, motion = min(sheet.motions.items(), key=lambda item: item[1].duration_s)
+    return name, replace(sheet.first, law=sheet.laws[law], motion=motion)
+
+
+def _steps(run: Run) -> float:
+    """Return how many steps of the engine and calls of the law a run takes."""
+    return run.motion.duration_s * (run.rates.physics_hz + run.rates.control_hz)
+
+
+def _steps_by_law(experiment: Experiment) -> dict[str, float]:
+    """Return the steps of all runs of each law."""
+    steps = dict.fromkeys(experiment.laws, 0.0)
+    for sheet in experiment.sheets:
+        random = sum(condition.column.random for condition in sheet.conditions)
+        runs = len(sheet.conditions) - random + random * experiment.draws
+        once = sum(_steps(replace(sheet.first, motion=motion)) for motion in sheet.motions.values())
+        for law in sheet.laws:
+            steps[law] += runs * once
+    return steps
 
 
 def _measured(run: Run) -> Outcome:
@@ -112,6 +137,9 @@ def _measured(run: Run) -> Outcome:
 def _lines(experiment: Experiment, plan: Plan, stored: Stored, estimate: Estimate) -> Iterator[str]:
     yield f"{plan.title}: in order"
     yield f"plan: {_product(plan)} = {_count(len(plan.entries), 'run')}"
+    if plan.sheets != ("",):
+        yield f"sheets: {'; '.join(plan.sheets)}"
+    yield f"laws: {', '.join(plan.laws)}"
     yield f"conditions: {', '.join(column.name for column in plan.columns)}"
     if stored.runs is not None:
         yield f"stored: {stored.runs} of them, in {stored.path}"
@@ -132,8 +160,11 @@ def _product(plan: Plan) -> str:
     if random:
         exact, draws = len(plan.columns) - random, _count(plan.draws, "draw")
         conditions = f"({exact} exact + {_count(random, 'random condition')} x {draws})"
-    sizes = {"sheet": len(plan.sheets), "law": len(plan.laws), "motion": len(plan.motions)}
-    return " x ".join([*(_count(number, what) for what, number in sizes.items()), conditions])
+    rows = f"{_count(len(plan.sheets), 'sheet')} x {_count(len(plan.laws), 'law')}"
+    nowhere = {(sheet, law) for sheet, law, _ in plan.absent} - {(e.sheet, e.law) for e in plan.entries}
+    if nowhere:
+        rows = f"({rows} - {len(nowhere)} that can't be)"
+    return " x ".join([rows, _count(len(plan.motions), "motion"), conditions])
 
 
 def _count(number: int, what: str) -> str:
@@ -162,6 +193,10 @@ def _document(experiment: Experiment, plan: Plan, stored: Stored, estimate: Esti
         "arm": plan.arm,
         "sheets": list(plan.sheets),
         "laws": list(plan.laws),
+        "skipped": [
+            {"sheet": skipped.sheet, "law": skipped.law or None, "reason": skipped.reason}
+            for skipped in experiment.skipped
+        ],
         "motions": list(plan.motions),
         "conditions": [asdict(column) for column in plan.columns],
         "draws": plan.draws if experiment.random else None,

@@ -1,19 +1,19 @@
-"""From an experiment to its runs: the columns of the matrix, and every run in the order to do them."""
+"""From a sheet to its runs: the columns of the matrix, and every run of the sheet."""
 
 from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, replace
 
-from rigbench.arm.mismatch import Mismatch
+from rigbench.arm.mismatch import Case, Mismatch
 from rigbench.campaign.plan import Entry
-from rigbench.experiment.schema import ConditionsKeys
+from rigbench.experiment.mismatch_keys import ConditionsKeys
 from rigbench.laws.registry import LawChoice
 from rigbench.motion.motion import Motion
 from rigbench.rig.run import Run
 from rigbench.scores.results import Column
 
-__all__ = ["Condition", "conditions_of", "entries_of", "spreading"]
+__all__ = ["NAMES", "Condition", "Sheet", "conditions_of", "entries_of", "nominal_and_levels", "spreading"]
 
 NAMES = {
     "link_mass_percent": "link mass",
@@ -29,10 +29,26 @@ NAMES = {
 
 @dataclass(frozen=True)
 class Condition:
-    """A column of the matrix and the sources of mismatch that act in it."""
+    """A column of the matrix, the sources of mismatch that act in it, and what it states besides."""
 
     column: Column
     sources: tuple[str, ...] = ()
+    case: Case | None = None
+
+
+@dataclass(frozen=True)
+class Sheet:
+    """One results matrix: what its runs share (``first``), and what they differ in.
+
+    ``laws``: the rows that are possible in it, by name; ``settle_bands_mm`` by the name of the motion.
+    """
+
+    name: str
+    first: Run
+    laws: Mapping[str, LawChoice]
+    motions: Mapping[str, Motion]
+    conditions: tuple[Condition, ...]
+    settle_bands_mm: Mapping[str, float]
 
 
 def spreading(mismatch: Mismatch) -> tuple[str, ...]:
@@ -42,39 +58,42 @@ def spreading(mismatch: Mismatch) -> tuple[str, ...]:
     return tuple(source for source in mismatch.sources if not (certain and source == "payload"))
 
 
-def conditions_of(mismatch: Mismatch, keys: ConditionsKeys) -> tuple[Condition, ...]:
-    """Return the columns: nominal, each source alone, all sources together by level."""
-    sources = spreading(mismatch)
+def nominal_and_levels(keys: ConditionsKeys) -> dict[str, float]:
+    """Return the levels of the columns that make the ladder, by the names of these."""
+    levels = {f"all at {str(float(level)).removesuffix('.0')}": level for level in keys.together or ()}
+    return {"nominal": 0.0} | levels
+
+
+def conditions_of(
+    sources: tuple[str, ...], keys: ConditionsKeys, cases: Mapping[str, Case]
+) -> tuple[Condition, ...]:
+    """Return the columns: nominal, each source alone, all sources together by level, the cases."""
     found = [Condition(Column("nominal", 0.0, random=False, ladder=True))]
     if keys.each_alone is not None:
         for source in sources:
-            found.append(
-                Condition(Column(NAMES[source], keys.each_alone, random=True, ladder=False), (source,))
-            )
-    for level in keys.together or ():
-        name = f"all at {str(float(level)).removesuffix('.0')}"
+            column = Column(NAMES[source], keys.each_alone, random=True, ladder=False)
+            found.append(Condition(column, (source,)))
+    for name, level in list(nominal_and_levels(keys).items())[1:]:
         found.append(Condition(Column(name, level, random=True, ladder=True), sources))
+    for name, case in cases.items():
+        level = (keys.cases or {})[name].level
+        acting = sources if level > 0 else ()
+        found.append(Condition(Column(name, level, random=level > 0, ladder=False), acting, case))
     return tuple(found)
 
 
-def entries_of(
-    run: Run,
-    laws: Mapping[str, LawChoice],
-    motions: Mapping[str, Motion],
-    conditions: tuple[Condition, ...],
-    draws: int,
-) -> Iterator[Entry]:
-    """Yield every run, law by law: once where nothing is random, else once a draw.
-
-    ``run`` holds what all of them share.
-    """
-    for law, choice in laws.items():
-        for motion, reference in motions.items():
-            for condition in conditions:
+def entries_of(sheet: Sheet, draws: int) -> Iterator[Entry]:
+    """Yield every run of a sheet, law by law: once where nothing is random, else once a draw."""
+    for law, choice in sheet.laws.items():
+        for motion, reference in sheet.motions.items():
+            shared = replace(
+                sheet.first, law=choice, motion=reference, settle_band_mm=sheet.settle_bands_mm[motion]
+            )
+            for condition in sheet.conditions:
                 column = condition.column
                 level = column.level or 0.0
                 for draw in range(draws) if column.random else (None,):
                     one = replace(
-                        run, law=choice, motion=reference, level=level, sources=condition.sources, draw=draw
+                        shared, level=level, sources=condition.sources, draw=draw, case=condition.case
                     )
-                    yield Entry("", law, motion, column.name, column.level, draw, one)
+                    yield Entry(sheet.name, law, motion, column.name, column.level, draw, one)

@@ -3,37 +3,22 @@
 from __future__ import annotations
 
 import shlex
-from collections.abc import Mapping
+from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass, replace
+from itertools import chain
 from pathlib import Path
 
-import numpy as np
-
-from rigbench.arm.arm import Arm
 from rigbench.campaign.plan import Plan, fair_order
 from rigbench.errors import Fault, InputFaults
-from rigbench.experiment.checks import (
-    arm_files,
-    check_conditions,
-    check_model,
-    check_names,
-    check_start,
-    joint_list,
-    mismatch_of,
-    rates_of,
-)
-from rigbench.experiment.expand import Condition, conditions_of, entries_of, spreading
-from rigbench.experiment.findings import Findings
-from rigbench.experiment.laws import law_choices
-from rigbench.experiment.motions import motions_of
+from rigbench.experiment.across import Skipped, faults_across, notes_across, skipped_of
+from rigbench.experiment.combinations import combinations
+from rigbench.experiment.expand import Sheet, entries_of, spreading
 from rigbench.experiment.schema import ExperimentKeys
-from rigbench.experiment.tolerance import check_applies, tolerance_of
-from rigbench.laws.registry import LawChoice
-from rigbench.motion.motion import Motion
-from rigbench.rig.run import Run
+from rigbench.experiment.sheet import Checked, check_sheet
+from rigbench.experiment.vary import read_sweep
 from rigbench.scores.intervals import draws_needed, misses_allowed
-from rigbench.scores.results import Tolerance
-from rigbench.yamlfile import load, partial, read_text
+from rigbench.scores.results import Column, Tolerance
+from rigbench.yamlfile import Document, load, partial, read_text
 
 __all__ = ["Experiment", "load_experiment"]
 
@@ -45,52 +30,68 @@ MOST_RUNS = 1_000_000
 class Experiment:
     """All that an experiment file declares, defaults included.
 
-    ``path`` as the user named it; ``first`` the first run, which holds what all of them share; ``draws``
-    the machines drawn in each random condition; ``law_lines`` where the laws stand in the file; ``notes``
-    what the user should know but need not change.
+    ``path`` as the user named it; ``laws`` the rows, variants included, and ``columns`` what is possible in
+    any sheet; ``draws`` the machines drawn in each random condition; ``skipped`` the
+    combinations that can't be; ``law_lines`` where the laws stand in the file; ``notes`` what the user
+    should know but need not change.
     """
 
     path: str
     text: str
     title: str
-    arm: Arm
-    first: Run
-    laws: Mapping[str, LawChoice]
-    motions: Mapping[str, Motion]
-    conditions: tuple[Condition, ...]
+    arm: str
+    sheets: tuple[Sheet, ...]
+    laws: tuple[str, ...]
+    motions: tuple[str, ...]
+    columns: tuple[Column, ...]
     draws: int
     tolerance: Tolerance | None
     law_lines: Mapping[str, int | None]
+    skipped: tuple[Skipped, ...] = ()
     notes: tuple[Fault, ...] = ()
 
     @property
     def random(self) -> bool:
         """Whether any condition is random."""
-        return any(condition.column.random for condition in self.conditions)
+        return any(column.random for column in self.columns)
 
     @property
     def runs(self) -> int:
-        """How many runs are declared: one a law, motion and column, and in random columns one a draw."""
-        random = sum(condition.column.random for condition in self.conditions)
-        columns = len(self.conditions) - random + random * self.draws
-        return len(self.laws) * len(self.motions) * columns
+        """How many runs are declared: one a sheet, law, motion and column, and in random columns one a draw."""
+        return sum(
+            len(sheet.laws) * len(sheet.motions) * (self.draws if condition.column.random else 1)
+            for sheet in self.sheets
+            for condition in sheet.conditions
+        )
+
+    @property
+    def absent(self) -> tuple[tuple[str, str, str], ...]:
+        """The cells without runs: (sheet, law, condition) that can't be combined."""
+        return tuple(
+            (sheet.name, law, column.name)
+            for sheet in self.sheets
+            for law in self.laws
+            for column in self.columns
+            if law not in sheet.laws or column not in [own.column for own in sheet.conditions]
+        )
 
     def plan(self, store: str | None = None) -> Plan:
         """Return every run, in order; ``store`` is the store's path if the user named one."""
         resume = ["rigbench", "run", self.path, *(() if store is None else ("--store", store))]
         return Plan(
             title=self.title,
-            arm=self.arm.name,
+            arm=self.arm,
             experiment_text=self.text,
             experiment_path=self.path,
-            sheets=("",),
-            laws=tuple(self.laws),
-            motions=tuple(self.motions),
-            columns=tuple(condition.column for condition in self.conditions),
+            sheets=tuple(sheet.name for sheet in self.sheets),
+            laws=self.laws,
+            motions=self.motions,
+            columns=self.columns,
             draws=self.draws,
             tolerance=self.tolerance,
-            entries=fair_order(entries_of(self.first, self.laws, self.motions, self.conditions, self.draws)),
+            entries=fair_order(chain.from_iterable(entries_of(sheet, self.draws) for sheet in self.sheets)),
             resume=shlex.join(resume),
+            absent=self.absent,
         )
 
 
@@ -106,85 +107,76 @@ def load_experiment(path: str | Path) -> Experiment:
     keys, faults = partial(document, ExperimentKeys)
     if keys is None:
         raise InputFaults(faults)
-    findings = Findings(document, faults)
-    experiment = _check(keys, findings, Path(path), text)
-    if experiment is None or findings.faults:
-        raise InputFaults(findings.in_order())
-    return experiment
+    sweep, more = read_sweep(document)
+    made, collisions = combinations(document, sweep)
+    axes = (*sweep.sheets, *sweep.variants)
+    checked = [check_sheet(one, axes, Path(path).parent) for one in made]
+    faults += [*more, *collisions, *faults_across(document, sweep, checked)]
+    if not faults:
+        experiment = _assembled(document, text, keys, checked)
+        faults += _size_faults(document, experiment)
+    if faults:
+        once = dict.fromkeys(faults)
+        raise InputFaults(sorted(once, key=lambda fault: (fault.file != file, fault.file, fault.line or 0)))
+    notes = [*notes_across(document, sweep, checked), *_looked_over(document, keys, experiment)]
+    return replace(experiment, notes=tuple(dict.fromkeys(notes)))
 
 
-def _check(keys: ExperimentKeys, findings: Findings, path: Path, text: str) -> Experiment | None:
-    """Cross-check all that parsed; None where anything is at fault."""
-    folder = path.parent
-    check_names(keys, findings)
-    found = arm_files("arm", keys.arm, findings, folder)
-    believed = arm_files("model", keys.model, findings, folder)
-    arm = None if found is None else found[1]
-    rates = rates_of(keys.rates, findings)
-    control_hz = keys.rates.control_hz if findings.clean("rates", "control_hz") else None
-    laws = law_choices(keys.laws or {}, findings, folder, None if arm is None else arm.n, control_hz)
-    mismatch = mismatch_of(keys.mismatch, arm, findings)
-    check_conditions(keys, spreading(mismatch), findings)
-    tolerance, settle_band_mm = tolerance_of(keys.tolerance, keys.required_share, arm, findings)
-    if arm is None or found is None:
-        return None
-    if believed is not None:
-        check_model(believed[1], arm, findings)
-    motions = motions_of(keys.motions or {}, findings, folder, arm, control_hz or 1000.0)
-    if tolerance is not None and motions and findings.clean("motions"):
-        check_applies(tolerance, motions, arm, findings)
-    gain_pose = joint_list("gain_pose_deg", keys.gain_pose_deg, arm, findings)
-    start_offset = joint_list("start_offset_deg", keys.start_offset_deg, arm, findings)
-    if start_offset is not None:
-        check_start(start_offset, motions, arm, findings)
-    if findings.faults or rates is None:
-        return None
-    law, motion = next(iter(laws.values())), next(iter(motions.values()))
-    x, y, z = keys.gravity_m_s2
-    first = Run(
-        arm=found[0],
-        law=law,
-        motion=motion,
-        rates=rates,
-        gain_pose=gain_pose or tuple(motion.reference(np.zeros(1))[0][0].tolist()),
-        settle_band_mm=settle_band_mm,
-        seed=keys.seed,
-        model=None if believed is None else believed[0],
-        mismatch=mismatch,
-        start_offset=start_offset or (),
-        gravity=(x, y, z),
-    )
-    experiment = Experiment(
-        path=findings.document.file,
+def _assembled(document: Document, text: str, keys: ExperimentKeys, checked: list[Checked]) -> Experiment:
+    """Put the sheets together, all of which are in order."""
+    whole = [each for each in checked if each.sheet is not None and each.sheet.laws]
+    sheets = tuple(each.sheet for each in whole if each.sheet is not None)
+    rows = dict.fromkeys(row for each in whole for row in (each.keys and each.keys.laws) or ())
+    lines = whole[0].combination.document
+    return Experiment(
+        path=document.file,
         text=text,
-        title=keys.title or path.stem,
-        arm=arm,
-        first=first,
-        laws=laws,
-        motions=motions,
-        conditions=conditions_of(mismatch, keys.conditions),
+        title=keys.title or Path(document.file).stem,
+        arm=", ".join(dict.fromkeys(each.arm.name for each in whole if each.arm is not None)),
+        sheets=sheets,
+        laws=tuple(row for row in rows if any(row in sheet.laws for sheet in sheets)),
+        motions=tuple(sheets[0].motions),
+        columns=_columns(sheets),
         draws=keys.draws,
-        tolerance=tolerance,
-        law_lines={name: findings.document.line(("laws", name)) for name in laws},
+        tolerance=whole[0].tolerance,
+        law_lines={row: lines.line(("laws", row)) for row in rows},
+        skipped=tuple(skipped_of(checked)),
     )
-    _look_over(experiment, keys, findings)
-    return replace(experiment, notes=tuple(dict.fromkeys(findings.notes)))
 
 
-def _look_over(experiment: Experiment, keys: ExperimentKeys, findings: Findings) -> None:
-    """Look at the experiment as a whole: what is allowed, but may not be what was meant."""
+def _columns(sheets: Iterable[Sheet]) -> tuple[Column, ...]:
+    """Return the columns of all sheets in the order of those of one: what one lacks, another may have."""
+    found: list[Column] = []
+    for sheet in sheets:
+        at = 0
+        for column in (condition.column for condition in sheet.conditions):
+            if column in found:
+                at = found.index(column) + 1
+            else:
+                found.insert(at, column)
+                at += 1
+    return tuple(found)
+
+
+def _size_faults(document: Document, experiment: Experiment) -> Iterator[Fault]:
     if experiment.runs > MOST_RUNS:
-        findings.fault(("draws",), f"{experiment.runs} runs in all", f"at most {MOST_RUNS}")
-    if keys.tolerance is None:
-        findings.note((), "no tolerance is declared: the matrix will show scores, but no verdicts")
-    if spreading(experiment.first.mismatch) and not experiment.random:
-        findings.note(("mismatch",), "no condition uses it: declare each_alone or together under conditions")
+        yield document.fault(("draws",), f"{experiment.runs} runs in all", f"at most {MOST_RUNS}")
+
+
+def _looked_over(document: Document, keys: ExperimentKeys, experiment: Experiment) -> Iterator[Fault]:
+    """Look at the experiment as a whole: what is allowed, but may not be what was meant."""
+    if experiment.tolerance is None and not keys.tolerance:
+        yield document.fault((), "no tolerance is declared: the matrix will show scores, but no verdicts")
+    sources = any(spreading(sheet.first.mismatch) for sheet in experiment.sheets)
+    if sources and not experiment.random:
+        said = "no condition uses it: declare each_alone or together under conditions, or a case's level"
+        yield document.fault(("mismatch",), said)
     tolerance = experiment.tolerance
     if tolerance is None or not experiment.random:
         return
     if misses_allowed(tolerance.required_share, experiment.draws) is None:
         needed = draws_needed(tolerance.required_share)
-        findings.note(
+        yield document.fault(
             ("draws",),
             f"{experiment.draws} draws can't show a required share of {tolerance.required_share:g}; "
             f"it takes {needed} without a miss",

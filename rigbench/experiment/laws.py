@@ -97,13 +97,10 @@ def _check_model_rate(name: str, model_hz: Any, control_hz: float, findings: Fin
         return
     path = ("laws", name, "model_hz")
     if model_hz > control_hz:
-        findings.fault(path, f"{model_hz:g} is above control_hz", f"at most {control_hz:g}")
+        findings.clash(path, f"{model_hz:g} is above control_hz", f"at most {control_hz:g}", name)
     elif not is_whole(control_hz / model_hz):
-        findings.fault(
-            path,
-            f"{model_hz:g} does not go into control_hz a whole number of times",
-            f"{control_hz:g} divided by a whole number",
-        )
+        problem = f"{model_hz:g} does not go into control_hz a whole number of times"
+        findings.clash(path, problem, f"{control_hz:g} divided by a whole number", name)
 
 
 def is_whole(ratio: float) -> bool:

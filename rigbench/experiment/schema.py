@@ -1,26 +1,22 @@
 """The keys of an experiment file: their types, units, defaults and ranges, one class a section.
 
-What only shows against the arm, the laws or another key (lengths, limits, names) is looked at
-afterwards, in :mod:`rigbench.experiment.checks`.
+Those of motions and of mismatch and conditions are in :mod:`rigbench.experiment.motion_keys` and
+:mod:`rigbench.experiment.mismatch_keys`. What only shows against the arm, the laws or another key
+(lengths, limits, names) is looked at afterwards.
 """
 
 from __future__ import annotations
 
-from typing import Any
+from typing import Annotated, Any
 
-from pydantic import ConfigDict, Field
+from pydantic import ConfigDict, Field, create_model
 
+from rigbench.arm.declaration import DriveDeclaration
+from rigbench.experiment.mismatch_keys import ConditionsKeys, MismatchKeys
+from rigbench.experiment.motion_keys import MotionKeys
 from rigbench.yamlfile import Declared
 
-__all__ = [
-    "ConditionsKeys",
-    "ExperimentKeys",
-    "LawKeys",
-    "MismatchKeys",
-    "MotionKeys",
-    "PayloadKeys",
-    "RatesKeys",
-]
+__all__ = ["DriveKeys", "ExperimentKeys", "LawKeys", "RatesKeys"]
 
 
 class RatesKeys(Declared):
@@ -38,35 +34,6 @@ class RatesKeys(Declared):
     )
 
 
-class MotionKeys(Declared):
-    """One reference that the arm tracks: through via points, or from a file."""
-
-    via_deg: list[list[float]] | None = Field(
-        default=None,
-        min_length=2,
-        description="points that the motion goes through, each a list with one position a joint [deg; mm for "
-        "a prismatic joint]; between two of them the arm moves from rest to rest",
-    )
-    leg_s: float = Field(
-        default=1.0, gt=0, le=3600, description="duration of each leg, from point to point [s]; default 1"
-    )
-    rest_s: float = Field(
-        default=0.3, ge=0, le=3600, description="rest at the end of each leg [s]; default 0.3; 0: no rest"
-    )
-    file: str | None = Field(
-        default=None,
-        min_length=1,
-        description="CSV file with a column t_s and one column a joint, in deg (mm for a prismatic joint), "
-        "relative to this file; a smooth spline goes through its rows",
-    )
-    pace_percent: float = Field(
-        default=100.0,
-        gt=0,
-        le=1000,
-        description="speed of the motion in percent of what is declared; default 100",
-    )
-
-
 class LawKeys(Declared):
     """A law under a name of yours: which law it is, then its options (``rigbench laws NAME`` lists them)."""
 
@@ -78,64 +45,19 @@ class LawKeys(Declared):
     )
 
 
-class PayloadKeys(Declared):
-    """The load at the tool point; the plant's never leaves the range declared, whatever the level."""
-
-    believed_kg: float = Field(ge=0, description="mass that the controllers believe in [kg]")
-    least_kg: float = Field(ge=0, description="least mass of the plant's load [kg]")
-    most_kg: float = Field(ge=0, description="greatest mass of the plant's load [kg]")
-    cog_mm: float = Field(
-        default=0.0,
-        ge=0,
-        description="farthest that the load's centre of gravity lies from the tool point at level 1, in each "
-        "direction of the tool frame [mm]; default 0",
-    )
+def _drive_numbers() -> Any:
+    """Return a model of a drive's keys, none of which need be given; together they are judged in the arm."""
+    fields: dict[str, Any] = {}
+    for name, info in DriveDeclaration.model_fields.items():
+        kind: Any = info.annotation
+        for bound in info.metadata:
+            kind = Annotated[kind, bound]
+        fields[name] = (kind, Field(default=None, description=info.description))
+    return create_model("DriveNumbers", __base__=Declared, **fields)
 
 
-SPREAD = "at level 1 [percent]; p percent multiplies by a factor from 1 / (1 + p/100) to 1 + p/100"
-
-
-class MismatchKeys(Declared):
-    """In which ways, and how far at level 1, the plant departs from the model; none acts unless declared."""
-
-    link_mass_percent: float | None = Field(
-        default=None, gt=0, le=1000, description=f"mass of each link, {SPREAD}"
-    )
-    link_cog_mm: float | None = Field(
-        default=None,
-        gt=0,
-        le=10_000,
-        description="shift of each link's centre of gravity at level 1, in each direction [mm]",
-    )
-    link_inertia_percent: float | None = Field(
-        default=None, gt=0, le=1000, description=f"principal second moments of mass of each link, {SPREAD}"
-    )
-    payload: PayloadKeys | None = Field(default=None, description="the load at the tool point")
-    coulomb_percent: float | None = Field(
-        default=None, gt=0, le=1000, description=f"Coulomb friction of each joint, {SPREAD}"
-    )
-    viscous_percent: float | None = Field(
-        default=None, gt=0, le=1000, description=f"viscous friction of each joint, {SPREAD}"
-    )
-    rotor_inertia_percent: float | None = Field(
-        default=None, gt=0, le=1000, description=f"rotor inertia of each drive, {SPREAD}"
-    )
-
-
-class ConditionsKeys(Declared):
-    """The columns of the results matrix beside 'nominal', in which the plant equals the model."""
-
-    each_alone: float | None = Field(
-        default=None,
-        gt=0,
-        le=100,
-        description="level of one column per source of mismatch, that source alone",
-    )
-    together: list[float] | None = Field(
-        default=None,
-        min_length=1,
-        description="rising levels, one column each, in which all sources act at once",
-    )
+class DriveKeys(_drive_numbers()):  # type: ignore[misc]  # its fields follow those of the arm file
+    """Numbers of a joint's drive, in place of those in the arm file, in plant and model alike."""
 
 
 class ExperimentKeys(Declared):
@@ -156,6 +78,11 @@ class ExperimentKeys(Declared):
         min_length=1,
         description="a second arm file that the controllers believe instead, relative to this file; "
         "default: the arm itself",
+    )
+    drives: dict[str, DriveKeys] = Field(
+        default_factory=dict,
+        description="numbers of the drives in place of the arm file's, by joint or under 'all'; a joint's own "
+        "go before those of all",
     )
     seed: int = Field(default=0, ge=0, lt=2**63, description="seed of the draws; default 0")
     rates: RatesKeys = Field(default_factory=RatesKeys, description="sample rates")
@@ -190,6 +117,12 @@ class ExperimentKeys(Declared):
     )
     draws: int = Field(
         default=128, ge=1, le=1_000_000, description="machines drawn at random a condition; default 128"
+    )
+    vary: dict[str, Any] | None = Field(
+        default=None,
+        min_length=1,
+        description="the sweep: mirrors this file, and each of its leaves is a list of values to try, in all "
+        "combinations; options of a law make further rows of the matrix, all else makes sheets of their own",
     )
     tolerance: dict[str, Any] | None = Field(
         default=None,

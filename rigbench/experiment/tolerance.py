@@ -9,6 +9,7 @@ from typing import Any
 from rigbench.arm.arm import PRISMATIC, REVOLUTE, Arm
 from rigbench.errors import nearest
 from rigbench.experiment.findings import Findings
+from rigbench.experiment.schema import ExperimentKeys
 from rigbench.motion.motion import Motion
 from rigbench.scores.names import SCORES
 from rigbench.scores.results import Tolerance
@@ -28,27 +29,48 @@ OVER_LIMIT = ("torque_peak_percent", "torque_rms_percent", "chatter")
 
 
 def tolerance_of(
-    declared: Mapping[str, Any] | None, required_share: float, arm: Arm | None, findings: Findings
-) -> tuple[Tolerance | None, float]:
-    """Return the tolerance and the settle band [mm] of what is declared; faults go to ``findings``."""
+    keys: ExperimentKeys, arm: Arm | None, findings: Findings
+) -> tuple[Tolerance | None, dict[str, float]]:
+    """Return the tolerance and the declared settle bands [mm]; faults go to ``findings``.
+
+    The bands are by the motion's name; that of the experiment is under ''.
+    """
+    bands: dict[str, float] = {}
+    limits = _limits_of(("tolerance",), keys.tolerance, arm, bands, "", findings)
+    own = {
+        name: _limits_of(("motions", name, "tolerance"), motion.tolerance, arm, bands, name, findings)
+        for name, motion in (keys.motions or {}).items()
+    }
+    tolerance = Tolerance(limits, keys.required_share, {name: found for name, found in own.items() if found})
+    if keys.tolerance and not tolerance.limited and findings.clean("tolerance"):
+        findings.note(("tolerance",), "it limits no score, so nothing is shown to keep or miss it")
+    return (tolerance if tolerance.limited else None), bands
+
+
+def _limits_of(
+    path: KeyPath,
+    declared: Mapping[str, Any] | None,
+    arm: Arm | None,
+    bands: dict[str, float],
+    motion: str,
+    findings: Findings,
+) -> dict[str, float]:
+    """Return the limits that are declared at ``path``; a settle band goes to ``bands``."""
     limits: dict[str, float] = {}
-    band = SETTLE_BAND_MM
     for name, value in (declared or {}).items():
-        path: KeyPath = ("tolerance", name)
+        here = (*path, name)
         if name == BAND:
-            if _positive(path, value, findings):
-                band = float(value)
+            if _positive(here, value, findings):
+                bands[motion] = float(value)
         elif name not in SCORES:
             near = nearest(name, [*SCORES, BAND])
             expected = "" if near else "one of " + ", ".join([*_limitable(), BAND])
-            findings.fault(path, "is not a score", expected, near)
+            findings.fault(here, "is not a score", expected, near)
         elif SCORES[name].host:
-            findings.fault(path, "tells about this computer, not about the arm", "a score of the arm")
+            findings.fault(here, "tells about this computer, not about the arm", "a score of the arm")
         else:
-            limits |= _limits(path, name, value, arm, findings)
-    if declared and not limits and findings.clean("tolerance"):
-        findings.note(("tolerance",), "it limits no score, so nothing is shown to keep or miss it")
-    return (Tolerance(limits, required_share) if limits else None), band
+            limits |= _limits(here, name, value, arm, findings)
+    return limits
 
 
 def _limitable() -> Iterator[str]:
@@ -96,28 +118,38 @@ def _shown(value: Any) -> str:
 
 
 def check_applies(tolerance: Tolerance, motions: Mapping[str, Motion], arm: Arm, findings: Findings) -> None:
-    """Add a fault for each limit on a score that no motion has, and a note where only some have it."""
-    for name in tolerance.limits:
+    """Add a fault for each limit on a score that its motion, or none of all, has; a note where some lack it."""
+    _check_limits(("tolerance",), tolerance.limits, motions, arm, findings)
+    for name, limits in tolerance.motions.items():
+        if name in motions:
+            path = ("motions", name, "tolerance")
+            _check_limits(path, limits, {name: motions[name]}, arm, findings)
+
+
+def _check_limits(
+    path: KeyPath, limits: Mapping[str, float], motions: Mapping[str, Motion], arm: Arm, findings: Findings
+) -> None:
+    for name in limits:
         base, _, joint = name.partition(".")
-        path: KeyPath = ("tolerance", base, joint) if joint else ("tolerance", base)
+        here: KeyPath = (*path, base, joint) if joint else (*path, base)
         if base in AT_RESTS:
-            _check_rests(path, motions, findings)
+            _check_rests(here, motions, findings)
             continue
         of = [arm.joints.index(joint)] if joint else range(arm.n)
         whose = f"joint {joint}" if joint else "every joint"
         kinds = {arm.kinds[i] for i in of}
         if base in OF_REVOLUTE and REVOLUTE not in kinds:
-            findings.fault(path, f"{whose} is prismatic", base.replace("_deg", "_mm"))
+            findings.fault(here, f"{whose} is prismatic", base.replace("_deg", "_mm"))
         elif base in OF_PRISMATIC and PRISMATIC not in kinds:
-            findings.fault(path, f"{whose} is revolute", base.replace("_mm", "_deg"))
+            findings.fault(here, f"{whose} is revolute", base.replace("_mm", "_deg"))
         elif base in OVER_LIMIT and all(math.isinf(arm.drives.torque_limit[i]) for i in of):
-            findings.fault(path, f"{whose} is without a torque limit to compare with", "one in the arm file")
+            findings.fault(here, f"{whose} is without a torque limit to compare with", "one in the arm file")
 
 
 def _check_rests(path: KeyPath, motions: Mapping[str, Motion], findings: Findings) -> None:
     without = [name for name, motion in motions.items() if not motion.rests]
     if len(without) == len(motions):
-        problem = "no motion has a rest, where this is measured"
-        findings.fault(path, problem, "a motion with rest_s above 0")
+        who = "no motion has" if path[0] == "tolerance" else "it does not have"
+        findings.fault(path, f"{who} a rest, where this is measured", "a motion with rest_s above 0")
     elif without:
         findings.note(path, f"not measured in {', '.join(without)}: no rest there")

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import ast
-import atexit
 import hashlib
 import inspect
 import linecache
@@ -21,6 +20,7 @@ from typing import Any
 
 from pydantic import BaseModel
 
+from rigbench.arm.kernel import kernel_cache
 from rigbench.errors import InputFaults, LawError
 from rigbench.laws.law import Law
 from rigbench.laws.options import options_model
@@ -207,11 +207,7 @@ def _import_files(files: Files, class_name: str, shown: str) -> type[Law]:
     may each have a ``helpers.py``. Importing from the carried texts, on every machine alike, is what
     makes the key's digest the truth about what ran.
     """
-    folder = Path(tempfile.mkdtemp(prefix="rigbench-law-"))
-    atexit.register(shutil.rmtree, folder, ignore_errors=True)  # till then: tracebacks and late imports
-    for name, text in files:
-        (folder / name).parent.mkdir(parents=True, exist_ok=True)
-        (folder / name).write_text(text, "utf-8")
+    folder = _written(files)
     module = _execute(folder, files[0][1], f"rigbench_law_{_digest(files)}", shown)
     found = getattr(module, class_name, None)
     if found is None:
@@ -225,6 +221,22 @@ def _import_files(files: Files, class_name: str, shown: str) -> type[Law]:
         return check_class(found)
     except TypeError as problem:
         raise InputFaults.one(shown, class_name, str(problem)) from None
+
+
+def _written(files: Files) -> Path:
+    """Return a folder that holds the texts, named by their digest: workers and later runs share it."""
+    folder = kernel_cache() / "laws" / _digest(files)
+    if not folder.is_dir():
+        folder.parent.mkdir(parents=True, exist_ok=True)
+        fresh = Path(tempfile.mkdtemp(dir=folder.parent))
+        for name, text in files:
+            (fresh / name).parent.mkdir(parents=True, exist_ok=True)
+            (fresh / name).write_text(text, "utf-8")
+        try:
+            fresh.rename(folder)
+        except OSError:  # another process was first
+            shutil.rmtree(fresh, ignore_errors=True)
+    return folder
 
 
 def _execute(folder: Path, text: str, name: str, shown: str) -> ModuleType:

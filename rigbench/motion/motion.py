@@ -35,6 +35,10 @@ class Motion(Protocol):
         """
         ...
 
+    def paced(self, factor: float) -> Motion:
+        """Return the same motion at ``factor`` (above 0) times its pace."""
+        ...
+
     def inputs(self) -> dict[str, Any]:
         """Return what the reference depends on as a JSON-able dict, the same for equal motions."""
         ...

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import hashlib
 import math
-from dataclasses import dataclass, fields
+from dataclasses import dataclass, fields, replace
 from functools import cached_property
 from typing import Any
 
@@ -114,6 +114,10 @@ class TableMotion:
         v[held] = a[held] = 0.0
         q[arrived] = self._rows[-1]  # a spline meets its last row to rounding only
         return q, v * self.pace, a * self.pace**2
+
+    def paced(self, factor: float) -> TableMotion:
+        """Return the same motion at ``factor`` times its pace."""
+        return replace(self, pace=self.pace * factor)
 
     def inputs(self) -> dict[str, Any]:
         """Return a digest of times and rows, and the pace, JSON-able."""

@@ -3,18 +3,15 @@
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
 
 from rigbench.arm.arm import Floats
+from rigbench.motion.quintic import elapsed, quintic
 
 __all__ = ["ViaMotion"]
-
-ARRIVED = 1e-9
-"""Share of a leg before its end that counts as its end, so that rounding in t leaves no trace in a rest;
-the position is the same in double precision there, as s differs from 1 by 1e-26."""
 
 
 @dataclass(frozen=True)
@@ -71,15 +68,16 @@ class ViaMotion:
         t = np.clip(np.asarray(t, float), 0.0, self.duration_s)
         # A time a rounding error short of a leg's start falls into the leg before it, at x = 1: the same.
         leg = np.minimum((t / period).astype(int), self._legs - 1)
-        x = np.clip((t - leg * period) / self._leg, 0.0, 1.0)[:, None]
-        x = np.where(x > 1 - ARRIVED, 1.0, x)
+        x = elapsed(t - leg * period, self._leg)[:, None]
         start, end = points[leg], points[leg + 1]
         step = end - start
-        s = x**3 * (10 + x * (6 * x - 15))
+        s, ds, dds = quintic(x)
         q = np.where(x < 1, start + s * step, end)  # exactly on the point, as the rests hold it
-        v = 30 * (x * (1 - x)) ** 2 * step / self._leg
-        a = 60 * x * (1 - x) * (1 - 2 * x) * step / self._leg**2
-        return q, v, a
+        return q, ds * step / self._leg, dds * step / self._leg**2
+
+    def paced(self, factor: float) -> ViaMotion:
+        """Return the same motion at ``factor`` times its pace."""
+        return replace(self, pace=self.pace * factor)
 
     def inputs(self) -> dict[str, Any]:
         """Return the points, times and pace, JSON-able."""

@@ -1,73 +1,54 @@
-"""One sheet of the matrix: rows are laws, columns are conditions, measured before it is drawn."""
+"""The matrices of all sheets: rows are laws, columns are conditions, measured once before any is drawn."""
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
 from functools import cached_property
 
-from rigbench.report.cells import CellWords, Grid, laws_in_order
+from rigbench.report.cell_box import draw_cell, figure_width, fitted, small_words
+from rigbench.report.cells import Grid
+from rigbench.report.order import laws_in_order
 from rigbench.report.paper import LINE, Paper
-from rigbench.report.shades import GAUGE_WIDTH, draw_gauge, shade
+from rigbench.report.shades import GAUGE_WIDTH
 from rigbench.report.strip import LevelStrip
+from rigbench.report.style import SHEET_SIZE, Style
 from rigbench.report.words import has_levels, level_words
-from rigbench.report.wrapping import wrap_name
+from rigbench.report.wrapping import wrap_list, wrap_name
 
-__all__ = ["ROOMY", "TIGHT", "Block", "Style"]
+__all__ = ["Block"]
 
-
-@dataclass(frozen=True)
-class Style:
-    """Sizes of type and widths [pt] of a matrix; ``full`` names the main score in every cell."""
-
-    figure: float
-    small: float
-    head: float
-    law: float
-    cell_most: float
-    law_most: float
-    pad: float
-    full: bool
-
-
-ROOMY = Style(figure=17, small=8.5, head=9.5, law=11, cell_most=96, law_most=130, pad=5, full=True)
-TIGHT = Style(figure=15, small=7.5, head=8.5, law=10, cell_most=54, law_most=120, pad=4, full=False)
-
-SHEET_SIZE = 12.0
 GAP = 3.0
 GROUP_GAP = 9.0
-RULE = "#c9d3dd"
+STRIP_GAP = 8.0
 
 
 class Block:
-    """The rows and columns of one sheet, all cells equally large."""
+    """The rows and columns that every sheet has, each in the same place; all cells are equally large."""
 
-    def __init__(self, paper: Paper, grid: Grid, sheet: str, style: Style) -> None:
-        self.paper, self.grid, self.sheet, self.style = paper, grid, sheet, style
-        self.laws = laws_in_order(grid.results, sheet)
+    def __init__(self, paper: Paper, grid: Grid, style: Style) -> None:
+        self.paper, self.grid, self.style = paper, grid, style
+        self.laws = laws_in_order(grid)
         self.columns = grid.results.columns
         self.said = {
-            (law, column.name): _fitted(grid.words(sheet, law, column, style.full), style)
+            (sheet, law, column.name): fitted(grid.words(sheet, law, column, style.full), style)
+            for sheet in grid.results.sheets
             for law in self.laws
             for column in self.columns
         }
-        self.strip = LevelStrip(paper, grid.results, style.small) if has_levels(grid.results) else None
+        levels = has_levels(grid.results)
+        self.strip = LevelStrip(paper, grid, style.small, style.strip) if levels else None
 
     @cached_property
     def text_width(self) -> float:
         """Width that a cell's text gets: the widest line, up to the style's most; what is wider is broken."""
         style, paper = self.style, self.paper
-        most = 40.0
+        most = style.cell_least
         for words in self.said.values():
-            most = max(most, self._figure_width(words), paper.width(words.head, style.small))
-            most = max(most, min(paper.widest(_small(words), style.small), style.cell_most))
+            most = max(most, figure_width(paper, words, style), paper.width(words.head, style.small))
+            most = max(most, min(paper.widest(small_words(words), style.small), style.cell_most))
         for column in self.columns:
             longest = paper.widest(column.name.split(), style.head, bold=True)
             most = max(most, min(longest - GAUGE_WIDTH - style.pad, style.cell_most))
         return most
-
-    def _figure_width(self, words: CellWords) -> float:
-        figure = self.paper.width(words.figure, self.style.figure, bold=True)
-        return figure + self.paper.width(" " + words.unit, self.style.small + 1)
 
     @property
     def cell_width(self) -> float:
@@ -75,11 +56,11 @@ class Block:
         return GAUGE_WIDTH + self.text_width + 2 * self.style.pad
 
     @cached_property
-    def small_lines(self) -> dict[tuple[str, str], list[str]]:
+    def small_lines(self) -> dict[tuple[str, str, str], list[str]]:
         """The lines beneath each cell's figure, broken to its width."""
         width, size, wrap = self.text_width, self.style.small, self.paper.wrap
         return {
-            key: [part for line in _small(words) for part in wrap(line, width, size)]
+            key: [part for line in small_words(words) for part in wrap(line, width, size)]
             for key, words in self.said.items()
         }
 
@@ -95,7 +76,7 @@ class Block:
     @cached_property
     def head_lines(self) -> list[list[str]]:
         """The conditions' names, broken."""
-        style, width = self.style, self.cell_width - self.style.pad
+        style, width = self.style, self.cell_width - max(self.style.pad, 4)
         return [self.paper.wrap(column.name, width, style.head, bold=True) for column in self.columns]
 
     @cached_property
@@ -122,12 +103,12 @@ class Block:
             len(lines) * LINE * style.head + bool(line) * LINE * style.small
             for lines, line in zip(self.head_lines, levels, strict=True)
         )
-        return max(names, LINE * (style.head + style.small)) + 4
+        return max(names, LINE * (style.head + style.small) if self.strip else 0.0) + 4
 
     @cached_property
     def places(self) -> list[float]:
         """Where each column starts, from the block's left edge; groups of columns stand a little apart."""
-        x, places = self.law_width + 12, []
+        x, places = self.law_width + 10, []
         for number, column in enumerate(self.columns):
             if number:
                 apart = column.ladder != self.columns[number - 1].ladder
@@ -139,27 +120,31 @@ class Block:
     def width(self) -> float:
         """Width of the block."""
         right = self.places[-1] + self.cell_width
-        return right + 10 + self.strip.width if self.strip else right
+        return right + STRIP_GAP + self.strip.width if self.strip else right
 
-    def draw(self, x: float, top: float, number: int) -> float:
-        """Draw the block with its upper left corner at (x, top) and return where it ends."""
-        if self.sheet:
-            lines = self.paper.wrap(self.sheet, self.width, SHEET_SIZE, bold=True)
-            top = self.paper.lines(x, top, lines, SHEET_SIZE, bold=True) + 6
+    @property
+    def height(self) -> float:
+        """Height of the block without its sheet's name."""
+        return self.head_height + len(self.laws) * (self.row_height + GAP) - GAP
+
+    def name_lines(self, sheet: str) -> list[str]:
+        """Return the sheet's name, broken to the block's width."""
+        return wrap_list(sheet, self.width, lambda line: self.paper.width(line, SHEET_SIZE, bold=True))
+
+    def draw(self, sheet: str, x: float, top: float, number: int) -> None:
+        """Draw one sheet's matrix with its upper left corner at (x, top), its name not included."""
         top += self.head_height
         self._draw_heads(x, top - 4)
-        strip_x = x + self.places[-1] + self.cell_width + 10
-        standings = {one.law: one for one in self.grid.results.standings if one.sheet == self.sheet}
+        strip_x = x + self.places[-1] + self.cell_width + STRIP_GAP
         if self.strip:
             self.strip.head(strip_x, top - 4, self.style.head)
-            self.strip.rails(strip_x, top - 2, top + len(self.laws) * (self.row_height + GAP) - GAP)
+            self.strip.rails(strip_x, top - 2, top + self.height - self.head_height)
         for row, law in enumerate(self.laws):
-            self._draw_row(x, top, law, f"{number}-{row}")
-            tolerated = standings[law].tolerated if law in standings else None
-            if self.strip and tolerated:
-                self.strip.row((strip_x, top), self.row_height, tolerated, f"{number}-{row}")
+            name = f"{number}-{row}"
+            self._draw_row(x, top, (sheet, law), name)
+            if self.strip:
+                self.strip.row((strip_x, top), self.row_height, (sheet, law), name)
             top += self.row_height + GAP
-        return top - GAP
 
     def _draw_heads(self, x: float, bottom: float) -> None:
         style = self.style
@@ -169,39 +154,12 @@ class Block:
             top = self.paper.lines(x + place, top, lines, style.head, bold=True)
             self.paper.text(x + place, top, line, style.small)
 
-    def _draw_row(self, x: float, top: float, law: str, name: str) -> None:
-        lines, style = self.law_lines[law], self.style
+    def _draw_row(self, x: float, top: float, of: tuple[str, str], name: str) -> None:
+        lines, style = self.law_lines[of[1]], self.style
         middle = top + (self.row_height - len(lines) * LINE * style.law) / 2
         self.paper.lines(x, middle, lines, style.law, bold=True, name=f"law-{name}")
+        size = self.cell_width, self.row_height
         for number, (place, column) in enumerate(zip(self.places, self.columns, strict=True)):
-            self._draw_cell(x + place, top, (law, column.name), f"{name}-{number}")
-
-    def _draw_cell(self, x: float, top: float, key: tuple[str, str], name: str) -> None:
-        words, style, paper = self.said[key], self.style, self.paper
-        paper.box(
-            x, top, self.cell_width, self.row_height,
-            fill=shade(words.ink), edge="none" if words.ink is not None else RULE, name=f"cell-{name}",
-        )  # fmt: skip
-        draw_gauge(paper, (x, top), self.row_height, words.verdict, f"gauge-{name}")
-        left, y = x + GAUGE_WIDTH + style.pad, top + style.pad
-        if words.head:
-            paper.text(left, y, words.head, style.small, name=f"text-{name}-head")
-            y += LINE * style.small
-        paper.text(left, y, words.figure, style.figure, bold=True, name=f"text-{name}-figure")
-        unit = left + paper.width(words.figure, style.figure, bold=True) + paper.width(" ", style.small + 1)
-        fall = 0.98 * (style.figure - style.small - 1)  # onto the same baseline
-        paper.text(unit, y + fall, words.unit, style.small + 1, name=f"text-{name}-unit")
-        y += LINE * style.figure
-        paper.lines(left, y, self.small_lines[key], style.small, name=f"text-{name}-small")
-
-
-def _small(words: CellWords) -> tuple[str, ...]:
-    return (words.interval, *words.lines) if words.interval else words.lines
-
-
-def _fitted(words: CellWords, style: Style) -> CellWords:
-    """Return the words as they are, but in a tight style with the unit beneath the figure, not beside it."""
-    if style.full or words.unit in {"", "%"}:
-        return words
-    first = ", ".join((words.unit, *words.lines[:1]))
-    return replace(words, unit="", lines=(first, *words.lines[1:]))
+            key, corner = (*of, column.name), (x + place, top)
+            small = self.small_lines[key]
+            draw_cell(self.paper, style, self.said[key], small, corner, size, f"{name}-{number}")

@@ -1,17 +1,28 @@
-"""What each cell of the matrix says, and in which order its rows stand."""
+"""What each cell of the matrix says."""
 
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable
 from dataclasses import dataclass
 
-from rigbench.report.words import figure, interval, main_limit, main_score, percent, quantity, score_words
-from rigbench.scores.results import Cell, Column, LawStanding, Results
+from rigbench.report.words import (
+    NOT_POSSIBLE,
+    figure,
+    interval,
+    main_limits,
+    main_score,
+    percent,
+    quantity,
+    tolerated_words,
+)
+from rigbench.scores.names import score_words
+from rigbench.scores.results import Cell, Column, Results, Tolerated
 
-__all__ = ["CellWords", "Grid", "laws_in_order"]
+__all__ = ["EXACT", "CellWords", "Grid"]
 
 NOTHING = "-"
+EXACT = ("one exact run", "one run")
+"""What a cell says where nothing is random, in full and in short."""
 
 
 @dataclass(frozen=True)
@@ -20,6 +31,7 @@ class CellWords:
 
     ``interval`` is '' where there is none. ``ink`` from 0 to 1 is how dark the cell is: the pass share,
     or without a tolerance how large the main score is among all cells; None where nothing is to be shown.
+    A law that is not ``possible`` in its sheet has that one small line and nothing else.
     """
 
     verdict: str
@@ -29,6 +41,7 @@ class CellWords:
     interval: str
     lines: tuple[str, ...]
     ink: float | None
+    possible: bool = True
 
     @property
     def head(self) -> str:
@@ -42,9 +55,10 @@ class Grid:
     def __init__(self, results: Results) -> None:
         self.results = results
         self.score = main_score(results)
-        self.limit = main_limit(results)
+        self.limits = main_limits(results)
         self.score_name = score_words(self.score)[0]
         self._cells = {(cell.sheet, cell.law, cell.condition): cell for cell in results.cells}
+        self._tolerated = {(one.sheet, one.law): one.tolerated for one in results.standings}
         found = (self._median(cell) for cell in results.cells)
         finite = [value for value in found if value is not None and math.isfinite(value)]
         self.least, self.most = (min(finite), max(finite)) if finite else (0.0, 0.0)
@@ -53,9 +67,39 @@ class Grid:
         """Return the one cell of that name; KeyError if there is none."""
         return self._cells[sheet, law, column.name]
 
+    def possible(self, sheet: str, law: str) -> bool:
+        """Tell whether the law has any planned run in the sheet."""
+        return any(self.cell(sheet, law, column).planned for column in self.results.columns)
+
+    def tolerated(self, sheet: str, law: str) -> Tolerated | None:
+        """Return the tolerated level of a law in a sheet; None without one, or where it is not possible."""
+        return self._tolerated.get((sheet, law)) if self.possible(sheet, law) else None
+
+    def crossing(self, sheet: str, law: str) -> float | None:
+        """Return the level at which the pass share crosses the required one: inf beyond all levels run.
+
+        Where it is below from the start it is the level shown to keep, 0. None where nothing is known.
+        """
+        tolerated, tolerance = self.tolerated(sheet, law), self.results.tolerance
+        if tolerated is None or tolerance is None or tolerated.value is not None:
+            return tolerated.value if tolerated else None
+        steps = sorted((column for column in self.results.columns if column.ladder), key=_level)
+        shares = [self.cell(sheet, law, column).pass_share for column in steps]
+        known = [share for share in shares if share is not None]
+        starts_above = tolerated.low > 0 or (known and known[0] >= tolerance.required_share)
+        if math.isinf(tolerated.high) and starts_above:
+            return math.inf
+        return tolerated.low if known else None
+
+    def level(self, sheet: str, law: str) -> str:
+        """Say that level, or that the law is not possible there."""
+        return tolerated_words(self.tolerated(sheet, law)) if self.possible(sheet, law) else NOT_POSSIBLE
+
     def words(self, sheet: str, law: str, column: Column, full: bool = True) -> CellWords:
         """Put one cell into words; ``full`` names the main score beside its value."""
         cell = self.cell(sheet, law, column)
+        if not cell.planned:
+            return CellWords("", False, "", "", "", (NOT_POSSIBLE,), None, possible=False)
         median = self._median(cell)
         if cell.draws == 0 or (median is None and self.results.tolerance is None):
             shown, lines, ink = (NOTHING, "", ""), ["no result"], None
@@ -90,7 +134,7 @@ class Grid:
     def _score_large(self, cell: Cell, column: Column, full: bool) -> tuple[tuple[str, str, str], list[str]]:
         """Return the main score, its unit and interval; and what they are."""
         median = self._median(cell)
-        lines = [] if column.random else ["one exact run" if full else "one run"]
+        lines = [] if column.random else [EXACT[not full]]
         if median is None:
             return (NOTHING, "", ""), [f"no {self.score_name}", *lines]
         if math.isinf(median):
@@ -99,7 +143,7 @@ class Grid:
         if column.random:
             measure = cell.measures[self.score]
             ends = interval(measure.median_low, measure.median_high)
-        shown = figure(median, None if column.random else self.limit)
+        shown = figure(median) if column.random else figure(median, *self.limits)
         return (shown, score_words(self.score)[1], ends), [self.score_name, *lines] if full else lines
 
     def _scale(self, median: float | None) -> float | None:
@@ -113,37 +157,5 @@ class Grid:
         return (median - self.least) / (self.most - self.least)
 
 
-def laws_in_order(results: Results, sheet: str) -> tuple[str, ...]:
-    """Return a sheet's laws by tolerated level, best first; ties, or all without a tolerance, as declared."""
-    standings = {standing.law: standing for standing in results.standings if standing.sheet == sheet}
-    shares = _shares_on_the_ladder(results, sheet)
-
-    def key(law: str) -> tuple[float, float]:
-        standing = standings.get(law)
-        return (0.0, 0.0) if standing is None else _merit(standing, shares.get(law, []), results)
-
-    return tuple(sorted(results.laws, key=key, reverse=True))
-
-
-def _shares_on_the_ladder(results: Results, sheet: str) -> dict[str, list[float | None]]:
-    ladder = {column.name for column in results.columns if column.ladder}
-    shares: dict[str, list[float | None]] = {}
-    for cell in results.cells:
-        if cell.sheet == sheet and cell.condition in ladder:
-            shares.setdefault(cell.law, []).append(cell.pass_share)
-    return shares
-
-
-def _merit(standing: LawStanding, shares: Iterable[float | None], results: Results) -> tuple[float, float]:
-    """Return what a law is sorted by: its tolerated level, then the level that it is shown to keep.
-
-    Where the share crosses nowhere, it is either above the required one at all levels or below it.
-    """
-    tolerated, tolerance = standing.tolerated, results.tolerance
-    if tolerated is None or tolerance is None:
-        return 0.0, 0.0
-    if tolerated.value is not None:
-        return tolerated.value, tolerated.low
-    above = all(share is not None and share >= tolerance.required_share for share in shares)
-    crosses_beyond = math.isinf(tolerated.high) and (tolerated.low > 0 or above)
-    return (math.inf if crosses_beyond else tolerated.low), tolerated.low
+def _level(column: Column) -> float:
+    return column.level or 0.0

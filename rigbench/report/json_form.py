@@ -7,6 +7,7 @@ from collections.abc import Mapping
 from numbers import Integral, Real
 from typing import Any
 
+from rigbench.report.cells import Grid
 from rigbench.scores.results import Cell, Measure, MotionCell, Results
 
 __all__ = ["results_json"]
@@ -17,12 +18,13 @@ def results_json(results: Results, store: str) -> dict[str, Any]:
 
     ``{"store", "runs": {"planned", "done", "failed"}, "cells": [...], "laws": [...], "break_even": [...],
     "advice"}``. A cell holds sheet, law, condition, level, draws, incomplete, pass_share, pass_low,
-    pass_high, verdict; then each score by name, ``{"median", "p95", "median_low", "median_high",
-    "p95_low", "p95_high"}`` in the unit that the name carries; and ``"motions"``, each with draws,
-    passed, pass_share and its scores. What is infinite, or isn't there, is None: p95_high where the draws
-    don't reach, the tolerated level's high where no level was shown to miss, all shares without a tolerance.
+    pass_high, verdict, planned (how many runs; 0 where the law is not possible in the sheet); then each
+    score by name, ``{"median", "p95", "median_low", "median_high", "p95_low", "p95_high"}`` in the unit that
+    the name carries; and ``"motions"``, each with draws, passed, pass_share and its scores. What is
+    infinite, or isn't there, is None: p95_high where the draws don't reach, the tolerated level's high where
+    no level was shown to miss, all shares without a tolerance, all verdicts where a law is not possible.
     """
-    with_tolerance = results.tolerance is not None
+    with_tolerance, grid = results.tolerance is not None, Grid(results)
     document = {
         "store": store,
         "runs": {"planned": results.planned, "done": results.done, "failed": results.failed},
@@ -32,7 +34,7 @@ def results_json(results: Results, store: str) -> dict[str, Any]:
                 "sheet": standing.sheet,
                 "law": standing.law,
                 "tolerated_level": None
-                if standing.tolerated is None
+                if standing.tolerated is None or not grid.possible(standing.sheet, standing.law)
                 else {
                     "value": standing.tolerated.value,
                     "low": standing.tolerated.low,
@@ -59,7 +61,8 @@ def _cell(cell: Cell, with_tolerance: bool) -> dict[str, Any]:
         "pass_share": cell.pass_share,
         "pass_low": cell.pass_low,
         "pass_high": cell.pass_high,
-        "verdict": cell.verdict or None,
+        "verdict": (cell.verdict if cell.planned else "") or None,
+        "planned": cell.planned,
         **_measures(cell.measures),
         "motions": {name: _motion(motion, with_tolerance) for name, motion in cell.motions.items()},
     }

@@ -2,30 +2,27 @@
 
 from __future__ import annotations
 
-import math
-from collections.abc import Callable, Iterator
+from collections.abc import Iterator
 
+from rigbench.report.arrange import Arrangement
 from rigbench.report.cells import Grid
+from rigbench.report.legend_levels import GLYPH_HEIGHT, Entry, Glyph, curve_entries, level_entries
 from rigbench.report.paper import LINE, Paper, Point
 from rigbench.report.shades import GAUGE, GAUGE_WIDTH, draw_gauge, shade
-from rigbench.report.strip import LevelStrip
 from rigbench.report.words import any_random, percent, quantity
 
 __all__ = ["CAUTION", "draw_legend"]
 
 SIZE = 8.0
 CAUTION = "Simulation is evidence for a choice, not a safety case."
-Glyph = Callable[[float, float], None]
-Entry = tuple[float, Glyph | None, str]
-GLYPH_HEIGHT = 10.0
 APART = 20.0
 
 
-def draw_legend(paper: Paper, grid: Grid, strip: LevelStrip | None, corner: Point, width: float) -> float:
+def draw_legend(paper: Paper, grid: Grid, arrangement: Arrangement, corner: Point, width: float) -> float:
     """Draw the legend from its upper left corner on, no wider than ``width``, and return where it ends."""
     x, top = corner
     pen = x
-    for glyph_width, glyph, said in entries(paper, grid, strip):
+    for glyph_width, glyph, said in entries(paper, grid, arrangement):
         indent = glyph_width + 5 if glyph else 0.0
         lines = paper.wrap(said, width - indent, SIZE)
         wide = indent + paper.widest(lines, SIZE)
@@ -40,7 +37,7 @@ def draw_legend(paper: Paper, grid: Grid, strip: LevelStrip | None, corner: Poin
     return paper.lines(x, top, paper.wrap(CAUTION, width, SIZE), SIZE)
 
 
-def entries(paper: Paper, grid: Grid, strip: LevelStrip | None) -> Iterator[Entry]:
+def entries(paper: Paper, grid: Grid, arrangement: Arrangement) -> Iterator[Entry]:
     """Yield what the legend explains: a glyph with its width, and its meaning."""
     results = grid.results
     random = any_random(results)
@@ -58,25 +55,19 @@ def entries(paper: Paper, grid: Grid, strip: LevelStrip | None) -> Iterator[Entr
             None,
             "incomplete: draws not run yet, or ended by an error or a time limit; they don't count.",
         )
-    if strip and results.tolerance:
+    if any(not cell.planned for cell in results.cells):
+        yield 0, None, "not possible: the experiment's settings leave the law out of this sheet."
+    if arrangement.block.strip and results.tolerance:
         required = percent(results.tolerance.required_share)
-        yield (
-            40,
-            _level(paper, strip, False),
-            (
-                "tolerated level: left end shown to keep, right end shown to miss, dot where the share "
-                f"crosses {required} %"
-            ),
-        )
-        ends = (standing.tolerated.high for standing in results.standings if standing.tolerated)
-        if any(math.isinf(end) for end in ends):
-            yield 40, _level(paper, strip, True), "not shown to miss at any level run"
+        yield from level_entries(paper, grid, arrangement.block.strip, required)
+        if arrangement.curves:
+            yield from curve_entries(paper, grid, required)
 
 
 def _share_entries(paper: Paper, grid: Grid, required: str, random: bool) -> Iterator[Entry]:
     if not random:
         yield GAUGE_WIDTH, _gauge(paper, "keeps"), "keeps the tolerance"
-        if any(cell.verdict == "open" for cell in grid.results.cells):
+        if any(cell.verdict == "open" and cell.planned for cell in grid.results.cells):
             yield GAUGE_WIDTH, _gauge(paper, "open"), "open: no result"
         yield GAUGE_WIDTH, _gauge(paper, "misses"), "misses the tolerance"
         return
@@ -120,15 +111,5 @@ def _ramp(paper: Paper) -> Glyph:
         for step in range(steps):
             paper.box(x + 15 * step, top, 15, GLYPH_HEIGHT, fill=shade(step / (steps - 1)))
         paper.box(x, top, 90, GLYPH_HEIGHT, edge=GAUGE, line=0.5)
-
-    return draw
-
-
-def _level(paper: Paper, strip: LevelStrip, open_end: bool) -> Glyph:
-    def draw(x: float, top: float) -> None:
-        middle = top + GLYPH_HEIGHT / 2
-        strip.bar(x + 1, x + 39, middle, open_end=open_end)
-        if not open_end:
-            paper.dot(x + 18, middle, 8, GAUGE)
 
     return draw

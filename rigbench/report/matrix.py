@@ -11,7 +11,7 @@ from typing import Any
 from matplotlib.figure import Figure
 
 from rigbench.errors import InputFaults, StoreError
-from rigbench.report.block import ROOMY, TIGHT, Block
+from rigbench.report.arrange import MARGIN, Arrangement, arrange
 from rigbench.report.cells import Grid
 from rigbench.report.legend import draw_legend
 from rigbench.report.paper import Paper, steady_settings, text_boxes
@@ -21,9 +21,9 @@ from rigbench.scores.results import Results
 __all__ = ["FORMATS", "matrix_figure", "matrix_picture", "text_boxes"]
 
 FORMATS = ("png", "svg", "pdf")
-MARGIN = 26.0
 NARROWEST = 470.0
-ROOMY_UP_TO = 1140.0  # the longer side of an A3 sheet less its margins
+READING = 900.0  # the longest lines of text
+BESIDE, LEAST_LEGEND = 40.0, 400.0  # the legend's distance from the curves, and the width it takes there
 DPI = 180
 MOST_PIXELS = 60e6  # what a viewer opens without pain
 MOST_SIDE = 60_000  # the rasteriser takes less than 2^16
@@ -32,8 +32,9 @@ MOST_SIDE = 60_000  # the rasteriser takes less than 2^16
 def matrix_picture(results: Results, path: Path, date: datetime.date) -> None:
     """Draw the results matrix into a file whose suffix says the format: .png, .svg or .pdf.
 
-    Rows are laws, best tolerated level first; columns are conditions; each sheet is a matrix of its own
-    below the last. The same results and date give the same bytes. Missing folders are made.
+    Rows are laws, best tolerated level first; columns are conditions. The sheets of a sweep stand side by
+    side, and beneath them the laws' tolerated levels as curves. The same results and date give the same
+    bytes. Missing folders are made.
 
     Raises InputFaults for another suffix and StoreError if the file can't be written.
     """
@@ -65,16 +66,27 @@ def matrix_figure(results: Results, date: datetime.date) -> Figure:
     """Return the results matrix as a figure just as large as what is on it."""
     with steady_settings():
         paper, grid = Paper(), Grid(results)
-        blocks = [Block(paper, grid, sheet, ROOMY) for sheet in results.sheets]
-        if max(block.width for block in blocks) > ROOMY_UP_TO:
-            blocks = [Block(paper, grid, sheet, TIGHT) for sheet in results.sheets]
-        width = max(NARROWEST, *(block.width for block in blocks))
-        reading = min(width, 900.0)
+        arrangement = arrange(paper, grid)
+        width = max(NARROWEST, arrangement.width)
+        reading = min(width, READING)
         y = _draw_head(paper, results, date, reading)
-        for number, block in enumerate(blocks):
-            y = block.draw(MARGIN, y + 20, number)
-        y = draw_legend(paper, grid, blocks[0].strip, (MARGIN, y + 18), reading)
+        y = arrangement.draw(MARGIN, y + 20)
+        y = _draw_foot(paper, grid, arrangement, y, width)
         return paper.figure(width + 2 * MARGIN, y + MARGIN)
+
+
+def _draw_foot(paper: Paper, grid: Grid, arrangement: Arrangement, top: float, width: float) -> float:
+    """Draw the curves, if there are any, and the legend: beside them where there is room; return the end."""
+    left, below, curves = 0.0, top, arrangement.curves
+    if curves:
+        top += 30
+        below = curves.draw(MARGIN, top)
+        if width - curves.width - BESIDE >= LEAST_LEGEND:
+            left, top = curves.width + BESIDE, top + curves.title_height
+        else:
+            top = below
+    end = draw_legend(paper, grid, arrangement, (MARGIN + left, top + 18), min(width - left, READING))
+    return max(end, below)
 
 
 def _draw_head(paper: Paper, results: Results, date: datetime.date, width: float) -> float:

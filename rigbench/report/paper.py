@@ -27,6 +27,7 @@ __all__ = ["INK", "LINE", "Paper", "Point", "steady_settings", "text_boxes"]
 
 FONT = "DejaVu Sans"  # comes with matplotlib, so every machine draws and measures the same
 INK = "#14202b"
+QUIET = "#5b6873"
 LEAST_SIZE = 7.0
 Point = tuple[float, float]
 LINE = 1.28
@@ -72,23 +73,25 @@ class Paper:
 
     def text(
         self, x: float, top: float, line: str, size: float, *,
-        bold: bool = False, at: str = "left", name: str = "",
+        bold: bool = False, at: str = "left", name: str = "", ink: str = INK,
     ) -> None:  # fmt: skip
         """Write one line with its upper edge at ``top``; ``at`` says which end, or its middle, is at x."""
         if not line:
             return
         artist = Text(
-            x, top + ASCENT * size, line, color=INK, fontproperties=_font(max(size, LEAST_SIZE), bold),
+            x, top + ASCENT * size, line, color=ink, fontproperties=_font(max(size, LEAST_SIZE), bold),
             ha=at, va="baseline", parse_math=False, usetex=False,
         )  # fmt: skip
         self._add(artist, name, zorder=3)
 
     def lines(
-        self, x: float, top: float, lines: Sequence[str], size: float, *, bold: bool = False, name: str = ""
-    ) -> float:
+        self, x: float, top: float, lines: Sequence[str], size: float, *,
+        bold: bool = False, at: str = "left", name: str = "", ink: str = INK,
+    ) -> float:  # fmt: skip
         """Write lines below each other and return where they end."""
         for number, line in enumerate(lines):
-            self.text(x, top + number * LINE * size, line, size, bold=bold, name=name and f"{name}-{number}")
+            y, called = top + number * LINE * size, name and f"{name}-{number}"
+            self.text(x, y, line, size, bold=bold, at=at, name=called, ink=ink)
         return top + len(lines) * LINE * size
 
     def box(
@@ -104,17 +107,25 @@ class Paper:
         """Draw a filled polygon."""
         self._add(Polygon(list(corners), closed=True, facecolor=fill, edgecolor="none"), zorder=2.2)
 
-    def stroke(self, start: Point, end: Point, *, color: str, line: float) -> None:
-        """Draw a straight line."""
+    def stroke(
+        self, start: Point, end: Point, *, color: str, line: float,
+        dashes: Sequence[float] = (), order: float = 1.5, name: str = "",
+    ) -> None:  # fmt: skip
+        """Draw a straight line; ``dashes`` are lengths of strokes and gaps in turn, in widths of the line."""
         (x0, y0), (x1, y1) = start, end
-        self._add(Line2D([x0, x1], [y0, y1], color=color, linewidth=line, solid_capstyle="butt"), zorder=1.5)
+        drawn = Line2D([x0, x1], [y0, y1], color=color, linewidth=line, solid_capstyle="butt")
+        if dashes:
+            drawn.set_linestyle((0, tuple(dashes)))
+        self._add(drawn, name, zorder=order)
 
-    def dot(self, x: float, y: float, size: float, color: str) -> None:
-        """Draw a round dot of that diameter, edged in white."""
-        dot = Line2D([x], [y], marker="o", markersize=size, color=color)
-        dot.set_markeredgecolor("white")
-        dot.set_markeredgewidth(1.0)
-        self._add(dot, zorder=2.5)
+    def marker(
+        self, x: float, y: float, size: float, shape: str, *, fill: str, edge: str, name: str = ""
+    ) -> None:
+        """Draw a marker of one of matplotlib's shapes, edged."""
+        drawn = Line2D([x], [y], marker=shape, markersize=size, color=fill)
+        drawn.set_markeredgecolor(edge)
+        drawn.set_markeredgewidth(1.0)
+        self._add(drawn, name, zorder=2.5)
 
     def _add(self, artist: Artist, name: str = "", zorder: float = 1) -> None:
         artist.set_zorder(zorder)

@@ -4,12 +4,15 @@ from __future__ import annotations
 
 from rigbench.report.paper import Paper, Point
 
-__all__ = ["FULL", "GAUGE", "GAUGE_WIDTH", "NONE", "draw_gauge", "shade"]
+__all__ = ["ABSENT", "FULL", "GAUGE", "GAUGE_WIDTH", "NONE", "draw_gauge", "shade"]
 
 NONE = (246, 248, 251)
 FULL = (150, 187, 224)
 """The two ends of the scale. Dark type stays readable on both, and grey print keeps them apart, which
 shades from white to black would not allow; a test holds them to it."""
+
+ABSENT = "#f4f4f2"
+"""Where a cell can't be: as pale as the scale's end, without its hue."""
 
 GAUGE = "#1d4a75"
 GAUGE_WIDTH = 5.0

@@ -6,32 +6,29 @@ import math
 from collections.abc import Iterator, Mapping, Sequence
 from typing import Any
 
-from rich.cells import cell_len, set_cell_size
+from rich.cells import cell_len
 
-from rigbench.report.cells import CellWords, Grid, laws_in_order
+from rigbench.report.cells import EXACT, CellWords, Grid
+from rigbench.report.order import laws_in_order
+from rigbench.report.table import Lines, blocks, laws_column, sheets_column
 from rigbench.report.words import (
     any_random,
     arm_words,
     has_levels,
     level_words,
     runs_words,
-    score_words,
     tolerance_words,
-    tolerated_words,
 )
-from rigbench.report.wrapping import wrap, wrap_name
+from rigbench.report.wrapping import wrap
+from rigbench.scores.names import score_words
 from rigbench.scores.results import Results
 
 __all__ = ["matrix_text"]
 
-Column = tuple[int, list[list[str]]]
-"""Width; then the lines of the head and of each row."""
-
-BETWEEN = 2
-HEAD_WIDTH = 15
 NARROWEST = 40
-LAW_PART = 0.25
-"""The most that the laws' names take of the width before they are broken."""
+ENDS = "(shown to keep at, shown to miss from)"
+FEW, SOME = 4, 12
+"""So many sheets have their matrices printed always, and so many if each fits side by side."""
 
 
 def matrix_text(results: Results, width: int = 80) -> str:
@@ -39,18 +36,19 @@ def matrix_text(results: Results, width: int = 80) -> str:
 
     Rows are laws, best tolerated level first. Conditions that don't fit side by side follow in blocks
     below, each with the laws' names again; the last column holds the tolerated levels. Break-even levels
-    stand beneath. The advice is not in it.
+    stand beneath. Of several sheets there is first one table, sheets down and laws across; their matrices
+    follow where they are few, or narrow. The advice is not in it.
     """
     width = max(width, NARROWEST)
-    parts = ["\n".join(_head(results, width))]
     grid = Grid(results)
-    for sheet in results.sheets:
-        if sheet:
-            parts.append("\n".join(_wrap(f"Sheet: {sheet}", width)))
-        parts += _blocks(grid, sheet, width)
-    crossings = [line for item in results.break_even for line in _break_even(item, width)]
-    if crossings:
-        parts.append("\n".join(crossings))
+    laws = laws_in_order(grid)
+    head = list(_head(results, width))
+    if len(results.sheets) == 1:
+        reading = _wrap(_reading(grid, has_levels(results)), width)
+        return "\n\n".join(["\n".join([*head, *reading]), *_matrices(grid, laws, width)])
+    parts = ["\n".join(head), *_across_sheets(grid, laws, width)]
+    if has_levels(results) or len(results.columns) > 1:
+        parts += _of_sheets(grid, laws, width)
     return "\n\n".join(parts)
 
 
@@ -58,10 +56,9 @@ def _head(results: Results, width: int) -> Iterator[str]:
     yield from _wrap(results.title, width)
     yield from _wrap(f"{arm_words(results)} {runs_words(results)}", width)
     yield from _wrap(tolerance_words(results), width)
-    yield from _wrap(_reading(Grid(results)), width)
 
 
-def _reading(grid: Grid) -> str:
+def _reading(grid: Grid, levels: bool) -> str:
     """Say what the cells hold."""
     name = grid.score_name
     if not any_random(grid.results):
@@ -69,44 +66,76 @@ def _reading(grid: Grid) -> str:
     if grid.results.tolerance is None:
         return f"In each cell: the {name}, median over the draws (95 % interval)."
     said = f"In each cell: share of the draws that keep it (95 % interval); beneath it the median {name}."
-    if has_levels(grid.results):
-        said += " Tolerated level: where the share falls below it (shown to keep at, shown to miss from)."
-    return said
+    return f"{said} Tolerated level: where the share falls below the required one {ENDS}." if levels else said
 
 
-def _blocks(grid: Grid, sheet: str, width: int) -> Iterator[str]:
+def _across_sheets(grid: Grid, laws: Sequence[str], width: int) -> Iterator[str]:
+    """Yield a table of what matters most, sheets down and laws across: tolerated levels, if there are any."""
+    results, column = grid.results, grid.results.columns[0]
+    if has_levels(results):
+        said = (
+            f"Tolerated level: where the share of the draws that keep it falls below the required one {ENDS}."
+        )
+        columns = [[[law], *([grid.level(sheet, law)] for sheet in results.sheets)] for law in laws]
+    else:
+        said = f"{_reading(grid, False)} Under '{column.name}':"
+        if not column.random:
+            said = f"The {grid.score_name} under '{column.name}', of one exact run:"
+        words = (
+            (law, (grid.words(sheet, law, column, full=False) for sheet in results.sheets)) for law in laws
+        )
+        columns = [[[law], *(_without_count(_cell_lines(cell)) for cell in cells)] for law, cells in words]
+    yield "\n".join(_wrap(said, width))
+    yield from blocks(sheets_column(results.sheets, width), columns, width)
+
+
+def _without_count(lines: Sequence[str]) -> list[str]:
+    """Leave out that a run is the only one, where the head of the table says so."""
+    return [line for line in lines if line not in EXACT]
+
+
+def _of_sheets(grid: Grid, laws: Sequence[str], width: int) -> Iterator[str]:
+    """Yield the sheets' matrices, or where they are."""
+    results = grid.results
+    number, narrow = len(results.sheets), len(list(_blocks(grid, results.sheets[0], laws, width))) == 1
+    if number <= (SOME if narrow else FEW):
+        yield "\n".join(_wrap(_reading(grid, False), width))
+        yield from _matrices(grid, laws, width)
+        return
+    said = f"The matrices of the {number} sheets are in the picture, which 'rigbench matrix STORE' draws"
+    crossings = len(results.break_even)
+    if crossings:
+        said += f"; {crossings} break-even level{'s are' if crossings > 1 else ' is'} in the output of --json"
+    yield "\n".join(_wrap(f"{said}.", width))
+
+
+def _matrices(grid: Grid, laws: Sequence[str], width: int) -> Iterator[str]:
+    """Yield the matrix of each sheet and the break-even levels."""
+    for sheet in grid.results.sheets:
+        if sheet:
+            yield "\n".join(_wrap(f"Sheet: {sheet}", width))
+        yield from _blocks(grid, sheet, laws, width)
+    crossings = [line for item in grid.results.break_even for line in _break_even(item, width)]
+    if crossings:
+        yield "\n".join(crossings)
+
+
+def _blocks(grid: Grid, sheet: str, laws: Sequence[str], width: int) -> Iterator[str]:
     """Yield the blocks of columns of one sheet that fit beside the laws' names."""
-    laws = laws_in_order(grid.results, sheet)
-    names = [wrap_name(law, int(LAW_PART * width), cell_len) for law in laws]
-    first = max(_widest(lines) for lines in names)
-    room = width - first - BETWEEN
-    columns = [_fit(column, room) for column in _columns(grid, sheet, laws)]
-    start = 0
-    while start < len(columns):
-        end, used = start, first
-        while end < len(columns) and (end == start or used + BETWEEN + columns[end][0] <= width):
-            used += BETWEEN + columns[end][0]
-            end += 1
-        yield _table([(first, [[""], *names]), *columns[start:end]])
-        start = end
-
-
-def _columns(grid: Grid, sheet: str, laws: Sequence[str]) -> Iterator[list[list[str]]]:
-    """Yield the columns: lines of the head, then lines of each law's cell."""
+    columns: list[Lines] = []
     for column in grid.results.columns:
-        head = [column.name, level_words(column)]
-        yield [
-            [line for line in head if line],
-            *(_cell_lines(grid.words(sheet, law, column, full=False)) for law in laws),
-        ]
+        head = [line for line in (column.name, level_words(column)) if line]
+        cells = (_cell_lines(grid.words(sheet, law, column, full=False)) for law in laws)
+        columns.append([head, *cells])
     if has_levels(grid.results):
-        standings = {standing.law: standing for standing in grid.results.standings if standing.sheet == sheet}
-        levels = [tolerated_words(standings[law].tolerated) if law in standings else "" for law in laws]
-        yield [["tolerated level"], *([said] for said in levels)]
+        columns.append([["tolerated level"], *([grid.level(sheet, law)] for law in laws)])
+    yield from blocks(laws_column(laws, width), columns, width)
 
 
 def _cell_lines(words: CellWords) -> list[str]:
     """Lay out a cell: '97 % (93-99) keeps', then the small lines."""
+    if not words.possible:
+        return [*words.lines]
     figure = f"{words.figure} {words.unit}".strip()
     if words.interval:
         figure += f" ({words.interval.replace(' to ', '-')})"
@@ -114,30 +143,6 @@ def _cell_lines(words: CellWords) -> list[str]:
     if words.best:
         lines[min(1, len(lines) - 1)] += ", best"
     return lines
-
-
-def _fit(column: list[list[str]], room: int) -> Column:
-    """Return a column with its width; what is too wide for it, or for the room there is, is broken."""
-    limit = min(max(_widest(lines) for lines in column[1:]), room)
-    limit = max(limit, min(HEAD_WIDTH, room))
-    broken = [[part for line in lines for part in _wrap(line, limit)] for lines in column]
-    return max(_widest(lines) for lines in broken), broken
-
-
-def _table(columns: Sequence[Column]) -> str:
-    """Set columns side by side: heads end on one line, the cells of a row start on one."""
-    rows = []
-    for place in range(len(columns[0][1])):
-        cells = [(width, lines[place]) for width, lines in columns]
-        high = max(len(lines) for _, lines in cells)
-        for number in range(high):
-            parts = []
-            for width, lines in cells:
-                line = number - (high - len(lines)) if place == 0 else number
-                parts.append(set_cell_size(lines[line] if 0 <= line < len(lines) else "", width))
-            rows.append((" " * BETWEEN).join(parts).rstrip())
-        rows.append("")
-    return "\n".join(rows[:-1])
 
 
 def _break_even(found: Mapping[str, Any], width: int) -> list[str]:
@@ -152,10 +157,6 @@ def _break_even(found: Mapping[str, Any], width: int) -> list[str]:
         f"{score_words(found['score'])[0]}, above it {above}.",
         width,
     )
-
-
-def _widest(lines: Sequence[str]) -> int:
-    return max((cell_len(line) for line in lines), default=0)
 
 
 def _wrap(text: str, width: int) -> list[str]:

@@ -4,12 +4,14 @@ from __future__ import annotations
 
 import math
 import re
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 
 from rigbench.scores import names
+from rigbench.scores.names import score_words
 from rigbench.scores.results import Column, Results, Tolerated
 
 __all__ = [
+    "NOT_POSSIBLE",
     "any_random",
     "arm_words",
     "figure",
@@ -17,35 +19,17 @@ __all__ = [
     "interval",
     "level",
     "level_words",
-    "main_limit",
+    "main_limits",
     "main_score",
     "percent",
     "quantity",
     "runs_words",
-    "score_words",
     "tolerance_words",
     "tolerated_words",
 ]
 
-UNITS = {"mm": "mm", "deg": "deg", "ms": "ms", "us": "us", "percent": "%", "j": "J"}
-NAMES = {
-    "settle_ms": "settling time",
-    "law_us": "law's time per tick",
-    "law_share_percent": "law's share of the control period",
-}
 MOST_DIGITS = 6
-
-
-def score_words(name: str) -> tuple[str, str]:
-    """Return a score's name in words and its unit ('' for none), both taken from the name itself.
-
-    ``tool_peak_mm`` -> ('tool peak', 'mm'); ``joint_peak_deg.j1`` -> ('joint peak of j1', 'deg').
-    """
-    stem, _, joint = name.partition(".")
-    head, _, tail = stem.rpartition("_")
-    unit = UNITS.get(tail, "") if head else ""
-    words = NAMES.get(stem, (head if unit else stem).replace("_", " "))
-    return (f"{words} of {joint}" if joint else words), unit
+NOT_POSSIBLE = "not possible"
 
 
 def _digits_that_agree(write: Callable[[int], str], first: int, agrees: Callable[[float], bool]) -> str:
@@ -56,11 +40,11 @@ def _digits_that_agree(write: Callable[[int], str], first: int, agrees: Callable
     return write(first)
 
 
-def figure(value: float, limit: float | None = None) -> str:
+def figure(value: float, *limits: float) -> str:
     """Return a finite number to 2 significant digits, 3 from 100 on: 0.064, 1.8, 12, 140, 1230.
 
-    An exponent stands only below 1e-4 and from 1e6 on. With a ``limit`` it gets as many digits as it
-    takes to be read on its own side of it: 3.004 against 3 is not written 3.0.
+    An exponent stands only below 1e-4 and from 1e6 on. With ``limits`` it gets as many digits as it
+    takes to be read on its own side of each: 3.004 against 3 is not written 3.0.
     """
     if value == 0:
         return "0"
@@ -72,7 +56,9 @@ def figure(value: float, limit: float | None = None) -> str:
         return f"{rounded:.{max(digits - 1 - math.floor(math.log10(abs(rounded))), 0)}f}"
 
     first = 3 if abs(value) >= 99.5 else 2
-    return _digits_that_agree(write, first, lambda read: limit is None or (read <= limit) == (value <= limit))
+    return _digits_that_agree(
+        write, first, lambda read: all((read <= limit) == (value <= limit) for limit in limits)
+    )
 
 
 def percent(share: float, required: float | None = None, exact: bool = False) -> str:
@@ -90,14 +76,14 @@ def percent(share: float, required: float | None = None, exact: bool = False) ->
     return _digits_that_agree(lambda decimals: f"{value:.{decimals}f}", 0, agrees)
 
 
-def quantity(value: float, score: str, limit: float | None = None) -> str:
+def quantity(value: float, score: str) -> str:
     """Return a score's value with its unit, or what an infinite one means."""
     if math.isnan(value):
         return "no value"
     if math.isinf(value):
         return "did not settle" if score.startswith("settle") else "did not finish"
     unit = score_words(score)[1]
-    return f"{figure(value, limit)} {unit}".rstrip()
+    return f"{figure(value)} {unit}".rstrip()
 
 
 def interval(low: float, high: float) -> str:
@@ -112,12 +98,15 @@ def level(value: float) -> str:
 
 def main_score(results: Results) -> str:
     """Return the score that the cells show: the one by which laws are compared."""
-    return names.main_score(results.tolerance.limits if results.tolerance else ())
+    return names.main_score(results.tolerance.limited if results.tolerance else ())
 
 
-def main_limit(results: Results) -> float | None:
-    """Return the limit of the main score, or None if it has none."""
-    return results.tolerance.limits.get(main_score(results)) if results.tolerance else None
+def main_limits(results: Results) -> tuple[float, ...]:
+    """Return the limits of the main score, in whichever motion; () if it has none."""
+    if results.tolerance is None:
+        return ()
+    name, every = main_score(results), (results.tolerance.limits, *results.tolerance.motions.values())
+    return tuple(limits[name] for limits in every if name in limits)
 
 
 def any_random(results: Results) -> bool:
@@ -133,19 +122,22 @@ def arm_words(results: Results) -> str:
 
 
 def tolerance_words(results: Results) -> str:
-    """Say what a run must keep, and on which share of the draws."""
+    """Say what a run must keep, and on which share of the draws; limits of single motions come after."""
     tolerance = results.tolerance
     if tolerance is None:
         return "No tolerance is declared."
-    limits = []
-    for name, limit in tolerance.limits.items():
-        words, unit = score_words(name)
-        limits.append(f"{words} at most {limit:g} {unit}".rstrip())
+    parts = [_limit_words(tolerance.limits)] if tolerance.limits else []
+    parts += [f"{motion}: {_limit_words(limits)}" for motion, limits in tolerance.motions.items() if limits]
+    limits = f"Tolerance: {'; '.join(parts)}"
     motions = ", in every motion" if len(results.motions) > 1 else ""
     if not any_random(results):
-        return f"Tolerance: {', '.join(limits)}{motions}."
-    share = percent(tolerance.required_share)
-    return f"Tolerance: {', '.join(limits)}. {share} % of the draws must keep it{motions}."
+        return f"{limits}{motions}."
+    return f"{limits}. {percent(tolerance.required_share)} % of the draws must keep it{motions}."
+
+
+def _limit_words(limits: Mapping[str, float]) -> str:
+    said = ((score_words(name), limit) for name, limit in limits.items())
+    return ", ".join(f"{words} at most {limit:g} {unit}".rstrip() for (words, unit), limit in said)
 
 
 def runs_words(results: Results) -> str:

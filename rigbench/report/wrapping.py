@@ -5,7 +5,7 @@ from __future__ import annotations
 import re
 from collections.abc import Callable
 
-__all__ = ["clean", "wrap", "wrap_name"]
+__all__ = ["clean", "wrap", "wrap_list", "wrap_name"]
 
 Measure = Callable[[str], float]
 
@@ -36,6 +36,19 @@ def wrap_name(name: str, width: float, measure: Measure) -> list[str]:
         return wrap(name, width, measure)
     law, bracket, rest = name.partition(" (")
     return [*wrap(law, width, measure), *wrap(bracket + rest, width, measure)]
+
+
+def wrap_list(name: str, width: float, measure: Measure) -> list[str]:
+    """Break a sheet's name, 'control_hz 500, gear_ratio 50': behind its commas where that does."""
+    lines = [""]
+    parts = clean(name).split(", ")
+    for part in [*(f"{part}," for part in parts[:-1]), parts[-1]]:
+        joined = f"{lines[-1]} {part}" if lines[-1] else part
+        if measure(joined) <= width:
+            lines[-1] = joined
+        else:
+            lines[len(lines) if lines[-1] else -1 :] = wrap(part, width, measure)
+    return lines
 
 
 def _pieces(word: str, width: float, measure: Measure) -> list[str]:

@@ -7,12 +7,15 @@ import json
 from dataclasses import dataclass, field
 from typing import Any
 
+import numpy as np
+
 from rigbench.arm.files import ArmFiles
-from rigbench.arm.mismatch import Mismatch
+from rigbench.arm.mismatch import Case, Mismatch
 from rigbench.laws.registry import LawChoice
 from rigbench.motion.motion import Motion
+from rigbench.rig.sampled import Sensing, Timing, inputs_of
 
-__all__ = ["NUMERICS", "Rates", "Run"]
+__all__ = ["NUMERICS", "Rates", "Run", "tilted"]
 
 NUMERICS = 1
 """Raised by hand whenever a change of ours alters the numbers that a run yields: stored rows of the
@@ -33,7 +36,8 @@ class Run:
 
     It carries the texts of arm and law files, so it can be done on a machine that has none of them.
     ``sources`` are the mismatch sources that act, at ``level``, in the direction of draw number
-    ``draw`` (None where nothing is random). Angles in rad, lengths in m unless the name says otherwise.
+    ``draw`` (None where nothing is random); ``case`` is what is stated of the plant on top of that.
+    Angles in rad, lengths in m unless the name says otherwise.
     """
 
     arm: ArmFiles
@@ -50,16 +54,21 @@ class Run:
     draw: int | None = None
     start_offset: tuple[float, ...] = ()
     gravity: tuple[float, float, float] = (0.0, 0.0, -9.81)
+    case: Case | None = None
+    sensing: Sensing = field(default_factory=Sensing)
+    timing: Timing = field(default_factory=Timing)
+    base_tilt: tuple[float, float] = (0.0, 0.0)  # of the plant alone, about the base's x and y axes
 
     def inputs(self) -> dict[str, Any]:
         """Return the canonical inputs, defaults included, of which the key is the digest.
 
         Only what acts is in it: a source that is declared but not active here does not count, nor
-        does the seed where nothing is random. So another source, condition, law or draw in the
-        experiment changes no key of the runs that were there before.
+        does the seed where nothing is random, nor a case where there is none. So another source,
+        condition, law or draw in the experiment changes no key of the runs that were there before.
         """
         acts = self.level > 0 and self.sources != ()
-        return {
+        noisy = self.sensing.noise_deg > 0 or self.timing.random
+        inputs: dict[str, Any] = {
             "numerics": NUMERICS,
             "arm": self.arm.digest,
             "model": None if self.model is None else self.model.digest,
@@ -72,10 +81,28 @@ class Run:
             "gravity": list(self.gravity),
             "mismatch": self.mismatch.inputs(self.sources if acts else ()),
             "level": self.level if acts else 0.0,
-            "draw": [self.seed, self.draw] if acts else None,
+            "draw": [self.seed, self.draw] if acts or noisy else None,
         }
+        others = {
+            "case": None if self.case is None else self.case.inputs(),
+            "sensing": inputs_of(self.sensing),
+            "timing": inputs_of(self.timing),
+            "base_tilt": list(self.base_tilt) if any(self.base_tilt) else None,
+        }
+        return inputs | {name: value for name, value in others.items() if value is not None}
 
     def key(self) -> str:
         """Return the run's key: a digest of all that its row depends on (hex, 40 digits)."""
         text = json.dumps(self.inputs(), sort_keys=True, separators=(",", ":"), allow_nan=False)
         return hashlib.blake2b(text.encode(), digest_size=20).hexdigest()
+
+
+def tilted(gravity: tuple[float, float, float], tilt: tuple[float, float]) -> tuple[float, float, float]:
+    """Return gravity [m/s^2] in the frame of a base tilted by ``tilt`` [rad] about its x, then its y axis."""
+    if not any(tilt):
+        return gravity
+    (cx, sx), (cy, sy) = ((np.cos(angle), np.sin(angle)) for angle in tilt)
+    about_x = np.array([[1, 0, 0], [0, cx, -sx], [0, sx, cx]])
+    about_y = np.array([[cy, 0, sy], [0, 1, 0], [-sy, 0, cy]])
+    x, y, z = (about_y @ about_x).T @ np.array(gravity)
+    return float(x), float(y), float(z)

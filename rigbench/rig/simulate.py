@@ -11,24 +11,28 @@ from functools import lru_cache
 import numpy as np
 
 from rigbench.arm.arm import Arm, Floats
+from rigbench.arm.dynamics import gravity_torque
 from rigbench.arm.mismatch import believed, plant
 from rigbench.errors import LawError
 from rigbench.laws.law import A_REF, CLOCK, Q_REF, TAU, V_REF, Law, Q, Reference, Setup, V
 from rigbench.laws.model import Model
 from rigbench.motion.motion import Motion
-from rigbench.rig.drive import (
-    BEYOND_BOUNDS,
-    ERROR,
-    HIT_STOP,
-    OK,
-    Q_ENGINE,
-    ROWS,
-    TAU_ENGINE,
-    machine_array,
-)
 from rigbench.rig.engine import Engine
 from rigbench.rig.log import Log
-from rigbench.rig.run import Run
+from rigbench.rig.rows import (
+    DELAYED,
+    ERROR,
+    Q_ENGINE,
+    Q_ROTOR,
+    Q_TRUE,
+    TAU_ENGINE,
+    V_TRUE,
+    delay_rows,
+    machine_array,
+)
+from rigbench.rig.run import Run, tilted
+from rigbench.rig.sampled import noise_of, ticks_of
+from rigbench.rig.sensing import BEYOND_BOUNDS, HIT_STOP, OK
 from rigbench.rig.tick import LOG_ROWS, begin_step, end_step
 
 __all__ = ["simulate", "worker_engine"]
@@ -63,11 +67,14 @@ def simulate(run: Run, engine: Engine | None = None) -> Log:
     """
     engine = worker_engine() if engine is None else engine
     arm = run.arm.arm()
-    machine = plant(arm, run.mismatch, run.level, run.sources, run.seed, run.draw or 0)
+    machine = plant(arm, run.mismatch, run.level, run.sources, run.seed, run.draw or 0, run.case)
     t, reference = sampled(run.motion, run.rates.control_hz)
     start = reference[0, 0] + np.array(run.start_offset or [0.0] * arm.n)
     loop = _Loop(run, machine, _started_law(run, arm), engine, start)
-    status, ticks = loop.go(t, reference)
+    draw = run.draw or 0
+    noise = noise_of(run.sensing, len(t), machine, run.seed, draw)
+    calls = ticks_of(run.timing, len(t), round(run.rates.physics_hz / run.rates.control_hz), run.seed, draw)
+    status, ticks = loop.go(t, reference, noise, calls)
     log = loop.log[:ticks]
     outcome, reason = _verdict(status, machine, t[min(ticks, len(t) - 1)], loop.io)
     return Log(
@@ -84,7 +91,7 @@ def simulate(run: Run, engine: Engine | None = None) -> Log:
         residual=loop.residual,
         law_us=float(np.median(loop.law_ns)) / 1000.0 if loop.law_ns else 0.0,
         control_hz=run.rates.control_hz,
-        gravity=run.gravity,
+        gravity=tilted(run.gravity, run.base_tilt),
     )
 
 
@@ -122,7 +129,7 @@ def _verdict(status: int, machine: Arm, t: float, io: Floats) -> tuple[str, str]
     """Put the status of the last reading into an outcome and a reason in words."""
     if status == OK:
         return "finished", ""
-    q, v = io[Q], io[V]
+    q, v = io[Q_TRUE], io[V_TRUE]
     if status == HIT_STOP:
         i = int(np.argmax(np.maximum(machine.lower - q, q - machine.upper)))
         return "hit-stop", f"joint {machine.joints[i]} met its limit at {t:.3f} s"
@@ -132,6 +139,10 @@ def _verdict(status: int, machine: Arm, t: float, io: Floats) -> tuple[str, str]
     return "diverged", f"the state was no longer finite at {t:.3f} s"
 
 
+def _no_term(io: Floats, held: Floats, chain: Floats, own: Floats) -> None:
+    """Stand for the model term of a law that has none."""
+
+
 class _Loop:
     """The hot loop: read, law, drive, apply, step."""
 
@@ -139,28 +150,42 @@ class _Loop:
         self, run: Run, machine: Arm, started: tuple[Law, Model], engine: Engine, start: Floats
     ) -> None:
         law, model = started
-        n, rates = machine.n, run.rates
+        n, rates, timing = machine.n, run.rates, run.timing
         dt = 1.0 / rates.physics_hz
-        self.io = np.zeros((ROWS, n))
+        delay = timing.delay_ms / 1000.0
+        gravity = tilted(run.gravity, run.base_tilt)
+        self._chain = machine.chain(gravity)
+        self.io = np.zeros((DELAYED + delay_rows(delay / dt), n))
+        self.io[Q_ROTOR] = start + gravity_torque(self._chain, start) / machine.drives.stiffness
         self.law_ns: list[int] = []
         self._substeps = round(rates.physics_hz / rates.control_hz)
         model_hz = getattr(law, "model_hz", None) or rates.control_hz
         self._every = max(1, round(rates.control_hz / model_hz))
-        self._chain = machine.chain(run.gravity)
-        self._machine = machine_array(machine, dt)
+        self._late = timing.model_late
+        self._machine = machine_array(
+            machine,
+            dt,
+            delay=delay,
+            control_period=1.0 / rates.control_hz,
+            velocity_corner_hz=run.sensing.corner_hz(machine),
+            link_encoder=run.sensing.encoder == "link",
+        )
         self._engine = engine
         self._name = run.law.plugin
         self._tick = self._law_tick(law, model)
         # a run starts at rest, where the engine's reading of the position is our own
-        engine.load(machine, start, np.zeros(n), run.gravity, dt)
+        engine.load(machine, start, np.zeros(n), gravity, dt)
 
     @property
     def residual(self) -> float:
         """The largest difference between foreseen and reached velocity [rad/s]."""
         return float(self.io[ERROR, 0])
 
-    def go(self, t: Floats, reference: Floats) -> tuple[int, int]:
-        """Run to the end or to where it breaks off; return the status and the number of ticks logged."""
+    def go(self, t: Floats, reference: Floats, noise: Floats, calls: list[int]) -> tuple[int, int]:
+        """Run to the end or to where it breaks off; return the status and the number of ticks logged.
+
+        ``calls`` says at which physics step of each tick the law is called (-1: not at all).
+        """
         io, chain, machine, law_tick = self.io, self._chain, self._machine, self._tick
         read, apply, step = self._engine.read, self._engine.apply, self._engine.step
         n, count = io.shape[1], len(t)
@@ -168,31 +193,25 @@ class _Loop:
         offset = Q_ENGINE * n * io.itemsize
         self.log = log = np.empty((count, LOG_ROWS, n))
         torque, clock, times = io[TAU_ENGINE], io[CLOCK], t.tolist()
-        between, last = range(self._substeps - 1), count - 1
+        substeps, last = range(self._substeps), count - 1
         for k in range(count):
-            states = read()
-            pack(fill, offset, *[s[0] for s in states], *[s[1] for s in states])
-            status = begin_step(machine, io, reference, k)
-            if status != OK:
-                return status, k
-            clock[0] = times[k]
-            try:
-                law_tick(k)
-            except Exception as problem:
-                raise _law_error(self._name, problem) from None
-            if not end_step(chain, machine, io, log, k):
-                raise LawError(self._name, "a torque that is not a number", f"at t = {times[k]:.4f} s")
-            if k == last:
-                break
-            apply(torque.tolist())
-            step()
-            for _ in between:
+            call = calls[k]
+            for substep in substeps:
                 states = read()
                 pack(fill, offset, *[s[0] for s in states], *[s[1] for s in states])
-                status = begin_step(machine, io, reference, k)
+                status = begin_step(machine, io, reference, noise, k if substep == call else -1)
                 if status != OK:
-                    return status, k + 1
-                end_step(chain, machine, io, log, -1)
+                    return status, k + (substep > 0)
+                if substep == call:
+                    clock[0] = times[k]
+                    try:
+                        law_tick(k)
+                    except Exception as problem:
+                        raise _law_error(self._name, problem) from None
+                if not end_step(chain, machine, io, log, k if substep == 0 else -1):
+                    raise LawError(self._name, "a torque that is not a number", f"at t = {times[k]:.4f} s")
+                if k == last:
+                    break
                 apply(torque.tolist())
                 step()
         return OK, count
@@ -203,14 +222,17 @@ class _Loop:
             return self._plain_tick(law)
         seen, held = self.io[:LAW_SEES], np.zeros(compiled.held_size)
         own, chain, every = np.ascontiguousarray(compiled.own), model.chain, self._every
-        torque, model_term = compiled.torque, compiled.model_term
-        keep, now = self.law_ns.append, time.perf_counter_ns
+        torque, model_term = compiled.torque, compiled.model_term or _no_term
+        keep, now, late = self.law_ns.append, time.perf_counter_ns, self._late
 
         def tick(k: int) -> None:
             before = now() if k % TIMED_EVERY == 0 else 0
-            if model_term is not None and k % every == 0:
+            due = k % every == 0
+            if due and (not late or k == 0):
                 model_term(seen, held, chain, own)
             torque(seen, held, chain, own)
+            if due and late and k > 0:
+                model_term(seen, held, chain, own)
             if before:
                 keep(now() - before)
 
@@ -218,20 +240,23 @@ class _Loop:
 
     def _plain_tick(self, law: Law) -> Callable[[int], None]:
         io, every, name, n = self.io, self._every, self._name, self.io.shape[1]
-        held, keep, now = np.empty(0), self.law_ns.append, time.perf_counter_ns
+        held, keep, now, late = np.empty(0), self.law_ns.append, time.perf_counter_ns, self._late
 
         def tick(k: int) -> None:
             nonlocal held
             before = now()
             t, q, v = float(io[CLOCK, 0]), io[Q].copy(), io[V].copy()
             ref = Reference(io[Q_REF].copy(), io[V_REF].copy(), io[A_REF].copy())
-            if k % every == 0:
-                held = np.asarray(law.model_term(t, q, v, ref), dtype=float)
+            due = k % every == 0
+            if due and (not late or k == 0):
+                held = np.array(law.model_term(t, q, v, ref), dtype=float)
             torque = np.asarray(law.torque(t, q, v, ref, held), dtype=float)
             if torque.shape != (n,):
                 raise LawError(
                     name, f"a torque of shape {torque.shape}; expected ({n},)", f"at t = {t:.4f} s"
                 )
+            if due and late and k > 0:
+                held = np.array(law.model_term(t, q, v, ref), dtype=float)
             io[TAU] = torque
             keep(now() - before)
 

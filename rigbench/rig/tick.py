@@ -4,8 +4,10 @@ from __future__ import annotations
 
 from rigbench.arm.arm import Floats
 from rigbench.arm.kernel import kernel
-from rigbench.laws.law import A_REF, Q_REF, V_REF, Q, V
-from rigbench.rig.drive import LIMITED, MOTOR, read_state, step_drive
+from rigbench.laws.law import A_REF, Q_REF, V_REF
+from rigbench.rig.drive import step_drive
+from rigbench.rig.rows import LIMITED, MOTOR, Q_TRUE, V_TRUE
+from rigbench.rig.sensing import read_state, sense
 
 __all__ = ["LOG_ROWS", "begin_step", "end_step"]
 
@@ -14,13 +16,20 @@ LOG_ROWS = 4
 
 
 @kernel
-def begin_step(machine: Floats, io: Floats, reference: Floats, tick: int) -> int:
-    """Read the engine's state and put the reference (N, 3, n) of ``tick`` before the law; return a status."""
-    for i in range(io.shape[1]):
-        io[Q_REF, i] = reference[tick, 0, i]
-        io[V_REF, i] = reference[tick, 1, i]
-        io[A_REF, i] = reference[tick, 2, i]
-    return read_state(machine, io)
+def begin_step(machine: Floats, io: Floats, reference: Floats, noise: Floats, tick: int) -> int:
+    """Read the engine's state; return a status.
+
+    Where the law is about to be called, at ``tick`` of 0 or more, also fill what it sees: the reference
+    (N, 3, n) of that tick and the sensed state (``noise`` as in :func:`rigbench.rig.sensing.sense`).
+    """
+    status = read_state(machine, io)
+    if tick >= 0:
+        for i in range(io.shape[1]):
+            io[Q_REF, i] = reference[tick, 0, i]
+            io[V_REF, i] = reference[tick, 1, i]
+            io[A_REF, i] = reference[tick, 2, i]
+        sense(machine, io, noise, tick)
+    return status
 
 
 @kernel
@@ -33,8 +42,8 @@ def end_step(chain: Floats, machine: Floats, io: Floats, log: Floats, tick: int)
         return False
     if tick >= 0:
         for i in range(io.shape[1]):
-            log[tick, 0, i] = io[Q, i]
-            log[tick, 1, i] = io[V, i]
+            log[tick, 0, i] = io[Q_TRUE, i]
+            log[tick, 1, i] = io[V_TRUE, i]
             log[tick, 2, i] = io[MOTOR, i]
             log[tick, 3, i] = io[LIMITED, i]
     return True

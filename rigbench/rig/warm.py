@@ -11,7 +11,7 @@ from rigbench.arm.dynamics import tool_path
 from rigbench.laws.law import CLOCK, Setup
 from rigbench.laws.model import Model
 from rigbench.laws.registry import registered
-from rigbench.rig.drive import ROWS, machine_array
+from rigbench.rig.rows import DELAYED, machine_array
 from rigbench.rig.tick import LOG_ROWS, begin_step, end_step
 
 __all__ = ["warm_up"]
@@ -25,8 +25,8 @@ def warm_up() -> None:
     """
     arm = _one_joint()
     gravity = (0.0, 0.0, -9.81)
-    model, io, machine = Model(arm, gravity), np.zeros((ROWS, 1)), machine_array(arm, 1e-3)
-    begin_step(machine, io, np.zeros((1, 3, 1)), 0)
+    model, io, machine = Model(arm, gravity), np.zeros((DELAYED, 1)), machine_array(arm, 1e-3)
+    begin_step(machine, io, np.zeros((1, 3, 1)), np.empty((0, 1)), 0)
     end_step(model.chain, machine, io, np.zeros((1, LOG_ROWS, 1)), 0)
     tool_path(model.chain, np.zeros((1, 1)))
     limits = arm.drives.torque_limit, arm.drives.speed_limit
@@ -47,10 +47,6 @@ def warm_up() -> None:
 
 def _one_joint() -> Arm:
     zero, one = np.zeros(1), np.ones(1)
-    drives = Drives(
-        gear_ratio=one, rotor_inertia=zero, viscous=zero, coulomb=one, static=one, stribeck_speed=one,
-        torque_limit=one, speed_limit=one, torque_lag=zero,
-    )  # fmt: skip
     return Arm(
         name="one joint",
         joints=("joint",),
@@ -64,5 +60,5 @@ def _one_joint() -> Arm:
         tool_position=np.zeros(3),
         lower=-one,
         upper=one,
-        drives=drives,
+        drives=Drives.ideal(1),
     )

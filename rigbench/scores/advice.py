@@ -6,6 +6,7 @@ from collections.abc import Iterator, Sequence
 from math import isfinite
 
 from rigbench.scores.intervals import draws_to_decide
+from rigbench.scores.names import score_words
 from rigbench.scores.results import Results
 from rigbench.scores.standing import SheetStanding
 
@@ -89,7 +90,7 @@ def _by_score(sheet: SheetStanding, law: str) -> Iterator[str]:
     levels = {rival: sheet.better_below(rival, law) for rival in rivals}
     behind = [f"'{rival}' below level {level:.2g}" for rival, level in levels.items() if level is not None]
     but = f", and behind {', '.join(behind[:MOST])}" if behind else ""
-    yield f"it is ahead of {_names(rivals)} by {sheet.main} alone{but}"
+    yield f"it is ahead of {_names(rivals)} by {score_words(sheet.main)[0]} alone{but}"
 
 
 def _too_close(sheet: SheetStanding, front: Sequence[str]) -> Iterator[str]:
@@ -131,7 +132,11 @@ def _nearest(sheet: SheetStanding, laws: Sequence[str]) -> Iterator[str]:
     law = min(medians, key=lambda law: medians[law])
     if isfinite(medians[law]):
         who = "it has" if len(sheet.laws) == 1 else f"nearest is '{law}' with"
-        yield f"{who} {sheet.main} {medians[law]:.3g} under '{column.name}', where {limit:g} is allowed"
+        words, unit = score_words(sheet.main)
+        yield (
+            f"{who} a {words} of {medians[law]:.3g} {unit} under '{column.name}', "
+            f"where {limit:g} {unit} is allowed"
+        )
 
 
 def _shown(sheet: SheetStanding, law: str) -> str:
@@ -194,9 +199,10 @@ def _without_tolerance(sheet: SheetStanding) -> list[str]:
     if len(sheet.laws) == 1:
         return [said]
     if not leaders:
-        return [f"{said}, and by {sheet.main} the laws are too close to call"]
+        return [f"{said}, and by {score_words(sheet.main)[0]} the laws are too close to call"]
     under = ", ".join(f"'{law}' under {_names(best[law])}" for law in leaders[:MOST])
-    return [f"{said}; by {sheet.main}, better than every other law beyond the interval: {under}"]
+    by = score_words(sheet.main)[0]
+    return [f"{said}; by {by}, better than every other law beyond the interval: {under}"]
 
 
 def _number(count: int, noun: str) -> str:

@@ -27,13 +27,15 @@ class CountedDraws:
     worst: Floats  # (D, S), each score in its worst motion; inf if a motion did not finish
 
 
-def counted(runs: CellRuns, names: Sequence[str], tolerance: Tolerance | None) -> CountedDraws:
-    """Return the draws that count.
+def counted(
+    runs: CellRuns, names: Sequence[str], motions: Sequence[str], tolerance: Tolerance | None
+) -> CountedDraws:
+    """Return the draws that count, of runs of the M ``motions``.
 
-    A draw passes when in every motion the run finished and each limit holds ('at most') on the scores
-    that the motion defines; without a tolerance, when every run finished. A score is that of the
-    draw's worst motion, and infinite if any of its runs did not finish, except for scores about the
-    host, of which such a run says nothing.
+    A draw passes when in every motion the run finished and each of the motion's limits holds ('at most')
+    on the scores that the motion defines; without a tolerance, when every run finished. A score is that
+    of the draw's worst motion, and infinite if any of its runs did not finish, except for scores about
+    the host, of which such a run says nothing.
     """
     complete = runs.complete
     finished = np.all(runs.state[complete] == FINISHED, axis=1)
@@ -41,7 +43,7 @@ def counted(runs: CellRuns, names: Sequence[str], tolerance: Tolerance | None) -
     worst = np.fmax.reduce(scores, axis=1, initial=np.nan)
     unfinished = np.ix_(~finished, ~_of_host(names))
     worst[unfinished] = np.inf
-    passed = finished & np.all(_keeps_limits(scores, names, tolerance), axis=1)
+    passed = finished & np.all(_keeps_limits(scores, names, motions, tolerance), axis=1)
     return CountedDraws(runs.draws[complete], finished, passed, worst)
 
 
@@ -51,10 +53,12 @@ def _of_host(names: Sequence[str]) -> NDArray[np.bool_]:
     return np.array([info is not None and info.host for info in infos], dtype=bool)
 
 
-def _keeps_limits(scores: Floats, names: Sequence[str], tolerance: Tolerance | None) -> NDArray[np.bool_]:
-    """Return whether each run keeps every limit on the scores it has: (D, M, S) to (D, M)."""
-    limits = {} if tolerance is None else tolerance.limits
-    ceiling = np.array([limits.get(name, np.inf) for name in names])
+def _keeps_limits(
+    scores: Floats, names: Sequence[str], motions: Sequence[str], tolerance: Tolerance | None
+) -> NDArray[np.bool_]:
+    """Return whether each run keeps every limit of its motion on the scores it has: (D, M, S) to (D, M)."""
+    limits = [{} if tolerance is None else tolerance.limits_for(motion) for motion in motions]
+    ceiling = np.array([[own.get(name, np.inf) for name in names] for own in limits])
     kept: NDArray[np.bool_] = np.all(np.isnan(scores) | (scores <= ceiling), axis=2)
     return kept
 
@@ -74,18 +78,21 @@ def build_cell(
     motions: Sequence[str],
     tolerance: Tolerance | None,
     draws: int,
+    possible: bool = True,
 ) -> Cell:
     """Return the cell of one law under one condition, of ``draws`` draws if anything in it is random.
+
+    Unless it is ``possible``: then it plans none, and has no verdict.
 
     Draws that lack a verdict of the machine, for now or for good, are ``incomplete`` and count neither
     for nor against the law. Where nothing is random the one run is exact: its share is 1 or 0 and its
     interval that point. A motion's own part counts the draws on which that motion has its verdict.
     """
     runs, names = gathered.cells[key], gathered.names
-    here = counted(runs, names, tolerance)
+    here = counted(runs, names, motions, tolerance)
     total, passed = len(here.draws), int(here.passed.sum())
-    share, low, high, verdict = _shares(passed, total, column.random, tolerance)
-    planned = max(draws, len(runs.draws)) if column.random else 1
+    share, low, high, verdict = _shares(passed, total, column.random, tolerance if possible else None)
+    planned = max(draws if possible else 0, len(runs.draws)) if column.random else int(possible)
     return Cell(
         sheet=key[0],
         law=key[1],
@@ -100,10 +107,11 @@ def build_cell(
         verdict=verdict,
         measures=_measures(here.worst, names, np.any(gathered.defined, axis=0), column.random),
         motions={
-            motion: _motion_cell(index, column, gathered, runs, tolerance)
+            motion: _motion_cell(index, motion, column, gathered, runs, tolerance)
             for index, motion in enumerate(motions)
         },
         unfinished=int(np.sum(~here.finished)),
+        planned=planned,
     )
 
 
@@ -121,11 +129,11 @@ def _shares(
 
 
 def _motion_cell(
-    index: int, column: Column, gathered: Gathered, runs: CellRuns, tolerance: Tolerance | None
+    index: int, motion: str, column: Column, gathered: Gathered, runs: CellRuns, tolerance: Tolerance | None
 ) -> MotionCell:
-    """Return the part of motion number ``index``, as if the cell had no other motion."""
+    """Return the part of ``motion``, number ``index``, as if the cell had no other motion."""
     alone = CellRuns(runs.draws, runs.state[:, index : index + 1], runs.scores[:, index : index + 1])
-    here = counted(alone, gathered.names, tolerance)
+    here = counted(alone, gathered.names, (motion,), tolerance)
     measures = _measures(here.worst, gathered.names, gathered.defined[index], column.random)
     return MotionCell(int(here.passed.sum()), len(here.draws), measures)
 

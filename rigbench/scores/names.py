@@ -6,45 +6,74 @@ from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from types import MappingProxyType
 
-__all__ = ["SCORES", "TOOL_SCORES", "ScoreInfo", "in_display_order", "main_score", "score_info"]
+__all__ = [
+    "SCORES",
+    "TOOL_SCORES",
+    "ScoreInfo",
+    "in_display_order",
+    "main_score",
+    "score_info",
+    "score_words",
+]
 
 
 @dataclass(frozen=True)
 class ScoreInfo:
     """What a score is.
 
-    ``unit`` as it is written ('' for a ratio). ``per_joint``: a value for each joint exists too,
-    named ``score.joint``. ``host``: it tells about the computer and not about the machine, so it is
-    informative, never exact, and a run that did not finish says nothing about it.
+    ``words`` is how a sentence calls it, ``unit`` as it is written ('' for a ratio). ``per_joint``: a
+    value for each joint exists too, named ``score.joint``. ``host``: it tells about the computer and not
+    about the machine, so it is informative, never exact, and a run that did not finish says nothing about it.
     """
 
+    words: str
     unit: str
     doc: str
     per_joint: bool = False
     host: bool = False
 
 
+def _joint(words: str, unit: str, doc: str) -> ScoreInfo:
+    return ScoreInfo(words, unit, doc, per_joint=True)
+
+
+def _host(words: str, unit: str, doc: str) -> ScoreInfo:
+    return ScoreInfo(words, unit, doc, host=True)
+
+
 SCORES: Mapping[str, ScoreInfo] = MappingProxyType(
     {
-        "tool_peak_mm": ScoreInfo("mm", "largest distance between commanded and attained tool point"),
-        "tool_rms_mm": ScoreInfo("mm", "RMS over time of the tool point's distance"),
-        "tool_angle_peak_deg": ScoreInfo("deg", "largest angle between commanded and attained tool frame"),
-        "path_peak_mm": ScoreInfo("mm", "largest distance of the tool point from the path, at any time"),
-        "overshoot_mm": ScoreInfo("mm", "how far the tool point passes its target, worst rest"),
-        "settle_ms": ScoreInfo("ms", "time until the tool point stays in its band, worst rest"),
-        "joint_peak_deg": ScoreInfo("deg", "largest position error of any revolute joint", per_joint=True),
-        "joint_rms_deg": ScoreInfo("deg", "RMS over time of the revolute joints' errors", per_joint=True),
-        "joint_peak_mm": ScoreInfo("mm", "largest position error of any prismatic joint", per_joint=True),
-        "joint_rms_mm": ScoreInfo("mm", "RMS over time of the prismatic joints' errors", per_joint=True),
-        "torque_peak_percent": ScoreInfo(
-            "percent", "largest torque over its limit, worst joint", per_joint=True
+        "tool_peak_mm": ScoreInfo(
+            "tool peak", "mm", "largest distance between commanded and attained tool point"
         ),
-        "torque_rms_percent": ScoreInfo("percent", "RMS torque over its limit, worst joint", per_joint=True),
-        "saturated_percent": ScoreInfo("percent", "share of ticks at which any joint's torque was limited"),
-        "chatter": ScoreInfo("", "RMS of the tick-to-tick torque change over its limit, worst joint"),
-        "energy_j": ScoreInfo("J", "integral of the positive mechanical power of the motors"),
-        "law_us": ScoreInfo("us", "median time of the law per control tick, on this host", host=True),
-        "law_share_percent": ScoreInfo("percent", "law_us over the control period", host=True),
+        "tool_rms_mm": ScoreInfo("tool RMS", "mm", "RMS over time of the tool point's distance"),
+        "tool_angle_peak_deg": ScoreInfo(
+            "tool angle peak", "deg", "largest angle between commanded and attained tool frame"
+        ),
+        "path_peak_mm": ScoreInfo(
+            "path peak", "mm", "largest distance of the tool point from the path, at any time"
+        ),
+        "overshoot_mm": ScoreInfo("overshoot", "mm", "how far the tool point passes its target, worst rest"),
+        "settle_ms": ScoreInfo(
+            "settling time", "ms", "time until the tool point stays in its band, worst rest"
+        ),
+        "joint_peak_deg": _joint("joint peak", "deg", "largest position error of any revolute joint"),
+        "joint_rms_deg": _joint("joint RMS", "deg", "RMS over time of the revolute joints' errors"),
+        "joint_peak_mm": _joint("joint peak", "mm", "largest position error of any prismatic joint"),
+        "joint_rms_mm": _joint("joint RMS", "mm", "RMS over time of the prismatic joints' errors"),
+        "torque_peak_percent": _joint("torque peak", "percent", "largest torque over its limit, worst joint"),
+        "torque_rms_percent": _joint("torque RMS", "percent", "RMS torque over its limit, worst joint"),
+        "saturated_percent": ScoreInfo(
+            "saturated", "percent", "share of ticks at which any joint's torque was limited"
+        ),
+        "chatter": ScoreInfo(
+            "chatter", "", "RMS of the tick-to-tick torque change over its limit, worst joint"
+        ),
+        "energy_j": ScoreInfo("energy", "J", "integral of the positive mechanical power of the motors"),
+        "law_us": _host("law's time per tick", "us", "median time of the law per control tick, on this host"),
+        "law_share_percent": _host(
+            "law's share of the control period", "percent", "law_us over the control period"
+        ),
     }
 )
 """Every score, in display order. The value of joint j of a per-joint score is named ``score.j``."""
@@ -60,6 +89,20 @@ def score_info(name: str) -> ScoreInfo | None:
     base, dot, joint = name.partition(".")
     info = SCORES.get(base)
     return info if info is not None and info.per_joint and dot and joint else None
+
+
+def score_words(name: str) -> tuple[str, str]:
+    """Return a score's name in words and its unit ('' for none), as a sentence or a table has them.
+
+    ``tool_peak_mm`` -> ('tool peak', 'mm'); ``joint_peak_deg.j1`` -> ('joint peak of j1', 'deg'). What
+    is no score of ours keeps its name and has no unit.
+    """
+    info = score_info(name)
+    if info is None:
+        return name.replace("_", " "), ""
+    joint = name.partition(".")[2]
+    words = f"{info.words} of {joint}" if joint else info.words
+    return words, info.unit.replace("percent", "%")
 
 
 def in_display_order(names: Iterable[str]) -> tuple[str, ...]:

@@ -13,11 +13,22 @@ class Tolerance:
     """The limits that a run must keep, each 'at most', and the share of draws that must keep them.
 
     ``limits`` maps a score's name (tool_peak_mm, settle_ms, joint_peak_deg.j1 ...) to its limit in
-    the unit that the name carries.
+    the unit that the name carries. ``motions`` holds limits of single motions, by the motion's name: they
+    come on top of ``limits``, and in place of those on the same score.
     """
 
     limits: Mapping[str, float]
     required_share: float = 0.95
+    motions: Mapping[str, Mapping[str, float]] = field(default_factory=dict)
+
+    def limits_for(self, motion: str) -> Mapping[str, float]:
+        """Return the limits that hold in one motion."""
+        return {**self.limits, **self.motions.get(motion, {})}
+
+    @property
+    def limited(self) -> tuple[str, ...]:
+        """The names of all scores with a limit in any motion, each once."""
+        return tuple(dict.fromkeys([*self.limits, *(name for own in self.motions.values() for name in own)]))
 
 
 @dataclass(frozen=True)
@@ -83,6 +94,7 @@ class Cell:
     motions: Mapping[str, MotionCell]
     best: bool = False  # better than every other law of its column beyond the interval
     unfinished: int = 0  # of the draws that count, those in which some motion did not finish
+    planned: int = 1  # draws that the experiment plans here; 0: the law is not possible in this sheet
 
 
 @dataclass(frozen=True)
@@ -103,7 +115,7 @@ class LawStanding:
 
     sheet: str
     law: str
-    tolerated: Tolerated | None  # None without a tolerance
+    tolerated: Tolerated | None  # None without a tolerance, and where the law is not possible in the sheet
 
 
 @dataclass(frozen=True)

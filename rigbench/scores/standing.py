@@ -15,14 +15,16 @@ __all__ = ["SheetStanding"]
 
 
 class SheetStanding:
-    """One sheet of the results, asked law by law."""
+    """One sheet of the results, asked law by law; of laws and columns those that are possible in it."""
 
     def __init__(self, results: Results, sheet: str) -> None:
-        self.laws, self.columns, self.tolerance = results.laws, results.columns, results.tolerance
-        self.draws = results.draws
-        self.main = main_score(() if results.tolerance is None else results.tolerance.limits)
-        self.steps = ladder(results.columns)
         self._cells = {(cell.law, cell.condition): cell for cell in results.cells if cell.sheet == sheet}
+        possible = {place for place, cell in self._cells.items() if cell.planned > 0}
+        self.laws = tuple(law for law in results.laws if any(law == named for named, _ in possible))
+        self.columns = tuple(c for c in results.columns if any(c.name == named for _, named in possible))
+        self.tolerance, self.draws = results.tolerance, results.draws
+        self.main = main_score(() if results.tolerance is None else results.tolerance.limited)
+        self.steps = ladder(self.columns)
         self._break_even: list[Mapping[str, Any]] = [b for b in results.break_even if b["sheet"] == sheet]
         self._levels = {s.law: s.tolerated for s in results.standings if s.sheet == sheet}
 

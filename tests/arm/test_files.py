@@ -188,26 +188,67 @@ def test_open_data_file_with_impossible_links(tmp_path: Path) -> None:
 
 
 def test_open_data_file_with_fingers(tmp_path: Path) -> None:
-    """A shipped arm with fingers: what to lock is said; a massless flange with inertia is a fault; mended, it runs."""
+    """A shipped arm with fingers: what to lock is said; its massless frames with inertia are added as the
+    library adds them, and each is named."""
     file = SHIPPED / "franka_panda/panda.urdf"
     text = file.read_text()
     tool, lock = "panda_grasptarget", {"panda_finger_joint1": 0.02, "panda_finger_joint2": 0.03}
     with pytest.raises(InputFaults) as caught:
         shipped_arm(tmp_path, str(file), text, tool, {})
     assert "'lock: {panda_finger_joint1: 0.0, panda_finger_joint2: 0.0}' in the arm file" in str(caught.value)
-    with pytest.raises(InputFaults) as caught:
-        shipped_arm(tmp_path, str(file), text, tool, lock)
-    assert [(fault.key, fault.problem) for fault in caught.value.faults] == [
-        (f"link {name}", "its mass is 0 kg, but it has inertia")
+    arm = shipped_arm(tmp_path, str(file), text, tool, lock)
+    assert arm.n == 7
+    assert_same_as_library(arm, text, tool, lock)
+    assert [(note.key, note.problem) for note in arm.notes if note.key.startswith("link")] == [
+        (
+            f"link {name}",
+            "its mass is 0 kg, but it has inertia (added as it stands to link panda_link7, which carries it)",
+        )
         for name in ("panda_link8", "panda_grasptarget")
     ]
+    # without mass its place doesn't count: the body's inertia grows by the tensor of each, 0.1 kg m^2 alike
     weightless = re.compile(r'(<mass value="0.0"/>\s*)<inertia [^>]*>')
     nothing = '<inertia ixx="0" ixy="0" ixz="0" iyy="0" iyz="0" izz="0"/>'
     mended = tmp_path / "mended.urdf"
     mended.write_text(weightless.sub(lambda found: found[1] + nothing, text))
-    arm = shipped_arm(tmp_path, str(mended), text, tool, lock)
-    assert arm.n == 7
-    assert_same_as_library(arm, mended.read_text(), tool, lock)
+    bare = shipped_arm(tmp_path, str(mended), text, tool, lock)
+    added = np.zeros((7, 10))
+    added[-1] = [0, 0, 0, 0, 0.2, 0, 0.2, 0, 0, 0.2]
+    np.testing.assert_allclose(arm.parameters - bare.parameters, added, atol=1e-14)
+
+
+MASSLESS = (
+    '<link name="tip"><inertial><origin xyz="1 2 3"/><mass value="0"/>'
+    '<inertia ixx="{}" ixy="0" ixz="0" iyy="{}" iyz="0" izz="{}"/></inertial></link>'
+)
+
+
+@pytest.mark.parametrize(
+    ("moments", "said"),
+    [
+        # no body has 1, 0, 0 either, but it takes no inertia away
+        ((1e-4, 0, 0), None),
+        ((1e-4, 1e-4, -1e-4), "link tip: its mass is 0 kg, but it has inertia; expected a mass above 0 and"),
+        (
+            (9, 0, 0),
+            "link hand: with all that is fixed to it, its principal inertias about the centre of gravity",
+        ),
+    ],
+)
+def test_inertia_without_mass_must_not_take_any_away(
+    here: Path, moments: tuple[float, float, float], said: str | None
+) -> None:
+    """A massless frame's inertia is added if it is at least 0 about every axis, and the body that results
+    is judged as any other; one with less than 0 about an axis is a fault."""
+    urdf = URDF.replace('<link name="tip"/>', MASSLESS.format(*moments))
+    assert urdf != URDF
+    if said is None:
+        assert_same_as_library(read(urdf=urdf), urdf, "tip", {"grip_a": 0.02, "grip_b": 0.02})
+        return
+    with pytest.raises(InputFaults) as caught:
+        read(urdf=urdf)
+    (fault,) = caught.value.faults
+    assert said in str(fault)
 
 
 def test_missing_files(here: Path) -> None:

@@ -59,16 +59,13 @@ def make_arm(seed: int = 0, n: int = N) -> Arm:
         tool_position=np.array([0.0, 0, 0.1]),
         lower=np.full(n, -np.inf),
         upper=np.full(n, np.inf),
-        drives=Drives(
+        drives=dataclasses.replace(
+            Drives.ideal(n),
             gear_ratio=np.full(n, 100.0),
             rotor_inertia=rng.uniform(1e-5, 1e-4, n),
             viscous=rng.uniform(1, 6, n),
             coulomb=rng.uniform(1, 6, n),
             static=rng.uniform(6, 8, n),
-            stribeck_speed=np.ones(n),
-            torque_limit=np.full(n, np.inf),
-            speed_limit=np.full(n, np.inf),
-            torque_lag=np.zeros(n),
         ),
     )
 
@@ -264,7 +261,7 @@ def test_link_sources_act_in_their_order():
 def test_friction_and_rotor_scale_joint_by_joint(source, names):
     """Each array is multiplied by (1 + spread)^(level u) of its joint; static goes with Coulomb."""
     got = alone(source, 2.0)
-    spread = 1 + getattr(FULL, source) / 100
+    spread = 1 + getattr(FULL, source).all / 100
     u = np.array([uniform(2026, f"{source}.{joint}", 4) for joint in ARM.joints])
     changed = arrays(believed(ARM, FULL)) | {
         name: getattr(ARM.drives, name) * spread ** (2 * u) for name in names

@@ -5,12 +5,8 @@ from __future__ import annotations
 import math
 import os
 import shutil
-import signal
 import sqlite3
-import subprocess
-import sys
 import tempfile
-import time
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from dataclasses import replace
@@ -18,7 +14,7 @@ from pathlib import Path
 
 import pytest
 
-from rigbench.campaign.migrations import MIGRATIONS, migrate, schema_of
+from rigbench.campaign.migrations import MIGRATIONS
 from rigbench.campaign.plan import Plan
 from rigbench.campaign.reading import Counts, Reader
 from rigbench.campaign.store import Store
@@ -226,6 +222,19 @@ def test_other_files_are_refused_and_left_as_they_are(
         assert contents(path) == before
 
 
+def test_damage_within_is_found_before_more_is_added(path: Path, make_plan: PlanMaker) -> None:
+    """Scribble over pages of the runs: a writer is refused at once, a reader when it gets there."""
+    filled(path, make_plan(draws=200))
+    text = bytearray(path.read_bytes())
+    middle = len(text) // 2 // 4096 * 4096
+    text[middle : middle + 3 * 4096] = b"\xff" * 3 * 4096
+    path.write_bytes(text)
+    with pytest.raises(StoreError, match="is damaged"):
+        Store.open_for_writing(path, "Trays")
+    with Store.open_for_reading(path) as reader, pytest.raises(StoreError, match="is damaged"):
+        reader.rows()
+
+
 def test_a_store_that_is_not_there_cannot_be_read(path: Path) -> None:
     """Reading makes neither file nor folder."""
     with pytest.raises(StoreError, match="no such store"):
@@ -338,106 +347,3 @@ def test_a_read_only_folder_can_be_read_and_not_written(read_only: Path, make_pl
         for there in (path, logging):
             with Store.open_for_reading(there) as reader:
                 assert len(reader.rows()) == 14
-
-
-# --- power cuts and full disks
-
-
-def test_a_full_disk_is_said_plainly_and_costs_only_what_did_not_fit(
-    path: Path, make_plan: PlanMaker
-) -> None:
-    """SQLite's own 'full' (its limit of pages stands in for the disk's) is a StoreError; whole rows stay."""
-    plan = make_plan(draws=100)
-    stored: list[str] = []
-    with Store.open_for_writing(path, plan.title) as store:
-        store.record_plan(plan)
-        pages = store._connection.execute("PRAGMA page_count").fetchone()[0]
-        store._connection.execute(f"PRAGMA max_page_count = {pages + 20}")
-
-        def fill() -> Iterator[str]:
-            for entry in plan.entries:
-                store.add([replace(outcome_of(entry.key), trace="x" * 3000)])
-                yield entry.key
-
-        with pytest.raises(StoreError, match="disk is full") as caught:
-            stored.extend(fill())
-    assert caught.value.exit_code == 5
-    assert 0 < len(stored) < len(plan.entries)
-    with Store.open_for_writing(path, plan.title) as store:
-        assert len(store.rows()) == len(stored)
-        assert len(store.missing(plan)) == len(plan.entries) - len(stored)
-        store.add(outcome_of(entry.key) for entry in store.missing(plan))
-
-
-KILLED_WRITER = """
-import sys
-from rigbench.campaign.store import Store
-from rigbench.campaign.work import Outcome
-
-with Store.open_for_writing(sys.argv[1], "Trays") as store:
-    for group in range(1_000_000):
-        store.add(
-            Outcome(f"{group}-{i}", "finished", trace="t" * 2000, scores={"group": group, "i": i, "sum": group + i})
-            for i in range(5)
-        )
-        print(group, flush=True)
-"""
-
-
-def test_a_killed_writer_leaves_whole_groups_only(path: Path) -> None:
-    """After SIGKILL, three times over: the store opens clean, each group is whole, none that was told is lost."""
-    for attempt in range(3):
-        path = path.with_name(f"{attempt}.sqlite")
-        writer = subprocess.Popen(
-            [sys.executable, "-c", KILLED_WRITER, path], stdout=subprocess.PIPE, text=True
-        )
-        assert writer.stdout is not None
-        for _ in range(20):
-            told = int(writer.stdout.readline())
-        time.sleep(0.01)
-        writer.send_signal(signal.SIGKILL)
-        told = int((writer.communicate()[0].split() or [told])[-1])
-        with Store.open_for_writing(path, "Trays") as store:
-            assert store._connection.execute("PRAGMA integrity_check").fetchone() == ("ok",)
-            groups = dict(
-                store._connection.execute(
-                    "SELECT scores ->> 'group', group_concat(scores ->> 'i', '') FROM runs GROUP BY 1"
-                )
-            )
-            assert set(groups.values()) == {"01234"}
-            assert set(groups) >= set(range(told + 1))
-            assert max(groups) <= told + 1
-
-
-def test_what_a_killed_writer_left_can_be_read_at_once(path: Path, make_plan: PlanMaker) -> None:
-    """A reader sees the rows that are in the log alone, and leaves store and log as they are."""
-    plan = make_plan()
-    filled(path, plan)
-    code = KILLED_WRITER.replace("range(1_000_000)", "range(1)") + "\n    import os; os._exit(1)\n"
-    code = code.replace("\n    import os", "\n    import os, signal").replace(
-        "os._exit(1)", "os.kill(os.getpid(), 9)"
-    )
-    subprocess.run([sys.executable, "-c", code, path], check=False, stdout=subprocess.DEVNULL)
-    log = path.with_name(path.name + "-wal")
-    before = path.read_bytes(), log.read_bytes()
-    assert log.stat().st_size > 0
-    with Store.open_for_reading(path) as reader:
-        assert reader._connection.execute("SELECT count(*) FROM runs").fetchone() == (14 + 5,)
-        assert len(reader.rows()) == 14
-    assert (path.read_bytes(), log.read_bytes()) == before
-
-
-# --- migrations
-
-
-def test_a_migration_that_fails_leaves_the_schema_before_it(tmp_path: Path) -> None:
-    """A step and its record are one transaction: both are undone, and the steps before it stay."""
-    connection = sqlite3.connect(tmp_path / "store.sqlite", isolation_level=None)
-    good, bad = ["CREATE TABLE a (x)"], ["CREATE TABLE b (x)", "no such statement"]
-    with pytest.raises(sqlite3.OperationalError):
-        migrate(connection, [good, bad])
-    assert schema_of(connection) == 1
-    assert connection.execute("SELECT name FROM sqlite_master").fetchall() == [("a",)]
-    migrate(connection, [good, ["CREATE TABLE b (x)"]])
-    assert schema_of(connection) == 2
-    connection.close()

@@ -27,7 +27,7 @@ def test_the_demo_experiments_are_in_order(path: Path) -> None:
 def test_defaults(load: Load) -> None:
     """What is left out has the value that the schema documents."""
     experiment = load(mismatch=None, conditions=None, draws=None, tolerance=None)
-    run = experiment.first
+    run = experiment.sheets[0].first
     assert experiment.title == "trial"
     assert experiment.draws == 128
     assert (run.rates.control_hz, run.rates.physics_hz) == (1000, 2000)
@@ -42,7 +42,7 @@ def test_defaults(load: Load) -> None:
 
 def test_physics_defaults_to_twice_the_control_rate(load: Load) -> None:
     """physics_hz follows control_hz where it is not given."""
-    assert load(rates={"control_hz": 500}).first.rates.physics_hz == 1000
+    assert load(rates={"control_hz": 500}).sheets[0].first.rates.physics_hz == 1000
 
 
 def test_degrees_become_radians_and_millimetres_metres(load: Load) -> None:
@@ -54,29 +54,29 @@ def test_degrees_become_radians_and_millimetres_metres(load: Load) -> None:
         start_offset_deg=[1, -2],
         tolerance={"tool_peak_mm": 3},
     )
-    q, _, _ = experiment.motions["lift"].reference(np.array([0.0, 2.0]))
+    q, _, _ = experiment.sheets[0].motions["lift"].reference(np.array([0.0, 2.0]))
     np.testing.assert_allclose(q, [[math.pi / 2, 0.1], [0, 0.25]], atol=1e-15)
-    np.testing.assert_allclose(experiment.first.gain_pose, [math.pi / 4, 0.01], rtol=1e-15)
-    np.testing.assert_allclose(experiment.first.start_offset, [math.pi / 180, -0.002], rtol=1e-15)
+    np.testing.assert_allclose(experiment.sheets[0].first.gain_pose, [math.pi / 4, 0.01], rtol=1e-15)
+    np.testing.assert_allclose(experiment.sheets[0].first.start_offset, [math.pi / 180, -0.002], rtol=1e-15)
 
 
 def test_gain_pose_is_where_the_first_motion_starts(load: Load) -> None:
     """Without gain_pose_deg, natural_hz becomes gains at the first motion's first point."""
     motions = {"b": {"via_deg": [[20, 30], [0, 0]]}, "a": {"via_deg": [[1, 1], [0, 0]]}}
-    np.testing.assert_allclose(load(motions=motions).first.gain_pose, np.radians([20, 30]), rtol=1e-15)
+    np.testing.assert_allclose(load(motions=motions).sheets[0].first.gain_pose, np.radians([20, 30]), rtol=1e-15)
 
 
 def test_pace_shortens_the_legs(load: Load) -> None:
     """At 200 percent a leg takes half its time; the rests stay."""
     motions = {"swing": {"via_deg": [[0, 0], [30, 40]], "leg_s": 1, "rest_s": 0.25, "pace_percent": 200}}
-    assert load(motions=motions).motions["swing"].duration_s == pytest.approx(0.75, rel=1e-12)
+    assert load(motions=motions).sheets[0].motions["swing"].duration_s == pytest.approx(0.75, rel=1e-12)
 
 
 def test_a_motion_file_is_read_relative_to_the_experiment(load: Load, folder: Path) -> None:
     """A table of times and positions makes a motion."""
     (folder / "planned.csv").write_text("t_s,j1,j2\n0,0,0\n1,10,20\n2,0,0\n", encoding="utf-8")
     experiment = load(motions={"planned": {"file": "planned.csv"}}, tolerance={"tool_peak_mm": 3})
-    q, _, _ = experiment.motions["planned"].reference(np.array([1.0]))
+    q, _, _ = experiment.sheets[0].motions["planned"].reference(np.array([1.0]))
     np.testing.assert_allclose(q, np.radians([[10, 20]]), atol=1e-12)
 
 
@@ -97,7 +97,7 @@ def test_a_payload_that_is_certain_is_no_source(load: Load) -> None:
     certain = {"believed_kg": 2, "least_kg": 2, "most_kg": 2}
     experiment = load(mismatch={"payload": certain, "coulomb_percent": 10}, conditions={"each_alone": 1})
     assert [c.name for c in experiment.plan().columns] == ["nominal", "coulomb"]
-    assert experiment.first.mismatch.payload is not None
+    assert experiment.sheets[0].first.mismatch.payload is not None
 
 
 def test_runs_are_counted_and_in_fair_order(load: Load) -> None:
@@ -156,7 +156,7 @@ def test_runs_can_be_sent_to_a_worker(load: Load) -> None:
 def test_laws_from_a_file(load: Load, folder: Path) -> None:
     """A class of the user's own is found beside the experiment, with its options checked and defaulted."""
     experiment = load(laws={"mine": {"law": "mine.py:Mine", "k": 7, "bounds": [1, 2]}})
-    choice = experiment.laws["mine"]
+    choice = experiment.sheets[0].laws["mine"]
     assert dict(choice.options) == {"k": 7.0, "bounds": (1.0, 2.0), "model_hz": 500.0}
     assert [name for name, _ in choice.files] == ["mine.py"]
 
@@ -165,7 +165,7 @@ def test_another_model(load: Load, folder: Path) -> None:
     """`model` names the arm file that the controllers believe."""
     text = (folder / "arm.yaml").read_text("utf-8").replace("coulomb: 3.0", "coulomb: 4.0")
     (folder / "identified.yaml").write_text(text, encoding="utf-8")
-    run = load(model="identified.yaml").first
+    run = load(model="identified.yaml").sheets[0].first
     assert run.model is not None
     assert run.model.arm().drives.coulomb[0] == 4
     assert run.arm.arm().drives.coulomb[0] == 3
@@ -187,7 +187,7 @@ def test_tolerance(load: Load) -> None:
         "saturated_percent": 0,
     }
     assert experiment.tolerance.required_share == 0.9
-    assert experiment.first.settle_band_mm == 0.2
+    assert experiment.sheets[0].first.settle_band_mm == 0.2
 
 
 def test_the_plan_says_how_to_go_on(load: Load, write: Callable[..., Path]) -> None:

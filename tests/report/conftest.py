@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Collection, Sequence
+from dataclasses import replace
 
 import pytest
 
@@ -90,6 +91,11 @@ def cell_of(
     )  # fmt: skip
 
 
+def not_possible(sheet: str, law: str, column: Column, tolerance: bool) -> Cell:
+    cell = cell_of(sheet, law, column, passed=0, draws=0, tolerance=tolerance)
+    return replace(cell, planned=0)
+
+
 def build(
     laws: int | Sequence[str] = 4,
     columns: int | Sequence[Column] = 8,
@@ -101,19 +107,26 @@ def build(
     title: str = "Trays of unknown mass",
     unstable: bool = False,
     best: bool = True,
+    impossible: Collection[tuple[str, str]] = (),
 ) -> Results:
-    """Results in which laws get worse down the list, and all of them with the level.
+    """Results in which laws get worse down the list, and all of them with the level; sheets differ.
 
-    ``incomplete`` draws lack in every third cell; ``unstable``: the last law mostly does not finish.
+    ``incomplete`` draws lack in every third cell; ``unstable``: the last law mostly does not finish;
+    ``impossible``: pairs of sheet and law.
     """
     names = LAWS[:laws] if isinstance(laws, int) else tuple(laws)
     heads = columns_of(columns) if isinstance(columns, int) else tuple(columns)
     cells, standings = [], []
-    for sheet in sheets:
+    for number, sheet in enumerate(sheets):
         for row, law in enumerate(names):
             ladder = []
+            if (sheet, law) in impossible:
+                cells += [not_possible(sheet, law, column, tolerance) for column in heads]
+                standings.append(LawStanding(sheet, law, Tolerated(None, 0.0, math.inf) if tolerance else None))
+                continue
             for place, column in enumerate(heads):
                 harm = (column.level or 0.2) * (1 + 0.4 * row) * (1.0 if column.ladder else 0.4)
+                harm *= 1 + 0.5 * math.sin(number * (1 + row / 3))
                 planned = draws if column.random else 1
                 missing = min(incomplete, planned) if (row + place) % 3 == 2 else 0
                 counted = planned - missing

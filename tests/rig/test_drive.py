@@ -7,67 +7,32 @@ import pytest
 from scipy.integrate import solve_ivp
 
 from rigbench.arm import dynamics
-from rigbench.laws.law import TAU, Q, V
-from rigbench.rig.drive import (
+from rigbench.laws.law import TAU
+from rigbench.rig.drive import step_drive
+from rigbench.rig.rows import (
+    DELAYED,
     ERROR,
     LIMITED,
     MOTOR,
-    OK,
     Q_ENGINE,
-    ROWS,
-    TAU_ENGINE,
     V_ENGINE,
     V_NEXT,
+    V_TRUE,
     machine_array,
-    read_state,
-    step_drive,
 )
-from rigbench.rig.engine import Engine
+from rigbench.rig.sensing import OK, read_state
 
 GRAVITY = (0.0, 0.0, -9.81)
 
 
-@pytest.fixture(scope="module")
-def engine():
-    made = Engine()
-    yield made
-    made.close()
-
-
-class Bench:
-    """A plant in the engine behind its drive, without a law: torque in, state out."""
-
-    def __init__(self, engine, arm, q0, v0=None, dt=1e-3, gravity=GRAVITY):
-        self.engine, self.arm, self.dt = engine, arm, dt
-        v0 = np.zeros(arm.n) if v0 is None else np.asarray(v0, float)
-        self.io = np.zeros((ROWS, arm.n))
-        self.io[V_NEXT] = v0
-        self.chain, self.machine = arm.chain(gravity), machine_array(arm, dt)
-        engine.load(arm, np.asarray(q0, float) + dt / 2 * v0, v0, gravity, dt)
-        self.status = self.read()
-
-    def read(self):
-        states = self.engine.read()
-        self.io[Q_ENGINE], self.io[V_ENGINE] = [s[0] for s in states], [s[1] for s in states]
-        return read_state(self.machine, self.io)
-
-    def step(self, torque):
-        self.io[TAU] = torque
-        assert step_drive(self.chain, self.machine, self.io)
-        self.engine.apply(self.io[TAU_ENGINE].tolist())
-        self.engine.step()
-        self.status = self.read()
-        return self.io[Q].copy(), self.io[V].copy()
-
-
 def one_step(arm, torque, v=None, dt=1e-3, gravity=(0.0, 0.0, 0.0), q=None):
     """Acceleration that the drive foresees for one step, without the engine."""
-    io = np.zeros((ROWS, arm.n))
-    io[V] = 0.0 if v is None else v
+    io = np.zeros((DELAYED, arm.n))
+    io[V_TRUE] = 0.0 if v is None else v
     io[Q_ENGINE] = 0.0 if q is None else q
     io[TAU] = torque
     assert step_drive(arm.chain(gravity), machine_array(arm, dt), io)
-    return (io[V_NEXT] - io[V]) / dt, io
+    return (io[V_NEXT] - io[V_TRUE]) / dt, io
 
 
 def test_gear_of_fifty_divides_inertia_variation_by_2500_and_disturbance_by_50(one_joint):
@@ -99,30 +64,30 @@ def test_gear_of_fifty_divides_inertia_variation_by_2500_and_disturbance_by_50(o
     assert holding(1.0) == pytest.approx(2.0 * 9.81 * 0.25, rel=1e-12)
 
 
-def test_below_breakaway_nothing_moves(engine, one_joint):
+def test_below_breakaway_nothing_moves(bench, one_joint):
     """A joint under torque ripple of up to 98 % of its friction stays where it is for ten seconds."""
     arm = one_joint(coulomb=5.0, gear_ratio=100.0, rotor_inertia=2e-5)
-    bench = Bench(engine, arm, [0.0])
+    rig = bench(arm, [0.0])
     for k in range(10_000):
-        q, _ = bench.step(0.98 * 5.0 * np.sin(0.05 * k))
+        q, _ = rig.step(0.98 * 5.0 * np.sin(0.05 * k))
     assert abs(q[0]) < 1e-12
 
 
-def test_coupled_chain_holds_against_gravity(engine, published_two_link):
+def test_coupled_chain_holds_against_gravity(bench, published_two_link):
     """Two joints whose friction exceeds gravity hold an outstretched pose, though it couples them."""
     arm = published_two_link(coulomb=[14.0, 1.0], rotor_inertia=1e-4, gear_ratio=50.0)
-    bench = Bench(engine, arm, [1.2, 0.3])
+    rig = bench(arm, [1.2, 0.3])
     for _ in range(3000):
-        q, _ = bench.step([0.0, 0.0])
+        q, _ = rig.step([0.0, 0.0])
     np.testing.assert_allclose(q, [1.2, 0.3], atol=1e-9)
 
 
-def test_sliding_joint_stops_when_it_should_and_stays(engine, one_joint):
+def test_sliding_joint_stops_when_it_should_and_stays(bench, one_joint):
     """Coulomb friction alone stops a joint after J v0 / Fc seconds and J v0^2 / 2 Fc radians."""
     arm = one_joint(mass=1e-6, cog=0.0, inertia=0.2, coulomb=0.5, rotor_inertia=3e-5, gear_ratio=100.0)
     inertia, v0 = 0.2 + 100.0**2 * 3e-5, 1.0
-    bench = Bench(engine, arm, [0.0], [v0], gravity=(0.0, 0.0, 0.0))
-    path = np.array([np.concatenate(bench.step(0.0)) for _ in range(1500)])
+    rig = bench(arm, [0.0], [v0], gravity=(0.0, 0.0, 0.0))
+    path = np.array([np.concatenate(rig.step(0.0)) for _ in range(1500)])
     stop = inertia * v0 / 0.5
     moving = np.flatnonzero(np.abs(path[:, 1]) > 1e-9)[-1]
     assert (moving + 1) * 1e-3 == pytest.approx(stop, abs=2e-3)
@@ -130,20 +95,20 @@ def test_sliding_joint_stops_when_it_should_and_stays(engine, one_joint):
     assert np.ptp(path[moving + 2 :, 0]) < 1e-9
 
 
-def test_stribeck_breakaway_is_higher_than_sliding(engine, one_joint):
+def test_stribeck_breakaway_is_higher_than_sliding(bench, one_joint):
     """Between Coulomb and static torque a joint at rest stays and a moving one speeds up."""
     arm = one_joint(mass=1e-6, cog=0.0, inertia=0.2, coulomb=1.0, static=1.5, stribeck_speed=0.05)
-    still = Bench(engine, arm, [0.0], gravity=(0.0, 0.0, 0.0))
+    still = bench(arm, [0.0], gravity=(0.0, 0.0, 0.0))
     for _ in range(500):
         q, _ = still.step(1.4)
     assert abs(q[0]) < 1e-12
-    moving = Bench(engine, arm, [0.0], [0.2], gravity=(0.0, 0.0, 0.0))
+    moving = bench(arm, [0.0], [0.2], gravity=(0.0, 0.0, 0.0))
     for _ in range(500):
         _, v = moving.step(1.4)
     assert v[0] == pytest.approx(0.2 + 0.5 * 0.4 / 0.2, rel=0.02)
 
 
-def test_friction_never_adds_energy(engine, published_two_link):
+def test_friction_never_adds_energy(bench, published_two_link):
     """Energy of a free arm, rotors included, never rises where friction acts.
 
     Up to the integrator's own oscillation within a step, which the same swing without friction shows:
@@ -152,12 +117,12 @@ def test_friction_never_adds_energy(engine, published_two_link):
 
     def energies(**friction):
         arm = published_two_link(rotor_inertia=1e-4, gear_ratio=30.0, **friction)
-        bench = Bench(engine, arm, [2.0, -1.0])
+        rig = bench(arm, [2.0, -1.0])
         m1, m2 = arm.parameters[:, 0]
         found = []
         for _ in range(2000):
-            q, v = bench.step([0.0, 0.0])
-            mass = dynamics.mass_matrix(bench.chain, q) + np.diag(arm.drives.reflected)
+            q, v = rig.step([0.0, 0.0])
+            mass = dynamics.mass_matrix(rig.chain, q) + np.diag(arm.drives.reflected)
             lift = -m1 * 0.0983 * np.cos(q[0]) - m2 * (0.26 * np.cos(q[0]) + 0.0229 * np.cos(q[0] + q[1]))
             found.append((0.5 * v @ mass @ v, 9.81 * lift))
         return np.array(found)
@@ -168,15 +133,15 @@ def test_friction_never_adds_energy(engine, published_two_link):
     assert braked[-1].sum() < braked[0].sum() - 1.0
 
 
-def swing(engine, arm, dt, seconds=1.0):
-    bench = Bench(engine, arm, [2.0, -1.0], dt=dt)
+def swing(bench, arm, dt, seconds=1.0):
+    rig = bench(arm, [2.0, -1.0], dt=dt)
     for _ in range(round(seconds / dt)):
-        q, v = bench.step([0.0, 0.0])
-    assert bench.io[ERROR, 0] < 1e-9
+        q, v = rig.step([0.0, 0.0])
+    assert rig.io[ERROR, 0] < 1e-9
     return np.concatenate([q, v])
 
 
-def test_second_order_in_time(engine, published_two_link):
+def test_second_order_in_time(bench, published_two_link):
     """A free swing with rotors and viscous friction converges to the ODE's solution with the square
     of the step: halving it divides the error by 4 (scipy's DOP853 at 1e-12 is the reference)."""
     arm = published_two_link(rotor_inertia=1e-4, gear_ratio=30.0, viscous=[0.2, 0.02])
@@ -188,7 +153,7 @@ def test_second_order_in_time(engine, published_two_link):
         return np.concatenate([v, np.linalg.solve(dynamics.mass_matrix(chain, q) + rotor, torque)])
 
     exact = solve_ivp(rate, (0, 1), [2.0, -1.0, 0, 0], method="DOP853", rtol=1e-12, atol=1e-12).y[:, -1]
-    errors = [np.abs(swing(engine, arm, dt) - exact).max() for dt in (2e-3, 1e-3, 5e-4)]
+    errors = [np.abs(swing(bench, arm, dt) - exact).max() for dt in (2e-3, 1e-3, 5e-4)]
     assert errors[0] / errors[1] == pytest.approx(4, rel=0.25)
     assert errors[1] / errors[2] == pytest.approx(4, rel=0.25)
     assert errors[1] < 1e-4
@@ -203,22 +168,22 @@ def test_torque_limit_acts_and_is_told(one_joint):
 
 
 @pytest.mark.parametrize("limit", [4.0, np.inf])
-def test_speed_limit_stops_driving_but_not_braking(engine, one_joint, limit):
+def test_speed_limit_stops_driving_but_not_braking(bench, one_joint, limit):
     """Constant torque brings a free joint to its speed limit and no further; braking stays whole."""
     arm = one_joint(mass=1e-6, cog=0.0, inertia=0.02, speed_limit=2.0, torque_limit=limit)
-    bench = Bench(engine, arm, [0.0], gravity=(0.0, 0.0, 0.0))
+    rig = bench(arm, [0.0], gravity=(0.0, 0.0, 0.0))
     for _ in range(400):
-        _, v = bench.step(1.0)
+        _, v = rig.step(1.0)
     assert 1.96 <= v[0] <= 2.0 + 1e-9
-    assert bench.io[LIMITED, 0] == 1.0
-    _, v_braked = bench.step(-1.0)
+    assert rig.io[LIMITED, 0] == 1.0
+    _, v_braked = rig.step(-1.0)
     assert (v_braked[0] - v[0]) / 1e-3 == pytest.approx(-1.0 / 0.02, rel=1e-3)
 
 
 def test_torque_lag_is_first_order(one_joint):
     """After its time constant the motor torque stands at 1 - 1/e of a step command."""
     arm = one_joint(torque_lag=5e-3)
-    io = np.zeros((ROWS, 1))
+    io = np.zeros((DELAYED, 1))
     machine = machine_array(arm, 1e-3)
     io[TAU] = 1.0
     for _ in range(5):
@@ -228,7 +193,7 @@ def test_torque_lag_is_first_order(one_joint):
 
 def test_a_torque_that_is_no_number_is_refused(one_joint):
     """NaN from a law changes nothing and is told."""
-    arm, io = one_joint(), np.zeros((ROWS, 1))
+    arm, io = one_joint(), np.zeros((DELAYED, 1))
     io[TAU] = np.nan
     assert not step_drive(arm.chain(GRAVITY), machine_array(arm, 1e-3), io)
 
@@ -238,7 +203,7 @@ def test_reading_tells_hit_stops_and_runaways(one_joint):
     from dataclasses import replace
 
     arm = replace(one_joint(speed_limit=1.0), lower=np.array([-1.0]), upper=np.array([1.0]))
-    machine, io = machine_array(arm, 1e-3), np.zeros((ROWS, 1))
+    machine, io = machine_array(arm, 1e-3), np.zeros((DELAYED, 1))
     assert read_state(machine, io) == OK
     found = []
     for q, v in ((1.1, 0.0), (0.0, 11.0), (np.nan, 0.0)):

@@ -6,7 +6,7 @@ import numpy as np
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from rigbench.rig.drive import _gauss_seidel, solve_friction
+from rigbench.rig.friction import _gauss_seidel, solve_friction
 
 
 def problem(seed: int, n: int, spread: float):

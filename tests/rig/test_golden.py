@@ -55,7 +55,9 @@ def measured() -> dict[str, dict[str, float]]:
             run = golden_run(law, level)
             scores = score_run(simulate(run), run.motion, run.settle_band_mm)
             found[f"{law} at {level}"] = {
-                name: value if np.isfinite(value) else None for name, value in scores.items() if name not in HOST
+                name: value if np.isfinite(value) else None
+                for name, value in scores.items()
+                if name not in HOST
             }
     return found
 

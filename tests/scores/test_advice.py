@@ -89,7 +89,7 @@ def test_among_laws_that_keep_the_same_the_lower_error_decides_and_is_said_to() 
     advice = results_of({"steep": steep, "flat": flat}).advice
     assert advice == (
         "Take 'flat', which is shown to keep the tolerance up to level 1, the highest run; it is ahead of "
-        "'steep' by tool_peak_mm alone, and behind 'steep' below level 0.75."
+        "'steep' by tool peak alone, and behind 'steep' below level 0.75."
     )
 
 
@@ -157,8 +157,8 @@ def test_when_every_law_misses_the_nearest_is_named() -> None:
         for name, peak in (("a", 5.0), ("b", 4.0))
     }
     assert results_of(bad).advice == (
-        "Every law misses the tolerance under every condition; nearest is 'b' with tool_peak_mm 4 under "
-        "'nominal', where 3 is allowed."
+        "Every law misses the tolerance under every condition; nearest is 'b' with a tool peak of 4 mm under "
+        "'nominal', where 3 mm is allowed."
     )
 
 
@@ -194,7 +194,7 @@ def test_without_a_tolerance_nothing_is_kept_or_missed() -> None:
     )
     assert "too close to call" in results_of({"a": ROBUST, "b": ROBUST}, tolerance=None).advice
     assert results_of({"frail": FRAIL, "robust": ROBUST}, tolerance=None).advice == (
-        "No tolerance is declared, so nothing is kept or missed; by tool_peak_mm, better than every other law "
+        "No tolerance is declared, so nothing is kept or missed; by tool peak, better than every other law "
         "beyond the interval: 'frail' under 'nominal', 'robust' under 'level 1'."
     )
 

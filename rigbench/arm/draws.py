@@ -1,0 +1,84 @@
+"""Draws: the factor u of every parameter, each from its own stream.
+
+u depends on (seed, parameter's name, draw) and on nothing else, so another source, spread, draw or law
+changes no u that exists.
+"""
+
+from __future__ import annotations
+
+import hashlib
+from collections.abc import Iterable
+
+import numpy as np
+
+from rigbench.arm.arm import Arm, Floats
+from rigbench.arm.sources import Mismatch
+from rigbench.arm.spread import Spread, carriers
+
+__all__ = ["draw_values", "exponents_of", "parameter_names", "uniform"]
+
+AXES = ("x", "y", "z")
+
+
+def uniform(seed: int, name: str, draw: int) -> float:
+    """Return the factor u of a parameter in a draw: uniform in [-1, 1), a multiple of 2^-52.
+
+    The first 53 bits of the BLAKE2b digest (8 bytes) of "seed|name|draw", so it is the same on every
+    machine and with every version of every package.
+    """
+    digest = hashlib.blake2b(f"{seed}|{name}|{draw}".encode(), digest_size=8).digest()
+    return (int.from_bytes(digest, "big") >> 11) * 2.0**-52 - 1.0
+
+
+def parameter_names(arm: Arm, source: str, shared: bool = False) -> tuple[str, ...]:
+    """Name the parameters of a source, each of which has its own factor.
+
+    link_mass_percent.<link>; link_cog_mm.<link>.x, .y, .z; link_inertia_percent.<link>.1, .2, .3 (the
+    principal second moments, ascending); payload.mass, payload.cog.x, .y, .z; and
+    coulomb_percent.<joint>, viscous_percent.<joint>, rotor_inertia_percent.<joint>. With ``shared``
+    'all' stands in place of every link or joint, once.
+    """
+    if source == "payload":
+        return ("payload.mass", *(f"payload.cog.{axis}" for axis in AXES))
+    parts = ("all",) if shared else carriers(arm, source)
+    return tuple(f"{source}.{part}{end}" for part in parts for end in _endings(source))
+
+
+def _endings(source: str) -> tuple[str, ...]:
+    """Return how the names of the parameters of one link or joint end."""
+    if source == "link_cog_mm":
+        return tuple(f".{axis}" for axis in AXES)
+    return (".1", ".2", ".3") if source == "link_inertia_percent" else ("",)
+
+
+def draw_values(
+    arm: Arm, mismatch: Mismatch, sources: Iterable[str], seed: int, draw: int
+) -> dict[str, float]:
+    """Return the factor u in [-1, 1) of every parameter of the active sources, by its name."""
+    return {
+        name: uniform(seed, name, draw)
+        for source in mismatch.active(sources)
+        for name in parameter_names(arm, source, shared=_is_shared(mismatch, source))
+    }
+
+
+def _is_shared(mismatch: Mismatch, source: str) -> bool:
+    """Tell whether all links or joints have one factor in a source."""
+    spread = getattr(mismatch, source)
+    return isinstance(spread, Spread) and spread.shared
+
+
+def exponents_of(
+    arm: Arm, mismatch: Mismatch, level: float, active: Iterable[str], seed: int, draw: int
+) -> dict[str, Floats]:
+    """Return level times u of every parameter of the ``active`` sources, one for each link or joint.
+
+    Shape (parameters,) in the order of their names; what is shared is repeated.
+    """
+    exponents = {}
+    for source in active:
+        shared = _is_shared(mismatch, source)
+        names = parameter_names(arm, source, shared)
+        u = np.array([uniform(seed, name, draw) for name in names])
+        exponents[source] = level * (np.tile(u, len(carriers(arm, source))) if shared else u)
+    return exponents

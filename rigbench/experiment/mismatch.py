@@ -1,0 +1,168 @@
+"""The mismatch of an experiment and its conditions, held against the arm's links and joints."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+
+import numpy as np
+
+from rigbench.arm.arm import Arm
+from rigbench.arm.mismatch import Case, Mismatch, Payload, Spread, carriers, unknown_names
+from rigbench.experiment.expand import NAMES, nominal_and_levels
+from rigbench.experiment.findings import Findings
+from rigbench.experiment.mismatch_keys import CaseKeys, ConditionsKeys, MismatchKeys, SpreadKeys, StatedKeys
+from rigbench.yamlfile import KeyPath
+
+__all__ = ["cases_of", "check_conditions", "mismatch_of"]
+
+MOST_LEVEL = 100.0
+
+FRICTION = (
+    ("coulomb_percent", "static", "Coulomb friction"),
+    ("viscous_percent", "viscous", "viscous friction"),
+    ("rotor_inertia_percent", "rotor_inertia", "rotor inertia"),
+)
+"""Sources, the arrays of the drives that they scale, and what that is called."""
+
+
+def mismatch_of(keys: MismatchKeys, arm: Arm | None, findings: Findings) -> Mismatch:
+    """Return the mismatch; what of it is at fault is left out."""
+    given: dict[str, Spread | Payload | None] = {"payload": _payload(keys, findings)}
+    for source in MismatchKeys.model_fields:
+        value = getattr(keys, source)
+        if source == "payload" or value is None:
+            continue
+        path: KeyPath = ("mismatch", source)
+        if isinstance(value, SpreadKeys):
+            _check_names(path, source, value.__pydantic_extra__ or {}, arm, findings)
+            if not any((value.all, *(value.__pydantic_extra__ or {}).values())) and findings.clean(*path):
+                findings.fault(path, "spreads nothing", "a number above 0 for all, or for one by its name")
+        if findings.clean(*path):
+            declared = value.model_dump() if isinstance(value, SpreadKeys) else value
+            given[source] = Spread.declared(declared)
+            _note_idle(path, source, arm, findings)
+    return Mismatch(**given)  # type: ignore[arg-type]  # each by its own name
+
+
+def _payload(keys: MismatchKeys, findings: Findings) -> Payload | None:
+    if keys.payload is None or not findings.clean("mismatch", "payload"):
+        return None
+    given, path = keys.payload, ("mismatch", "payload")
+    if given.least_kg > given.most_kg:
+        problem = f"{given.least_kg:g} is above most_kg"
+        findings.fault((*path, "least_kg"), problem, f"at most {given.most_kg:g}")
+    elif not given.least_kg <= given.believed_kg <= given.most_kg:
+        problem = f"{given.believed_kg:g} is not between least_kg and most_kg"
+        findings.fault((*path, "believed_kg"), problem, f"{given.least_kg:g} to {given.most_kg:g}")
+    else:
+        return Payload(given.believed_kg, given.least_kg, given.most_kg, given.cog_mm)
+    return None
+
+
+def _check_names(
+    path: KeyPath, source: str, names: Iterable[str], arm: Arm | None, findings: Findings
+) -> None:
+    """Add a fault for each name that is none of the arm's links, or joints where the source is theirs."""
+    if arm is None:
+        return
+    valid = carriers(arm, source)
+    what = "link" if valid == arm.links else "joint"
+    for name, near in unknown_names(arm, source, names):
+        expected = "" if near else f"all, or one of {', '.join(valid)}"
+        findings.fault((*path, name), f"the arm has no {what} '{name}'", expected, near)
+
+
+def _note_idle(path: KeyPath, source: str, arm: Arm | None, findings: Findings) -> None:
+    """Note a source, or a case's key, that scales what is zero in this arm."""
+    for scaled, array, what in FRICTION:
+        if arm is not None and source == scaled and not np.any(getattr(arm.drives, array)):
+            findings.note(path, f"has no effect: no drive has {what}")
+
+
+def check_conditions(keys: ConditionsKeys, sources: tuple[str, ...], findings: Findings) -> None:
+    """Check that the levels rise and that there is something for the conditions to vary."""
+    together = keys.together or []
+    for i, level in enumerate(together):
+        path: KeyPath = ("conditions", "together", i)
+        if level == 0:
+            findings.fault(path, "level 0 is the column 'nominal', which is always there", "above 0")
+        elif not 0 < level <= MOST_LEVEL:
+            findings.fault(path, f"{level:g} is out of range", f"above 0, at most {MOST_LEVEL:g}")
+        elif i and level <= together[i - 1]:
+            findings.fault(path, f"{level:g} after {together[i - 1]:g}", "levels that rise, each once")
+    if sources or not findings.clean("mismatch"):
+        return
+    need: list[KeyPath] = [
+        ("conditions", key) for key in ("each_alone", "together") if getattr(keys, key) is not None
+    ]
+    need += [
+        ("conditions", "cases", name, "level") for name, case in (keys.cases or {}).items() if case.level
+    ]
+    for path in need:
+        findings.fault(path, "needs a mismatch", "a source with a spread under mismatch")
+
+
+def cases_of(
+    keys: ConditionsKeys, mismatch: Mismatch, arm: Arm | None, findings: Findings
+) -> dict[str, Case]:
+    """Return the cases by name; what is not in order goes to ``findings``."""
+    taken = [*NAMES.values(), *nominal_and_levels(keys)]
+    cases = {}
+    for name, case in (keys.cases or {}).items():
+        path: KeyPath = ("conditions", "cases", name)
+        if not name or name != " ".join(name.split()):
+            findings.fault(
+                path, f"the name '{name}' is empty or has odd blanks in it", "words with single blanks"
+            )
+        elif name in taken:
+            findings.fault(path, f"'{name}' is the name of another condition", "another name")
+        _check_case(path, case, mismatch, arm, findings)
+        if findings.clean(*path):
+            cases[name] = _case(case)
+    return cases
+
+
+def _check_case(
+    path: KeyPath, keys: CaseKeys, mismatch: Mismatch, arm: Arm | None, findings: Findings
+) -> None:
+    stated = [key for key in CaseKeys.model_fields if key != "level" and getattr(keys, key) is not None]
+    if not stated and findings.clean(*path):
+        findings.fault(path, "states nothing", "a departure of the plant, such as payload_kg")
+    for key in stated:
+        value, here = getattr(keys, key), (*path, key)
+        if isinstance(value, StatedKeys):
+            _check_names(here, key, value.__pydantic_extra__ or {}, arm, findings)
+            if not any((value.all, *(value.__pydantic_extra__ or {}).values())) and findings.clean(*here):
+                findings.fault(here, "states nothing", "a number for all, or for one by its name")
+        elif key == "link_cog_mm":
+            _check_names(here, key, value, arm, findings)
+        _note_idle(here, key, arm, findings)
+    without = keys.payload_kg is None and (mismatch.payload is None or mismatch.payload.most_kg == 0)
+    if "payload_cog_mm" in stated and (keys.payload_kg == 0 or without) and findings.clean("mismatch"):
+        findings.note((*path, "payload_cog_mm"), "has no effect: there is no payload")
+
+
+def _case(keys: CaseKeys) -> Case:
+    """Return what the keys of a case state."""
+
+    def spread(given: float | StatedKeys | None) -> Spread | None:
+        if given is None:
+            return None
+        return Spread.declared(given.model_dump() if isinstance(given, StatedKeys) else given)
+
+    shifts: Mapping[str, list[float]] = keys.link_cog_mm or {}
+    return Case(
+        payload_kg=keys.payload_kg,
+        payload_cog_mm=None if keys.payload_cog_mm is None else _triple(keys.payload_cog_mm),
+        link_mass_percent=spread(keys.link_mass_percent),
+        link_cog_mm=tuple((link, _triple(shift)) for link, shift in shifts.items()),
+        link_inertia_percent=spread(keys.link_inertia_percent),
+        coulomb_percent=spread(keys.coulomb_percent),
+        viscous_percent=spread(keys.viscous_percent),
+        rotor_inertia_percent=spread(keys.rotor_inertia_percent),
+    )
+
+
+def _triple(values: list[float]) -> tuple[float, float, float]:
+    x, y, z = values
+    return x, y, z

@@ -1,0 +1,100 @@
+"""From the torque that the law asks for to the torque that the motor gives, as a numba kernel.
+
+In this order: rounding to the drive's step, hold, delay in whole and part steps, torque constant's
+error, bias and ripple, first-order current loop, limits.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+from rigbench.arm.arm import Floats
+from rigbench.arm.kernel import kernel
+from rigbench.laws.law import TAU
+from rigbench.rig.rows import (
+    DELAY,
+    DELAYED,
+    LAG,
+    LAGGED,
+    LIMITED,
+    MOTOR,
+    NO_LOAD_SPEED,
+    Q_TRUE,
+    RIPPLE,
+    RIPPLE_PERIODS,
+    SPEED_LIMIT,
+    STALL_TORQUE,
+    STEPS,
+    TORQUE_BIAS,
+    TORQUE_GAIN,
+    TORQUE_LIMIT,
+    TORQUE_STEP,
+    V_TRUE,
+)
+
+__all__ = ["motor_torque"]
+
+SPEED_FOLDBACK = 0.02
+"""Driving torque falls linearly to nothing over the last 2 % below the speed limit (our choice: a drive
+must not push past its limit, and a sudden cut would chatter). Braking torque stays whole."""
+
+
+@kernel
+def motor_torque(machine: Floats, io: Floats, i: int) -> None:
+    """Fill the motor torque of joint i [N m, at the joint], and whether it fell short of what was asked."""
+    asked = io[TAU, i]
+    if machine[TORQUE_STEP, i] > 0.0:
+        asked = np.round(asked / machine[TORQUE_STEP, i]) * machine[TORQUE_STEP, i]
+    if machine[DELAY, 0] > 0.0:
+        asked = _delayed(machine, io, i, asked)
+    asked = machine[TORQUE_GAIN, i] * asked + machine[TORQUE_BIAS, i]
+    if machine[RIPPLE, i] != 0.0:
+        asked += machine[RIPPLE, i] * np.sin(machine[RIPPLE_PERIODS, i] * io[Q_TRUE, i])
+    if machine[LAG, i] < 1.0:
+        asked = io[LAGGED, i] + machine[LAG, i] * (asked - io[LAGGED, i])
+    io[LAGGED, i] = asked
+    given = _limited(machine, io, i, asked)
+    io[MOTOR, i] = given
+    io[LIMITED, i] = 0.0 if given == asked else 1.0
+
+
+@kernel
+def _delayed(machine: Floats, io: Floats, i: int, asked: float) -> float:
+    """Return the command of ``DELAY`` physics steps ago, a part step by the mean over the step.
+
+    Before the first command the drive held that same command: a run starts from a standing arm.
+    """
+    whole = int(machine[DELAY, 0])
+    part = machine[DELAY, 0] - whole
+    length, step = whole + 2, int(io[STEPS, 0])
+    if step == 0:
+        for row in range(length):
+            io[DELAYED + row, i] = asked
+    io[DELAYED + step % length, i] = asked
+    older = io[DELAYED + (step - whole - 1) % length, i]
+    return float((1.0 - part) * io[DELAYED + (step - whole) % length, i] + part * older)
+
+
+@kernel
+def _limited(machine: Floats, io: Floats, i: int, asked: float) -> float:
+    """Cut the torque to what limit, torque-speed line and speed limit leave; braking keeps the limit."""
+    v, limit = io[V_TRUE, i], machine[TORQUE_LIMIT, i]
+    driving = min(limit, _on_line(machine, i, abs(v)))
+    fastest = machine[SPEED_LIMIT, i]
+    if np.isfinite(fastest):
+        share = (fastest - abs(v)) / (SPEED_FOLDBACK * fastest)
+        if share < 1.0:
+            # without a torque limit the torque asked for is itself what folds back
+            whole = driving if np.isfinite(driving) else abs(asked)
+            driving = whole * max(share, 0.0)
+    upper = driving if v >= 0.0 else limit
+    lower = driving if v <= 0.0 else limit
+    return float(min(max(asked, -lower), upper))
+
+
+@kernel
+def _on_line(machine: Floats, i: int, speed: float) -> float:
+    """Return the torque that the motor's torque-speed line leaves at ``speed``; inf without one."""
+    if not np.isfinite(machine[NO_LOAD_SPEED, i]):
+        return float(np.inf)
+    return float(machine[STALL_TORQUE, i]) * max(1.0 - speed / machine[NO_LOAD_SPEED, i], 0.0)
