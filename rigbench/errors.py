@@ -4,7 +4,9 @@
 
     RigbenchError              exit code 1
     ├── InputFaults            2  what the user declared is at fault; carries every Fault found
-    ├── LawError                  a law raised an exception; ends as a row, not as an exit
+    ├── PluginError               the user's own code raised an exception; ends as a row, not as an exit
+    │   ├── LawError              a law did
+    │   └── SceneError            a scene did, or did what a scene must not
     ├── EngineError               the physics engine refused or died; ends as a row
     ├── Stopped                3  a campaign stopped before its end and can be resumed
     └── StoreError             5  the store or the disk
@@ -27,7 +29,9 @@ __all__ = [
     "Fault",
     "InputFaults",
     "LawError",
+    "PluginError",
     "RigbenchError",
+    "SceneError",
     "Stopped",
     "StoreBusy",
     "StoreError",
@@ -94,15 +98,26 @@ class InputFaults(RigbenchError):
         return cls([Fault(str(file), line, key, problem, expected)])
 
 
-class LawError(RigbenchError):
-    """A law raised; ``trace`` is the law's own traceback as text, ``summary`` its last line."""
+class PluginError(RigbenchError):
+    """A plug-in failed; ``summary`` says how, in one line, ``trace`` is its own traceback as text."""
 
-    def __init__(self, law: str, summary: str, trace: str) -> None:
-        self.law, self.summary, self.trace = law, summary, trace
-        super().__init__(law, summary, trace)
+    def __init__(self, name: str, summary: str, trace: str) -> None:
+        self.name, self.summary, self.trace = name, summary, trace
+        super().__init__(name, summary, trace)
+
+
+class LawError(PluginError):
+    """A law raised; ``summary`` is the last line of ``trace``."""
 
     def __str__(self) -> str:
-        return f"law '{self.law}' raised {self.summary}\n{self.trace}"
+        return f"law '{self.name}' raised {self.summary}\n{self.trace}"
+
+
+class SceneError(PluginError):
+    """A scene raised while it built, or did what a scene must not; then ``trace`` is empty."""
+
+    def __str__(self) -> str:
+        return f"scene '{self.name}': {self.summary}\n{self.trace}".rstrip()
 
 
 class EngineError(RigbenchError):

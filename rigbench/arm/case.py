@@ -18,8 +18,12 @@ PERCENT = (
     "coulomb_percent",
     "viscous_percent",
     "rotor_inertia_percent",
+    "torque_constant_percent",
+    "stiffness_percent",
 )
+ADDED = ("torque_bias_percent", "encoder_offset_deg")
 
+Pair = tuple[float, float]
 Triple = tuple[float, float, float]
 
 
@@ -33,8 +37,12 @@ class Case:
     ``link_cog_mm``: ((link, (x, y, z)), ...), shifts [mm] in the link frame at constant central inertia.
     ``payload_kg`` is the mass of the payload itself, in place of the believed or drawn one, within its
     declared range or not, and ``payload_cog_mm`` (x, y, z) [mm] its offset from the tool point in the
-    tool frame. ValueError for what can't be: numbers that aren't finite, a negative mass, a shared
-    spread (nothing is drawn), a link given twice.
+    tool frame. ``torque_constant_percent`` scales the torque given for what the law asks,
+    ``stiffness_percent`` that of the transmissions that are elastic. ``torque_bias_percent`` (of the
+    drive's torque limit) and ``encoder_offset_deg`` [deg; mm for a prismatic joint] are added on top of
+    what is drawn. ``delay_ms`` and ``base_tilt_deg`` (about the base's x, then y axis) are the whole
+    delay and tilt, in place of those declared or drawn. ValueError for what can't be: numbers that
+    aren't finite, a negative mass or delay, a shared spread (nothing is drawn), a link given twice.
     """
 
     payload_kg: float | None = None
@@ -45,22 +53,33 @@ class Case:
     coulomb_percent: Spread | None = None
     viscous_percent: Spread | None = None
     rotor_inertia_percent: Spread | None = None
+    torque_constant_percent: Spread | None = None
+    torque_bias_percent: Spread | None = None
+    encoder_offset_deg: Spread | None = None
+    stiffness_percent: Spread | None = None
+    delay_ms: float | None = None
+    base_tilt_deg: Pair | None = None
 
     def __post_init__(self) -> None:
-        if self.payload_kg is not None:
-            object.__setattr__(self, "payload_kg", _finite("payload_kg", self.payload_kg)[0])
-            if self.payload_kg < 0:
-                raise ValueError(f"payload_kg of {self.payload_kg} is below 0")
+        for name in ("payload_kg", "delay_ms"):
+            given = getattr(self, name)
+            if given is not None:
+                object.__setattr__(self, name, _finite(name, given)[0])
+                if given < 0:
+                    raise ValueError(f"{name} of {given} is below 0")
+        if self.base_tilt_deg is not None:
+            x, y = _finite("base_tilt_deg", *self.base_tilt_deg)
+            object.__setattr__(self, "base_tilt_deg", (x, y))
         if self.payload_cog_mm is not None:
             object.__setattr__(self, "payload_cog_mm", _triple("payload_cog_mm", self.payload_cog_mm))
         shifts = tuple(sorted((link, _triple("link_cog_mm", shift)) for link, shift in self.link_cog_mm))
         object.__setattr__(self, "link_cog_mm", shifts)
         if len(dict(shifts)) < len(shifts):
             raise ValueError("link_cog_mm names a link twice")
-        for name in PERCENT:
+        for name in (*PERCENT, *ADDED):
             given = getattr(self, name)
             if given is not None:
-                object.__setattr__(self, name, _percent(name, given))
+                object.__setattr__(self, name, _stated(name, given))
 
     @property
     def keys(self) -> tuple[str, ...]:
@@ -92,9 +111,9 @@ def _triple(name: str, given: tuple[float, ...]) -> Triple:
     return x, y, z
 
 
-def _percent(name: str, given: Spread | float) -> Spread:
+def _stated(name: str, given: Spread | float) -> Spread:
     spread = given if isinstance(given, Spread) else Spread(given)
-    if min(spread.values) < np.nextafter(-100, 0):
+    if name in PERCENT and min(spread.values) < np.nextafter(-100, 0):
         raise ValueError(f"{name} of {min(spread.values)} leaves nothing")
     if spread.shared:
         raise ValueError(f"{name} is stated, not drawn, so there is nothing to share")

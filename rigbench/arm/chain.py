@@ -12,7 +12,7 @@ from rigbench.arm.physical import from_inertia, impossible, inertia, possible
 from rigbench.arm.urdf import Joint, Robot
 from rigbench.errors import Fault
 
-__all__ = ["Chain", "chain_of"]
+__all__ = ["Chain", "carrier_of", "chain_of"]
 
 ROUNDING = 1e-9
 """Share of a link's inertia by which its published digits may miss 0."""
@@ -162,7 +162,7 @@ def _merge(
     notes: list[Fault] = []
     burdened: set[str] = set()
     for name, link in robot.links.items():
-        head, turned, shifted = _place(above, heads, name, lock)
+        head, turned, shifted = carrier_of(above, heads, name, lock)
         if link.inertial is None:
             continue
         if link.inertial.impossible:
@@ -180,12 +180,12 @@ def _merge(
         if head is not None:
             parameters[head] += moved(link.inertial.parameters, turned, shifted)
     for i, joint in enumerate(moving):
-        _, turned, shifted = _place(above, heads, joint.parent, lock)
+        _, turned, shifted = carrier_of(above, heads, joint.parent, lock)
         rotation[i], position[i] = turned @ joint.rotation, shifted + turned @ joint.position
     faults += [] if faults else _body_faults(robot, moving, parameters, burdened)
     if faults:
         return None, faults
-    _, tool_rotation, tool_position = _place(above, heads, tool, lock)
+    _, tool_rotation, tool_position = carrier_of(above, heads, tool, lock)
     kinds = np.array([PRISMATIC if joint.kind == "prismatic" else REVOLUTE for joint in moving])
     chain = Chain(
         tuple(moving), kinds, rotation, position, parameters, tool_rotation, tool_position, tuple(notes)
@@ -203,7 +203,7 @@ def _adds_inertia(parameters: Floats) -> bool:
     return bool(mass == 0 and np.linalg.eigvalsh(tensor)[0] >= -ROUNDING * np.trace(tensor))
 
 
-def _place(
+def carrier_of(
     above: Mapping[str, Joint], heads: Mapping[str, int], link: str, lock: Mapping[str, float]
 ) -> tuple[int | None, Floats, Floats]:
     """Return the moving body that carries a link (None: the base) and the link's frame in the body's."""

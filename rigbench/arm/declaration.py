@@ -57,7 +57,7 @@ class DriveDeclaration(Declared):
     spring_damping: AtLeastZero = Field(0.0, description="N m s/rad, of the elastic transmission")
     torque_limit: AboveZero | None = Field(None, description="N m, at the joint: the gearbox's rating")
     speed_limit: AboveZero | None = Field(None, description="rad/s, at the joint")
-    encoder_counts: Annotated[int, Field(ge=1)] | None = Field(
+    encoder_counts: Annotated[int, Field(ge=1, le=10**9)] | None = Field(
         None, description="counts per motor turn; exact positions if absent"
     )
     torque_lag_ms: AtLeastZero = Field(0.0, description="ms, time constant of the current loop; 0 for none")
@@ -71,7 +71,7 @@ class DriveDeclaration(Declared):
     motor_ripple: AtLeastZero = Field(
         0.0, description="N m, at the motor: amplitude of a torque that goes with its angle"
     )
-    ripple_periods: Annotated[int, Field(ge=1)] = Field(
+    ripple_periods: Annotated[int, Field(ge=1, le=10**6)] = Field(
         1, description="periods of the ripple in a motor turn"
     )
 

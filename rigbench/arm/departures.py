@@ -1,4 +1,4 @@
-"""What sources and a case do to an arm's numbers: to its links, its payload, its friction and rotors.
+"""What sources and a case do to an arm's numbers: to its links, its payload and its drives.
 
 ``exponents`` holds, for each source that acts, level times u of its parameters, in the order of their
 names; a source without an entry is idle.
@@ -10,15 +10,24 @@ from collections.abc import Mapping
 
 import numpy as np
 
-from rigbench.arm.arm import Arm, Floats
+from rigbench.arm.arm import PRISMATIC, Arm, Floats
 from rigbench.arm.case import Case
 from rigbench.arm.physical import add_point_mass, central_moments, from_central_moments, principal_moments
 from rigbench.arm.sources import Mismatch
 from rigbench.arm.spread import LINK_SOURCES, Spread, carriers
 
-__all__ = ["friction", "links", "loaded", "with_payload"]
+__all__ = ["drives", "links", "loaded", "with_payload"]
 
 Exponents = Mapping[str, Floats]
+
+SCALED = {
+    "coulomb_percent": ("coulomb", "static"),
+    "viscous_percent": ("viscous",),
+    "rotor_inertia_percent": ("rotor_inertia",),
+    "torque_constant_percent": ("torque_gain",),
+    "stiffness_percent": ("stiffness",),
+}
+"""Percent sources of the joints, and the arrays of the drives that they scale."""
 
 
 def links(arm: Arm, mismatch: Mismatch, exponents: Exponents, case: Case) -> Floats:
@@ -75,14 +84,14 @@ def with_payload(
     return parameters if mass == 0 else loaded(arm, parameters, mass, offset)
 
 
-def friction(arm: Arm, mismatch: Mismatch, exponents: Exponents, case: Case) -> dict[str, Floats]:
-    """Return the arrays of the drives that change, by the names of their fields."""
+def drives(arm: Arm, mismatch: Mismatch, exponents: Exponents, case: Case) -> dict[str, Floats]:
+    """Return the arrays of the drives that may change, by the names of their fields.
+
+    What is rigid (a stiffness of inf) stays so. A torque bias is a share of the torque limit, and
+    nothing where there is none.
+    """
     changed: dict[str, Floats] = {}
-    for source, names in (
-        ("coulomb_percent", ("coulomb", "static")),
-        ("viscous_percent", ("viscous",)),
-        ("rotor_inertia_percent", ("rotor_inertia",)),
-    ):
+    for source, names in SCALED.items():
         for name in names:
             value = getattr(arm.drives, name)
             if source in exponents:
@@ -90,6 +99,17 @@ def friction(arm: Arm, mismatch: Mismatch, exponents: Exponents, case: Case) -> 
             if (stated := getattr(case, source)) is not None:
                 value = value * _stated(stated, arm.joints)
             changed[name] = value
+    limit = arm.drives.torque_limit
+    for source, name, unit in (
+        ("torque_bias_percent", "torque_bias", 1e-2 * np.where(np.isfinite(limit), limit, 0.0)),
+        ("encoder_offset_deg", "encoder_offset", np.where(arm.kinds == PRISMATIC, 1e-3, np.pi / 180)),
+    ):
+        value = getattr(arm.drives, name)
+        if source in exponents:
+            value = value + unit * getattr(mismatch, source).of(arm.joints) * exponents[source]
+        if (stated := getattr(case, source)) is not None:
+            value = value + unit * stated.of(arm.joints)
+        changed[name] = value
     return changed
 
 

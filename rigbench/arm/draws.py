@@ -19,6 +19,13 @@ __all__ = ["draw_values", "exponents_of", "parameter_names", "uniform"]
 
 AXES = ("x", "y", "z")
 
+WHOLE = {
+    "payload": ("payload.mass", *(f"payload.cog.{axis}" for axis in AXES)),
+    "delay_ms": ("delay_ms",),
+    "base_tilt_deg": tuple(f"base_tilt_deg.{axis}" for axis in AXES[:2]),
+}
+"""The parameters of sources that belong to the machine as a whole."""
+
 
 def uniform(seed: int, name: str, draw: int) -> float:
     """Return the factor u of a parameter in a draw: uniform in [-1, 1), a multiple of 2^-52.
@@ -34,12 +41,12 @@ def parameter_names(arm: Arm, source: str, shared: bool = False) -> tuple[str, .
     """Name the parameters of a source, each of which has its own factor.
 
     link_mass_percent.<link>; link_cog_mm.<link>.x, .y, .z; link_inertia_percent.<link>.1, .2, .3 (the
-    principal second moments, ascending); payload.mass, payload.cog.x, .y, .z; and
-    coulomb_percent.<joint>, viscous_percent.<joint>, rotor_inertia_percent.<joint>. With ``shared``
-    'all' stands in place of every link or joint, once.
+    principal second moments, ascending); payload.mass, payload.cog.x, .y, .z; delay_ms;
+    base_tilt_deg.x, .y; and <source>.<joint> for all others. With ``shared`` 'all' stands in place of
+    every link or joint, once.
     """
-    if source == "payload":
-        return ("payload.mass", *(f"payload.cog.{axis}" for axis in AXES))
+    if source in WHOLE:
+        return WHOLE[source]
     parts = ("all",) if shared else carriers(arm, source)
     return tuple(f"{source}.{part}{end}" for part in parts for end in _endings(source))
 

@@ -116,8 +116,7 @@ def _arm(files: ArmFiles) -> Arm:
     drives, faults = changed_drives(files.path, declaration.drives, files.drive_changes)
     if faults:
         raise InputFaults(faults)
-    notes = (*chain.notes, *_mesh_notes(robot), *_encoder_notes(document, declaration))
-    return _assembled(robot.name, chain, drives, notes)
+    return _assembled(robot.name, chain, drives, (*chain.notes, *_mesh_notes(robot)))
 
 
 def _assembled(
@@ -225,13 +224,6 @@ def _exists(path: Path) -> bool:
         return path.exists()
     except (OSError, ValueError):  # a name that no file can have
         return False
-
-
-def _encoder_notes(document: Document, declaration: ArmDeclaration) -> Iterator[Fault]:
-    names = [name for name, drive in declaration.drives.items() if drive.encoder_counts is not None]
-    if names:
-        problem = f"without effect ({', '.join(names)}): positions are sensed exactly in this version"
-        yield document.fault(("drives", names[0], "encoder_counts"), problem)
 
 
 @lru_cache(maxsize=512)  # a sweep of the drives has an arm for each sheet

@@ -4,7 +4,8 @@ Each source names its parameters, and each parameter of each link and joint has 
 uniform in [-1, 1), from its own stream (see ``draws``). At a level L a percent source multiplies by
 (1 + spread)^(L u): positive whatever L, and symmetric in the logarithm. A case comes on top of the draw.
 
-Links change in this order: mass, centre of gravity, principal second moments of mass, payload.
+Links change in this order: mass, centre of gravity, principal second moments of mass, payload. Two
+sources are no part of the arm: the delay between law and torque, and the tilt of the base.
 """
 
 from __future__ import annotations
@@ -17,7 +18,7 @@ import numpy as np
 
 from rigbench.arm.arm import Arm, Floats
 from rigbench.arm.case import Case
-from rigbench.arm.departures import friction, links, loaded, with_payload
+from rigbench.arm.departures import drives, links, loaded, with_payload
 from rigbench.arm.draws import draw_values, exponents_of, parameter_names, uniform
 from rigbench.arm.physical import impossible, possible
 from rigbench.arm.sources import Mismatch, Payload
@@ -31,25 +32,26 @@ __all__ = [
     "Spread",
     "believed",
     "carriers",
+    "delay_of",
     "draw_values",
     "parameter_names",
     "plant",
+    "tilt_of",
     "uniform",
-    "unknown_in",
     "unknown_names",
 ]
 
 NOTHING = Case()
 
-
-def unknown_in(arm: Arm, declared: Mismatch | Case) -> tuple[tuple[str, str, str | None], ...]:
-    """Return what ``declared`` names that the arm lacks: (key, name, nearest name or None), in order."""
-    found: list[tuple[str, str, str | None]] = []
-    for key in declared.sources if isinstance(declared, Mismatch) else declared.keys:
-        value = getattr(declared, key)
-        named = value.each if isinstance(value, Spread) else value if key == "link_cog_mm" else ()
-        found += [(key, *unknown) for unknown in unknown_names(arm, key, (name for name, _ in named))]
-    return tuple(found)
+MUST_BE_FINITE = (
+    "coulomb",
+    "static",
+    "viscous",
+    "rotor_inertia",
+    "torque_gain",
+    "torque_bias",
+    "encoder_offset",
+)
 
 
 def believed(arm: Arm, mismatch: Mismatch) -> Arm:
@@ -78,14 +80,62 @@ def plant(
     if not 0 <= level < math.inf:
         raise ValueError(f"a level is finite and not below 0, not {level}")
     active = mismatch.active(sources) if level > 0 else ()
-    if active and draw is None:
-        raise ValueError("a plant of random sources needs the number of a draw")
-    exponents = exponents_of(arm, mismatch, level, active, seed, draw or 0)
+    exponents = exponents_of(arm, mismatch, level, active, seed, _number(draw)) if active else {}
     case = NOTHING if case is None else case
     built = _built(arm, mismatch, exponents, case)
     if _flaw(built) is not None:
         raise _fault(arm, mismatch, exponents, case)
     return built
+
+
+def delay_of(
+    declared_ms: float,
+    mismatch: Mismatch,
+    level: float,
+    sources: Iterable[str],
+    seed: int,
+    draw: int | None,
+    case: Case | None = None,
+) -> float:
+    """Return the plant's delay from tick to torque [ms]: declared + level u spread, but never below 0.
+
+    The rest as in :func:`plant`. What a case states is the whole delay.
+    """
+    if case is not None and case.delay_ms is not None:
+        return case.delay_ms
+    if mismatch.delay_ms is None or "delay_ms" not in mismatch.active(sources) or level == 0:
+        return declared_ms
+    return max(declared_ms + level * mismatch.delay_ms * uniform(seed, "delay_ms", _number(draw)), 0.0)
+
+
+def tilt_of(
+    declared: tuple[float, float],
+    mismatch: Mismatch,
+    level: float,
+    sources: Iterable[str],
+    seed: int,
+    draw: int | None,
+    case: Case | None = None,
+) -> tuple[float, float]:
+    """Return the tilt of the plant's base [rad] about its x and y axes: declared + level u spread of each.
+
+    The rest as in :func:`plant`. What a case states is the whole tilt.
+    """
+    if case is not None and case.base_tilt_deg is not None:
+        x, y = case.base_tilt_deg
+        return math.radians(x), math.radians(y)
+    if mismatch.base_tilt_deg is None or "base_tilt_deg" not in mismatch.active(sources) or level == 0:
+        return declared
+    reach = level * math.radians(mismatch.base_tilt_deg)
+    u, w = (uniform(seed, f"base_tilt_deg.{axis}", _number(draw)) for axis in "xy")
+    return declared[0] + reach * u, declared[1] + reach * w
+
+
+def _number(draw: int | None) -> int:
+    """Return the number of a draw that is needed."""
+    if draw is None:
+        raise ValueError("a plant of random sources needs the number of a draw")
+    return draw
 
 
 def _built(arm: Arm, mismatch: Mismatch, exponents: Mapping[str, Floats], case: Case) -> Arm:
@@ -95,7 +145,7 @@ def _built(arm: Arm, mismatch: Mismatch, exponents: Mapping[str, Floats], case: 
     with np.errstate(over="ignore", invalid="ignore"):
         changed = links(arm, mismatch, exponents, case)
         parameters = with_payload(arm, mismatch, exponents, case, changed)
-        return arm.replaced(parameters, replace(arm.drives, **friction(arm, mismatch, exponents, case)))
+        return arm.replaced(parameters, replace(arm.drives, **drives(arm, mismatch, exponents, case)))
 
 
 def _flaw(arm: Arm) -> str | None:
@@ -104,9 +154,8 @@ def _flaw(arm: Arm) -> str | None:
         for link, parameters in zip(arm.links, arm.parameters, strict=True):
             if (why := impossible(parameters)) is not None:
                 return f"link '{link}' can't exist: {why}"
-    drives = arm.drives
-    for name in ("coulomb", "static", "viscous", "rotor_inertia"):
-        if not np.isfinite(getattr(drives, name)).all():
+    for name in MUST_BE_FINITE:
+        if not np.isfinite(getattr(arm.drives, name)).all():
             return f"{name.replace('_', ' ')} is not finite"
     return None
 

@@ -9,9 +9,12 @@ from typing import Any
 
 import numpy as np
 
-from rigbench.arm.spread import Spread
+from rigbench.arm.spread import WHOLE_SOURCES, Spread
 
 __all__ = ["Mismatch", "Payload"]
+
+NOT_NEGATIVE = ("link_cog_mm", "torque_bias_percent", "encoder_offset_deg")
+"""Spreads of what is added; those of what multiplies are above -100 percent."""
 
 
 @dataclass(frozen=True)
@@ -38,10 +41,15 @@ class Payload:
 class Mismatch:
     """The declared sources with their spreads at level 1; None where a source is not declared.
 
-    A plain number stands for ``Spread(number)``: the same for all links or joints. Percent spreads are
-    above -100. ``link_cog_mm`` shifts the centre of gravity in each component of the link frame.
-    ``coulomb_percent`` scales static friction along with Coulomb friction. ValueError for what is no
-    spread.
+    A plain number stands for ``Spread(number)``: the same for all links or joints. Spreads of factors
+    are above -100 percent. ``link_cog_mm`` shifts the centre of gravity in each component of the link
+    frame. ``coulomb_percent`` scales static friction along with Coulomb friction,
+    ``torque_constant_percent`` the torque given for what the law asks, ``stiffness_percent`` that of the
+    transmissions that are elastic. ``torque_bias_percent`` is added to the torque, in percent of the
+    drive's torque limit (nothing where it has none); ``encoder_offset_deg`` to the sensed position [deg;
+    mm for a prismatic joint]. Of the machine as a whole, plain numbers: ``delay_ms`` comes on top of the
+    declared delay, which never falls below 0, ``base_tilt_deg`` on top of the declared tilt about each
+    of the base's x and y axes. ValueError for what is no spread.
     """
 
     link_mass_percent: Spread | None = None
@@ -51,14 +59,22 @@ class Mismatch:
     coulomb_percent: Spread | None = None
     viscous_percent: Spread | None = None
     rotor_inertia_percent: Spread | None = None
+    torque_constant_percent: Spread | None = None
+    torque_bias_percent: Spread | None = None
+    encoder_offset_deg: Spread | None = None
+    stiffness_percent: Spread | None = None
+    delay_ms: float | None = None
+    base_tilt_deg: float | None = None
 
     def __post_init__(self) -> None:
         for name in self.sources:
             given = getattr(self, name)
-            if name == "payload":
+            if name in WHOLE_SOURCES:
+                if name != "payload" and not 0 <= given < math.inf:
+                    raise ValueError(f"{name} of {given} is no spread")
                 continue
             spread = given if isinstance(given, Spread) else Spread(given)
-            least = 0.0 if name == "link_cog_mm" else np.nextafter(-100, 0)
+            least = 0.0 if name in NOT_NEGATIVE else np.nextafter(-100, 0)
             if min(spread.values) < least:
                 raise ValueError(f"{name} of {min(spread.values)} is no spread")
             object.__setattr__(self, name, spread)
@@ -88,5 +104,5 @@ class Mismatch:
             if isinstance(spread, Payload):
                 acting[name] = [float(spread.least_kg), float(spread.most_kg), float(spread.cog_mm)]
             else:
-                acting[name] = spread.inputs()
+                acting[name] = spread.inputs() if isinstance(spread, Spread) else float(spread)
         return acting

@@ -11,13 +11,16 @@ import numpy as np
 from rigbench.arm.arm import Arm, Floats
 from rigbench.errors import nearest
 
-__all__ = ["LINK_SOURCES", "RESERVED", "Spread", "carriers", "unknown_names"]
+__all__ = ["LINK_SOURCES", "RESERVED", "WHOLE_SOURCES", "Spread", "carriers", "unknown_names"]
 
 RESERVED = ("all", "shared")
 """Words of a declaration that no link or joint can be named by."""
 
 LINK_SOURCES = ("link_mass_percent", "link_cog_mm", "link_inertia_percent")
-"""Sources whose parameters belong to links; those of the other percent sources belong to joints."""
+"""Sources whose parameters belong to links; those of others that have a spread by name, to joints."""
+
+WHOLE_SOURCES = ("payload", "delay_ms", "base_tilt_deg")
+"""Sources whose parameters belong to the machine as a whole."""
 
 
 @dataclass(frozen=True)
@@ -76,8 +79,8 @@ class Spread:
 
 
 def carriers(arm: Arm, source: str) -> tuple[str, ...]:
-    """Return the names that a spread of ``source`` may use: links or joints of the arm, none for payload."""
-    if source == "payload":
+    """Return the names that a spread of ``source`` may use: links, joints, none where it has no names."""
+    if source in WHOLE_SOURCES:
         return ()
     return arm.links if source in LINK_SOURCES else arm.joints
 

@@ -73,7 +73,14 @@ _FIRST = (
     "CREATE INDEX plan_key ON plan (key)",
 )
 
-MIGRATIONS: tuple[Sequence[str], ...] = (_FIRST,)
+_KEPT_RUNS = (
+    # Texts of the planned runs and of their parts, see kept.py.
+    "CREATE TABLE parts (digest TEXT PRIMARY KEY, text TEXT NOT NULL)",
+    # run: the digest of the run's text; NULL if the plan is older than this step.
+    "ALTER TABLE plan ADD COLUMN run TEXT",
+)
+
+MIGRATIONS: tuple[Sequence[str], ...] = (_FIRST, _KEPT_RUNS)
 """Step i leads from schema i to schema i + 1. A step that has been released is never edited."""
 
 

@@ -14,8 +14,10 @@ from types import TracebackType
 from typing import Self
 
 from rigbench.campaign.connection import connect, owner, speaking_plainly
+from rigbench.campaign.kept import Kept, NotKept, restored
 from rigbench.campaign.labels import Labels
 from rigbench.campaign.plan import Entry, Plan
+from rigbench.campaign.work import Host
 from rigbench.errors import StoreError
 from rigbench.scores.results import Results
 from rigbench.scores.row import HOST_OUTCOMES, MACHINE_OUTCOMES, Row
@@ -161,14 +163,66 @@ class Reader:
 
     def records(self) -> Iterator[Record]:
         """Yield what is stored of the planned runs, in the order of the plan."""
+        return self._records()
+
+    def records_of(self, law: str, condition: str) -> Iterator[Record]:
+        """Yield those of one law under one condition, in every sheet and motion."""
+        return self._records("WHERE law = ? AND condition = ?", law, condition)
+
+    def record(self, key: str) -> Record | None:
+        """Return what is stored of a planned run, as the first of the entries that it stands for."""
+        return next(self._records("WHERE key = ?", key), None)
+
+    def _records(self, where: str = "", *values: str) -> Iterator[Record]:
         with speaking_plainly(self.path):
             query = self._connection.execute(
                 "SELECT sheet, law, motion, condition, level, draw, outcome, scores, host_scores,"
                 " reason, key, trace, sources, residual_rad_s, wall_s"
-                " FROM plan JOIN runs USING (key) ORDER BY position"
+                f" FROM plan JOIN runs USING (key) {where} ORDER BY position",
+                values,
             )
             for found in query:
                 yield _record(*found)
+
+    def keys(self, beginning: str) -> tuple[list[str], list[str]]:
+        """Return the keys that begin so: of the planned runs, and of those stored for older plans alone."""
+        within = "key >= ? AND key < ?"  # hexadecimal digits all come before 'g'
+        with speaking_plainly(self.path):
+            planned, stored = (
+                {key for (key,) in self._connection.execute(query, (beginning, f"{beginning}g"))}
+                for query in (f"SELECT key FROM plan WHERE {within}", f"SELECT key FROM runs WHERE {within}")
+            )
+        return sorted(planned), sorted(stored - planned)
+
+    def kept(self, key: str) -> Kept:
+        """Return a planned run itself, made from the store alone; StoreError if that can't be done."""
+        with speaking_plainly(self.path):
+            query = self._connection.execute("SELECT run, draw FROM plan WHERE key = ? LIMIT 1", (key,))
+            found = query.fetchone()
+            if found is None:
+                raise StoreError(str(self.path), f"run {key} is not planned any more")
+            digest, draw = found
+            if digest is None:
+                problem = "was filled by an older rigbench, which did not keep what a replay needs"
+                raise StoreError(str(self.path), f"{problem}; 'rigbench run' adds it, and runs nothing anew")
+            try:
+                return restored(self._text(digest), self._text, draw)
+            except NotKept as reason:
+                raise StoreError(str(self.path), f"run {key} can't be replayed: {reason}") from None
+
+    def _text(self, digest: str) -> str:
+        found = self._connection.execute("SELECT text FROM parts WHERE digest = ?", (digest,)).fetchone()
+        if found is None:
+            raise NotKept("a part of it is missing from the store")
+        return str(found[0])
+
+    def host(self, key: str) -> Host | None:
+        """Return the host that did a stored run."""
+        with speaking_plainly(self.path):
+            found = self._connection.execute(
+                "SELECT cpu, versions FROM runs JOIN hosts ON hosts.id = host WHERE key = ?", (key,)
+            ).fetchone()
+        return None if found is None else Host(found[0], tuple(json.loads(found[1]).items()))
 
     def rows(self) -> list[Row]:
         """Return the rows of the planned runs that are stored, in the order of the plan."""

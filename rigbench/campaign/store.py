@@ -17,6 +17,7 @@ from datetime import UTC, datetime
 from pathlib import Path
 
 from rigbench.campaign.connection import connect, owner, speaking_plainly
+from rigbench.campaign.kept import Keeper
 from rigbench.campaign.labels import Labels
 from rigbench.campaign.lock import WriterLock
 from rigbench.campaign.migrations import migrate
@@ -88,7 +89,11 @@ class Store(Reader):
                 _file_values(plan),
             )
             connection.execute("DELETE FROM plan")
-            connection.executemany("INSERT INTO plan VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?)", _plan_values(plan))
+            connection.execute("DELETE FROM parts")
+            keeper = Keeper()
+            rows = _plan_values(plan, keeper)
+            connection.executemany("INSERT INTO plan VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?)", rows)
+            connection.executemany("INSERT INTO parts VALUES (?, ?)", keeper.texts.items())
 
     def add(
         self, outcomes: Iterable[Outcome], draws: Iterable[tuple[int, int, Mapping[str, float]]] = ()
@@ -152,10 +157,10 @@ def _file_values(plan: Plan) -> Iterator[tuple[str, str, str]]:
         yield path, hashlib.blake2b(text.encode(), digest_size=20).hexdigest(), text
 
 
-def _plan_values(plan: Plan) -> Iterator[tuple[object, ...]]:
+def _plan_values(plan: Plan, keeper: Keeper) -> Iterator[tuple[object, ...]]:
     for position, entry in enumerate(plan.entries):
         names = (entry.sheet, entry.law, entry.motion, entry.condition, entry.level, entry.draw)
-        yield position, *names, ",".join(entry.run.sources), entry.key
+        yield position, *names, ",".join(entry.run.sources), entry.key, keeper.keep(entry.run)
 
 
 def _run_values(outcome: Outcome, host: int | None) -> tuple[object, ...]:

@@ -130,6 +130,67 @@ def export(
         export_runs(store, output, as_json)
 
 
+@app.command(epilog="Example: rigbench trace results/first-look.sqlite --worst 'pd + gravity' 'all at 1'")
+def trace(
+    store: StoreFile,
+    run: Annotated[
+        str | None,
+        typer.Argument(
+            metavar="[RUN]", help="the beginning of a run's key, as 'export' has it in column key"
+        ),
+    ] = None,
+    worst: Annotated[
+        tuple[str, str] | None,
+        typer.Option(metavar="LAW CONDITION", help="take the worst run of a law under a condition"),
+    ] = None,
+    motion: Annotated[str | None, typer.Option(help="with --worst: among the runs of one motion")] = None,
+    sheet: Annotated[str | None, typer.Option(help="with --worst: among the runs of one sheet")] = None,
+    output: Annotated[
+        str | None,
+        typer.Option("--output", "-o", help="what the files' names begin with; STORE's name and -trace-KEY"),
+    ] = None,
+    animate: Annotated[str | None, typer.Option(help="draw the moving arm too, into a .gif file")] = None,
+    as_json: Json = False,
+) -> None:
+    """Replay one stored run, bit for bit, into a data file (.npz) and a page of plots (.png).
+
+    Nothing but the store is needed. The worst run is one that did not finish, or the one with the largest
+    main score among the draws that count. A law of your own runs as your code: replay what you trust.
+    """
+    with telling(as_json):
+        from rigbench.cli.trace import trace_run
+
+        trace_run(store, run, worst, motion, sheet, output, animate, as_json)
+
+
+@app.command(epilog="Example: rigbench schema > rigbench.schema.json")
+def schema(
+    of: Annotated[
+        str, typer.Argument(metavar="[experiment|arm]", help="which file's schema; experiment if left out")
+    ] = "experiment",
+) -> None:
+    """Print the JSON Schema of the experiment file or of the arm file, for editors.
+
+    Keys, types, ranges, units and defaults, with the options of the laws registered here.
+    """
+    with telling(as_json=False):
+        from rigbench.cli.schema import print_schema
+
+        print_schema(of)
+
+
+@app.command(epilog="Example: rigbench demo bakery")
+def demo(
+    folder: Annotated[str, typer.Argument(metavar="DIR", help="the folder to fill; made if there is none")],
+    as_json: Json = False,
+) -> None:
+    """Copy the demo arms and experiments into DIR; nothing that is there is overwritten."""
+    with telling(as_json):
+        from rigbench.cli.demo import copy_demo
+
+        copy_demo(folder, as_json)
+
+
 @app.command(epilog="Example: rigbench laws computed-torque")
 def laws(
     name: Annotated[str | None, typer.Argument(metavar="[NAME]", help="a registered law")] = None,

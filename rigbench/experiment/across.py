@@ -112,7 +112,7 @@ def _possible(checked: Iterable[Checked]) -> list[Checked]:
 
 
 def _passed_everywhere(document: Document, checked: Sequence[Checked]) -> list[Fault]:
-    """Return the passings of the motions that pass a speed limit in every sheet, as the first one has them."""
+    """Return the passings of motions that pass a speed limit in every sheet, as the first one has them."""
     sheets = _possible(checked)
     each_has = [{_about(document, passing) for passing in each.findings.passings} for each in sheets]
     everywhere = set.intersection(*each_has) if each_has else set()
@@ -164,7 +164,7 @@ def _without_indices(document: Document, sweep: Sweep, faults: list[Fault]) -> l
 def notes_across(document: Document, sweep: Sweep, checked: Sequence[Checked]) -> list[Fault]:
     """Return the notes of all sheets, each once, with the sheets it is about unless these are all.
 
-    Among them: the combinations that can't be, and where the reference is beyond a speed limit in some sheets.
+    Among them: combinations that can't be, and where the reference is beyond a speed limit in some.
     """
     sheets = _possible(checked)
     where: dict[Fault, list[Checked]] = {}

@@ -87,7 +87,7 @@ def _given(keys: DriveKeys) -> list[str]:
 
 
 def _place(key: str, drives: Mapping[str, DriveKeys]) -> KeyPath:
-    """Return where in the experiment file the drive's number stands that a fault of the arm names by ``key``."""
+    """Return where the number of a drive stands that a fault of the arm names by ``key``."""
     places: list[KeyPath] = [("drives",)]
     for joint, keys in drives.items():
         places += [("drives", joint), *(("drives", joint, number) for number in _given(keys))]

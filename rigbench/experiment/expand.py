@@ -23,6 +23,12 @@ NAMES = {
     "coulomb_percent": "coulomb",
     "viscous_percent": "viscous",
     "rotor_inertia_percent": "rotor inertia",
+    "torque_constant_percent": "torque constant",
+    "torque_bias_percent": "torque bias",
+    "encoder_offset_deg": "encoder offset",
+    "stiffness_percent": "stiffness",
+    "delay_ms": "delay",
+    "base_tilt_deg": "base tilt",
 }
 """The sources as the columns of the matrix are headed."""
 
@@ -34,6 +40,10 @@ class Condition:
     column: Column
     sources: tuple[str, ...] = ()
     case: Case | None = None
+
+    def drawn(self, random: bool) -> Condition:
+        """Return the same condition, to be run once a draw or once."""
+        return replace(self, column=replace(self.column, random=random))
 
 
 @dataclass(frozen=True)
@@ -65,10 +75,13 @@ def nominal_and_levels(keys: ConditionsKeys) -> dict[str, float]:
 
 
 def conditions_of(
-    sources: tuple[str, ...], keys: ConditionsKeys, cases: Mapping[str, Case]
+    sources: tuple[str, ...], keys: ConditionsKeys, cases: Mapping[str, Case], noisy: bool
 ) -> tuple[Condition, ...]:
-    """Return the columns: nominal, each source alone, all sources together by level, the cases."""
-    found = [Condition(Column("nominal", 0.0, random=False, ladder=True))]
+    """Return the columns: nominal, each source alone, all sources together by level, the cases.
+
+    Where sensing or timing is ``noisy`` all of them are random, also those in which no source acts.
+    """
+    found = [Condition(Column("nominal", 0.0, random=noisy, ladder=True))]
     if keys.each_alone is not None:
         for source in sources:
             column = Column(NAMES[source], keys.each_alone, random=True, ladder=False)
@@ -78,12 +91,15 @@ def conditions_of(
     for name, case in cases.items():
         level = (keys.cases or {})[name].level
         acting = sources if level > 0 else ()
-        found.append(Condition(Column(name, level, random=level > 0, ladder=False), acting, case))
+        found.append(Condition(Column(name, level, random=noisy or level > 0, ladder=False), acting, case))
     return tuple(found)
 
 
 def entries_of(sheet: Sheet, draws: int) -> Iterator[Entry]:
-    """Yield every run of a sheet, law by law: once where nothing is random, else once a draw."""
+    """Yield every run of a sheet, law by law: once where nothing is random, else once a draw.
+
+    In a column that is random in another sheet alone, the draws stand for one and the same run.
+    """
     for law, choice in sheet.laws.items():
         for motion, reference in sheet.motions.items():
             shared = replace(

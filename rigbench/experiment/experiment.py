@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import shlex
-from collections.abc import Iterable, Iterator, Mapping
+from collections.abc import Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
 from itertools import chain
 from pathlib import Path
@@ -13,9 +13,9 @@ from rigbench.errors import Fault, InputFaults
 from rigbench.experiment.across import Skipped, faults_across, notes_across, skipped_of
 from rigbench.experiment.combinations import combinations
 from rigbench.experiment.expand import Sheet, entries_of, spreading
+from rigbench.experiment.read_vary import read_sweep
 from rigbench.experiment.schema import ExperimentKeys
 from rigbench.experiment.sheet import Checked, check_sheet
-from rigbench.experiment.vary import read_sweep
 from rigbench.scores.intervals import draws_needed, misses_allowed
 from rigbench.scores.results import Column, Tolerance
 from rigbench.yamlfile import Document, load, partial, read_text
@@ -57,7 +57,7 @@ class Experiment:
 
     @property
     def runs(self) -> int:
-        """How many runs are declared: one a sheet, law, motion and column, and in random columns one a draw."""
+        """How many runs are declared: one a sheet, law, motion and column, or draw where that is random."""
         return sum(
             len(sheet.laws) * len(sheet.motions) * (self.draws if condition.column.random else 1)
             for sheet in self.sheets
@@ -125,7 +125,7 @@ def load_experiment(path: str | Path) -> Experiment:
 def _assembled(document: Document, text: str, keys: ExperimentKeys, checked: list[Checked]) -> Experiment:
     """Put the sheets together, all of which are in order."""
     whole = [each for each in checked if each.sheet is not None and each.sheet.laws]
-    sheets = tuple(each.sheet for each in whole if each.sheet is not None)
+    sheets = _drawn_alike([each.sheet for each in whole if each.sheet is not None])
     rows = dict.fromkeys(row for each in whole for row in (each.keys and each.keys.laws) or ())
     lines = whole[0].combination.document
     return Experiment(
@@ -141,6 +141,20 @@ def _assembled(document: Document, text: str, keys: ExperimentKeys, checked: lis
         tolerance=whole[0].tolerance,
         law_lines={row: lines.line(("laws", row)) for row in rows},
         skipped=tuple(skipped_of(checked)),
+    )
+
+
+def _drawn_alike(sheets: Sequence[Sheet]) -> tuple[Sheet, ...]:
+    """Return the sheets with every column random that is so in any of them, as in a sweep of noise from 0.
+
+    Then one rule judges a law in all of them.
+    """
+    random = {
+        condition.column.name for sheet in sheets for condition in sheet.conditions if condition.column.random
+    }
+    return tuple(
+        replace(sheet, conditions=tuple(one.drawn(one.column.name in random) for one in sheet.conditions))
+        for sheet in sheets
     )
 
 
@@ -168,7 +182,8 @@ def _looked_over(document: Document, keys: ExperimentKeys, experiment: Experimen
     if experiment.tolerance is None and not keys.tolerance:
         yield document.fault((), "no tolerance is declared: the matrix will show scores, but no verdicts")
     sources = any(spreading(sheet.first.mismatch) for sheet in experiment.sheets)
-    if sources and not experiment.random:
+    acting = any(condition.sources for sheet in experiment.sheets for condition in sheet.conditions)
+    if sources and not acting:
         said = "no condition uses it: declare each_alone or together under conditions, or a case's level"
         yield document.fault(("mismatch",), said)
     tolerance = experiment.tolerance

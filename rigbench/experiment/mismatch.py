@@ -8,7 +8,7 @@ import numpy as np
 
 from rigbench.arm.arm import Arm
 from rigbench.arm.mismatch import Case, Mismatch, Payload, Spread, carriers, unknown_names
-from rigbench.experiment.expand import NAMES, nominal_and_levels
+from rigbench.experiment.expand import NAMES, nominal_and_levels, spreading
 from rigbench.experiment.findings import Findings
 from rigbench.experiment.mismatch_keys import CaseKeys, ConditionsKeys, MismatchKeys, SpreadKeys, StatedKeys
 from rigbench.yamlfile import KeyPath
@@ -17,17 +17,19 @@ __all__ = ["cases_of", "check_conditions", "mismatch_of"]
 
 MOST_LEVEL = 100.0
 
-FRICTION = (
-    ("coulomb_percent", "static", "Coulomb friction"),
-    ("viscous_percent", "viscous", "viscous friction"),
-    ("rotor_inertia_percent", "rotor_inertia", "rotor inertia"),
-)
-"""Sources, the arrays of the drives that they scale, and what that is called."""
+IDLE = {
+    "coulomb_percent": ("static", 0.0, "no drive has Coulomb friction"),
+    "viscous_percent": ("viscous", 0.0, "no drive has viscous friction"),
+    "rotor_inertia_percent": ("rotor_inertia", 0.0, "no drive has rotor inertia"),
+    "torque_bias_percent": ("torque_limit", np.inf, "no drive has a torque limit"),
+    "stiffness_percent": ("stiffness", np.inf, "every transmission is rigid"),
+}
+"""Sources without effect where an array of the drives has this value for all joints, and what that means."""
 
 
 def mismatch_of(keys: MismatchKeys, arm: Arm | None, findings: Findings) -> Mismatch:
     """Return the mismatch; what of it is at fault is left out."""
-    given: dict[str, Spread | Payload | None] = {"payload": _payload(keys, findings)}
+    given: dict[str, Spread | Payload | float | None] = {"payload": _payload(keys, findings)}
     for source in MismatchKeys.model_fields:
         value = getattr(keys, source)
         if source == "payload" or value is None:
@@ -38,8 +40,7 @@ def mismatch_of(keys: MismatchKeys, arm: Arm | None, findings: Findings) -> Mism
             if not any((value.all, *(value.__pydantic_extra__ or {}).values())) and findings.clean(*path):
                 findings.fault(path, "spreads nothing", "a number above 0 for all, or for one by its name")
         if findings.clean(*path):
-            declared = value.model_dump() if isinstance(value, SpreadKeys) else value
-            given[source] = Spread.declared(declared)
+            given[source] = Spread.declared(value.model_dump()) if isinstance(value, SpreadKeys) else value
             _note_idle(path, source, arm, findings)
     return Mismatch(**given)  # type: ignore[arg-type]  # each by its own name
 
@@ -73,10 +74,11 @@ def _check_names(
 
 
 def _note_idle(path: KeyPath, source: str, arm: Arm | None, findings: Findings) -> None:
-    """Note a source, or a case's key, that scales what is zero in this arm."""
-    for scaled, array, what in FRICTION:
-        if arm is not None and source == scaled and not np.any(getattr(arm.drives, array)):
-            findings.note(path, f"has no effect: no drive has {what}")
+    """Note a source, or a case's key, that acts on nothing in this arm."""
+    if arm is not None and source in IDLE:
+        array, nothing, why = IDLE[source]
+        if np.all(getattr(arm.drives, array) == nothing):
+            findings.note(path, f"has no effect: {why}")
 
 
 def check_conditions(keys: ConditionsKeys, sources: tuple[str, ...], findings: Findings) -> None:
@@ -106,7 +108,8 @@ def cases_of(
     keys: ConditionsKeys, mismatch: Mismatch, arm: Arm | None, findings: Findings
 ) -> dict[str, Case]:
     """Return the cases by name; what is not in order goes to ``findings``."""
-    taken = [*NAMES.values(), *nominal_and_levels(keys)]
+    alone = () if keys.each_alone is None else spreading(mismatch)
+    taken = [*(NAMES[source] for source in alone), *nominal_and_levels(keys)]
     cases = {}
     for name, case in (keys.cases or {}).items():
         path: KeyPath = ("conditions", "cases", name)
@@ -151,6 +154,7 @@ def _case(keys: CaseKeys) -> Case:
         return Spread.declared(given.model_dump() if isinstance(given, StatedKeys) else given)
 
     shifts: Mapping[str, list[float]] = keys.link_cog_mm or {}
+    tilt = keys.base_tilt_deg
     return Case(
         payload_kg=keys.payload_kg,
         payload_cog_mm=None if keys.payload_cog_mm is None else _triple(keys.payload_cog_mm),
@@ -160,6 +164,12 @@ def _case(keys: CaseKeys) -> Case:
         coulomb_percent=spread(keys.coulomb_percent),
         viscous_percent=spread(keys.viscous_percent),
         rotor_inertia_percent=spread(keys.rotor_inertia_percent),
+        torque_constant_percent=spread(keys.torque_constant_percent),
+        torque_bias_percent=spread(keys.torque_bias_percent),
+        encoder_offset_deg=spread(keys.encoder_offset_deg),
+        stiffness_percent=spread(keys.stiffness_percent),
+        delay_ms=keys.delay_ms,
+        base_tilt_deg=None if tilt is None else (tilt[0], tilt[1]),
     )
 
 

@@ -20,6 +20,7 @@ __all__ = [
 
 MOST_PERCENT = 1000
 MOST_MM = 10_000
+MOST_OFFSET = 1000
 
 Percent = Annotated[float, Field(gt=0, le=MOST_PERCENT)]
 Millimetres = Annotated[float, Field(gt=0, le=MOST_MM)]
@@ -28,6 +29,15 @@ Shift = Annotated[float, Field(ge=0, le=MOST_MM)]
 Stated = Annotated[float, Field(gt=-100, le=1_000_000)]
 Offset = Annotated[float, Field(ge=-MOST_MM, le=MOST_MM)]
 Triple = Annotated[list[Offset], Field(min_length=3, max_length=3)]
+Bias = Annotated[float, Field(gt=0, le=100)]
+Biasing = Annotated[float, Field(ge=0, le=100)]
+StatedBias = Annotated[float, Field(ge=-100, le=100)]
+Zero = Annotated[float, Field(gt=0, le=MOST_OFFSET)]
+Zeroing = Annotated[float, Field(ge=0, le=MOST_OFFSET)]
+StatedZero = Annotated[float, Field(ge=-MOST_OFFSET, le=MOST_OFFSET)]
+Milliseconds = Annotated[float, Field(gt=0, le=1000)]
+Tilt = Annotated[float, Field(gt=0, le=90)]
+StatedTilt = Annotated[float, Field(ge=-180, le=180)]
 
 
 class SpreadKeys(Declared):
@@ -50,6 +60,22 @@ class ShiftKeys(SpreadKeys):
     all: Shift = Field(default=0.0, description="of the links that are not named [mm]; default 0")
 
 
+class BiasKeys(SpreadKeys):
+    """A spread in percent of torque limits by name; 'all' is the number of the joints not named."""
+
+    __pydantic_extra__: dict[str, Biasing]
+
+    all: Biasing = Field(default=0.0, description="of the joints that are not named [percent]; default 0")
+
+
+class ZeroKeys(SpreadKeys):
+    """A spread in deg (mm for a prismatic joint) by name; 'all' is the number of the joints not named."""
+
+    __pydantic_extra__: dict[str, Zeroing]
+
+    all: Zeroing = Field(default=0.0, description="of the joints that are not named [deg or mm]; default 0")
+
+
 class StatedKeys(Declared):
     """A stated departure by name: a link or joint, and its percent; 'all' is that of those not named."""
 
@@ -57,6 +83,22 @@ class StatedKeys(Declared):
     __pydantic_extra__: dict[str, Stated]
 
     all: Stated = Field(default=0.0, description="of the links or joints not named [percent]; default 0")
+
+
+class StatedBiasKeys(StatedKeys):
+    """A stated torque by name, in percent of the torque limit; 'all' is that of the joints not named."""
+
+    __pydantic_extra__: dict[str, StatedBias]
+
+    all: StatedBias = Field(default=0.0, description="of the joints not named [percent]; default 0")
+
+
+class StatedZeroKeys(StatedKeys):
+    """A stated offset by name, in deg (mm for a prismatic joint); 'all' is that of the joints not named."""
+
+    __pydantic_extra__: dict[str, StatedZero]
+
+    all: StatedZero = Field(default=0.0, description="of the joints not named [deg or mm]; default 0")
 
 
 class PayloadKeys(Declared):
@@ -74,6 +116,8 @@ class PayloadKeys(Declared):
     )
 
 
+MEASURED = "Armstrong, Khatib, Burdick 1986"
+TWICE = "as two identifications of one seven-axis arm differ, quoted second-hand"
 SPREAD = (
     "at level 1 [percent]; p percent multiplies by a factor from 1 / (1 + p/100) to 1 + p/100; a number, or "
     "one for each by name: {all: 5, NAME: 25, shared: false}"
@@ -84,25 +128,59 @@ class MismatchKeys(Declared):
     """In which ways, and how far at level 1, the plant departs from the model; none acts unless declared."""
 
     link_mass_percent: Percent | SpreadKeys | None = Field(
-        default=None, description=f"mass of each link, {SPREAD}"
+        default=None,
+        description=f"mass of each link, {SPREAD}; typical: 1 weighed, 25 from dimensions ({MEASURED})",
     )
     link_cog_mm: Millimetres | ShiftKeys | None = Field(
         default=None,
         description="shift of each link's centre of gravity at level 1, in each direction [mm]; a number, or "
-        "one for each link by name",
+        f"one for each link by name; typical: 3 ({MEASURED})",
     )
     link_inertia_percent: Percent | SpreadKeys | None = Field(
-        default=None, description=f"principal second moments of mass of each link, {SPREAD}"
+        default=None,
+        description=f"principal second moments of mass of each link, {SPREAD}; typical: 3 to 5, of wrist "
+        f"links 50 ({MEASURED})",
     )
     payload: PayloadKeys | None = Field(default=None, description="the load at the tool point")
     coulomb_percent: Percent | SpreadKeys | None = Field(
-        default=None, description=f"Coulomb friction of each joint, {SPREAD}"
+        default=None, description=f"Coulomb friction of each joint, {SPREAD}; typical: 30 to 40 ({TWICE})"
     )
     viscous_percent: Percent | SpreadKeys | None = Field(
-        default=None, description=f"viscous friction of each joint, {SPREAD}"
+        default=None, description=f"viscous friction of each joint, {SPREAD}; typical: 20 to 50 ({TWICE})"
     )
     rotor_inertia_percent: Percent | SpreadKeys | None = Field(
-        default=None, description=f"rotor inertia of each drive, {SPREAD}"
+        default=None, description=f"rotor inertia of each drive, {SPREAD}; typical: 8 to 24 ({MEASURED})"
+    )
+    torque_constant_percent: Percent | SpreadKeys | None = Field(
+        default=None,
+        description=f"torque that a drive gives over what is asked of it, {SPREAD}; typical: 5 (common "
+        "practice: magnets and current sensors)",
+    )
+    torque_bias_percent: Bias | BiasKeys | None = Field(
+        default=None,
+        description="torque that each drive gives without being asked, either way, at level 1 [percent of "
+        "its torque limit; none where it has no limit]; a number, or one for each joint by name; typical: 1 "
+        "(our choice)",
+    )
+    encoder_offset_deg: Zero | ZeroKeys | None = Field(
+        default=None,
+        description="error of each encoder's zero, either way, at level 1 [deg; mm for a prismatic joint]; a "
+        "number, or one for each joint by name; typical: 0.05 (our choice)",
+    )
+    stiffness_percent: Percent | SpreadKeys | None = Field(
+        default=None,
+        description=f"stiffness of each elastic transmission, {SPREAD}; rigid ones stay rigid; typical: 30 "
+        "(our choice)",
+    )
+    delay_ms: Milliseconds | None = Field(
+        default=None,
+        description="delay on top of timing.delay_ms, either way, at level 1 [ms]; the whole never falls "
+        "below 0; typical: half a control period (our choice)",
+    )
+    base_tilt_deg: Tilt | None = Field(
+        default=None,
+        description="tilt of the base on top of base_tilt_deg, about its x and y axes, each either way, at "
+        "level 1 [deg]; typical: 0.2 (our choice)",
     )
 
 
@@ -144,6 +222,31 @@ class CaseKeys(Declared):
     )
     rotor_inertia_percent: Stated | StatedKeys | None = Field(
         default=None, description=f"rotor inertia of drives {EXACT}"
+    )
+    torque_constant_percent: Stated | StatedKeys | None = Field(
+        default=None, description=f"torque that drives give over what is asked of them {EXACT}"
+    )
+    torque_bias_percent: StatedBias | StatedBiasKeys | None = Field(
+        default=None,
+        description="torque that drives give without being asked, on top of what is drawn [percent of the "
+        "torque limit]; a number, or one for each joint by name",
+    )
+    encoder_offset_deg: StatedZero | StatedZeroKeys | None = Field(
+        default=None,
+        description="by how much encoders read too much, on top of what is drawn [deg; mm for a prismatic "
+        "joint]; a number, or one for each joint by name",
+    )
+    stiffness_percent: Stated | StatedKeys | None = Field(
+        default=None, description=f"stiffness of elastic transmissions {EXACT}"
+    )
+    delay_ms: Annotated[float, Field(ge=0, le=1000)] | None = Field(
+        default=None,
+        description="the whole delay from control tick to torque [ms], in place of that declared or drawn",
+    )
+    base_tilt_deg: Annotated[list[StatedTilt], Field(min_length=2, max_length=2)] | None = Field(
+        default=None,
+        description="the whole tilt of the base about its x, then its y axis [deg], in place of that "
+        "declared or drawn",
     )
 
 

@@ -24,18 +24,18 @@ class PathKeys(Declared):
 
     near_deg: list[float] | None = Field(
         default=None,
-        description="pose near which the arm starts, one position a joint [deg; mm for a prismatic joint]; it "
-        "chooses between elbow up and down; default: gain_pose_deg, else where the first motion through via "
-        "points or from a file starts, else the middle of the joints' limits",
+        description="pose near which the arm starts, one position a joint [deg; mm for a prismatic joint]; "
+        "it chooses between elbow up and down; default: gain_pose_deg, else where the first motion through "
+        "via points or from a file starts, else the middle of the joints' limits",
     )
     orientation: Literal["held", "free"] | None = Field(
         default=None,
-        description="held: the tool doesn't turn along the way; free: it turns as the joints have it; default: "
-        "held for an arm of six joints or more, else free",
+        description="held: the tool doesn't turn along the way; free: it turns as the joints have it; "
+        "default: held for an arm of six joints or more, else free",
     )
     tool_rpy_deg: Annotated[list[Angle], Field(min_length=3, max_length=3)] | None = Field(
         default=None,
-        description="orientation held, as fixed-axis roll, pitch and yaw in the base frame, as in URDF [deg]; "
+        description="orientation held: fixed-axis roll, pitch and yaw in the base frame, as in URDF [deg]; "
         "default: that of the pose near_deg",
     )
 
@@ -116,6 +116,6 @@ class MotionKeys(Declared):
     tolerance: dict[str, Any] | None = Field(
         default=None,
         min_length=1,
-        description="limits of this motion alone, on top of those of the experiment, and in place of those on "
-        "the same score; settle_band_mm may be given here too",
+        description="limits of this motion alone, on top of those of the experiment, and in place of those "
+        "on the same score; settle_band_mm may be given here too",
     )

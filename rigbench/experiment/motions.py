@@ -2,19 +2,19 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from pathlib import Path
 
 import numpy as np
 
-from rigbench.arm.arm import PRISMATIC, Arm, Floats
+from rigbench.arm.arm import Arm
 from rigbench.errors import InputFaults, nearest
 from rigbench.experiment.findings import Findings, entries, unreadable
 from rigbench.experiment.motion_keys import MotionKeys, PathKeys
+from rigbench.experiment.positions import check_position, to_si
 from rigbench.motion.chained import chained
-from rigbench.motion.limits import SLACK, check_motion, shown
+from rigbench.motion.limits import check_motion
 from rigbench.motion.motion import Motion
 from rigbench.motion.path import circle, line, middle_of_limits
 from rigbench.motion.reach import Unreachable
@@ -22,7 +22,7 @@ from rigbench.motion.read import read_table
 from rigbench.motion.via import ViaMotion
 from rigbench.yamlfile import KeyPath, read_text
 
-__all__ = ["check_position", "motions_of", "to_si"]
+__all__ = ["motions_of"]
 
 MOST_TICKS = 5_000_000
 """Control ticks that a motion may have: what a run logs of them has to fit into memory."""
@@ -38,11 +38,6 @@ GO_WITH: Mapping[str, tuple[str, ...]] = {
 """Keys that not every kind of motion has."""
 
 SLOWER = "a longer time or a lower pace_percent"
-
-
-def to_si(arm: Arm) -> Floats:
-    """Return what turns a joint's deg into rad and a prismatic joint's mm into m, shape (n,)."""
-    return np.where(arm.kinds == PRISMATIC, 1e-3, math.radians(1.0))
 
 
 def motions_of(
@@ -262,15 +257,3 @@ class _Maker:
 
 def _without_speed_limits(arm: Arm) -> Arm:
     return replace(arm, drives=replace(arm.drives, speed_limit=np.full(arm.n, np.inf)))
-
-
-def check_position(path: KeyPath, position: Floats, arm: Arm, findings: Findings, where: str = "") -> None:
-    """Add a fault for each joint of a position (n,) [deg or mm] that lies beyond its limits."""
-    scale = to_si(arm)
-    for i, joint in enumerate(arm.joints):
-        unit = "mm" if arm.kinds[i] == PRISMATIC else "deg"
-        for side, bound, sign in (("least", arm.lower[i], -1), ("most", arm.upper[i], 1)):
-            if math.isfinite(bound) and sign * (position[i] * scale[i] - bound) > SLACK * abs(bound):
-                value, limit = shown(float(position[i]), float(bound / scale[i]))
-                problem = f"{where}{value} {unit} is beyond the limit of joint {joint}"
-                findings.fault(path, problem, f"at {side} {limit} {unit}")

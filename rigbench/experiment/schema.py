@@ -1,7 +1,8 @@
 """The keys of an experiment file: their types, units, defaults and ranges, one class a section.
 
-Those of motions and of mismatch and conditions are in :mod:`rigbench.experiment.motion_keys` and
-:mod:`rigbench.experiment.mismatch_keys`. What only shows against the arm, the laws or another key
+Those of motions, of mismatch and conditions, and of sensing and timing are in
+:mod:`rigbench.experiment.motion_keys`, :mod:`rigbench.experiment.mismatch_keys` and
+:mod:`rigbench.experiment.rig_keys`. What only shows against the arm, the laws or another key
 (lengths, limits, names) is looked at afterwards.
 """
 
@@ -14,9 +15,13 @@ from pydantic import ConfigDict, Field, create_model
 from rigbench.arm.declaration import DriveDeclaration
 from rigbench.experiment.mismatch_keys import ConditionsKeys, MismatchKeys
 from rigbench.experiment.motion_keys import MotionKeys
+from rigbench.experiment.rig_keys import SensingKeys, TimingKeys
 from rigbench.yamlfile import Declared
 
 __all__ = ["DriveKeys", "ExperimentKeys", "LawKeys", "RatesKeys"]
+
+
+Tilt = Annotated[float, Field(ge=-180, le=180)]
 
 
 class RatesKeys(Declared):
@@ -81,8 +86,8 @@ class ExperimentKeys(Declared):
     )
     drives: dict[str, DriveKeys] = Field(
         default_factory=dict,
-        description="numbers of the drives in place of the arm file's, by joint or under 'all'; a joint's own "
-        "go before those of all",
+        description="numbers of the drives in place of the arm file's, by joint or under 'all'; a joint's "
+        "own go before those of all",
     )
     seed: int = Field(default=0, ge=0, lt=2**63, description="seed of the draws; default 0")
     rates: RatesKeys = Field(default_factory=RatesKeys, description="sample rates")
@@ -91,6 +96,18 @@ class ExperimentKeys(Declared):
         min_length=3,
         max_length=3,
         description="gravity in the base frame [m/s^2]; default [0, 0, -9.81]",
+    )
+    sensing: SensingKeys = Field(
+        default_factory=SensingKeys, description="what the law sees of the machine; default: its exact state"
+    )
+    timing: TimingKeys = Field(
+        default_factory=TimingKeys,
+        description="when the law is called, and when its torque acts; default: at every tick, at once",
+    )
+    base_tilt_deg: Annotated[list[Tilt], Field(min_length=2, max_length=2)] = Field(
+        default_factory=lambda: [0.0, 0.0],
+        description="tilt of the plant's base about its x, then its y axis [deg], of which the controllers "
+        "don't know; default [0, 0]; typical: 0.2 (our choice)",
     )
     gain_pose_deg: list[float] | None = Field(
         default=None,

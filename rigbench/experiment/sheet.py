@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+import math
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -13,14 +13,15 @@ from rigbench.errors import Fault
 from rigbench.experiment.arms import arms_of, note_free_gears
 from rigbench.experiment.combinations import Combination
 from rigbench.experiment.expand import Sheet, conditions_of, spreading
-from rigbench.experiment.findings import Findings, entries
+from rigbench.experiment.findings import Findings
 from rigbench.experiment.laws import is_whole, law_choices
+from rigbench.experiment.meeting import sensing_of, timing_of
 from rigbench.experiment.mismatch import cases_of, check_conditions, mismatch_of
-from rigbench.experiment.motions import check_position, motions_of, to_si
+from rigbench.experiment.motions import motions_of
+from rigbench.experiment.positions import check_start, joint_list
 from rigbench.experiment.schema import ExperimentKeys, RatesKeys
 from rigbench.experiment.tolerance import SETTLE_BAND_MM, check_applies, tolerance_of
 from rigbench.experiment.vary import Axis
-from rigbench.motion.motion import Motion
 from rigbench.rig.run import Rates, Run
 from rigbench.scores.results import Tolerance
 from rigbench.yamlfile import partial
@@ -59,6 +60,7 @@ def check_sheet(combination: Combination, axes: tuple[Axis, ...], folder: Path) 
     arms = arms_of(keys.arm, keys.model, keys.drives, findings, folder)
     arm = None if arms is None else arms.arm
     rates = _rates_of(keys.rates, findings)
+    timing = None if rates is None else timing_of(keys.timing, rates, findings)
     control_hz = keys.rates.control_hz if findings.clean("rates", "control_hz") else None
     laws = law_choices(keys.laws or {}, findings, folder, None if arm is None else arm.n, control_hz)
     mismatch = mismatch_of(keys.mismatch, arm, findings)
@@ -67,21 +69,23 @@ def check_sheet(combination: Combination, axes: tuple[Axis, ...], folder: Path) 
     tolerance, bands = tolerance_of(keys, arm, findings)
     if arm is None or arms is None:
         return Checked(combination, findings, keys)
-    gain_pose = _joint_list("gain_pose_deg", keys.gain_pose_deg, arm, findings)
+    gain_pose = joint_list("gain_pose_deg", keys.gain_pose_deg, arm, findings)
     motions = motions_of(keys.motions or {}, findings, folder, arm, control_hz or 1000.0, gain_pose)
     if tolerance is not None and motions and findings.clean("motions"):
         check_applies(tolerance, motions, arm, findings)
-    start_offset = _joint_list("start_offset_deg", keys.start_offset_deg, arm, findings)
+    start_offset = joint_list("start_offset_deg", keys.start_offset_deg, arm, findings)
     if start_offset is not None:
-        _check_start(start_offset, motions, arm, findings)
+        check_start(start_offset, motions, arm, findings)
     for axis in axes:
         if axis.path[0] == "drives" and axis.path[2:] == ("gear_ratio",):
             note_free_gears(axis.path, arms.files, findings)
+    sensing = sensing_of(keys.sensing, arm, findings)
     checked = Checked(combination, findings, keys, arm, None, tolerance)
-    if findings.faults or rates is None or not laws or not motions:
+    if findings.faults or rates is None or timing is None or not laws or not motions:
         return checked
     law, motion = next(iter(laws.values())), next(iter(motions.values()))
     x, y, z = keys.gravity_m_s2
+    about_x, about_y = map(math.radians, keys.base_tilt_deg)
     first = Run(
         arm=arms.files,
         law=law,
@@ -94,13 +98,16 @@ def check_sheet(combination: Combination, axes: tuple[Axis, ...], folder: Path) 
         mismatch=mismatch,
         start_offset=start_offset or (),
         gravity=(x, y, z),
+        sensing=sensing,
+        timing=timing,
+        base_tilt=(about_x, about_y),
     )
     sheet = Sheet(
         name=combination.name,
         first=first,
         laws=laws,
         motions=motions,
-        conditions=conditions_of(spreading(mismatch), keys.conditions, cases),
+        conditions=conditions_of(spreading(mismatch), keys.conditions, cases, first.noisy),
         settle_bands_mm={name: bands.get(name, first.settle_band_mm) for name in motions},
     )
     return Checked(combination, findings, keys, arm, sheet, tolerance)
@@ -130,24 +137,3 @@ def _rates_of(keys: RatesKeys, findings: Findings) -> Rates | None:
         findings.clash(("rates", "physics_hz"), problem, "1, 2, 3 ... times control_hz")
         return None
     return Rates(keys.control_hz, physics_hz)
-
-
-def _joint_list(
-    key: str, values: list[float] | None, arm: Arm, findings: Findings
-) -> tuple[float, ...] | None:
-    """Return a list of deg (mm for a prismatic joint) in rad (m); None if there is none or it is at fault."""
-    if values is None:
-        return None
-    if len(values) != arm.n:
-        findings.fault((key,), entries(len(values)), f"{arm.n}, one a joint")
-        return None
-    return tuple((np.array(values) * to_si(arm)).tolist())
-
-
-def _check_start(
-    offset: tuple[float, ...], motions: Mapping[str, Motion], arm: Arm, findings: Findings
-) -> None:
-    """Check that every run starts within the limits of the joints; ``offset`` (n,) in rad (m)."""
-    for name, motion in motions.items():
-        first = (motion.reference(np.zeros(1))[0][0] + np.array(offset)) / to_si(arm)
-        check_position(("start_offset_deg",), first, arm, findings, f"motion {name} would start at ")

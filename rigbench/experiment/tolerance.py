@@ -118,7 +118,7 @@ def _shown(value: Any) -> str:
 
 
 def check_applies(tolerance: Tolerance, motions: Mapping[str, Motion], arm: Arm, findings: Findings) -> None:
-    """Add a fault for each limit on a score that its motion, or none of all, has; a note where some lack it."""
+    """Add a fault for each limit on a score that no motion has that it is for; a note where some lack it."""
     _check_limits(("tolerance",), tolerance.limits, motions, arm, findings)
     for name, limits in tolerance.motions.items():
         if name in motions:

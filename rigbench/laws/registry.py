@@ -2,35 +2,24 @@
 
 from __future__ import annotations
 
-import ast
-import hashlib
 import inspect
-import linecache
-import shutil
-import sys
-import tempfile
-import traceback
 from collections.abc import Mapping
 from dataclasses import dataclass
 from functools import cache
 from importlib.metadata import EntryPoint, entry_points
 from pathlib import Path
-from types import ModuleType
 from typing import Any
 
 from pydantic import BaseModel
 
-from rigbench.arm.kernel import kernel_cache
 from rigbench.errors import InputFaults, LawError
 from rigbench.laws.law import Law
 from rigbench.laws.options import options_model
+from rigbench.laws.plugins import Files, collect, digest_of, import_files, load_points, package_digest
 
 __all__ = ["LawChoice", "Registered", "Registry", "check_class", "choose", "load_file_law", "registered"]
 
 GROUP = "rigbench.laws"
-
-Files = tuple[tuple[str, str], ...]
-"""Names, relative to the law's folder, and texts of a law's file and the files that it imports."""
 
 
 @dataclass(frozen=True)
@@ -79,25 +68,9 @@ def registered() -> Registry:
 
 def registry_of(points: tuple[EntryPoint, ...]) -> Registry:
     """Build the registry of the given entry points; of two with one name, both are refused."""
-    laws: dict[str, Registered] = {}
-    broken: list[tuple[str, str]] = []
-    for name in sorted({point.name for point in points}):
-        same = [point for point in points if point.name == name]
-        if len(same) > 1:
-            who = " and ".join(sorted(_package(point)[0] for point in same))
-            broken.append((name, f"the name is registered by more than one package: {who}"))
-            continue
-        try:
-            laws[name] = Registered(name, check_class(same[0].load()), *_package(same[0]))
-        except Exception as problem:  # a plugin may raise anything while it is imported
-            broken.append((name, f"{type(problem).__name__}: {problem}"))
-    return Registry(laws, tuple(broken))
-
-
-def _package(point: EntryPoint) -> tuple[str, str]:
-    if point.dist is None:
-        return point.value.split(".")[0].split(":")[0], "unknown"
-    return point.dist.name, point.dist.version
+    loaded, broken = load_points(points, check_class)
+    laws = {name: Registered(name, p.found, p.package, p.version) for name, p in loaded.items()}
+    return Registry(laws, broken)
 
 
 @dataclass(frozen=True)
@@ -114,7 +87,7 @@ class LawChoice:
 
     def inputs(self) -> dict[str, Any]:
         """Return what the run's key covers: name, options and a digest of the law's sources."""
-        digest = _digest(self.files) if self.files else _package_digest(self.plugin)
+        digest = digest_of(self.files) if self.files else package_digest(_module_of(self.plugin))
         return {"law": self.plugin, "options": [list(pair) for pair in self.options], "source": digest}
 
     def law_class(self) -> type[Law]:
@@ -137,20 +110,8 @@ def choose(plugin: str, options: BaseModel, files: Files = ()) -> LawChoice:
     return LawChoice(plugin, tuple(sorted(options.model_dump().items())), files)
 
 
-def _digest(files: Files) -> str:
-    digest = hashlib.blake2b(digest_size=16)
-    for name, text in files:
-        digest.update(f"{name}\0{len(text)}\0{text}".encode())
-    return digest.hexdigest()
-
-
-@cache
-def _package_digest(plugin: str) -> str:
-    """Digest all sources of the package (or the one module) that a registered law lives in."""
-    module = sys.modules[registered().laws[plugin].cls.__module__]
-    path = Path(module.__file__ or "")
-    sources = sorted(path.parent.glob("**/*.py")) if module.__package__ else [path]
-    return _digest(tuple((str(p.relative_to(path.parent)), p.read_text("utf-8")) for p in sources))
+def _module_of(plugin: str) -> str:
+    return registered().laws[plugin].cls.__module__
 
 
 def load_file_law(path: Path, class_name: str) -> tuple[type[Law], Files]:
@@ -160,55 +121,16 @@ def load_file_law(path: Path, class_name: str) -> tuple[type[Law], Files]:
     traceback if importing it raises.
     """
     try:
-        files = _collect(path)
+        files = collect(path)
     except (OSError, UnicodeDecodeError) as problem:
         raise InputFaults.one(path, "", f"can't be read: {problem}", "a Python file with a law") from None
     cls = _import_files(files, class_name, str(path))
     return cls, files
 
 
-def _collect(path: Path) -> Files:
-    """Return the file and, file by file, the neighbours that it imports, however indirectly."""
-    folder, waiting, texts = path.parent, [path], dict[str, str]()
-    while waiting:
-        source = waiting.pop()
-        name = source.relative_to(folder).as_posix()
-        if name in texts:
-            continue
-        texts[name] = source.read_text("utf-8")
-        waiting += _neighbours(texts[name], folder)
-    first = path.name
-    return ((first, texts.pop(first)), *sorted(texts.items()))
-
-
-def _neighbours(text: str, folder: Path) -> list[Path]:
-    try:
-        tree = ast.parse(text)
-    except SyntaxError:
-        return []  # the import itself will say so, with its traceback
-    wanted: set[str] = set()
-    for node in ast.walk(tree):
-        if isinstance(node, ast.Import):
-            wanted |= {alias.name.split(".")[0] for alias in node.names}
-        elif isinstance(node, ast.ImportFrom) and node.module and node.level == 0:
-            wanted.add(node.module.split(".")[0])
-    found = [folder / f"{name}.py" for name in wanted if (folder / f"{name}.py").is_file()]
-    for name in wanted:
-        if (folder / name / "__init__.py").is_file():
-            found += (folder / name).glob("**/*.py")
-    return found
-
-
-@cache
 def _import_files(files: Files, class_name: str, shown: str) -> type[Law]:
-    """Write the texts into a folder of their own and import the first.
-
-    Neighbours are imported from that folder alone and then taken out of sys.modules again, so two laws
-    may each have a ``helpers.py``. Importing from the carried texts, on every machine alike, is what
-    makes the key's digest the truth about what ran.
-    """
-    folder = _written(files)
-    module = _execute(folder, files[0][1], f"rigbench_law_{_digest(files)}", shown)
+    """Import the first of the texts, see :func:`rigbench.laws.plugins.import_files`; return its class."""
+    module = import_files(files, shown, LawError)
     found = getattr(module, class_name, None)
     if found is None:
         names = [
@@ -221,43 +143,3 @@ def _import_files(files: Files, class_name: str, shown: str) -> type[Law]:
         return check_class(found)
     except TypeError as problem:
         raise InputFaults.one(shown, class_name, str(problem)) from None
-
-
-def _written(files: Files) -> Path:
-    """Return a folder that holds the texts, named by their digest: workers and later runs share it."""
-    folder = kernel_cache() / "laws" / _digest(files)
-    if not folder.is_dir():
-        folder.parent.mkdir(parents=True, exist_ok=True)
-        fresh = Path(tempfile.mkdtemp(dir=folder.parent))
-        for name, text in files:
-            (fresh / name).parent.mkdir(parents=True, exist_ok=True)
-            (fresh / name).write_text(text, "utf-8")
-        try:
-            fresh.rename(folder)
-        except OSError:  # another process was first
-            shutil.rmtree(fresh, ignore_errors=True)
-    return folder
-
-
-def _execute(folder: Path, text: str, name: str, shown: str) -> ModuleType:
-    """Run ``text`` as a module under the path that the user knows, so that tracebacks name it."""
-    module = ModuleType(name)
-    module.__file__ = shown
-    linecache.cache[shown] = (len(text), None, text.splitlines(keepends=True), shown)
-    before = set(sys.modules)
-    sys.path.insert(0, str(folder))
-    sys.modules[name] = module
-    try:
-        exec(compile(text, shown, "exec"), module.__dict__)
-    except Exception as problem:
-        del sys.modules[name]
-        ours = problem.__traceback__
-        trace = "".join(traceback.format_exception(type(problem), problem, ours and ours.tb_next))
-        raise LawError(shown, f"{type(problem).__name__}: {problem}", trace) from None
-    finally:
-        sys.path.remove(str(folder))
-        for other in set(sys.modules) - before - {name}:
-            origin = getattr(sys.modules[other], "__file__", None) or ""
-            if origin.startswith(str(folder)):
-                del sys.modules[other]
-    return module

@@ -54,12 +54,11 @@ class ChainMotion:
     def _segments(self) -> tuple[Motion, ...]:
         """The parts and the legs between them; a leg from the last back to the first closes the cycle."""
         segments: list[Motion] = []
-        for k, part in enumerate(self.parts):
+        for part, after in zip(self.parts, (*self.parts[1:], self.parts[0]), strict=True):
             segments.append(part)
-            if k + 1 < len(self.parts) or self.repeats > 1:
-                (end, _), (start, _) = _end(part), _start(self.parts[(k + 1) % len(self.parts)])
-                if self.join_s is not None and np.abs(start - end).max() > SAME:
-                    segments.append(ViaMotion((tuple(end.tolist()), tuple(start.tolist())), self.join_s))
+            end, start = _end(part)[0], _start(after)[0]
+            if self.join_s is not None and np.abs(start - end).max() > SAME:
+                segments.append(ViaMotion((tuple(end.tolist()), tuple(start.tolist())), self.join_s))
         return tuple(segments)
 
     @cached_property

@@ -35,9 +35,6 @@ FINEST = 2.0**-24
 JUMP = 0.5
 """A joint that turns farther [rad, or share of the arm's length] from one point to the next has jumped."""
 
-CLOSED = 1e-8
-"""A path that ends this close to its start [rad, or share of the arm's length] ends there."""
-
 CLOSELY = 8
 """Places in each part at which the joint path is looked at for singular poses."""
 
@@ -176,8 +173,6 @@ class _Follower:
         q = [start.q]
         for begin, end in zip(shares[:-1].tolist(), shares[1:].tolist(), strict=True):
             q.append(self.advance(begin, q[-1], end))
-        if np.abs((q[-1] - q[0]) / self.reach.scale).max() <= CLOSED:
-            q[-1] = q[0]
         return np.array(q)
 
     def advance(self, share: float, q: Floats, end: float) -> Floats:
@@ -198,9 +193,8 @@ class _Follower:
         return q
 
     def check_singular(self, shares: Floats, q: Floats) -> None:
-        """Raise Lost at the first share where the arm is singular, or passes through a singular pose."""
-        least, side = conditioning(self.reach, q, self.task.rows)
-        singular = (least < SINGULAR) | (side != side[0])
+        """Raise Lost at the first share of the way at which the arm is singular."""
+        singular = conditioning(self.reach, q, self.task.rows) < SINGULAR
         if not singular.any():
             return
         k = int(singular.argmax())
@@ -208,8 +202,7 @@ class _Follower:
         for _ in range(REFINED):
             middle = (low + high) / 2
             found = solve(self.reach, last, self.target(middle)).q
-            least_here, side_here = conditioning(self.reach, found[None], self.task.rows)
-            if least_here[0] < SINGULAR or side_here[0] != side[0]:
+            if conditioning(self.reach, found[None], self.task.rows)[0] < SINGULAR:
                 high = middle
             else:
                 low = middle

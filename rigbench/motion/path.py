@@ -23,6 +23,9 @@ HOLDING = 6
 SHORTEST = 1e-6
 """Shortest line [m]."""
 
+MOST = 1e6
+"""Greatest length, angle or turn that makes sense to anyone; squares of them stay far from overflow."""
+
 
 @dataclass(frozen=True)
 class PathMotion:
@@ -121,8 +124,8 @@ def circle(
     axis = np.array(_vector(normal, "normal"))
     if not np.abs(axis).max() > 0:
         raise ValueError("the normal is not zero")
-    if not (0 < radius_m < math.inf and 0 < turns < math.inf and math.isfinite(start_deg)):
-        raise ValueError("radius_m and turns are above 0, all finite")
+    if not (0 < radius_m <= MOST and 0 < turns <= MOST and abs(start_deg) <= MOST):
+        raise ValueError(f"radius_m and turns are above 0, and with start_deg at most {MOST:g}")
     axis /= np.abs(axis).max()
     unit = _vector((axis / np.linalg.norm(axis)).tolist(), "normal")
     curve = Circle(_vector(centre_m, "centre_m"), radius_m, unit, turns, start_deg)
@@ -167,8 +170,8 @@ def middle_of_limits(arm: Arm) -> tuple[float, ...]:
 
 
 def _vector(values: Sequence[float], name: str) -> Vector:
-    if len(values) != 3 or not all(math.isfinite(value) for value in values):
-        raise ValueError(f"{name} is three finite numbers")
+    if len(values) != 3 or not all(abs(value) <= MOST for value in values):
+        raise ValueError(f"{name} is three numbers of at most {MOST:g}")
     x, y, z = (float(value) for value in values)
     return x, y, z
 

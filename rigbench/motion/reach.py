@@ -9,7 +9,6 @@ from functools import cached_property, lru_cache
 from typing import Any
 
 import numpy as np
-from numpy.typing import NDArray
 
 from rigbench.arm.arm import LINK, REVOLUTE, Arm, Floats
 from rigbench.arm.dynamics import forward_kinematics, tool_jacobian
@@ -168,19 +167,14 @@ def rank(reach: Reach, rows: int) -> int:
     return int(max((value > 1e-6).sum() for value in values))
 
 
-def conditioning(reach: Reach, q: Floats, rows: int) -> tuple[Floats, NDArray[np.bool_]]:
-    """Return how far each of the poses q (N, n) is from singular, and on which side, both (N,).
+def conditioning(reach: Reach, q: Floats, rows: int) -> Floats:
+    """Return how far each of the poses q (N, n) is from singular, (N,).
 
-    The first is the smallest singular value of the Jacobian, lengths over the arm's length (those that are
-    zero in every pose are passed over: a planar arm is not singular for being planar). The second is
-    whether its determinant is below zero, which changes as a singular pose is passed; False where an arm
-    has none.
+    That is the smallest singular value of the Jacobian, lengths over the arm's length. Those that are zero
+    in every pose are passed over: a planar arm is not singular for being planar.
     """
     jacobians = np.array([_scaled_jacobian(reach, pose, rows) for pose in q])
-    least = np.linalg.svd(jacobians, compute_uv=False)[:, rank(reach, rows) - 1]
-    if not reach.n == rows == rank(reach, rows):
-        return least, np.zeros(len(q), bool)
-    return least, np.linalg.det(jacobians) < 0
+    return np.asarray(np.linalg.svd(jacobians, compute_uv=False)[:, rank(reach, rows) - 1])
 
 
 def solve(reach: Reach, q: Floats, target: Target) -> Found:

@@ -92,8 +92,9 @@ class Grid:
         return tolerated.low if known else None
 
     def level(self, sheet: str, law: str) -> str:
-        """Say that level, or that the law is not possible there."""
-        return tolerated_words(self.tolerated(sheet, law)) if self.possible(sheet, law) else NOT_POSSIBLE
+        """Say that level, or that there is none since the law is not possible there."""
+        tolerated = self.tolerated(sheet, law)
+        return tolerated_words(tolerated) if tolerated else NOT_POSSIBLE
 
     def words(self, sheet: str, law: str, column: Column, full: bool = True) -> CellWords:
         """Put one cell into words; ``full`` names the main score beside its value."""

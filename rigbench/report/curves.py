@@ -11,7 +11,7 @@ from rigbench.report.paper import LINE, Paper
 from rigbench.report.plot import ARROW, BEYOND_WORD, DODGE, KEY, LEAD, PAD, SIZE, Plot
 from rigbench.report.style import SHEET_SIZE
 from rigbench.report.words import level
-from rigbench.report.wrapping import wrap_list, wrap_name
+from rigbench.report.wrapping import clean, settings, wrap, wrap_name
 
 __all__ = ["Curves"]
 
@@ -21,7 +21,7 @@ SLOT_PAD = 13.0
 LEAST_SLOT, MOST_SLOT = 64.0, 190.0
 NAME_MOST = 90.0  # a name of a sheet is not broken within its words below this width
 LAW_MOST = 150.0
-LEAST_STEP, MOST_STEP, STEPS = 26.0, 64.0, 200.0  # a step between levels, and all of them by preference
+LEAST_STEP, MOST_STEP, STEPS = 26.0, 100.0, 200.0  # a step between levels, and all of them by preference
 
 
 class Curves:
@@ -44,8 +44,19 @@ class Curves:
         names = sum(len(lines) * LINE * SIZE + 3 for lines in law_lines.values())
         step = min(max(STEPS / axis.steps, LEAST_STEP), MOST_STEP)
         step = max(step, (names - PAD - ARROW) / axis.steps)
-        sheet_lines = {sheet: wrap_list(sheet, slot - 8, self._measure) for sheet in self.sheets}
+        sheet_lines = self._sheet_lines(slot - 8)
         self.plot = Plot(paper, grid, axis, law_lines, sheet_lines, slot, step)
+
+    def _sheet_lines(self, width: float) -> dict[str, list[str]]:
+        """Return the sheets' names: one line each, or if that is too long for any, one for each setting."""
+        lines = {sheet: [clean(sheet)] for sheet in self.sheets}
+        if all(self._measure(line) <= width for (line,) in lines.values()):
+            return lines
+        for sheet in self.sheets:
+            *others, last = settings(sheet)
+            parts = [*(f"{part}," for part in others), last]
+            lines[sheet] = [line for part in parts for line in wrap(part, width, self._measure)]
+        return lines
 
     def _measure(self, line: str) -> float:
         return self.paper.width(line, SIZE)

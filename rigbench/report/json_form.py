@@ -18,7 +18,7 @@ def results_json(results: Results, store: str) -> dict[str, Any]:
 
     ``{"store", "runs": {"planned", "done", "failed"}, "cells": [...], "laws": [...], "break_even": [...],
     "advice"}``. A cell holds sheet, law, condition, level, draws, incomplete, pass_share, pass_low,
-    pass_high, verdict, planned (how many runs; 0 where the law is not possible in the sheet); then each
+    pass_high, verdict, planned (how many draws; 0 where the law is not possible); then each
     score by name, ``{"median", "p95", "median_low", "median_high", "p95_low", "p95_high"}`` in the unit that
     the name carries; and ``"motions"``, each with draws, passed, pass_share and its scores. What is
     infinite, or isn't there, is None: p95_high where the draws don't reach, the tolerated level's high where

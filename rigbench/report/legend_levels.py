@@ -4,10 +4,12 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable, Iterator
+from itertools import pairwise
 
 from rigbench.report.cells import Grid
 from rigbench.report.marks import mark_of
 from rigbench.report.paper import Paper
+from rigbench.report.plot import neighbours
 from rigbench.report.shades import GAUGE
 from rigbench.report.strip import LevelStrip
 from rigbench.scores.results import Tolerated
@@ -50,6 +52,8 @@ def curve_entries(paper: Paper, grid: Grid, required: str) -> Iterator[Entry]:
         yield 12, _point(paper, False), "it crosses at no level run"
     if any(grid.crossing(sheet, law) is None for sheet in results.sheets for law in results.laws):
         yield 0, None, "A curve is broken where its law is not possible or has no result."
+    if not all(neighbours(one, other) for one, other in pairwise(results.sheets)):
+        yield 0, None, "No curve goes from one sheet to another that differs in more than one setting."
 
 
 def _levels(grid: Grid) -> Iterator[Tolerated]:

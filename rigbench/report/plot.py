@@ -13,8 +13,9 @@ from rigbench.report.paper import LINE, Paper
 from rigbench.report.spreading import lanes, spread
 from rigbench.report.strip import RAIL
 from rigbench.report.words import level
+from rigbench.report.wrapping import settings
 
-__all__ = ["ARROW", "BEYOND_WORD", "DODGE", "KEY", "LEAD", "PAD", "SIZE", "Plot"]
+__all__ = ["ARROW", "BEYOND_WORD", "DODGE", "KEY", "LEAD", "PAD", "SIZE", "Plot", "neighbours"]
 
 SIZE = 8.5
 DODGE = 12.0  # between the markers of two laws in one sheet
@@ -77,14 +78,17 @@ class Plot:
         for height, said in heights:
             self.paper.text(x - 5, base - height - LINE * SIZE / 2, said, SIZE, at="right", name="axis")
         self._draw_spots(spots, x, base, first)
-        self._draw_lines(spots, x, base)
+        self._draw_lines(spots, sheets, x, base)
         self._draw_names(spots, x + self.slot * len(sheets), base)
 
     def _draw_slots(self, x: float, top: float, sheets: Sequence[str], first: int) -> None:
         for number, sheet in enumerate(sheets):
             left, below = x + number * self.slot, top + self.height
             if number % 2 == 0:
-                self.paper.box(left, top, self.slot, self.height, fill=STRIPE, name="slot", order=0.5)
+                name = f"slot-{first + number}"
+                self.paper.box(left, top, self.slot, self.height, fill=STRIPE, name=name, order=0.5)
+            if number and not neighbours(sheets[number - 1], sheet):
+                self.paper.stroke((left, top), (left, below), color=RAIL, line=1.2)
             middle, names = left + self.slot / 2, self.sheets[sheet]
             self.paper.lines(middle, below + 5, names, SIZE, at="center", name=f"sheet-{first + number}")
 
@@ -116,9 +120,13 @@ class Plot:
                     mark.bar(self.paper, x, ends, spot.open_end)
                 mark.point(self.paper, x, base - spot.at, spot.filled, f"point-{first + number}-{law}")
 
-    def _draw_lines(self, spots: Sequence[Sequence[Spot | None]], left: float, base: float) -> None:
+    def _draw_lines(
+        self, spots: Sequence[Sequence[Spot | None]], sheets: Sequence[str], left: float, base: float
+    ) -> None:
         """Join each law's markers from sheet to sheet; curves that coincide run beside each other."""
-        for number in range(len(spots[0]) - 1):
+        for number in range(len(sheets) - 1):
+            if not neighbours(sheets[number], sheets[number + 1]):
+                continue
             pieces = {law: (base - one.at, base - other.at) for law, one, other in _pairs(spots, number)}
             for (law, (start, end)), aside in zip(pieces.items(), lanes(list(pieces.values())), strict=True):
                 here, there = self._x(left, number, law), self._x(left, number + 1, law)
@@ -137,6 +145,12 @@ class Plot:
             mark_of(law).point(self.paper, x + LEAD + 4, at, filled=True)
             above = at - len(lines[law]) * LINE * SIZE / 2
             self.paper.lines(x + LEAD + KEY, above, lines[law], SIZE, name=f"curve-name-{law}")
+
+
+def neighbours(one: str, other: str) -> bool:
+    """Tell whether two sheets differ in one setting at most, so that a curve may go from one to the other."""
+    pairs = list(zip(settings(one), settings(other), strict=False))
+    return sum(mine != theirs for mine, theirs in pairs) < 2
 
 
 def _pairs(spots: Sequence[Sequence[Spot | None]], number: int) -> Iterator[tuple[int, Spot, Spot]]:

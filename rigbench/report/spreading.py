@@ -10,7 +10,7 @@ from scipy.optimize import isotonic_regression
 __all__ = ["lanes", "spread"]
 
 LANE, LANES = 1.7, 9.0  # between two lanes, and of all lanes together at most
-SAME = 0.8
+SAME = 1.0  # lines nearer than this at both ends coincide
 
 
 def spread(wanted: Sequence[float], heights: Sequence[float], top: float, bottom: float) -> list[float]:
@@ -32,11 +32,16 @@ def spread(wanted: Sequence[float], heights: Sequence[float], top: float, bottom
 
 def lanes(pieces: Sequence[tuple[float, float]]) -> list[float]:
     """Return how far to shift lines, given by their heights at both ends, so that none covers another."""
-    groups: dict[tuple[float, float], list[int]] = {}
-    for number, (start, end) in enumerate(pieces):
-        groups.setdefault((round(start / SAME), round(end / SAME)), []).append(number)
+    groups: list[list[int]] = []
+    for number, piece in enumerate(pieces):
+        near = (group for group in groups if np.allclose(pieces[group[0]], piece, rtol=0, atol=SAME))
+        found = next(near, None)
+        if found is None:
+            groups.append([number])
+        else:
+            found.append(number)
     shifts = [0.0] * len(pieces)
-    for group in groups.values():
+    for group in groups:
         for place, number in enumerate(group):
             lane = min(LANE, LANES / len(group))
             shifts[number] = lane * (place - (len(group) - 1) / 2)

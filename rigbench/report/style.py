@@ -28,7 +28,7 @@ class Style:
     full: bool
 
 
-ROOMY = Style(17, 8.5, 9.5, 11, cell_least=40, cell_most=96, law_most=130, strip=130, pad=5, full=True)
+ROOMY = Style(17, 8.5, 9.5, 11, cell_least=40, cell_most=118, law_most=130, strip=130, pad=5, full=True)
 TIGHT = Style(15, 7.5, 8.5, 10, cell_least=40, cell_most=54, law_most=120, strip=130, pad=4, full=False)
 DENSE = Style(13, 7.0, 7.5, 8.5, cell_least=36, cell_most=46, law_most=92, strip=92, pad=2.2, full=False)
 STYLES = (ROOMY, TIGHT, DENSE)

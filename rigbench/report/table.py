@@ -50,7 +50,9 @@ def _fit(column: Lines, room: int) -> Fitted:
     """Return a column with its width; what is too wide for it, or for the room there is, is broken."""
     limit = min(max(_widest(lines) for lines in column[1:]), room)
     limit = max(limit, min(HEAD_WIDTH, room))
-    broken = [[part for line in lines for part in wrap(line, limit, cell_len)] for lines in column]
+    head, *cells = column
+    broken = [[part for line in head for part in wrap_name(line, limit, cell_len)]]
+    broken += [[part for line in lines for part in wrap(line, limit, cell_len)] for lines in cells]
     return max(_widest(lines) for lines in broken), broken
 
 

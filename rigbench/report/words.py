@@ -169,10 +169,8 @@ def has_levels(results: Results) -> bool:
     return results.tolerance is not None and any(column.ladder and column.level for column in results.columns)
 
 
-def tolerated_words(tolerated: Tolerated | None) -> str:
+def tolerated_words(tolerated: Tolerated) -> str:
     """Say a tolerated level: '0.7 (0.5 to 1)', '2 or more', 'below 0.25', 'not shown yet'."""
-    if tolerated is None:
-        return ""
     low, high, value = tolerated.low, tolerated.high, tolerated.value
     if high == 0:
         return "none: misses at level 0"

@@ -5,7 +5,7 @@ from __future__ import annotations
 import re
 from collections.abc import Callable
 
-__all__ = ["clean", "wrap", "wrap_list", "wrap_name"]
+__all__ = ["clean", "settings", "wrap", "wrap_list", "wrap_name"]
 
 Measure = Callable[[str], float]
 
@@ -38,10 +38,23 @@ def wrap_name(name: str, width: float, measure: Measure) -> list[str]:
     return [*wrap(law, width, measure), *wrap(bracket + rest, width, measure)]
 
 
+def settings(name: str) -> list[str]:
+    """Return the settings in a sheet's name: 'control_hz 500, gear_ratio 50' has two, '[0, 1]' is one."""
+    parts, depth = [""], 0
+    for part in clean(name).split(", "):
+        parts[-1] = f"{parts[-1]}, {part}" if depth else part
+        depth = max(
+            depth + sum(part.count(sign) for sign in "([{") - sum(part.count(sign) for sign in ")]}"), 0
+        )
+        if not depth:
+            parts.append("")
+    return parts[:-1] if not depth else parts
+
+
 def wrap_list(name: str, width: float, measure: Measure) -> list[str]:
-    """Break a sheet's name, 'control_hz 500, gear_ratio 50': behind its commas where that does."""
+    """Break a sheet's name behind its settings where that does."""
     lines = [""]
-    parts = clean(name).split(", ")
+    parts = settings(name)
     for part in [*(f"{part}," for part in parts[:-1]), parts[-1]]:
         joined = f"{lines[-1]} {part}" if lines[-1] else part
         if measure(joined) <= width:

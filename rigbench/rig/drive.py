@@ -25,6 +25,17 @@ LuGre's bristles z (Canudas de Wit, Olsson, Astrom, Lischinsky 1995), with |v| o
 their relaxation: z+ = (z + dt v+)/(1 + dt sigma0 |v|/F), torque sigma0 z+ + sigma1 (z+ - z)/dt: linear in
 v+, so it enters the inertia and the momentum as friction of its own, without a box.
 
+Contacts push the links within the engine's step, out of the drive's sight. What they gave the joints,
+M (v - v+)/dt with v the speed that was reached, is added up and foreseen for the next step beside tau. So
+a steady load acts on rotors and dry friction as it does on the links, and a blow's whole momentum passes:
+what the rotors of M + Jr keep back arrives over the next (M + Jr)/M steps, since
+
+    M (v - v+) = dt (e+ - e),    (M + Jr) (v+ - v)/dt = tau - h + e,
+
+e the torque foreseen and e+ that which came, add up to (M + Jr) times the change of speed less dt times the
+torques that came, but for the last step's e+ - e. In the norm of M both M + Jr and a contact take part of
+a push only, so the feedback shrinks at any rotor inertia, mass or stiffness of what is touched.
+
 Left out: the rotor's gyroscopic coupling to the other links, of order 1/G.
 """
 
@@ -43,7 +54,9 @@ from rigbench.rig.rows import (
     BRISTLE_DAMPING,
     BRISTLE_STIFFNESS,
     CARRIED,
+    CONTACTS,
     COULOMB,
+    EXTERNAL,
     GEAR_LOSS,
     MOTOR,
     Q_ENGINE,
@@ -97,11 +110,13 @@ def step_drive(chain: Floats, machine: Floats, io: Floats) -> bool:
     composite_inertia(chain, placed, mass)
     newton_euler(chain, placed, v, v, False, h_engine)
     newton_euler(chain, placed, middle, middle, False, h_middle)
+    if machine[CONTACTS, 0] > 0.0:
+        _feel_contacts(io, mass, n, dt)
     for i in range(n):
         if machine[STIFFNESS, i] == 0.0:
             mass[i, i] += machine[REFLECTED, i]
     for i in range(n):
-        total = -dt * h_middle[i]
+        total = dt * (io[EXTERNAL, i] - h_middle[i])
         for j in range(n):
             total += mass[i, j] * v[j]
         momentum[i] = total
@@ -135,6 +150,14 @@ def step_drive(chain: Floats, machine: Floats, io: Floats) -> bool:
         io[CARRIED, i] = carried
     io[STEPS, 0] += 1.0
     return True
+
+
+@kernel
+def _feel_contacts(io: Floats, mass: Floats, n: int, dt: float) -> None:
+    """Add to ``io[EXTERNAL]`` what contacts gave the joints beyond what was foreseen for the last step."""
+    for i in range(n):
+        for j in range(n):
+            io[EXTERNAL, i] += mass[i, j] * (io[V_TRUE, j] - io[V_NEXT, j]) / dt
 
 
 @kernel

@@ -12,7 +12,8 @@ from rigbench.arm.arm import Arm, Floats
 __all__ = ["RESIDUAL_LIMIT", "Log"]
 
 RESIDUAL_LIMIT = 1e-6
-"""A larger residual [rad/s] means that engine and drive disagree about the machine; the run is marked."""
+"""A larger residual [rad/s] means that engine and drive disagree about the machine; the run is marked.
+Not so where contacts push the arm."""
 
 
 @dataclass(eq=False)
@@ -20,7 +21,9 @@ class Log:
     """What happened in a run; arrays end where the run did.
 
     True positions and velocities, not sensed ones, at control ticks. ``residual`` is the largest
-    difference between the velocity that the drive foresaw and the one the engine reached [rad/s].
+    difference between the velocity that the drive foresaw and the one the engine reached [rad/s]. With
+    ``contacts`` something may have touched the arm: then the difference holds the pushes of contacts,
+    and a large one says that they reached the arm, not that engine and drive disagree.
     """
 
     t: Floats  # (N,) [s]
@@ -31,9 +34,15 @@ class Log:
     torque: Floats  # (N, n) [N m], the motor's, at the joint
     limited: NDArray[bool_]  # (N, n), where the drive gave less than the law asked for
     plant: Arm
-    outcome: str  # finished, diverged or hit-stop
+    outcome: str  # finished, diverged or hit-stop; running: of an attached rig before its end
     reason: str  # in words, empty if finished
     residual: float
     law_us: float  # median time of the law in a control tick [us], of this host
     control_hz: float
     gravity: tuple[float, float, float]
+    contacts: bool = False
+
+    @property
+    def in_doubt(self) -> bool:
+        """Whether the residual says that engine and drive disagree about the machine."""
+        return not self.contacts and self.residual > RESIDUAL_LIMIT

@@ -33,9 +33,10 @@ FIRST = CLOCK + 1
     Q_ROTOR,  # rotor of an elastic joint, in the joint's measure: position half a step ahead, velocity
     V_ROTOR,
     LAST_SENSED,  # sensed position of the tick before
+    EXTERNAL,  # torque that contacts gave the joint in the step before
     STEPS,  # [0]: physics steps done
     DELAYED,  # first row of the delay line; as many as the delay takes
-) = range(FIRST, FIRST + 19)
+) = range(FIRST, FIRST + 20)
 
 (
     REFLECTED,
@@ -68,7 +69,8 @@ FIRST = CLOCK + 1
     VELOCITY_FILTER,  # [0]: share of the way to the new difference that the filter goes; 0: exact velocity
     CONTROL_PERIOD,  # [0]: [s]
     LINK_ENCODER,  # [0]: 1 where encoders sit on the link's side of an elastic joint
-) = range(30)
+    CONTACTS,  # [0]: 1 where something may touch the arm
+) = range(31)
 
 RUNAWAY = 10.0
 """A joint is beyond bounds at this many times its speed limit, or at 1000 rad/s where it has none."""
@@ -86,13 +88,14 @@ def machine_array(
     control_period: float | None = None,
     velocity_corner_hz: float | None = None,
     link_encoder: bool = False,
+    contacts: bool = False,
 ) -> Floats:
-    """Pack what the kernels need of ``arm`` (a plant), of sensing and of timing, shape (30, n).
+    """Pack what the kernels need of ``arm`` (a plant), of sensing and of timing, shape (31, n).
 
     ``dt`` and ``delay`` in s; ``velocity_corner_hz`` None for exact velocities.
     """
     drives, n = arm.drives, arm.n
-    machine = np.zeros((30, n))
+    machine = np.zeros((31, n))
     for row, values in {
         REFLECTED: drives.reflected,
         VISCOUS: drives.viscous,
@@ -127,5 +130,5 @@ def machine_array(
     machine[STEP, 0], machine[DELAY, 0], machine[CONTROL_PERIOD, 0] = dt, delay / dt, period
     if velocity_corner_hz is not None:
         machine[VELOCITY_FILTER, 0] = 1.0 - np.exp(-2.0 * np.pi * velocity_corner_hz * period)
-    machine[LINK_ENCODER, 0] = float(link_encoder)
+    machine[LINK_ENCODER, 0], machine[CONTACTS, 0] = float(link_encoder), float(contacts)
     return machine

@@ -4,16 +4,18 @@ from __future__ import annotations
 
 import hashlib
 import json
-from dataclasses import dataclass, field
+from dataclasses import astuple, dataclass, field
 from typing import Any
 
 import numpy as np
 
+from rigbench.arm.collision import collision
 from rigbench.arm.files import ArmFiles
-from rigbench.arm.mismatch import Case, Mismatch
+from rigbench.arm.mismatch import Case, Mismatch, delay_of, tilt_of
 from rigbench.laws.registry import LawChoice
 from rigbench.motion.motion import Motion
 from rigbench.rig.sampled import Sensing, Timing, inputs_of
+from rigbench.rig.scene import SceneChoice
 
 __all__ = ["NUMERICS", "Rates", "Run", "tilted"]
 
@@ -58,6 +60,26 @@ class Run:
     sensing: Sensing = field(default_factory=Sensing)
     timing: Timing = field(default_factory=Timing)
     base_tilt: tuple[float, float] = (0.0, 0.0)  # of the plant alone, about the base's x and y axes
+    scene: SceneChoice | None = None  # what else is in the world; contacts are then on
+
+    @property
+    def noisy(self) -> bool:
+        """Whether sensing or timing is random, so that draws differ whatever the plant."""
+        return self.sensing.noise_deg > 0 or self.timing.random
+
+    @property
+    def plant_delay_ms(self) -> float:
+        """The delay from tick to torque [ms] with what mismatch and case make of it."""
+        return delay_of(self.timing.delay_ms, *self._departure)
+
+    @property
+    def plant_gravity(self) -> tuple[float, float, float]:
+        """Gravity in the frame of the plant's base [m/s^2], tilted by what is declared, drawn and stated."""
+        return tilted(self.gravity, tilt_of(self.base_tilt, *self._departure))
+
+    @property
+    def _departure(self) -> tuple[Mismatch, float, tuple[str, ...], int, int, Case | None]:
+        return self.mismatch, self.level, self.sources, self.seed, self.draw or 0, self.case
 
     def inputs(self) -> dict[str, Any]:
         """Return the canonical inputs, defaults included, of which the key is the digest.
@@ -67,7 +89,6 @@ class Run:
         condition, law or draw in the experiment changes no key of the runs that were there before.
         """
         acts = self.level > 0 and self.sources != ()
-        noisy = self.sensing.noise_deg > 0 or self.timing.random
         inputs: dict[str, Any] = {
             "numerics": NUMERICS,
             "arm": self.arm.digest,
@@ -81,15 +102,20 @@ class Run:
             "gravity": list(self.gravity),
             "mismatch": self.mismatch.inputs(self.sources if acts else ()),
             "level": self.level if acts else 0.0,
-            "draw": [self.seed, self.draw] if acts or noisy else None,
+            "draw": [self.seed, self.draw] if acts or self.noisy else None,
         }
         others = {
             "case": None if self.case is None else self.case.inputs(),
             "sensing": inputs_of(self.sensing),
             "timing": inputs_of(self.timing),
             "base_tilt": list(self.base_tilt) if any(self.base_tilt) else None,
+            "scene": None if self.scene is None else self._scene_inputs(self.scene),
         }
         return inputs | {name: value for name, value in others.items() if value is not None}
+
+    def _scene_inputs(self, scene: SceneChoice) -> dict[str, Any]:
+        """Return the scene's inputs, and the arm's shapes, which count only where they can be touched."""
+        return scene.inputs() | {"shapes": [astuple(shape) for shape in collision(self.arm).shapes]}
 
     def key(self) -> str:
         """Return the run's key: a digest of all that its row depends on (hex, 40 digits)."""

@@ -83,7 +83,7 @@ def noise_of(sensing: Sensing, ticks: int, arm: Arm, seed: int, draw: int) -> Fl
 def ticks_of(timing: Timing, ticks: int, substeps: int, seed: int, draw: int) -> list[int]:
     """Return for each tick the physics step within it at which the law is called; -1 for a dropped one.
 
-    The first tick is never dropped: a controller starts with a command.
+    The first tick comes in time: a controller starts with a command.
     """
     if not timing.random:
         return [0] * ticks
@@ -91,6 +91,6 @@ def ticks_of(timing: Timing, ticks: int, substeps: int, seed: int, draw: int) ->
     late = np.floor(random.random(ticks) * (timing.jitter_percent / 100 * substeps + 1)).astype(int)
     late = np.minimum(late, substeps - 1)
     dropped = random.random(ticks) < timing.dropped_percent / 100
-    dropped[0] = False
+    late[0], dropped[0] = 0, False
     calls: list[int] = np.where(dropped, -1, late).tolist()
     return calls

@@ -297,14 +297,6 @@ def test_drives_carry_over_to_the_joint() -> None:
     assert drives.gear_ratio.tolist() == [1, 50, 50]
 
 
-def test_encoder_counts_are_noted(here: Path) -> None:
-    """What has no effect in this version is accepted and said."""
-    arm = read(ARM.replace("{coulomb: 2}", "{coulomb: 2, encoder_counts: 4096}"))
-    assert str(arm.notes[-1]) == (
-        "arm.yaml:7: drives.tilt.encoder_counts: without effect (tilt): positions are sensed exactly in this version"
-    )
-
-
 def test_impossible_base_is_a_note(here: Path) -> None:
     """What doesn't move has no dynamics, so an odd inertia in it stops nobody."""
     odd = '<link name="base"><inertial><mass value="0"/><inertia ixx="1" ixy="0" ixz="0" iyy="1" iyz="0" izz="1"/>'

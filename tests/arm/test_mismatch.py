@@ -435,7 +435,9 @@ def test_nonsense_is_refused(nonsense):
 
 def test_sources_are_those_declared_in_order():
     """A spread of 0 is declared; None is not."""
-    assert FULL.sources == tuple(field.name for field in dataclasses.fields(Mismatch))
+    fields = tuple(field.name for field in dataclasses.fields(Mismatch))
+    assert Mismatch(**dict.fromkeys(fields, 0) | {"payload": FULL.payload}).sources == fields
+    assert FULL.sources == tuple(name for name in fields if getattr(FULL, name) is not None)
     assert Mismatch(viscous_percent=0, link_cog_mm=1).sources == ("link_cog_mm", "viscous_percent")
     assert Mismatch().sources == ()
 

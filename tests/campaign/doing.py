@@ -64,6 +64,9 @@ class FakeRun:
     motion: FakeMotion = FakeMotion()
     rates: FakeRates = FakeRates()
 
+    def inputs(self) -> dict[str, Any]:
+        return {"name": self.name}
+
     def key(self) -> str:
         return hashlib.blake2b(self.name.encode(), digest_size=20).hexdigest()
 

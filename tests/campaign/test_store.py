@@ -223,11 +223,11 @@ def test_other_files_are_refused_and_left_as_they_are(
 
 
 def test_damage_within_is_found_before_more_is_added(path: Path, make_plan: PlanMaker) -> None:
-    """Scribble over pages of the runs: a writer is refused at once, a reader when it gets there."""
+    """Scribble over a page of the runs: a writer is refused at once, a reader when it gets there."""
     filled(path, make_plan(draws=200))
     text = bytearray(path.read_bytes())
-    middle = len(text) // 2 // 4096 * 4096
-    text[middle : middle + 3 * 4096] = b"\xff" * 3 * 4096
+    page = text.rfind(b'{"tool_peak_mm": 1.0}') // 4096 * 4096
+    text[page : page + 4096] = b"\xff" * 4096
     path.write_bytes(text)
     with pytest.raises(StoreError, match="is damaged"):
         Store.open_for_writing(path, "Trays")

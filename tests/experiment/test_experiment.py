@@ -242,8 +242,7 @@ def test_a_source_of_nothing_is_noted(load: Load, folder: Path) -> None:
 
 def test_notes_of_the_arm_are_passed_on(load: Load, folder: Path) -> None:
     """What the arm files note, the experiment notes."""
-    text = (
-        (folder / "arm.yaml").read_text("utf-8").replace("coulomb: 3.0", "coulomb: 3.0, encoder_counts: 100")
-    )
-    (folder / "arm.yaml").write_text(text, encoding="utf-8")
-    assert [Path(note.file).name for note in load().notes] == ["arm.yaml"]
+    mesh = '<visual><geometry><mesh filename="missing.stl"/></geometry></visual>'
+    text = (folder / "arm.urdf").read_text("utf-8").replace('"base"/>', f'"base">{mesh}</link>', 1)
+    (folder / "arm.urdf").write_text(text, encoding="utf-8")
+    assert [Path(note.file).name for note in load().notes] == ["arm.urdf"]

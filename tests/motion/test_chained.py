@@ -177,6 +177,15 @@ def test_the_times_of_faults_count_the_joins(planar2):
     chained([("ramp", moving)], planar2)  # alone it meets nothing
 
 
+def test_what_all_but_meets_meets(planar2):
+    """A gap of 1e-7 rad, as a solved path leaves it, is none; 1e-5 rad is one."""
+    close = ViaMotion(((1.0 + 1e-7, 1.0), (0.5, 0.5)), 0.4, 0.1)
+    assert chained([("out", OUT), ("close", close)], planar2, join_s=0.4).duration_s == pytest.approx(1.6)
+    chained([("out", OUT), ("close", close)], planar2)
+    with pytest.raises(Unreachable, match=r"0\.000573 deg"):
+        chained([("out", OUT), ("off", ViaMotion(((1.0 + 1e-5, 1.0), (0.5, 0.5)), 0.4))], planar2)
+
+
 def test_a_table_from_rest_to_rest_can_be_joined(planar2):
     """The spline through a plan sampled at 50 Hz ends on a trace of velocity, which is no motion."""
     t = np.arange(0, 1.0001, 0.02)

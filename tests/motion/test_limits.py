@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from math import radians
 
 import numpy as np
@@ -16,10 +17,6 @@ def make_arm(kinds=(REVOLUTE, REVOLUTE, PRISMATIC), lower=None, upper=None, spee
     """An arm of which only joints and limits matter."""
     n = len(kinds)
     limit = {"lower": -np.inf, "upper": np.inf}
-    arrays = {
-        name: np.zeros(n)
-        for name in ("gear_ratio", "rotor_inertia", "viscous", "coulomb", "static", "stribeck_speed")
-    }
     return Arm(
         name="mock",
         joints=tuple(f"j{i + 1}" for i in range(n)),
@@ -33,12 +30,7 @@ def make_arm(kinds=(REVOLUTE, REVOLUTE, PRISMATIC), lower=None, upper=None, spee
         tool_position=np.zeros(3),
         lower=np.array(lower if lower is not None else [limit["lower"]] * n),
         upper=np.array(upper if upper is not None else [limit["upper"]] * n),
-        drives=Drives(
-            **arrays,
-            torque_limit=np.full(n, np.inf),
-            speed_limit=np.array(speed if speed is not None else [np.inf] * n),
-            torque_lag=np.zeros(n),
-        ),
+        drives=replace(Drives.ideal(n), speed_limit=np.array(speed if speed is not None else [np.inf] * n)),
     )
 
 

@@ -124,6 +124,15 @@ def test_the_tool_keeps_to_the_line(tray6):
     assert (motion.reference(np.zeros(1))[0] == LEVEL).all()  # so it follows a motion that ends there
 
 
+def test_a_line_may_start_elsewhere(tray6):
+    """With from_m it runs from there to the end, and both are in the inputs."""
+    ends = {"from_m": [0.5, -0.1, 0.3], "to_m": [0.4, 0.2, 0.4]}
+    motion = line(tray6, LEVEL, **ends)
+    np.testing.assert_allclose(tool(tray6, motion, [0.0, 1.0])[0], list(ends.values()), atol=1e-9)
+    assert motion.inputs()["start"] == ends["from_m"]
+    assert motion.inputs()["end"] == ends["to_m"]
+
+
 @pytest.mark.parametrize("rpy", [(0, 0, 40), (10, -20, 30), (0, 15, 0)])
 def test_an_orientation_given_is_kept(tray6, rpy):
     """It is roll, pitch, yaw about the fixed axes, and overrides that of the near pose."""
@@ -145,10 +154,10 @@ def test_a_free_orientation_turns(tray6):
 
 
 def test_a_closed_circle_comes_back(tray6):
-    """A six-axis arm ends a whole turn in the position that it started from, to the last bit."""
+    """A six-axis arm ends a whole turn in the position that it started from, to what the search leaves."""
     motion = circle(tray6, LEVEL, **RIM)
     q, _, _ = motion.reference(np.array([0.0, motion.duration_s]))
-    np.testing.assert_allclose(q[1], q[0], atol=1e-15)
+    np.testing.assert_allclose(q[1], q[0], atol=1e-11)
     half = circle(tray6, LEVEL, **RIM, turns=0.5)
     assert half.duration_s == pytest.approx(1.3)
     np.testing.assert_allclose(tool(tray6, half, [1.0])[0], [[0.33, 0, 0.4]], atol=1e-9)
@@ -243,6 +252,16 @@ def test_passing_through_a_stretched_wrist_says_when(tray6):
     assert "orientation: free" in caught.value.expected
 
 
+def test_a_singular_pose_between_the_solved_points_is_found(tray6, monkeypatch):
+    """The joint path is also looked at between the points at which it was solved, however coarse they are."""
+    start, end = np.radians([0, -60, 90, 0, 30, 0]), np.radians([0, -35, 115, 0, -20, 0])
+    to = Reach.of(tray6).tool(end).position.tolist()
+    monkeypatch.setattr("rigbench.motion.follow.PARTS", 8)
+    monkeypatch.setattr("rigbench.motion.follow.ACCURATE", 1.0)
+    with pytest.raises(Unreachable, match="singular pose"):
+        line(tray6, start.tolist(), to_m=to)
+
+
 def test_a_start_out_of_reach_says_by_how_much(planar2, tray6):
     """A circle beside the planar arm's plane is 50 mm off, at 0 s; one too far out likewise."""
     beside = WHEEL | {"centre_m": [0.5, 0.05, 0.2]}
@@ -259,7 +278,8 @@ def test_a_circle_that_leaves_the_plane_says_when(planar2):
     """A circle that starts in the planar arm's plane and tilts out of it ends at once: by 1e-9 m of 0.1 m."""
     with pytest.raises(Unreachable, match="can't lead the tool on") as caught:
         circle(planar2, (0.2, 1.0), **(WHEEL | {"normal": [0, 0.8, 0.6]}))
-    assert caught.value.at_s < 0.01
+    # 1e-9 of the arm's length of 0.9 m are left behind in 0.8 ms, the finest step that is tried takes 3 ms
+    assert caught.value.at_s < 0.005
 
 
 def test_a_line_without_length_is_refused(tray6):
@@ -326,13 +346,11 @@ def test_an_arm_with_slides_follows_too(planar2):
 
 
 def test_lengths_in_the_wrong_unit_are_a_fault_like_any_other(planar2):
-    """Millimetres given as metres, and numbers that no arm has use for, are out of reach by so much."""
+    """Millimetres given as metres are out of reach by so much."""
     with pytest.raises(Unreachable, match=r"773\.1 m off"):
         circle(planar2, (0.2, 1.0), **(WHEEL | {"centre_m": [650, 0, 420]}))
-    with pytest.raises(Unreachable, match="can't bring the tool"):
-        circle(planar2, (0.2, 1.0), **(WHEEL | {"centre_m": [1e200, 0, -1e300]}))
     with pytest.raises(Unreachable, match="can't lead the tool on"):
-        line(planar2, (0.2, 1.0), to_m=[1e300, 0, 0])
+        line(planar2, (0.2, 1.0), to_m=[1e6, 0, 0])
 
 
 def test_the_middle_of_the_limits(planar2):
@@ -352,6 +370,7 @@ def test_it_is_a_value(tray6):
     assert pickle.dumps(again) == text
     same = circle(tray6, LEVEL, **(RIM | {"centre_m": (0.45, -0.0, 0.4), "normal": [0, 0, 5]}), turns=1)
     assert json.dumps(same.inputs()) == json.dumps(motion.inputs())
+    assert circle(tray6, LEVEL, **(RIM | {"normal": [0, 0, 1e-300]})) == motion
     assert line(tray6, LEVEL, to_m=[0.4, 0, 0.3]).inputs()["start"] is None
 
 
@@ -370,6 +389,8 @@ def test_whatever_differs_is_in_the_inputs(tray6, other):
     assert circle(tray6, elsewhere, **RIM).inputs() != motion.inputs()
     longer = replace(tray6, tool_position=tray6.tool_position + np.array([0.01, 0, 0]))
     assert circle(longer, LEVEL, **RIM).inputs() != motion.inputs()
+    twice = circle(tray6, LEVEL, **(RIM | {"turn_s": 1.0}), turns=2)  # in the same time
+    assert twice.inputs() != motion.inputs()
 
 
 def test_the_joint_path_is_solved_once_whatever_the_times(tray6):
@@ -405,6 +426,8 @@ def test_another_process_gives_the_same_bits(tray6, tmp_path):
         {"normal": [0, 0, 0]},
         {"normal": [0, 1]},
         {"centre_m": [0, 0, float("nan")]},
+        {"centre_m": [0, 1e300, 0]},
+        {"start_deg": float("inf")},
         {"radius_m": 0},
         {"turns": 0},
         {"turn_s": 0},
@@ -418,7 +441,7 @@ def test_another_process_gives_the_same_bits(tray6, tmp_path):
 )
 def test_nonsense_is_refused(tray6, nonsense):
     """What the declaration should have caught is a mistake of the caller."""
-    with pytest.raises(ValueError, match=r"not zero|finite|orientation"):
+    with pytest.raises(ValueError, match=r"not zero|at most|finite|orientation"):
         circle(tray6, LEVEL, **(RIM | nonsense))
     with pytest.raises(ValueError, match="near"):
         circle(tray6, LEVEL[:5], **RIM)

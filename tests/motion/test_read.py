@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import contextlib
 import time
+from dataclasses import replace
 from math import radians
 
 import numpy as np
@@ -21,10 +22,6 @@ INF = np.inf
 
 def make_arm(lower=(-INF, -INF, -INF), upper=(INF, INF, INF), speed=(INF, INF, INF)) -> Arm:
     """An arm of base, elbow and slide (prismatic), of which only names and limits matter."""
-    arrays = {
-        name: np.zeros(3)
-        for name in ("gear_ratio", "rotor_inertia", "viscous", "coulomb", "static", "stribeck_speed")
-    }
     return Arm(
         name="mock",
         joints=("base", "elbow", "slide"),
@@ -38,9 +35,7 @@ def make_arm(lower=(-INF, -INF, -INF), upper=(INF, INF, INF), speed=(INF, INF, I
         tool_position=np.zeros(3),
         lower=np.array(lower),
         upper=np.array(upper),
-        drives=Drives(
-            **arrays, torque_limit=np.full(3, INF), speed_limit=np.array(speed), torque_lag=np.zeros(3)
-        ),
+        drives=replace(Drives.ideal(3), speed_limit=np.array(speed)),
     )
 
 

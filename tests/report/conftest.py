@@ -3,11 +3,18 @@
 from __future__ import annotations
 
 import math
+import re
 from collections.abc import Callable, Collection, Sequence
 from dataclasses import replace
 
+import numpy as np
 import pytest
+from matplotlib.figure import Figure
+from matplotlib.lines import Line2D
+from matplotlib.patches import Rectangle
+from matplotlib.transforms import Bbox
 
+from rigbench.report.matrix import text_boxes
 from rigbench.scores.results import (
     Cell,
     Column,
@@ -122,7 +129,9 @@ def build(
             ladder = []
             if (sheet, law) in impossible:
                 cells += [not_possible(sheet, law, column, tolerance) for column in heads]
-                standings.append(LawStanding(sheet, law, Tolerated(None, 0.0, math.inf) if tolerance else None))
+                standings.append(
+                    LawStanding(sheet, law, Tolerated(None, 0.0, math.inf) if tolerance else None)
+                )
                 continue
             for place, column in enumerate(heads):
                 harm = (column.level or 0.2) * (1 + 0.4 * row) * (1.0 if column.ladder else 0.4)
@@ -173,3 +182,76 @@ def make_results() -> Callable[..., Results]:
 @pytest.fixture
 def make_cell() -> Callable[..., Cell]:
     return cell_of
+
+
+class Look:
+    """What can be seen on a figure."""
+
+    @staticmethod
+    def said(figure: Figure) -> str:
+        """All text on the figure, in reading order of drawing."""
+        return " ".join(text.get_text() for text, _ in text_boxes(figure))
+
+    @staticmethod
+    def texts(figure: Figure, prefix: str) -> dict[str, tuple[str, Bbox]]:
+        """The texts whose name begins so, with their extents in points, by name."""
+        named = ((str(text.get_gid() or ""), text.get_text(), box) for text, box in text_boxes(figure))
+        return {name: (said, box) for name, said, box in named if name.startswith(prefix)}
+
+    @staticmethod
+    def rectangles(figure: Figure, prefix: str) -> dict[str, Rectangle]:
+        """The rectangles whose name begins so, by name."""
+        found = figure.findobj(lambda a: isinstance(a, Rectangle) and (a.get_gid() or "").startswith(prefix))
+        return {str(patch.get_gid()): patch for patch in found if isinstance(patch, Rectangle)}
+
+    @staticmethod
+    def lines(figure: Figure, prefix: str) -> dict[str, list[Line2D]]:
+        """The lines and markers whose name begins so, by name, in points from the upper left corner."""
+        found: dict[str, list[Line2D]] = {}
+        for line in figure.findobj(Line2D):
+            if (line.get_gid() or "").startswith(prefix):
+                found.setdefault(str(line.get_gid()), []).append(line)
+        return found
+
+    @staticmethod
+    def extent(figure: Figure, patch: Rectangle) -> Bbox:
+        """A rectangle's extent in points, as text_boxes gives those of text."""
+        x, y, width, height = patch.get_x(), patch.get_y(), patch.get_width(), patch.get_height()
+        top = figure.get_size_inches()[1] * 72
+        return Bbox([[x, top - y - height], [x + width, top - y]])
+
+    @classmethod
+    def tidy(cls, figure: Figure) -> None:
+        """No two texts overlap, nor do two cells; none leaves the figure or its cell, and none is under 7 pt."""
+        boxes = text_boxes(figure)
+        width, height = figure.get_size_inches() * 72
+        edges = np.array([box.extents for _, box in boxes])
+        assert edges[:, :2].min() >= 0
+        assert edges[:, 2].max() <= width
+        assert edges[:, 3].max() <= height
+        assert min(text.get_fontsize() for text, _ in boxes) >= 7
+        meeting = [(boxes[i][0].get_text(), boxes[j][0].get_text()) for i, j in _meeting(edges)]
+        assert not meeting
+        cells = {name: cls.extent(figure, cell) for name, cell in cls.rectangles(figure, "cell-").items()}
+        assert cells
+        assert not _meeting(np.array([cell.extents for cell in cells.values()]))
+        for text, box in boxes:
+            place = re.match(r"text-(\d+-\d+-\d+)-", str(text.get_gid()))
+            if place:
+                cell = cells[f"cell-{place[1]}"]
+                assert cell.x0 <= box.x0
+                assert box.x1 <= cell.x1
+                assert cell.y0 <= box.y0
+                assert box.y1 <= cell.y1
+
+
+def _meeting(boxes: np.ndarray) -> list[tuple[int, int]]:
+    """Which of the boxes (left, low, right, high) overlap."""
+    left, low, right, high = boxes.T
+    meet = (left[:, None] < right) & (left < right[:, None]) & (low[:, None] < high) & (low < high[:, None])
+    return [(int(i), int(j)) for i, j in np.argwhere(np.triu(meet, 1))]
+
+
+@pytest.fixture
+def look() -> type[Look]:
+    return Look

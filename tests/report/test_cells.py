@@ -8,7 +8,7 @@ from dataclasses import replace
 
 import pytest
 
-from rigbench.report.cells import Grid, laws_in_order
+from rigbench.report.cells import Grid
 from rigbench.scores.results import Cell, Column, LawStanding, Results, Tolerance, Tolerated
 
 NOMINAL = Column("nominal", 0.0, random=False, ladder=True)
@@ -99,47 +99,6 @@ def test_one_value_alone_makes_a_scale(say: Callable[..., Grid], median: float) 
     assert words.ink == (1.0 if math.isinf(median) else 0.0)
 
 
-def standing(law: str, value: float | None, low: float, high: float) -> LawStanding:
-    return LawStanding("", law, Tolerated(value, low, high))
-
-
-def test_rows_stand_by_tolerated_level(make_results: Callable[..., Results]) -> None:
-    """Best first: never missed, then by level; what misses at level 0 comes last; ties as declared."""
-    results = make_results(["a", "b", "c", "d", "e", "f"], 4)
-    results = replace(
-        results,
-        standings=(
-            standing("a", 0.0, 0.0, 0.0),
-            standing("b", 0.7, 0.5, 1.0),
-            standing("c", None, 1.0, math.inf),
-            standing("d", 0.7, 0.5, 1.0),
-            standing("e", None, 2.0, math.inf),
-            standing("f", 0.9, 0.5, math.inf),
-        ),
-    )
-    assert laws_in_order(results, "") == ("e", "c", "f", "b", "d", "a")
-
-
-def test_an_undecided_law_is_placed_by_its_shares(
-    make_results: Callable[..., Results], make_cell: Callable[..., Cell]
-) -> None:
-    """With too few draws to show anything, a law that always passed stands above one that fell short."""
-    results = make_results(["bad", "good"], [NOMINAL, TOGETHER])
-    cells = [
-        make_cell("", law, column, passed=passed if column.random else 1, draws=8 if column.random else 1)
-        for law, passed in (("bad", 7), ("good", 8))
-        for column in results.columns
-    ]
-    undecided = (standing("bad", None, 0.0, math.inf), standing("good", None, 0.0, math.inf))
-    assert laws_in_order(replace(results, cells=tuple(cells), standings=undecided), "") == ("good", "bad")
-
-
-def test_without_a_tolerance_rows_stand_as_declared(make_results: Callable[..., Results]) -> None:
-    """There is nothing to sort by."""
-    results = make_results(5, 3, tolerance=False)
-    assert laws_in_order(results, "") == results.laws
-
-
 def test_the_limit_of_another_score_is_not_the_main_one(say: Callable[..., Grid]) -> None:
     """With a limit on the angle, the cells show the angle, or say that there is none."""
     results = replace(
@@ -149,3 +108,50 @@ def test_the_limit_of_another_score_is_not_the_main_one(say: Callable[..., Grid]
     exact = say(NOMINAL, passed=1, draws=1).results
     exact = replace(exact, tolerance=Tolerance({"tool_angle_peak_deg": 0.5}))
     assert Grid(exact).words("", "mine", NOMINAL).lines == ("no tool angle peak", "one exact run")
+
+
+@pytest.mark.parametrize("tolerance", [True, False])
+def test_a_law_that_is_not_possible_says_so_and_nothing_else(
+    make_results: Callable[..., Results], tolerance: bool
+) -> None:
+    """No figure, no verdict, no shade, no count of what lacks, and no tolerated level."""
+    results = make_results(["mine", "b"], 3, tolerance=tolerance, impossible=[("", "mine")])
+    results = replace(results, cells=tuple(replace(c, incomplete=4) for c in results.cells))
+    grid = Grid(results)
+    for column in results.columns:
+        words = grid.words("", "mine", column)
+        assert (words.head, words.figure, words.unit, words.interval) == ("", "", "", "")
+        assert (words.lines, words.ink, words.possible) == (("not possible",), None, False)
+    assert grid.level("", "mine") == "not possible"
+    assert not grid.possible("", "mine")
+    assert grid.possible("", "b")
+
+
+@pytest.mark.parametrize(
+    ("level", "crossing"),
+    [
+        (Tolerated(0.3, 0.25, 0.5), 0.3),
+        (Tolerated(None, 0.5, math.inf), math.inf),
+        (Tolerated(None, 0.0, math.inf), math.inf),
+        (Tolerated(None, 0.0, 0.5), 0.0),
+        (Tolerated(0.0, 0.0, 0.0), 0.0),
+        (None, None),
+    ],
+)
+def test_where_the_share_crosses(
+    make_results: Callable[..., Results], level: Tolerated | None, crossing: float | None
+) -> None:
+    """At the point estimate; beyond all levels where the share starts above the required one and stays."""
+    results = make_results(["mine"], 4)
+    results = replace(results, standings=(LawStanding("", "mine", level),))
+    assert Grid(results).crossing("", "mine") == crossing
+
+
+def test_nothing_run_crosses_nowhere(make_results: Callable[..., Results]) -> None:
+    """An estimate takes a result."""
+    assert Grid(make_results(["mine"], 4, draws=0)).crossing("", "mine") is not None  # nominal has one
+    results = make_results(["mine"], 4, draws=1, incomplete=1)
+    none = replace(
+        results, cells=tuple(replace(c, draws=0, pass_share=None, verdict="open") for c in results.cells)
+    )
+    assert Grid(none).crossing("", "mine") is None

@@ -35,8 +35,9 @@ def test_the_document_has_its_declared_shape(make_results: Callable[..., Results
         (c.sheet, c.law, c.condition) for c in results.cells
     ]
     cell, source = document["cells"][1], results.cells[1]
-    assert list(cell)[:10] == [
+    assert list(cell)[:11] == [
         "sheet", "law", "condition", "level", "draws", "incomplete", "pass_share", "pass_low", "pass_high", "verdict",
+        "planned",
     ]  # fmt: skip
     assert (cell["draws"], cell["pass_low"], cell["verdict"]) == (128, source.pass_low, source.verdict)
     peak = source.measures["tool_peak_mm"]
@@ -92,3 +93,15 @@ def test_without_a_tolerance_there_is_no_verdict(make_results: Callable[..., Res
         assert cell["motions"]["load tray"]["pass_share"] is None
         assert cell["tool_peak_mm"]["median"] > 0
     assert all(law["tolerated_level"] is None for law in document["laws"])
+
+
+def test_what_is_not_possible_has_nothing_planned(make_results: Callable[..., Results]) -> None:
+    """No verdict and no level either; elsewhere the number that is planned."""
+    results = make_results(2, 3, sheets=("a", "b"), impossible=[("b", "computed torque")])
+    results = replace(results, cells=tuple(replace(c, planned=c.planned and c.draws) for c in results.cells))
+    document = results_json(results, "store")
+    for cell in document["cells"]:
+        there = (cell["sheet"], cell["law"]) != ("b", "computed torque")
+        assert cell["planned"] == (cell["draws"] if there else 0)
+        assert (cell["verdict"] is None) != there
+    assert [law["tolerated_level"] is None for law in document["laws"]] == [False, False, True, False]

@@ -9,18 +9,18 @@ import sys
 from collections.abc import Callable
 from dataclasses import replace
 from pathlib import Path
+from typing import Any
 
 import matplotlib
 import numpy as np
 import pytest
 from matplotlib.colors import to_rgb
-from matplotlib.figure import Figure
 from matplotlib.image import imread
-from matplotlib.patches import Polygon, Rectangle
-from matplotlib.transforms import Bbox
+from matplotlib.patches import Polygon
 
 from rigbench.errors import InputFaults, StoreError
 from rigbench.report import matrix
+from rigbench.report.cells import Grid
 from rigbench.report.matrix import matrix_figure, matrix_picture, text_boxes
 from rigbench.report.paper import INK, Paper
 from rigbench.report.shades import shade
@@ -33,62 +33,19 @@ LONG_COLUMN = "a condition_of_a_name_without_an_end_that_nobody_should_have_give
 SIZES = [(1, 1), (1, 2), (2, 2), (4, 9), (12, 20)]
 
 
-def said(figure: Figure) -> str:
-    """All text on the figure, in reading order of drawing."""
-    return " ".join(text.get_text() for text, _ in text_boxes(figure))
-
-
-def rectangles(figure: Figure, prefix: str) -> dict[str, Rectangle]:
-    """The rectangles whose name begins so, by name."""
-    found = figure.findobj(lambda a: isinstance(a, Rectangle) and (a.get_gid() or "").startswith(prefix))
-    return {str(patch.get_gid()): patch for patch in found if isinstance(patch, Rectangle)}
-
-
-def extent(figure: Figure, patch: Rectangle) -> Bbox:
-    """A rectangle's extent in points, as text_boxes gives those of text."""
-    x, y, width, height = patch.get_x(), patch.get_y(), patch.get_width(), patch.get_height()
-    top = figure.get_size_inches()[1] * 72
-    return Bbox([[x, top - y - height], [x + width, top - y]])
-
-
-def assert_tidy(figure: Figure) -> None:
-    """No two texts overlap, none leaves the figure or the cell it belongs to, and none is under 7 pt."""
-    boxes = text_boxes(figure)
-    width, height = figure.get_size_inches() * 72
-    edges = np.array([box.extents for _, box in boxes])
-    assert edges[:, :2].min() >= 0
-    assert edges[:, 2].max() <= width
-    assert edges[:, 3].max() <= height
-    assert min(text.get_fontsize() for text, _ in boxes) >= 7
-    left, low, right, high = edges.T
-    meet = (left[:, None] < right) & (left < right[:, None]) & (low[:, None] < high) & (low < high[:, None])
-    pairs = [(boxes[i][0].get_text(), boxes[j][0].get_text()) for i, j in np.argwhere(np.triu(meet, 1))]
-    assert not pairs
-    cells = rectangles(figure, "cell-")
-    assert cells
-    for text, box in boxes:
-        place = re.match(r"text-(\d+-\d+-\d+)-", str(text.get_gid()))
-        if place:
-            cell = extent(figure, cells[f"cell-{place[1]}"])
-            assert cell.x0 <= box.x0
-            assert box.x1 <= cell.x1
-            assert cell.y0 <= box.y0
-            assert box.y1 <= cell.y1
-
-
 @pytest.mark.parametrize("tolerance", [True, False])
 @pytest.mark.parametrize(("laws", "columns"), SIZES)
 def test_nothing_overlaps_at_any_extent(
-    make_results: Callable[..., Results], laws: int, columns: int, tolerance: bool
+    look: Any, make_results: Callable[..., Results], laws: int, columns: int, tolerance: bool
 ) -> None:
     """From 1 x 1 to 12 x 20, with incomplete, unfinished and best cells among them."""
     results = make_results(laws, columns, tolerance=tolerance, incomplete=12, unstable=True)
-    assert_tidy(matrix_figure(results, DATE))
+    look.tidy(matrix_figure(results, DATE))
 
 
 @pytest.mark.parametrize("shape", [(1, 1), (3, 6), (12, 20)])
 def test_long_names_are_broken_and_not_cut(
-    make_results: Callable[..., Results], shape: tuple[int, int]
+    look: Any, make_results: Callable[..., Results], shape: tuple[int, int]
 ) -> None:
     """Every character of a long name stands on the sheet, and still nothing overlaps."""
     laws = [f"{LONG} {number}" for number in range(shape[0])]
@@ -105,8 +62,8 @@ def test_long_names_are_broken_and_not_cut(
         advice=f"{LONG} is better. " * 8,
     )
     figure = matrix_figure(results, DATE)
-    assert_tidy(figure)
-    letters = re.sub(r"\s", "", said(figure))
+    look.tidy(figure)
+    letters = re.sub(r"\s", "", look.said(figure))
     for name in (*laws, *(column.name for column in columns), results.title, results.arm, *results.motions):
         assert re.sub(r"\s", "", name) in letters
 
@@ -114,30 +71,19 @@ def test_long_names_are_broken_and_not_cut(
 @pytest.mark.parametrize(
     "name", ["$x^2$", "$\\frac{$", "a\nb\tc\x1b[0m", "計算トルク", "\\alpha & 50 %", "🙂", "ÀÉÎ gjpqy"]
 )
-def test_any_name_can_be_drawn(make_results: Callable[..., Results], name: str) -> None:
+def test_any_name_can_be_drawn(look: Any, make_results: Callable[..., Results], name: str) -> None:
     """Formula signs are text, control characters blanks, and signs without a glyph no reason to fail."""
     results = make_results([name, "b"], 3, title=name, sheets=(name, "other"))
     figure = matrix_figure(results, DATE)
-    assert_tidy(figure)
+    look.tidy(figure)
     if name.isprintable():
-        assert said(figure).count(name) >= 4
+        assert look.said(figure).count(name) >= 4
 
 
-def test_sheets_stand_below_each_other(make_results: Callable[..., Results]) -> None:
-    """Each has its name, its own rows and its own strip."""
-    results = make_results(3, 4, sheets=("gear_ratio 50", "gear_ratio 100", "gear_ratio 200"))
-    figure = matrix_figure(results, DATE)
-    assert_tidy(figure)
-    tops = [next(b.y0 for t, b in text_boxes(figure) if t.get_text() == sheet) for sheet in results.sheets]
-    assert tops == sorted(tops, reverse=True)
-    assert len(rectangles(figure, "cell-")) == 36
-    assert said(figure).count("tolerated level") == 4  # three strips and the legend
-
-
-def test_what_was_run_is_on_the_sheet(make_results: Callable[..., Results]) -> None:
+def test_what_was_run_is_on_the_sheet(look: Any, make_results: Callable[..., Results]) -> None:
     """Title, arm, motions, draws, tolerance with units, required share, counts, date and advice."""
     results = make_results(4, 9, incomplete=3)
-    text = said(matrix_figure(results, DATE))
+    text = look.said(matrix_figure(results, DATE))
     for part in (
         results.title, "Arm: tray6", "Motions: load tray, rim", "128 draws", "tool peak at most 3 mm",
         "95 % of the draws must keep it", f"{results.planned} runs planned", f"{results.done} done", "2 failed",
@@ -146,13 +92,13 @@ def test_what_was_run_is_on_the_sheet(make_results: Callable[..., Results]) -> N
         assert part in text
 
 
-def test_the_legend_explains_what_occurs_and_no_more(make_results: Callable[..., Results]) -> None:
+def test_the_legend_explains_what_occurs_and_no_more(look: Any, make_results: Callable[..., Results]) -> None:
     """An exact result speaks of no interval; without best or incomplete cells nobody reads of them."""
-    exact = said(matrix_figure(make_results(2, 1, best=False), DATE))
+    exact = look.said(matrix_figure(make_results(2, 1, best=False), DATE))
     assert not re.search("interval|draws|best|incomplete|tolerated level", exact)
     assert "open" not in exact
-    assert "open: no result" in said(matrix_figure(make_results(3, 1, incomplete=1), DATE))
-    full = said(matrix_figure(make_results(4, 9, incomplete=3), DATE))
+    assert "open: no result" in look.said(matrix_figure(make_results(3, 1, incomplete=1), DATE))
+    full = look.said(matrix_figure(make_results(4, 9, incomplete=3), DATE))
     assert all(
         word in full for word in ("interval", "best: better", "incomplete: draws", "tolerated level: ")
     )
@@ -191,7 +137,7 @@ def test_the_scale_has_one_hue() -> None:
 
 
 def test_verdicts_differ_by_word_and_by_shape(
-    make_results: Callable[..., Results], make_cell: Callable[..., Cell]
+    look: Any, make_results: Callable[..., Results], make_cell: Callable[..., Cell]
 ) -> None:
     """Without any colour: the word, and a gauge that is full, half full or empty."""
     column = Column("together 1", 1.0, random=True, ladder=True)
@@ -202,7 +148,7 @@ def test_verdicts_differ_by_word_and_by_shape(
     )
     levels = tuple(LawStanding("", law, None) for law in "abc")
     figure = matrix_figure(replace(results, cells=cells, standings=levels), DATE)
-    gauges = rectangles(figure, "gauge-")
+    gauges = look.rectangles(figure, "gauge-")
     filled = []
     for row in range(3):
         gauge, full = gauges[f"gauge-0-{row}-0"], gauges.get(f"gauge-0-{row}-0-full")
@@ -233,23 +179,25 @@ def test_the_axis_of_levels_rises_through_the_levels_that_were_run(
     make_results: Callable[..., Results],
 ) -> None:
     """The levels stand at equal distances, others between them in proportion, the last short of the arrow."""
-    strip = LevelStrip(Paper(), make_results(1, 5), 8)
-    assert strip.levels == [0, 0.25, 0.5, 1, 1.5]
-    places = [strip.place(100, at) for at in strip.levels]
+    strip = LevelStrip(Paper(), Grid(make_results(1, 5)), 8)
+    assert strip.axis.levels == [0, 0.25, 0.5, 1, 1.5]
+    places = [strip.place(100, at) for at in strip.axis.levels]
     assert np.diff(places) == pytest.approx(np.diff(places)[0])
     assert strip.place(100, 0.75) == pytest.approx((places[2] + places[3]) / 2)
     assert places[0] > 100
     assert places[-1] < 100 + strip.width - 10
 
 
-def test_bars_show_the_interval_and_arrows_an_open_end(make_results: Callable[..., Results]) -> None:
+def test_bars_show_the_interval_and_arrows_an_open_end(
+    look: Any, make_results: Callable[..., Results]
+) -> None:
     """A bar goes from shown to keep to shown to miss; where nothing was shown to miss it is an arrow."""
     results = make_results(["a", "b"], 5)
     levels = (Tolerated(None, 0.5, float("inf")), Tolerated(0.4, 0.25, 1.0))
     standings = tuple(LawStanding("", law, level) for law, level in zip("ab", levels, strict=True))
     figure = matrix_figure(replace(results, standings=standings), DATE)
     ticks = {t.get_text(): b.x0 / 2 + b.x1 / 2 for t, b in text_boxes(figure) if t.get_ha() == "center"}
-    bars = rectangles(figure, "bar-")
+    bars = look.rectangles(figure, "bar-")
     closed, arrow = bars["bar-0-1"], bars["bar-0-0"]
     ends = [closed.get_x(), closed.get_x() + closed.get_width(), arrow.get_x()]
     assert ends == pytest.approx([ticks["0.25"], ticks["1"], ticks["0.5"]], abs=0.5)  # a pixel is 0.5 pt

@@ -107,3 +107,79 @@ def test_names_cannot_break_the_terminal(make_results: Callable[..., Results]) -
         if re.search(r"\d mm (k|m)", line)
     }
     assert len(starts) == 1  # the first column stands in line beside each of them
+
+
+RATES = [f"control_hz {hz}, gear_ratio {ratio}" for hz in (250, 500, 1000) for ratio in (50, 101, 160)]
+
+
+@pytest.mark.parametrize("width", [40, 80, 132])
+@pytest.mark.parametrize("tolerance", [True, False])
+@pytest.mark.parametrize(("laws", "columns"), [(1, 1), (2, 3), (12, 20)])
+def test_sheets_fit_any_terminal(
+    make_results: Callable[..., Results], width: int, tolerance: bool, laws: int, columns: int
+) -> None:
+    """No line is wider, none ends in blanks, however long the sheets' names are."""
+    for sheets in (RATES, RATES[:3], [f"{LONG}, second {number}" for number in range(3)]):
+        text = matrix_text(make_results(laws, columns, sheets=sheets, tolerance=tolerance), width)
+        assert max(cell_len(line) for line in text.split("\n")) <= width
+        assert not re.search(r"[ \t]$|\n\n\n", text, re.MULTILINE)
+
+
+def test_levels_come_first_sheets_down_and_laws_across(make_results: Callable[..., Results]) -> None:
+    """Each law's level with its interval in each sheet, and the words where a law is not possible."""
+    results = make_results(["a", "b"], 4, sheets=RATES[:3], impossible=[(RATES[1], "b")])
+    part = matrix_text(results, 100).split("In each cell")[0]
+    assert "Tolerated level: where the share of the draws" in part
+    rows = [line for line in part.splitlines() if line.startswith("control_hz")]
+    assert [row.split("  ")[0] for row in rows] == RATES[:3]
+    levels = {(s.sheet, s.law): s.tolerated for s in results.standings}
+    for sheet, row in zip(results.sheets, rows, strict=True):
+        for law in "ab":
+            level = levels[sheet, law]
+            assert level is not None
+            said = f"{level.low:g} or more" if level.value is None else f"({level.low:g} to {level.high:g})"
+            assert ("not possible" if (sheet, law) == (RATES[1], "b") else said) in row
+
+
+def test_rows_stand_in_one_order_in_every_sheet(make_results: Callable[..., Results]) -> None:
+    """So that sheets can be compared, whichever law is ahead in one of them."""
+    text = matrix_text(make_results(["a", "b", "c"], 4, sheets=RATES[:4]), 200)
+    orders = [re.findall(r"^([abc])  ", part, re.MULTILINE) for part in text.split("Sheet: ")[1:]]
+    assert len(orders) == 4
+    assert all(order == orders[0] for order in orders)
+
+
+def test_matrices_follow_where_they_are_few_or_narrow(make_results: Callable[..., Results]) -> None:
+    """Up to four always; nine if each fits side by side; else it is said where they are."""
+
+    def sheets_told(columns: int, sheets: list[str], width: int) -> int:
+        return matrix_text(make_results(2, columns, sheets=sheets), width).count("Sheet: ")
+
+    assert sheets_told(20, RATES[:4], 80) == 4
+    assert sheets_told(3, RATES, 110) == 9
+    assert sheets_told(3, RATES, 80) == 0
+    assert sheets_told(3, [f"leg_s {number}" for number in range(13)], 110) == 0
+    crossing = {
+        "sheet": RATES[0], "laws": ["a", "b"], "score": "tool_peak_mm",
+        "level": {"value": 0.7, "low": 0.5, "high": 1.0}, "better_below": "a",
+    }  # fmt: skip
+    results = replace(make_results(2, 9, sheets=RATES), break_even=(crossing, crossing))
+    last = " ".join(matrix_text(results, 80).split("\n\n")[-1].split())
+    assert last == (
+        "The matrices of the 9 sheets are in the picture, which 'rigbench matrix STORE' draws; "
+        "2 break-even levels are in the output of --json."
+    )
+    assert "In each cell" not in matrix_text(results, 80)
+
+
+@pytest.mark.parametrize("tolerance", [True, False])
+def test_a_sweep_without_levels_is_one_table(make_results: Callable[..., Results], tolerance: bool) -> None:
+    """Of the only condition there is: sheets down, laws across, and no matrices that say it again."""
+    text = matrix_text(make_results(["a", "b"], 1, sheets=RATES, tolerance=tolerance), 80)
+    assert "The tool peak under 'nominal', of one exact run:" in text
+    rows = [line for line in text.splitlines() if line.startswith("control_hz")]
+    assert len(rows) == 9
+    verdict = r" (keeps|misses)" if tolerance else ""
+    assert all(re.search(rf"  [\d.]+ mm{verdict}  +[\d.]+ mm{verdict}$", row) for row in rows)
+    assert "Sheet:" not in text
+    assert "picture" not in text

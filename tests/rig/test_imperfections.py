@@ -260,7 +260,8 @@ def test_jitter_and_dropped_ticks(one_joint):
     """Ticks come late by whole steps up to the share declared, and the declared share is dropped."""
     assert ticks_of(Timing(), 5, 4, 1, 0) == [0] * 5
     calls = np.array(ticks_of(Timing(jitter_percent=50, dropped_percent=10), 20_000, 8, 1, 0))
-    assert calls[0] >= 0
+    first = {ticks_of(Timing(jitter_percent=100, dropped_percent=90), 5, 8, 1, k)[0] for k in range(50)}
+    assert first == {0}, "a run starts with a command"
     assert np.mean(calls == -1) == pytest.approx(0.10, abs=0.01)
     late = calls[calls >= 0]
     assert set(late) == {0, 1, 2, 3, 4}

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import pytest
 
-from rigbench.scores.names import SCORES, in_display_order, main_score, score_info
+from rigbench.scores.names import SCORES, in_display_order, main_score, score_info, score_words
 
 
 def test_every_name_ends_in_the_unit_it_is_given_in() -> None:
@@ -46,3 +46,28 @@ def test_display_order_puts_a_score_before_its_joints_and_keeps_the_joints_order
 def test_laws_are_compared_by_the_first_limit_on_the_tool(limited: tuple[str, ...], main: str) -> None:
     """And by tool_peak_mm where none is limited."""
     assert main_score(limited) == main
+
+
+@pytest.mark.parametrize(
+    ("name", "said"),
+    [
+        ("tool_peak_mm", ("tool peak", "mm")),
+        ("tool_angle_peak_deg", ("tool angle peak", "deg")),
+        ("joint_peak_deg.j1", ("joint peak of j1", "deg")),
+        ("joint_rms_mm.lift_mm", ("joint RMS of lift_mm", "mm")),
+        ("settle_ms", ("settling time", "ms")),
+        ("saturated_percent", ("saturated", "%")),
+        ("energy_j", ("energy", "J")),
+        ("chatter", ("chatter", "")),
+        ("law_us", ("law's time per tick", "us")),
+        ("no_score.of.ours", ("no score.of.ours", "")),
+    ],
+)
+def test_scores_have_words_and_units(name: str, said: tuple[str, str]) -> None:
+    """A score's name reads as words, its unit apart."""
+    assert score_words(name) == said
+
+
+def test_no_two_scores_read_alike() -> None:
+    """By words and unit together."""
+    assert len({score_words(name) for name in SCORES}) == len(SCORES)

@@ -1,0 +1,208 @@
+"""The hot loop of a run: read, law, drive, apply, step."""
+
+from __future__ import annotations
+
+import struct
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from functools import lru_cache
+from typing import Any, Protocol
+
+import numpy as np
+
+from rigbench.arm.arm import Arm, Floats
+from rigbench.arm.dynamics import gravity_torque
+from rigbench.errors import LawError
+from rigbench.laws.law import CLOCK
+from rigbench.motion.motion import Motion
+from rigbench.rig.engine import engine_errors
+from rigbench.rig.law_call import StartedLaw, law_error
+from rigbench.rig.log import Log
+from rigbench.rig.rows import (
+    DELAYED,
+    ERROR,
+    EXTERNAL,
+    Q_ENGINE,
+    Q_ROTOR,
+    Q_TRUE,
+    TAU_ENGINE,
+    V_NEXT,
+    V_ROTOR,
+    V_TRUE,
+    delay_rows,
+    machine_array,
+)
+from rigbench.rig.run import Rates
+from rigbench.rig.sampled import Sensing, Timing, noise_of, ticks_of
+from rigbench.rig.sensing import BEYOND_BOUNDS, HIT_STOP, OK
+from rigbench.rig.tick import LOG_ROWS, begin_step, end_step
+
+__all__ = ["Driven", "Loop", "Setting", "sampled"]
+
+
+class Driven(Protocol):
+    """The joints in the engine: joint states (position and velocity first), n torques [N m], one step."""
+
+    @property
+    def read(self) -> Callable[[], Sequence[Sequence[Any]]]: ...  # noqa: D102
+
+    @property
+    def apply(self) -> Callable[[list[float]], None]: ...  # noqa: D102
+
+    @property
+    def step(self) -> Callable[[], None]: ...  # noqa: D102
+
+
+@dataclass(frozen=True, eq=False)
+class Setting:
+    """The machine, and how it meets the law.
+
+    ``gravity`` [m/s^2] in the frame of the plant's base; ``delay_ms`` from tick to torque, which stands
+    for that of ``timing``; ``contacts`` whether anything may touch the arm.
+    """
+
+    plant: Arm
+    gravity: tuple[float, float, float]
+    rates: Rates
+    sensing: Sensing
+    timing: Timing
+    delay_ms: float
+    seed: int
+    draw: int
+    contacts: bool
+
+
+@lru_cache(maxsize=32)
+def sampled(motion: Motion, control_hz: float) -> tuple[Floats, Floats]:
+    """Return times (N,) and the reference (N, 3, n) at every control tick from 0 to the motion's end."""
+    count = int(np.floor(motion.duration_s * control_hz + 1e-6)) + 1
+    t = np.arange(count) / control_hz
+    reference = np.ascontiguousarray(np.stack(motion.reference(t), axis=1))
+    for array in (t, reference):
+        array.flags.writeable = False
+    return t, reference
+
+
+class Loop:
+    """One run in progress.
+
+    ``q``, ``v`` (n,): where the engine stands, in its own reading. ``ticks``: how many are logged.
+    """
+
+    def __init__(self, setting: Setting, law: StartedLaw, motion: Motion, q: Floats, v: Floats) -> None:
+        plant, rates = setting.plant, setting.rates
+        dt, delay = 1.0 / rates.physics_hz, setting.delay_ms / 1000.0
+        self._setting, self._name = setting, law.name
+        self._t, self._reference = sampled(motion, rates.control_hz)
+        self._times: list[float] = self._t.tolist()
+        self._chain = plant.chain(setting.gravity)
+        self._io = np.zeros((DELAYED + delay_rows(delay / dt), plant.n))
+        self._io[V_NEXT] = self._io[V_ROTOR] = v
+        self._io[Q_ROTOR] = q + gravity_torque(self._chain, q) / plant.drives.stiffness
+        self._machine = machine_array(
+            plant,
+            dt,
+            delay=delay,
+            control_period=1.0 / rates.control_hz,
+            velocity_corner_hz=setting.sensing.corner_hz(plant),
+            link_encoder=setting.sensing.encoder == "link",
+            contacts=setting.contacts,
+        )
+        count, draw = len(self._t), (setting.seed, setting.draw)
+        self._substeps = round(rates.physics_hz / rates.control_hz)
+        self._noise = noise_of(setting.sensing, count, plant, *draw)
+        self._calls = ticks_of(setting.timing, count, self._substeps, *draw)
+        self._law_ns: list[int] = []
+        self._call = law.call(self._io, setting.timing.model_late, self._law_ns)
+        self._log = np.empty((count, LOG_ROWS, plant.n))
+        self._status, self.ticks = OK, 0
+
+    @property
+    def over(self) -> bool:
+        """Whether the run has come to its end, or broken off."""
+        return self._status != OK or self.ticks == len(self._t)
+
+    @property
+    def contact_torque(self) -> Floats:
+        """What contacts gave the joints in the last step, (n,) [N m]; 0 in a run without contacts."""
+        torque: Floats = self._io[EXTERNAL].copy()
+        return torque
+
+    def go(self, engine: Driven, ticks: int | None = None) -> None:
+        """Go on to the end or to where it breaks off, or by so many ticks.
+
+        LawError if the law raises or returns nonsense, EngineError if the engine refuses.
+        """
+        if not self.over:
+            last = len(self._t) if ticks is None else min(self.ticks + ticks, len(self._t))
+            with engine_errors("stepping"):
+                self._status, self.ticks = self._steps(engine, last)
+
+    def _steps(self, engine: Driven, stop: int) -> tuple[int, int]:
+        """Do the ticks before ``stop``; return the status and how many are logged."""
+        io, chain, machine, log = self._io, self._chain, self._machine, self._log
+        reference, noise, calls, call_law = self._reference, self._noise, self._calls, self._call
+        read, apply, step = engine.read, engine.apply, engine.step
+        n, last = io.shape[1], len(self._t) - 1
+        pack, fill = struct.Struct(f"{2 * n}d").pack_into, io.data.cast("B")
+        offset = Q_ENGINE * n * io.itemsize
+        torque, clock, times = io[TAU_ENGINE], io[CLOCK], self._times
+        substeps = range(self._substeps)
+        for k in range(self.ticks, stop):
+            call = calls[k]
+            for substep in substeps:
+                states = read()
+                pack(fill, offset, *[s[0] for s in states], *[s[1] for s in states])
+                status = begin_step(machine, io, reference, noise, k if substep == call else -1)
+                if status != OK:
+                    return status, k + (substep > 0)
+                if substep == call:
+                    clock[0] = times[k]
+                    try:
+                        call_law(k)
+                    except Exception as problem:
+                        raise law_error(self._name, problem) from None
+                if not end_step(chain, machine, io, log, k if substep == 0 else -1):
+                    raise LawError(self._name, "a torque that is not a number", f"at t = {times[k]:.4f} s")
+                if k == last:
+                    break
+                apply(torque.tolist())
+                step()
+        return OK, stop
+
+    def log(self) -> Log:
+        """Return the log up to here; its outcome is 'running' where there is more to come."""
+        setting, ticks = self._setting, self.ticks
+        log = self._log[:ticks]
+        outcome, reason = self._verdict()
+        return Log(
+            t=self._t[:ticks],
+            q_ref=self._reference[:ticks, 0],
+            v_ref=self._reference[:ticks, 1],
+            q=log[:, 0],
+            v=log[:, 1],
+            torque=log[:, 2],
+            limited=log[:, 3] > 0,
+            plant=setting.plant,
+            outcome=outcome,
+            reason=reason,
+            residual=float(self._io[ERROR, 0]),
+            law_us=float(np.median(self._law_ns)) / 1000.0 if self._law_ns else 0.0,
+            control_hz=setting.rates.control_hz,
+            gravity=setting.gravity,
+            contacts=setting.contacts,
+        )
+
+    def _verdict(self) -> tuple[str, str]:
+        """Put the status of the last reading into an outcome and a reason in words."""
+        if self._status == OK:
+            return ("finished" if self.over else "running"), ""
+        q, v, plant = self._io[Q_TRUE], self._io[V_TRUE], self._setting.plant
+        t = self._t[min(self.ticks, len(self._t) - 1)]
+        if self._status == HIT_STOP:
+            i = int(np.argmax(np.maximum(plant.lower - q, q - plant.upper)))
+            return "hit-stop", f"joint {plant.joints[i]} met its limit at {t:.3f} s"
+        if self._status == BEYOND_BOUNDS:
+            i = int(np.argmax(np.abs(v)))
+            return "diverged", f"joint {plant.joints[i]} ran away at {t:.3f} s"
+        return "diverged", f"the state was no longer finite at {t:.3f} s"
