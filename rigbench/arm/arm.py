@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, fields, replace
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -22,6 +23,14 @@ tensor about the link frame's origin [kg m^2]."""
 
 ROTATION, POSITION, AXIS, LINK = slice(1, 10), slice(10, 13), slice(13, 16), slice(16, 26)
 """Columns of a chain array (see :meth:`Arm.chain`); column 0 is the joint's kind."""
+
+
+def _protect(declared: Any) -> None:
+    """Make the arrays of a data class read-only: one arm serves many runs, and laws are handed its parts."""
+    for field in fields(declared):
+        value = getattr(declared, field.name)
+        if isinstance(value, np.ndarray):
+            value.flags.writeable = False
 
 
 @dataclass(frozen=True, eq=False)
@@ -56,6 +65,9 @@ class Drives:
     ripple_periods: Floats  # periods of it in a motor turn
     encoder_step: Floats  # rad, one count of the encoder; 0 for exact positions
     encoder_offset: Floats  # rad, by how much the encoder reads too much
+
+    def __post_init__(self) -> None:
+        _protect(self)
 
     @classmethod
     def ideal(cls, n: int) -> Drives:
@@ -95,6 +107,9 @@ class Arm:
     upper: Floats  # (n,) [rad or m], inf where there is none
     drives: Drives
     notes: tuple[Fault, ...] = ()  # warnings: what was met on the way and needs no stop
+
+    def __post_init__(self) -> None:
+        _protect(self)
 
     @property
     def n(self) -> int:

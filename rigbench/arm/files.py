@@ -76,7 +76,7 @@ class ArmFiles:
 
     @property
     def digest(self) -> str:
-        """A digest (hex, 40 digits) of the arm's numbers and joint names; comments don't enter it."""
+        """A digest (hex, 40 digits) of the arm's numbers and names; comments don't enter it."""
         return _digest(self)
 
 
@@ -231,7 +231,7 @@ def _digest(files: ArmFiles) -> str:
     arm = files.arm()
     drives: Iterable[Any] = astuple(arm.drives)
     geometry = (arm.kinds, arm.rotation, arm.position, arm.axis, arm.tool_rotation, arm.tool_position)
-    digest = hashlib.blake2b(repr(arm.joints).encode(), digest_size=20)
+    digest = hashlib.blake2b(repr((arm.joints, arm.links)).encode(), digest_size=20)
     for numbers in (*geometry, arm.parameters, arm.lower, arm.upper, *drives):
         digest.update((numbers + 0.0).astype("<f8").tobytes())  # + 0.0 makes -0.0 the same as 0.0
     return digest.hexdigest()

@@ -2,9 +2,12 @@
 
 from __future__ import annotations
 
+import contextlib
 import hashlib
 import os
+import shutil
 import tempfile
+import time
 from collections.abc import Callable
 from functools import cache
 from pathlib import Path
@@ -13,6 +16,9 @@ from typing import Any, TypeVar, cast
 import numba
 
 __all__ = ["kernel", "kernel_cache"]
+
+MONTH = 30 * 86400.0
+"""After so long without use [s] the kernels of other sources are removed."""
 
 Function = TypeVar("Function", bound=Callable[..., Any])
 
@@ -33,11 +39,31 @@ def kernel_cache() -> Path:
     home = Path(os.environ.get("XDG_CACHE_HOME") or Path.home() / ".cache")
     folder = home / "rigbench" / f"kernels-{digest.hexdigest()}"
     try:
-        folder.mkdir(parents=True, exist_ok=True)
+        if not folder.is_dir():
+            folder.mkdir(parents=True, exist_ok=True)
+            _drop_unused(folder.parent)
+        os.utime(folder)
         with tempfile.TemporaryFile(dir=folder):
             return folder
     except OSError:
+        return _temporary(digest.hexdigest())
+
+
+def _temporary(digest: str) -> Path:
+    """Return a private folder in the temporary folder, the same for all processes of this user."""
+    folder = Path(tempfile.gettempdir()) / f"rigbench-{os.getuid()}-{digest}"
+    folder.mkdir(mode=0o700, exist_ok=True)
+    if folder.stat().st_uid != os.getuid():  # somebody else's: what lies in it is not to be run
         return Path(tempfile.mkdtemp(prefix="rigbench-kernels-"))
+    return folder
+
+
+def _drop_unused(home: Path) -> None:
+    """Remove kernel folders of other sources that nobody has used for a month."""
+    for old in home.glob("kernels-*"):
+        with contextlib.suppress(OSError):
+            if time.time() - old.stat().st_mtime > MONTH:
+                shutil.rmtree(old, ignore_errors=True)
 
 
 def kernel(function: Function) -> Function:

@@ -15,7 +15,7 @@ from importlib.metadata import PackageNotFoundError, version
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from rigbench.errors import LawError
+from rigbench.errors import LawError, SceneError
 from rigbench.scores.names import SCORES
 
 if TYPE_CHECKING:
@@ -60,14 +60,18 @@ class Outcome:
 def do(run: Run) -> Outcome:
     """Do a run and score it. Whatever is raised in it but KeyboardInterrupt ends as its outcome.
 
-    An exception of the law is a 'law-error'. Any other one is not the machine's verdict, whoever's it
-    is (the engine's, the disk's, a mistake of ours): the run is 'crashed' and carries the traceback.
+    An exception of the law is a 'law-error'; so is one of the scene, whose reason says so: it would come
+    again likewise. Any other one is not the machine's verdict, whoever's it is (the engine's, the disk's,
+    a mistake of ours): the run is 'crashed' and carries the traceback.
     """
     key, begin = run.key(), time.perf_counter()
     try:
         return _simulated(run, key, begin)
     except LawError as error:
         return failed(key, "law-error", error.summary, error.trace, this_host(run.law.plugin))
+    except SceneError as error:
+        reason = f"scene '{error.name}': {error.summary}"
+        return failed(key, "law-error", reason, error.trace, this_host(run.law.plugin))
     except KeyboardInterrupt:
         raise
     except BaseException as error:

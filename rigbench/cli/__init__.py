@@ -163,6 +163,25 @@ def trace(
         trace_run(store, run, worst, motion, sheet, output, animate, as_json)
 
 
+@app.command(epilog="Example: rigbench audit robots_demo/tray6/arm.yaml -o audit.png")
+def audit(
+    arm: Annotated[str, typer.Argument(metavar="ARM", help="the arm file (YAML)")],
+    output: Annotated[
+        str | None,
+        typer.Option("--output", "-o", help="draw it too: a .png, .svg or .pdf file"),
+    ] = None,
+    as_json: Json = False,
+) -> None:
+    """Show whether engine and model agree on an arm, and which physics_hz it needs.
+
+    Accelerations, energy, momentum, the error by step size, and dry friction are measured.
+    """
+    with telling(as_json):
+        from rigbench.cli.audit import audit_arm
+
+        audit_arm(arm, output, as_json)
+
+
 @app.command(epilog="Example: rigbench schema > rigbench.schema.json")
 def schema(
     of: Annotated[

@@ -7,7 +7,7 @@ from dataclasses import dataclass, replace
 
 from rigbench.arm.mismatch import Case, Mismatch
 from rigbench.campaign.plan import Entry
-from rigbench.experiment.mismatch_keys import ConditionsKeys
+from rigbench.experiment.condition_keys import ConditionsKeys
 from rigbench.laws.registry import LawChoice
 from rigbench.motion.motion import Motion
 from rigbench.rig.run import Run

@@ -8,9 +8,10 @@ import numpy as np
 
 from rigbench.arm.arm import Arm
 from rigbench.arm.mismatch import Case, Mismatch, Payload, Spread, carriers, unknown_names
+from rigbench.experiment.condition_keys import CaseKeys, ConditionsKeys, StatedKeys
 from rigbench.experiment.expand import NAMES, nominal_and_levels, spreading
 from rigbench.experiment.findings import Findings
-from rigbench.experiment.mismatch_keys import CaseKeys, ConditionsKeys, MismatchKeys, SpreadKeys, StatedKeys
+from rigbench.experiment.mismatch_keys import MismatchKeys, SpreadKeys
 from rigbench.yamlfile import KeyPath
 
 __all__ = ["cases_of", "check_conditions", "mismatch_of"]

@@ -1,9 +1,9 @@
 """The keys of an experiment file: their types, units, defaults and ranges, one class a section.
 
-Those of motions, of mismatch and conditions, and of sensing and timing are in
-:mod:`rigbench.experiment.motion_keys`, :mod:`rigbench.experiment.mismatch_keys` and
-:mod:`rigbench.experiment.rig_keys`. What only shows against the arm, the laws or another key
-(lengths, limits, names) is looked at afterwards.
+Those of motions, mismatch, conditions, and of sensing and timing are in
+:mod:`rigbench.experiment.motion_keys`, :mod:`rigbench.experiment.mismatch_keys`,
+:mod:`rigbench.experiment.condition_keys` and :mod:`rigbench.experiment.rig_keys`. What only shows against
+the arm, the laws or another key (lengths, limits, names) is looked at afterwards.
 """
 
 from __future__ import annotations
@@ -13,7 +13,8 @@ from typing import Annotated, Any
 from pydantic import ConfigDict, Field, create_model
 
 from rigbench.arm.declaration import DriveDeclaration
-from rigbench.experiment.mismatch_keys import ConditionsKeys, MismatchKeys
+from rigbench.experiment.condition_keys import ConditionsKeys
+from rigbench.experiment.mismatch_keys import MismatchKeys
 from rigbench.experiment.motion_keys import MotionKeys
 from rigbench.experiment.rig_keys import SensingKeys, TimingKeys
 from rigbench.yamlfile import Declared

@@ -21,8 +21,9 @@ class ComputedTorque(PdLaw):
     """tau = (M(q) + Jr) (a_ref + Kd (v_ref - v) + Kp (q_ref - q)) + h(q, v) + friction(v_ref).
 
     With an exact model each joint's error obeys e'' + Kd e' + Kp e = 0, so Kp [s^-2] and Kd [s^-1]
-    pass through the inertia matrix. M, h and the friction are worked out at the sensed state at
-    model_hz and held in between. Jr = G^2 Jm [kg m^2]. Source: Luh, Walker, Paul 1980 (from memory).
+    pass through the inertia matrix. M and h are worked out at the sensed state, friction at the
+    reference's velocity, at model_hz, and held in between. Jr = G^2 Jm [kg m^2].
+    Source: Luh, Walker, Paul 1980 (from memory).
     """
 
     through_inertia: ClassVar[bool] = True

@@ -61,8 +61,9 @@ def options_model(cls: type[Law]) -> type[BaseModel]:
 
 def _conflict_check(cls: type[Law]) -> Any:
     def check(self: BaseModel) -> BaseModel:
+        given = frozenset(name for name in self.model_fields_set if getattr(self, name) is not None)
         try:
-            problem = cls.conflict(frozenset(self.model_fields_set))
+            problem = cls.conflict(given)
         except Exception as raised:  # a law's own code: whatever it raises is told as its verdict
             problem = f"{cls.__name__}.conflict raised {type(raised).__name__}: {raised}"
         if problem is not None:

@@ -3,8 +3,8 @@
 from __future__ import annotations
 
 import ast
+import builtins
 import hashlib
-import linecache
 import shutil
 import sys
 import tempfile
@@ -15,7 +15,7 @@ from functools import cache
 from importlib.metadata import EntryPoint
 from pathlib import Path
 from types import ModuleType
-from typing import Generic, TypeVar
+from typing import Any, Generic, TypeVar
 
 from rigbench.arm.kernel import kernel_cache
 from rigbench.errors import PluginError
@@ -37,6 +37,9 @@ Files = tuple[tuple[str, str], ...]
 Found = TypeVar("Found")
 
 HERE = Path(__file__).parent
+
+KNOWN_AS: dict[str, str] = {}
+"""By the path under which a user's file runs here, the path that the user knows."""
 
 
 @dataclass(frozen=True)
@@ -133,12 +136,12 @@ def _neighbours(text: str, folder: Path) -> list[Path]:
 def import_files(files: Files, shown: str, error: type[PluginError]) -> ModuleType:
     """Write the texts into a folder of their own, import the first and return it.
 
-    Neighbours are imported from that folder alone and then taken out of sys.modules again, so two files
-    may each have a ``helpers.py``. Importing from the carried texts, on every machine alike, is what
-    makes the key's digest the truth about what ran. ``shown`` is the path that the user knows. What the
+    Neighbours are imported from that folder alone, now or in a later call, and don't stay in sys.modules,
+    so two files may each have a ``helpers.py``. Importing from the carried texts, on every machine alike,
+    is what makes the key's digest the truth about what ran. ``shown`` is the path that the user knows. What the
     import raises comes out as ``error``, with the file's own traceback.
     """
-    return _execute(_written(files), files[0][1], f"rigbench_plugin_{digest_of(files)}", shown, error)
+    return _execute(_written(files), files, f"rigbench_plugin_{digest_of(files)}", shown, error)
 
 
 def _written(files: Files) -> Path:
@@ -157,32 +160,63 @@ def _written(files: Files) -> Path:
     return folder
 
 
-def _execute(folder: Path, text: str, name: str, shown: str, error: type[PluginError]) -> ModuleType:
-    """Run ``text`` as a module under the path that the user knows, so that tracebacks name it."""
+def _execute(folder: Path, files: Files, name: str, shown: str, error: type[PluginError]) -> ModuleType:
+    """Run the first of ``files``, which stand in ``folder``, as a module of its own.
+
+    It runs under its path there, where compilers find it on any machine; tracebacks are put back to
+    ``shown`` (see :func:`own_trace`).
+    """
+    first, text = files[0]
+    path = folder / first
+    KNOWN_AS[str(path)] = shown
     module = ModuleType(name)
-    module.__file__ = shown
-    linecache.cache[shown] = (len(text), None, text.splitlines(keepends=True), shown)
-    before = set(sys.modules)
-    sys.path.insert(0, str(folder))
+    module.__file__ = str(path)
+    module.__dict__["__builtins__"] = vars(builtins) | {"__import__": _importer(folder, files)}
     sys.modules[name] = module
     try:
-        exec(compile(text, shown, "exec"), module.__dict__)
-    except Exception as problem:
+        exec(compile(text, str(path), "exec"), module.__dict__)
+    except BaseException as problem:
         del sys.modules[name]
+        if isinstance(problem, KeyboardInterrupt):
+            raise
         raise error(shown, f"{type(problem).__name__}: {problem}", own_trace(problem, HERE)) from None
-    finally:
-        sys.path.remove(str(folder))
-        for other in set(sys.modules) - before - {name}:
-            origin = getattr(sys.modules[other], "__file__", None) or ""
-            if origin.startswith(str(folder)):
-                del sys.modules[other]
     return module
 
 
+def _importer(folder: Path, files: Files) -> Callable[..., Any]:
+    """Return the import function of a plug-in file: its neighbours come from ``folder``, whenever asked for.
+
+    They are put into sys.modules for the time of an import alone.
+    """
+    own = {name.split("/")[0].removesuffix(".py") for name, _ in files[1:]}
+    kept: dict[str, ModuleType] = {}
+
+    def load(name: str, *rest: Any, **more: Any) -> Any:
+        if name.split(".", maxsplit=1)[0] not in own:
+            return builtins.__import__(name, *rest, **more)
+        outside = {other: sys.modules.pop(other) for other in list(sys.modules) if other.split(".")[0] in own}
+        sys.modules.update(kept)
+        sys.path.insert(0, str(folder))
+        try:
+            return builtins.__import__(name, *rest, **more)
+        finally:
+            sys.path.remove(str(folder))
+            for other in [other for other in sys.modules if other.split(".")[0] in own]:
+                kept[other] = sys.modules.pop(other)
+            sys.modules.update(outside)
+
+    return load
+
+
 def own_trace(problem: BaseException, ours: Path) -> str:
-    """Return what a plug-in raised as its own traceback, without the frames of files in folder ``ours``
-    that led to it."""
+    """Return what a plug-in raised as its own traceback, under the paths that the user knows.
+
+    Left out are the frames of files in folder ``ours`` that led to it.
+    """
     frames = problem.__traceback__
     while frames is not None and Path(frames.tb_frame.f_code.co_filename).parent == ours:
         frames = frames.tb_next
-    return "".join(traceback.format_exception(type(problem), problem, frames))
+    trace = "".join(traceback.format_exception(type(problem), problem, frames))
+    for path, shown in KNOWN_AS.items():
+        trace = trace.replace(path, shown)
+    return trace

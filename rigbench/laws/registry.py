@@ -56,7 +56,10 @@ def check_class(cls: object) -> type[Law]:
     for name in ("start", "torque"):
         if getattr(cls, name) is getattr(Law, name):
             raise TypeError(f"{cls.__name__} does not define '{name}'")
-    options_model(cls)  # type: ignore[arg-type]  # mypy takes the instances' __hash__ for the class's
+    try:
+        options_model(cls)  # type: ignore[arg-type]  # mypy takes the instances' __hash__ for the class's
+    except Exception as problem:  # an annotation can be anything; what it is told in words
+        raise TypeError(f"{cls.__name__}: its options can't be read: {problem}") from None
     return cls
 
 

@@ -196,6 +196,7 @@ def solve(reach: Reach, q: Floats, target: Target) -> Found:
         if size <= EXACT**2:
             break
         u, s, vt = np.linalg.svd(_scaled_jacobian(reach, q, len(missed)), full_matrices=False)
+        # directions in which the tool can't move at all would only let rounding into the joints
         u, s, vt = u[:, :directions], s[:directions], vt[:directions]
         pull = u.T @ missed
         damping = DAMPING * size

@@ -26,7 +26,7 @@ __all__ = ["animate"]
 WIDTH, HEIGHT = 480, 440  # pixels
 WORDS = 56  # pixels at the top for words
 EDGE = 26
-FINER = 2  # drawn at this many times the size, then reduced: smooth edges
+FINER = 2  # drawn at twice the size, then reduced: smooth edges
 PERIOD_S = 0.05
 MOST_FRAMES = 160
 FINER_WAY = 8  # points of the tool's way from one frame to the next
@@ -36,9 +36,10 @@ AZIMUTHS = np.radians(np.arange(0.0, 360.0, 15.0) - 60.0)  # that of the widest 
 FLAT = 1e-6
 """Smallest over largest extent of all poses below which the arm moves in one plane, and is seen square on."""
 
-PAPER, INK, QUIET, ARM, GHOST, WAY, GROUND = (
-    "#ffffff", "#14202b", "#5b6873", "#1d4a75", "#c9d1d9", "#dfa24a", "#e8ecf0",
-)  # fmt: skip
+PAPER, INK, QUIET, ARM, GHOST, WAY, GROUND = range(7)
+COLORS = ("#ffffff", "#14202b", "#5b6873", "#1d4a75", "#c9d1d9", "#dfa24a", "#e8ecf0")
+"""What is drawn with; frames hold the numbers of these colours until they are reduced."""
+
 FONT = "fonts/ttf/DejaVuSans.ttf"  # comes with matplotlib
 
 Corner = tuple[float, float]
@@ -149,8 +150,8 @@ class _Film:
         """Yield every frame, at FINER times its size; one with words alone for a run without a tick."""
         way, aim = (self._place(points) if len(points) else [] for points in (self.way, self.aim))
         for number, tick in enumerate(self.shown):
-            image = Image.new("RGB", (FINER * WIDTH, FINER * HEIGHT), PAPER)
-            pen = ImageDraw.Draw(image)
+            image = Image.new("L", (FINER * WIDTH, FINER * HEIGHT), PAPER)
+            pen = _pen(image)
             self._draw_ground(pen)
             if len(aim) > 1:
                 pen.line(aim, fill=GHOST, width=FINER)
@@ -163,8 +164,8 @@ class _Film:
             self._draw_words(pen, f"{self.log.t[tick]:.2f} s   tool error {self.miss_mm[tick]:.2f} mm", last)
             yield image
         if not len(self.shown):
-            image = Image.new("RGB", (FINER * WIDTH, FINER * HEIGHT), PAPER)
-            self._draw_words(ImageDraw.Draw(image), "", True)
+            image = Image.new("L", (FINER * WIDTH, FINER * HEIGHT), PAPER)
+            self._draw_words(_pen(image), "", True)
             yield image
 
     def _draw_ground(self, pen: ImageDraw.ImageDraw) -> None:
@@ -174,7 +175,7 @@ class _Film:
         corners = self._place(square)
         pen.polygon(corners, fill=GROUND, outline=QUIET, width=FINER)
 
-    def _draw_arm(self, pen: ImageDraw.ImageDraw, positions: Floats, color: str, width: int) -> None:
+    def _draw_arm(self, pen: ImageDraw.ImageDraw, positions: Floats, color: int, width: int) -> None:
         corners = self._place(np.concatenate([np.zeros((1, 3)), positions]))
         pen.line(corners, fill=color, width=width * FINER, joint="curve")
         for kind, (x, y) in zip(self.log.plant.kinds, corners[1:-1], strict=True):
@@ -194,7 +195,7 @@ class _Film:
             said = f"{self.log.outcome}: {self.log.reason}"
         self._write(pen, 32, said, 12, QUIET)
 
-    def _write(self, pen: ImageDraw.ImageDraw, top: int, words: str, size: int, color: str) -> None:
+    def _write(self, pen: ImageDraw.ImageDraw, top: int, words: str, size: int, color: int) -> None:
         """Write one line, smaller and then cut short where it is too long."""
         space = FINER * (WIDTH - 24)
         while size > 9 and pen.textlength(words, _font(size)) > space:
@@ -207,29 +208,31 @@ class _Film:
 
 
 @cache
-def _palette() -> NDArray[np.int64]:
-    """Return the colours of all frames (P, 3): those that are drawn with, and mixtures for smooth edges."""
-    pure = [_rgb(color) for color in (PAPER, INK, QUIET, ARM, GHOST, WAY, GROUND)]
-    shares = (0.0, 0.25, 0.5, 0.75)
-    mixed = [one + (other - one) * share for one in pure for other in pure for share in shares]
-    return np.unique(np.round(mixed).astype(np.int64), axis=0)[:256]
+def _mixtures() -> tuple[NDArray[np.uint8], NDArray[np.uint8]]:
+    """Return the mixtures of any four colours (P, 3), and which of them four numbers make, (7, 7, 7, 7)."""
+    pure = np.array([[int(color[at : at + 2], 16) for at in (1, 3, 5)] for color in COLORS])
+    four = np.indices((len(pure),) * 4).reshape(4, -1)
+    mixed, which = np.unique(pure[four].sum(axis=0) // 4, axis=0, return_inverse=True)
+    return mixed.astype(np.uint8), which.astype(np.uint8).reshape((len(pure),) * 4)
 
 
 def _reduced(frame: Image.Image) -> Image.Image:
-    """Return the frame in its final size, each pixel in the nearest colour of the palette."""
-    pixels = np.asarray(frame.resize((WIDTH, HEIGHT), Image.Resampling.BOX), dtype=np.int64)
-    colors, which = np.unique(pixels @ [65536, 256, 1], return_inverse=True)
-    split = np.stack([colors // 65536, colors // 256 % 256, colors % 256], axis=1)
-    nearest = ((split[:, None] - _palette()) ** 2).sum(axis=2).argmin(axis=1)
-    image = Image.fromarray(nearest[which].reshape(HEIGHT, WIDTH).astype(np.uint8), "P")
-    image.putpalette(_palette().ravel().tolist())
+    """Return a frame in its final size: each pixel the mixture of the four that it was drawn with."""
+    numbers = np.asarray(frame)
+    palette, which = _mixtures()
+    a, b, c, d = (numbers[i::FINER, j::FINER] for i in range(FINER) for j in range(FINER))
+    image = Image.fromarray(which[a, b, c, d], "P")
+    image.putpalette(palette.ravel().tolist())
     return image
+
+
+def _pen(image: Image.Image) -> ImageDraw.ImageDraw:
+    """Return a pen whose letters have no grey edges: their smoothing comes with the reduction."""
+    pen = ImageDraw.Draw(image)
+    pen.fontmode = "1"
+    return pen
 
 
 @cache
 def _font(size: int) -> Any:
     return ImageFont.truetype(str(Path(matplotlib.get_data_path()) / FONT), FINER * size)
-
-
-def _rgb(color: str) -> Floats:
-    return np.array([int(color[at : at + 2], 16) for at in (1, 3, 5)], float)

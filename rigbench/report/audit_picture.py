@@ -29,7 +29,7 @@ QUIET = "#5b6873"
 DARK, MIDDLE, LIGHT = "#1d4a75", "#4f86bd", "#9bbfe2"
 GRID = "#e3e9f0"
 ABOVE, BELOW, BESIDE = 44.0, 34.0, 36.0  # room of a panel's head, of its lower axis and of its left one
-BETWEEN, FOOT = 24.0, 100.0
+BETWEEN, LOWEST = 24.0, 16.0  # between the panels; from the page's edge to its last line
 KEY: dict[str, Any] = {
     "frameon": False, "fontsize": 7.5, "borderaxespad": 0.2, "handlelength": 2.2, "columnspacing": 1.4,
     "labelcolor": INK,
@@ -71,14 +71,14 @@ def audit_figure(audit: Audit) -> Figure:
     """Return the page: verdict, errors and scores by step, energy over time, and what each joint shows."""
     with steady_settings():
         paper = Paper()
-        key = _draw_words(paper, audit) + 6
+        key, foot = _draw_head(paper, audit) + 6, _draw_foot(paper, audit) + BELOW + 10
         figure = paper.figure(WIDE, HIGH)
         FigureCanvasAgg(figure)
         top = key + ABOVE
         wide = (WIDE - 2 * MARGIN - BETWEEN - 2 * BESIDE) / 2
-        high = (HIGH - FOOT - top - ABOVE - BELOW) / 2
+        high = (HIGH - foot - top - ABOVE - BELOW) / 2
         left, right = MARGIN + BESIDE, WIDE - MARGIN - wide
-        upper, lower = HIGH - top - high, FOOT
+        upper, lower = HIGH - top - high, foot
         errors = _axes(figure, (left, upper, wide, high))
         _draw_errors(errors, audit)
         if errors.get_legend_handles_labels()[0]:
@@ -92,25 +92,29 @@ def audit_figure(audit: Audit) -> Figure:
         return figure
 
 
-def _draw_words(paper: Paper, audit: Audit) -> float:
-    """Write title, verdict and foot; return where the title's block ends."""
+def _draw_head(paper: Paper, audit: Audit) -> float:
+    """Write title and verdict; return where they end, from the upper edge."""
     width = WIDE - 2 * MARGIN
-    top = paper.lines(
-        MARGIN, MARGIN - 8, paper.wrap(f"Audit of {audit.name}", width, TITLE, bold=True), TITLE, bold=True
-    )
+    title = paper.wrap(f"Audit of {audit.name}", width, TITLE, bold=True)
+    top = paper.lines(MARGIN, MARGIN - 8, title, TITLE, bold=True)
     said = f"{audit.verdict[0].upper()}{audit.verdict[1:]}."
-    top = paper.lines(MARGIN, top + 2, paper.wrap(said, width, 10.5), 10.5)
+    return paper.lines(MARGIN, top + 2, paper.wrap(said, width, 10.5), 10.5)
+
+
+def _draw_foot(paper: Paper, audit: Audit) -> float:
+    """Write what is not drawn; return where it begins, from the lower edge."""
     momentum = audit.momentum
     drift = f"; its momentum drifts by {number(max(momentum.drifts))}" if momentum.applies else ""
-    foot = (
+    said = (
         "Allowed is 1 % of a score, or 0.001 mm or 0.0001 deg where that is more. As declared: with dry "
         "friction and limits, against the engine at finer steps; else without, against "
         f"{_targets(audit)}. {rest_words(audit)} Momentum: {momentum.why}{drift}. Residual, engine against "
         f"drive: {number(audit.residual)} rad/s (runs are marked above {number(RESIDUAL_LIMIT)})."
     )
-    lines = paper.wrap(foot, width, SIZE)
-    paper.lines(MARGIN, HIGH - 16 - len(lines) * LINE * SIZE, lines, SIZE, ink=QUIET)
-    return top
+    lines = paper.wrap(said, WIDE - 2 * MARGIN, SIZE)
+    begins = LOWEST + len(lines) * LINE * SIZE
+    paper.lines(MARGIN, HIGH - begins, lines, SIZE, ink=QUIET)
+    return begins
 
 
 def _axes(figure: Figure, box: tuple[float, float, float, float]) -> Axes:
@@ -218,19 +222,16 @@ def _draw_energy(axes: Axes, audit: Audit) -> None:
 def _draw_joints(axes: Axes, audit: Audit, wide: float) -> None:
     """Draw by joint, on one axis of shares, what the engine's acceleration and the slides are off by."""
     places = list(range(len(audit.joints)))
-    axes.plot(
-        places, _shown(audit.accelerations.differences), "o", color=DARK, markersize=5, label="acceleration"
-    )
     slides = {slide.joint: slide for slide in audit.slides}
     met = [place for place in places if audit.joints[place] in slides]
-    for mark, colour, name, label in (
-        ("s", MIDDLE, "stop_off", "time of a sliding stop"),
-        ("^", LIGHT, "travel_off", "way of a sliding stop"),
-    ):
-        values = _shown([getattr(slides[audit.joints[place]], name) for place in met])
-        if values:
-            axes.plot(met, values, mark, color=colour, markersize=5, label=label)
-    axes.set_yscale("log")
+    differences = _shown(audit.accelerations.differences)
+    stops = _shown([slides[audit.joints[place]].stop_off for place in met])
+    ways = _shown([slides[audit.joints[place]].travel_off for place in met])
+    axes.plot(places, differences, "o", color=DARK, markersize=5, label="acceleration")
+    if met:
+        axes.plot(met, stops, "s", color=MIDDLE, markersize=5, label="time of a sliding stop")
+        axes.plot(met, ways, "^", color=LIGHT, markersize=5, label="way of a sliding stop")
+    _whole_decades(axes, [*differences, *stops, *ways])
     axes.set_xlim(-0.6, len(places) - 0.4)
     paper, names = Paper(), list(audit.joints)
     if paper.widest(names, SIZE) + 6 > wide / len(places):
@@ -239,3 +240,12 @@ def _draw_joints(axes: Axes, audit: Audit, wide: float) -> None:
     axes.set_xticks(places, names)
     axes.xaxis.grid(False)
     _head(axes, "By joint: off by so much of its size", keyed=True)
+
+
+def _whole_decades(axes: Axes, values: Sequence[float]) -> None:
+    """Let the axis of shares be one of logarithms that ends on decades, of which it shows three or more."""
+    shown = [value for value in values if not math.isnan(value)] or [1.0]
+    low, high = math.floor(math.log10(min(shown)) - 0.1), math.ceil(math.log10(max(shown)) + 0.1)
+    axes.set_yscale("log")
+    axes.set_ylim(10.0**low, 10.0 ** max(high, low + 3))
+    axes.minorticks_off()

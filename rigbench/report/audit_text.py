@@ -11,7 +11,7 @@ from rigbench.rig.log import RESIDUAL_LIMIT
 
 __all__ = ["audit_text", "number", "rest_words"]
 
-WHAT, LABEL, COLUMN = 16, 11, 8
+WHAT, LABEL, COLUMN = 13, 11, 8
 NARROWEST = 80
 INDENT = "  "
 
@@ -20,9 +20,9 @@ def audit_text(audit: Audit, width: int = 100) -> str:
     """Return what an audit found as lines of at most ``width`` columns (80 at least)."""
     width = max(width, NARROWEST)
     parts = [
-        [f"{audit.name} ({audit.path})", *_wrap(_sentence(audit.verdict), width, "")],
+        [*_wrap(f"{audit.name} ({audit.path})", width, ""), *_wrap(_sentence(audit.verdict), width, "")],
         ["1. Engine against model", *_wrap(_accelerations(audit), width)],
-        [_swing_words(audit), *_swing(audit)],
+        [*_wrap(_swing_words(audit), width, ""), *_swing(audit)],
         ["3. Momentum", *_wrap(_momentum(audit), width)],
         ["4. Step size", *_wrap(_step_size(audit), width), *_convergences(audit, width)],
         ["5. Dry friction", *_wrap(rest_words(audit), width), *_slides(audit, width)],
@@ -41,8 +41,6 @@ def _wrap(text: str, width: int, indent: str = INDENT) -> list[str]:
 
 def number(value: float) -> str:
     """Return a small number with two digits, such as 1.4e-09; 0 as such."""
-    if math.isinf(value) or math.isnan(value):
-        return "-"
     return "0" if value == 0 else f"{value:.1e}"
 
 
@@ -126,7 +124,7 @@ def _course(convergence: Convergence, width: int) -> Iterator[str]:
     if convergence.note:
         yield from _wrap(f"{what.strip()}: not judged, {convergence.note}", width, INDENT + "  ")
         return
-    errors = [number(error) for error in convergence.errors]
+    errors = [number(error) if math.isfinite(error) else "-" for error in convergence.errors]
     yield _row(what, "error", errors, _order(convergence.order))
     needed = convergence.needed_hz
     said = "none will do" if needed is None else f"needs {needed:g}"

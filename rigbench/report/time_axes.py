@@ -110,6 +110,8 @@ def draw_curve(axes: Axes, t: Floats, values: Floats, what: str) -> None:
     """Draw values (N,) over times (N,); ``what`` is one of STROKES."""
     color, line, dashes = STROKES[what]
     (drawn,) = axes.plot(*_thinned(t, values), color=color, linewidth=line, gid=what, zorder=2.5)
+    if len(t) == 1:
+        drawn.set(marker="o", markersize=2.5)
     if dashes:
         drawn.set_dashes(dashes)
 

@@ -56,6 +56,7 @@ from rigbench.rig.rows import (
     CARRIED,
     CONTACTS,
     COULOMB,
+    ENERGY,
     EXTERNAL,
     GEAR_LOSS,
     MOTOR,
@@ -70,6 +71,7 @@ from rigbench.rig.rows import (
     STIFFNESS,
     STRIBECK,
     TAU_ENGINE,
+    TORQUE_PEAK,
     V_NEXT,
     V_ROTOR,
     V_TRUE,
@@ -138,16 +140,20 @@ def step_drive(chain: Floats, machine: Floats, io: Floats) -> bool:
         if machine[STIFFNESS, i] > 0.0:
             _keep_friction(machine, io, slide, f, i, rotor, io[V_ROTOR, i], v_next[rotor])
             carried = _spring_torque(machine, io, i, v_next[i], v_next[rotor])
+            turning = 0.5 * (io[V_ROTOR, i] + v_next[rotor])
             io[V_ROTOR, i] = v_next[rotor]
             io[Q_ROTOR, i] += dt * v_next[rotor]
             io[TAU_ENGINE, i] = carried + h_engine[i] - h_middle[i]
             rotor += 1
         else:
             _keep_friction(machine, io, slide, f, i, i, v[i], v_next[i])
-            drag = 0.5 * machine[VISCOUS, i] * (v[i] + v_next[i])
+            turning = 0.5 * (v[i] + v_next[i])
+            drag = machine[VISCOUS, i] * turning
             carried = io[MOTOR, i] - machine[REFLECTED, i] * a
             io[TAU_ENGINE, i] = carried - drag - f[i] + h_engine[i] - h_middle[i]
         io[CARRIED, i] = carried
+        io[ENERGY, i] += dt * max(io[MOTOR, i] * turning, 0.0)
+        io[TORQUE_PEAK, i] = max(io[TORQUE_PEAK, i], abs(io[MOTOR, i]))
     io[STEPS, 0] += 1.0
     return True
 

@@ -17,6 +17,10 @@ from rigbench.rig.scene import SceneChoice
 __all__ = ["Engine", "bound", "engine_errors", "pybullet", "release"]
 
 
+CONTACT_BREAKING_M = 0.02
+"""Distance at which a contact point is given up, as the engine has it when it is new."""
+
+
 @contextlib.contextmanager
 def _quiet(*streams: int) -> Iterator[None]:
     """Keep what the engine's C code prints off these file descriptors (1: where a caller's JSON goes)."""
@@ -115,8 +119,8 @@ class Engine:
 
         Everything that the engine adds to rigid-body dynamics by default is switched off, see
         :func:`release`. With ``shapes`` the arm can be touched; ``scene`` adds what may touch it. What a
-        scene sets in the engine outlives it, so give each its own engine. Raises EngineError; SceneError
-        if the scene raises or changes what is not its own.
+        scene sets in the engine may outlive it, so give each its own engine. Raises EngineError;
+        SceneError if the scene raises or changes what is not its own.
         """
         with tempfile.NamedTemporaryFile(
             "w", prefix="rigbench-plant-", suffix=".urdf", encoding="utf-8"
@@ -140,8 +144,9 @@ class Engine:
             fixedTimeStep=dt, numSubSteps=0, enableFileCaching=0, deterministicOverlappingPairs=1,
             physicsClientId=client,
         )  # fmt: skip
-        # without this flag a link without collision shapes silently gets wrong inertias
-        flags = pybullet.URDF_USE_INERTIA_FROM_FILE
+        # without the first a link without collision shapes silently gets wrong inertias; without the second
+        # a cylinder is a prism
+        flags = pybullet.URDF_USE_INERTIA_FROM_FILE | pybullet.URDF_USE_IMPLICIT_CYLINDER
         body = int(pybullet.loadURDF(path, useFixedBase=True, flags=flags, physicsClientId=client))
         if pybullet.getNumJoints(body, physicsClientId=client) != n:
             raise EngineError("loading the plant", "another number of joints than the arm has")
@@ -156,6 +161,10 @@ class Engine:
 
     def _build(self, scene: SceneChoice, body: int, arm: Arm) -> None:
         """Let the scene add to the world; see that it left alone what is not its own."""
+        # this one is the whole process's, so what another scene made of it outlives even that engine
+        pybullet.setPhysicsEngineParameter(
+            contactBreakingThreshold=CONTACT_BREAKING_M, physicsClientId=self._client
+        )
         before = self._held(body)
         scene.build(self._client, body, arm)
         try:

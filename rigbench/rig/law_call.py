@@ -91,6 +91,15 @@ def _compiled_call(
     return call
 
 
+def _real(name: str, what: str, given: object, t: float) -> Floats:
+    """Return a copy of what a law gave as real numbers; LawError if it is anything else."""
+    array = np.array(given)
+    if array.dtype.kind not in "fiu":
+        wrong = f"a {what} of type {array.dtype}; expected real numbers"
+        raise LawError(name, wrong, f"at t = {t:.4f} s")
+    return array.astype(float)
+
+
 def _plain_call(name: str, law: Law, io: Floats, every: int, late: bool, law_ns: list[int]) -> LawCall:
     n, held = io.shape[1], np.empty(0)
     keep, now = law_ns.append, time.perf_counter_ns
@@ -102,12 +111,12 @@ def _plain_call(name: str, law: Law, io: Floats, every: int, late: bool, law_ns:
         ref = Reference(io[Q_REF].copy(), io[V_REF].copy(), io[A_REF].copy())
         due = k % every == 0
         if due and (not late or k == 0):
-            held = np.array(law.model_term(t, q, v, ref), dtype=float)
-        torque = np.asarray(law.torque(t, q, v, ref, held), dtype=float)
+            held = _real(name, "model term", law.model_term(t, q, v, ref), t)
+        torque = _real(name, "torque", law.torque(t, q, v, ref, held), t)
         if torque.shape != (n,):
             raise LawError(name, f"a torque of shape {torque.shape}; expected ({n},)", f"at t = {t:.4f} s")
         if due and late and k > 0:
-            held = np.array(law.model_term(t, q, v, ref), dtype=float)
+            held = _real(name, "model term", law.model_term(t, q, v, ref), t)
         io[TAU] = torque
         keep(now() - before)
 

@@ -37,6 +37,8 @@ class Log:
     outcome: str  # finished, diverged or hit-stop; running: of an attached rig before its end
     reason: str  # in words, empty if finished
     residual: float
+    energy_j: float  # positive mechanical work of all motors, taken at every physics step [J]
+    torque_peak: Floats  # (n,) [N m], largest size of the motor's torque at any physics step
     law_us: float  # median time of the law in a control tick [us], of this host
     control_hz: float
     gravity: tuple[float, float, float]

@@ -20,12 +20,14 @@ from rigbench.rig.law_call import StartedLaw, law_error
 from rigbench.rig.log import Log
 from rigbench.rig.rows import (
     DELAYED,
+    ENERGY,
     ERROR,
     EXTERNAL,
     Q_ENGINE,
     Q_ROTOR,
     Q_TRUE,
     TAU_ENGINE,
+    TORQUE_PEAK,
     V_NEXT,
     V_ROTOR,
     V_TRUE,
@@ -116,6 +118,7 @@ class Loop:
         self._call = law.call(self._io, setting.timing.model_late, self._law_ns)
         self._log = np.empty((count, LOG_ROWS, plant.n))
         self._status, self.ticks = OK, 0
+        self._energy: float | None = None
 
     @property
     def over(self) -> bool:
@@ -162,6 +165,9 @@ class Loop:
                         call_law(k)
                     except Exception as problem:
                         raise law_error(self._name, problem) from None
+                if k == last:
+                    # the torque of the last tick is asked for and logged, but never acts
+                    self._energy = float(io[ENERGY].sum())
                 if not end_step(chain, machine, io, log, k if substep == 0 else -1):
                     raise LawError(self._name, "a torque that is not a number", f"at t = {times[k]:.4f} s")
                 if k == last:
@@ -187,6 +193,8 @@ class Loop:
             outcome=outcome,
             reason=reason,
             residual=float(self._io[ERROR, 0]),
+            energy_j=float(self._io[ENERGY].sum()) if self._energy is None else self._energy,
+            torque_peak=self._io[TORQUE_PEAK].copy(),
             law_us=float(np.median(self._law_ns)) / 1000.0 if self._law_ns else 0.0,
             control_hz=setting.rates.control_hz,
             gravity=setting.gravity,

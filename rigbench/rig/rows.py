@@ -35,8 +35,10 @@ FIRST = CLOCK + 1
     LAST_SENSED,  # sensed position of the tick before
     EXTERNAL,  # torque that contacts gave the joint in the step before
     STEPS,  # [0]: physics steps done
+    ENERGY,  # positive mechanical work of the motor so far [J]
+    TORQUE_PEAK,  # largest size of the motor's torque so far [N m]
     DELAYED,  # first row of the delay line; as many as the delay takes
-) = range(FIRST, FIRST + 20)
+) = range(FIRST, FIRST + 22)
 
 (
     REFLECTED,

@@ -10,6 +10,7 @@ import numpy as np
 from rigbench.arm.arm import Arm
 from rigbench.arm.collision import collision
 from rigbench.arm.mismatch import believed, plant
+from rigbench.errors import EngineError
 from rigbench.laws.law import Setup
 from rigbench.laws.model import Model
 from rigbench.rig.engine import Engine
@@ -38,7 +39,14 @@ def simulate(run: Run, engine: Engine | None = None) -> Log:
     if engine is None and run.scene is not None:
         with contextlib.closing(Engine()) as own:
             return simulate(run, own)
-    engine = worker_engine() if engine is None else engine
+    if engine is None:
+        try:
+            return simulate(run, worker_engine())
+        except EngineError:
+            # a plug-in may have closed our engine behind our back: one more try with a fresh one
+            worker_engine().close()
+            worker_engine.cache_clear()
+            return simulate(run, worker_engine())
     arm = run.arm.arm()
     setting = Setting(
         plant=plant(arm, run.mismatch, run.level, run.sources, run.seed, run.draw or 0, run.case),

@@ -95,6 +95,7 @@ def _limited(machine: Floats, io: Floats, i: int, asked: float) -> float:
 @kernel
 def _on_line(machine: Floats, i: int, speed: float) -> float:
     """Return the torque that the motor's torque-speed line leaves at ``speed``; inf without one."""
-    if not np.isfinite(machine[NO_LOAD_SPEED, i]):
-        return float(np.inf)
-    return float(machine[STALL_TORQUE, i]) * max(1.0 - speed / machine[NO_LOAD_SPEED, i], 0.0)
+    left = float(machine[STALL_TORQUE, i])
+    if np.isfinite(machine[NO_LOAD_SPEED, i]):
+        left *= max(1.0 - speed / machine[NO_LOAD_SPEED, i], 0.0)
+    return left

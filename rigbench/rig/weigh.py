@@ -31,9 +31,14 @@ class Weight:
 
 
 def link_pose(client: int, body: int, link: int) -> tuple[Floats, Floats]:
-    """Return position (3,) [m] and rotation (3, 3) of a link's frame in the world."""
+    """Return position (3,) [m] and rotation (3, 3) of a link's frame in the world.
+
+    By way of its inertial frame: the engine gives the link's own in single precision only.
+    """
     state = pybullet.getLinkState(body, link, computeForwardKinematics=True, physicsClientId=client)
-    return np.array(state[4]), Rotation.from_quat(state[5]).as_matrix()
+    inside = Rotation.from_quat(state[3]).as_matrix()
+    turned: Floats = Rotation.from_quat(state[1]).as_matrix() @ inside.T
+    return np.array(state[0]) - turned @ np.array(state[2]), turned
 
 
 def weights(client: int, body: int, joints: Sequence[int]) -> Iterator[Weight]:

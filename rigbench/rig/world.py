@@ -24,9 +24,10 @@ URDF's digits stays far below, a wrong or forgotten link far above."""
 class World:
     """The joints of ``arm`` in a body of the world of ``client`` (physicsClientId), found by name.
 
-    Raises InputFaults, addressed to the arguments, with all that keeps the rig from driving them: a name
-    that isn't there, another kind of joint, a base that is free, a time step other than 1/physics_hz,
-    substeps, real time, other masses than the arm's. EngineError if the engine refuses.
+    Raises InputFaults, addressed to the arguments, with what keeps the rig from driving them: a name that
+    isn't there, another kind of joint, an axis not of length 1, a base that is free, a time step other than
+    1/physics_hz, substeps, real time; or else other masses than the arm's. EngineError if the engine
+    refuses.
     """
 
     def __init__(self, client: int, body: int, arm: Arm, physics_hz: float) -> None:
@@ -107,6 +108,9 @@ class World:
             elif kinds.get(self._infos[index][2]) != wanted:
                 found = kinds.get(self._infos[index][2], "fixed or of another kind")
                 yield _fault("body", f"its joint '{name}' is {found}", wanted)
+            elif abs(length := float(np.linalg.norm(self._infos[index][13])) - 1.0) > SAME:
+                problem = f"the axis of its joint '{name}' is {length + 1.0:.6g} long: the engine errs then"
+                yield _fault("body", problem, "an <axis> of length 1 in the URDF")
 
     def _mass_fault(self) -> Fault | None:
         """Compare the mass matrices of body and arm where the body stands, and say how they differ."""
@@ -122,7 +126,10 @@ class World:
         if unsaid:
             problem += f"; the engine gave 1 kg to links without <inertial>: {', '.join(unsaid)}"
             return _fault("body", problem, "changeDynamics(mass=0, localInertiaDiagonal=(0, 0, 0)) on these")
-        return _fault("body", problem, "the arm's own URDF, loaded with URDF_USE_INERTIA_FROM_FILE")
+        expected = (
+            "the arm's URDF, loaded with URDF_USE_INERTIA_FROM_FILE, locked joints as the arm file has them"
+        )
+        return _fault("body", problem, expected)
 
 
 def _fault(argument: str, problem: str, expected: str = "", near: str | None = None) -> Fault:

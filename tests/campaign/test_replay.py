@@ -477,6 +477,8 @@ def test_a_key_that_names_no_run(tmp_path: Path, make_plan: Callable[..., Plan])
         done, waiting = plan.entries[0].key, plan.entries[1].key
         store.add([Outcome(done, "finished"), Outcome("0" * 40, "finished")])
         assert run_by_key(store, done).row.law == plan.entries[0].law
+        assert store.keys(done) == ([done], [])
+        assert store.keys("0" * 40) == ([], ["0" * 40])
         twins = [entry.key for entry in plan.entries]
         first = max((key[0] for key in twins), key=lambda digit: sum(key.startswith(digit) for key in twins))
         for beginning, says in (

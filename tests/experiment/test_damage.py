@@ -15,7 +15,7 @@ from typing import Any
 
 import pytest
 import yaml
-from hypothesis import HealthCheck, given, settings
+from hypothesis import HealthCheck, Phase, given, settings
 from hypothesis import strategies as st
 
 from rigbench.errors import InputFaults
@@ -101,6 +101,15 @@ WORDS = {
 }
 
 
+class Tree(yaml.SafeLoader):
+    """Builds the tree; an anchor may be given again, as YAML 1.2 has it (6.9.2)."""
+
+    def compose_node(self, parent: yaml.Node | None, index: Any) -> yaml.Node | None:
+        if not self.check_event(yaml.AliasEvent):
+            self.anchors.pop(self.peek_event().anchor, None)
+        return super().compose_node(parent, index)
+
+
 def scalar(text: str) -> Any:
     """A plain scalar in YAML 1.2's core schema."""
     if text in WORDS:
@@ -178,16 +187,20 @@ def fits(large: float, small: float) -> bool:
 
 
 def columns_of(data: dict[str, Any]) -> list[bool]:
-    """For each column whether it is random."""
+    """For each column whether it is random; a sweep may declare a source that the file leaves out."""
     mismatch, conditions = data.get("mismatch", {}), data.get("conditions", {})
-    sources = [name for name, value in mismatch.items() if value is not None]
+    declared = mismatch | data.get("vary", {}).get("mismatch", {})
+    sources = [name for name, value in declared.items() if value is not None]
     payload = mismatch.get("payload")
     if payload and payload["least_kg"] == payload["most_kg"] and not payload.get("cog_mm"):
         sources.remove("payload")
-    found = [False]
+    sensing, timing = data.get("sensing", {}), data.get("timing", {})
+    noise = [sensing.get("noise_deg"), timing.get("jitter_percent"), timing.get("dropped_percent")]
+    noisy = any(noise)
+    found = [noisy]
     found += [True] * (len(sources) if conditions.get("each_alone") is not None else 0)
     found += [True] * len(conditions.get("together") or [])
-    return found + [case.get("level", 0) > 0 for case in (conditions.get("cases") or {}).values()]
+    return found + [noisy or case.get("level", 0) > 0 for case in (conditions.get("cases") or {}).values()]
 
 
 def limits_of(declared: dict[str, Any] | None) -> dict[str, float]:
@@ -210,7 +223,7 @@ def same(given: Any, resolved: Any) -> bool:
 
 def check_meaning(text: str, experiment: Experiment) -> None:
     """The plan is what the plain reading of the text makes it."""
-    data = plain(yaml.compose(text, Loader=yaml.SafeLoader))
+    data = plain(yaml.compose(text, Loader=Tree))
     data = {key: value for key, value in data.items() if value is not None}
     plan = experiment.plan()
     rows, sheets, columns = rows_of(data), sheets_of(data), columns_of(data)
@@ -380,7 +393,7 @@ def test_undamaged_files_mean_what_they_say(tmp_path: Path, name: str, text: str
 
 
 QUIET = {
-    "deadline": None, "derandomize": True, "database": None,
+    "deadline": None, "derandomize": True, "database": None, "phases": (Phase.generate,),
     "suppress_health_check": [HealthCheck.function_scoped_fixture, HealthCheck.too_slow],
 }  # fmt: skip
 

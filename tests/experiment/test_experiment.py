@@ -20,8 +20,9 @@ DEMOS = sorted((Path(__file__).resolve().parents[2] / "experiments").glob("*.yam
 
 @pytest.mark.parametrize("path", DEMOS, ids=lambda path: path.stem)
 def test_the_demo_experiments_are_in_order(path: Path) -> None:
-    """Every experiment that comes with rigbench loads without a fault and without a note."""
-    assert load_experiment(path).notes == ()
+    """Every experiment that comes with rigbench loads without a fault, and notes nothing but a sweep's own price."""
+    of_sweep = ("skipped ", "the arm can't follow it with ")
+    assert [note for note in load_experiment(path).notes if not note.problem.startswith(of_sweep)] == []
 
 
 def test_defaults(load: Load) -> None:

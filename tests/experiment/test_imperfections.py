@@ -19,8 +19,9 @@ from rigbench.campaign.export import export_csv
 from rigbench.campaign.store import Store
 from rigbench.errors import Fault
 from rigbench.experiment import Experiment, load_experiment
+from rigbench.experiment.condition_keys import CaseKeys
 from rigbench.experiment.expand import NAMES
-from rigbench.experiment.mismatch_keys import CaseKeys, MismatchKeys
+from rigbench.experiment.mismatch_keys import MismatchKeys
 from rigbench.rig.sampled import Sensing, Timing
 from rigbench.scores.row import MACHINE_OUTCOMES
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import pickle
 from importlib.metadata import EntryPoint
+from pathlib import Path
 
 import numpy as np
 import pydantic
@@ -11,6 +12,7 @@ import pytest
 
 from rigbench.errors import InputFaults, LawError
 from rigbench.laws.options import describe_options, options_model, per_joint_options
+from rigbench.laws.plugins import own_trace
 from rigbench.laws.registry import LawChoice, choose, load_file_law, registered, registry_of
 
 SPRING = '''
@@ -157,8 +159,6 @@ def test_a_law_that_raises_in_a_run_is_told_with_its_own_lines(tmp_path):
     path.unlink()
     with pytest.raises(NameError) as caught:
         choice.make().start(None)
-    import traceback
-
-    trace = "".join(traceback.format_exception(caught.value))
+    trace = own_trace(caught.value, Path(__file__).parent)
     assert str(path) in trace
     assert "nonsense()" in trace

@@ -14,7 +14,7 @@ from matplotlib.collections import PolyCollection
 from matplotlib.figure import Figure
 from matplotlib.lines import Line2D
 from matplotlib.patches import Rectangle
-from matplotlib.transforms import Bbox
+from matplotlib.transforms import Affine2D, Bbox
 
 from rigbench.arm.files import ArmFiles
 from rigbench.arm.mismatch import Case, Mismatch, Payload, Spread, believed
@@ -199,7 +199,7 @@ def placed(figure: Figure) -> list[tuple[str, float, Bbox]]:
 
 @pytest.mark.parametrize("name", RUNS)
 def test_nothing_overlaps_and_all_is_on_the_page(name: str) -> None:
-    """No two texts touch, none is under 7 pt or off the page, axes stand apart from each other."""
+    """No two texts touch, none is under 7 pt, off the page or over a curve; panels stand apart from each other."""
     page = trace_figure(*RUNS[name]())
     texts = placed(page)
     width, height = page.get_size_inches() * 72
@@ -211,9 +211,10 @@ def test_nothing_overlaps_and_all_is_on_the_page(name: str) -> None:
         assert box.y1 < height, said
         for other, _, beside in texts[number + 1 :]:
             assert not box.overlaps(beside), (said, other)
-    frames = [axes.get_position() for axes in page.axes]
+    frames = [axes.get_position().transformed(Affine2D().scale(width, height)) for axes in page.axes]
     for number, frame in enumerate(frames):
         assert not any(frame.overlaps(other) for other in frames[number + 1 :])
+        assert not [said for said, _, box in texts if box.overlaps(frame)]
 
 
 def test_curves_are_those_of_the_log() -> None:

@@ -11,10 +11,12 @@ from rigbench.laws.law import TAU
 from rigbench.rig.drive import step_drive
 from rigbench.rig.rows import (
     DELAYED,
+    ENERGY,
     ERROR,
     LIMITED,
     MOTOR,
     Q_ENGINE,
+    TORQUE_PEAK,
     V_ENGINE,
     V_NEXT,
     V_TRUE,
@@ -210,3 +212,39 @@ def test_reading_tells_hit_stops_and_runaways(one_joint):
         io[Q_ENGINE], io[V_ENGINE] = q, v
         found.append(read_state(machine, io))
     assert len({OK, *found}) == 4
+
+
+def test_a_fast_joint_is_not_clamped(bench, one_joint):
+    """The engine's own limit of 100 rad/s on joint speed is lifted: a free joint keeps 150 rad/s."""
+    rig = bench(one_joint(mass=1e-9, cog=0.0, inertia=0.2), [0.0], [150.0], gravity=(0.0, 0.0, 0.0))
+    for _ in range(10):
+        _, v = rig.step([0.0])
+    assert v[0] == pytest.approx(150.0, rel=1e-12)
+
+
+def test_the_residual_sees_another_machine_in_the_engine(bench, one_joint):
+    """A drive that foresees with 1 % more mass than the engine has is caught within a few steps."""
+    rig = bench(one_joint(), [1.0])
+    rig.chain = one_joint(mass=2.02).chain(GRAVITY)
+    for _ in range(5):
+        rig.step([0.0])
+    assert rig.io[ERROR, 0] > 1e-6
+
+
+def test_the_speed_limit_holds_behind_a_lag(bench, one_joint):
+    """Limits act on the torque that leaves the current loop, so a lag can't push past the speed limit."""
+    arm = one_joint(mass=1e-6, cog=0.0, inertia=0.02, speed_limit=2.0, torque_limit=4.0, torque_lag=0.02)
+    rig = bench(arm, [0.0], gravity=(0.0, 0.0, 0.0))
+    fastest = max(rig.step(3.0)[1][0] for _ in range(400))
+    assert fastest <= 2.0 + 1e-3 * 3.0 / 0.02  # no more than one step's gain beyond
+
+
+def test_motor_energy_and_peak_are_taken_at_every_step(bench, one_joint):
+    """Constant torque on a free joint: the work is the kinetic energy gained; braking adds none."""
+    rig = bench(one_joint(mass=1e-9, cog=0.0, inertia=0.2), [0.0], gravity=(0.0, 0.0, 0.0))
+    for torque in [1.5] * 100 + [-2.0] * 50:
+        _, v = rig.step(torque)
+    gained = 0.5 * 0.2 * (1.5 / 0.2 * 0.1) ** 2
+    assert v[0] > 0
+    assert rig.io[ENERGY, 0] == pytest.approx(gained, rel=1e-9)
+    assert rig.io[TORQUE_PEAK, 0] == 2.0
