@@ -25,16 +25,12 @@ LuGre's bristles z (Canudas de Wit, Olsson, Astrom, Lischinsky 1995), with |v| o
 their relaxation: z+ = (z + dt v+)/(1 + dt sigma0 |v|/F), torque sigma0 z+ + sigma1 (z+ - z)/dt: linear in
 v+, so it enters the inertia and the momentum as friction of its own, without a box.
 
-Contacts push the links within the engine's step, out of the drive's sight. What they gave the joints,
-M (v - v+)/dt with v the speed that was reached, is added up and foreseen for the next step beside tau. So
-a steady load acts on rotors and dry friction as it does on the links, and a blow's whole momentum passes:
-what the rotors of M + Jr keep back arrives over the next (M + Jr)/M steps, since
-
-    M (v - v+) = dt (e+ - e),    (M + Jr) (v+ - v)/dt = tau - h + e,
-
-e the torque foreseen and e+ that which came, add up to (M + Jr) times the change of speed less dt times the
-torques that came, but for the last step's e+ - e. In the norm of M both M + Jr and a contact take part of
-a push only, so the feedback shrinks at any rotor inertia, mass or stiffness of what is touched.
+Contacts push the links within the engine's step, out of the drive's sight. What they gave the joints
+beyond the torque e that was foreseen, M (v - v+)/dt with v the speed reached, is added to e, which stands
+beside tau in the next step. So a steady load acts on rotors and dry friction as on the links. Of a blow the
+rotors' share passes over the next (M + Jr)/M steps or so, whole but for one step's torque: what rotors
+gain for nothing, Jr (v - v+) a step, adds up to dt Jr/M times what e has changed by. It is stable, since
+in the metric of M rotors answer a push by less than all of it, and what is touched by no more.
 
 Left out: the rotor's gyroscopic coupling to the other links, of order 1/G.
 """

@@ -51,8 +51,7 @@ def motor_torque(machine: Floats, io: Floats, i: int) -> None:
     if machine[RIPPLE, i] != 0.0:
         asked += machine[RIPPLE, i] * np.sin(machine[RIPPLE_PERIODS, i] * io[Q_TRUE, i])
     if machine[LAG, i] < 1.0:
-        asked = io[LAGGED, i] + machine[LAG, i] * (asked - io[LAGGED, i])
-    io[LAGGED, i] = asked
+        asked = _lagged(machine, io, i, asked)
     given = _limited(machine, io, i, asked)
     io[MOTOR, i] = given
     io[LIMITED, i] = 0.0 if given == asked else 1.0
@@ -73,6 +72,20 @@ def _delayed(machine: Floats, io: Floats, i: int, asked: float) -> float:
     io[DELAYED + step % length, i] = asked
     older = io[DELAYED + (step - whole - 1) % length, i]
     return float((1.0 - part) * io[DELAYED + (step - whole) % length, i] + part * older)
+
+
+@kernel
+def _lagged(machine: Floats, io: Floats, i: int, asked: float) -> float:
+    """Return the mean over the step of the current loop's torque on its way to what is asked.
+
+    The mean, not the value at the end, keeps the rig of second order in time. A run starts with the
+    loop settled on the first command, as the delay does.
+    """
+    before, share = io[LAGGED, i], machine[LAG, i]
+    if io[STEPS, 0] == 0.0:
+        before = asked
+    io[LAGGED, i] = before + share * (asked - before)
+    return float(asked + (before - asked) * share / -np.log(1.0 - share))
 
 
 @kernel

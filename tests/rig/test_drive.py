@@ -13,6 +13,7 @@ from rigbench.rig.rows import (
     DELAYED,
     ENERGY,
     ERROR,
+    LAGGED,
     LIMITED,
     MOTOR,
     Q_ENGINE,
@@ -183,14 +184,22 @@ def test_speed_limit_stops_driving_but_not_braking(bench, one_joint, limit):
 
 
 def test_torque_lag_is_first_order(one_joint):
-    """After its time constant the motor torque stands at 1 - 1/e of a step command."""
-    arm = one_joint(torque_lag=5e-3)
-    io = np.zeros((DELAYED, 1))
-    machine = machine_array(arm, 1e-3)
-    io[TAU] = 1.0
-    for _ in range(5):
+    """A run starts with the loop settled on its first command; a step then goes 1 - exp(-t/lag) of its way.
+
+    Each physics step acts with the mean over the step: from t to t + dt that is
+    1 - (exp(-t/lag) - exp(-(t + dt)/lag)) lag/dt.
+    """
+    arm, dt, lag = one_joint(torque_lag=5e-3), 1e-3, 5e-3
+    io, machine = np.zeros((DELAYED, 1)), machine_array(arm, dt)
+    io[TAU] = 2.0
+    step_drive(arm.chain(GRAVITY), machine, io)
+    assert io[MOTOR, 0] == 2.0
+    io[TAU] = 3.0
+    for k in range(5):
         step_drive(arm.chain(GRAVITY), machine, io)
-    assert io[MOTOR, 0] == pytest.approx(1 - np.exp(-1), rel=1e-12)
+        left = (np.exp(-k * dt / lag) - np.exp(-(k + 1) * dt / lag)) * lag / dt
+        assert io[MOTOR, 0] == pytest.approx(3.0 - left, rel=1e-12)
+    assert io[LAGGED, 0] == pytest.approx(3.0 - np.exp(-1), rel=1e-12)
 
 
 def test_a_torque_that_is_no_number_is_refused(one_joint):

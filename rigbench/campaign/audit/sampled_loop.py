@@ -44,8 +44,8 @@ def exact_loop(arm: Arm, choice: LawChoice, motion: Motion, control_hz: float) -
         lag dm/dt = u - m, or m = u without lag
 
     with the law's torque u held from tick to tick. scipy's DOP853 at 1e-11, started anew at each tick,
-    where u jumps. A run starts at rest at the reference's first point, its springs in balance. None
-    where stiffness makes that too slow.
+    where u jumps. A run starts at rest at the reference's first point, its springs in balance and its
+    current loops settled on the first torque. None where stiffness makes that too slow.
     """
     n, t = arm.n, np.arange(int(np.floor(motion.duration_s * control_hz + 1e-6)) + 1) / control_hz
     references = motion.reference(t)
@@ -61,6 +61,8 @@ def exact_loop(arm: Arm, choice: LawChoice, motion: Motion, control_hz: float) -
         q, v = rate.sensed(state)
         reference = Reference(*(series[k] for series in references))
         rate.u = law.torque(now, q, v, reference, law.model_term(now, q, v, reference))
+        if k == 0:
+            state[rate.split[-1]] = rate.u[rate.lagged]
         with np.errstate(all="ignore"):
             solved = solve_ivp(
                 rate, (0.0, 1.0 / control_hz), state, "DOP853",
