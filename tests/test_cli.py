@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+import contextlib
 import csv
 import io
 import json
 import os
 import signal
+import sqlite3
 import subprocess
 import sys
 import time
@@ -191,7 +193,7 @@ def test_a_run_in_worker_processes_gives_the_same(trial: Path) -> None:
 
 
 def test_ctrl_c_ends_with_3_and_the_next_run_goes_on(trial: Path) -> None:
-    """A campaign that is stopped says how to go on and keeps what is done."""
+    """A campaign that is stopped keeps what is done, prints what that shows, and says how to go on."""
     trial.write_text(TRIAL.replace("draws: 3", "draws: 4000"), encoding="utf-8")
     command = [sys.executable, "-m", "rigbench", "run", "trial.yaml", "--jobs", "0"]
     campaign = subprocess.Popen(command, stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True)
@@ -209,7 +211,8 @@ def test_ctrl_c_ends_with_3_and_the_next_run_goes_on(trial: Path) -> None:
     assert campaign.returncode == 3, stderr
     assert "'rigbench run trial.yaml' goes on from here" in stderr
     assert "Traceback" not in stderr
-    assert stdout == ""
+    assert "all at 1" in stdout
+    assert "of 8002 runs are still to do." in " ".join(stdout.split())
     trial.write_text(TRIAL, encoding="utf-8")
     assert "nothing to run" in run_here("trial.yaml").stderr or done < 8
 
@@ -258,17 +261,51 @@ def test_faults_as_json(trial: Path, arguments: tuple[str, ...], file: str) -> N
 
 
 def test_a_store_of_another_experiment_is_refused(trial: Path) -> None:
-    """Exit code 5, and the store is left as it was; check only notes it."""
+    """Another file of another title. Exit code 5, and the store is left as it was; check only notes it."""
     run_here("trial.yaml")
     before = Path("results/trial.sqlite").read_bytes()
-    trial.write_text(TRIAL.replace("A trial", "Another"), encoding="utf-8")
-    result = run_here("trial.yaml")
+    Path("other").mkdir()
+    Path("other/trial.yaml").write_text(TRIAL.replace("A trial", "Another"), encoding="utf-8")
+    result = run_here("other/trial.yaml")
     assert result.exit_code == 5
     assert "A trial" in result.stderr
     assert Path("results/trial.sqlite").read_bytes() == before
-    checked = call("check", "trial.yaml")
+    checked = call("check", "other/trial.yaml")
     assert checked.exit_code == 0
     assert "belongs to the experiment 'A trial'" in checked.stderr
+
+
+def test_a_title_can_be_mended_and_a_folder_moved(trial: Path) -> None:
+    """Nothing is run anew; where the file is another one, that is said."""
+    run_here("trial.yaml")
+    trial.write_text(TRIAL.replace("A trial", "Another"), encoding="utf-8")
+    mended = run_here("trial.yaml")
+    assert mended.exit_code == 0
+    assert "nothing to run" in mended.stderr
+    assert "was filled from" not in mended.stderr
+    assert "Another" in call("status", "results/trial.sqlite").stdout
+    Path("moved").mkdir()
+    trial.rename("moved/trial.yaml")
+    moved = run_here("moved/trial.yaml")
+    assert moved.exit_code == 0
+    assert "nothing to run" in moved.stderr
+    assert f"was filled from {trial.resolve()}" in moved.stderr
+
+
+def test_status_says_where_hosts_differ(trial: Path) -> None:
+    """In one sentence, as text and as JSON; on one host there is nothing to say."""
+    run_here("trial.yaml")
+    store = "results/trial.sqlite"
+    assert json.loads(call("status", store, "--json").stdout)["notes"] == []
+    with contextlib.closing(sqlite3.connect(store)) as connection, connection:
+        cpu, versions = connection.execute("SELECT cpu, versions FROM hosts").fetchone()
+        other = json.dumps(json.loads(versions) | {"numpy": "0.1"})
+        connection.execute("INSERT INTO hosts (cpu, versions) VALUES ('Another CPU', ?)", (other,))
+        connection.execute("UPDATE runs SET host = 2 WHERE rowid = 3")
+    (note,) = json.loads(call("status", store, "--json").stdout)["notes"]
+    assert f"different types of CPU ({cpu}, Another CPU) and versions of numpy (" in note
+    assert ", 0.1), so last digits may differ." in note
+    assert note in " ".join(call("status", store).stdout.split())
 
 
 def test_a_file_that_can_not_be_written(trial: Path) -> None:
@@ -296,6 +333,33 @@ def test_a_law_that_raises_shows_its_own_traceback(trial: Path) -> None:
     assert json.loads(ran.stdout)["runs"] == {"planned": 8, "done": 4, "failed": 4}
     assert ran.stderr.count("return no_such_name") == 1
     assert "4 runs of 'mine' came to nothing (law-error)" in ran.stderr
+    anew = "mine: 4 runs ended with its error: 'rigbench run trial.yaml --again mine' does them anew"
+    assert anew in ran.stderr
+    again = run_here("trial.yaml")
+    assert "all 8 runs are stored" in again.stderr
+    assert anew in again.stderr
+
+
+def test_a_law_can_be_run_anew(trial: Path) -> None:
+    """Its runs alone, with the same result; a name that isn't there is a fault with the nearest one."""
+    first = run_here("trial.yaml")
+    again = run_here("trial.yaml", "--again", "joint pd")
+    assert again.exit_code == 0
+    assert "4 of 8 runs to do" in again.stderr
+    assert again.stdout == first.stdout
+    both = run_here("trial.yaml", "--again", "joint pd", "--again", "computed torque")
+    assert "8 of 8 runs to do" in both.stderr
+    wrong = run_here("trial.yaml", "--again", "joint-pd", "--again", "computed torque")
+    assert wrong.exit_code == 2
+    assert "trial.yaml: --again: there is no law 'joint-pd'" in wrong.stderr
+    assert "(did you mean 'joint pd'?)" in wrong.stderr
+
+
+def test_entries_that_share_a_run_are_all_counted(trial: Path) -> None:
+    """One source alone and all together are the same runs where one is declared: 14 planned, 14 to do."""
+    trial.write_text(TRIAL.replace("together: [1]", "each_alone: 1, together: [1]"), encoding="utf-8")
+    assert "14 of 14 runs to do" in run_here("trial.yaml").stderr
+    assert "all 14 runs are stored" in run_here("trial.yaml").stderr
 
 
 def test_a_law_that_does_not_finish_is_noted(trial: Path) -> None:

@@ -17,7 +17,7 @@ from rigbench.campaign.plan import Entry, Plan
 from rigbench.campaign.reading import Counts
 from rigbench.campaign.store import Store
 from rigbench.errors import Stopped
-from rigbench.scores.row import MACHINE_OUTCOMES
+from rigbench.scores.row import MACHINE_OUTCOMES, SETTLED_TROUBLES
 
 __all__ = ["Progress", "run_campaign"]
 
@@ -45,17 +45,17 @@ def run_campaign(
     """Do every run of the plan that the store does not hold, and return how far the campaign is then.
 
     ``jobs`` worker processes (None: one a core; 0: in this process) or the given ``executor``; ``again``
-    names laws to be run anew. An outcome is stored as it comes, in a transaction of its own.
-    ``on_progress`` is called at the start and after each.
+    names laws to be run anew, see :meth:`Store.run_anew`. An outcome is stored as it comes, in a
+    transaction of its own. ``on_progress`` is called at the start and after each.
 
     The first SIGINT or SIGTERM lets the runs in hand end and stores them, the second drops them; both
     end in Stopped, unless nothing was left to do. StoreError if the disk refuses.
     """
     store.record_plan(plan)
     for law in again:
-        store.forget(law)
+        store.run_anew(law)
     missing = store.missing(plan)
-    tracker = _Tracker(plan, missing, store.outcomes().get("law-error", 0))
+    tracker = _Tracker(plan, missing, _settled_troubles(store))
     report = on_progress or (lambda _: None)
     draws = _Draws()
     executor = executor or executor_for(jobs, len(missing))
@@ -65,6 +65,8 @@ def run_campaign(
         try:
             with closing(executor.run_all(stop.until(missing))) as outcomes:
                 for outcome in outcomes:
+                    if stop.at_once:  # and should a law have swallowed the interrupt, its run is dropped too
+                        break
                     store.add([outcome], draws.of(entries[outcome.key]))
                     tracker.count(outcome.key, outcome.outcome)
                     report(tracker.progress())
@@ -76,14 +78,20 @@ def run_campaign(
     return counts
 
 
+def _settled_troubles(store: Store) -> int:
+    """Return how many planned runs came to nothing and would do so again."""
+    found = store.outcomes()
+    return sum(found.get(outcome, 0) for outcome in SETTLED_TROUBLES)
+
+
 class _Tracker:
     """Counts planned runs as they are done; one that stands for several entries counts for all of them."""
 
-    def __init__(self, plan: Plan, missing: list[Entry], law_errors: int) -> None:
+    def __init__(self, plan: Plan, missing: list[Entry], failed: int) -> None:
         weights = Counter(entry.key for entry in plan.entries)
         self._weights = {entry.key: weights[entry.key] for entry in missing}
-        self._planned, self._failed = len(plan.entries), law_errors
-        self._done = self._planned - sum(self._weights.values()) - law_errors
+        self._planned, self._failed = len(plan.entries), failed
+        self._done = self._planned - sum(self._weights.values()) - failed
         self._began = time.monotonic()
         self._ran = 0
 
@@ -124,6 +132,7 @@ class _Stop:
     """Whether somebody has asked the campaign to stop."""
 
     asked = False
+    at_once = False
 
     def until(self, entries: Iterable[Entry]) -> Iterator[Entry]:
         """Yield the entries for as long as nobody has asked."""
@@ -135,6 +144,7 @@ class _Stop:
     def on_signal(self, number: int, frame: FrameType | None) -> None:
         if self.asked:
             signal.signal(number, signal.SIG_IGN)  # a third one must not break the tidying up
+            self.at_once = True
             raise KeyboardInterrupt
         self.asked = True
 

@@ -7,7 +7,9 @@ import sqlite3
 from collections.abc import Iterator
 from pathlib import Path
 
+from rigbench.campaign.labels import Labels
 from rigbench.campaign.migrations import APPLICATION_ID, MIGRATIONS, schema_of
+from rigbench.campaign.owner import Owner
 from rigbench.errors import StoreError, StoreForeign
 
 __all__ = ["connect", "owner", "speaking_plainly"]
@@ -122,9 +124,14 @@ def _check_sound(path: Path, connection: sqlite3.Connection) -> None:
         raise StoreError(str(path), f"is damaged ({said}); move it away and run again, or restore a copy")
 
 
-def owner(connection: sqlite3.Connection) -> str | None:
-    """Return the title of the experiment that the store belongs to, None if it has none yet."""
+def owner(connection: sqlite3.Connection) -> Owner | None:
+    """Return the experiment that the store belongs to, whatever its schema; None if it has none yet."""
     if not connection.execute("SELECT count(*) FROM sqlite_master WHERE name = 'campaign'").fetchone()[0]:
         return None
-    found = connection.execute("SELECT title FROM campaign").fetchone()
-    return None if found is None else str(found[0])
+    query = connection.execute("SELECT * FROM campaign")
+    names = [column[0] for column in query.description]
+    found = query.fetchone()
+    if found is None:
+        return None
+    values = dict(zip(names, found, strict=True))
+    return Owner(values["title"], Labels.from_json(values["labels"]).arm, values.get("origin") or "")

@@ -4,6 +4,8 @@
 what goes wrong                        what becomes of the run
 =====================================  =====================================================
 the law raises                         'law-error', with the law's own traceback
+the draw's plant can't exist           'no-plant', with what of it can't
+engine and drive disagree              'disagrees', with by how much
 anything else raises                   'crashed', with the traceback
 the result can't be pickled            'crashed', with the reason
 the worker dies (signal, memory)       done once more; the second time 'crashed', with the signal

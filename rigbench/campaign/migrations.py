@@ -80,7 +80,14 @@ _KEPT_RUNS = (
     "ALTER TABLE plan ADD COLUMN run TEXT",
 )
 
-MIGRATIONS: tuple[Sequence[str], ...] = (_FIRST, _KEPT_RUNS)
+_OWNER_AND_ANEW = (
+    # Where the experiment file was at the last `run`, absolute; NULL if that is older than this step.
+    "ALTER TABLE campaign ADD COLUMN origin TEXT",
+    # 1 for a run that is to be done anew; its row stays until it is replaced.
+    "ALTER TABLE runs ADD COLUMN anew INTEGER NOT NULL DEFAULT 0",
+)
+
+MIGRATIONS: tuple[Sequence[str], ...] = (_FIRST, _KEPT_RUNS, _OWNER_AND_ANEW)
 """Step i leads from schema i to schema i + 1. A step that has been released is never edited."""
 
 

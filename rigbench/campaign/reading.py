@@ -16,15 +16,16 @@ from typing import Self
 from rigbench.campaign.connection import connect, owner, speaking_plainly
 from rigbench.campaign.kept import Kept, NotKept, restored
 from rigbench.campaign.labels import Labels
+from rigbench.campaign.owner import Owner
 from rigbench.campaign.plan import Entry, Plan
 from rigbench.campaign.work import Host
 from rigbench.errors import StoreError
 from rigbench.scores.results import Results
-from rigbench.scores.row import HOST_OUTCOMES, MACHINE_OUTCOMES, Row
+from rigbench.scores.row import HOST_OUTCOMES, MACHINE_OUTCOMES, SETTLED_TROUBLES, Row
 
 __all__ = ["Counts", "Reader", "Record"]
 
-SETTLED = (*MACHINE_OUTCOMES, "law-error")
+SETTLED = (*MACHINE_OUTCOMES, *SETTLED_TROUBLES)
 """Outcomes that the same run would have again. The others are tried anew by the next campaign."""
 
 
@@ -107,13 +108,15 @@ class Reader:
     def missing(self, plan: Plan) -> list[Entry]:
         """Return the entries to run, in order, one for each key.
 
-        What has the machine's verdict is not run again, nor is a 'law-error', which would come again
-        (another text of the law is another key; :meth:`forget` helps where something else was amended).
+        What has the machine's verdict is not run again, nor is what would come again likewise (another
+        text of a law is another key), unless it was put down to be run anew, see :meth:`Store.run_anew`.
         What timed out or crashed is tried again.
         """
         marks = ", ".join("?" * len(SETTLED))
         with speaking_plainly(self.path):
-            query = self._connection.execute(f"SELECT key FROM runs WHERE outcome IN ({marks})", SETTLED)
+            query = self._connection.execute(
+                f"SELECT key FROM runs WHERE NOT anew AND outcome IN ({marks})", SETTLED
+            )
             seen = {key for (key,) in query}
         missing = []
         for entry in plan.entries:
@@ -127,6 +130,12 @@ class Reader:
         """The names and limits that the campaign is shown with."""
         with speaking_plainly(self.path):
             return Labels.from_json(self._connection.execute("SELECT labels FROM campaign").fetchone()[0])
+
+    @property
+    def owner(self) -> Owner | None:
+        """The experiment that the store belongs to, None if it has none yet."""
+        with speaking_plainly(self.path):
+            return owner(self._connection)
 
     @property
     def experiment(self) -> tuple[str, str]:
@@ -153,11 +162,12 @@ class Reader:
         )
 
     def outcomes(self) -> dict[str, int]:
-        """Count the planned runs by their outcome, '' for those without one."""
+        """Count the planned runs by their outcome, '' for those without one or put down to be run anew."""
         with speaking_plainly(self.path):
             return dict(
                 self._connection.execute(
-                    "SELECT coalesce(outcome, ''), count(*) FROM plan LEFT JOIN runs USING (key) GROUP BY 1"
+                    "SELECT CASE WHEN anew THEN '' ELSE coalesce(outcome, '') END, count(*)"
+                    " FROM plan LEFT JOIN runs USING (key) GROUP BY 1"
                 )
             )
 
@@ -223,6 +233,15 @@ class Reader:
                 "SELECT cpu, versions FROM runs JOIN hosts ON hosts.id = host WHERE key = ?", (key,)
             ).fetchone()
         return None if found is None else Host(found[0], tuple(json.loads(found[1]).items()))
+
+    def hosts(self) -> list[Host]:
+        """Return the hosts that did the planned runs."""
+        with speaking_plainly(self.path):
+            query = self._connection.execute(
+                "SELECT cpu, versions FROM hosts WHERE id IN"
+                " (SELECT host FROM runs WHERE key IN (SELECT key FROM plan)) ORDER BY id"
+            )
+            return [Host(cpu, tuple(json.loads(versions).items())) for cpu, versions in query]
 
     def rows(self) -> list[Row]:
         """Return the rows of the planned runs that are stored, in the order of the plan."""

@@ -21,6 +21,7 @@ from rigbench.campaign.kept import Keeper
 from rigbench.campaign.labels import Labels
 from rigbench.campaign.lock import WriterLock
 from rigbench.campaign.migrations import migrate
+from rigbench.campaign.owner import Owner
 from rigbench.campaign.plan import Plan
 from rigbench.campaign.reading import Reader
 from rigbench.campaign.work import Host, Outcome
@@ -43,12 +44,12 @@ class Store(Reader):
         self._lock: WriterLock | None = lock
 
     @classmethod
-    def open_for_writing(cls, path: str | Path, title: str) -> Store:
-        """Open the store of the experiment ``title``, made new (and its folder) if there is none.
+    def open_for_writing(cls, path: str | Path, plan: Plan) -> Store:
+        """Open the store of the plan's experiment, made new (and its folder) if there is none.
 
-        StoreForeign if the file is no store or belongs to another experiment, and then it is left as it
-        was; StoreBusy if another process writes to it; StoreError if it is damaged, was made by a newer
-        rigbench, or the disk refuses.
+        StoreForeign if the file is no store or belongs to another experiment (see :class:`Owner`), and
+        then it is left as it was; StoreBusy if another process writes to it; StoreError if it is damaged,
+        was made by a newer rigbench, or the disk refuses.
         """
         path = Path(path).resolve()
         with contextlib.ExitStack() as undo, speaking_plainly(path):
@@ -57,7 +58,7 @@ class Store(Reader):
             undo.callback(lock.release)
             connection = connect(path, writing=True)
             undo.callback(connection.close)
-            _check_owner(path, connection, title)
+            _check_owner(path, connection, Owner.of(plan))
             migrate(connection)
             connection.execute("PRAGMA journal_mode = WAL")
             undo.pop_all()
@@ -77,10 +78,11 @@ class Store(Reader):
         """Replace the stored plan, names and texts by those of ``plan``; runs that are done stay."""
         with self._transaction() as connection:
             connection.execute(
-                "INSERT INTO campaign VALUES (1, ?, ?, ?, ?, ?, ?, ?) ON CONFLICT (one) DO UPDATE SET"
+                "INSERT INTO campaign (one, title, experiment_path, experiment_text, seed, labels, created,"
+                " updated, origin) VALUES (1, ?, ?, ?, ?, ?, ?, ?, ?) ON CONFLICT (one) DO UPDATE SET"
                 " title = excluded.title, experiment_path = excluded.experiment_path,"
                 " experiment_text = excluded.experiment_text, seed = excluded.seed,"
-                " labels = excluded.labels, updated = excluded.updated",
+                " labels = excluded.labels, updated = excluded.updated, origin = excluded.origin",
                 _campaign_values(plan),
             )
             connection.execute("UPDATE files SET planned = 0")
@@ -109,7 +111,7 @@ class Store(Reader):
             )
             for outcome in outcomes:
                 connection.execute(
-                    "INSERT OR REPLACE INTO runs VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?)",
+                    "INSERT OR REPLACE INTO runs VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?, 0)",
                     _run_values(outcome, self._host_id(outcome.host)),
                 )
 
@@ -122,27 +124,31 @@ class Store(Reader):
         number: int = query.fetchone()[0]
         return number
 
-    def forget(self, law: str) -> int:
-        """Drop what is stored of a law's planned runs, so that they are run anew; return how many."""
+    def run_anew(self, law: str) -> int:
+        """Put down a law's stored planned runs to be run anew; return how many.
+
+        They count as still to do, in this campaign and the next ones, but each keeps its row until an
+        outcome replaces it.
+        """
         with self._transaction() as connection:
             return connection.execute(
-                "DELETE FROM runs WHERE key IN (SELECT key FROM plan WHERE law = ?)", (law,)
+                "UPDATE runs SET anew = 1 WHERE key IN (SELECT key FROM plan WHERE law = ?)", (law,)
             ).rowcount
 
 
-def _check_owner(path: Path, connection: sqlite3.Connection, title: str) -> None:
+def _check_owner(path: Path, connection: sqlite3.Connection, asking: Owner) -> None:
     found = owner(connection)
-    if found is not None and found != title:
+    if found is not None and not found.is_same(asking):
         raise StoreForeign(
-            str(path),
-            f"belongs to the experiment '{found}', not to '{title}'; name another file with --store",
+            str(path), f"belongs to {found}, not to {asking}; name another file for this one with --store"
         )
 
 
 def _campaign_values(plan: Plan) -> tuple[object, ...]:
     seed, now = None if plan.seed is None else str(plan.seed), _now()
     labels = Labels.of(plan).to_json()
-    return plan.title, plan.experiment_path, plan.experiment_text, seed, labels, now, now
+    origin = Owner.of(plan).origin
+    return plan.title, plan.experiment_path, plan.experiment_text, seed, labels, now, now, origin
 
 
 def _file_values(plan: Plan) -> Iterator[tuple[str, str, str]]:

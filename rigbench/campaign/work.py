@@ -15,7 +15,7 @@ from importlib.metadata import PackageNotFoundError, version
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from rigbench.errors import LawError, SceneError
+from rigbench.errors import InputFaults, LawError, SceneError
 from rigbench.scores.names import SCORES
 
 if TYPE_CHECKING:
@@ -61,8 +61,10 @@ def do(run: Run) -> Outcome:
     """Do a run and score it. Whatever is raised in it but KeyboardInterrupt ends as its outcome.
 
     An exception of the law is a 'law-error'; so is one of the scene, whose reason says so: it would come
-    again likewise. Any other one is not the machine's verdict, whoever's it is (the engine's, the disk's,
-    a mistake of ours): the run is 'crashed' and carries the traceback.
+    again likewise. So would 'no-plant', of a draw or case that makes a machine that can't exist, and
+    'disagrees', of a run on which engine and drive disagree about the machine: its outcome and scores
+    are no verdict. Any other exception is the host's, whoever's it is (the engine's, the disk's, a
+    mistake of ours): the run is 'crashed' and carries the traceback.
     """
     key, begin = run.key(), time.perf_counter()
     try:
@@ -72,6 +74,9 @@ def do(run: Run) -> Outcome:
     except SceneError as error:
         reason = f"scene '{error.name}': {error.summary}"
         return failed(key, "law-error", reason, error.trace, this_host(run.law.plugin))
+    except InputFaults as error:  # all else that is declared was checked before: it is the plant
+        reason = "; ".join(map(str, error.faults))
+        return failed(key, "no-plant", reason, host=this_host(run.law.plugin))
     except KeyboardInterrupt:
         raise
     except BaseException as error:
@@ -91,9 +96,19 @@ def summary(error: BaseException) -> str:
 
 def _simulated(run: Run, key: str, begin: float) -> Outcome:
     from rigbench.rig import simulate  # the engine and the compiler: a second of imports
+    from rigbench.rig.log import RESIDUAL_LIMIT
     from rigbench.scores.of_run import score_run
 
     log = simulate(run)
+    if log.in_doubt and log.outcome != "diverged":  # at the speeds of a runaway, rounding alone is as much
+        return Outcome(
+            key,
+            "disagrees",
+            f"engine and drive disagree by {log.residual:.2g} rad/s (limit {RESIDUAL_LIMIT:g})",
+            residual=float(log.residual),
+            wall_s=time.perf_counter() - begin,
+            host=this_host(run.law.plugin),
+        )
     scores = score_run(log, run.motion, run.settle_band_mm)
     for name, value in scores.items():
         if math.isnan(value) or value == -math.inf:

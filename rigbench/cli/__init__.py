@@ -11,12 +11,14 @@ from typing import Annotated
 import typer
 
 from rigbench import __version__
-from rigbench.cli.output import pipes_may_break, telling
+from rigbench.cli.output import streams_may_fail, telling
+from rigbench.cli.usage import Commands
 
 __all__ = ["app", "main"]
 
 app = typer.Typer(
     name="rigbench",
+    cls=Commands,
     help="A software test rig for the joint control of robot arms: which law still meets the tolerance on a "
     "machine that is not the one in the model?",
     epilog="Exit codes: 0 done; 1 an error that nobody foresaw; 2 the input is at fault; 3 a campaign "
@@ -72,6 +74,10 @@ def run(
         str | None,
         typer.Option(help="where the runs are stored; results/NAME_OF_FILE.sqlite if left out"),
     ] = None,
+    again: Annotated[
+        list[str] | None,
+        typer.Option(metavar="LAW", help="do all runs of this law anew; may be given several times"),
+    ] = None,
     as_json: Json = False,
 ) -> None:
     """Do the runs that are not stored yet; print the results matrix and draw it beside the store.
@@ -81,7 +87,7 @@ def run(
     with telling(as_json):
         from rigbench.cli.run import run_experiment
 
-        run_experiment(file, jobs, store, as_json)
+        run_experiment(file, jobs, store, as_json, tuple(again or ()))
 
 
 @app.command(epilog="Example: rigbench status results/first-look.sqlite")
@@ -224,6 +230,6 @@ def laws(
 
 def main() -> None:
     """Run the command line and leave the process with its exit code."""
-    with pipes_may_break():
+    with streams_may_fail():
         app()
     sys.exit(1)  # pragma: no cover - app() leaves by SystemExit

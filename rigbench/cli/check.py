@@ -7,6 +7,7 @@ from dataclasses import asdict, dataclass
 from pathlib import Path
 from typing import Any
 
+from rigbench.campaign.owner import Owner
 from rigbench.campaign.plan import Plan
 from rigbench.campaign.store import Store
 from rigbench.cli.estimate import Estimate, estimate_of
@@ -47,12 +48,12 @@ def _stored(plan: Plan, path: Path) -> Stored:
         return Stored(path, None)
     try:
         with Store.open_for_reading(path) as store:
-            owner = store.labels.title
+            owner = store.owner
             missing = {entry.key for entry in store.missing(plan)}
     except StoreError as error:
         return Stored(path, None, (Fault(error.path, None, "", error.problem),))
-    if owner != plan.title:
-        problem = f"belongs to the experiment '{owner}': 'run' will want another one, named with --store"
+    if owner is not None and not owner.is_same(Owner.of(plan)):
+        problem = f"belongs to {owner}: 'run' will want another one, named with --store"
         return Stored(path, None, (Fault(str(path), None, "", problem),))
     return Stored(path, sum(entry.key not in missing for entry in plan.entries))
 

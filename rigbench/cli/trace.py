@@ -2,9 +2,7 @@
 
 from __future__ import annotations
 
-import contextlib
 import math
-import sys
 from collections.abc import Callable, Iterator
 from pathlib import Path
 from typing import Any
@@ -42,8 +40,7 @@ def trace_run(
     with Store.open_for_reading(path) as store:
         record = choose(store)
         files = _files(Path(path), record.key, output, animation)
-        with _prints_aside():
-            again = replay(store, record)
+        again = replay(store, record)
         _write(again, store, files)
         if as_json:
             print_json(_document(path, again, files))
@@ -81,13 +78,6 @@ def _files(store: Path, key: str, output: str | None, animation: str | None) -> 
         if file.resolve() == store.resolve():
             raise InputFaults.one(file, "-o", "is the store itself", "another file")
     return files
-
-
-@contextlib.contextmanager
-def _prints_aside() -> Iterator[None]:
-    """Send what a law prints to stderr: stdout belongs to the command's own result."""
-    with contextlib.redirect_stdout(sys.stderr):
-        yield
 
 
 def _write(again: Replay, store: Reader, files: dict[str, Path]) -> None:

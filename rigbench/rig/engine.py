@@ -24,13 +24,17 @@ CONTACT_BREAKING_M = 0.02
 @contextlib.contextmanager
 def _quiet(*streams: int) -> Iterator[None]:
     """Keep what the engine's C code prints off these file descriptors (1: where a caller's JSON goes)."""
-    saved, sink = [os.dup(stream) for stream in streams], os.open(os.devnull, os.O_WRONLY)
+    saved = {}
+    for stream in streams:
+        with contextlib.suppress(OSError):  # it is closed
+            saved[stream] = os.dup(stream)
+    sink = os.open(os.devnull, os.O_WRONLY)
     try:
-        for stream in streams:
+        for stream in saved:
             os.dup2(sink, stream)
         yield
     finally:
-        for stream, copy in zip(streams, saved, strict=True):
+        for stream, copy in saved.items():
             os.dup2(copy, stream)
             os.close(copy)
         os.close(sink)

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import signal
+import threading
 import time
 from collections.abc import Callable
 from dataclasses import dataclass
@@ -41,7 +43,7 @@ class StartedLaw:
         every = max(1, round(control_hz / model_hz))
         try:
             compiled = self.law.compiled()
-        except Exception as problem:
+        except BaseException as problem:
             raise law_error(self.name, problem) from None
         if compiled is None:
             return _plain_call(self.name, self.law, io, every, late, law_ns)
@@ -52,17 +54,28 @@ def start_law(name: str, law: Law, setup: Setup) -> StartedLaw:
     """Start a law; LawError if it raises."""
     try:
         law.start(setup)
-    except Exception as problem:
+    except BaseException as problem:
         raise law_error(name, problem) from None
     return StartedLaw(name, law, setup)
 
 
-def law_error(name: str, problem: Exception) -> LawError:
-    """Turn whatever a law raised into a LawError that carries the law's own traceback, without ours."""
+def law_error(name: str, problem: BaseException) -> LawError:
+    """Turn whatever a law raised into a LawError that carries the law's own traceback, without ours.
+
+    Where Ctrl-C raises KeyboardInterrupt, it is taken for that and raised on.
+    """
     if isinstance(problem, LawError):
         return problem
+    if isinstance(problem, KeyboardInterrupt) and _ctrl_c_raises():
+        raise problem
     trace = own_trace(problem, Path(__file__).parent)
     return LawError(name, f"{type(problem).__name__}: {problem}", trace)
+
+
+def _ctrl_c_raises() -> bool:
+    """Whether Ctrl-C may come up as an exception here: not in a worker, nor where a campaign takes it."""
+    main = threading.current_thread() is threading.main_thread()
+    return main and signal.getsignal(signal.SIGINT) is signal.default_int_handler
 
 
 def _no_term(io: Floats, held: Floats, chain: Floats, own: Floats) -> None:

@@ -163,7 +163,7 @@ class Loop:
                     clock[0] = times[k]
                     try:
                         call_law(k)
-                    except Exception as problem:
+                    except BaseException as problem:
                         raise law_error(self._name, problem) from None
                 if k == last:
                     # the torque of the last tick is asked for and logged, but never acts

@@ -3,11 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
-from math import isfinite
+from dataclasses import dataclass
+from math import inf, isfinite
 
 from rigbench.scores.intervals import draws_to_decide
 from rigbench.scores.names import score_words
-from rigbench.scores.results import Results
+from rigbench.scores.results import Cell, Results
 from rigbench.scores.standing import SheetStanding
 
 __all__ = ["advise"]
@@ -40,7 +41,7 @@ def _missing(results: Results) -> Iterator[str]:
         yield f"{left} of {results.planned} runs are still to do"
     if results.failed:
         runs = _number(results.failed, "run")
-        yield f"{runs} failed (law's code, time limit or crash), for or against no law"
+        yield f"{runs} failed (law's code, the plant, time limit or crash), for or against no law"
 
 
 def _of_sheets(results: Results) -> str:
@@ -119,24 +120,51 @@ def _nothing_kept(sheet: SheetStanding) -> list[str]:
 
 
 def _nearest(sheet: SheetStanding, laws: Sequence[str]) -> Iterator[str]:
-    """Yield which law comes nearest to the main score's limit in the first column."""
-    limit = sheet.tolerance.limits.get(sheet.main) if sheet.tolerance else None
+    """Yield which law comes nearest to the main score's limit in the first column.
+
+    Where motions differ in the limit, a law is as near as in the motion in which it is farthest from its own.
+    """
     column = sheet.columns[0]
-    medians = {
-        law: sheet.cell(law, column).measures[sheet.main].median
-        for law in laws
-        if sheet.main in sheet.cell(law, column).measures
-    }
-    if limit is None or not medians:
+    gaps = {law: gap for law in laws if (gap := _gap(sheet, sheet.cell(law, column))) is not None}
+    if not gaps:
         return
-    law = min(medians, key=lambda law: medians[law])
-    if isfinite(medians[law]):
+    law = min(gaps, key=lambda law: gaps[law].ratio)
+    gap = gaps[law]
+    if isfinite(gap.median):
         who = "it has" if len(sheet.laws) == 1 else f"nearest is '{law}' with"
         words, unit = score_words(sheet.main)
-        yield (
-            f"{who} a {words} of {medians[law]:.3g} {unit} under '{column.name}', "
-            f"where {limit:g} {unit} is allowed"
-        )
+        where = f"in motion '{gap.motion}' under '{column.name}'" if gap.motion else f"under '{column.name}'"
+        yield f"{who} a {words} of {gap.median:.3g} {unit} {where}, where {gap.limit:g} {unit} is allowed"
+
+
+@dataclass(frozen=True)
+class _Gap:
+    """A median of the main score and its limit; ``motion`` is '' where all motions have the same limit."""
+
+    median: float
+    limit: float
+    motion: str = ""
+
+    @property
+    def ratio(self) -> float:
+        return self.median / self.limit if self.limit > 0.0 else inf
+
+
+def _gap(sheet: SheetStanding, cell: Cell) -> _Gap | None:
+    """Return how far a cell is from the main score's limit; None where there is no such limit or score."""
+    if sheet.tolerance is None:
+        return None
+    limits = {motion: sheet.tolerance.limits_for(motion).get(sheet.main) for motion in cell.motions}
+    common = set(limits.values()) or {sheet.tolerance.limits.get(sheet.main)}
+    if len(common) == 1:
+        limit, measure = common.pop(), cell.measures.get(sheet.main)
+        return None if limit is None or measure is None else _Gap(measure.median, limit)
+    gaps = [
+        _Gap(part.measures[sheet.main].median, limit, motion)
+        for motion, part in cell.motions.items()
+        if (limit := limits[motion]) is not None and sheet.main in part.measures
+    ]
+    return max(gaps, key=lambda gap: gap.ratio, default=None)
 
 
 def _shown(sheet: SheetStanding, law: str) -> str:

@@ -36,10 +36,10 @@ def score_run(log: Log, motion: Motion, settle_band_mm: float) -> dict[str, floa
       angle of R_r' R.
     - path_peak: the largest distance of p from the path that p_r takes over the whole motion.
     - overshoot, settle: see :func:`_rests`; absent where the motion has no rests.
-    - torque_rms, torque_peak, chatter over each joint's limit, the worst joint; absent where no joint has
-      one. saturated: the share of ticks at which the drive limited any joint.
-    - energy: sum over ticks and joints of max(0, torque mean(v)) / control_hz, where mean(v) is that of the
-      speeds at both ends of the tick during which the torque is held.
+    - torque_rms, chatter (at the ticks) and torque_peak (at any physics step, as logged) over each joint's
+      limit, the worst joint; absent where no joint has one. saturated: the share of ticks at which the
+      drive limited any joint.
+    - energy: as logged, from every physics step.
     - law_us and law_share: as logged, and over the control period.
     """
     if log.outcome != "finished":
@@ -59,8 +59,7 @@ def score_run(log: Log, motion: Motion, settle_band_mm: float) -> dict[str, floa
     scores |= dict(_joints(log))
     scores |= dict(_torques(log))
     scores["saturated_percent"] = 100.0 * float(np.any(log.limited, axis=1).mean())
-    work = log.torque[:-1] * (log.v[:-1] + log.v[1:]) * (0.5 / log.control_hz)
-    scores["energy_j"] = float(np.maximum(work, 0.0).sum())
+    scores["energy_j"] = log.energy_j
     scores["law_us"] = log.law_us
     scores["law_share_percent"] = 100.0 * log.law_us * 1e-6 * log.control_hz
     return scores
@@ -169,7 +168,8 @@ def _torques(log: Log) -> Iterator[tuple[str, float]]:
     if not columns.size:
         return
     part = log.torque[:, columns] / limits[columns]
-    rms, peak = 100.0 * np.sqrt(np.mean(part**2, axis=0)), 100.0 * np.abs(part).max(axis=0)
+    rms = 100.0 * np.sqrt(np.mean(part**2, axis=0))
+    peak = 100.0 * log.torque_peak[columns] / limits[columns]
     yield "torque_peak_percent", float(peak.max())
     yield "torque_rms_percent", float(rms.max())
     for column, joint_rms, joint_peak in zip(columns, rms, peak, strict=True):

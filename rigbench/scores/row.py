@@ -5,12 +5,16 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 
-__all__ = ["HOST_OUTCOMES", "MACHINE_OUTCOMES", "Row"]
+__all__ = ["HOST_OUTCOMES", "MACHINE_OUTCOMES", "SETTLED_TROUBLES", "Row"]
 
 MACHINE_OUTCOMES = ("finished", "diverged", "hit-stop")
 """The machine's verdicts: they count. A run that did not finish fails, with infinite error."""
 
-HOST_OUTCOMES = ("law-error", "timed-out", "crashed")
+SETTLED_TROUBLES = ("law-error", "no-plant", "disagrees")
+"""The host's troubles that the same run would have again: the law's or scene's code raised; the draw makes
+a plant that could not exist; engine and drive disagree about the machine (see Log.in_doubt)."""
+
+HOST_OUTCOMES = (*SETTLED_TROUBLES, "timed-out", "crashed")
 """The host's troubles: they leave their cell incomplete and count neither for nor against a law."""
 
 

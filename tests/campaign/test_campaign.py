@@ -2,16 +2,19 @@
 
 from __future__ import annotations
 
+import contextlib
 import os
 import signal
 import subprocess
 import sys
 import threading
 import time
+from collections import Counter
 from collections.abc import Callable
 from dataclasses import replace
 from pathlib import Path
 from types import ModuleType
+from typing import Any
 
 import pytest
 
@@ -20,6 +23,7 @@ from rigbench.campaign.executor import InProcess, Processes
 from rigbench.campaign.plan import Plan
 from rigbench.campaign.reading import Counts
 from rigbench.campaign.store import Store
+from rigbench.campaign.work import Outcome
 from rigbench.errors import Stopped, StoreError
 
 PlanMaker = Callable[..., Plan]
@@ -40,7 +44,7 @@ def test_a_campaign_runs_what_is_missing_and_nothing_else(
 ) -> None:
     """All rows are there afterwards; a second campaign has nothing to do, a larger one only what is new."""
     executor = Processes(jobs, doing.work) if jobs else InProcess(doing.work)
-    with Store.open_for_writing(tmp_path / "s.sqlite", "Trays") as store:
+    with Store.open_for_writing(tmp_path / "s.sqlite", make_plan()) as store:
         for draws, new in ((2, 10), (2, 0), (4, 8)):
             plan = make_plan(draws=draws)
             seen: list[Progress] = []
@@ -59,7 +63,7 @@ def test_progress_counts_every_planned_run_once(
     twin = replace(plan.entries[-1], condition="nominal")
     plan = replace(plan, entries=(*plan.entries, twin))
     seen: list[Progress] = []
-    with Store.open_for_writing(tmp_path / "s.sqlite", "Trays") as store:
+    with Store.open_for_writing(tmp_path / "s.sqlite", make_plan()) as store:
         counts = run_campaign(plan, store, on_progress=seen.append, executor=InProcess(doing.work))
         assert counts == Counts(15, 13, 2)
         again = list[Progress]()
@@ -76,7 +80,7 @@ def test_what_crashed_is_tried_again_by_the_next_campaign(
 ) -> None:
     """A crash is kept as a row until the run comes to an end; a law's error is not tried again unless asked."""
     plan = make_plan()
-    with Store.open_for_writing(tmp_path / "s.sqlite", "Trays") as store:
+    with Store.open_for_writing(tmp_path / "s.sqlite", make_plan()) as store:
         crashed = run_campaign(acting(plan, "raise", 2), store, executor=InProcess(doing.work))
         assert crashed == Counts(14, 7, 7)
         assert run_campaign(acting(plan, "law-error"), store, executor=InProcess(doing.work)) == Counts(
@@ -87,13 +91,34 @@ def test_what_crashed_is_tried_again_by_the_next_campaign(
         assert counts == Counts(14, 14, 0)
 
 
+def test_runs_to_be_done_anew_are_safe_and_remembered(
+    tmp_path: Path, doing: ModuleType, make_plan: PlanMaker
+) -> None:
+    """Stopped half way, every row is still there; the next campaign, asked for nothing, does the other half."""
+    plan = make_plan()
+    with Store.open_for_writing(tmp_path / "s.sqlite", plan) as store:
+        run_campaign(acting(plan, "law-error"), store, executor=InProcess(doing.work))
+
+        def ask(progress: Progress) -> None:
+            if progress.done == 3:
+                os.kill(os.getpid(), signal.SIGINT)
+
+        with pytest.raises(Stopped, match="10 of 14"):
+            run_campaign(plan, store, on_progress=ask, again=["pd"], executor=InProcess(doing.work))
+        assert Counter(row.outcome for row in store.rows()) == {"finished": 3, "law-error": 11}
+        assert store.counts() == Counts(14, 3, 7)
+        seen: list[Progress] = []
+        counts = run_campaign(plan, store, on_progress=seen.append, executor=InProcess(doing.work))
+        assert (len(seen) - 1, counts) == (4, Counts(14, 7, 7))
+
+
 def test_the_values_of_the_draws_are_stored_with_the_rows(
     tmp_path: Path, doing: ModuleType, make_plan: PlanMaker
 ) -> None:
     """Every parameter that was random has its u, the same as the plant was built with."""
     from rigbench.arm.mismatch import uniform
 
-    with Store.open_for_writing(tmp_path / "s.sqlite", "Trays") as store:
+    with Store.open_for_writing(tmp_path / "s.sqlite", make_plan()) as store:
         run_campaign(make_plan(draws=2), store, executor=InProcess(doing.work))
         values = store.draw_values()
     names = [f"{source}_percent.{joint}" for source in ("coulomb", "viscous") for joint in ("j1", "j2")]
@@ -112,7 +137,7 @@ def test_asked_once_it_finishes_what_is_in_hand_and_can_be_resumed(
     plan = acting(make_plan(draws=10), "finish", seconds=0.01, folder=str(tmp_path))
     executor = Processes(jobs, doing.work) if jobs else InProcess(doing.work)
     before = signal.getsignal(number)
-    with Store.open_for_writing(tmp_path / "s.sqlite", "Trays") as store:
+    with Store.open_for_writing(tmp_path / "s.sqlite", make_plan()) as store:
 
         def ask(progress: Progress) -> None:
             if progress.done == 5:
@@ -146,11 +171,31 @@ def test_asked_twice_it_drops_what_is_in_hand(
             for delay in (0.3, 0.6):
                 threading.Timer(delay, os.kill, (os.getpid(), signal.SIGINT)).start()
 
-    with Store.open_for_writing(tmp_path / "s.sqlite", "Trays") as store:
+    with Store.open_for_writing(tmp_path / "s.sqlite", make_plan()) as store:
         with pytest.raises(Stopped):
             run_campaign(plan, store, on_progress=ask, executor=executor)
         assert store.counts() == Counts(42, 5, 0)
     assert time.monotonic() - began < 60
+
+
+def test_a_law_that_swallows_the_interrupt_does_not_keep_its_run(
+    tmp_path: Path, doing: ModuleType, make_plan: PlanMaker, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """Whatever outcome comes of a run that was to be dropped at once, it is not stored."""
+
+    def swallow(run: Any) -> Outcome:
+        with contextlib.suppress(KeyboardInterrupt):
+            for _ in range(2):
+                os.kill(os.getpid(), signal.SIGINT)
+            time.sleep(30)
+        return Outcome(run.key(), "law-error", "KeyboardInterrupt")
+
+    monkeypatch.setitem(doing.ACTS, "swallow", swallow)
+    plan = acting(make_plan(), "swallow")
+    with Store.open_for_writing(tmp_path / "s.sqlite", plan) as store:
+        with pytest.raises(Stopped, match="0 of 14"):
+            run_campaign(plan, store, executor=InProcess(doing.work))
+        assert store.rows() == []
 
 
 def test_asked_at_the_very_end_it_is_simply_done(
@@ -162,7 +207,7 @@ def test_asked_at_the_very_end_it_is_simply_done(
         if progress.done == 14:
             os.kill(os.getpid(), signal.SIGINT)
 
-    with Store.open_for_writing(tmp_path / "s.sqlite", "Trays") as store:
+    with Store.open_for_writing(tmp_path / "s.sqlite", make_plan()) as store:
         assert run_campaign(make_plan(), store, on_progress=ask, executor=InProcess(doing.work)).done == 14
 
 
@@ -183,7 +228,7 @@ def main():
     entries = tuple(Entry("", "pd", "lift", "nominal", 0.0, None, run) for run in runs)
     plan = Plan("Trays", "arm", "", "t.yaml", ("",), ("pd",), ("lift",), (), 1, None, entries, "go on")
     try:
-        with Store.open_for_writing(Path(sys.argv[2]), "Trays") as store:
+        with Store.open_for_writing(Path(sys.argv[2]), plan) as store:
             run_campaign(plan, store, on_progress=lambda p: print(p.done, flush=True), executor=Processes(2, doing.work))
     except RigbenchError as error:
         print(error, file=sys.stderr)
@@ -227,7 +272,7 @@ def test_ctrl_c_in_a_terminal_is_quiet(
 
 
 def test_a_killed_campaign_goes_on_where_it_was(
-    tmp_path: Path, doing: ModuleType, surroundings: dict[str, str]
+    tmp_path: Path, doing: ModuleType, surroundings: dict[str, str], make_plan: PlanMaker
 ) -> None:
     """After SIGKILL every run that was told done is stored whole, and the store can be written to again."""
     main = start(tmp_path, doing, surroundings)
@@ -236,7 +281,7 @@ def test_a_killed_campaign_goes_on_where_it_was(
         assert main.poll() is None
     main.kill()
     told = int((main.communicate(timeout=60)[0].split() or ["20"])[-1])
-    with Store.open_for_writing(tmp_path / "s.sqlite", "Trays") as store:
+    with Store.open_for_writing(tmp_path / "s.sqlite", make_plan(arm="arm")) as store:
         rows = store.rows()
         assert told <= len(rows) <= told + 1
         assert all(row.scores["tool_peak_mm"] == len(f"run {i}") / 3 for i, row in enumerate(rows) if i < 10)
@@ -247,7 +292,7 @@ def test_a_full_disk_ends_the_campaign_and_keeps_what_is_stored(
 ) -> None:
     """StoreError in plain words; afterwards nothing runs on, and with room the campaign goes on."""
     plan = make_plan(draws=200)
-    with Store.open_for_writing(tmp_path / "s.sqlite", "Trays") as store:
+    with Store.open_for_writing(tmp_path / "s.sqlite", make_plan()) as store:
         store.record_plan(plan)
         pages = store._connection.execute("PRAGMA page_count").fetchone()[0]
         store._connection.execute(f"PRAGMA max_page_count = {pages + 8}")

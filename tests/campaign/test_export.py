@@ -46,7 +46,7 @@ def text(tmp_path: Path, doing: ModuleType, plan: Plan) -> str:
         }
         return Outcome(key, "finished", scores=scores, host_scores={"law_us": 2.0}, residual=1e-9, wall_s=0.5)
 
-    with Store.open_for_writing(tmp_path / "s.sqlite", plan.title) as store:
+    with Store.open_for_writing(tmp_path / "s.sqlite", plan) as store:
         run_campaign(plan, store, executor=InProcess(work))
         stream = io.StringIO()
         assert export_csv(store, stream) == 6

@@ -132,17 +132,20 @@ def filled(tmp_path_factory: pytest.TempPathFactory) -> Path:
         (Column("nominal", 0.0, False, True), Column("all at 1", 1.0, True, True)),
         2, Tolerance({"tool_peak_mm": 50.0}), tuple(entries), "rigbench run short.yaml",
     )  # fmt: skip
-    with Store.open_for_writing(where / "short.sqlite", plan.title) as opened:
+    with Store.open_for_writing(where / "short.sqlite", plan) as opened:
         run_campaign(plan, opened, jobs=0)
     shutil.rmtree(folder)
     return where / "short.sqlite"
+
+
+SHORT = Plan("Short", "planar2", "", "short.yaml", ("",), (), ("short",), (), 2, None, (), "")
 
 
 @pytest.fixture
 def store(tmp_path: Path, filled: Path) -> Iterator[Store]:
     """A copy of that store, for the test to alter."""
     shutil.copy(filled, tmp_path / "short.sqlite")
-    with Store.open_for_writing(tmp_path / "short.sqlite", "Short") as opened:
+    with Store.open_for_writing(tmp_path / "short.sqlite", SHORT) as opened:
         yield opened
 
 
@@ -433,7 +436,7 @@ def test_a_store_of_the_first_schema_is_brought_up_to_date(
     connection.close()
     with pytest.raises(StoreError, match="older rigbench"):
         Store.open_for_reading(path)
-    with Store.open_for_writing(path, plan.title) as store:
+    with Store.open_for_writing(path, plan) as store:
         record = run_by_key(store, key)
         with pytest.raises(StoreError, match=r"did not keep what a replay needs; 'rigbench run' adds it"):
             replay(store, record)
@@ -472,7 +475,7 @@ def test_a_run_is_found_by_the_beginning_of_its_key(store: Store) -> None:
 def test_a_key_that_names_no_run(tmp_path: Path, make_plan: Callable[..., Plan]) -> None:
     """No digits, no such key, several, not run yet, not planned any more: each is said in its own words."""
     plan = make_plan(draws=3)
-    with Store.open_for_writing(tmp_path / "a.sqlite", plan.title) as store:
+    with Store.open_for_writing(tmp_path / "a.sqlite", plan) as store:
         store.record_plan(plan)
         done, waiting = plan.entries[0].key, plan.entries[1].key
         store.add([Outcome(done, "finished"), Outcome("0" * 40, "finished")])
@@ -512,7 +515,7 @@ def worst_plan(doing: Any, make_plan: Callable[..., Plan]) -> Plan:
 def worst(
     tmp_path: Path, plan: Plan, came_out: Callable[[Entry, int], Outcome | None], *names: str | None
 ) -> Any:
-    with Store.open_for_writing(tmp_path / "worst.sqlite", plan.title) as store:
+    with Store.open_for_writing(tmp_path / "worst.sqlite", plan) as store:
         store.record_plan(plan)
         found = (came_out(entry, number) for number, entry in enumerate(plan.entries))
         store.add(outcome for outcome in found if outcome)
@@ -575,7 +578,7 @@ def test_names_of_nothing_are_all_told_with_the_nearest(store: Store) -> None:
 def test_the_host_of_a_run_comes_back(tmp_path: Path, make_plan: Callable[..., Plan]) -> None:
     """As it was stored, in the order of its versions; None where none was."""
     plan, host = make_plan(draws=1), Host("a CPU", (("python", "3"), ("numpy", "2")))
-    with Store.open_for_writing(tmp_path / "a.sqlite", plan.title) as store:
+    with Store.open_for_writing(tmp_path / "a.sqlite", plan) as store:
         store.record_plan(plan)
         store.add([Outcome("a" * 40, "finished", host=host), Outcome("b" * 40, "finished")])
         assert store.host("a" * 40) == host

@@ -15,14 +15,32 @@ from pathlib import Path
 import pytest
 
 from rigbench.campaign.migrations import MIGRATIONS
+from rigbench.campaign.owner import Owner
 from rigbench.campaign.plan import Plan
 from rigbench.campaign.reading import Counts, Reader
 from rigbench.campaign.store import Store
 from rigbench.campaign.work import Host, Outcome
 from rigbench.errors import StoreBusy, StoreError, StoreForeign
-from rigbench.scores.row import Row
+from rigbench.scores.row import MACHINE_OUTCOMES, Row
 
 PlanMaker = Callable[..., Plan]
+
+
+TRAYS = Plan(
+    "Trays",
+    "two link",
+    "",
+    "trays.yaml",
+    ("",),
+    ("pd",),
+    ("lift",),
+    (),
+    1,
+    None,
+    (),
+    "rigbench run trays.yaml",
+)
+"""An experiment of which nothing is planned."""
 
 
 @pytest.fixture
@@ -35,7 +53,7 @@ def outcome_of(key: str, outcome: str = "finished", **scores: float) -> Outcome:
 
 
 def filled(path: Path, plan: Plan, outcome: str = "finished") -> None:
-    with Store.open_for_writing(path, plan.title) as store:
+    with Store.open_for_writing(path, plan) as store:
         store.record_plan(plan)
         store.add(outcome_of(entry.key, outcome, tool_peak_mm=1.0) for entry in plan.entries)
 
@@ -54,7 +72,7 @@ def test_rows_come_back_exactly_in_the_order_of_the_plan(path: Path, make_plan: 
     scores = {
         e.key: {"settle_ms": v, "joint_peak_deg.j1": v / 7} for e, v in zip(plan.entries, values, strict=True)
     }
-    with Store.open_for_writing(path, plan.title) as store:
+    with Store.open_for_writing(path, plan) as store:
         store.record_plan(plan)
         for entry in reversed(plan.entries):
             store.add([replace(outcome_of(entry.key, **scores[entry.key]), host_scores={"law_us": 2.5})])
@@ -82,7 +100,7 @@ def test_one_run_serves_every_entry_that_has_its_key(path: Path, make_plan: Plan
     plan = make_plan(draws=1)
     twin = replace(plan.entries[0], condition="all at 1")
     plan = replace(plan, entries=(*plan.entries, twin))
-    with Store.open_for_writing(path, plan.title) as store:
+    with Store.open_for_writing(path, plan) as store:
         store.record_plan(plan)
         assert [e.key for e in store.missing(plan)].count(twin.key) == 1
         store.add([outcome_of(twin.key)])
@@ -93,15 +111,15 @@ def test_one_run_serves_every_entry_that_has_its_key(path: Path, make_plan: Plan
 @pytest.mark.parametrize(
     ("outcome", "again"),
     [("finished", False), ("diverged", False), ("hit-stop", False), ("law-error", False),
-     ("timed-out", True), ("crashed", True)],
+     ("no-plant", False), ("disagrees", False), ("timed-out", True), ("crashed", True)],
 )  # fmt: skip
 def test_what_is_run_again(path: Path, make_plan: PlanMaker, outcome: str, again: bool) -> None:
-    """Verdicts and the law's own errors stay; what timed out or crashed is tried anew, and then replaced."""
+    """Verdicts and troubles that would come again stay; what timed out or crashed is tried anew, and then replaced."""
     plan = make_plan(draws=1)
     filled(path, plan, outcome)
-    with Store.open_for_writing(path, plan.title) as store:
+    with Store.open_for_writing(path, plan) as store:
         assert bool(store.missing(plan)) is again
-        assert store.counts().failed == (6 if outcome in ("law-error", "timed-out", "crashed") else 0)
+        assert store.counts().failed == (0 if outcome in MACHINE_OUTCOMES else 6)
         store.add([outcome_of(plan.entries[0].key)])
         assert store.rows()[0].outcome == "finished"
         assert len(store.rows()) == len(plan.entries)
@@ -111,7 +129,7 @@ def test_a_new_plan_replaces_the_old_and_keeps_its_runs(path: Path, make_plan: P
     """A smaller plan shows its own rows only; the old one again, and nothing is missing."""
     large, small = make_plan(draws=4), make_plan(draws=1)
     filled(path, large)
-    with Store.open_for_writing(path, small.title) as store:
+    with Store.open_for_writing(path, small) as store:
         store.record_plan(small)
         assert len(store.rows()) == len(small.entries)
         assert store.labels.draws == 1
@@ -120,19 +138,24 @@ def test_a_new_plan_replaces_the_old_and_keeps_its_runs(path: Path, make_plan: P
 
 
 def test_a_law_can_be_run_anew(path: Path, make_plan: PlanMaker) -> None:
-    """forget() makes that law's runs missing, and no other's."""
+    """run_anew() makes that law's runs missing, and no other's; their rows stay until they are replaced."""
     plan = make_plan()
     filled(path, plan)
-    with Store.open_for_writing(path, plan.title) as store:
-        assert store.forget("pd") == 7
+    with Store.open_for_writing(path, plan) as store:
+        assert store.run_anew("pd") == 7
         assert {e.law for e in store.missing(plan)} == {"pd"}
-        assert {row.law for row in store.rows()} == {"feedforward"}
+        assert store.counts() == Counts(14, 7, 0)
+        assert len(store.rows()) == 14
+        store.add([outcome_of(store.missing(plan)[0].key, "hit-stop")])
+        assert len(store.missing(plan)) == 6
+        assert store.counts() == Counts(14, 8, 0)
+        assert store.rows()[0].outcome == "hit-stop"
 
 
 def test_the_values_of_a_draw_never_change(path: Path, make_plan: PlanMaker) -> None:
     """A second value for the same seed, draw and parameter is ignored; another parameter is added."""
     plan = make_plan()
-    with Store.open_for_writing(path, plan.title) as store:
+    with Store.open_for_writing(path, plan) as store:
         store.record_plan(plan)
         store.add([], [(7, 0, {"a": 0.1}), (7, 0, {"a": 0.5, "b": -1.0}), (8, 0, {"a": 0.9})])
         assert store.draw_values() == {0: {"a": 0.1, "b": -1.0}}
@@ -142,7 +165,7 @@ def test_any_text_of_a_law_can_be_kept(path: Path, make_plan: PlanMaker) -> None
     """A lone surrogate in an exception's text, and a traceback of megabytes, are no obstacle."""
     plan = make_plan()
     bad = Outcome(plan.entries[0].key, "law-error", "said \udcff", trace="x" * 5_000_000 + "the end")
-    with Store.open_for_writing(path, plan.title) as store:
+    with Store.open_for_writing(path, plan) as store:
         store.record_plan(plan)
         store.add([bad])
         record = next(iter(store.records()))
@@ -155,7 +178,7 @@ def test_a_seed_of_any_size_can_be_kept(path: Path, make_plan: PlanMaker) -> Non
     """SQLite's integers end at 2^63; seeds don't."""
     plan = make_plan()
     big = tuple(replace(e, run=replace(e.run, seed=2**70)) for e in plan.entries)
-    with Store.open_for_writing(path, plan.title) as store:
+    with Store.open_for_writing(path, plan) as store:
         store.record_plan(replace(plan, entries=big))
         store.add([], [(2**70, 0, {"a": 0.25})])
         assert store.draw_values() == {0: {"a": 0.25}}
@@ -164,13 +187,62 @@ def test_a_seed_of_any_size_can_be_kept(path: Path, make_plan: PlanMaker) -> Non
 # --- what isn't ours is left alone
 
 
-def test_the_store_of_another_experiment_is_refused(path: Path, make_plan: PlanMaker) -> None:
-    """The refusal names both experiments and the way out, and the file is left byte for byte."""
+@pytest.mark.parametrize(
+    "other",
+    [
+        {"experiment_path": "elsewhere/trays.yaml", "title": "Cups"},
+        {"experiment_path": "elsewhere/trays.yaml", "arm": "six link"},
+    ],
+    ids=["title", "arm"],
+)
+def test_the_store_of_another_experiment_is_refused(
+    path: Path, make_plan: PlanMaker, other: dict[str, str]
+) -> None:
+    """Another file, and another title or arm. The refusal names both and the way out, and changes nothing."""
     filled(path, make_plan())
     before = contents(path)
-    with pytest.raises(StoreForeign, match=r"'Trays', not to 'Cups'.*--store"):
-        Store.open_for_writing(path, "Cups")
+    with pytest.raises(StoreForeign) as caught:
+        Store.open_for_writing(path, make_plan(**other))
+    said = str(caught.value)
+    assert f"'Trays' of arm 'two link' in {Path('trays.yaml').resolve()}" in said
+    assert f"'{other.get('title', 'Trays')}' of arm '{other.get('arm', 'two link')}'" in said
+    assert str(Path("elsewhere/trays.yaml").resolve()) in said
+    assert "--store" in said
     assert contents(path) == before
+
+
+@pytest.mark.parametrize(
+    "other",
+    [
+        {"experiment_path": "elsewhere/trays.yaml"},
+        {"title": "Cups"},
+        {"arm": "six link"},
+        {"experiment_path": "elsewhere/../trays.yaml", "title": "Cups", "arm": "six link"},
+    ],
+    ids=["moved", "retitled", "another arm", "same file"],
+)
+def test_an_experiment_that_was_moved_or_mended_keeps_its_store(
+    path: Path, make_plan: PlanMaker, other: dict[str, str]
+) -> None:
+    """The same file, or the same title and arm: its runs are there, and it is known as what it is now."""
+    filled(path, make_plan())
+    plan = make_plan(**other)
+    with Store.open_for_writing(path, plan) as store:
+        store.record_plan(plan)
+        assert store.missing(plan) == []
+    with Store.open_for_reading(path) as reader:
+        assert (reader.labels.title, reader.owner) == (plan.title, Owner.of(plan))
+
+
+def test_the_hosts_of_the_planned_runs_are_known(path: Path, make_plan: PlanMaker) -> None:
+    """Each once; not those of runs that the present plan doesn't have."""
+    plan = make_plan(draws=1)
+    hosts = [Host(cpu, (("numpy", version),)) for cpu, version in (("A", "1"), ("A", "2"), ("B", "1"))]
+    with Store.open_for_writing(path, plan) as store:
+        store.record_plan(plan)
+        store.add(Outcome(e.key, "finished", host=hosts[i % 2]) for i, e in enumerate(plan.entries))
+        store.add([Outcome("another", "finished", host=hosts[2])])
+        assert store.hosts() == hosts[:2]
 
 
 def _database(path: Path) -> None:
@@ -180,14 +252,14 @@ def _database(path: Path) -> None:
 
 
 def _newer(path: Path) -> None:
-    Store.open_for_writing(path, "Trays").close()
+    Store.open_for_writing(path, TRAYS).close()
     with sqlite3.connect(path) as connection:
         connection.execute(f"PRAGMA user_version = {len(MIGRATIONS) + 1}")
     connection.close()
 
 
 def _damaged(path: Path) -> None:
-    Store.open_for_writing(path, "Trays").close()
+    Store.open_for_writing(path, TRAYS).close()
     text = bytearray(path.read_bytes())
     text[100:3000] = b"\xff" * 2900
     path.write_bytes(text)
@@ -212,7 +284,7 @@ def test_other_files_are_refused_and_left_as_they_are(
     path.parent.mkdir()
     make(path)
     before = contents(path) if path.is_file() else None
-    for opening in (lambda: Store.open_for_writing(path, "Trays"), lambda: Reader.open_for_reading(path)):
+    for opening in (lambda: Store.open_for_writing(path, TRAYS), lambda: Reader.open_for_reading(path)):
         with pytest.raises(error, match=says) as caught:
             opening()
         assert type(caught.value) is error
@@ -230,7 +302,7 @@ def test_damage_within_is_found_before_more_is_added(path: Path, make_plan: Plan
     text[page : page + 4096] = b"\xff" * 4096
     path.write_bytes(text)
     with pytest.raises(StoreError, match="is damaged"):
-        Store.open_for_writing(path, "Trays")
+        Store.open_for_writing(path, TRAYS)
     with Store.open_for_reading(path) as reader, pytest.raises(StoreError, match="is damaged"):
         reader.rows()
 
@@ -262,11 +334,11 @@ def test_a_store_whose_making_was_cut_short_is_made(path: Path, make_plan: PlanM
 
 def test_a_second_writer_is_refused_until_the_first_has_closed(path: Path, make_plan: PlanMaker) -> None:
     """StoreBusy names the process that writes; nothing but the store itself is left when it closes."""
-    with Store.open_for_writing(path, "Trays"):
+    with Store.open_for_writing(path, TRAYS):
         with pytest.raises(StoreBusy, match=f"process {os.getpid()}"):
-            Store.open_for_writing(path, "Trays")
+            Store.open_for_writing(path, TRAYS)
         with pytest.raises(StoreBusy):
-            Store.open_for_writing(path.parent / ".." / path.parent.name / path.name, "Trays")
+            Store.open_for_writing(path.parent / ".." / path.parent.name / path.name, TRAYS)
     filled(path, make_plan())
     assert [p.name for p in path.parent.iterdir()] == [path.name]
 
@@ -275,13 +347,13 @@ def test_a_lock_file_left_over_is_no_obstacle(path: Path) -> None:
     """What holds a store is a living process, not a file."""
     path.parent.mkdir()
     path.with_name(path.name + ".lock").write_text("1\n")
-    Store.open_for_writing(path, "Trays").close()
+    Store.open_for_writing(path, TRAYS).close()
 
 
 def test_a_reader_sees_whole_groups_while_a_writer_writes(path: Path, make_plan: PlanMaker) -> None:
     """Rows appear for a reader as soon as they are added, and within one moment nothing changes."""
     plan = make_plan()
-    with Store.open_for_writing(path, plan.title) as store:
+    with Store.open_for_writing(path, plan) as store:
         store.record_plan(plan)
         with Store.open_for_reading(path) as reader:
             assert reader.counts() == Counts(14, 0, 0)
@@ -343,7 +415,7 @@ def test_a_read_only_folder_can_be_read_and_not_written(read_only: Path, make_pl
     with nobody():
         for there in (path, read_only / "new.sqlite", read_only / "deeper" / "new.sqlite"):
             with pytest.raises(StoreError, match="ermission denied"):
-                Store.open_for_writing(there, "Trays")
+                Store.open_for_writing(there, TRAYS)
         for there in (path, logging):
             with Store.open_for_reading(there) as reader:
                 assert len(reader.rows()) == 14

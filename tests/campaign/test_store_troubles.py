@@ -12,7 +12,9 @@ from pathlib import Path
 
 import pytest
 
-from rigbench.campaign.migrations import migrate, schema_of
+from rigbench.campaign.labels import Labels
+from rigbench.campaign.migrations import MIGRATIONS, migrate, schema_of
+from rigbench.campaign.owner import Owner
 from rigbench.campaign.plan import Plan
 from rigbench.campaign.store import Store
 from rigbench.campaign.work import Outcome
@@ -35,7 +37,7 @@ def test_a_full_disk_is_said_plainly_and_costs_only_what_did_not_fit(
     """SQLite's own 'full' (its limit of pages stands in for the disk's) is a StoreError; whole rows stay."""
     plan = make_plan(draws=100)
     stored: list[str] = []
-    with Store.open_for_writing(path, plan.title) as store:
+    with Store.open_for_writing(path, plan) as store:
         store.record_plan(plan)
         pages = store._connection.execute("PRAGMA page_count").fetchone()[0]
         store._connection.execute(f"PRAGMA max_page_count = {pages + 20}")
@@ -49,7 +51,7 @@ def test_a_full_disk_is_said_plainly_and_costs_only_what_did_not_fit(
             stored.extend(fill())
     assert caught.value.exit_code == 5
     assert 0 < len(stored) < len(plan.entries)
-    with Store.open_for_writing(path, plan.title) as store:
+    with Store.open_for_writing(path, plan) as store:
         assert len(store.rows()) == len(stored)
         assert len(store.missing(plan)) == len(plan.entries) - len(stored)
         store.add(Outcome(entry.key, "finished") for entry in store.missing(plan))
@@ -57,10 +59,12 @@ def test_a_full_disk_is_said_plainly_and_costs_only_what_did_not_fit(
 
 KILLED_WRITER = """
 import sys
+from rigbench.campaign.plan import Plan
 from rigbench.campaign.store import Store
 from rigbench.campaign.work import Outcome
 
-with Store.open_for_writing(sys.argv[1], "Trays") as store:
+plan = Plan("Trays", "two link", "", "trays.yaml", ("",), (), ("lift",), (), 1, None, (), "")
+with Store.open_for_writing(sys.argv[1], plan) as store:
     for group in range(1_000_000):
         store.add(
             Outcome(f"{group}-{i}", "finished", trace="t" * 2000, scores={"group": group, "i": i, "sum": group + i})
@@ -70,7 +74,7 @@ with Store.open_for_writing(sys.argv[1], "Trays") as store:
 """
 
 
-def test_a_killed_writer_leaves_whole_groups_only(path: Path) -> None:
+def test_a_killed_writer_leaves_whole_groups_only(path: Path, make_plan: PlanMaker) -> None:
     """After SIGKILL, three times over: the store opens clean, each group is whole, none that was told is lost."""
     for attempt in range(3):
         path = path.with_name(f"{attempt}.sqlite")
@@ -83,7 +87,7 @@ def test_a_killed_writer_leaves_whole_groups_only(path: Path) -> None:
         time.sleep(0.01)
         writer.send_signal(signal.SIGKILL)
         told = int((writer.communicate()[0].split() or [told])[-1])
-        with Store.open_for_writing(path, "Trays") as store:
+        with Store.open_for_writing(path, make_plan()) as store:
             assert store._connection.execute("PRAGMA integrity_check").fetchone() == ("ok",)
             groups = dict(
                 store._connection.execute(
@@ -98,7 +102,7 @@ def test_a_killed_writer_leaves_whole_groups_only(path: Path) -> None:
 def test_what_a_killed_writer_left_can_be_read_at_once(path: Path, make_plan: PlanMaker) -> None:
     """A reader sees the rows that are in the log alone, and leaves store and log as they are."""
     plan = make_plan()
-    with Store.open_for_writing(path, plan.title) as store:
+    with Store.open_for_writing(path, plan) as store:
         store.record_plan(plan)
         store.add(Outcome(entry.key, "finished") for entry in plan.entries)
     code = KILLED_WRITER.replace("range(1_000_000)", "range(1)") + "\n    import os; os._exit(1)\n"
@@ -116,6 +120,32 @@ def test_what_a_killed_writer_left_can_be_read_at_once(path: Path, make_plan: Pl
 
 
 # --- migrations
+
+
+def test_a_store_of_an_older_schema_is_brought_up_to_date(path: Path, make_plan: PlanMaker) -> None:
+    """Its rows stay, and its owner, whose file it doesn't know, is told by title and arm before it is changed."""
+    path.parent.mkdir()
+    plan = make_plan()
+    connection = sqlite3.connect(path, isolation_level=None)
+    migrate(connection, MIGRATIONS[:2])
+    connection.execute(
+        "INSERT INTO campaign VALUES (1, ?, ?, ?, ?, ?, ?, ?)",
+        (plan.title, plan.experiment_path, "", "7", Labels.of(plan).to_json(), "", ""),
+    )
+    key = plan.entries[0].key
+    connection.execute(
+        "INSERT INTO runs VALUES (?, 'finished', '', '', '{}', '{}', NULL, NULL, NULL, '')", (key,)
+    )
+    connection.close()
+    before = path.read_bytes()
+    with pytest.raises(StoreError, match="belongs to"):
+        Store.open_for_writing(path, make_plan(arm="another"))
+    assert path.read_bytes() == before
+    with Store.open_for_writing(path, plan) as store:
+        assert schema_of(store._connection) == len(MIGRATIONS)
+        store.record_plan(plan)
+        assert [row.outcome for row in store.rows()] == ["finished"]
+        assert store.owner == Owner.of(plan)
 
 
 def test_a_migration_that_fails_leaves_the_schema_before_it(tmp_path: Path) -> None:

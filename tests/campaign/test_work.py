@@ -10,13 +10,13 @@ from typing import Any
 import pytest
 
 from rigbench.campaign.work import do, summary, this_host
-from rigbench.errors import EngineError, LawError
+from rigbench.errors import EngineError, InputFaults, LawError
 
 
 @pytest.fixture
 def rig(monkeypatch: pytest.MonkeyPatch) -> SimpleNamespace:
     """The rig and the scores, to be replaced by what a test needs."""
-    log = SimpleNamespace(outcome="finished", reason="", residual=1e-9, law_us=2.0)
+    log = SimpleNamespace(outcome="finished", reason="", residual=1e-9, law_us=2.0, in_doubt=False)
     stand_in = SimpleNamespace(simulate=lambda run: log, scores={"tool_peak_mm": 1.5, "law_us": 2.0}, log=log)
     monkeypatch.setattr("rigbench.rig.simulate", lambda run: stand_in.simulate(run))  # noqa: PLW0108
     monkeypatch.setattr("rigbench.scores.of_run.score_run", lambda log, motion, band: dict(stand_in.scores))
@@ -82,6 +82,36 @@ def test_an_exception_is_an_outcome(
     assert reason in done.reason
     assert "\n" not in done.reason
     assert trace in done.trace
+
+
+@pytest.mark.parametrize("outcome", ["finished", "hit-stop"])
+def test_where_engine_and_drive_disagree_there_is_no_verdict(
+    rig: SimpleNamespace, run: Any, outcome: str
+) -> None:
+    """The run is the host's trouble, says by how much, and has no scores."""
+    rig.log.outcome, rig.log.residual, rig.log.in_doubt = outcome, 3e-5, True
+    done = do(run)
+    assert (done.outcome, done.scores, done.residual) == ("disagrees", {}, 3e-5)
+    assert done.reason == "engine and drive disagree by 3e-05 rad/s (limit 1e-06)"
+    assert done.host is not None
+
+
+def test_a_run_that_ran_away_keeps_its_verdict(rig: SimpleNamespace, run: Any) -> None:
+    """At its speeds the last digits alone are more than the limit."""
+    rig.log.outcome, rig.log.residual, rig.log.in_doubt, rig.scores = "diverged", 3e-5, True, {}
+    assert do(run).outcome == "diverged"
+
+
+def test_a_plant_that_can_not_exist_is_said_in_its_own_words(rig: SimpleNamespace, run: Any) -> None:
+    """Without a traceback: it is what was declared, and not a mistake of ours."""
+
+    def refuse(run: Any) -> None:
+        raise InputFaults.one("arm", "mismatch.payload", "link 'hand' can't exist", "less spread or level")
+
+    rig.simulate = refuse
+    done = do(run)
+    assert (done.outcome, done.trace) == ("no-plant", "")
+    assert done.reason == "arm: mismatch.payload: link 'hand' can't exist; expected less spread or level"
 
 
 @pytest.mark.parametrize("value", [math.nan, -math.inf])

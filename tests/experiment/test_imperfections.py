@@ -373,7 +373,7 @@ def test_everything_on_gives_the_same_rows_with_any_workers(everything: Experime
     rows = []
     for name, executor in (("one", InProcess()), ("two", Processes(2))):
         plan = everything.plan()
-        with Store.open_for_writing(tmp_path / f"{name}.sqlite", plan.title) as store:
+        with Store.open_for_writing(tmp_path / f"{name}.sqlite", plan) as store:
             run_campaign(plan, store, executor=executor)
             records = list(store.records())
             results, text = store.results(), io.StringIO()

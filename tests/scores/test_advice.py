@@ -162,6 +162,25 @@ def test_when_every_law_misses_the_nearest_is_named() -> None:
     )
 
 
+def test_the_nearest_is_named_where_motions_have_limits_of_their_own() -> None:
+    """That in the motion in which it is farthest from its own limit: 2/1 for a, 5/4 for b; 'lift' has none."""
+    peaks = {"a": {"pour": 2.0, "swing": 3.0, "lift": 99.0}, "b": {"pour": 0.9, "swing": 5.0, "lift": 99.0}}
+    rows = [
+        Row("", law, motion, "nominal", None, None, "finished", {"tool_peak_mm": peak})
+        for law, own in peaks.items()
+        for motion, peak in own.items()
+    ]
+    limits = {"pour": {"tool_peak_mm": 1.0}, "swing": {"tool_peak_mm": 4.0}}
+    results = summarise(
+        rows, title="", arm="", motions=["pour", "swing", "lift"], tolerance=Tolerance({}, 0.95, limits),
+        draws=1, sheets=[""], laws=("a", "b"), columns=[NOMINAL], planned=6, done=6, failed=0,
+    )  # fmt: skip
+    assert results.advice == (
+        "Every law misses the tolerance under every condition; nearest is 'b' with a tool peak of 5 mm in "
+        "motion 'swing' under 'nominal', where 4 mm is allowed."
+    )
+
+
 def test_when_nothing_is_shown_yet_the_draws_that_would_show_it_are_named() -> None:
     """Without a nominal column, all open: 73 draws if none fails."""
     advice = results_of({"a": {"level 1": draws(8, 8)}, "b": {"level 1": draws(8, 8)}}, (ONE,)).advice
@@ -176,7 +195,7 @@ def test_a_law_without_results_is_said_to_have_none() -> None:
     advice = results_of({"robust": ROBUST, "mine": {}}, failed=201, planned=402, done=201).advice
     assert advice == (
         "Take 'robust', which is shown to keep the tolerance up to level 1, the highest run; 'mine' has no "
-        "result; 201 runs failed (law's code, time limit or crash), for or against no law."
+        "result; 201 runs failed (law's code, the plant, time limit or crash), for or against no law."
     )
 
 

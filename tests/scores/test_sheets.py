@@ -78,7 +78,9 @@ def test_the_advice_of_a_sheet_speaks_of_what_can_be_in_it() -> None:
 
 def test_a_condition_that_a_sheet_lacks() -> None:
     """Where no law has a condition in a sheet, the sheet is judged by its others."""
-    found = rows({"load": 2.0}, "slow", "pd") + [r for r in rows({"load": 2.0}, "fast", "pd") if r.draw is None]
+    found = rows({"load": 2.0}, "slow", "pd") + [
+        r for r in rows({"load": 2.0}, "fast", "pd") if r.draw is None
+    ]
     results = results_of(found, laws=["pd"], absent=[("fast", "pd", "all at 1")])
     assert results.cell("fast", "pd", "all at 1").planned == 0
     assert "to do" not in results.advice
