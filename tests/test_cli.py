@@ -7,6 +7,7 @@ import csv
 import io
 import json
 import os
+import shutil
 import signal
 import sqlite3
 import subprocess
@@ -50,7 +51,7 @@ class Bad(Law):
         return no_such_name
 """
 
-COMMANDS = ("check", "run", "status", "matrix", "export", "laws")
+COMMANDS = ("check", "run", "status", "matrix", "export", "laws", "schema", "demo")
 
 
 @pytest.fixture
@@ -389,6 +390,61 @@ def test_laws_lists_every_registered_law() -> None:
     document = json.loads(call("laws", "--json").stdout)
     assert [law["name"] for law in document["laws"]] == names
     assert document["broken"] == []
+
+
+def test_schema_prints_what_an_editor_reads() -> None:
+    """The experiment file's schema, or the arm file's; anything else is a fault with the nearest name."""
+    experiment = json.loads(call("schema").stdout)
+    assert experiment == json.loads(call("schema", "experiment").stdout)
+    assert {"vary", "laws", "tolerance"} <= set(experiment["properties"])
+    assert "gear_ratio" in call("schema", "arm").stdout
+    wrong = call("schema", "rm")
+    assert wrong.exit_code == 2
+    assert "did you mean 'arm'?" in wrong.stderr
+
+
+def test_the_demo_can_be_copied_and_run(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Arms and experiments in a new folder, no pictures; what it says to do next works there."""
+    monkeypatch.chdir(tmp_path)
+    copied = call("demo", "my demo")
+    assert copied.exit_code == 0
+    files = {path.relative_to("my demo").as_posix() for path in Path("my demo").rglob("*") if path.is_file()}
+    assert {"experiments/first-look.yaml", "robots_demo/tray6/arm.yaml", "robots_demo/tray6/tray6.urdf"} <= files
+    assert not any(file.endswith(".png") for file in files)
+    assert "cd 'my demo'\n  rigbench check experiments/first-look.yaml" in copied.stdout
+    listed = json.loads(call("demo", "other", "--json").stdout)
+    assert set(listed["files"]) == files
+    monkeypatch.chdir(tmp_path / "my demo")
+    assert call("check", "experiments/first-look.yaml").exit_code == 0
+
+
+def test_the_demo_overwrites_nothing(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Every file in the way is named, and nothing is copied; a file in place of the folder is in the way too."""
+    monkeypatch.chdir(tmp_path)
+    mine = Path("here/robots_demo/tray6/arm.yaml")
+    mine.parent.mkdir(parents=True)
+    mine.write_text("mine", encoding="utf-8")
+    refused = call("demo", "here", "--json")
+    assert refused.exit_code == 2
+    (fault,) = json.loads(refused.stdout)["faults"]
+    assert (fault["file"], fault["problem"]) == (str(mine), "exists already")
+    assert mine.read_text("utf-8") == "mine"
+    assert [path.name for path in Path("here").rglob("*.yaml")] == ["arm.yaml"]
+    Path("file").write_text("", encoding="utf-8")
+    assert call("demo", "file").exit_code == 2
+
+
+def test_a_demo_that_can_not_be_written(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """The disk's refusal is exit code 5, said plainly."""
+    monkeypatch.chdir(tmp_path)
+
+    def refuse(*_: object) -> None:
+        raise OSError(28, "No space left on device", "there/arm.yaml")
+
+    monkeypatch.setattr(shutil, "copyfile", refuse)
+    refused = call("demo", "there")
+    assert refused.exit_code == 5
+    assert "there/arm.yaml: can't be written: No space left on device" in refused.stderr
 
 
 def test_broken_plugins_are_listed_as_such(monkeypatch: pytest.MonkeyPatch) -> None:

@@ -55,7 +55,8 @@ def _root(
 def check(file: Experiment, as_json: Json = False) -> None:
     """Validate an experiment and print its plan, the draws it needs and an estimated time.
 
-    All faults of all its files are printed at once. One run of each law is done to measure the time.
+    All faults of all its files are printed at once. A short run of each law is done to measure the time; it
+    is given up after 60 s.
     """
     with telling(as_json):
         from rigbench.cli.check import check_experiment

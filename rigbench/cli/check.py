@@ -74,7 +74,8 @@ def _lines(experiment: Experiment, plan: Plan, stored: Stored, estimate: Estimat
         yield "time: can't be told, for not every law finishes its nominal run"
     else:
         cores = _count(estimate.cores, "core")
-        yield f"time: {duration_words(estimate.seconds)} on {cores}; an estimate, from one run of each law"
+        said = f"{duration_words(estimate.seconds)} on {cores}"
+        yield f"time: {said}; an estimate, from a short run of each law"
 
 
 def _product(plan: Plan) -> str:

@@ -1,23 +1,36 @@
-"""How long a campaign will take, judged by one run of each law."""
+"""How long a campaign will take, judged by one short run of each law."""
 
 from __future__ import annotations
 
+from collections.abc import Iterable
+from contextlib import closing
 from dataclasses import dataclass, replace
+from typing import Any
 
+from rigbench.arm.arm import Floats
+from rigbench.campaign.executor import InProcess, Processes
+from rigbench.campaign.plan import Entry
 from rigbench.campaign.work import Outcome, do
 from rigbench.campaign.workers import usable_cores
-from rigbench.errors import Fault, InputFaults
+from rigbench.errors import Fault, InputFaults, RigbenchError
 from rigbench.experiment import Experiment
+from rigbench.motion.motion import Motion
 from rigbench.rig.run import Run
 
 __all__ = ["Estimate", "estimate_of"]
 
 QUICK_S = 2.0
 
+MOTION_S = 3.0
+"""How much of the motion is enough to tell how long a step takes [s]."""
+
+LIMIT_S = 60.0
+"""When a law's run is given up [s]: a law that hangs must not hang its check."""
+
 
 @dataclass(frozen=True)
 class Estimate:
-    """What a campaign will take, judged by one run of each law: ``seconds`` on so many ``cores``."""
+    """What a campaign will take, judged by one short run of each law: ``seconds`` on so many ``cores``."""
 
     seconds: float | None
     cores: int
@@ -27,45 +40,80 @@ class Estimate:
 def estimate_of(experiment: Experiment, stored: int) -> Estimate:
     """Do the nominal run of each law along the shortest motion, and scale its time to all that is missing.
 
-    It is done in the first sheet that has the law. A run takes a time in proportion to its steps.
+    It is done in the first sheet that has the law, in a worker process as in a campaign, for MOTION_S of
+    the motion at most and no longer than LIMIT_S. A run takes a time in proportion to its steps.
     InputFaults if a law raises in it.
     """
-    from rigbench.rig import warm_up
-
-    warm_up()
     firsts = {law: _shortest(experiment, law) for law in experiment.laws}
-    outcomes = {law: _measured(run) for law, (_, run) in firsts.items()}
+    outcomes = _outcomes(firsts.values())
     faults, notes = [], []
-    for law, outcome in outcomes.items():
+    for law, first in firsts.items():
+        outcome = outcomes[first.key]
         line, key = experiment.law_lines[law], f"laws.{law}"
         if outcome.outcome == "law-error":
             problem = f"raised {outcome.reason}\n{outcome.trace}".rstrip()
             faults.append(Fault(experiment.path, line, key, problem))
         elif outcome.outcome != "finished":
-            name = firsts[law][0]
-            problem = f"does not finish motion {name} even in nominal ({outcome.outcome}): {outcome.reason}"
+            problem = (
+                f"does not finish motion {first.motion} even in nominal ({outcome.outcome}): {outcome.reason}"
+            )
             notes.append(Fault(experiment.path, line, key, f"{problem}\n{outcome.trace}".rstrip()))
     if faults:
         raise InputFaults(faults)
     seconds = None
-    times = [outcome.wall_s for outcome in outcomes.values() if outcome.wall_s is not None]
-    if not notes and len(times) == len(outcomes):  # a run that broke off says nothing about a whole one
-        per_step = {
-            law: outcome.wall_s / _steps(firsts[law][1])
-            for law, outcome in outcomes.items()
-            if outcome.wall_s
-        }
+    times = {law: outcomes[first.key].wall_s for law, first in firsts.items()}
+    if not notes and None not in times.values():  # a run that broke off says nothing about a whole one
+        per_step = {law: wall_s / _steps(firsts[law].run) for law, wall_s in times.items() if wall_s}
         left = 1 - stored / experiment.runs
         steps = _steps_by_law(experiment)
         seconds = sum(steps[law] * time for law, time in per_step.items()) * left / usable_cores()
     return Estimate(seconds, usable_cores(), tuple(notes))
 
 
-def _shortest(experiment: Experiment, law: str) -> tuple[str, Run]:
-    """Return the nominal run of a law along the shortest motion, with the motion's name."""
+def _shortest(experiment: Experiment, law: str) -> Entry:
+    """Return the nominal run of a law along the beginning of the shortest motion."""
     sheet = next(sheet for sheet in experiment.sheets if law in sheet.laws)
     name, motion = min(sheet.motions.items(), key=lambda item: item[1].duration_s)
-    return name, replace(sheet.first, law=sheet.laws[law], motion=motion)
+    run = replace(sheet.first, law=sheet.laws[law], motion=_Beginning(motion))
+    return Entry(sheet.name, law, name, "nominal", None, None, run)
+
+
+def _outcomes(entries: Iterable[Entry]) -> dict[str, Outcome]:
+    """Do the runs and return their outcomes by key; here if there are no worker processes to be had."""
+    once = list({entry.key: entry for entry in entries}.values())
+    try:
+        return _done(Processes(1, _measured, lambda _: LIMIT_S), once)
+    except RigbenchError:
+        return _done(InProcess(_measured), once)
+
+
+def _done(executor: Processes | InProcess, entries: list[Entry]) -> dict[str, Outcome]:
+    with closing(executor.run_all(entries)) as outcomes:
+        return {outcome.key: outcome for outcome in outcomes}
+
+
+@dataclass(frozen=True)
+class _Beginning:
+    """The first MOTION_S seconds of a motion."""
+
+    whole: Motion
+
+    @property
+    def duration_s(self) -> float:
+        return min(self.whole.duration_s, MOTION_S)
+
+    @property
+    def rests(self) -> tuple[tuple[float, float], ...]:
+        return tuple(rest for rest in self.whole.rests if rest[1] <= self.duration_s)
+
+    def reference(self, t: Floats) -> tuple[Floats, Floats, Floats]:
+        return self.whole.reference(t)
+
+    def paced(self, factor: float) -> _Beginning:
+        return _Beginning(self.whole.paced(factor))
+
+    def inputs(self) -> dict[str, Any]:
+        return {"kind": "beginning", "of": self.whole.inputs(), "duration_s": self.duration_s}
 
 
 def _steps(run: Run) -> float:

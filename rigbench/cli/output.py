@@ -187,23 +187,21 @@ def streams_may_fail() -> Iterator[None]:
         if hasattr(stream, "reconfigure"):
             stream.reconfigure(errors="replace")
     try:
-        yield
-        _flush_stdout()
+        try:
+            yield
+        finally:
+            if sys.stdout is not None:
+                sys.stdout.flush()
     except BrokenPipeError:
         _to_nowhere(sys.stdout)
+        raise SystemExit(0) from None
     except OSError as error:
         _to_nowhere(sys.stdout)
         say(f"{STDOUT}: can't be written: {error.strerror or error}")
         raise SystemExit(StoreError.exit_code) from None
     finally:
         with contextlib.suppress(OSError):
-            _flush_stdout()
             os.dup2(2, 1)
-
-
-def _flush_stdout() -> None:
-    if sys.stdout is not None:
-        sys.stdout.flush()
 
 
 def _to_nowhere(stream: TextIO) -> None:
@@ -213,3 +211,4 @@ def _to_nowhere(stream: TextIO) -> None:
         sink = os.open(os.devnull, os.O_WRONLY)
         os.dup2(sink, descriptor)
         os.close(sink)
+        stream.flush()

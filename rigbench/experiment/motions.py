@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, replace
 from pathlib import Path
 
@@ -22,7 +22,7 @@ from rigbench.motion.read import read_table
 from rigbench.motion.via import ViaMotion
 from rigbench.yamlfile import KeyPath, read_text
 
-__all__ = ["motions_of"]
+__all__ = ["check_without_arm", "motions_of"]
 
 MOST_TICKS = 5_000_000
 """Control ticks that a motion may have: what a run logs of them has to fit into memory."""
@@ -60,6 +60,14 @@ def motions_of(
     return {name: maker.made[name] for name in motions if name in maker.made}
 
 
+def check_without_arm(motions: Mapping[str, MotionKeys], findings: Findings, folder: Path) -> None:
+    """Check what of the motions can be, while the arm is at fault."""
+    for name, keys in motions.items():
+        found = _declared(name, keys, findings)
+        if found is not None:
+            _check_alone(found, motions, findings, folder)
+
+
 @dataclass(frozen=True)
 class _Declared:
     """A motion's keys with their place."""
@@ -77,6 +85,48 @@ class _Declared:
         return self.keys.pace_percent / 100.0
 
 
+def _declared(name: str, keys: MotionKeys, findings: Findings) -> _Declared | None:
+    """Return the motion with its kind, if that is clear and its keys go with it."""
+    path: KeyPath = ("motions", name)
+    kinds = [kind for kind in KINDS if getattr(keys, kind) is not None]
+    if not findings.clean(*path):
+        return None
+    if len(kinds) != 1:
+        problem = f"both {' and '.join(kinds)} are given" if kinds else "its kind is not given"
+        findings.fault(path, problem, f"one of {', '.join(KINDS)}")
+        return None
+    for key, with_ in GO_WITH.items():
+        if key in keys.model_fields_set and kinds[0] not in with_:
+            findings.fault((*path, key), f"does not go with {kinds[0]}", f"{' or '.join(with_)}")
+    if keys.join_s is not None and kinds[0] != "chain" and keys.repeat == 1:
+        findings.fault((*path, "join_s"), "joins nothing here", "chain, or repeat above 1")
+    return _Declared(name, keys, kinds[0]) if findings.clean(*path) else None
+
+
+def _check_alone(found: _Declared, names: Iterable[str], findings: Findings, folder: Path) -> None:
+    """Check what of a motion needs no arm; ``names`` are those of all motions."""
+    keys, path = found.keys, found.path
+    if keys.file is not None:
+        problem = unreadable(folder / keys.file)
+        if problem is not None:
+            expected = f"a CSV file, relative to {folder}"
+            findings.fault((*path, "file"), f"'{keys.file}' {problem}", expected)
+    way: PathKeys | None = keys.circle or keys.line
+    if way is not None and way.orientation == "free" and way.tool_rpy_deg is not None:
+        where = (*path, found.kind, "tool_rpy_deg")
+        findings.fault(where, "does not go with orientation: free", "held")
+    if keys.circle is not None and not any(keys.circle.normal):
+        problem = "points nowhere"
+        findings.fault((*path, "circle", "normal"), problem, "a direction, such as [0, 0, 1]")
+    others = [other for other in names if other != found.name]
+    for i, part in enumerate(keys.chain or ()):
+        if part not in names:
+            near = nearest(part, others)
+            findings.fault(
+                (*path, "chain", i), f"no motion is called '{part}'", "another motion's name", near
+            )
+
+
 class _Maker:
     """Makes the motions of one arm."""
 
@@ -92,25 +142,8 @@ class _Maker:
         self.names = tuple(motions)
         self.near: tuple[float, ...] = ()
         self.made: dict[str, Motion] = {}
-        declared = (self._declared(name, keys) for name, keys in motions.items())
+        declared = (_declared(name, keys, findings) for name, keys in motions.items())
         self.waiting = {found.name: found for found in declared if found is not None}
-
-    def _declared(self, name: str, keys: MotionKeys) -> _Declared | None:
-        """Return the motion with its kind, if that is clear and its keys go with it."""
-        path: KeyPath = ("motions", name)
-        kinds = [kind for kind in KINDS if getattr(keys, kind) is not None]
-        if not self.findings.clean(*path):
-            return None
-        if len(kinds) != 1:
-            problem = f"both {' and '.join(kinds)} are given" if kinds else "its kind is not given"
-            self.findings.fault(path, problem, f"one of {', '.join(KINDS)}")
-            return None
-        for key, with_ in GO_WITH.items():
-            if key in keys.model_fields_set and kinds[0] not in with_:
-                self.findings.fault((*path, key), f"does not go with {kinds[0]}", f"{' or '.join(with_)}")
-        if keys.join_s is not None and kinds[0] != "chain" and keys.repeat == 1:
-            self.findings.fault((*path, "join_s"), "joins nothing here", "chain, or repeat above 1")
-        return _Declared(name, keys, kinds[0]) if self.findings.clean(*path) else None
 
     def make(self, *kinds: str) -> None:
         """Make the motions of these kinds."""
@@ -144,6 +177,7 @@ class _Maker:
                 self.made[found.name] = motion
 
     def _of_kind(self, found: _Declared, within: tuple[str, ...]) -> Motion | None:
+        _check_alone(found, self.names, self.findings, self.folder)
         if found.kind == "via_deg":
             return self._via(found)
         if found.kind == "file":
@@ -171,12 +205,9 @@ class _Maker:
             check_position(path, np.array(point), self.arm, self.findings)
 
     def _table(self, found: _Declared) -> Motion | None:
-        file = self.folder / (found.keys.file or "")
-        problem = unreadable(file)
-        if problem is not None:
-            expected = f"a CSV file, relative to {self.folder}"
-            self.findings.fault((*found.path, "file"), f"'{found.keys.file}' {problem}", expected)
+        if not self.findings.clean(*found.path):
             return None
+        file = self.folder / (found.keys.file or "")
         try:
             return read_table(str(file), read_text(file, str(file)), self.arm, found.pace)
         except InputFaults as error:
@@ -201,10 +232,6 @@ class _Maker:
             self._check_point((*path, "near_deg"), keys.near_deg)
             if self.findings.clean(*path):
                 near = tuple((np.array(keys.near_deg) * to_si(self.arm)).tolist())
-        if keys.orientation == "free" and keys.tool_rpy_deg is not None:
-            self.findings.fault((*path, "tool_rpy_deg"), "does not go with orientation: free", "held")
-        if circle_keys is not None and not any(circle_keys.normal):
-            self.findings.fault((*path, "normal"), "points nowhere", "a direction, such as [0, 0, 1]")
         if not self.findings.clean(*path):
             return None
         given = keys.model_dump(exclude={"near_deg"}) | {"rest_s": found.keys.rest_s, "pace": found.pace}
@@ -218,10 +245,7 @@ class _Maker:
         within = (*within, found.name)
         for i, name in enumerate(names):
             path = (*found.path, "chain", i)
-            if name not in self.names:
-                near = nearest(name, [other for other in self.names if other != found.name])
-                self.findings.fault(path, f"no motion is called '{name}'", "another motion's name", near)
-            elif name in within:
+            if name in within:
                 self.findings.fault(path, f"'{name}' would contain itself", "another motion's name")
             elif name in self.waiting:
                 self._make(self.waiting[name], within)

@@ -43,12 +43,15 @@ def check_start(
 
 
 def check_position(path: KeyPath, position: Floats, arm: Arm, findings: Findings, where: str = "") -> None:
-    """Add a fault for each joint of a position (n,) [deg or mm] that lies beyond its limits."""
+    """Add a fault for each joint of a position (n,) [deg or mm] that lies beyond its limits.
+
+    ``where`` is what comes before the number, if it is more than the number that is at fault.
+    """
     scale = to_si(arm)
     for i, joint in enumerate(arm.joints):
         unit = "mm" if arm.kinds[i] == PRISMATIC else "deg"
         for side, bound, sign in (("least", arm.lower[i], -1), ("most", arm.upper[i], 1)):
             if math.isfinite(bound) and sign * (position[i] * scale[i] - bound) > SLACK * abs(bound):
                 value, limit = shown(float(position[i]), float(bound / scale[i]))
-                problem = f"{where}{value} {unit} is beyond the limit of joint {joint}"
+                problem = f"{where}{value} {unit}{',' if where else ' is'} beyond the limit of joint {joint}"
                 findings.fault(path, problem, f"at {side} {limit} {unit}")

@@ -5,7 +5,6 @@ from __future__ import annotations
 import types
 from collections.abc import Iterator, Sequence
 from dataclasses import replace
-from math import prod
 from typing import Annotated, Any, Union, get_args, get_origin
 
 from pydantic import BaseModel
@@ -17,8 +16,11 @@ from rigbench.yamlfile import Document, KeyPath, key_text
 
 __all__ = ["FIXED", "read_sweep"]
 
-MOST_COMBINATIONS = 500
-"""Sheets that a sweep may have, and variants that a law may have: more can't be read by anyone."""
+MOST_SHEETS = 500
+"""Sheets that a sweep may have: more can't be read by anyone."""
+
+MOST_ROWS = 5000
+"""Variants of laws that a sweep may have, over all its sheets."""
 
 FIXED = tuple(
     (key,)
@@ -43,7 +45,13 @@ def read_sweep(document: Document) -> tuple[Sweep, list[Fault]]:
     sweep = Sweep(
         tuple(axis for axis in axes if axis.law is None), tuple(axis for axis in axes if axis.law is not None)
     )
-    reader.check_sizes(sweep)
+    sheets, variants = sweep.sizes
+    if sheets > MOST_SHEETS or sheets * variants > MOST_ROWS:
+        made = "makes 1 sheet" if sheets == 1 else f"makes {sheets} sheets"
+        made += f" with {variants} variants of laws" if variants else ""
+        expected = f"at most {MOST_SHEETS} sheets, and {MOST_ROWS} variants in all"
+        reader.faults.append(document.fault(("vary",), made, expected))
+        sweep = sweep.beginning()  # enough to find what else is wrong
     return sweep, reader.faults
 
 
@@ -133,17 +141,6 @@ class _Reader:
             if not isinstance(here, dict):
                 return path[:length]
         return ()
-
-    def check_sizes(self, sweep: Sweep) -> None:
-        """Add a fault where there are more combinations than anyone can read."""
-        groups = {(): sweep.sheets} | {
-            ("laws", axis.law): sweep.of_law(axis.law) for axis in sweep.variants if axis.law
-        }
-        for path, axes in groups.items():
-            number = prod(len(axis.values) for axis in axes)
-            if number > MOST_COMBINATIONS:
-                what = "variants" if path else "sheets"
-                self._fault(path, f"makes {number} {what}", f"at most {MOST_COMBINATIONS}")
 
 
 def _needs_keys(path: KeyPath) -> bool:

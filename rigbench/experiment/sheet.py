@@ -17,7 +17,7 @@ from rigbench.experiment.findings import Findings
 from rigbench.experiment.laws import is_whole, law_choices
 from rigbench.experiment.meeting import sensing_of, timing_of
 from rigbench.experiment.mismatch import cases_of, check_conditions, mismatch_of
-from rigbench.experiment.motions import motions_of
+from rigbench.experiment.motions import check_without_arm, motions_of
 from rigbench.experiment.positions import check_start, joint_list
 from rigbench.experiment.schema import ExperimentKeys, RatesKeys
 from rigbench.experiment.tolerance import SETTLE_BAND_MM, check_applies, tolerance_of
@@ -68,6 +68,7 @@ def check_sheet(combination: Combination, axes: tuple[Axis, ...], folder: Path) 
     cases = cases_of(keys.conditions, mismatch, arm, findings)
     tolerance, bands = tolerance_of(keys, arm, findings)
     if arm is None or arms is None:
+        check_without_arm(keys.motions or {}, findings, folder)
         return Checked(combination, findings, keys)
     gain_pose = joint_list("gain_pose_deg", keys.gain_pose_deg, arm, findings)
     motions = motions_of(keys.motions or {}, findings, folder, arm, control_hz or 1000.0, gain_pose)
@@ -116,7 +117,11 @@ def check_sheet(combination: Combination, axes: tuple[Axis, ...], folder: Path) 
 def _check_names(keys: ExperimentKeys, findings: Findings) -> None:
     """Check that what is required is there, the format's version, and that the user's names fit a line."""
     for key in REQUIRED:
-        if getattr(keys, key) is None and findings.clean(key):
+        if getattr(keys, key) is not None or not findings.clean(key):
+            continue
+        if key in findings.document.data:
+            findings.fault((key,), "is empty", "a value")
+        else:
             findings.take([Fault(findings.document.file, None, key, "missing")])
     if keys.rigbench not in (None, FORMAT):
         findings.fault(("rigbench",), f"{keys.rigbench} is not a version that is read here", str(FORMAT))

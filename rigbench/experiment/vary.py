@@ -6,7 +6,8 @@ key of the file.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from math import prod
 from typing import Any
 
 from rigbench.yamlfile import KeyPath
@@ -50,6 +51,22 @@ class Sweep:
     def of_law(self, law: str) -> tuple[Axis, ...]:
         """Return the axes that make variants of a law."""
         return tuple(axis for axis in self.variants if axis.law == law)
+
+    @property
+    def sizes(self) -> tuple[int, int]:
+        """Return how many sheets it makes, and how many variants of laws in each."""
+        laws = {axis.law: 1 for axis in self.variants}
+        for axis in self.variants:
+            laws[axis.law] *= len(axis.values)
+        return prod(len(axis.values) for axis in self.sheets), sum(laws.values())
+
+    def beginning(self) -> Sweep:
+        """Return the sweep with the first value of each axis alone."""
+        sheets, variants = (
+            tuple(replace(axis, values=axis.values[:1]) for axis in axes)
+            for axes in (self.sheets, self.variants)
+        )
+        return Sweep(sheets, variants)
 
 
 def value_text(value: Any) -> str:

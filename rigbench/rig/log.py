@@ -12,8 +12,8 @@ from rigbench.arm.arm import Arm, Floats
 __all__ = ["RESIDUAL_LIMIT", "Log"]
 
 RESIDUAL_LIMIT = 1e-6
-"""A larger residual [rad/s] means that engine and drive disagree about the machine; the run is marked.
-Not so where contacts push the arm."""
+"""A larger residual [rad/s] means that engine and drive disagree about the machine; such a
+run comes to no verdict, unless it ran away. Not so where contacts push the arm."""
 
 
 @dataclass(eq=False)

@@ -23,6 +23,9 @@ LARGEST = 100_000
 LONGEST_INTEGER = 40
 """Digits of a whole number; more are a slip, and Python refuses thousands."""
 
+MERGE = "<<"
+"""What YAML 1.1 takes other mappings' keys in with; YAML 1.2 has no such key."""
+
 _ODD = re.compile("[^\t\n\r -~\xa0-\u2027\u202a-\ud7ff\ue000-\ufffd\U00010000-\U0010ffff]")
 """What no declaration needs: controls, lone surrogates, and line ends that editors don't count."""
 
@@ -224,6 +227,8 @@ class _Reader:
         if not isinstance(key, str):
             shown = f"the key {event.value}" if getattr(event, "value", "") else "an empty key"
             self.fault(event.start_mark, top.path, f"{shown} is not text", "a name (in quotes, if need be)")
+        elif key == MERGE and getattr(event, "style", None) is None:
+            self.fault(event.start_mark, top.path, f"merge keys ({MERGE}) aren't read", "the keys themselves")
         elif key in top.node.value:
             problem = f"declared twice, first on line {top.node.value[key][0]}"
             self.fault(event.start_mark, (*top.path, key), problem, "each key once")

@@ -171,6 +171,11 @@ _BOUNDS: Mapping[str, tuple[str, str]] = {
 }
 
 
+def _number(value: float) -> str:
+    """Print a bound: a whole number with all its digits."""
+    return f"{int(value)}" if value == int(value) else f"{value:g}"
+
+
 def _problem(model: type[BaseModel], data: Any, detail: _Detail) -> Problem:
     """Say one of pydantic's errors in our words."""
     kind, path = detail.type, detail.path
@@ -178,7 +183,9 @@ def _problem(model: type[BaseModel], data: Any, detail: _Detail) -> Problem:
         return Problem(path, *not_a(_KINDS[kind], detail.given))
     if kind in _BOUNDS:
         name, words = _BOUNDS[kind]
-        return Problem(path, f"{shown(detail.given)} is out of range", f"{words} {detail.context[name]:g}")
+        return Problem(
+            path, f"{shown(detail.given)} is out of range", f"{words} {_number(detail.context[name])}"
+        )
     if kind in ("too_short", "too_long") or (kind == "missing" and isinstance(path[-1], int)):
         return _size(model, data, detail)
     return _SAID.get(kind, _own)(model, detail)
@@ -229,6 +236,9 @@ def _size(model: type[BaseModel], data: Any, detail: _Detail) -> Problem:
         items = get_args(kind)
         if get_origin(kind) is tuple and Ellipsis not in items:
             return Problem(path, given, f"{len(items)}")
+    length = _only_length(model, loc)
+    if length is not None:
+        return Problem(path, given, f"a list of {length} numbers")
     least = detail.type == "too_short"
     bound = detail.context["min_length" if least else "max_length"]
     return Problem(path, given, f"at {'least' if least else 'most'} {bound}")
@@ -236,6 +246,26 @@ def _size(model: type[BaseModel], data: Any, detail: _Detail) -> Problem:
 
 def _entries(count: int) -> str:
     return "1 entry" if count == 1 else f"{count or 'no'} entries"
+
+
+def _only_length(model: type[BaseModel], loc: Sequence[str | int]) -> int | None:
+    """Return how many numbers the list of numbers at ``loc`` has; None if it may have more or fewer."""
+    for kind in _types_at(model, loc[:-1]):
+        info = kind.model_fields.get(loc[-1]) if _is_model(kind) else None
+        if info is None or not all(float in _inside(list_, 0) for list_ in _flat(info.annotation)):
+            continue
+        notes = [*info.metadata, *_annotations(info.annotation)]
+        least = {note.min_length for note in notes if getattr(note, "min_length", None) is not None}
+        most = {note.max_length for note in notes if getattr(note, "max_length", None) is not None}
+        return least.pop() if least == most and len(least) == 1 else None
+    return None
+
+
+def _annotations(kind: Any) -> Iterator[Any]:
+    """Yield what annotates the branches of a union."""
+    for branch in get_args(kind) if get_origin(kind) in (Union, types.UnionType) else (kind,):
+        for note in get_args(branch)[1:] if get_origin(branch) is Annotated else ():
+            yield from getattr(note, "metadata", (note,))
 
 
 # Types ------------------------------------------------------------------------------------------

@@ -303,7 +303,7 @@ AT_FAULT: list[tuple[dict[str, Any], str, str, str | None]] = [
     ({"gain_pose_deg": [0, 0.5]}, "vary.gain_pose_deg[0]", "0 is not a list", None),
     ({"gravity_m_s2": [[0, 0]]}, "vary.gravity_m_s2[0]", "2 entries given", None),
     ({"rates": {"control_hz": list(range(100, 700))}}, "vary", "makes 600 sheets", None),
-    ({"laws": {"pd": {"natural_hz": list(range(1, 600))}}}, "vary.laws.pd", "makes 599 variants", None),
+    ({"laws": {"pd": {"natural_hz": list(range(1, 5003))}}}, "vary", "makes 1 sheet with 5002 variants", None),
     ({"motions": {"swing": {"rest_s": [0.1, 0]}}}, "vary.motions.swing.rest_s[1]", "tolerance.settle_ms: no motion has a rest", None),
     ({"motions": {"swing": {"via_deg": [[[0, 0], [9, 9]], [[0, 0], [0, 170]]]}}}, "vary.motions.swing.via_deg[1][1]", "170 deg is beyond", None),
 ]  # fmt: skip
