@@ -110,6 +110,12 @@ class ExperimentKeys(Declared):
         description="tilt of the plant's base about its x, then its y axis [deg], of which the controllers "
         "don't know; default [0, 0]; typical: 0.2 (our choice)",
     )
+    scene: str | None = Field(
+        default=None,
+        min_length=1,
+        description="what else is in the engine's world: a registered scene, or FILE.py:FUNCTION for one of "
+        "your own, relative to this file; contacts are then on; default: the arm alone",
+    )
     gain_pose_deg: list[float] | None = Field(
         default=None,
         description="pose at which natural_hz becomes gains, one position a joint [deg; mm for a prismatic "

@@ -19,6 +19,7 @@ from rigbench.experiment.meeting import sensing_of, timing_of
 from rigbench.experiment.mismatch import cases_of, check_conditions, mismatch_of
 from rigbench.experiment.motions import check_without_arm, motions_of
 from rigbench.experiment.positions import check_start, joint_list
+from rigbench.experiment.scenes import scene_choice
 from rigbench.experiment.schema import ExperimentKeys, RatesKeys
 from rigbench.experiment.tolerance import SETTLE_BAND_MM, check_applies, tolerance_of
 from rigbench.experiment.vary import Axis
@@ -69,6 +70,7 @@ def check_sheet(combination: Combination, axes: tuple[Axis, ...], folder: Path) 
     tolerance, bands = tolerance_of(keys, arm, findings)
     if arm is None or arms is None:
         check_without_arm(keys.motions or {}, findings, folder)
+        scene_choice(keys.scene, None, findings, folder)
         return Checked(combination, findings, keys)
     gain_pose = joint_list("gain_pose_deg", keys.gain_pose_deg, arm, findings)
     motions = motions_of(keys.motions or {}, findings, folder, arm, control_hz or 1000.0, gain_pose)
@@ -81,6 +83,7 @@ def check_sheet(combination: Combination, axes: tuple[Axis, ...], folder: Path) 
         if axis.path[0] == "drives" and axis.path[2:] == ("gear_ratio",):
             note_free_gears(axis.path, arms.files, findings)
     sensing = sensing_of(keys.sensing, arm, findings)
+    scene = scene_choice(keys.scene, arms.files, findings, folder)
     checked = Checked(combination, findings, keys, arm, None, tolerance)
     if findings.faults or rates is None or timing is None or not laws or not motions:
         return checked
@@ -102,6 +105,7 @@ def check_sheet(combination: Combination, axes: tuple[Axis, ...], folder: Path) 
         sensing=sensing,
         timing=timing,
         base_tilt=(about_x, about_y),
+        scene=scene,
     )
     sheet = Sheet(
         name=combination.name,
