@@ -7,16 +7,19 @@ import csv
 import io
 import json
 import os
+import shlex
 import shutil
 import signal
 import sqlite3
 import subprocess
 import sys
 import time
+from importlib import import_module
 from pathlib import Path
 from typing import Any
 
 import pytest
+from typer.main import get_command
 from typer.testing import CliRunner, Result
 
 from rigbench.cli import app
@@ -51,7 +54,27 @@ class Bad(Law):
         return no_such_name
 """
 
-COMMANDS = ("check", "run", "status", "matrix", "export", "laws", "schema", "demo")
+LOUD_LAW = """\
+import os, sys
+from rigbench.laws import Law
+
+print("imported")
+sys.__stdout__.write("imported\\n")
+os.write(1, b"imported\\n")
+
+
+class Loud(Law):
+    def start(self, setup):
+        print("started")
+        os.system("echo started")
+
+    def torque(self, t, q, v, ref, held):
+        if t == 0:
+            os.write(1, b"ticked\\n")
+        return 0 * q
+"""
+
+COMMANDS = tuple(get_command(app).list_commands(None))  # type: ignore[attr-defined]
 
 
 @pytest.fixture
@@ -243,7 +266,11 @@ def test_exit_codes(trial: Path, arguments: tuple[str, ...], code: int, words: s
     assert result.exit_code == code
     assert words in result.stderr
     assert "Traceback" not in result.stderr
-    assert result.stdout == ""
+    if "--json" in arguments:
+        (fault,) = json.loads(result.stdout)["faults"]
+        assert words in fault["problem"]
+    else:
+        assert result.stdout == ""
 
 
 @pytest.mark.parametrize(
@@ -310,12 +337,123 @@ def test_status_says_where_hosts_differ(trial: Path) -> None:
 
 
 def test_a_file_that_can_not_be_written(trial: Path) -> None:
-    """-o into a folder that isn't there: exit code 5, and nothing is left behind."""
+    """-o below what is no folder: exit code 5, and nothing is left behind."""
     run_here("trial.yaml")
-    result = call("export", "results/trial.sqlite", "-o", "nowhere/runs.csv")
+    result = call("export", "results/trial.sqlite", "-o", "trial.yaml/runs.csv")
     assert result.exit_code == 5
-    assert "nowhere/runs.csv: can't be written" in result.stderr
-    assert not Path("nowhere").exists()
+    assert "trial.yaml/runs.csv: can't be written" in result.stderr
+    assert not list(Path().rglob("*.part"))
+
+
+def test_missing_folders_are_made(trial: Path) -> None:
+    """-o into a folder that isn't there makes it, for a table as for a picture."""
+    run_here("trial.yaml")
+    assert call("export", "results/trial.sqlite", "-o", "one/two/runs.csv").exit_code == 0
+    assert call("matrix", "results/trial.sqlite", "-o", "one/three/m.svg").exit_code == 0
+    assert Path("one/two/runs.csv").exists()
+    assert Path("one/three/m.svg").exists()
+
+
+@pytest.mark.parametrize("command", [("check",), ("run", "--jobs", "0")])
+def test_what_a_law_prints_is_not_on_stdout(trial: Path, command: tuple[str, ...]) -> None:
+    """Whatever a law prints as it is imported or runs, in Python or below it, --json is one document."""
+    Path("loud.py").write_text(LOUD_LAW, encoding="utf-8")
+    text = TRIAL.replace(
+        "computed torque: {law: computed-torque, natural_hz: 3}", "loud: {law: 'loud.py:Loud'}"
+    )
+    trial.write_text(text, encoding="utf-8")
+    done = in_process_of_its_own(command[0], "trial.yaml", "--json", *command[1:])
+    assert done.returncode == 0, done.stderr
+    assert json.loads(done.stdout)["runs"]["planned"] == 8
+    assert done.stderr.count("imported\n") >= 3
+    assert done.stderr.count("started\n") >= 2
+    assert "ticked\n" in done.stderr
+
+
+@pytest.mark.parametrize(
+    ("arguments", "words"),
+    [
+        (("check",), "FILE"),
+        (("check", "trial.yaml", "--jsn"), "--jsn"),
+        (("chekc", "trial.yaml"), "chekc"),
+        (("--bogus",), "--bogus"),
+        (("run", "trial.yaml", "--jobs", "-1"), "--jobs"),
+        (("export", "nope.sqlite"), "needs -o"),
+    ],
+)
+def test_usage_errors_as_json(trial: Path, arguments: tuple[str, ...], words: str) -> None:
+    """With --json among the arguments, what is wrong with them is one document too; the exit code is 2."""
+    result = call(*arguments, "--json")
+    assert result.exit_code == 2
+    (fault,) = json.loads(result.stdout)["faults"]
+    assert words in fault["problem"]
+    assert words in result.stderr
+
+
+@pytest.mark.skipif(not Path("/dev/full").exists(), reason="no /dev/full here")
+@pytest.mark.parametrize(
+    "arguments", ["laws", "laws --json", "status s.sqlite --json", "export s.sqlite", "--help", "--version"]
+)
+def test_a_full_disk_under_stdout(trial: Path, arguments: str) -> None:
+    """A result that can't be written ends with exit code 5 and one sentence."""
+    run_here("trial.yaml", "--store", "s.sqlite")
+    command = f"{shlex.quote(sys.executable)} -m rigbench {arguments} >/dev/full"
+    done = subprocess.run(["sh", "-c", command], capture_output=True, text=True, timeout=60, check=False)
+    assert done.returncode == 5
+    assert done.stderr == "standard output: can't be written: No space left on device\n"
+
+
+@pytest.mark.parametrize(
+    ("arguments", "code"), [("laws", 5), ("check trial.yaml", 5), ("check --json", 2), ("--help", 0)]
+)
+def test_a_closed_stdout(trial: Path, arguments: str, code: int) -> None:
+    """Where there is no stdout at all, a command with a result says so; nothing has a traceback."""
+    command = f"{shlex.quote(sys.executable)} -m rigbench {arguments} >&-"
+    done = subprocess.run(["sh", "-c", command], capture_output=True, text=True, timeout=60, check=False)
+    assert done.returncode == code
+    assert "Traceback" not in done.stderr
+    assert ("standard output: is closed" in done.stderr) == (code == 5)
+
+
+@pytest.mark.parametrize("closed", ["2>&-", "2>/dev/full", "<&- 2>&-"])
+def test_a_stderr_that_takes_nothing(trial: Path, closed: str) -> None:
+    """Notes and progress may get lost; the result is whole, and alone on stdout."""
+    command = f"{shlex.quote(sys.executable)} -m rigbench run trial.yaml --jobs 0 --json {closed}"
+    done = subprocess.run(["sh", "-c", command], capture_output=True, text=True, timeout=60, check=False)
+    assert done.returncode == 0
+    assert json.loads(done.stdout)["runs"]["done"] == 8
+
+
+def test_a_law_that_hangs_does_not_hang_check(trial: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Its run is given up after a limit of time, and noted at its line."""
+    from rigbench.cli import estimate
+
+    monkeypatch.setattr(estimate, "LIMIT_S", 2.0)
+    Path("bad.py").write_text(BAD_LAW.replace("return no_such_name", "while True: pass"), encoding="utf-8")
+    text = TRIAL.replace(
+        "computed torque: {law: computed-torque, natural_hz: 3}", "stuck: {law: 'bad.py:Bad'}"
+    )
+    trial.write_text(text, encoding="utf-8")
+    begin = time.monotonic()
+    checked = call("check", "trial.yaml")
+    assert time.monotonic() - begin < 60  # the workers have to start first
+    assert checked.exit_code == 0
+    assert (
+        "trial.yaml:9: laws.stuck: does not finish motion swing even in nominal (timed-out)" in checked.stderr
+    )
+    assert "can't be told" in checked.stdout
+
+
+def test_a_long_motion_does_not_make_check_long(trial: Path) -> None:
+    """The estimate of 500 s of motion is measured on 3 s of it; it is that of the whole."""
+    times = {}
+    for leg_s in (5, 500):
+        trial.write_text(TRIAL.replace("leg_s: 0.3", f"leg_s: {leg_s}"), encoding="utf-8")
+        begin = time.monotonic()
+        document = json.loads(call("check", "trial.yaml", "--json").stdout)
+        times[leg_s] = document["estimate"]["seconds"]
+        assert time.monotonic() - begin < 30  # eight runs of 500 s take minutes
+    assert 20 < times[500] / times[5] < 500  # 100, but for the noise of the clock
 
 
 def test_a_law_that_raises_shows_its_own_traceback(trial: Path) -> None:
@@ -409,7 +547,11 @@ def test_the_demo_can_be_copied_and_run(tmp_path: Path, monkeypatch: pytest.Monk
     copied = call("demo", "my demo")
     assert copied.exit_code == 0
     files = {path.relative_to("my demo").as_posix() for path in Path("my demo").rglob("*") if path.is_file()}
-    assert {"experiments/first-look.yaml", "robots_demo/tray6/arm.yaml", "robots_demo/tray6/tray6.urdf"} <= files
+    assert {
+        "experiments/first-look.yaml",
+        "robots_demo/tray6/arm.yaml",
+        "robots_demo/tray6/tray6.urdf",
+    } <= files
     assert not any(file.endswith(".png") for file in files)
     assert "cd 'my demo'\n  rigbench check experiments/first-look.yaml" in copied.stdout
     listed = json.loads(call("demo", "other", "--json").stdout)
@@ -449,7 +591,7 @@ def test_a_demo_that_can_not_be_written(tmp_path: Path, monkeypatch: pytest.Monk
 
 def test_broken_plugins_are_listed_as_such(monkeypatch: pytest.MonkeyPatch) -> None:
     """A law that can't be loaded is named with its reason and stops no other."""
-    from rigbench.cli import laws
+    laws = import_module("rigbench.cli.laws")
     from rigbench.laws.registry import Registry, registered
 
     registry = Registry(registered().laws, (("wobbly", "ImportError: no module named 'wobble'"),))
@@ -464,7 +606,7 @@ def test_broken_plugins_are_listed_as_such(monkeypatch: pytest.MonkeyPatch) -> N
 @pytest.mark.parametrize("as_json", [False, True])
 def test_an_error_nobody_foresaw(monkeypatch: pytest.MonkeyPatch, as_json: bool) -> None:
     """Exit code 1, the traceback and a line that says whose fault it is; with --json one document too."""
-    from rigbench.cli import laws
+    laws = import_module("rigbench.cli.laws")
 
     def fail() -> None:
         raise RuntimeError("the sky fell")
@@ -480,7 +622,7 @@ def test_an_error_nobody_foresaw(monkeypatch: pytest.MonkeyPatch, as_json: bool)
 
 def test_ctrl_c_outside_a_campaign(monkeypatch: pytest.MonkeyPatch) -> None:
     """An interrupt anywhere else ends quietly with 3."""
-    from rigbench.cli import laws
+    laws = import_module("rigbench.cli.laws")
 
     def interrupt() -> None:
         raise KeyboardInterrupt

@@ -144,6 +144,9 @@ ODD_FILES: list[tuple[str, str, list[str]]] = [
     ("long number", "a: " + "9" * 5000, [
         "x.yaml:1: a: a whole number of 5000 digits is not allowed; expected at most 40 digits"
     ]),
+    ("merge key", "a: &a {b: 1}\nc:\n  <<: *a\n", [
+        "x.yaml:3: c: merge keys (<<) aren't read; expected the keys themselves"
+    ]),
     ("unknown alias", "a: [1, *b]\n", ["x.yaml:1: a[1]: *b is not defined; expected an anchor defined further up"]),
     ("alias of itself", "a: &a\n  b: *a\n", [
         "x.yaml:2: a.b: *a contains itself; expected an anchor defined further up"

@@ -44,7 +44,9 @@ class _ReaderGoneError(Exception):
 
 def put(text: str) -> None:
     """Write a part of the result, as it is; StoreError if it can't be written."""
-    stream = _RESULT.get() or sys.stdout
+    stream: TextIO | None = _RESULT.get() or sys.stdout
+    if stream is None:
+        raise StoreError(STDOUT, "is closed, so the result has nowhere to go")
     try:
         stream.write(text)
         stream.flush()
@@ -102,7 +104,7 @@ def telling(as_json: bool) -> Iterator[None]:
     Meanwhile stdout belongs to the result: what else is printed, by a law or a library, goes to stderr.
     """
     if sys.stdout is None:
-        say(f"{STDOUT} is closed, so the result has nowhere to go")
+        say(f"{STDOUT}: is closed, so the result has nowhere to go")
         raise typer.Exit(StoreError.exit_code)
     with _result_apart():
         try:

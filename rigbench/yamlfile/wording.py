@@ -252,7 +252,7 @@ def _only_length(model: type[BaseModel], loc: Sequence[str | int]) -> int | None
     """Return how many numbers the list of numbers at ``loc`` has; None if it may have more or fewer."""
     for kind in _types_at(model, loc[:-1]):
         info = kind.model_fields.get(loc[-1]) if _is_model(kind) else None
-        if info is None or not all(float in _inside(list_, 0) for list_ in _flat(info.annotation)):
+        if info is None or not any(float in _inside(branch, 0) for branch in _flat(info.annotation)):
             continue
         notes = [*info.metadata, *_annotations(info.annotation)]
         least = {note.min_length for note in notes if getattr(note, "min_length", None) is not None}

@@ -29,6 +29,13 @@ def load_of(**keys: Any) -> dict[str, Any]:
     return {"mismatch": {"payload": {"believed_kg": 1, "least_kg": 0, "most_kg": 2} | keys}}
 
 
+REQUIRED = {
+    "rigbench": "1",
+    "arm": "arm.yaml",
+    "motions": "{m: {via_deg: [[0, 0], [1, 1]]}}",
+    "laws": "{x: {law: independent-joint}}",
+}
+
 CASES: list[tuple[dict[str, Any], str, str]] = [
     ({"rigbench": 2}, "rigbench", "2"),
     ({"rigbench": None}, "rigbench", "missing"),
@@ -258,3 +265,52 @@ def test_a_file_without_permission(write: Callable[..., Path]) -> None:
     with pytest.raises(InputFaults) as caught:
         load_experiment(path)
     assert len(caught.value.faults) == 1
+
+
+def test_a_fault_of_the_arm_hides_none_of_motions(faults: Faults) -> None:
+    """What of a motion needs no arm is checked without one."""
+    motions = {
+        "lost": {"file": "nope.csv"},
+        "odd": {"leg_s": 1},
+        "loop": {"circle": {"centre_m": [0, 0, 0], "radius_m": 1, "normal": [0, 0, 0], "turn_s": 1}},
+        "all": {"chain": ["lots"]},
+    }
+    found = faults(arm="nope.yaml", motions=motions)
+    keys = ["arm", "motions.lost.file", "motions.odd", "motions.loop.circle.normal", "motions.all.chain[0]"]
+    assert {fault.key for fault in found} == set(keys)
+    assert next(fault.near for fault in found if fault.key == keys[-1]) == "lost"
+
+
+@pytest.mark.parametrize("key", ["arm", "motions", "laws", "rigbench"])
+def test_what_is_required_but_empty_has_a_line(folder: Path, key: str) -> None:
+    """``arm:`` without a value is at fault on its line."""
+    text = "\n".join(f"{name}:" if name == key else f"{name}: {value}" for name, value in REQUIRED.items())
+    (folder / "empty.yaml").write_text(text, encoding="utf-8")
+    with pytest.raises(InputFaults) as raised:
+        load_experiment(folder / "empty.yaml")
+    (fault,) = raised.value.faults
+    assert (fault.key, fault.line, fault.problem) == (key, 1 + list(REQUIRED).index(key), "is empty")
+
+
+def test_a_start_beyond_a_limit_reads_well(faults: Faults) -> None:
+    """The position and the limit are in one sentence."""
+    (fault,) = faults(start_offset_deg=[0, -40])
+    assert fault.problem.startswith("motion swing would start at -40 deg, beyond the limit of joint j2")
+
+
+@pytest.mark.parametrize(
+    ("changes", "expected"),
+    [
+        ({"gravity_m_s2": [0, 0]}, "a list of 3 numbers"),
+        ({"base_tilt_deg": [0, 0, 0]}, "a list of 2 numbers"),
+        ({"motions": {"m": {"line": {"to_m": [1, 2], "from_m": [1, 2, 3]}}}}, "a list of 3 numbers"),
+        ({"motions": {"m": {"line": {"to_m": [1, 2, 3], "from_m": [1, 2]}}}}, "a list of 3 numbers"),
+        ({"seed": 2**63}, "below 9223372036854775808"),
+        ({"draws": 2_000_000}, "at most 1000000"),
+        ({"required_share": 1.5}, "below 1"),
+    ],
+)
+def test_expectations_are_exact(faults: Faults, changes: dict[str, Any], expected: str) -> None:
+    """A list of one length only says so; a bound is printed with all its digits."""
+    (fault,) = faults(**changes)
+    assert fault.expected == expected

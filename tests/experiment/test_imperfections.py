@@ -81,7 +81,7 @@ def test_undeclared_they_are_ideal_and_leave_no_trace(load: Load) -> None:
         ({"timing": {"jitter_percent": 101}}, "timing.jitter_percent", "at most 100"),
         ({"timing": {"dropped_percent": 100}}, "timing.dropped_percent", "below 100"),
         ({"timing": {"model_late": 1}}, "timing.model_late", "true or false"),
-        ({"base_tilt_deg": [1]}, "base_tilt_deg", "at least 2"),
+        ({"base_tilt_deg": [1]}, "base_tilt_deg", "a list of 2 numbers"),
         ({"base_tilt_deg": [0, 200]}, "base_tilt_deg[1]", "at most 180"),
         ({"base_tilt_deg": 1}, "base_tilt_deg", "1 is not a list"),
         ({"mismatch": {"delay_ms": {"all": 1}}}, "mismatch.delay_ms", "a mapping is not a number"),
