@@ -138,8 +138,8 @@ def import_files(files: Files, shown: str, error: type[PluginError]) -> ModuleTy
 
     Neighbours are imported from that folder alone, now or in a later call, and don't stay in sys.modules,
     so two files may each have a ``helpers.py``. Importing from the carried texts, on every machine alike,
-    is what makes the key's digest the truth about what ran. ``shown`` is the path that the user knows. What the
-    import raises comes out as ``error``, with the file's own traceback.
+    is what makes the key's digest the truth about what ran. ``shown`` is the path that the user knows. What
+    the import raises comes out as ``error``, with the file's own traceback.
     """
     return _execute(_written(files), files, f"rigbench_plugin_{digest_of(files)}", shown, error)
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -65,10 +66,10 @@ def random_arm(seed: int) -> Arm:
 def upright_arm() -> Arm:
     """An arm whose joint frames pitch by exactly and almost 90 degrees, where roll and yaw are one."""
     arm = random_arm(5)
-    x, y, z = np.eye(3)
+    (x, y, z), rotation = np.eye(3), arm.rotation.copy()
     for i, (off, yaw) in enumerate(((0.0, 0.7), (1e-9, -2.0), (-1e-7, 1.0), (1e-4, 3.0))):
-        arm.rotation[i] = turn(z, yaw) @ turn(y, (-1) ** i * np.pi / 2 + off) @ turn(x, 0.4)
-    return arm
+        rotation[i] = turn(z, yaw) @ turn(y, (-1) ** i * np.pi / 2 + off) @ turn(x, 0.4)
+    return replace(arm, rotation=rotation)
 
 
 ARMS = {
