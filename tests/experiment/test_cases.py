@@ -83,7 +83,9 @@ def test_what_a_case_states_is_what_the_plant_is(load: Load) -> None:
 
 def test_a_case_changes_no_other_run(load: Load) -> None:
     """The keys of all other runs are those without it."""
-    without = {(e.law, e.condition, e.draw): e.key for e in cased(load, {"a": {"payload_kg": 1}}).plan().entries}
+    without = {
+        (e.law, e.condition, e.draw): e.key for e in cased(load, {"a": {"payload_kg": 1}}).plan().entries
+    }
     more = {"a": {"payload_kg": 1}, "b": {"viscous_percent": 5}}
     keys = {(e.law, e.condition, e.draw): e.key for e in cased(load, more).plan().entries}
     assert {place: key for place, key in keys.items() if place[1] != "b"} == without

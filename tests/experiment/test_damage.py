@@ -7,7 +7,7 @@ knows nothing of the package: rows, sheets, columns, options, rates, limits and 
 from __future__ import annotations
 
 import re
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from itertools import product
 from math import inf, nan
 from pathlib import Path
@@ -18,7 +18,7 @@ import yaml
 from hypothesis import HealthCheck, Phase, given, settings
 from hypothesis import strategies as st
 
-from rigbench.errors import InputFaults
+from rigbench.errors import Fault, InputFaults
 from rigbench.experiment import Experiment, load_experiment
 
 ROOT = Path(__file__).resolve().parents[2]
@@ -240,7 +240,8 @@ def check_meaning(text: str, experiment: Experiment) -> None:
         fitting = [
             name
             for name, options in rows.items()
-            if fits(physics, control) and (options.get("model_hz") is None or fits(control, options["model_hz"]))
+            if fits(physics, control)
+            and (options.get("model_hz") is None or fits(control, options["model_hz"]))
         ]
         if not fitting:
             continue
@@ -367,21 +368,26 @@ MISHAPS = (
 )  # fmt: skip
 
 
+def check_addresses(path: Path, text: str, faults: Sequence[Fault]) -> None:
+    """Every fault says in which file; one of the file itself on which of its lines, unless a key is missing."""
+    assert faults
+    for fault in faults:
+        assert fault.file
+        assert fault.problem
+        if fault.file == str(path):
+            assert fault.line is None or 1 <= fault.line <= text.count("\n") + 2
+            assert fault.line is not None or fault.problem == "missing" or not fault.key
+
+
 def check_file(path: Path, text: str) -> None:
-    """Load it: InputFaults that all have a file, or a plan that means what the text says; nothing else is raised."""
+    """Load it: InputFaults with addresses, or a plan that means what the text says; nothing else is raised."""
     path.write_text(text, encoding="utf-8", newline="")
     try:
         experiment = load_experiment(path)
     except InputFaults as error:
-        assert error.faults
-        for fault in error.faults:
-            assert fault.file
-            assert fault.problem
-            lines = text.count("\n") + 2
-            assert fault.line is None or 1 <= fault.line <= lines or fault.file != str(path)
-            assert fault.line is not None or fault.problem == "missing" or fault.file != str(path) or not fault.key
-        return
-    check_meaning(text, experiment)
+        check_addresses(path, text, error.faults)
+    else:
+        check_meaning(text, experiment)
 
 
 @pytest.mark.parametrize(("name", "text"), FILES, ids=[name for name, _ in FILES])

@@ -64,7 +64,9 @@ def test_degrees_become_radians_and_millimetres_metres(load: Load) -> None:
 def test_gain_pose_is_where_the_first_motion_starts(load: Load) -> None:
     """Without gain_pose_deg, natural_hz becomes gains at the first motion's first point."""
     motions = {"b": {"via_deg": [[20, 30], [0, 0]]}, "a": {"via_deg": [[1, 1], [0, 0]]}}
-    np.testing.assert_allclose(load(motions=motions).sheets[0].first.gain_pose, np.radians([20, 30]), rtol=1e-15)
+    np.testing.assert_allclose(
+        load(motions=motions).sheets[0].first.gain_pose, np.radians([20, 30]), rtol=1e-15
+    )
 
 
 def test_pace_shortens_the_legs(load: Load) -> None:

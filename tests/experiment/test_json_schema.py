@@ -137,25 +137,22 @@ def following(schema: Any, depth: int = 0) -> st.SearchStrategy[Any]:
     if schema is True or schema == {}:
         return st.one_of(NUMBERS, st.sampled_from(NAMES), st.booleans())
     if "$ref" in schema:
-        return st.deferred(lambda: following(EXPERIMENT["$defs"][schema["$ref"].rpartition("/")[2]], depth + 1))
-    if "const" in schema:
-        return st.just(schema["const"])
-    if "enum" in schema:
-        return st.sampled_from(schema["enum"])
+        name = schema["$ref"].rpartition("/")[2]
+        return st.deferred(lambda: following(EXPERIMENT["$defs"][name], depth + 1))
+    if "enum" in schema or "const" in schema:
+        return st.sampled_from(schema.get("enum") or [schema["const"]])
     if "allOf" in schema:
         return st.sampled_from(schema["allOf"]).flatmap(lambda one: of_law(one, depth))
     if "anyOf" in schema and "properties" not in schema:
         return st.one_of([following(branch, depth) for branch in schema["anyOf"]])
-    kind = schema["type"]
-    if kind == "object":
-        return of_object(schema, depth)
-    if kind == "array":
-        least = schema.get("minItems", 0)
-        most = min(schema.get("maxItems", 6), max(least, 6 if depth > 2 else 3))
-        return st.lists(following(schema.get("items", True), depth + 1), min_size=least, max_size=most)
-    if kind in ("number", "integer"):
-        return bounded(schema)
-    return {"string": st.sampled_from(NAMES), "boolean": st.booleans(), "null": st.none()}[kind]
+    return OF_TYPE[schema["type"]](schema, depth)
+
+
+def of_array(schema: dict[str, Any], depth: int) -> st.SearchStrategy[Any]:
+    """Short lists; longer ones further in, where the joints are."""
+    least = schema.get("minItems", 0)
+    most = min(schema.get("maxItems", 6), max(least, 6 if depth > 2 else 3))
+    return st.lists(following(schema.get("items", True), depth + 1), min_size=least, max_size=most)
 
 
 def of_law(branch: dict[str, Any], depth: int) -> st.SearchStrategy[Any]:
@@ -174,9 +171,23 @@ def of_object(schema: dict[str, Any], depth: int) -> st.SearchStrategy[Any]:
     if not isinstance(more, dict):
         return whole
     named = st.dictionaries(
-        st.sampled_from(NAMES), following(more, depth + 1), min_size=schema.get("minProperties", 0), max_size=2
+        st.sampled_from(NAMES),
+        following(more, depth + 1),
+        min_size=schema.get("minProperties", 0),
+        max_size=2,
     )
     return st.tuples(whole, named).map(lambda both: both[1] | both[0])
+
+
+OF_TYPE = {
+    "object": of_object,
+    "array": of_array,
+    "number": lambda schema, _: bounded(schema),
+    "integer": lambda schema, _: bounded(schema),
+    "string": lambda *_: st.sampled_from(NAMES),
+    "boolean": lambda *_: st.booleans(),
+    "null": lambda *_: st.none(),
+}
 
 
 def experiments() -> st.SearchStrategy[dict[str, Any]]:

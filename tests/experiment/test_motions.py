@@ -27,7 +27,9 @@ LINE = {"to_m": [0.45, 0, 0.2], "from_m": [0.4, 0, 0.25], "near_deg": [0, 30]}
 
 
 def motions(load: Load, arm: str = TRAY6, **declared: Any) -> dict[str, Motion]:
-    experiment = load(arm=arm, motions=declared, tolerance={"tool_peak_mm": 3}, mismatch=None, conditions=None)
+    experiment = load(
+        arm=arm, motions=declared, tolerance={"tool_peak_mm": 3}, mismatch=None, conditions=None
+    )
     return dict(experiment.sheets[0].motions)
 
 
@@ -53,7 +55,9 @@ def test_a_circle_is_followed_as_declared(load: Load) -> None:
 def test_the_keys_of_a_circle_reach_it(load: Load) -> None:
     """Half a turn from the base's y, at twice the pace: it starts and ends where that says."""
     keys = CIRCLE | {"turns": 0.5, "start_deg": 90, "tool_rpy_deg": None}
-    circle = motions(load, rim={"circle": {k: v for k, v in keys.items() if v is not None}, "pace_percent": 200})["rim"]
+    circle = motions(
+        load, rim={"circle": {k: v for k, v in keys.items() if v is not None}, "pace_percent": 200}
+    )["rim"]
     found = positions(circle)
     np.testing.assert_allclose(found[0], [0.45, 0.05, 0.4], atol=1e-8)
     np.testing.assert_allclose(found[-1], [0.45, -0.05, 0.4], atol=1e-8)
@@ -99,7 +103,9 @@ def test_a_chain_does_its_parts_in_order(load: Load) -> None:
 def test_a_chain_of_chains(load: Load) -> None:
     """A chain may name others, whatever the order in the file."""
     there, back = VIA, VIA | {"via_deg": [[20, 60], [0, 30]]}
-    made = motions(load, arm="arm.yaml", twice={"chain": ["once", "once"]}, once={"chain": ["a", "b"]}, a=there, b=back)
+    made = motions(
+        load, arm="arm.yaml", twice={"chain": ["once", "once"]}, once={"chain": ["a", "b"]}, a=there, b=back
+    )
     assert made["twice"].duration_s == pytest.approx(2.0, rel=1e-12)
 
 
@@ -152,14 +158,18 @@ def test_one_slip_in_a_motion(faults: Faults, keys: dict[str, Any], key: str, pr
 def test_a_chain_of_faulty_parts_is_told_of_once(faults: Faults) -> None:
     """What is wrong with a part is told there, and not again at the chain."""
     bad = VIA | {"via_deg": [[0, 30], [0, 170]]}
-    found = faults(motions={"c": {"chain": ["bad", "bad"], "join_s": 1}, "bad": bad}, tolerance={"tool_peak_mm": 3})
+    found = faults(
+        motions={"c": {"chain": ["bad", "bad"], "join_s": 1}, "bad": bad}, tolerance={"tool_peak_mm": 3}
+    )
     assert [fault.key for fault in found] == ["motions.bad.via_deg[1]"]
 
 
 def test_chains_that_contain_each_other(faults: Faults) -> None:
     """A cycle is told where it closes."""
     found = faults(motions={"a": {"chain": ["b"]}, "b": {"chain": ["a"]}}, tolerance={"tool_peak_mm": 3})
-    assert [(fault.key, "contain itself" in fault.problem) for fault in found] == [("motions.b.chain[0]", True)]
+    assert [(fault.key, "contain itself" in fault.problem) for fault in found] == [
+        ("motions.b.chain[0]", True)
+    ]
 
 
 def test_a_way_beyond_a_joint_limit_is_told_with_the_time(faults: Faults) -> None:
@@ -174,7 +184,9 @@ def test_too_fast_a_circle_is_told_with_the_time(faults: Faults) -> None:
     """A circle that takes a joint beyond its speed limit."""
     via = {"via_deg": START, "leg_s": 0.5}
     found = faults(
-        arm=TRAY6, motions={"v": via, "m": {"circle": CIRCLE | {"turn_s": 0.1}}}, tolerance={"tool_peak_mm": 3}
+        arm=TRAY6,
+        motions={"v": via, "m": {"circle": CIRCLE | {"turn_s": 0.1}}},
+        tolerance={"tool_peak_mm": 3},
     )
     assert {fault.key for fault in found} == {"motions.m"}
     assert all("passes its speed limit" in fault.problem and " s " in fault.problem for fault in found)

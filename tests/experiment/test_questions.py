@@ -118,7 +118,10 @@ conditions:
 def test_trays_against_one_belief(ask: Ask) -> None:
     """A column a tray, each one exact run; the believed one is the nominal machine, and the error grows away from it."""
     document = ask(HEAD + TRAYS)
-    found = {name: peak(document, "feedforward", name) for name in ("nominal", "no tray", "one kilo", "two kilos", "three kilos")}
+    found = {
+        name: peak(document, "feedforward", name)
+        for name in ("nominal", "no tray", "one kilo", "two kilos", "three kilos")
+    }
     assert found["one kilo"] == found["nominal"]
     assert found["one kilo"] < found["no tray"]
     assert found["one kilo"] < found["two kilos"] < found["three kilos"]
@@ -198,7 +201,9 @@ def test_gear_ratio_against_control_rate_against_model_rate(ask: Ask) -> None:
     checked = CliRunner().invoke(app, ["check", "question.yaml"])
     assert "(4 sheets x 3 laws - 2 that can't be) x 1 motion" in checked.stdout
     assert "= 30 runs" in checked.stdout
-    assert "skipped 'feedforward (model_hz 500)' with control_hz 250: 500 is above control_hz" in checked.stderr
+    assert (
+        "skipped 'feedforward (model_hz 500)' with control_hz 250: 500 is above control_hz" in checked.stderr
+    )
     listed = json.loads(CliRunner().invoke(app, ["check", "question.yaml", "--json"]).stdout)
     assert listed["sheets"] == sheets
     assert [(s["sheet"], s["law"]) for s in listed["skipped"]] == [

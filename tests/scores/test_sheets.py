@@ -72,7 +72,10 @@ def test_the_others_are_compared_without_it() -> None:
     """Of three laws one can't be in a sheet: the better of the other two is its best there."""
     found = rows({"load": 2.0}, "slow", "pd") + rows({"load": 1.0}, "slow", "fine")
     results = results_of(found, sheets=["slow"], laws=["pd", "computed", "fine"], absent=NOT_POSSIBLE)
-    assert [(c.law, c.condition) for c in results.cells if c.best] == [("fine", "nominal"), ("fine", "all at 1")]
+    assert [(c.law, c.condition) for c in results.cells if c.best] == [
+        ("fine", "nominal"),
+        ("fine", "all at 1"),
+    ]
 
 
 def test_the_advice_of_a_sheet_speaks_of_what_can_be_in_it() -> None:
