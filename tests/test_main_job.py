@@ -118,7 +118,11 @@ def test_sigkill_half_way_loses_nothing(tmp_path, reference):
     write(tmp_path)
     command = [sys.executable, "-m", "rigbench", "run", "job.yaml", "--jobs", "1"]
     process = subprocess.Popen(
-        command, cwd=tmp_path, stdout=subprocess.DEVNULL, stderr=subprocess.DEVNULL, env=os.environ | {"PYTHONUNBUFFERED": "1"}
+        command,
+        cwd=tmp_path,
+        stdout=subprocess.DEVNULL,
+        stderr=subprocess.DEVNULL,
+        env=os.environ | {"PYTHONUNBUFFERED": "1"},
     )
     store, deadline, done = tmp_path / "results" / "job.sqlite", time.monotonic() + 120, 0
     while done == 0 and time.monotonic() < deadline and process.poll() is None:

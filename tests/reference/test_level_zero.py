@@ -52,7 +52,9 @@ def test_computed_torque_is_nearly_exact_and_first_order_in_the_period(tmp_path)
     """
     peak = {}
     for hz in (1000, 4000):
-        text = HEAD + f"rates: {{control_hz: {hz}, physics_hz: {hz}}}\nlaws: {{ct: {{law: computed-torque}}}}\n"
+        text = (
+            HEAD + f"rates: {{control_hz: {hz}, physics_hz: {hz}}}\nlaws: {{ct: {{law: computed-torque}}}}\n"
+        )
         peak[hz] = scores(tmp_path, text, "tool_peak_mm")["ct", "nominal"][0]
     assert peak[1000] < 0.2
     assert peak[4000] < peak[1000] / 3
@@ -63,7 +65,9 @@ def test_a_slow_feedforward_costs_at_level_zero_and_little_under_mismatch(tmp_pa
     100 Hz is within 10 % of that at 1000 Hz (common practice runs it so); at level 0, where nothing
     else is wrong, the held term shows its price: about its period over the control period."""
     laws = "".join(f"  at {hz}: {{law: torque-feedforward, model_hz: {hz}}}\n" for hz in (100, 1000))
-    rest = "conditions: {together: [1]}\ndraws: 24\nrates: {control_hz: 1000, physics_hz: 1000}\nlaws:\n" + laws
+    rest = (
+        "conditions: {together: [1]}\ndraws: 24\nrates: {control_hz: 1000, physics_hz: 1000}\nlaws:\n" + laws
+    )
     found = scores(tmp_path, HEAD + MISMATCH + rest, "tool_rms_mm")
     (wrong,) = {condition for _, condition in found} - {"nominal"}
     slow, fast = np.median(found["at 100", wrong]), np.median(found["at 1000", wrong])

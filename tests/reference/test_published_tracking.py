@@ -65,7 +65,10 @@ def write_reference(folder):
     rise = 1 - np.exp(-2 * t**3)
     q1 = np.pi / 4 * rise + np.pi / 9 * rise * np.sin(4 * t)
     q2 = np.pi / 3 * rise + np.pi / 6 * rise * np.sin(3 * t)
-    rows = [f"{a:.3f},{float(b)!r},{float(c)!r}" for a, b, c in zip(t, np.rad2deg(q1), np.rad2deg(q2), strict=True)]
+    rows = [
+        f"{a:.3f},{float(b)!r},{float(c)!r}"
+        for a, b, c in zip(t, np.rad2deg(q1), np.rad2deg(q2), strict=True)
+    ]
     (folder / "reference.csv").write_text("\n".join(["t_s,shoulder,elbow", *rows]) + "\n")
 
 
