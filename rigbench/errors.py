@@ -36,6 +36,7 @@ __all__ = [
     "StoreBusy",
     "StoreError",
     "StoreForeign",
+    "counted",
     "nearest",
 ]
 
@@ -44,6 +45,11 @@ def nearest(name: str, valid: Iterable[str]) -> str | None:
     """Return the valid name closest to ``name``, or None if none resembles it."""
     found = get_close_matches(name, list(valid), n=1, cutoff=0.55)
     return found[0] if found else None
+
+
+def counted(number: int, noun: str) -> str:
+    """Return '1 run', '2 runs'."""
+    return f"{number} {noun}" if number == 1 else f"{number} {noun}s"
 
 
 @dataclass(frozen=True)

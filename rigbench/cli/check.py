@@ -14,7 +14,7 @@ from rigbench.cli.estimate import Estimate, estimate_of
 from rigbench.cli.output import print_json, show, tell_notes
 from rigbench.cli.progress import duration_words
 from rigbench.cli.run import store_path
-from rigbench.errors import Fault, StoreError
+from rigbench.errors import Fault, StoreError, counted
 from rigbench.experiment import Experiment, load_experiment
 from rigbench.scores.intervals import draws_needed, misses_allowed
 
@@ -60,7 +60,7 @@ def _stored(plan: Plan, path: Path) -> Stored:
 
 def _lines(experiment: Experiment, plan: Plan, stored: Stored, estimate: Estimate) -> Iterator[str]:
     yield f"{plan.title}: in order"
-    yield f"plan: {_product(plan)} = {_count(len(plan.entries), 'run')}"
+    yield f"plan: {_product(plan)} = {counted(len(plan.entries), 'run')}"
     if plan.sheets != ("",):
         yield f"sheets: {'; '.join(plan.sheets)}"
     yield f"laws: {', '.join(plan.laws)}"
@@ -73,7 +73,7 @@ def _lines(experiment: Experiment, plan: Plan, stored: Stored, estimate: Estimat
     elif estimate.seconds is None:
         yield "time: can't be told, for not every law finishes its nominal run"
     else:
-        cores = _count(estimate.cores, "core")
+        cores = counted(estimate.cores, "core")
         said = f"{duration_words(estimate.seconds)} on {cores}"
         yield f"time: {said}; an estimate, from a short run of each law"
 
@@ -81,22 +81,18 @@ def _lines(experiment: Experiment, plan: Plan, stored: Stored, estimate: Estimat
 def _product(plan: Plan) -> str:
     """Say how many runs there are as the product that makes them."""
     random = sum(column.random for column in plan.columns)
-    conditions = _count(len(plan.columns), "condition")
+    conditions = counted(len(plan.columns), "condition")
     if random:
         exact = len(plan.columns) - random
-        drawn = f"{_count(random, 'random condition')} x {_count(plan.draws, 'draw')}"
+        drawn = f"{counted(random, 'random condition')} x {counted(plan.draws, 'draw')}"
         conditions = f"({exact} exact + {drawn})" if exact else drawn
-    rows = f"{_count(len(plan.sheets), 'sheet')} x {_count(len(plan.laws), 'law')}"
+    rows = f"{counted(len(plan.sheets), 'sheet')} x {counted(len(plan.laws), 'law')}"
     nowhere = {(sheet, law) for sheet, law, _ in plan.absent} - {(e.sheet, e.law) for e in plan.entries}
     if nowhere:
         rows = f"({rows} - {len(nowhere)} that can't be)"
     less = sum((sheet, law) not in nowhere for sheet, law, _ in plan.absent)
-    cells = f", less {_count(less, 'cell')} that can't be," if less else ""
-    return " x ".join([rows, _count(len(plan.motions), "motion"), conditions]) + cells
-
-
-def _count(number: int, what: str) -> str:
-    return f"{number} {what}" if number == 1 else f"{number} {what}s"
+    cells = f", less {counted(less, 'cell')} that can't be," if less else ""
+    return " x ".join([rows, counted(len(plan.motions), "motion"), conditions]) + cells
 
 
 def _draws_lines(experiment: Experiment) -> Iterator[str]:

@@ -12,9 +12,9 @@ from rigbench.arm.arm import Arm
 from rigbench.errors import InputFaults, nearest
 from rigbench.experiment.findings import Findings, entries, unreadable
 from rigbench.experiment.motion_keys import MotionKeys, PathKeys
-from rigbench.experiment.positions import check_position, to_si
+from rigbench.experiment.positions import check_position
 from rigbench.motion.chained import chained
-from rigbench.motion.limits import check_motion
+from rigbench.motion.limits import check_motion, to_si
 from rigbench.motion.motion import Motion
 from rigbench.motion.path import circle, line, middle_of_limits
 from rigbench.motion.reach import Unreachable

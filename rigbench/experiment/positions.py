@@ -9,16 +9,11 @@ import numpy as np
 
 from rigbench.arm.arm import PRISMATIC, Arm, Floats
 from rigbench.experiment.findings import Findings, entries
-from rigbench.motion.limits import SLACK, shown
+from rigbench.motion.limits import SLACK, shown, to_si
 from rigbench.motion.motion import Motion
 from rigbench.yamlfile import KeyPath
 
-__all__ = ["check_position", "check_start", "joint_list", "to_si"]
-
-
-def to_si(arm: Arm) -> Floats:
-    """Return what turns a joint's deg into rad and a prismatic joint's mm into m, shape (n,)."""
-    return np.where(arm.kinds == PRISMATIC, 1e-3, math.radians(1.0))
+__all__ = ["check_position", "check_start", "joint_list"]
 
 
 def joint_list(

@@ -2,17 +2,16 @@
 
 from __future__ import annotations
 
-import types
 from collections.abc import Iterator, Sequence
 from dataclasses import replace
-from typing import Annotated, Any, Union, get_args, get_origin
+from typing import Any, get_args, get_origin
 
 from pydantic import BaseModel
 
 from rigbench.errors import Fault, nearest
 from rigbench.experiment.schema import ExperimentKeys
 from rigbench.experiment.vary import Axis, Sweep, value_text
-from rigbench.yamlfile import Document, KeyPath, key_text
+from rigbench.yamlfile import Document, KeyPath, branches, key_text
 
 __all__ = ["FIXED", "read_sweep"]
 
@@ -162,22 +161,11 @@ def _inside(kind: Any, key: str) -> Iterator[Any]:
     """Yield the types that a value of type ``kind`` may have at ``key``."""
     if _is_model(kind):
         if key in kind.model_fields:
-            yield from _flat(kind.model_fields[key].annotation)
+            yield from branches(kind.model_fields[key].annotation)
         else:
             yield Any
     elif get_origin(kind) is dict:
-        yield from _flat(get_args(kind)[1])
-
-
-def _flat(kind: Any) -> Iterator[Any]:
-    """Yield the branches of a union, without annotations."""
-    if get_origin(kind) is Annotated:
-        yield from _flat(get_args(kind)[0])
-    elif get_origin(kind) in (Union, types.UnionType):
-        for branch in get_args(kind):
-            yield from _flat(branch)
-    else:
-        yield kind
+        yield from branches(get_args(kind)[1])
 
 
 def _is_model(kind: Any) -> bool:

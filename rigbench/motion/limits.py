@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from rigbench.arm.arm import PRISMATIC, Arm, Floats
 from rigbench.motion.motion import Motion
 
-__all__ = ["Passing", "beyond", "check_motion", "passings", "shown", "unit_of"]
+__all__ = ["Passing", "beyond", "check_motion", "passings", "shown", "to_si", "unit_of"]
 
 SLACK = 1e-9
 """By how much a limit may be passed, in SI units and as a share of it: a motion that stands on its limit
@@ -45,6 +45,11 @@ class Passing:
 def unit_of(arm: Arm, i: int) -> tuple[str, float]:
     """Return the unit that people read joint i's position in, and how many of it make the SI unit."""
     return ("mm", 1e3) if arm.kinds[i] == PRISMATIC else ("deg", math.degrees(1))
+
+
+def to_si(arm: Arm) -> Floats:
+    """Return what turns a joint's deg into rad and a prismatic joint's mm into m, shape (n,)."""
+    return np.where(arm.kinds == PRISMATIC, 1e-3, math.radians(1.0))
 
 
 def beyond(excess: Floats, bound: float) -> NDArray[np.intp]:

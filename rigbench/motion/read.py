@@ -12,9 +12,9 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from rigbench.arm.arm import PRISMATIC, Arm, Floats
-from rigbench.errors import Fault, InputFaults, nearest
-from rigbench.motion.limits import SLACK, beyond, passings, shown, unit_of
+from rigbench.arm.arm import Arm, Floats
+from rigbench.errors import Fault, InputFaults, counted, nearest
+from rigbench.motion.limits import SLACK, beyond, passings, shown, to_si, unit_of
 from rigbench.motion.table import LEAST_STEP_S, TableMotion
 
 __all__ = ["read_table"]
@@ -73,15 +73,14 @@ def read_table(file: str, text: str, arm: Arm, pace: float = 1.0) -> TableMotion
         bad = [*bad[:MOST_FAULTS], Fault(file, None, "", f"and {rest} more faults of cells and times")]
     faults += bad
     if len(lines) < 3:
-        faults.append(Fault(file, lines[-1][0], "", _count(len(lines) - 1, "row"), "2 or more"))
+        faults.append(Fault(file, lines[-1][0], "", counted(len(lines) - 1, "row"), "2 or more"))
     for joint, at in column.items():
         i = arm.joints.index(joint)
         faults += _check_positions(sheet, table[:, at], i)
         faults += _check_steps(sheet, table[:, 0] / pace, table[:, at], i)
     if faults:
         raise InputFaults(sorted(faults, key=lambda fault: (fault.line is None, fault.line)))
-    to_si = np.where(arm.kinds == PRISMATIC, 1e-3, math.radians(1))
-    rows = table[:, [column[joint] for joint in arm.joints]] * to_si
+    rows = table[:, [column[joint] for joint in arm.joints]] * to_si(arm)
     motion = TableMotion(tuple(table[:, 0].tolist()), tuple(map(tuple, rows.tolist())), pace)
     if between := _check_between(sheet, motion):
         raise InputFaults(between)
@@ -131,7 +130,7 @@ def _numbers(file: str, lines: list[Line], header: list[str]) -> tuple[Floats, l
     for row, (line, cells) in enumerate(lines):
         if len(cells) != len(header):
             faults.append(
-                Fault(file, line, "", _count(len(cells), "cell"), f"{len(header)}, as in the header")
+                Fault(file, line, "", counted(len(cells), "cell"), f"{len(header)}, as in the header")
             )
             continue
         for at, cell in enumerate(cells):
@@ -165,10 +164,6 @@ def _check_times(sheet: _Sheet, times: Floats) -> list[Fault]:
 
 def _more(count: int) -> str:
     return "" if count == 0 else f" (and in {count} more {'row' if count == 1 else 'rows'})"
-
-
-def _count(count: int, thing: str) -> str:
-    return f"{count} {thing}" if count == 1 else f"{count} {thing}s"
 
 
 def _check_positions(sheet: _Sheet, column: Floats, i: int) -> list[Fault]:

@@ -6,6 +6,7 @@ from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from math import inf, isfinite
 
+from rigbench.errors import counted
 from rigbench.scores.intervals import draws_to_decide
 from rigbench.scores.names import score_words
 from rigbench.scores.results import Cell, Results
@@ -40,7 +41,7 @@ def _missing(results: Results) -> Iterator[str]:
     if left > 0:
         yield f"{left} of {results.planned} runs are still to do"
     if results.failed:
-        runs = _number(results.failed, "run")
+        runs = counted(results.failed, "run")
         yield f"{runs} failed (law's code, the plant, time limit or crash), for or against no law"
 
 
@@ -53,7 +54,7 @@ def _of_sheets(results: Results) -> str:
         return f"in all {len(results.sheets)} sheets: {next(iter(groups))}"
     said = [f"in {_names(sheets)}: {head}" for head, sheets in list(groups.items())[:MOST]]
     rest = sum(len(sheets) for sheets in list(groups.values())[MOST:])
-    return "; ".join([*said, *([f"{_number(rest, 'sheet')} more differ from these"] if rest else [])])
+    return "; ".join([*said, *([f"{counted(rest, 'sheet')} more differ from these"] if rest else [])])
 
 
 def _of_sheet(sheet: SheetStanding) -> list[str]:
@@ -231,11 +232,6 @@ def _without_tolerance(sheet: SheetStanding) -> list[str]:
     under = ", ".join(f"'{law}' under {_names(best[law])}" for law in leaders[:MOST])
     by = score_words(sheet.main)[0]
     return [f"{said}; by {by}, better than every other law beyond the interval: {under}"]
-
-
-def _number(count: int, noun: str) -> str:
-    """Return '1 run', '2 runs'."""
-    return f"{count} {noun}" if count == 1 else f"{count} {noun}s"
 
 
 def _plural(words: str, count: int) -> str:

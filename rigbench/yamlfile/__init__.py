@@ -9,5 +9,16 @@ against a pydantic model derived from :class:`Declared` and turns whatever is wr
 from rigbench.yamlfile.document import Document, KeyPath, key_text, read_text
 from rigbench.yamlfile.reading import load
 from rigbench.yamlfile.validating import Declared, partial, validate
+from rigbench.yamlfile.wording import branches
 
-__all__ = ["Declared", "Document", "KeyPath", "key_text", "load", "partial", "read_text", "validate"]
+__all__ = [
+    "Declared",
+    "Document",
+    "KeyPath",
+    "branches",
+    "key_text",
+    "load",
+    "partial",
+    "read_text",
+    "validate",
+]

@@ -13,7 +13,7 @@ from pydantic import BaseModel, ValidationError
 from rigbench.errors import nearest
 from rigbench.yamlfile.document import KeyPath, at, has
 
-__all__ = ["Problem", "not_a", "problems_of", "shown"]
+__all__ = ["Problem", "branches", "not_a", "problems_of", "shown"]
 
 
 class Problem(NamedTuple):
@@ -252,7 +252,7 @@ def _only_length(model: type[BaseModel], loc: Sequence[str | int]) -> int | None
     """Return how many numbers the list of numbers at ``loc`` has; None if it may have more or fewer."""
     for kind in _types_at(model, loc[:-1]):
         info = kind.model_fields.get(loc[-1]) if _is_model(kind) else None
-        if info is None or not any(float in _inside(branch, 0) for branch in _flat(info.annotation)):
+        if info is None or not any(float in _inside(branch, 0) for branch in branches(info.annotation)):
             continue
         notes = [*info.metadata, *_annotations(info.annotation)]
         least = {note.min_length for note in notes if getattr(note, "min_length", None) is not None}
@@ -289,21 +289,21 @@ def _inside(kind: Any, step: str | int) -> Iterator[Any]:
     if _is_model(kind):
         for name, info in kind.model_fields.items():
             if step in (name, info.alias):
-                yield from _flat(info.annotation)
+                yield from branches(info.annotation)
         return
     arguments = [argument for argument in get_args(kind) if argument is not Ellipsis]
     if get_origin(kind) is tuple and isinstance(step, int) and step < len(arguments):
-        yield from _flat(arguments[step])
+        yield from branches(arguments[step])
     elif arguments:
-        yield from _flat(arguments[-1])
+        yield from branches(arguments[-1])
 
 
-def _flat(kind: Any) -> Iterator[Any]:
+def branches(kind: Any) -> Iterator[Any]:
     """Yield the branches of a union, without annotations."""
     if get_origin(kind) is Annotated:
-        yield from _flat(get_args(kind)[0])
+        yield from branches(get_args(kind)[0])
     elif get_origin(kind) in (Union, types.UnionType):
         for branch in get_args(kind):
-            yield from _flat(branch)
+            yield from branches(branch)
     else:
         yield kind

@@ -251,29 +251,6 @@ def test_inertia_without_mass_must_not_take_any_away(
     assert said in str(fault)
 
 
-def test_missing_files(here: Path) -> None:
-    """A file that isn't there is a fault with its name, not an exception of the system."""
-    for name, said in (
-        ("none.yaml", "does not exist"),
-        (".", "is a folder"),
-        ("arm.yaml/x", "does not exist"),
-    ):
-        with pytest.raises(InputFaults, match=said):
-            ArmFiles.read(name)
-    Path("latin.yaml").write_bytes(b"urdf: a.urdf\ntool: \xe9\n")
-    with pytest.raises(InputFaults, match=r"latin\.yaml:2: the arm file is not UTF-8 text"):
-        ArmFiles.read(Path("latin.yaml"))
-
-
-def test_urdf_is_named_as_the_user_named_the_arm_file(here: Path) -> None:
-    """The URDF stands beside the arm file, and messages name it from where the user is."""
-    Path("robots").mkdir()
-    Path("robots/arm.yaml").write_text(ARM)
-    Path("robots/a.urdf").write_text("<robot>")
-    with pytest.raises(InputFaults, match=r"^robots/a\.urdf:1: not valid XML"):
-        load_arm("robots/arm.yaml")
-
-
 def test_drives_carry_over_to_the_joint() -> None:
     """Torque by G, speed by 1/G, viscous by G^2, Coulomb by G (also onto breakaway); the tighter limit acts."""
     ideal = DriveDeclaration()
