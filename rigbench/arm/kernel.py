@@ -15,7 +15,7 @@ from typing import Any, TypeVar, cast
 
 import numba
 
-__all__ = ["kernel", "kernel_cache"]
+__all__ = ["kernel", "kernel_cache", "kernel_of_this_process"]
 
 MONTH = 30 * 86400.0
 """After so long without use [s] the kernels of other sources are removed."""
@@ -80,3 +80,8 @@ def kernel(function: Function) -> Function:
         return cast(Function, numba.njit(cache=True, error_model="numpy")(function))
     finally:
         config.CACHE_DIR = before
+
+
+def kernel_of_this_process(function: Function) -> Function:
+    """Compile ``function`` as :func:`kernel` does, and keep nothing on disk."""
+    return cast(Function, numba.njit(error_model="numpy")(function))

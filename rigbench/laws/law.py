@@ -16,6 +16,7 @@ __all__ = [
     "A_REF",
     "CLOCK",
     "Q_REF",
+    "SEES",
     "TAU",
     "V_REF",
     "Compiled",
@@ -30,6 +31,9 @@ __all__ = [
 Q, V, Q_REF, V_REF, A_REF, TAU, CLOCK = range(7)
 """Rows of ``io``, shape (7, n), by which a compiled law reads its inputs and writes its torque:
 position, velocity, the reference's three, the torque it commands; ``io[CLOCK, 0]`` is the time [s]."""
+
+SEES = CLOCK + 1
+"""How many rows that are."""
 
 
 class Reference(NamedTuple):

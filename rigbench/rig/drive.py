@@ -52,6 +52,7 @@ from rigbench.rig.rows import (
     CARRIED,
     CONTACTS,
     COULOMB,
+    DRY,
     ENERGY,
     EXTERNAL,
     GEAR_LOSS,
@@ -73,7 +74,7 @@ from rigbench.rig.rows import (
     V_TRUE,
     VISCOUS,
 )
-from rigbench.rig.torque_path import motor_torque
+from rigbench.rig.torque_path import motor_torques
 
 __all__ = ["step_drive"]
 
@@ -101,8 +102,8 @@ def step_drive(chain: Floats, machine: Floats, io: Floats) -> bool:
     momentum, dry, v_next, f = vectors[3], vectors[4], vectors[5], vectors[6]
     slide = np.ones(size)
     v = io[V_TRUE]
+    motor_torques(machine, io)
     for i in range(n):
-        motor_torque(machine, io, i)
         middle[i] = v[i] + 0.5 * dt * io[A_LAST, i]
     place(chain, io[Q_ENGINE], placed)
     composite_inertia(chain, placed, mass)
@@ -119,37 +120,15 @@ def step_drive(chain: Floats, machine: Floats, io: Floats) -> bool:
             total += mass[i, j] * v[j]
         momentum[i] = total
         dry[i] = 0.0
-    rotor = n
-    for i in range(n):
-        if machine[STIFFNESS, i] > 0.0:
-            _join_spring(machine, io, mass, momentum, i, rotor)
-            _join_friction(machine, io, mass, momentum, dry, slide, i, rotor)
-            rotor += 1
-        else:
+        if machine[STIFFNESS, i] == 0.0:
             momentum[i] += dt * io[MOTOR, i]
-            _join_friction(machine, io, mass, momentum, dry, slide, i, i)
+    if elastic > 0:
+        _join_springs(machine, io, mass, momentum)
+    _join_friction(machine, io, mass, momentum, dry, slide)
     solve_friction(mass, momentum, dry, dt, slide, v_next, f)
-    rotor = n
+    _keep(machine, io, slide, f, v_next)
     for i in range(n):
-        a = (v_next[i] - v[i]) / dt
-        io[A_LAST, i], io[V_NEXT, i] = a, v_next[i]
-        if machine[STIFFNESS, i] > 0.0:
-            _keep_friction(machine, io, slide, f, i, rotor, io[V_ROTOR, i], v_next[rotor])
-            carried = _spring_torque(machine, io, i, v_next[i], v_next[rotor])
-            turning = 0.5 * (io[V_ROTOR, i] + v_next[rotor])
-            io[V_ROTOR, i] = v_next[rotor]
-            io[Q_ROTOR, i] += dt * v_next[rotor]
-            io[TAU_ENGINE, i] = carried + h_engine[i] - h_middle[i]
-            rotor += 1
-        else:
-            _keep_friction(machine, io, slide, f, i, i, v[i], v_next[i])
-            turning = 0.5 * (v[i] + v_next[i])
-            drag = machine[VISCOUS, i] * turning
-            carried = io[MOTOR, i] - machine[REFLECTED, i] * a
-            io[TAU_ENGINE, i] = carried - drag - f[i] + h_engine[i] - h_middle[i]
-        io[CARRIED, i] = carried
-        io[ENERGY, i] += dt * max(io[MOTOR, i] * turning, 0.0)
-        io[TORQUE_PEAK, i] = max(io[TORQUE_PEAK, i], abs(io[MOTOR, i]))
+        io[TAU_ENGINE, i] += h_engine[i] - h_middle[i]
     io[STEPS, 0] += 1.0
     return True
 
@@ -163,18 +142,97 @@ def _feel_contacts(io: Floats, mass: Floats, n: int, dt: float) -> None:
 
 
 @kernel
-def _join_spring(machine: Floats, io: Floats, mass: Floats, momentum: Floats, i: int, rotor: int) -> None:
-    """Put the rotor and the spring of elastic joint i into the inertia and the momentum."""
-    dt = machine[STEP, 0]
-    stiff = 0.25 * dt * dt * machine[STIFFNESS, i]
-    damped = 0.5 * dt * machine[SPRING_DAMPING, i]
-    apart = io[V_ROTOR, i] - io[V_TRUE, i]
-    push = dt * machine[STIFFNESS, i] * (io[Q_ROTOR, i] - io[Q_ENGINE, i]) - (stiff - damped) * apart
-    mass[i, i] += stiff + damped
-    mass[i, rotor] = mass[rotor, i] = -(stiff + damped)
-    mass[rotor, rotor] = machine[REFLECTED, i] + stiff + damped
-    momentum[i] += push
-    momentum[rotor] = machine[REFLECTED, i] * io[V_ROTOR, i] + dt * io[MOTOR, i] - push
+def _join_springs(machine: Floats, io: Floats, mass: Floats, momentum: Floats) -> None:
+    """Put the rotors and springs of elastic joints into the inertia and the momentum."""
+    dt, rotor = machine[STEP, 0], io.shape[1]
+    for i in range(io.shape[1]):
+        if machine[STIFFNESS, i] > 0.0:
+            stiff = 0.25 * dt * dt * machine[STIFFNESS, i]
+            damped = 0.5 * dt * machine[SPRING_DAMPING, i]
+            apart = io[V_ROTOR, i] - io[V_TRUE, i]
+            stretch = io[Q_ROTOR, i] - io[Q_ENGINE, i]
+            push = dt * machine[STIFFNESS, i] * stretch - (stiff - damped) * apart
+            mass[i, i] += stiff + damped
+            mass[i, rotor] = mass[rotor, i] = -(stiff + damped)
+            mass[rotor, rotor] = machine[REFLECTED, i] + stiff + damped
+            momentum[i] += push
+            momentum[rotor] = machine[REFLECTED, i] * io[V_ROTOR, i] + dt * io[MOTOR, i] - push
+            rotor += 1
+
+
+@kernel
+def _dry_size(coulomb: float, static: float, stribeck: float, gear_loss: float, v: float) -> float:
+    """Return the size of a joint's dry friction [N m]: Stribeck's curve, plus the gear's loss by load."""
+    size = coulomb + gear_loss
+    if static != coulomb:
+        slip = v / stribeck
+        size += (static - coulomb) * np.exp(-slip * slip)
+    return size
+
+
+@kernel
+def _join_friction(
+    machine: Floats, io: Floats, mass: Floats, momentum: Floats, dry: Floats, slide: Floats
+) -> None:
+    """Put friction on the links, or on the rotors of elastic joints, where it acts."""
+    dt, rotor = machine[STEP, 0], io.shape[1]
+    for i in range(io.shape[1]):
+        at, v = i, io[V_TRUE, i]
+        if machine[STIFFNESS, i] > 0.0:
+            at, v = rotor, io[V_ROTOR, i]
+            rotor += 1
+        drag = 0.5 * dt * machine[VISCOUS, i]
+        momentum[at] -= drag * v
+        mass[at, at] += drag
+        carried = io[MOTOR, i] if io[STEPS, 0] == 0.0 else io[CARRIED, i]
+        loss = machine[GEAR_LOSS, i] * abs(carried)
+        size = _dry_size(machine[COULOMB, i], machine[STATIC, i], machine[STRIBECK, i], loss, v)
+        io[DRY, i] = size
+        if machine[BRISTLE_STIFFNESS, i] > 0.0:
+            dry[at] = 0.0
+            stiff, damped = machine[BRISTLE_STIFFNESS, i], machine[BRISTLE_DAMPING, i]
+            relaxed = 1.0 + dt * stiff * abs(v) / size
+            mass[at, at] += dt * (stiff * dt + damped) / relaxed
+            z = io[BRISTLE, i]
+            momentum[at] -= dt * ((stiff + damped / dt) * z / relaxed - damped * z / dt)
+        else:
+            dry[at] = size
+            if abs(v) > MOVING:
+                slide[at] = np.sign(v)
+            else:
+                slide[at] = io[SLIDE, i]
+
+
+@kernel
+def _keep(machine: Floats, io: Floats, slide: Floats, f: Floats, v_next: Floats) -> None:
+    """Keep what the next step starts from; fill the torque on the links, of motor, spring and friction."""
+    n, dt = io.shape[1], machine[STEP, 0]
+    rotor = n
+    for i in range(n):
+        v = io[V_TRUE, i]
+        a = (v_next[i] - v) / dt
+        at, motor, motor_next = i, v, v_next[i]
+        if machine[STIFFNESS, i] > 0.0:
+            at, motor, motor_next = rotor, io[V_ROTOR, i], v_next[rotor]
+            rotor += 1
+        turning = 0.5 * (motor + motor_next)
+        io[SLIDE, i] = slide[at]
+        if machine[BRISTLE_STIFFNESS, i] > 0.0:
+            stiff, z = machine[BRISTLE_STIFFNESS, i], io[BRISTLE, i]
+            z_next = (z + dt * motor_next) / (1.0 + dt * stiff * abs(motor) / io[DRY, i])
+            f[at] = stiff * z_next + machine[BRISTLE_DAMPING, i] * (z_next - z) / dt
+            io[BRISTLE, i] = z_next
+        if at == i:
+            carried = io[MOTOR, i] - machine[REFLECTED, i] * a
+            io[TAU_ENGINE, i] = carried - machine[VISCOUS, i] * turning - f[i]
+        else:
+            carried = _spring_torque(machine, io, i, v_next[i], motor_next)
+            io[TAU_ENGINE, i] = carried
+            io[V_ROTOR, i] = motor_next
+            io[Q_ROTOR, i] += dt * motor_next
+        io[A_LAST, i], io[V_NEXT, i], io[CARRIED, i] = a, v_next[i], carried
+        io[ENERGY, i] += dt * max(io[MOTOR, i] * turning, 0.0)
+        io[TORQUE_PEAK, i] = max(io[TORQUE_PEAK, i], abs(io[MOTOR, i]))
 
 
 @kernel
@@ -184,57 +242,3 @@ def _spring_torque(machine: Floats, io: Floats, i: int, v_next: float, w_next: f
     before, after = io[V_ROTOR, i] - io[V_TRUE, i], w_next - v_next
     stretch = io[Q_ROTOR, i] - io[Q_ENGINE, i] + 0.25 * dt * (after - before)
     return float(machine[STIFFNESS, i] * stretch + 0.5 * machine[SPRING_DAMPING, i] * (before + after))
-
-
-@kernel
-def _dry_size(machine: Floats, io: Floats, i: int, speed: float) -> float:
-    """Return the size of joint i's dry friction [N m]: Stribeck's curve, plus the gear's loss by load."""
-    size = float(machine[COULOMB, i])
-    if machine[STATIC, i] != machine[COULOMB, i]:
-        slip = speed / machine[STRIBECK, i]
-        size += (machine[STATIC, i] - machine[COULOMB, i]) * np.exp(-slip * slip)
-    if machine[GEAR_LOSS, i] > 0.0:
-        carried = io[MOTOR, i] if io[STEPS, 0] == 0.0 else io[CARRIED, i]
-        size += machine[GEAR_LOSS, i] * abs(carried)
-    return size
-
-
-@kernel
-def _join_friction(
-    machine: Floats, io: Floats, mass: Floats, momentum: Floats, dry: Floats, slide: Floats, i: int, at: int
-) -> None:
-    """Put joint i's friction on coordinate ``at``: the link's, or the rotor's of an elastic joint."""
-    dt = machine[STEP, 0]
-    speed = io[V_TRUE, i] if at == i else io[V_ROTOR, i]
-    momentum[at] -= 0.5 * dt * machine[VISCOUS, i] * speed
-    mass[at, at] += 0.5 * dt * machine[VISCOUS, i]
-    size = _dry_size(machine, io, i, speed)
-    if machine[BRISTLE_STIFFNESS, i] > 0.0:
-        dry[at] = 0.0
-        stiff, damped = machine[BRISTLE_STIFFNESS, i], machine[BRISTLE_DAMPING, i]
-        relaxed = 1.0 + dt * stiff * abs(speed) / size
-        mass[at, at] += dt * (stiff * dt + damped) / relaxed
-        z = io[BRISTLE, i]
-        momentum[at] -= dt * ((stiff + damped / dt) * z / relaxed - damped * z / dt)
-        return
-    dry[at] = size
-    if speed > MOVING:
-        slide[at] = 1.0
-    elif speed < -MOVING:
-        slide[at] = -1.0
-    else:
-        slide[at] = io[SLIDE, i]
-
-
-@kernel
-def _keep_friction(
-    machine: Floats, io: Floats, slide: Floats, f: Floats, i: int, at: int, speed: float, speed_next: float
-) -> None:
-    """Keep joint i's stick or slide for the next step; let its bristles follow, and fill their torque."""
-    io[SLIDE, i] = slide[at]
-    if machine[BRISTLE_STIFFNESS, i] > 0.0:
-        dt, z = machine[STEP, 0], io[BRISTLE, i]
-        stiff = machine[BRISTLE_STIFFNESS, i]
-        z_next = (z + dt * speed_next) / (1.0 + dt * stiff * abs(speed) / _dry_size(machine, io, i, speed))
-        f[at] = stiff * z_next + machine[BRISTLE_DAMPING, i] * (z_next - z) / dt
-        io[BRISTLE, i] = z_next

@@ -13,16 +13,32 @@ import numpy as np
 
 from rigbench.arm.arm import Floats
 from rigbench.errors import LawError
-from rigbench.laws.law import A_REF, CLOCK, Q_REF, TAU, V_REF, Compiled, Law, Q, Reference, Setup, V
+from rigbench.laws.law import A_REF, CLOCK, Q_REF, SEES, TAU, V_REF, Compiled, Law, Q, Reference, Setup, V
 from rigbench.laws.plugins import own_trace
+from rigbench.rig.fused import AFTER, BEFORE, NOT_DUE, FusedStep, fused, no_term
 
-__all__ = ["LawCall", "StartedLaw", "law_error", "start_law"]
+__all__ = ["TIMED_EVERY", "LawCall", "StartedLaw", "law_error", "start_law"]
 
-LAW_SEES = CLOCK + 1
-TIMED_EVERY = 16  # the law's time is taken at one tick in so many: a clock costs more than some laws
+TIMED_EVERY = 64
+"""A compiled law's time is taken at one tick in so many: a clock costs more than some laws."""
 
-LawCall = Callable[[int], None]
-"""Takes the number of the tick; reads what the law sees from ``io`` and leaves its torque there."""
+
+@dataclass(frozen=True, eq=False)
+class LawCall:
+    """How to call a law in one run.
+
+    ``at(k)`` calls it at tick k: it reads what the law sees from the rig's ``io`` and leaves its torque
+    there. ``fused`` is the physics step around a compiled law, to be called with the ``believed`` chain,
+    with ``arrays`` (held, the law's own) and, tick by tick, with ``due``; None for a law in plain Python.
+    ``times_ns`` fills with what calls by ``at`` took, where they are timed.
+    """
+
+    at: Callable[[int], None]
+    believed: Floats
+    due: list[int]
+    times_ns: list[int]
+    fused: FusedStep | None = None
+    arrays: tuple[Floats, ...] = ()
 
 
 @dataclass(frozen=True, eq=False)
@@ -33,21 +49,23 @@ class StartedLaw:
     law: Law
     setup: Setup
 
-    def call(self, io: Floats, late: bool, law_ns: list[int]) -> LawCall:
-        """Return the law's call at a tick; LawError if asking for its kernels raises.
+    def call(self, io: Floats, ticks: int, late: bool) -> LawCall:
+        """Return the law's call in a run of so many ticks; LawError if asking for its kernels raises.
 
-        ``late``: its model term is handed on one model tick late. ``law_ns`` takes the times [ns].
+        ``late``: its model term is handed on one model tick late.
         """
-        control_hz = self.setup.control_hz
-        model_hz = getattr(self.law, "model_hz", None) or control_hz
-        every = max(1, round(control_hz / model_hz))
         try:
             compiled = self.law.compiled()
         except BaseException as problem:
             raise law_error(self.name, problem) from None
+        control_hz = self.setup.control_hz
+        every = max(1, round(control_hz / (getattr(self.law, "model_hz", None) or control_hz)))
+        due, chain = [NOT_DUE] * ticks, self.setup.model.chain
+        due[::every] = [AFTER if late else BEFORE] * len(due[::every])
+        due[:1] = [BEFORE] * len(due[:1])
         if compiled is None:
-            return _plain_call(self.name, self.law, io, every, late, law_ns)
-        return _compiled_call(compiled, self.setup.model.chain, io, every, late, law_ns)
+            return _plain_call(self.name, self.law, chain, io, due)
+        return _compiled_call(compiled, chain, io, due)
 
 
 def start_law(name: str, law: Law, setup: Setup) -> StartedLaw:
@@ -78,30 +96,24 @@ def _ctrl_c_raises() -> bool:
     return main and signal.getsignal(signal.SIGINT) is signal.default_int_handler
 
 
-def _no_term(io: Floats, held: Floats, chain: Floats, own: Floats) -> None:
-    """Stand for the model term of a law that has none."""
-
-
-def _compiled_call(
-    compiled: Compiled, chain: Floats, io: Floats, every: int, late: bool, law_ns: list[int]
-) -> LawCall:
-    seen, held = io[:LAW_SEES], np.zeros(compiled.held_size)
+def _compiled_call(compiled: Compiled, chain: Floats, io: Floats, due: list[int]) -> LawCall:
+    seen, held = io[:SEES], np.zeros(compiled.held_size)
     own = np.ascontiguousarray(compiled.own)
-    torque, model_term = compiled.torque, compiled.model_term or _no_term
-    keep, now = law_ns.append, time.perf_counter_ns
+    torque, model_term = compiled.torque, compiled.model_term or no_term
+    times: list[int] = []
+    keep, now = times.append, time.perf_counter_ns
 
-    def call(k: int) -> None:
-        before = now() if k % TIMED_EVERY == 0 else 0
-        due = k % every == 0
-        if due and (not late or k == 0):
+    def at(k: int) -> None:
+        before = now()
+        if due[k] == BEFORE:
             model_term(seen, held, chain, own)
         torque(seen, held, chain, own)
-        if due and late and k > 0:
+        if due[k] == AFTER:
             model_term(seen, held, chain, own)
-        if before:
+        if k % TIMED_EVERY == 0:
             keep(now() - before)
 
-    return call
+    return LawCall(at, chain, due, times, fused(compiled), (held, own))
 
 
 def _real(name: str, what: str, given: object, t: float) -> Floats:
@@ -113,24 +125,24 @@ def _real(name: str, what: str, given: object, t: float) -> Floats:
     return array.astype(float)
 
 
-def _plain_call(name: str, law: Law, io: Floats, every: int, late: bool, law_ns: list[int]) -> LawCall:
+def _plain_call(name: str, law: Law, chain: Floats, io: Floats, due: list[int]) -> LawCall:
     n, held = io.shape[1], np.empty(0)
-    keep, now = law_ns.append, time.perf_counter_ns
+    times: list[int] = []
+    keep, now = times.append, time.perf_counter_ns
 
-    def call(k: int) -> None:
+    def at(k: int) -> None:
         nonlocal held
         before = now()
         t, q, v = float(io[CLOCK, 0]), io[Q].copy(), io[V].copy()
         ref = Reference(io[Q_REF].copy(), io[V_REF].copy(), io[A_REF].copy())
-        due = k % every == 0
-        if due and (not late or k == 0):
+        if due[k] == BEFORE:
             held = _real(name, "model term", law.model_term(t, q, v, ref), t)
         torque = _real(name, "torque", law.torque(t, q, v, ref, held), t)
         if torque.shape != (n,):
             raise LawError(name, f"a torque of shape {torque.shape}; expected ({n},)", f"at t = {t:.4f} s")
-        if due and late and k > 0:
+        if due[k] == AFTER:
             held = _real(name, "model term", law.model_term(t, q, v, ref), t)
         io[TAU] = torque
         keep(now() - before)
 
-    return call
+    return LawCall(at, chain, due, times)

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import struct
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from functools import lru_cache
@@ -13,21 +12,23 @@ import numpy as np
 from rigbench.arm.arm import Arm, Floats
 from rigbench.arm.dynamics import gravity_torque
 from rigbench.errors import LawError
-from rigbench.laws.law import CLOCK
 from rigbench.motion.motion import Motion
 from rigbench.rig.engine import engine_errors
-from rigbench.rig.law_call import StartedLaw, law_error
+from rigbench.rig.joint_states import filler
+from rigbench.rig.law_call import TIMED_EVERY, StartedLaw, law_error
 from rigbench.rig.log import Log
 from rigbench.rig.rows import (
     DELAYED,
     ENERGY,
     ERROR,
     EXTERNAL,
+    MACHINE_ROWS,
     Q_ENGINE,
     Q_ROTOR,
     Q_TRUE,
     TAU_ENGINE,
     TORQUE_PEAK,
+    V_ENGINE,
     V_NEXT,
     V_ROTOR,
     V_TRUE,
@@ -37,7 +38,15 @@ from rigbench.rig.rows import (
 from rigbench.rig.run import Rates
 from rigbench.rig.sampled import Sensing, Timing, noise_of, ticks_of
 from rigbench.rig.sensing import BEYOND_BOUNDS, HIT_STOP, OK
-from rigbench.rig.tick import LOG_ROWS, begin_step, end_step
+from rigbench.rig.tick import (
+    LOGGED,
+    NOISE,
+    RECORD_ROWS,
+    TORQUE_NOT_FINITE,
+    WANTED,
+    begin_step,
+    end_step,
+)  # fmt: skip
 
 __all__ = ["Driven", "Loop", "Setting", "sampled"]
 
@@ -95,13 +104,10 @@ class Loop:
         plant, rates = setting.plant, setting.rates
         dt, delay = 1.0 / rates.physics_hz, setting.delay_ms / 1000.0
         self._setting, self._name = setting, law.name
-        self._t, self._reference = sampled(motion, rates.control_hz)
+        self._t, reference = sampled(motion, rates.control_hz)
         self._times: list[float] = self._t.tolist()
         self._chain = plant.chain(setting.gravity)
-        self._io = np.zeros((DELAYED + delay_rows(delay / dt), plant.n))
-        self._io[V_NEXT] = self._io[V_ROTOR] = v
-        self._io[Q_ROTOR] = q + gravity_torque(self._chain, q) / plant.drives.stiffness
-        self._machine = machine_array(
+        machine = machine_array(
             plant,
             dt,
             delay=delay,
@@ -110,13 +116,17 @@ class Loop:
             link_encoder=setting.sensing.encoder == "link",
             contacts=setting.contacts,
         )
+        self._bench = np.vstack([machine, np.zeros((DELAYED + delay_rows(delay / dt), plant.n))])
+        self._machine, self._io = self._bench[:MACHINE_ROWS], self._bench[MACHINE_ROWS:]
+        self._io[V_NEXT] = self._io[V_ROTOR] = v
+        self._io[Q_ROTOR] = q + gravity_torque(self._chain, q) / plant.drives.stiffness
         count, draw = len(self._t), (setting.seed, setting.draw)
         self._substeps = round(rates.physics_hz / rates.control_hz)
-        self._noise = noise_of(setting.sensing, count, plant, *draw)
+        self._record = np.empty((count, RECORD_ROWS, plant.n))
+        self._record[:, WANTED:NOISE] = reference
+        self._record[:, NOISE] = noise_of(setting.sensing, count, plant, *draw)
         self._calls = ticks_of(setting.timing, count, self._substeps, *draw)
-        self._law_ns: list[int] = []
-        self._call = law.call(self._io, setting.timing.model_late, self._law_ns)
-        self._log = np.empty((count, LOG_ROWS, plant.n))
+        self._law = law.call(self._io, count, setting.timing.model_late)
         self._status, self.ticks = OK, 0
         self._energy: float | None = None
 
@@ -143,48 +153,56 @@ class Loop:
 
     def _steps(self, engine: Driven, stop: int) -> tuple[int, int]:
         """Do the ticks before ``stop``; return the status and how many are logged."""
-        io, chain, machine, log = self._io, self._chain, self._machine, self._log
-        reference, noise, calls, call_law = self._reference, self._noise, self._calls, self._call
-        read, apply, step = engine.read, engine.apply, engine.step
-        n, last = io.shape[1], len(self._t) - 1
-        pack, fill = struct.Struct(f"{2 * n}d").pack_into, io.data.cast("B")
-        offset = Q_ENGINE * n * io.itemsize
-        torque, clock, times = io[TAU_ENGINE], io[CLOCK], self._times
-        substeps = range(self._substeps)
+        read, apply, step, times = engine.read, engine.apply, engine.step, self._times
+        fused, due, last = self._law.fused, self._law.due, len(times) - 1
+        chains = np.stack([self._chain, self._law.believed])
+        arrays = chains, self._bench, self._record, *self._law.arrays
+        fill, torque = filler(self._io[Q_ENGINE : V_ENGINE + 1]), self._io[TAU_ENGINE]
+        calls, substeps = self._calls, range(self._substeps)
         for k in range(self.ticks, stop):
-            call = calls[k]
+            t, call, by_parts = times[k], calls[k], fused is None or k % TIMED_EVERY == 0 or k == last
             for substep in substeps:
-                states = read()
-                pack(fill, offset, *[s[0] for s in states], *[s[1] for s in states])
-                status = begin_step(machine, io, reference, noise, k if substep == call else -1)
+                fill(read())
+                tick, logged = k if substep == call else -1, -1 if substep else k
+                try:
+                    if by_parts:
+                        status = self._parts(tick, t, logged)
+                    else:
+                        status = fused(*arrays, tick, t, due[k], logged)  # type: ignore[misc]
+                except BaseException as problem:
+                    raise law_error(self._name, problem) from None
+                if status == TORQUE_NOT_FINITE:
+                    raise LawError(self._name, "a torque that is not a number", f"at t = {t:.4f} s")
                 if status != OK:
                     return status, k + (substep > 0)
-                if substep == call:
-                    clock[0] = times[k]
-                    try:
-                        call_law(k)
-                    except BaseException as problem:
-                        raise law_error(self._name, problem) from None
-                if k == last:
-                    # the torque of the last tick is asked for and logged, but never acts
-                    self._energy = float(io[ENERGY].sum())
-                if not end_step(chain, machine, io, log, k if substep == 0 else -1):
-                    raise LawError(self._name, "a torque that is not a number", f"at t = {times[k]:.4f} s")
                 if k == last:
                     break
                 apply(torque.tolist())
                 step()
         return OK, stop
 
+    def _parts(self, tick: int, t: float, logged: int) -> int:
+        """Do what a fused step does, part by part: for laws in plain Python, and to time the others."""
+        status = begin_step(self._machine, self._io, self._record, tick, t)
+        if status != OK:
+            return status
+        if tick >= 0:
+            self._law.at(tick)
+        if logged == len(self._times) - 1:
+            # the torque of the last tick is asked for and logged, but never acts
+            self._energy = float(self._io[ENERGY].sum())
+        return end_step(self._chain, self._machine, self._io, self._record, logged)
+
     def log(self) -> Log:
         """Return the log up to here; its outcome is 'running' where there is more to come."""
         setting, ticks = self._setting, self.ticks
-        log = self._log[:ticks]
+        record = self._record[:ticks]
+        log = record[:, LOGGED:]
         outcome, reason = self._verdict()
         return Log(
             t=self._t[:ticks],
-            q_ref=self._reference[:ticks, 0],
-            v_ref=self._reference[:ticks, 1],
+            q_ref=record[:, WANTED],
+            v_ref=record[:, WANTED + 1],
             q=log[:, 0],
             v=log[:, 1],
             torque=log[:, 2],
@@ -195,7 +213,7 @@ class Loop:
             residual=float(self._io[ERROR, 0]),
             energy_j=float(self._io[ENERGY].sum()) if self._energy is None else self._energy,
             torque_peak=self._io[TORQUE_PEAK].copy(),
-            law_us=float(np.median(self._law_ns)) / 1000.0 if self._law_ns else 0.0,
+            law_us=float(np.median(self._law.times_ns)) / 1000.0 if self._law.times_ns else 0.0,
             control_hz=setting.rates.control_hz,
             gravity=setting.gravity,
             contacts=setting.contacts,

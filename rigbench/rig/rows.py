@@ -9,11 +9,9 @@ from __future__ import annotations
 import numpy as np
 
 from rigbench.arm.arm import Arm, Floats
-from rigbench.laws.law import CLOCK
+from rigbench.laws.law import SEES
 
 __all__ = ["delay_rows", "machine_array"]
-
-FIRST = CLOCK + 1
 
 (
     Q_ENGINE,  # position and velocity as the engine gives them
@@ -29,6 +27,7 @@ FIRST = CLOCK + 1
     ERROR,  # [0]: largest difference between foreseen and reached velocity [rad/s]
     LAGGED,  # torque within the current loop
     CARRIED,  # torque that the gear carried in the step before
+    DRY,  # size of the dry friction in this step, before anything sticks
     BRISTLE,  # deflection of LuGre's bristles [rad]
     Q_ROTOR,  # rotor of an elastic joint, in the joint's measure: position half a step ahead, velocity
     V_ROTOR,
@@ -38,7 +37,7 @@ FIRST = CLOCK + 1
     ENERGY,  # positive mechanical work of the motor so far [J]
     TORQUE_PEAK,  # largest size of the motor's torque so far [N m]
     DELAYED,  # first row of the delay line; as many as the delay takes
-) = range(FIRST, FIRST + 22)
+) = range(SEES, SEES + 23)
 
 (
     REFLECTED,
@@ -74,6 +73,8 @@ FIRST = CLOCK + 1
     CONTACTS,  # [0]: 1 where something may touch the arm
 ) = range(31)
 
+MACHINE_ROWS = CONTACTS + 1
+
 RUNAWAY = 10.0
 """A joint is beyond bounds at this many times its speed limit, or at 1000 rad/s where it has none."""
 
@@ -97,7 +98,7 @@ def machine_array(
     ``dt`` and ``delay`` in s; ``velocity_corner_hz`` None for exact velocities.
     """
     drives, n = arm.drives, arm.n
-    machine = np.zeros((31, n))
+    machine = np.zeros((MACHINE_ROWS, n))
     for row, values in {
         REFLECTED: drives.reflected,
         VISCOUS: drives.viscous,

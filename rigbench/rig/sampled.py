@@ -72,9 +72,9 @@ def _random(seed: int, draw: int, what: str) -> np.random.Generator:
 
 
 def noise_of(sensing: Sensing, ticks: int, arm: Arm, seed: int, draw: int) -> Floats:
-    """Return the noise on sensed positions, (ticks, n) [rad or m]; of no rows where there is none."""
+    """Return the noise on sensed positions, (ticks, n) [rad or m]; zeros where there is none."""
     if sensing.noise_deg == 0:
-        return np.empty((0, arm.n))
+        return np.zeros((ticks, arm.n))
     scale = sensing.noise_deg * np.where(arm.kinds == 0.0, np.pi / 180, 1e-3)
     noise: Floats = _random(seed, draw, "sensing.noise").standard_normal((ticks, arm.n)) * scale
     return noise

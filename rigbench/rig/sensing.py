@@ -59,11 +59,11 @@ def read_state(machine: Floats, io: Floats) -> int:
 
 
 @kernel
-def sense(machine: Floats, io: Floats, noise: Floats, tick: int) -> None:
+def sense(machine: Floats, io: Floats, noise: Floats) -> None:
     """Fill what the law sees, ``io[Q]`` and ``io[V]``, from the true state.
 
     Position: the rotor's on an elastic joint (unless encoders sit on the links), plus the encoder's
-    offset and ``noise`` (N, n) [rad] of this tick (none if it has no rows), rounded to counts. Velocity:
+    offset and ``noise`` (n,) [rad], rounded to counts. Velocity:
     exact, or the sensed positions' difference over the control period through a first-order filter.
     """
     half, filtered = 0.5 * machine[STEP, 0], machine[VELOCITY_FILTER, 0]
@@ -71,9 +71,7 @@ def sense(machine: Floats, io: Floats, noise: Floats, tick: int) -> None:
         q, v = io[Q_TRUE, i], io[V_TRUE, i]
         if machine[STIFFNESS, i] > 0.0 and machine[LINK_ENCODER, 0] == 0.0:
             q, v = io[Q_ROTOR, i] - half * io[V_ROTOR, i], io[V_ROTOR, i]
-        q += machine[ENCODER_OFFSET, i]
-        if noise.shape[0] > 0:
-            q += noise[tick, i]
+        q += machine[ENCODER_OFFSET, i] + noise[i]
         if machine[ENCODER_STEP, i] > 0.0:
             q = np.round(q / machine[ENCODER_STEP, i]) * machine[ENCODER_STEP, i]
         io[Q, i] = q

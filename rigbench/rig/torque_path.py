@@ -32,7 +32,7 @@ from rigbench.rig.rows import (
     V_TRUE,
 )
 
-__all__ = ["motor_torque"]
+__all__ = ["motor_torques"]
 
 SPEED_FOLDBACK = 0.02
 """Driving torque falls linearly to nothing over the last 2 % below the speed limit (our choice: a drive
@@ -40,21 +40,24 @@ must not push past its limit, and a sudden cut would chatter). Braking torque st
 
 
 @kernel
-def motor_torque(machine: Floats, io: Floats, i: int) -> None:
-    """Fill the motor torque of joint i [N m, at the joint], and whether it fell short of what was asked."""
-    asked = io[TAU, i]
-    if machine[TORQUE_STEP, i] > 0.0:
-        asked = np.round(asked / machine[TORQUE_STEP, i]) * machine[TORQUE_STEP, i]
-    if machine[DELAY, 0] > 0.0:
-        asked = _delayed(machine, io, i, asked)
-    asked = machine[TORQUE_GAIN, i] * asked + machine[TORQUE_BIAS, i]
-    if machine[RIPPLE, i] != 0.0:
-        asked += machine[RIPPLE, i] * np.sin(machine[RIPPLE_PERIODS, i] * io[Q_TRUE, i])
-    if machine[LAG, i] < 1.0:
-        asked = _lagged(machine, io, i, asked)
-    given = _limited(machine, io, i, asked)
-    io[MOTOR, i] = given
-    io[LIMITED, i] = 0.0 if given == asked else 1.0
+def motor_torques(machine: Floats, io: Floats) -> None:
+    """Fill each joint's motor torque [N m, at the joint], and whether it fell short of what was asked."""
+    for i in range(io.shape[1]):
+        asked = io[TAU, i]
+        if machine[TORQUE_STEP, i] > 0.0:
+            asked = np.round(asked / machine[TORQUE_STEP, i]) * machine[TORQUE_STEP, i]
+        if machine[DELAY, 0] > 0.0:
+            asked = _delayed(machine, io, i, asked)
+        asked = machine[TORQUE_GAIN, i] * asked + machine[TORQUE_BIAS, i]
+        if machine[RIPPLE, i] != 0.0:
+            asked += machine[RIPPLE, i] * np.sin(machine[RIPPLE_PERIODS, i] * io[Q_TRUE, i])
+        if machine[LAG, i] < 1.0:
+            asked = _lagged(machine, io, i, asked)
+        v, limit = io[V_TRUE, i], machine[TORQUE_LIMIT, i]
+        driving = min(limit, _on_line(machine[STALL_TORQUE, i], machine[NO_LOAD_SPEED, i], abs(v)))
+        given = _limited(asked, v, limit, driving, machine[SPEED_LIMIT, i])
+        io[MOTOR, i] = given
+        io[LIMITED, i] = 0.0 if given == asked else 1.0
 
 
 @kernel
@@ -88,12 +91,13 @@ def _lagged(machine: Floats, io: Floats, i: int, asked: float) -> float:
     return float(asked + (before - asked) * share / -np.log(1.0 - share))
 
 
+# What is called for every joint takes numbers, not arrays: handing an array to a kernel that the compiler
+# does not inline costs more than these compute.
+
+
 @kernel
-def _limited(machine: Floats, io: Floats, i: int, asked: float) -> float:
-    """Cut the torque to what limit, torque-speed line and speed limit leave; braking keeps the limit."""
-    v, limit = io[V_TRUE, i], machine[TORQUE_LIMIT, i]
-    driving = min(limit, _on_line(machine, i, abs(v)))
-    fastest = machine[SPEED_LIMIT, i]
+def _limited(asked: float, v: float, limit: float, driving: float, fastest: float) -> float:
+    """Cut a torque to what limits and ``fastest``, the speed limit, leave; braking keeps the limit."""
     if np.isfinite(fastest):
         share = (fastest - abs(v)) / (SPEED_FOLDBACK * fastest)
         if share < 1.0:
@@ -106,9 +110,8 @@ def _limited(machine: Floats, io: Floats, i: int, asked: float) -> float:
 
 
 @kernel
-def _on_line(machine: Floats, i: int, speed: float) -> float:
+def _on_line(stall: float, no_load: float, speed: float) -> float:
     """Return the torque that the motor's torque-speed line leaves at ``speed``; inf without one."""
-    left = float(machine[STALL_TORQUE, i])
-    if np.isfinite(machine[NO_LOAD_SPEED, i]):
-        left *= max(1.0 - speed / machine[NO_LOAD_SPEED, i], 0.0)
-    return left
+    if np.isfinite(no_load):
+        return float(stall * max(1.0 - speed / no_load, 0.0))
+    return stall

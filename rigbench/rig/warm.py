@@ -8,11 +8,12 @@ import numpy as np
 
 from rigbench.arm.arm import Arm, Drives
 from rigbench.arm.dynamics import tool_path
-from rigbench.laws.law import CLOCK, Setup
+from rigbench.laws.law import SEES, Setup
 from rigbench.laws.model import Model
 from rigbench.laws.registry import registered
+from rigbench.rig.fused import NOT_DUE, fused
 from rigbench.rig.rows import DELAYED, machine_array
-from rigbench.rig.tick import LOG_ROWS, begin_step, end_step
+from rigbench.rig.tick import RECORD_ROWS, begin_step, end_step
 
 __all__ = ["warm_up"]
 
@@ -26,8 +27,9 @@ def warm_up() -> None:
     arm = _one_joint()
     gravity = (0.0, 0.0, -9.81)
     model, io, machine = Model(arm, gravity), np.zeros((DELAYED, 1)), machine_array(arm, 1e-3)
-    begin_step(machine, io, np.zeros((1, 3, 1)), np.empty((0, 1)), 0)
-    end_step(model.chain, machine, io, np.zeros((1, LOG_ROWS, 1)), 0)
+    record = np.zeros((1, RECORD_ROWS, 1))
+    begin_step(machine, io, record, 0, 0.0)
+    end_step(model.chain, machine, io, record, 0)
     tool_path(model.chain, np.zeros((1, 1)))
     limits = arm.drives.torque_limit, arm.drives.speed_limit
     setup = Setup(arm.joints, model, 1000.0, np.zeros(1), *limits)
@@ -38,11 +40,15 @@ def warm_up() -> None:
             law.start(setup)
             compiled = law.compiled()
             if compiled is not None:
-                seen, held = io[: CLOCK + 1], np.zeros(compiled.held_size)
+                seen, held = io[:SEES], np.zeros(compiled.held_size)
                 own = np.ascontiguousarray(compiled.own)
                 if compiled.model_term is not None:
                     compiled.model_term(seen, held, model.chain, own)
                 compiled.torque(seen, held, model.chain, own)
+                step = fused(compiled)
+                if step is not None:
+                    chains, bench = np.stack([model.chain, model.chain]), np.vstack([machine, io])
+                    step(chains, bench, record, held, own, 0, 0.0, NOT_DUE, 0)
 
 
 def _one_joint() -> Arm:

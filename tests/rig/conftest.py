@@ -53,9 +53,9 @@ class Bench:
         self.io[Q_ENGINE], self.io[V_ENGINE] = [s[0] for s in states], [s[1] for s in states]
         return read_state(self.machine, self.io)
 
-    def sensed(self, noise=None, tick=0):
+    def sensed(self, noise=None):
         """What a law would see now: position and velocity."""
-        sense(self.machine, self.io, np.empty((0, self.arm.n)) if noise is None else noise, tick)
+        sense(self.machine, self.io, np.zeros(self.arm.n) if noise is None else noise)
         return self.io[Q].copy(), self.io[V].copy()
 
     def step(self, torque):
