@@ -7,7 +7,7 @@ changes no u that exists.
 from __future__ import annotations
 
 import hashlib
-from collections.abc import Iterable
+from collections.abc import Callable, Iterable, Mapping
 
 import numpy as np
 
@@ -15,7 +15,10 @@ from rigbench.arm.arm import Arm, Floats
 from rigbench.arm.sources import Mismatch
 from rigbench.arm.spread import Spread, carriers
 
-__all__ = ["draw_values", "exponents_of", "parameter_names", "uniform"]
+__all__ = ["Factors", "draw_values", "exponents_of", "factors_of", "parameter_names", "uniform"]
+
+Factors = Callable[[str], float]
+"""Gives the factor u of a parameter by its name."""
 
 AXES = ("x", "y", "z")
 
@@ -35,6 +38,24 @@ def uniform(seed: int, name: str, draw: int) -> float:
     """
     digest = hashlib.blake2b(f"{seed}|{name}|{draw}".encode(), digest_size=8).digest()
     return (int.from_bytes(digest, "big") >> 11) * 2.0**-52 - 1.0
+
+
+def factors_of(seed: int, draw: int | None, directions: Mapping[str, float] | None = None) -> Factors:
+    """Return what gives every parameter its u: the draw, or ``directions`` where they are given.
+
+    It raises ValueError for a parameter that ``directions`` lack, and without them if ``draw`` is None.
+    """
+
+    def factor(name: str) -> float:
+        if directions is None:
+            if draw is None:
+                raise ValueError("a plant of random sources needs the number of a draw")
+            return uniform(seed, name, draw)
+        if name not in directions:
+            raise ValueError(f"no direction is given for {name}")
+        return directions[name]
+
+    return factor
 
 
 def parameter_names(arm: Arm, source: str, shared: bool = False) -> tuple[str, ...]:
@@ -76,7 +97,7 @@ def _is_shared(mismatch: Mismatch, source: str) -> bool:
 
 
 def exponents_of(
-    arm: Arm, mismatch: Mismatch, level: float, active: Iterable[str], seed: int, draw: int
+    arm: Arm, mismatch: Mismatch, level: float, active: Iterable[str], factor: Factors
 ) -> dict[str, Floats]:
     """Return level times u of every parameter of the ``active`` sources, one for each link or joint.
 
@@ -86,6 +107,6 @@ def exponents_of(
     for source in active:
         shared = _is_shared(mismatch, source)
         names = parameter_names(arm, source, shared)
-        u = np.array([uniform(seed, name, draw) for name in names])
+        u = np.array([factor(name) for name in names])
         exponents[source] = level * (np.tile(u, len(carriers(arm, source))) if shared else u)
     return exponents

@@ -19,7 +19,7 @@ import numpy as np
 from rigbench.arm.arm import Arm, Floats
 from rigbench.arm.case import Case
 from rigbench.arm.departures import drives, links, loaded, with_payload
-from rigbench.arm.draws import draw_values, exponents_of, parameter_names, uniform
+from rigbench.arm.draws import draw_values, exponents_of, factors_of, parameter_names, uniform
 from rigbench.arm.physical import impossible, possible
 from rigbench.arm.sources import Mismatch, Payload
 from rigbench.arm.spread import Spread, carriers, unknown_names
@@ -68,19 +68,23 @@ def plant(
     seed: int,
     draw: int | None,
     case: Case | None = None,
+    directions: Mapping[str, float] | None = None,
 ) -> Arm:
     """Return the arm as the given draw has it when ``sources`` act at ``level``, and ``case`` on top.
+
+    ``directions`` give each parameter's u in [-1, 1] in place of the draw's.
 
     At level 0, and without sources, nothing is random: it is the model of :func:`believed`, bit for
     bit, or that with what the case states. InputFaults if the outcome could not exist, naming the
     source (``mismatch.<source>``) or else the case's key (``case.<key>``) that made it so; ValueError
     if the level is negative or not finite, if a source is not declared, if a spread names a link or
-    joint that the arm lacks, or if something is random and ``draw`` is None.
+    joint that the arm lacks, if something is random and ``draw`` is None, or if ``directions`` lack a
+    parameter that acts.
     """
     if not 0 <= level < math.inf:
         raise ValueError(f"a level is finite and not below 0, not {level}")
     active = mismatch.active(sources) if level > 0 else ()
-    exponents = exponents_of(arm, mismatch, level, active, seed, _number(draw)) if active else {}
+    exponents = exponents_of(arm, mismatch, level, active, factors_of(seed, draw, directions))
     case = NOTHING if case is None else case
     built = _built(arm, mismatch, exponents, case)
     if _flaw(built) is not None:
@@ -96,6 +100,7 @@ def delay_of(
     seed: int,
     draw: int | None,
     case: Case | None = None,
+    directions: Mapping[str, float] | None = None,
 ) -> float:
     """Return the plant's delay from tick to torque [ms]: declared + level u spread, but never below 0.
 
@@ -105,7 +110,7 @@ def delay_of(
         return case.delay_ms
     if mismatch.delay_ms is None or "delay_ms" not in mismatch.active(sources) or level == 0:
         return declared_ms
-    return max(declared_ms + level * mismatch.delay_ms * uniform(seed, "delay_ms", _number(draw)), 0.0)
+    return max(declared_ms + level * mismatch.delay_ms * factors_of(seed, draw, directions)("delay_ms"), 0.0)
 
 
 def tilt_of(
@@ -116,6 +121,7 @@ def tilt_of(
     seed: int,
     draw: int | None,
     case: Case | None = None,
+    directions: Mapping[str, float] | None = None,
 ) -> tuple[float, float]:
     """Return the tilt of the plant's base [rad] about its x and y axes: declared + level u spread of each.
 
@@ -127,15 +133,8 @@ def tilt_of(
     if mismatch.base_tilt_deg is None or "base_tilt_deg" not in mismatch.active(sources) or level == 0:
         return declared
     reach = level * math.radians(mismatch.base_tilt_deg)
-    u, w = (uniform(seed, f"base_tilt_deg.{axis}", _number(draw)) for axis in "xy")
+    u, w = (factors_of(seed, draw, directions)(f"base_tilt_deg.{axis}") for axis in "xy")
     return declared[0] + reach * u, declared[1] + reach * w
-
-
-def _number(draw: int | None) -> int:
-    """Return the number of a draw that is needed."""
-    if draw is None:
-        raise ValueError("a plant of random sources needs the number of a draw")
-    return draw
 
 
 def _built(arm: Arm, mismatch: Mismatch, exponents: Mapping[str, Floats], case: Case) -> Arm:

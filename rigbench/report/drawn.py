@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from rigbench.arm.arm import PRISMATIC, Arm
-from rigbench.arm.mismatch import Mismatch, Payload, Spread, carriers, draw_values, plant
+from rigbench.arm.mismatch import Mismatch, Payload, Spread, carriers
 from rigbench.arm.spread import WHOLE_SOURCES
 from rigbench.rig.run import Run
 
@@ -47,13 +47,10 @@ def drawn_of(run: Run) -> tuple[Drawn, ...]:
 
     Without those whose spread is 0 and those in whose place the run's case states a value.
     """
-    if run.draw is None or run.level == 0 or not run.sources:
-        return ()
     arm = run.arm.arm()
-    values = draw_values(arm, run.mismatch, run.sources, run.seed, run.draw)
     found = [
         Drawn(name, _words(name), u, amount)
-        for name, u in values.items()
+        for name, u in run.factors().items()
         if not _is_replaced(run, name) and (amount := _amount(run, arm, name, u)) is not None
     ]
     return tuple(sorted(found, key=lambda one: -abs(one.u)))
@@ -128,5 +125,5 @@ def _payload(run: Run, arm: Arm, payload: Payload, rest: str, u: float) -> str |
         return None if payload.cog_mm == 0 else f"{run.level * u * payload.cog_mm:+.2g} mm"
     if payload.least_kg == payload.most_kg:
         return None
-    alone = plant(arm, Mismatch(payload=payload), run.level, ("payload",), run.seed, run.draw)
+    alone = replace(run, mismatch=Mismatch(payload=payload), sources=("payload",), case=None).plant()
     return f"{np.sum(alone.parameters[:, 0] - arm.parameters[:, 0]):.3g} kg"

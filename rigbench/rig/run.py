@@ -9,9 +9,10 @@ from typing import Any
 
 import numpy as np
 
+from rigbench.arm.arm import Arm
 from rigbench.arm.collision import collision
 from rigbench.arm.files import ArmFiles
-from rigbench.arm.mismatch import Case, Mismatch, delay_of, tilt_of
+from rigbench.arm.mismatch import Case, Mismatch, delay_of, draw_values, plant, tilt_of
 from rigbench.laws.registry import LawChoice
 from rigbench.motion.motion import Motion
 from rigbench.rig.sampled import Sensing, Timing, inputs_of
@@ -38,7 +39,8 @@ class Run:
 
     It carries the texts of arm and law files, so it can be done on a machine that has none of them.
     ``sources`` are the mismatch sources that act, at ``level``, in the direction of draw number
-    ``draw`` (None where nothing is random); ``case`` is what is stated of the plant on top of that.
+    ``draw`` (None where nothing is random), or in ``directions``, the u in [-1, 1] of every parameter that
+    acts, by name; ``case`` is what is stated of the plant on top of that.
     Angles in rad, lengths in m unless the name says otherwise.
     """
 
@@ -60,6 +62,7 @@ class Run:
     sensing: Sensing = field(default_factory=Sensing)
     timing: Timing = field(default_factory=Timing)
     base_tilt: tuple[float, float] = (0.0, 0.0)  # of the plant alone, about the base's x and y axes
+    directions: tuple[tuple[str, float], ...] | None = None
     scene: SceneChoice | None = None  # what else is in the world; contacts are then on
 
     @property
@@ -78,8 +81,21 @@ class Run:
         return tilted(self.gravity, tilt_of(self.base_tilt, *self._departure))
 
     @property
-    def _departure(self) -> tuple[Mismatch, float, tuple[str, ...], int, int, Case | None]:
-        return self.mismatch, self.level, self.sources, self.seed, self.draw or 0, self.case
+    def _departure(self) -> tuple[Any, ...]:
+        """The arguments, from the mismatch on, of :func:`rigbench.arm.mismatch.plant` and its like."""
+        directions = None if self.directions is None else dict(self.directions)
+        return self.mismatch, self.level, self.sources, self.seed, self.draw or 0, self.case, directions
+
+    def factors(self) -> dict[str, float]:
+        """Return the u in [-1, 1] of every parameter that acts, by name; nothing where none does."""
+        if self.level == 0 or (self.draw is None and self.directions is None):
+            return {}
+        values = draw_values(self.arm.arm(), self.mismatch, self.sources, self.seed, self.draw or 0)
+        return values if self.directions is None else {name: dict(self.directions)[name] for name in values}
+
+    def plant(self) -> Arm:
+        """Return the arm that the engine plays."""
+        return plant(self.arm.arm(), *self._departure)
 
     def inputs(self) -> dict[str, Any]:
         """Return the canonical inputs, defaults included, of which the key is the digest.
@@ -102,12 +118,13 @@ class Run:
             "gravity": list(self.gravity),
             "mismatch": self.mismatch.inputs(self.sources if acts else ()),
             "level": self.level if acts else 0.0,
-            "draw": [self.seed, self.draw] if acts or self.noisy else None,
+            "draw": [self.seed, self.draw] if (acts and self.directions is None) or self.noisy else None,
         }
         others = {
             "case": None if self.case is None else self.case.inputs(),
             "sensing": inputs_of(self.sensing),
             "timing": inputs_of(self.timing),
+            "directions": sorted(self.directions) if acts and self.directions is not None else None,
             "base_tilt": list(self.base_tilt) if any(self.base_tilt) else None,
             "scene": None if self.scene is None else self._scene_inputs(self.scene),
         }

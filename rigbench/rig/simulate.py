@@ -9,7 +9,7 @@ import numpy as np
 
 from rigbench.arm.arm import Arm
 from rigbench.arm.collision import collision
-from rigbench.arm.mismatch import believed, plant
+from rigbench.arm.mismatch import believed
 from rigbench.errors import EngineError
 from rigbench.laws.law import Setup
 from rigbench.laws.model import Model
@@ -49,7 +49,7 @@ def simulate(run: Run, engine: Engine | None = None) -> Log:
             return simulate(run, worker_engine())
     arm = run.arm.arm()
     setting = Setting(
-        plant=plant(arm, run.mismatch, run.level, run.sources, run.seed, run.draw or 0, run.case),
+        plant=run.plant(),
         gravity=run.plant_gravity,
         rates=run.rates,
         sensing=run.sensing,

@@ -52,6 +52,7 @@ CHANGES = {
     "sensing": Sensing(noise_deg=0.1),
     "timing": Timing(delay_ms=1.0),
     "base_tilt": (0.01, 0.0),
+    "directions": (("link_mass_percent.link1", 0.5), ("link_mass_percent.link2", -0.5)),
     "scene": SceneChoice("scene.py:build", (("scene.py", "def build(client, body, arm): pass"),)),
 }
 
