@@ -9,6 +9,7 @@
     │   └── SceneError            a scene did, or did what a scene must not
     ├── EngineError               the physics engine refused or died; ends as a row
     ├── Stopped                3  a campaign stopped before its end and can be resumed
+    ├── ClusterLost            3  the machines that did its runs went away, and it can be resumed
     └── StoreError             5  the store or the disk
         ├── StoreBusy             another process writes to it
         └── StoreForeign          it belongs to another experiment, or isn't a store at all
@@ -25,6 +26,7 @@ from difflib import get_close_matches
 from pathlib import Path
 
 __all__ = [
+    "ClusterLost",
     "EngineError",
     "Fault",
     "InputFaults",
@@ -138,19 +140,32 @@ class EngineError(RigbenchError):
 
 
 class Stopped(RigbenchError):
-    """A campaign stopped before its end; what is done is stored."""
+    """A campaign stopped before its end, and ``why``; what is done is stored."""
 
     exit_code = 3
 
-    def __init__(self, done: int, planned: int, resume: str) -> None:
-        self.done, self.planned, self.resume = done, planned, resume
-        super().__init__(done, planned, resume)
+    def __init__(self, done: int, planned: int, resume: str, why: str = "as asked") -> None:
+        self.done, self.planned, self.resume, self.why = done, planned, resume, why
+        super().__init__(done, planned, resume, why)
 
     def __str__(self) -> str:
         return (
-            f"stopped with {self.done} of {self.planned} runs stored; "
+            f"stopped {self.why}, with {self.done} of {self.planned} runs stored; "
             f"nothing is lost: '{self.resume}' goes on from here"
         )
+
+
+class ClusterLost(RigbenchError):
+    """The cluster at ``address`` can do no more runs, and ``why``; what came back is stored."""
+
+    exit_code = 3
+
+    def __init__(self, address: str, why: str) -> None:
+        self.address, self.why = address, why
+        super().__init__(address, why)
+
+    def __str__(self) -> str:
+        return f"the cluster at {self.address} can do no more: {self.why}"
 
 
 class StoreError(RigbenchError):

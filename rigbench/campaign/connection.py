@@ -17,6 +17,9 @@ __all__ = ["connect", "owner", "speaking_plainly"]
 PATIENCE_S = 10.0
 """How long to wait while another process holds the file for a moment."""
 
+CHECKED_BYTES = 2**28
+"""Up to this size every page of a store is checked before it is written to: a fraction of a second."""
+
 SQLITE_HEADER = b"SQLite format 3\0"
 
 
@@ -36,6 +39,7 @@ def _advice(error: sqlite3.Error) -> str:
     said = str(error)
     for sign, advice in (
         ("full", "the disk is full; what was stored before is safe. Make room and run again"),
+        ("disk I/O", "the disk refuses; what was stored before is safe. Make room and run again"),
         ("readonly", "may not be written to; check its permissions and those of its folder"),
         ("unable to open", "can't be opened; check its permissions and those of its folder"),
         ("malformed", "is damaged; move it away and run again, or restore a copy"),
@@ -50,8 +54,9 @@ def _advice(error: sqlite3.Error) -> str:
 def connect(path: Path, writing: bool) -> sqlite3.Connection:
     """Open the file in autocommit mode and check that it is a store, or (when writing) new.
 
-    A writer checks its soundness too. The file is not changed. StoreForeign if it is something else,
-    StoreError if it is missing (when reading), damaged, or of another schema than this program reads.
+    A writer checks its soundness too, as :func:`_check_sound` says. The file is not changed. StoreForeign if
+    it is something else, StoreError if it is missing (when reading), damaged, or of another schema than
+    this program reads.
     """
     _check_header(path, writing)
     connection = _opened(path, writing)
@@ -119,6 +124,16 @@ def _check_ours(path: Path, connection: sqlite3.Connection, writing: bool) -> No
 
 
 def _check_sound(path: Path, connection: sqlite3.Connection) -> None:
+    """Check every page of a store that was not closed in order, is to be migrated, or is small enough.
+
+    A large one that was closed in order is opened at once: SQLite has told by then whether the file was cut
+    short, and checks each page as it is read.
+    """
+    with path.open("rb") as file:
+        header = file.read(100)  # https://sqlite.org/fileformat2.html, 1.3
+    in_order = header[18:19] == b"\1"  # else it is in log mode still
+    if in_order and path.stat().st_size > CHECKED_BYTES and schema_of(connection) == len(MIGRATIONS):
+        return
     said = connection.execute("PRAGMA quick_check(1)").fetchone()[0]
     if said != "ok":
         raise StoreError(str(path), f"is damaged ({said}); move it away and run again, or restore a copy")

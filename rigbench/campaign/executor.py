@@ -8,48 +8,47 @@ the draw's plant can't exist           'no-plant', with what of it can't
 engine and drive disagree              'disagrees', with by how much
 anything else raises                   'crashed', with the traceback
 the result can't be pickled            'crashed', with the reason
-the worker dies (signal, memory)       done once more; the second time 'crashed', with the signal
-the run does not end                   'timed-out' after its limit; the worker is replaced
-the crew of workers breaks down        done again by a new crew
+the worker dies (signal, exit)         done once more; the second time 'crashed', with the signal
+the worker has no memory left          done once more; the second time 'crashed', with the limit
+the run does not end                   'timed-out' after its limit, with the traceback of where it was
 the campaign's process is killed       nothing is left of it: its workers die with it (Linux)
 =====================================  =====================================================
+
+A worker that died or was given up is replaced, and the processes that a law started in it end with it.
+``tests/campaign/test_failures.py`` holds the same table for the whole command.
 """
 
 from __future__ import annotations
 
 import pickle
 import signal
-import time
+import traceback
 from collections import deque
 from collections.abc import Callable, Generator, Iterable, Iterator
 from concurrent.futures import FIRST_COMPLETED, Future, wait
-from concurrent.futures.process import BrokenProcessPool
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Protocol
 
-from pebble import ProcessExpired
-
+from rigbench.campaign.outcomes import checked, unpacked
 from rigbench.campaign.plan import Entry
 from rigbench.campaign.work import Outcome, do, failed, summary
-from rigbench.campaign.worker import Trouble
-from rigbench.campaign.workers import BrokenCrew, Crew, usable_cores
+from rigbench.campaign.worker import OUT_OF_MEMORY
+from rigbench.campaign.workers import BrokenCrew, Crew, Overdue, WorkerDied, usable_cores
 from rigbench.errors import RigbenchError
 
 if TYPE_CHECKING:
     from rigbench.rig.run import Run  # not at run time: it brings the engine and the compiler
 
-__all__ = ["Executor", "InProcess", "Processes", "executor_for", "time_limit_s"]
+__all__ = ["Executor", "InProcess", "Processes", "Work", "cause_of_death", "executor_for", "time_limit_s"]
 
 Work = Callable[["Run"], Outcome]
 
 IN_HAND = 2
 """Runs given out for each worker: one that it does and one that waits, so that it never idles."""
 
-PATIENCE_S = 60.0
-"""How long past its limit a run may stay silent before the whole crew is taken for broken."""
-
-CREWS = 3
-"""Crews to try in a row without a single outcome before giving up."""
+LEAST_LIMIT_S = 60.0
+TICK_LIMIT_S = 0.05
+"""A run's limit: so long, and so much for each control tick."""
 
 
 class Executor(Protocol):
@@ -80,12 +79,12 @@ def time_limit_s(run: Run) -> float:
     That is a thousand times what a built-in law takes, and fifty times slower than the clock at 1 kHz:
     a law that solves an optimisation at each tick has its time, a law that hangs costs minutes.
     """
-    return 60 + 0.05 * run.motion.duration_s * run.rates.control_hz
+    return LEAST_LIMIT_S + TICK_LIMIT_S * run.motion.duration_s * run.rates.control_hz
 
 
 @dataclass(frozen=True)
 class InProcess:
-    """Does the runs here, one after the other, without a time limit; if the engine dies, so does all else."""
+    """Does the runs here, one by one, without limits of time or memory; if the engine dies, so does all."""
 
     work: Work = do
 
@@ -95,8 +94,8 @@ class InProcess:
             try:
                 outcome = self.work(entry.run)
             except Exception as error:
-                outcome = failed(entry.key, "crashed", summary(error))
-            yield _checked(entry, outcome)
+                outcome = failed(entry.key, "crashed", summary(error), traceback.format_exc())
+            yield checked(entry, outcome)
 
 
 @dataclass(eq=False)
@@ -118,49 +117,34 @@ class Processes:
     limit_s: Callable[[Run], float] = field(default=time_limit_s)
 
     def run_all(self, entries: Iterable[Entry]) -> Generator[Outcome]:
-        """See :class:`Executor`. RigbenchError if worker processes can't be had at all."""
-        source, again = iter(entries), deque[_Task]()
-        idle_crews, reason = 0, ""
-        while idle_crews < CREWS:
-            idle_crews += 1
-            try:
-                with Crew(self.jobs) as crew:
-                    for outcome in _Shift(self, crew, source, again).outcomes():
-                        idle_crews = 0
-                        yield outcome
-                return
-            except (BrokenCrew, BrokenProcessPool) as error:
-                reason = str(error)
-        raise RigbenchError(
-            f"worker processes can't be started or don't stay alive ({reason}); '--jobs 0' does without them"
-        )
+        """See :class:`Executor`. RigbenchError if worker processes can't be had."""
+        try:
+            with Crew(self.jobs) as crew:
+                yield from _Shift(self, crew, iter(entries)).outcomes()
+        except BrokenCrew as error:
+            raise RigbenchError(
+                f"worker processes can't be started or don't stay alive ({error}); "
+                "'--jobs 0' does without them"
+            ) from error
 
 
 class _Shift:
-    """What one crew does, until all is done or the crew breaks down."""
+    """What a crew does, until all is done."""
 
-    def __init__(self, how: Processes, crew: Crew, source: Iterator[Entry], again: deque[_Task]) -> None:
-        self._how, self._crew, self._source, self._again = how, crew, source, again
+    def __init__(self, how: Processes, crew: Crew, source: Iterator[Entry]) -> None:
+        self._how, self._crew, self._source = how, crew, source
+        self._again: deque[_Task] = deque()
         self._in_hand: dict[Future[bytes], _Task] = {}
-        self._last_sign = time.monotonic()
 
     def outcomes(self) -> Iterator[Outcome]:
-        """Yield outcomes until nothing is left to do.
-
-        BrokenCrew or BrokenProcessPool if the crew breaks down, with what it had in hand put into ``again``.
-        """
-        try:
-            while True:
-                yield from self._give()
-                if not self._in_hand:
-                    return
-                done, _ = wait(self._in_hand, timeout=1.0, return_when=FIRST_COMPLETED)
-                for future in done:
-                    yield from self._taken(future)
-                self._check(bool(done))
-        except (BrokenCrew, BrokenProcessPool):
-            self._again.extend(self._in_hand.values())
-            raise
+        """Yield outcomes until nothing is left to do; BrokenCrew if there is nobody to do it."""
+        while True:
+            yield from self._give()
+            if not self._in_hand:
+                return
+            done, _ = wait(self._in_hand, return_when=FIRST_COMPLETED)
+            for future in done:
+                yield from self._taken(future, self._in_hand.pop(future))
 
     def _give(self) -> Iterator[Outcome]:
         while len(self._in_hand) < IN_HAND * self._how.jobs:
@@ -174,59 +158,36 @@ class _Shift:
                     yield failed(entry.key, "crashed", f"the run can't be sent to a worker: {summary(error)}")
                     continue
                 self._again.append(_Task(entry, payload, self._how.limit_s(entry.run)))
-            future = self._crew.give(self._again[0].payload, self._again[0].limit_s)
-            self._in_hand[future] = self._again.popleft()
+            task = self._again.popleft()
+            self._in_hand[self._crew.give(task.payload, task.limit_s)] = task
 
-    def _taken(self, future: Future[bytes]) -> Iterator[Outcome]:
+    def _taken(self, future: Future[bytes], task: _Task) -> Iterator[Outcome]:
         """Yield the outcome of a task that has ended, unless it is to be done once more."""
-        task, key = self._in_hand[future], self._in_hand[future].entry.key
+        key = task.entry.key
         try:
-            yield _unpacked(task.entry, future.result())
-        except BrokenProcessPool:
-            raise
-        except TimeoutError:
-            yield failed(key, "timed-out", f"took longer than its limit of {task.limit_s:.0f} s")
-        except ProcessExpired as error:
+            yield unpacked(task.entry, future.result())
+        except Overdue as error:
+            reason = f"took longer than its limit of {task.limit_s:.0f} s"
+            yield failed(key, "timed-out", reason, error.words)
+        except WorkerDied as error:
             task.deaths += 1
             if task.deaths == 1:
                 self._again.append(task)
             else:
-                reason = f"its worker process died twice on it: {_cause(error.exitcode)}"
-                yield failed(key, "crashed", reason, self._crew.last_words(error.pid))
-        except Exception as error:
-            yield failed(key, "crashed", f"its result was lost: {summary(error)}")
-        del self._in_hand[future]
-
-    def _check(self, sign: bool) -> None:
-        """Raise BrokenCrew if the pool is broken or no task has ended that should have long ago."""
-        now = time.monotonic()
-        if sign:
-            self._last_sign = now
-        longest = max((task.limit_s for task in self._in_hand.values()), default=0.0)
-        if now - self._last_sign > longest + PATIENCE_S or not self._crew.whole:
-            raise BrokenCrew("the crew fell silent")
+                yield failed(key, "crashed", cause_of_death(error.exitcode, self._crew.share), error.words)
 
 
-def _unpacked(entry: Entry, result: bytes) -> Outcome:
-    try:
-        outcome = pickle.loads(result)
-    except Exception as error:
-        return failed(entry.key, "crashed", f"its result can't be read: {summary(error)}")
-    if isinstance(outcome, Trouble):
-        return failed(entry.key, "crashed", outcome.summary, outcome.trace)
-    return _checked(entry, outcome)
+def cause_of_death(exitcode: int, share: int | None) -> str:
+    """Say how a run's process has died twice; ``share`` is the memory [bytes] that it might take."""
+    if exitcode == OUT_OF_MEMORY and share is not None:
+        return (
+            f"ran out of memory twice: a worker may take {share / 2**20:,.0f} MiB here; "
+            "fewer --jobs leave more for each"
+        )
+    return f"its worker process died twice on it: {_name(exitcode)}"
 
 
-def _checked(entry: Entry, outcome: object) -> Outcome:
-    """Refuse what is no outcome, or one of other inputs than planned: somebody edits a law meanwhile."""
-    if not isinstance(outcome, Outcome):
-        return failed(entry.key, "crashed", f"the work yielded no outcome but {outcome!r:.60}")
-    if outcome.key != entry.key:
-        return failed(entry.key, "crashed", "the law's source files have changed since the campaign began")
-    return outcome
-
-
-def _cause(exitcode: int) -> str:
+def _name(exitcode: int) -> str:
     if exitcode >= 0:
         return f"exit code {exitcode}"
     number = -exitcode

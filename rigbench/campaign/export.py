@@ -1,57 +1,104 @@
-"""The store as CSV: one row a run."""
+"""The stored runs as a table for other programs, one row a run: as CSV, or as Parquet."""
 
 from __future__ import annotations
 
 import csv
-import math
 from collections.abc import Sequence
-from typing import TextIO
+from typing import TYPE_CHECKING, Any, BinaryIO, TextIO
 
-from rigbench.campaign.reading import Reader, Record
-from rigbench.scores.names import in_display_order
+import numpy as np
 
-__all__ = ["export_csv"]
+from rigbench.campaign.blocks import SIZE
+from rigbench.campaign.columns import NUMBER, WHOLE, Columns, TableColumn, Values
+from rigbench.campaign.reading import Reader
+from rigbench.errors import InputFaults
+from rigbench.scores.run_table import NO_DRAW
 
-NAMES = ("sheet", "law", "motion", "condition", "level", "draw", "outcome", "reason", "key")
+if TYPE_CHECKING:
+    from types import ModuleType
+
+__all__ = ["check_parquet", "export_columns", "export_csv", "export_parquet"]
+
+GROUP = 2**15
+"""Rows of a row group of Parquet: what is in memory at once."""
 
 
 def export_csv(store: Reader, stream: TextIO) -> int:
-    """Write the stored runs in the order of the plan, and return how many there are.
+    """Write the stored runs as CSV in the order of the plan, and return how many there are.
 
-    Columns: sheet, law, motion, condition, level, draw, outcome, reason, key; every score (the unit is
-    in its name); residual_rad_s, how far engine and drive disagree; draw.<parameter>, the factor u in
-    [-1, 1) of each parameter that was random in the run; wall_s, how long the run took here.
-    Infinite is 'inf', what there is not is empty, and numbers read back as exactly what they were.
+    The columns are those of :class:`Columns`. Infinite is 'inf', what there is not is empty, and numbers read
+    back as exactly what they were.
     """
     out = csv.writer(stream, lineterminator="\n")
     written = 0
     with store.one_moment():
-        draws = store.draw_values()
-        scores = in_display_order(name for record in store.records() for name in record.row.scores)
-        parameters = sorted({name for values in draws.values() for name in values})
-        out.writerow([*NAMES, *scores, "residual_rad_s", *(f"draw.{name}" for name in parameters), "wall_s"])
-        for record in store.records():
-            out.writerow(_line(record, scores, parameters, draws))
-            written += 1
+        columns = Columns(store)
+        out.writerow([column.name for column in columns.all])
+        for block in columns.blocks(size=SIZE):
+            lists = [_plain(column, block[column.name]) for column in columns.all]
+            out.writerows(zip(*lists, strict=True))
+            written += len(lists[0])
     return written
 
 
-def _line(
-    record: Record, scores: Sequence[str], parameters: Sequence[str], draws: dict[int, dict[str, float]]
-) -> list[object]:
-    row = record.row
-    acting = {} if row.draw is None else draws.get(row.draw, {})
-    return [
-        row.sheet, row.law, row.motion, row.condition, _number(row.level), row.draw,
-        row.outcome, row.reason, record.key,
-        *(_number(row.scores.get(name)) for name in scores),
-        _number(record.residual),
-        *(_number(acting.get(name)) if name.split(".")[0] in record.sources else None for name in parameters),
-        _number(record.wall_s),
-    ]  # fmt: skip
+def export_columns(store: Reader, stream: TextIO) -> None:
+    """Write the name, unit and meaning of each column of the table as CSV."""
+    out = csv.writer(stream, lineterminator="\n")
+    out.writerow(["name", "unit", "meaning"])
+    with store.one_moment():
+        out.writerows([column.name, column.unit, column.meaning] for column in Columns(store).all)
 
 
-def _number(value: float | None) -> str | None:
-    if value is None:
-        return None
-    return "inf" if value == math.inf else repr(float(value))
+def check_parquet(file: str) -> None:
+    """Raise InputFaults if the package that writes Parquet is not installed."""
+    try:
+        import pyarrow.parquet  # noqa: F401
+    except ImportError:
+        problem = "Parquet needs the package pyarrow, which is not installed"
+        raise InputFaults.one(
+            file, "-o", problem, "pip install 'rigbench[parquet]', or a .csv file"
+        ) from None
+
+
+def export_parquet(store: Reader, stream: BinaryIO) -> int:
+    """Write the stored runs as Parquet in the order of the plan, and return how many there are.
+
+    As :func:`export_csv`, but what there is not is null. The metadata of a field have its unit and meaning.
+    There are never more rows in memory than a row group has.
+    """
+    import pyarrow
+    from pyarrow.parquet import ParquetWriter
+
+    written = 0
+    with store.one_moment():
+        columns = Columns(store)
+        schema = pyarrow.schema([_field(pyarrow, column) for column in columns.all])
+        with ParquetWriter(stream, schema) as out:
+            for block in columns.blocks(size=GROUP):
+                arrays = [_array(pyarrow, column, block[column.name]) for column in columns.all]
+                out.write_batch(pyarrow.record_batch(arrays, schema=schema))
+                written += len(arrays[0])
+    return written
+
+
+def _plain(column: TableColumn, values: Values) -> Sequence[object]:
+    """Return a column as a list, None where there is nothing."""
+    plain: list[object] = values.tolist()
+    if column.kind == NUMBER:
+        return [
+            None if absent else value for value, absent in zip(plain, np.isnan(values).tolist(), strict=True)
+        ]
+    return [None if value == NO_DRAW else value for value in plain] if column.kind == WHOLE else plain
+
+
+def _field(pyarrow: ModuleType, column: TableColumn) -> Any:
+    kind = {NUMBER: pyarrow.float64(), WHOLE: pyarrow.int64()}.get(column.kind, pyarrow.string())
+    return pyarrow.field(column.name, kind, metadata={"unit": column.unit, "meaning": column.meaning})
+
+
+def _array(pyarrow: ModuleType, column: TableColumn, values: Values) -> Any:
+    if column.kind == NUMBER:
+        return pyarrow.array(values, mask=np.isnan(values))
+    if column.kind == WHOLE:
+        return pyarrow.array(values, mask=values == NO_DRAW)
+    return pyarrow.array(values, type=pyarrow.string())

@@ -3,7 +3,9 @@
 from __future__ import annotations
 
 import sqlite3
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
+
+from rigbench.campaign.migration_packing import PACKED
 
 __all__ = ["APPLICATION_ID", "MIGRATIONS", "migrate", "schema_of"]
 
@@ -87,7 +89,10 @@ _OWNER_AND_ANEW = (
     "ALTER TABLE runs ADD COLUMN anew INTEGER NOT NULL DEFAULT 0",
 )
 
-MIGRATIONS: tuple[Sequence[str], ...] = (_FIRST, _KEPT_RUNS, _OWNER_AND_ANEW)
+Step = Sequence[str | Callable[[sqlite3.Connection], None]]
+"""Statements, and what prepares the connection for them."""
+
+MIGRATIONS: tuple[Step, ...] = (_FIRST, _KEPT_RUNS, _OWNER_AND_ANEW, PACKED)
 """Step i leads from schema i to schema i + 1. A step that has been released is never edited."""
 
 
@@ -97,7 +102,7 @@ def schema_of(connection: sqlite3.Connection) -> int:
     return number
 
 
-def migrate(connection: sqlite3.Connection, steps: Sequence[Sequence[str]] = MIGRATIONS) -> None:
+def migrate(connection: sqlite3.Connection, steps: Sequence[Step] = MIGRATIONS) -> None:
     """Bring the file to the newest schema, each step and its record in one transaction.
 
     ``connection`` is in autocommit mode. If a step fails, the file stays at the schema before it.
@@ -106,7 +111,10 @@ def migrate(connection: sqlite3.Connection, steps: Sequence[Sequence[str]] = MIG
         connection.execute("BEGIN IMMEDIATE")
         try:
             for statement in steps[number]:
-                connection.execute(statement)
+                if callable(statement):
+                    statement(connection)
+                else:
+                    connection.execute(statement)
             connection.execute(f"PRAGMA user_version = {number + 1}")
             connection.execute("COMMIT")
         except BaseException:

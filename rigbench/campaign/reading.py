@@ -4,24 +4,31 @@ from __future__ import annotations
 
 import contextlib
 import json
-import math
 import sqlite3
-import sys
-from collections.abc import Iterator
+from collections import Counter
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
+from itertools import compress
+from operator import not_
 from pathlib import Path
 from types import TracebackType
 from typing import Self
 
+import numpy as np
+
+from rigbench.campaign.blocks import SIZE, Block, blocks, layouts, stored_scores
 from rigbench.campaign.connection import connect, owner, speaking_plainly
 from rigbench.campaign.kept import Kept, NotKept, restored
 from rigbench.campaign.labels import Labels
 from rigbench.campaign.owner import Owner
+from rigbench.campaign.places import Place, places_of
 from rigbench.campaign.plan import Entry, Plan
 from rigbench.campaign.work import Host
 from rigbench.errors import StoreError
+from rigbench.scores.names import main_score
 from rigbench.scores.results import Results
 from rigbench.scores.row import HOST_OUTCOMES, MACHINE_OUTCOMES, SETTLED_TROUBLES, Row
+from rigbench.scores.run_table import FINISHED, STATES, RunTable
 
 __all__ = ["Counts", "Reader", "Record"]
 
@@ -88,15 +95,26 @@ class Reader:
 
     @contextlib.contextmanager
     def one_moment(self) -> Iterator[None]:
-        """Read all that is read within as it was at one moment, however a writer goes on meanwhile."""
-        with self._transaction("DEFERRED"):
+        """Read all that is read within as it was at one moment, however a writer goes on meanwhile.
+
+        Within another such moment it is that one.
+        """
+        if self._connection.in_transaction:
             yield
+            return
+        with speaking_plainly(self.path):
+            self._connection.execute("BEGIN DEFERRED")
+        try:
+            yield  # an error of the disk in here need not be this file's
+        finally:
+            with contextlib.suppress(sqlite3.Error):
+                self._connection.execute("ROLLBACK")
 
     @contextlib.contextmanager
-    def _transaction(self, how: str = "IMMEDIATE") -> Iterator[sqlite3.Connection]:
+    def _transaction(self) -> Iterator[sqlite3.Connection]:
         """Do all that is done within, or nothing."""
         with speaking_plainly(self.path):
-            self._connection.execute(f"BEGIN {how}")
+            self._connection.execute("BEGIN IMMEDIATE")
             try:
                 yield self._connection
                 self._connection.execute("COMMIT")
@@ -115,7 +133,7 @@ class Reader:
         marks = ", ".join("?" * len(SETTLED))
         with speaking_plainly(self.path):
             query = self._connection.execute(
-                f"SELECT key FROM runs WHERE NOT anew AND outcome IN ({marks})", SETTLED
+                f"SELECT key FROM runs JOIN keys USING (id) WHERE NOT anew AND outcome IN ({marks})", SETTLED
             )
             seen = {key for (key,) in query}
         missing = []
@@ -146,6 +164,14 @@ class Reader:
         return path, text
 
     @property
+    def history(self) -> tuple[int | None, str, str]:
+        """Seed of the draws (None: nothing is random), and when the plan was first and last recorded (UTC)."""
+        with speaking_plainly(self.path):
+            query = self._connection.execute("SELECT seed, created, updated FROM campaign")
+            seed, created, updated = query.fetchone()
+        return None if seed is None else int(seed), created, updated
+
+    @property
     def files(self) -> list[tuple[str, str]]:
         """Paths and texts of the arm, URDF and law files that the present plan is made of."""
         with speaking_plainly(self.path):
@@ -154,12 +180,7 @@ class Reader:
 
     def counts(self) -> Counts:
         """Count the planned runs, and of those the ones that are done and those that failed."""
-        found = self.outcomes()
-        return Counts(
-            sum(found.values()),
-            sum(found.get(outcome, 0) for outcome in MACHINE_OUTCOMES),
-            sum(found.get(outcome, 0) for outcome in HOST_OUTCOMES),
-        )
+        return _counts(self.outcomes())
 
     def outcomes(self) -> dict[str, int]:
         """Count the planned runs by their outcome, '' for those without one or put down to be run anew."""
@@ -167,7 +188,7 @@ class Reader:
             return dict(
                 self._connection.execute(
                     "SELECT CASE WHEN anew THEN '' ELSE coalesce(outcome, '') END, count(*)"
-                    " FROM plan LEFT JOIN runs USING (key) GROUP BY 1"
+                    " FROM plan LEFT JOIN runs USING (id) GROUP BY 1"
                 )
             )
 
@@ -177,22 +198,32 @@ class Reader:
 
     def records_of(self, law: str, condition: str) -> Iterator[Record]:
         """Yield those of one law under one condition, in every sheet and motion."""
-        return self._records("WHERE law = ? AND condition = ?", law, condition)
+        within = "WHERE place IN (SELECT id FROM places WHERE law = ? AND condition = ?)"
+        return self._records(within, law, condition)
+
+    def records_with(self, outcomes: Sequence[str]) -> Iterator[Record]:
+        """Yield those that came to one of these outcomes."""
+        return self._records(f"WHERE outcome IN ({', '.join('?' * len(outcomes))})", *outcomes)
 
     def record(self, key: str) -> Record | None:
         """Return what is stored of a planned run, as the first of the entries that it stands for."""
-        return next(self._records("WHERE key = ?", key), None)
+        return next(self._records("WHERE plan.id = (SELECT id FROM keys WHERE key = ?)", key), None)
 
     def _records(self, where: str = "", *values: str) -> Iterator[Record]:
         with speaking_plainly(self.path):
+            known = layouts(self._connection)
             query = self._connection.execute(
-                "SELECT sheet, law, motion, condition, level, draw, outcome, scores, host_scores,"
-                " reason, key, trace, sources, residual_rad_s, wall_s"
-                f" FROM plan JOIN runs USING (key) {where} ORDER BY position",
+                "SELECT sheet, law, motion, condition, level, draw, outcome, layout, scores, reason, key,"
+                " trace, sources, residual_rad_s, wall_s FROM plan CROSS JOIN runs USING (id)"
+                " CROSS JOIN keys USING (id) CROSS JOIN places ON places.id = place"
+                f" {where} ORDER BY position",
                 values,
             )
-            for found in query:
-                yield _record(*found)
+            for *place, outcome, layout, scores, reason, key, trace, sources, residual, wall_s in query:
+                sheet, law, motion, condition, level, draw = place
+                every = known[layout].scores_of(scores)
+                row = Row(sheet, law, motion, condition, level, draw, outcome, every, reason)
+                yield Record(row, key, trace, tuple(filter(None, sources.split(","))), residual, wall_s)
 
     def keys(self, beginning: str) -> tuple[list[str], list[str]]:
         """Return the keys that begin so: of the planned runs, and of those stored for older plans alone."""
@@ -200,15 +231,21 @@ class Reader:
         with speaking_plainly(self.path):
             planned, stored = (
                 {key for (key,) in self._connection.execute(query, (beginning, f"{beginning}g"))}
-                for query in (f"SELECT key FROM plan WHERE {within}", f"SELECT key FROM runs WHERE {within}")
+                for query in (
+                    f"SELECT key FROM keys JOIN plan USING (id) WHERE {within}",
+                    f"SELECT key FROM keys JOIN runs USING (id) WHERE {within}",
+                )
             )
         return sorted(planned), sorted(stored - planned)
 
     def kept(self, key: str) -> Kept:
         """Return a planned run itself, made from the store alone; StoreError if that can't be done."""
         with speaking_plainly(self.path):
-            query = self._connection.execute("SELECT run, draw FROM plan WHERE key = ? LIMIT 1", (key,))
-            found = query.fetchone()
+            found = self._connection.execute(
+                "SELECT run, draw FROM keys JOIN plan USING (id) JOIN places ON places.id = place"
+                " WHERE key = ? LIMIT 1",
+                (key,),
+            ).fetchone()
             if found is None:
                 raise StoreError(str(self.path), f"run {key} is not planned any more")
             digest, draw = found
@@ -230,18 +267,35 @@ class Reader:
         """Return the host that did a stored run."""
         with speaking_plainly(self.path):
             found = self._connection.execute(
-                "SELECT cpu, versions FROM runs JOIN hosts ON hosts.id = host WHERE key = ?", (key,)
+                "SELECT cpu, versions FROM keys JOIN runs USING (id) JOIN hosts ON hosts.id = host"
+                " WHERE key = ?",
+                (key,),
             ).fetchone()
         return None if found is None else Host(found[0], tuple(json.loads(found[1]).items()))
 
-    def hosts(self) -> list[Host]:
-        """Return the hosts that did the planned runs."""
+    def hosts(self) -> dict[int, Host]:
+        """Return the hosts that did the planned runs, by the numbers that the runs have for them."""
         with speaking_plainly(self.path):
             query = self._connection.execute(
-                "SELECT cpu, versions FROM hosts WHERE id IN"
-                " (SELECT host FROM runs WHERE key IN (SELECT key FROM plan)) ORDER BY id"
+                "SELECT id, cpu, versions FROM hosts WHERE id IN"
+                " (SELECT host FROM plan CROSS JOIN runs USING (id)) ORDER BY id"
             )
-            return [Host(cpu, tuple(json.loads(versions).items())) for cpu, versions in query]
+            return {number: Host(cpu, tuple(json.loads(text).items())) for number, cpu, text in query}
+
+    def places(self) -> dict[int, Place]:
+        """Return where the planned runs stand, by the numbers that the runs have for it."""
+        with speaking_plainly(self.path):
+            return places_of(self._connection)
+
+    def scores(self) -> tuple[str, ...]:
+        """Return the scores that any stored run of the plan has, in display order."""
+        with speaking_plainly(self.path):
+            return stored_scores(self._connection)
+
+    def blocks(self, names: Sequence[str], more: Sequence[str] = (), size: int = SIZE) -> Iterator[Block]:
+        """Yield the stored runs of the plan as columns, a block at a time; see :func:`blocks`."""
+        with speaking_plainly(self.path):
+            yield from blocks(self._connection, names, more, size)
 
     def rows(self) -> list[Row]:
         """Return the rows of the planned runs that are stored, in the order of the plan."""
@@ -257,14 +311,46 @@ class Reader:
                 values.setdefault(draw, {})[name] = u
         return values
 
-    def results(self) -> Results:
-        """Return the cells and standings of all that is stored, as of one moment."""
+    def _table(self, names: Sequence[str] | None) -> tuple[RunTable, Counts]:
+        """Return the runs as columns, and what :meth:`counts` counts: the file is read once for both."""
+        with speaking_plainly(self.path):
+            places = self.places()
+            planned = self._connection.execute("SELECT count(*) FROM plan").fetchone()[0]
+            names = self.scores() if names is None else tuple(names)
+            place, draw = np.empty((2, planned), dtype=np.int64)
+            state, scores = np.empty(planned, dtype=np.int8), np.empty((planned, len(names)))
+            found: Counter[str] = Counter()
+            end = 0
+            for block in self.blocks(names, ("anew",)):
+                here, end = slice(end, end + len(block)), end + len(block)
+                place[here], draw[here] = block.place, block.draw
+                state[here] = [STATES[outcome] for outcome in block.outcome]
+                scores[here] = block.scores
+                anew = block.more["anew"]
+                found.update(compress(block.outcome, map(not_, anew)) if any(anew) else block.outcome)
+        index = np.zeros(max(places, default=0) + 1, dtype=np.int64)
+        index[list(places)] = np.arange(len(places))
+        state, scores = state[:end], scores[:end]
+        scores[state != FINISHED] = np.nan
+        shown = tuple((each.sheet, each.law, each.motion, each.condition) for each in places.values())
+        table = RunTable(tuple(names), shown, index[place[:end]], draw[:end], state, scores)
+        return table, _counts(found | {"": planned - found.total()})
+
+    def results(self, brief: bool = False) -> Results:
+        """Return the cells and standings of all that is stored, as of one moment.
+
+        If ``brief``, the cells have the measures of the main score and of those with a limit alone: all that
+        a text shows, at a small part of the time.
+        """
         from rigbench.scores.summary import summarise  # scipy: slow to import
 
         with self.one_moment():
-            labels, counts, rows = self.labels, self.counts(), self.rows()
+            labels = self.labels
+            limited = () if labels.tolerance is None else labels.tolerance.limited
+            names = tuple(dict.fromkeys([main_score(limited), *limited])) if brief else None
+            table, counts = self._table(names)
         return summarise(
-            rows,
+            table,
             title=labels.title,
             arm=labels.arm,
             motions=labels.motions,
@@ -280,29 +366,9 @@ class Reader:
         )
 
 
-def _record(
-    sheet: str,
-    law: str,
-    motion: str,
-    condition: str,
-    level: float | None,
-    draw: int | None,
-    outcome: str,
-    scores: str,
-    host_scores: str,
-    reason: str,
-    key: str,
-    trace: str,
-    sources: str,
-    residual: float | None,
-    wall_s: float | None,
-) -> Record:
-    every = _scores(scores) | _scores(host_scores)
-    row = Row(sheet, law, motion, condition, level, draw, outcome, every, reason)
-    return Record(row, key, trace, tuple(filter(None, sources.split(","))), residual, wall_s)
-
-
-def _scores(text: str) -> dict[str, float]:
-    """Read a run's scores; names are shared between all rows, null is infinite."""
-    found = json.loads(text)
-    return {sys.intern(name): math.inf if value is None else value for name, value in found.items()}
+def _counts(outcomes: Mapping[str, int]) -> Counts:
+    return Counts(
+        sum(outcomes.values()),
+        sum(outcomes.get(outcome, 0) for outcome in MACHINE_OUTCOMES),
+        sum(outcomes.get(outcome, 0) for outcome in HOST_OUTCOMES),
+    )

@@ -10,10 +10,10 @@ from __future__ import annotations
 import contextlib
 import hashlib
 import json
-import math
 import sqlite3
 from collections.abc import Iterable, Iterator, Mapping
-from datetime import UTC, datetime
+from datetime import UTC, date, datetime
+from itertools import chain, count
 from pathlib import Path
 
 from rigbench.campaign.connection import connect, owner, speaking_plainly
@@ -22,10 +22,13 @@ from rigbench.campaign.labels import Labels
 from rigbench.campaign.lock import WriterLock
 from rigbench.campaign.migrations import migrate
 from rigbench.campaign.owner import Owner
+from rigbench.campaign.packing import packed
+from rigbench.campaign.places import Places
 from rigbench.campaign.plan import Plan
 from rigbench.campaign.reading import Reader
 from rigbench.campaign.work import Host, Outcome
 from rigbench.errors import StoreForeign
+from rigbench.scores.row import SETTLED_TROUBLES
 
 __all__ = ["Store"]
 
@@ -90,11 +93,21 @@ class Store(Reader):
                 "INSERT INTO files VALUES (?, ?, ?, 1) ON CONFLICT (path, digest) DO UPDATE SET planned = 1",
                 _file_values(plan),
             )
-            connection.execute("DELETE FROM plan")
-            connection.execute("DELETE FROM parts")
-            keeper = Keeper()
-            rows = _plan_values(plan, keeper)
-            connection.executemany("INSERT INTO plan VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?)", rows)
+            for table in ("plan", "places", "parts"):
+                connection.execute(f"DELETE FROM {table}")
+            connection.execute("DELETE FROM keys WHERE id NOT IN (SELECT id FROM runs)")
+            connection.executemany(
+                "INSERT OR IGNORE INTO keys (key) VALUES (?)", ((entry.key,) for entry in plan.entries)
+            )
+            keeper, places = Keeper(), Places()
+            connection.executemany(
+                "INSERT INTO plan SELECT ?, id, ?, ? FROM keys WHERE key = ?",
+                (
+                    (position, places.number(entry, keeper.keep(entry.run)), entry.draw, entry.key)
+                    for position, entry in enumerate(plan.entries)
+                ),
+            )
+            connection.executemany("INSERT INTO places VALUES (?, ?, ?, ?, ?, ?, ?, ?)", places.rows())
             connection.executemany("INSERT INTO parts VALUES (?, ?)", keeper.texts.items())
 
     def add(
@@ -110,18 +123,37 @@ class Store(Reader):
                 ((str(seed), draw, name, u) for seed, draw, values in draws for name, u in values.items()),
             )
             for outcome in outcomes:
+                layout, values = packed(outcome.scores, outcome.host_scores)
                 connection.execute(
-                    "INSERT OR REPLACE INTO runs VALUES (?, ?, ?, ?, ?, ?, ?, ?, ?, ?, 0)",
-                    _run_values(outcome, self._host_id(outcome.host)),
+                    "INSERT OR REPLACE INTO runs VALUES (?, ?, 0, ?, ?, ?, ?, ?, ?, ?, ?)",
+                    (
+                        self._id("keys", key=outcome.key),
+                        outcome.outcome,
+                        self._id("layouts", names=layout.text),
+                        values,
+                        outcome.residual,
+                        outcome.wall_s,
+                        self._host_id(outcome.host),
+                        _now(),
+                        _plain(outcome.reason),
+                        _plain(outcome.trace),
+                    ),
                 )
 
     def _host_id(self, host: Host | None) -> int | None:
         if host is None:
             return None
-        known = (host.cpu, json.dumps(dict(host.versions)))
-        self._connection.execute("INSERT OR IGNORE INTO hosts (cpu, versions) VALUES (?, ?)", known)
-        query = self._connection.execute("SELECT id FROM hosts WHERE cpu = ? AND versions = ?", known)
-        number: int = query.fetchone()[0]
+        return self._id("hosts", cpu=host.cpu, versions=json.dumps(dict(host.versions)))
+
+    def _id(self, table: str, **values: str) -> int:
+        """Return the number of a row of these values, which is added if there is none."""
+        query = f"SELECT id FROM {table} WHERE {' AND '.join(f'{name} = ?' for name in values)}"
+        found = self._connection.execute(query, tuple(values.values())).fetchone()
+        if found is None:
+            marks = ", ".join("?" * len(values))
+            add = f"INSERT INTO {table} ({', '.join(values)}) VALUES ({marks})"
+            found = (self._connection.execute(add, tuple(values.values())).lastrowid,)
+        number: int = found[0]
         return number
 
     def run_anew(self, law: str) -> int:
@@ -132,8 +164,50 @@ class Store(Reader):
         """
         with self._transaction() as connection:
             return connection.execute(
-                "UPDATE runs SET anew = 1 WHERE key IN (SELECT key FROM plan WHERE law = ?)", (law,)
+                "UPDATE runs SET anew = 1 WHERE id IN"
+                " (SELECT plan.id FROM plan JOIN places ON places.id = place WHERE law = ?)",
+                (law,),
             ).rowcount
+
+    def settled_troubles(self, draws: int | None = None) -> int:
+        """Count the planned runs, of the first ``draws``, that came to nothing and would do so again."""
+        marks = ", ".join("?" * len(SETTLED_TROUBLES))
+        with speaking_plainly(self.path):
+            query = self._connection.execute(
+                f"SELECT count(*) FROM plan JOIN runs USING (id) WHERE NOT anew AND outcome IN ({marks})"
+                " AND (draw IS NULL OR draw < coalesce(?, draw + 1))",
+                (*SETTLED_TROUBLES, draws),
+            )
+            number: int = query.fetchone()[0]
+        return number
+
+    def held(self) -> int:
+        """Count all runs that the file holds, planned or not."""
+        with speaking_plainly(self.path):
+            number: int = self._connection.execute("SELECT count(*) FROM runs").fetchone()[0]
+        return number
+
+    def set_aside(self) -> Path:
+        """Close the store, rename its file after today's date, and return where it is now.
+
+        Nothing is deleted and no file is replaced: '-2', '-3' ... follow the date where that is taken.
+        StoreError, and the store stays what and where it was, while another program is reading it.
+        """
+        with speaking_plainly(self.path):
+            self._connection.execute("PRAGMA journal_mode = DELETE")  # else the log would stay behind
+            super().close()
+            target = _free_name(self.path, date.today().isoformat())
+            self.path.rename(target)
+        if self._lock is not None:
+            self._lock.release()
+            self._lock = None
+        return target
+
+
+def _free_name(path: Path, mark: str) -> Path:
+    """Return the path with a mark in its name, and a number from 2 if there is such a file."""
+    names = (f"{path.stem}-{mark}{number}{path.suffix}" for number in chain([""], count(-2, -1)))
+    return next(free for name in names if not (free := path.with_name(name)).exists())
 
 
 def _check_owner(path: Path, connection: sqlite3.Connection, asking: Owner) -> None:
@@ -163,27 +237,6 @@ def _file_values(plan: Plan) -> Iterator[tuple[str, str, str]]:
         yield path, hashlib.blake2b(text.encode(), digest_size=20).hexdigest(), text
 
 
-def _plan_values(plan: Plan, keeper: Keeper) -> Iterator[tuple[object, ...]]:
-    for position, entry in enumerate(plan.entries):
-        names = (entry.sheet, entry.law, entry.motion, entry.condition, entry.level, entry.draw)
-        yield position, *names, ",".join(entry.run.sources), entry.key, keeper.keep(entry.run)
-
-
-def _run_values(outcome: Outcome, host: int | None) -> tuple[object, ...]:
-    return (
-        outcome.key,
-        outcome.outcome,
-        _plain(outcome.reason),
-        _plain(outcome.trace),
-        _json(outcome.scores),
-        _json(outcome.host_scores),
-        outcome.residual,
-        outcome.wall_s,
-        host,
-        _now(),
-    )
-
-
 def _now() -> str:
     return datetime.now(UTC).isoformat(timespec="seconds")
 
@@ -191,8 +244,3 @@ def _now() -> str:
 def _plain(text: str) -> str:
     """Return text of a user's exception in a form that any file can hold, and no longer than of use."""
     return text[-TRACE_LENGTH:].encode("utf-8", "backslashreplace").decode()
-
-
-def _json(scores: Mapping[str, float]) -> str:
-    """Write a run's scores; JSON has no infinity, so null stands for it."""
-    return json.dumps({n: None if v == math.inf else v for n, v in scores.items()}, allow_nan=False)

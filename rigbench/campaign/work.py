@@ -15,7 +15,7 @@ from importlib.metadata import PackageNotFoundError, version
 from pathlib import Path
 from typing import TYPE_CHECKING
 
-from rigbench.errors import InputFaults, LawError, SceneError
+from rigbench.errors import InputFaults, PluginError, SceneError
 from rigbench.scores.names import SCORES
 
 if TYPE_CHECKING:
@@ -58,26 +58,28 @@ class Outcome:
 
 
 def do(run: Run) -> Outcome:
-    """Do a run and score it. Whatever is raised in it but KeyboardInterrupt ends as its outcome.
+    """Do a run and score it. Whatever is raised in it ends as its outcome, but for two things.
 
     An exception of the law is a 'law-error'; so is one of the scene, whose reason says so: it would come
     again likewise. So would 'no-plant', of a draw or case that makes a machine that can't exist, and
     'disagrees', of a run on which engine and drive disagree about the machine: its outcome and scores
     are no verdict. Any other exception is the host's, whoever's it is (the engine's, the disk's, a
-    mistake of ours): the run is 'crashed' and carries the traceback.
+    mistake of ours): the run is 'crashed' and carries the traceback. KeyboardInterrupt is raised on, and
+    so is MemoryError, in a law too: what to do about either is for whoever does the runs to say.
     """
     key, begin = run.key(), time.perf_counter()
     try:
         return _simulated(run, key, begin)
-    except LawError as error:
-        return failed(key, "law-error", error.summary, error.trace, this_host(run.law.plugin))
-    except SceneError as error:
-        reason = f"scene '{error.name}': {error.summary}"
-        return failed(key, "law-error", reason, error.trace, this_host(run.law.plugin))
+    except PluginError as error:
+        if isinstance(error.__context__, MemoryError):
+            raise MemoryError(f"in '{error.name}'") from error
+        who = f"scene '{error.name}': " if isinstance(error, SceneError) else ""
+        host = this_host(run.law.plugin)
+        return failed(key, "law-error", f"{who}{error.summary}", error.trace, host)
     except InputFaults as error:  # all else that is declared was checked before: it is the plant
         reason = "; ".join(map(str, error.faults))
         return failed(key, "no-plant", reason, host=this_host(run.law.plugin))
-    except KeyboardInterrupt:
+    except (KeyboardInterrupt, MemoryError):
         raise
     except BaseException as error:
         return failed(key, "crashed", summary(error), traceback.format_exc(), this_host(run.law.plugin))
@@ -90,7 +92,10 @@ def failed(key: str, outcome: str, reason: str, trace: str = "", host: Host | No
 
 def summary(error: BaseException) -> str:
     """Return an exception as the last line of its traceback shows it, on one line."""
-    text = " ".join(str(error).split())
+    try:
+        text = " ".join(str(error).split())
+    except Exception:  # a user's exception may be at fault itself
+        text = "its message can't be had"
     return f"{type(error).__name__}: {text}" if text else type(error).__name__
 
 

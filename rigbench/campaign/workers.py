@@ -1,25 +1,41 @@
-"""A crew of worker processes, from outside: starting it, giving it runs, ending it."""
+"""A crew of worker processes, from outside: starting it, giving it runs, ending it.
+
+One thread tends one worker: it sends a run, waits for the answer until the run's limit, and replaces the
+worker if it dies or does not answer. Workers share nothing, neither locks nor pipes, so what one of them
+suffers reaches no other. All waiting is by the monotonic clock: the time of day may change meanwhile.
+"""
 
 from __future__ import annotations
 
+import atexit
 import contextlib
 import os
 import signal
-import tempfile
+import threading
 from collections.abc import Iterator
-from concurrent.futures import Future
-from multiprocessing import forkserver, resource_tracker
-from multiprocessing.context import ForkServerContext
-from multiprocessing.synchronize import RLock
-from pathlib import Path
+from concurrent.futures import Future, ThreadPoolExecutor
+from multiprocessing import forkserver, get_context, resource_tracker
+from multiprocessing.connection import wait
+from queue import SimpleQueue
 from types import TracebackType
 
-from pebble import ProcessPool
-
-from rigbench.campaign.worker import prepare_worker, serve
+from rigbench.campaign.memory import free_bytes, share_of
+from rigbench.campaign.worker import READY, serve
 from rigbench.errors import RigbenchError
 
-__all__ = ["BrokenCrew", "Crew", "usable_cores"]
+__all__ = ["BrokenCrew", "Crew", "Overdue", "WorkerDied", "usable_cores"]
+
+PAUSES_S = (0.0, 0.1, 0.5, 2.0)
+"""Before each try to replace a worker: a killed server may for a moment be neither alive nor dead."""
+
+START_S = 60.0
+"""How long a worker may take to be ready once it is forked, and to be gone once it is killed."""
+
+WORDS_S = 2.0
+"""How long a worker that is told to end may take to leave its traceback."""
+
+WORDS_LENGTH = 65_536
+"""What a pipe holds, in bytes: more of last words would not fit."""
 
 
 def usable_cores() -> int:
@@ -29,25 +45,49 @@ def usable_cores() -> int:
     return os.cpu_count() or 1
 
 
+class BrokenCrew(RigbenchError):
+    """Worker processes can't be had, or don't stay alive before they are given anything."""
+
+
+class Overdue(RigbenchError):
+    """A run did not end within its limit; ``words`` is the traceback of where it was."""
+
+    def __init__(self, words: str) -> None:
+        self.words = words
+        super().__init__(words)
+
+
+class WorkerDied(RigbenchError):
+    """A worker died on a run; ``exitcode`` as multiprocessing has it, ``words`` the traceback it left."""
+
+    def __init__(self, exitcode: int, words: str) -> None:
+        self.exitcode, self.words = exitcode, words
+        super().__init__(exitcode, words)
+
+
 class Crew:
     """Worker processes, each of which does one run at a time; one that dies is replaced.
 
-    BrokenCrew if the system refuses them (no temporary folder, too many processes ...).
+    ``share`` is the memory [bytes] that each may take (see :mod:`rigbench.campaign.memory`), None for no
+    limit. BrokenCrew if the system refuses them (no temporary folder, too many processes ...).
     """
 
     def __init__(self, size: int) -> None:
-        self._context = _Context()
+        self.share = share_of(size, free_bytes())
+        self._lock = threading.Lock()  # multiprocessing doesn't expect threads to start and to reap at once
+        self._stopped = threading.Event()
+        self._workers: set[_Worker] = set()
+        self._idle: SimpleQueue[_Worker] = SimpleQueue()
+        self._threads = ThreadPoolExecutor(size, "worker")
+        atexit.register(self.stop)  # should nobody else: workers that wait would be waited for
         try:
-            _start_server()
-            self._folder = tempfile.TemporaryDirectory(prefix="rigbench-workers-")
-        except OSError as error:
-            raise BrokenCrew(str(error)) from error
-        self._pool = ProcessPool(
-            max_workers=size,
-            initializer=prepare_worker,
-            initargs=(self._folder.name,),
-            context=self._context,
-        )
+            for _ in range(size):
+                self._idle.put(self._started())
+        except BaseException as error:
+            self.stop()
+            if isinstance(error, OSError | EOFError):
+                raise BrokenCrew(_said(error)) from error
+            raise
 
     def __enter__(self) -> Crew:
         return self
@@ -58,51 +98,146 @@ class Crew:
         self.stop()
 
     def give(self, payload: bytes, limit_s: float) -> Future[bytes]:
-        """Give a run to whichever worker is free next; BrokenCrew if there are none any more.
+        """Give a run to whichever worker is free next.
 
-        The future raises TimeoutError after ``limit_s`` of work on it, pebble's ProcessExpired if its
-        worker died, and BrokenProcessPool if the whole crew broke down.
+        The future raises Overdue after ``limit_s`` of work on it, WorkerDied if its worker died, and
+        BrokenCrew if no worker can be had.
         """
-        try:
-            future: Future[bytes] = self._pool.schedule(serve, args=(payload,), timeout=limit_s)
-        except RuntimeError as error:
-            raise BrokenCrew(str(error.__cause__ or error)) from error
-        return future
-
-    @property
-    def whole(self) -> bool:
-        """Whether the crew still takes and finishes runs."""
-        return bool(self._pool.active)
-
-    def last_words(self, worker: int | None) -> str:
-        """Return the traceback that a crashed worker left behind, '' if it had no time for one."""
-        with contextlib.suppress(OSError):
-            return (Path(self._folder.name) / str(worker)).read_text("utf-8", "replace")
-        return ""
+        return self._threads.submit(self._done, payload, limit_s)
 
     def stop(self) -> None:
         """End all workers at once, whatever they are doing."""
-        self._pool.stop()  # type: ignore[no-untyped-call]
-        self._pool.join()
-        self._context.locks.clear()
-        self._folder.cleanup()
+        with self._lock:
+            self._stopped.set()
+            for worker in self._workers:
+                worker.end()
+        self._threads.shutdown(cancel_futures=True)
+        for worker in self._workers:
+            worker.bury()
+        atexit.unregister(self.stop)
+
+    def _done(self, payload: bytes, limit_s: float) -> bytes:
+        worker = self._idle.get()  # there are as many as threads
+        try:
+            worker = self._sound(worker)
+            return worker.do(payload, limit_s)
+        finally:
+            self._idle.put(worker)
+
+    def _sound(self, worker: _Worker) -> _Worker:
+        """Return the worker if it waits for a run, else one in its place that does."""
+        reason = "it ends before it is ready"
+        for pause in PAUSES_S:
+            if worker.is_ready():
+                return worker
+            self._stopped.wait(pause)
+            try:
+                worker = self._started(worker)
+            except (OSError, EOFError) as error:
+                reason = _said(error)
+        if worker.is_ready():
+            return worker
+        raise BrokenCrew(reason)
+
+    def _started(self, instead_of: _Worker | None = None) -> _Worker:
+        with self._lock:
+            if self._stopped.is_set():
+                raise BrokenCrew("the crew was sent home")
+            if instead_of is not None:
+                instead_of.bury()
+                self._workers.discard(instead_of)
+            worker = _Worker(self.share, self._lock)
+            self._workers.add(worker)
+            return worker
 
 
-class BrokenCrew(RigbenchError):
-    """Worker processes can't be had."""
+class _Worker:
+    """One worker process, the pipe that it gets runs through, and the one for its last words."""
+
+    def __init__(self, share: int | None, lock: threading.Lock) -> None:
+        _start_server()
+        context = get_context("forkserver")
+        self._runs, runs = context.Pipe()
+        self._words, words = context.Pipe(duplex=False)
+        self._lock, self._greeted = lock, False
+        self._process = context.Process(target=serve, args=(runs, words, share), name="rigbench-worker")
+        try:
+            self._process.start()
+            self._pid = self._process.pid or 0
+        except BaseException:
+            self._runs.close()
+            self._words.close()
+            raise
+        finally:
+            runs.close()  # with the worker's own end the only one left, its death closes the pipe
+            words.close()
+
+    def is_ready(self) -> bool:
+        """Whether it lives and waits for a run; a new one is waited for, and ended if it takes too long."""
+        try:
+            if self._greeted:
+                return not self._signs(0)
+            if self._runs in self._signs(START_S):
+                self._greeted = self._runs.recv_bytes() == READY
+        except (EOFError, OSError):
+            return False
+        if not self._greeted:
+            self.end()
+        return self._greeted
+
+    def do(self, payload: bytes, limit_s: float) -> bytes:
+        """Return its answer; Overdue after ``limit_s``, WorkerDied if it died. It is dead after either."""
+        try:
+            self._runs.send_bytes(payload)
+            signs = self._signs(limit_s)
+            if self._runs in signs:
+                return self._runs.recv_bytes()
+        except (EOFError, OSError):
+            signs = [self._process.sentinel]
+        if signs:
+            self._kill()
+            raise WorkerDied(self._exitcode(), self._last_words())
+        with contextlib.suppress(ProcessLookupError):
+            os.kill(self._pid, signal.SIGABRT)  # its faulthandler says where it is, even within a kernel
+        wait([self._process.sentinel], WORDS_S)
+        self._kill()
+        raise Overdue(self._last_words())
+
+    def end(self) -> None:
+        """Kill it if it lives; if it doesn't, its id may be another's by now."""
+        if not wait([self._process.sentinel], 0):
+            self._kill()
+
+    def bury(self) -> None:
+        """Take note of its end, once it is killed or dead."""
+        self._process.join(START_S)
+        self._runs.close()
+        self._words.close()
+
+    def _kill(self) -> None:
+        """Kill it, and whatever processes a law has started in it."""
+        for kill in (os.killpg, os.kill):  # it has no group of its own in its first moments
+            with contextlib.suppress(ProcessLookupError, PermissionError):
+                kill(self._pid, signal.SIGKILL)
+
+    def _signs(self, timeout: float) -> list[object]:
+        """Return what has happened within so many seconds: an answer, its end, or nothing."""
+        return list(wait([self._runs, self._process.sentinel], timeout))
+
+    def _exitcode(self) -> int:
+        with self._lock:
+            self._process.join(START_S)
+            return self._process.exitcode or 0
+
+    def _last_words(self) -> str:
+        os.set_blocking(self._words.fileno(), False)
+        with contextlib.suppress(OSError):
+            return os.read(self._words.fileno(), WORDS_LENGTH).decode("utf-8", "replace")
+        return ""
 
 
-class _Context(ForkServerContext):
-    """Keeps the pool's locks until the crew has gone: a worker still starting would miss them, loudly."""
-
-    def __init__(self) -> None:
-        super().__init__()
-        self.locks: list[RLock] = []
-
-    def RLock(self) -> RLock:
-        lock = super().RLock()
-        self.locks.append(lock)
-        return lock
+def _said(error: BaseException) -> str:
+    return str(error) or type(error).__name__
 
 
 def _start_server() -> None:

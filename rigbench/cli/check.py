@@ -12,8 +12,8 @@ from rigbench.campaign.plan import Plan
 from rigbench.campaign.store import Store
 from rigbench.cli.estimate import Estimate, estimate_of
 from rigbench.cli.output import print_json, show, tell_notes
-from rigbench.cli.progress import duration_words
 from rigbench.cli.run import store_path
+from rigbench.cli.spans import duration_words, size_words
 from rigbench.errors import Fault, StoreError, counted
 from rigbench.experiment import Experiment, load_experiment
 from rigbench.scores.intervals import draws_needed, misses_allowed
@@ -35,7 +35,7 @@ def check_experiment(file: str, as_json: bool) -> None:
     experiment = load_experiment(file)
     plan = experiment.plan()
     stored = _stored(plan, store_path(file, None))
-    estimate = estimate_of(experiment, stored.runs or 0)
+    estimate = estimate_of(experiment, plan, stored.runs or 0)
     tell_notes([*experiment.notes, *stored.notes, *estimate.notes])
     if as_json:
         print_json(_document(experiment, plan, stored, estimate))
@@ -76,6 +76,8 @@ def _lines(experiment: Experiment, plan: Plan, stored: Stored, estimate: Estimat
         cores = counted(estimate.cores, "core")
         said = f"{duration_words(estimate.seconds)} on {cores}"
         yield f"time: {said}; an estimate, from a short run of each law"
+    if estimate.store_bytes is not None:
+        yield f"store: {size_words(estimate.store_bytes)} when all is done; an estimate, from a small one"
 
 
 def _product(plan: Plan) -> str:
@@ -128,6 +130,10 @@ def _document(experiment: Experiment, plan: Plan, stored: Stored, estimate: Esti
         "draws_needed": None if share is None else draws_needed(share),
         "misses_allowed": None if share is None else misses_allowed(share, plan.draws),
         "runs": {"planned": len(plan.entries), "stored": stored.runs},
-        "estimate": {"seconds": estimate.seconds, "cores": estimate.cores},
+        "estimate": {
+            "seconds": estimate.seconds,
+            "cores": estimate.cores,
+            "store_bytes": estimate.store_bytes,
+        },
         "notes": [asdict(note) for note in (*experiment.notes, *stored.notes, *estimate.notes)],
     }

@@ -2,17 +2,18 @@
 
 from __future__ import annotations
 
+import contextlib
 from collections.abc import Iterable
-from contextlib import closing
 from dataclasses import dataclass, replace
 from typing import Any
 
 from rigbench.arm.arm import Floats
 from rigbench.campaign.executor import InProcess, Processes
-from rigbench.campaign.plan import Entry
+from rigbench.campaign.plan import Entry, Plan
+from rigbench.campaign.size import store_bytes
 from rigbench.campaign.work import Outcome, do
 from rigbench.campaign.workers import usable_cores
-from rigbench.errors import Fault, InputFaults, RigbenchError
+from rigbench.errors import Fault, InputFaults, RigbenchError, StoreError
 from rigbench.experiment import Experiment
 from rigbench.motion.motion import Motion
 from rigbench.rig.run import Run
@@ -30,14 +31,19 @@ LIMIT_S = 60.0
 
 @dataclass(frozen=True)
 class Estimate:
-    """What a campaign will take, judged by one short run of each law: ``seconds`` on so many ``cores``."""
+    """What a campaign will take, judged by one short run of each law: ``seconds`` on so many ``cores``.
+
+    ``store_bytes`` is the size of the store when all is done. None is what can't be told: both, if not every
+    law finishes its run.
+    """
 
     seconds: float | None
     cores: int
     notes: tuple[Fault, ...]
+    store_bytes: float | None = None
 
 
-def estimate_of(experiment: Experiment, stored: int) -> Estimate:
+def estimate_of(experiment: Experiment, plan: Plan, stored: int) -> Estimate:
     """Do the nominal run of each law along the shortest motion, and scale its time to all that is missing.
 
     It is done in the first sheet that has the law, in a worker process as in a campaign, for MOTION_S of
@@ -60,14 +66,16 @@ def estimate_of(experiment: Experiment, stored: int) -> Estimate:
             notes.append(Fault(experiment.path, line, key, f"{problem}\n{outcome.trace}".rstrip()))
     if faults:
         raise InputFaults(faults)
-    seconds = None
+    seconds = size = None
     times = {law: outcomes[first.key].wall_s for law, first in firsts.items()}
     if not notes and None not in times.values():  # a run that broke off says nothing about a whole one
         per_step = {law: wall_s / _steps(firsts[law].run) for law, wall_s in times.items() if wall_s}
         left = 1 - stored / experiment.runs
         steps = _steps_by_law(experiment)
         seconds = sum(steps[law] * time for law, time in per_step.items()) * left / usable_cores()
-    return Estimate(seconds, usable_cores(), tuple(notes))
+        with contextlib.suppress(OSError, StoreError):  # no room for a temporary file
+            size = store_bytes(plan, {law: outcomes[first.key] for law, first in firsts.items()})
+    return Estimate(seconds, usable_cores(), tuple(notes), size)
 
 
 def _shortest(experiment: Experiment, law: str) -> Entry:
@@ -88,7 +96,7 @@ def _outcomes(entries: Iterable[Entry]) -> dict[str, Outcome]:
 
 
 def _done(executor: Processes | InProcess, entries: list[Entry]) -> dict[str, Outcome]:
-    with closing(executor.run_all(entries)) as outcomes:
+    with contextlib.closing(executor.run_all(entries)) as outcomes:
         return {outcome.key: outcome for outcome in outcomes}
 
 

@@ -6,8 +6,10 @@ import contextlib
 import errno
 import json
 import os
+import signal
 import sys
 import textwrap
+import threading
 import traceback
 from collections.abc import Iterable, Iterator
 from contextvars import ContextVar
@@ -19,6 +21,8 @@ import typer
 from rigbench.errors import Fault, InputFaults, RigbenchError, Stopped, StoreError
 
 __all__ = [
+    "height",
+    "interrupts_alike",
     "paragraph",
     "print_json",
     "put",
@@ -27,6 +31,7 @@ __all__ = [
     "streams_may_fail",
     "tell_notes",
     "telling",
+    "to_terminal",
     "width",
 ]
 
@@ -95,6 +100,31 @@ def width() -> int:
     with contextlib.suppress(OSError, ValueError):
         return os.get_terminal_size((_RESULT.get() or sys.stdout).fileno()).columns or 100
     return 100
+
+
+def height() -> int:
+    """Return the height of the terminal that the result goes to, 24 where it can't be told."""
+    with contextlib.suppress(OSError, ValueError):
+        return os.get_terminal_size((_RESULT.get() or sys.stdout).fileno()).lines or 24
+    return 24
+
+
+def to_terminal() -> bool:
+    """Whether the result goes to a terminal."""
+    return (_RESULT.get() or sys.stdout).isatty()
+
+
+@contextlib.contextmanager
+def interrupts_alike() -> Iterator[None]:
+    """Let SIGTERM do here what Ctrl-C does, where signals can be taken: in a program's main thread."""
+    if threading.current_thread() is not threading.main_thread():
+        yield
+        return
+    before = signal.signal(signal.SIGTERM, signal.default_int_handler)
+    try:
+        yield
+    finally:
+        signal.signal(signal.SIGTERM, before)
 
 
 @contextlib.contextmanager

@@ -3,16 +3,24 @@
 from __future__ import annotations
 
 import contextlib
+import os
 import sys
 import time
 from collections.abc import Callable, Iterator
 
-from rigbench.campaign.campaign import Progress
+from rigbench.campaign.progress import Progress
+from rigbench.campaign.tally import Standing
 from rigbench.cli.output import say
+from rigbench.cli.spans import duration_words
+from rigbench.errors import counted
 
-__all__ = ["duration_words", "progress_shown"]
+__all__ = ["progress_shown", "standing_words", "tell_stopping"]
 
-EVERY_S = 5.0
+LINE_EVERY_S = 10.0
+BAR_EVERY_S = 0.5
+
+MOST = 4
+"""Laws in the standing; of the others the number is given."""
 
 OnProgress = Callable[[Progress], None]
 
@@ -21,57 +29,78 @@ OnProgress = Callable[[Progress], None]
 def progress_shown() -> Iterator[OnProgress]:
     """Yield what to call with the progress after each run."""
     if sys.stderr.isatty():
-        with _bar() as on_progress:
-            yield on_progress
+        with _bar() as show:
+            yield _Seldom(BAR_EVERY_S, show, at_once=True).take
     else:
-        yield _Lines().take
+        yield _Seldom(LINE_EVERY_S, _say_line).take
 
 
-def duration_words(seconds: float) -> str:
-    """Return a time to two parts: '40 s', '12 min', '3 h 20 min'."""
-    if seconds < 1:
-        return "less than 1 s"
-    if seconds < 120:
-        return f"{seconds:.0f} s"
-    minutes = round(seconds / 60)
-    if minutes < 120:
-        return f"{minutes} min"
-    return f"{minutes // 60} h {minutes % 60} min"
+def tell_stopping() -> None:
+    """Say that a stop was asked for; from within a signal's handler, where nothing else may be printed."""
+    with contextlib.suppress(OSError):
+        os.write(2, b"\nstopping after the runs in hand; asked once more, it drops them\n")
+
+
+def standing_words(standing: Standing | None) -> str:
+    """Say how the laws stand, those first that keep most; '' if nothing is known."""
+    if standing is None:
+        return ""
+    laws = [law for law in standing.laws if law.draws]
+    laws.sort(key=lambda law: -law.passed / law.draws)
+    told = [f"{law.law} {law.passed} of {law.draws}" for law in laws[:MOST]]
+    if len(laws) > MOST:
+        told.append(f"{len(laws) - MOST} more")
+    where = f", all {standing.sheets} sheets" if standing.sheets > 1 else ""
+    return f"draws that keep under '{standing.condition}'{where}: {', '.join(told)}"
 
 
 def _words(progress: Progress) -> str:
     parts = []
     if progress.rate is not None and progress.seconds_left is not None:
         parts += [f"{progress.rate:.3g} runs a second", f"{duration_words(progress.seconds_left)} left"]
+    if progress.ends_in is not None and progress.ends_in < (progress.seconds_left or float("inf")):
+        parts.append(f"stops in {duration_words(progress.ends_in)}")
     parts.append(f"{progress.failed} failed")
     return ", ".join(parts)
 
 
-class _Lines:
-    """Prints a line when the last one is old enough."""
+class _Seldom:
+    """Shows the progress when what was shown last is old enough."""
 
-    def __init__(self) -> None:
-        self._last = time.monotonic()
+    def __init__(self, every_s: float, show: OnProgress, at_once: bool = False) -> None:
+        self._every_s, self._show = every_s, show
+        self._last = -every_s if at_once else time.monotonic()
 
     def take(self, progress: Progress) -> None:
         now = time.monotonic()
-        if now - self._last >= EVERY_S:
+        if now - self._last >= self._every_s:
             self._last = now
-            say(f"{progress.done} of {progress.planned} runs done, {_words(progress)}")
+            self._show(progress)
+
+
+def _say_line(progress: Progress) -> None:
+    standing = standing_words(progress.standing)
+    line = f"{progress.done} of {counted(progress.planned, 'run')} done, {_words(progress)}"
+    say(f"{line}; {standing}" if standing else line)
 
 
 @contextlib.contextmanager
 def _bar() -> Iterator[OnProgress]:
-    from rich.console import Console
+    from rich.console import Console, Group
+    from rich.live import Live
     from rich.progress import BarColumn, MofNCompleteColumn, TextColumn
     from rich.progress import Progress as Bar
+    from rich.text import Text
 
-    columns = (TextColumn("runs"), BarColumn(), MofNCompleteColumn(), TextColumn("{task.fields[words]}"))
-    with Bar(*columns, console=Console(stderr=True), transient=True) as bar:
-        task = bar.add_task("runs", total=None, words="")
+    words = TextColumn("{task.fields[words]}", markup=False)
+    bar = Bar(TextColumn("runs"), BarColumn(), MofNCompleteColumn(), words)
+    task = bar.add_task("runs", total=None, words="")
+    standing = Text(no_wrap=True, overflow="ellipsis")
 
-        def take(progress: Progress) -> None:
-            ended = progress.done + progress.failed
-            bar.update(task, total=progress.planned, completed=ended, words=_words(progress))
+    def show(progress: Progress) -> None:
+        ended = progress.done + progress.failed
+        bar.update(task, total=progress.planned, completed=ended, words=_words(progress))
+        standing.plain = standing_words(progress.standing)
 
-        yield take
+    with Live(Group(bar, standing), console=Console(stderr=True), transient=True):
+        yield show

@@ -4,22 +4,28 @@ from __future__ import annotations
 
 import datetime
 import shlex
+import time
 from collections import Counter
-from collections.abc import Collection, Iterable, Iterator, Sequence
+from collections.abc import Collection, Iterator
 from pathlib import Path
 
 from rigbench.campaign.campaign import run_campaign
+from rigbench.campaign.cluster import cluster_executor
+from rigbench.campaign.executor import Executor
 from rigbench.campaign.owner import Owner
+from rigbench.campaign.part import Part
 from rigbench.campaign.plan import Plan
 from rigbench.campaign.store import Store
-from rigbench.cli.output import paragraph, print_json, say, show, tell_notes, width
-from rigbench.cli.progress import progress_shown
-from rigbench.cli.stored import CAUTION, picture_path
-from rigbench.errors import Fault, InputFaults, Stopped, nearest
+from rigbench.cli.fresh import make_room
+from rigbench.cli.output import interrupts_alike, print_json, say, show, tell_notes
+from rigbench.cli.progress import progress_shown, tell_stopping
+from rigbench.cli.spans import duration_words
+from rigbench.cli.stored import CAUTION, picture_path, status_text
+from rigbench.cli.wishes import Wishes, part_of
+from rigbench.errors import ClusterLost, Stopped, counted
 from rigbench.experiment import load_experiment
 from rigbench.report.json_form import results_json
 from rigbench.report.matrix import matrix_picture
-from rigbench.report.text import matrix_text
 from rigbench.scores.results import Results
 from rigbench.scores.row import HOST_OUTCOMES
 
@@ -31,50 +37,64 @@ def store_path(file: str, store: str | None) -> Path:
     return Path("results") / f"{Path(file).stem}.sqlite" if store is None else Path(store)
 
 
-def run_experiment(
-    file: str, jobs: int | None, store: str | None, as_json: bool, again: Sequence[str] = ()
-) -> None:
-    """Do what is missing, and the laws named in ``again`` anew, then print and draw the results.
+def run_experiment(file: str, wishes: Wishes, as_json: bool) -> None:
+    """Do what is missing of what is wished for, then print and draw the results.
 
-    After a stop what there is is told first. InputFaults for a law that the experiment doesn't have.
+    After a stop what there is is told first. InputFaults for wishes that the experiment can't fulfil.
     """
-    experiment = load_experiment(file)
-    _check_laws(file, again, experiment.laws)
-    tell_notes(experiment.notes)
-    plan = experiment.plan(store)
-    path = store_path(file, store)
-    stopped = None
-    with Store.open_for_writing(path, plan) as opened:
-        _tell_move(opened, plan)
-        say(_intent(plan, opened, path, again))
-        try:
-            with progress_shown() as on_progress:
-                run_campaign(plan, opened, jobs, on_progress, again=again)
-        except Stopped as error:
-            stopped = error
-        results = opened.results()
-        troubles = [*_troubles(opened), *_ways_out(opened, plan)]
-    for trouble in troubles:
-        say(trouble)
-    if stopped is not None:
-        if as_json:
-            print_json(results_json(results, str(path)))
-        else:
-            _show_results(results)
-        say(str(stopped))
-        raise SystemExit(Stopped.exit_code)
-    _tell_results(results, path, as_json)
+    began = time.monotonic(), time.time()
+    with interrupts_alike():
+        experiment = load_experiment(file)
+        part = part_of(experiment, wishes, began)
+        tell_notes(experiment.notes)
+        plan = experiment.plan(wishes.store)
+        path = store_path(file, wishes.store)
+        executor = None
+        if wishes.cluster is not None:  # before anything is set aside or stored
+            executor = cluster_executor(wishes.cluster, plan.entries, say)
+        if wishes.fresh:
+            make_room(path, plan, wishes.sure)
+        with Store.open_for_writing(path, plan) as opened:
+            _tell_move(opened, plan)
+            say(_intent(plan, part, opened, path, wishes.again))
+            stopped = _campaign(plan, part, opened, wishes, executor)
+            results = opened.results(brief=not as_json)
+            troubles = [*_troubles(opened), *_ways_out(opened, plan)]
+        for trouble in troubles:
+            say(trouble)
+        if stopped is not None:
+            if as_json:
+                print_json(results_json(results, str(path)))
+            else:
+                _show_results(results)
+            say(str(stopped))
+            raise SystemExit(Stopped.exit_code)
+        _tell_results(results, path, as_json)
+        _tell_part(part, results, plan)
 
 
-def _check_laws(file: str, again: Iterable[str], laws: Collection[str]) -> None:
-    known = f"one of {', '.join(laws)}"
-    faults = [
-        Fault(file, None, "--again", f"there is no law '{law}'", known, nearest(law, laws))
-        for law in again
-        if law not in laws
-    ]
-    if faults:
-        raise InputFaults(faults)
+def _campaign(
+    plan: Plan, part: Part, store: Store, wishes: Wishes, executor: Executor | None
+) -> Stopped | None:
+    """Do the runs, and return how the campaign stopped, if it did so before its end."""
+    try:
+        with progress_shown() as on_progress:
+            run_campaign(
+                plan,
+                store,
+                wishes.jobs,
+                on_progress,
+                again=wishes.again,
+                part=part,
+                executor=executor,
+                on_stop=tell_stopping,
+            )
+    except Stopped as stopped:
+        return stopped
+    except ClusterLost as lost:
+        counts = store.counts()
+        return Stopped(counts.done + counts.failed, counts.planned, part.resume(plan.resume), str(lost))
+    return None
 
 
 def _tell_move(store: Store, plan: Plan) -> None:
@@ -87,14 +107,26 @@ def _tell_move(store: Store, plan: Plan) -> None:
         )
 
 
-def _intent(plan: Plan, store: Store, path: Path, again: Collection[str]) -> str:
-    planned = len(plan.entries)
+def _intent(plan: Plan, part: Part, store: Store, path: Path, again: Collection[str]) -> str:
+    wanted = [entry for entry in plan.entries if part.has(entry)]
     keys = {entry.key for entry in store.missing(plan)}
-    keys |= {entry.key for entry in plan.entries if entry.law in again}
-    missing = sum(entry.key in keys for entry in plan.entries)
+    keys |= {entry.key for entry in wanted if entry.law in again}
+    missing = sum(entry.key in keys for entry in wanted)
+    first = "" if part.draws is None else f" of the first {counted(part.draws, 'draw')}"
     if missing == 0:
-        return f"all {planned} runs are stored in {path}: nothing to run"
-    return f"{missing} of {planned} runs to do, stored in {path}"
+        return f"all {len(wanted)} runs{first} are stored in {path}: nothing to run"
+    said = f"{missing} of {counted(len(wanted), 'run')}{first} to do, stored in {path}"
+    if part.ends is None:
+        return said
+    return f"{said}; none begins when {duration_words(part.ends - time.monotonic())} have passed"
+
+
+def _tell_part(part: Part, results: Results, plan: Plan) -> None:
+    """Say so where more is declared than was asked for."""
+    left = results.planned - results.done - results.failed
+    if part.draws is not None and left:
+        said = f"the first {part.draws} of {plan.draws} draws are done, as asked"
+        say(f"{said}; '{plan.resume}' does the other {counted(left, 'run')}")
 
 
 def _tell_results(results: Results, path: Path, as_json: bool) -> None:
@@ -109,13 +141,12 @@ def _tell_results(results: Results, path: Path, as_json: bool) -> None:
 
 
 def _show_results(results: Results) -> None:
-    show(matrix_text(results, width()))
-    show(f"\n{paragraph(results.advice)}\n")
+    show(f"{status_text(results)}\n")
 
 
 def _ways_out(store: Store, plan: Plan) -> Iterator[str]:
     """Say how runs that ended with their law's error can be done anew."""
-    errors = Counter(record.row.law for record in store.records() if record.row.outcome == "law-error")
+    errors = Counter(record.row.law for record in store.records_with(["law-error"]))
     for law, count in errors.items():
         runs, them = ("1 run", "it") if count == 1 else (f"{count} runs", "them")
         command = f"{plan.resume} --again {shlex.quote(law)}"
@@ -125,10 +156,9 @@ def _ways_out(store: Store, plan: Plan) -> Iterator[str]:
 def _troubles(store: Store) -> Iterator[str]:
     """Say what failed, each reason of each law once, with the traceback of the first run that met it."""
     met: dict[tuple[str, str, str], list[str]] = {}
-    for record in store.records():
+    for record in store.records_with(HOST_OUTCOMES):
         row = record.row
-        if row.outcome in HOST_OUTCOMES:
-            met.setdefault((row.law, row.outcome, row.reason), []).append(record.trace)
+        met.setdefault((row.law, row.outcome, row.reason), []).append(record.trace)
     for (law, outcome, reason), traces in met.items():
         runs = "1 run" if len(traces) == 1 else f"{len(traces)} runs"
         yield f"{runs} of '{law}' came to nothing ({outcome}): {reason}\n{traces[0]}".rstrip()

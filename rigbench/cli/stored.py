@@ -2,23 +2,28 @@
 
 from __future__ import annotations
 
-import contextlib
 import datetime
-import shutil
+import io
 import tempfile
-from collections.abc import Iterable, Iterator
+from collections.abc import Callable, Iterable, Iterator
 from pathlib import Path
-from typing import IO
+from typing import BinaryIO, TextIO, TypeVar
 
-from rigbench.campaign.export import export_csv
+from rigbench.campaign.export import check_parquet, export_columns, export_csv, export_parquet
+from rigbench.campaign.reading import Reader
 from rigbench.campaign.store import Store
 from rigbench.campaign.work import Host
 from rigbench.cli.output import paragraph, print_json, put, say, show, width
-from rigbench.errors import InputFaults, StoreError
+from rigbench.errors import InputFaults
+from rigbench.report import cautions
+from rigbench.report.output_file import write_whole
+from rigbench.scores.results import Results
 
-__all__ = ["CAUTION", "draw_matrix", "export_runs", "picture_path", "print_status"]
+__all__ = ["CAUTION", "draw_matrix", "export_runs", "picture_path", "print_status", "status_text"]
 
-CAUTION = "Simulation is evidence for a choice, not a safety case; see the cautions in the README."
+CAUTION = f"{cautions.CAUTION.removesuffix('.')}; see the cautions in the README."
+
+T = TypeVar("T")
 
 PART = 65536
 """Characters of a table that are printed at once."""
@@ -32,18 +37,22 @@ def picture_path(store: Path) -> Path:
 def print_status(path: str, as_json: bool) -> None:
     """Print the matrix of what is stored."""
     from rigbench.report.json_form import results_json
-    from rigbench.report.text import matrix_text
 
     with Store.open_for_reading(path) as store:
-        results, notes = store.results(), list(_notes(store.hosts()))
+        results, notes = store.results(brief=not as_json), list(_notes(store.hosts().values()))
     if as_json:
         print_json(results_json(results, path) | {"notes": notes})
         return
-    show(matrix_text(results, width()))
-    show(f"\n{paragraph(results.advice)}")
-    for note in notes:
-        show(f"\n{paragraph(note)}")
+    show(status_text(results, notes))
     say(CAUTION)
+
+
+def status_text(results: Results, notes: Iterable[str] = ()) -> str:
+    """Return the matrix, the advice and the notes, as wide as the terminal."""
+    from rigbench.report.text import matrix_text
+
+    parts = [matrix_text(results, width()), paragraph(results.advice), *map(paragraph, notes)]
+    return "\n\n".join(parts)
 
 
 def _notes(hosts: Iterable[Host]) -> Iterator[str]:
@@ -66,7 +75,7 @@ def draw_matrix(path: str, output: str | None, as_json: bool) -> None:
     picture = picture_path(Path(path)) if output is None else Path(output)
     _check_output(picture, path)
     with Store.open_for_reading(path) as store:
-        results = store.results()
+        results = store.results(brief=True)
     matrix_picture(results, picture, datetime.date.today())
     if as_json:
         print_json({"store": path, "picture": str(picture)})
@@ -75,39 +84,57 @@ def draw_matrix(path: str, output: str | None, as_json: bool) -> None:
 
 
 def export_runs(path: str, output: str | None, as_json: bool) -> None:
-    """Write the stored runs to a file, whole or not at all, or to standard output.
+    """Write the stored runs to a file, whole or not at all, or as CSV to standard output.
 
-    The table is made in a temporary file first, so that a slow reader doesn't keep the store open.
+    What the columns mean is written beside a file. For standard output the table is made in a temporary file
+    first, so that a slow reader doesn't keep the store open.
     """
-    if output is not None:
-        _check_output(Path(output), path)
-    with tempfile.TemporaryFile("w+", encoding="utf-8", newline="") as table:
-        with Store.open_for_reading(path) as store:
-            rows = export_csv(store, table)
-        table.seek(0)
-        if output is None:
+    if output is None:
+        with tempfile.TemporaryFile("w+", encoding="utf-8", newline="") as table:
+            with Store.open_for_reading(path) as store:
+                export_csv(store, table)
+            table.seek(0)
             for part in iter(lambda: table.read(PART), ""):
                 put(part)
-        else:
-            _write(table, Path(output))
+        say(CAUTION)
+        return
+    columns = Path(output).with_name(f"{Path(output).stem}-columns.csv")
+    for file in (Path(output), columns):
+        _check_output(file, path)
+    write = _parquet if Path(output).suffix.lower() == ".parquet" else _csv
+    if write is _parquet:
+        check_parquet(output)
+    with Store.open_for_reading(path) as store:
+        rows = _written(Path(output), lambda stream: write(store, stream))
+        _written(columns, lambda stream: _as_text(stream, lambda text: export_columns(store, text)))
     if as_json:
-        print_json({"store": path, "file": output, "rows": rows})
-    elif output is not None:
-        show(f"{rows} runs written to {output}")
+        print_json({"store": path, "file": output, "columns": str(columns), "rows": rows})
+    else:
+        show(f"{rows} runs written to {output}, what its columns mean to {columns}")
     say(CAUTION)
 
 
-def _write(table: IO[str], output: Path) -> None:
-    part = output.with_name(f"{output.name}.part")
+def _written(path: Path, write: Callable[[BinaryIO], T]) -> T:
+    """Write a file whole or not at all, and return what ``write`` does."""
+    returned: list[T] = []
+    write_whole(path, lambda stream: returned.append(write(stream)))
+    return returned[0]
+
+
+def _csv(store: Reader, stream: BinaryIO) -> int:
+    return _as_text(stream, lambda text: export_csv(store, text))
+
+
+def _parquet(store: Reader, stream: BinaryIO) -> int:
+    return export_parquet(store, stream)
+
+
+def _as_text(stream: BinaryIO, write: Callable[[TextIO], T]) -> T:
+    text = io.TextIOWrapper(stream, encoding="utf-8", newline="")
     try:
-        output.parent.mkdir(parents=True, exist_ok=True)
-        with part.open("w", encoding="utf-8", newline="") as stream:
-            shutil.copyfileobj(table, stream)
-        part.replace(output)
-    except OSError as error:
-        with contextlib.suppress(OSError):
-            part.unlink(missing_ok=True)
-        raise StoreError(str(output), f"can't be written: {error.strerror}") from error
+        return write(text)
+    finally:
+        text.detach()
 
 
 def _check_output(output: Path, store: str) -> None:

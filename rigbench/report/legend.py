@@ -5,16 +5,16 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 from rigbench.report.arrange import Arrangement
+from rigbench.report.cautions import CAUTION
 from rigbench.report.cells import Grid
 from rigbench.report.legend_levels import GLYPH_HEIGHT, Entry, Glyph, curve_entries, level_entries
 from rigbench.report.paper import LINE, Paper, Point
 from rigbench.report.shades import GAUGE, GAUGE_WIDTH, draw_gauge, shade
 from rigbench.report.words import any_random, percent, quantity
 
-__all__ = ["CAUTION", "draw_legend"]
+__all__ = ["draw_legend"]
 
 SIZE = 8.0
-CAUTION = "Simulation is evidence for a choice, not a safety case."
 APART = 20.0
 
 

@@ -79,8 +79,10 @@ def build_cell(
     tolerance: Tolerance | None,
     draws: int,
     possible: bool = True,
-) -> Cell:
-    """Return the cell of one law under one condition, of ``draws`` draws if anything in it is random.
+) -> tuple[Cell, CountedDraws]:
+    """Return the cell of one law under one condition, and its draws that count.
+
+    It is of ``draws`` draws if anything in it is random.
 
     Unless it is ``possible``: then it plans none, and has no verdict.
 
@@ -93,7 +95,15 @@ def build_cell(
     total, passed = len(here.draws), int(here.passed.sum())
     share, low, high, verdict = _shares(passed, total, column.random, tolerance if possible else None)
     planned = max(draws if possible else 0, len(runs.draws)) if column.random else int(possible)
-    return Cell(
+    measures = _measures(here.worst, names, np.any(gathered.defined, axis=0), column.random)
+    if len(motions) == 1:
+        parts = {motions[0]: MotionCell(passed, total, measures)}
+    else:
+        parts = {
+            motion: _motion_cell(index, motion, column, gathered, runs, tolerance)
+            for index, motion in enumerate(motions)
+        }
+    cell = Cell(
         sheet=key[0],
         law=key[1],
         condition=key[2],
@@ -105,14 +115,12 @@ def build_cell(
         pass_low=low,
         pass_high=high,
         verdict=verdict,
-        measures=_measures(here.worst, names, np.any(gathered.defined, axis=0), column.random),
-        motions={
-            motion: _motion_cell(index, motion, column, gathered, runs, tolerance)
-            for index, motion in enumerate(motions)
-        },
+        measures=measures,
+        motions=parts,
         unfinished=int(np.sum(~here.finished)),
         planned=planned,
     )
+    return cell, here
 
 
 def _shares(

@@ -1,8 +1,8 @@
-"""Rows sorted into cells, as arrays."""
+"""Runs sorted into cells, as arrays."""
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Iterator, Mapping, Sequence
+from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass
 from itertools import product
 
@@ -12,21 +12,12 @@ from numpy.typing import NDArray
 from rigbench.arm.arm import Floats
 from rigbench.scores.names import in_display_order
 from rigbench.scores.results import Column
-from rigbench.scores.row import HOST_OUTCOMES, MACHINE_OUTCOMES, Row
+from rigbench.scores.run_table import FINISHED, MISSING, UNFINISHED, RunTable
 
 __all__ = ["FINISHED", "MISSING", "UNFINISHED", "CellKey", "CellRuns", "Frame", "Gathered", "gather"]
 
 CellKey = tuple[str, str, str]
 """Sheet, law, condition."""
-
-MISSING, UNFINISHED, FINISHED = 0, 1, 2
-"""State of a run: no verdict of the machine (yet), diverged or at a stop, finished."""
-
-STATES = {
-    **dict.fromkeys(HOST_OUTCOMES, MISSING),
-    **dict.fromkeys(MACHINE_OUTCOMES, UNFINISHED),
-    "finished": FINISHED,
-}
 
 
 @dataclass(frozen=True)
@@ -58,75 +49,82 @@ class CellRuns:
         return complete
 
 
+class _Cells(Mapping[CellKey, CellRuns]):
+    """The cells of a table, each of which is laid out when it is asked for: the scores stand there once."""
+
+    def __init__(self, table: RunTable, frame: Frame, names: Iterable[str]) -> None:
+        axes = (frame.sheets, frame.laws, frame.motions, tuple(column.name for column in frame.columns))
+        keys = [(sheet, law, column.name) for sheet, law, column in frame.places()]
+        self._cell = {key: number for number, key in enumerate(keys)}
+        self._names, self._motions, self._scores = tuple(names), len(frame.motions), table.scores
+        self._column = [self._names.index(name) for name in table.names]
+        at = _indices(table.places, axes)  # (P, 4)
+        cell = (at[:, 0] * len(axes[1]) + at[:, 1]) * len(axes[3]) + at[:, 3]
+        cell[np.any(at < 0, axis=1)] = len(keys)
+        number, self._motion = cell[table.place], at[table.place, 2]
+        random = np.array([name in {c.name for c in frame.columns if c.random} for *_, name in table.places])
+        self._draw = np.where(random[table.place], np.maximum(table.draw, 0), 0)
+        self._state = table.state
+        self._order = np.argsort(number, kind="stable")
+        self._bounds = np.searchsorted(number[self._order], np.arange(len(keys) + 1))
+
+    def __getitem__(self, key: CellKey) -> CellRuns:
+        """Lay the runs of one cell out by draw and motion."""
+        cell = self._cell[key]
+        rows = self._order[self._bounds[cell] : self._bounds[cell + 1]]
+        draws, place = np.unique(self._draw[rows], return_inverse=True)
+        motion = self._motion[rows]
+        state = np.full((len(draws), self._motions), MISSING, dtype=np.int8)
+        cube = np.full((len(draws), self._motions, len(self._names)), np.nan)
+        state[place, motion] = self._state[rows]
+        cube[place[:, None], motion[:, None], self._column] = self._scores[rows]
+        return CellRuns(draws, state, cube)
+
+    def __iter__(self) -> Iterator[CellKey]:
+        return iter(self._cell)
+
+    def __len__(self) -> int:
+        return len(self._cell)
+
+    def defined(self) -> NDArray[np.bool_]:
+        """Return which scores each motion's runs have, (M, S)."""
+        defined = np.zeros((self._motions, len(self._names)), dtype=bool)
+        kept = np.zeros(len(self._order), dtype=bool)
+        kept[self._order[: self._bounds[-1]]] = True
+        present = ~np.isnan(self._scores)
+        for k in range(self._motions):
+            seen = np.any(present[kept & (self._motion == k)], axis=0)
+            defined[k, self._column] = seen
+            defined[k] |= ~np.any(seen)
+        return defined
+
+
 @dataclass(frozen=True, eq=False)
 class Gathered:
-    """All rows: the scores' names in display order, which motion defines which, and the cells."""
+    """All runs: the scores' names in display order, which motion defines which, and the cells."""
 
     names: tuple[str, ...]
     defined: NDArray[np.bool_]  # (M, S), whether the motion's runs have the score when they finish
     cells: Mapping[CellKey, CellRuns]  # every sheet x law x column
 
 
-def gather(rows: Iterable[Row], frame: Frame, expected: Iterable[str] = ()) -> Gathered:
-    """Sort rows into the cells of every sheet x law x column.
+def gather(table: RunTable, frame: Frame, expected: Iterable[str] = ()) -> Gathered:
+    """Sort runs into the cells of every sheet x law x column.
 
-    Rows of other names are passed over; of two rows of the same run the later one counts. In a column
-    where nothing is random the draw number has no meaning. A score that is not a number counts as inf.
+    Runs of other names are passed over; of two rows of the same run the later one counts. In a column
+    where nothing is random the draw number has no meaning.
     A motion defines the scores that any of its runs has; while none has finished, nothing tells which,
     and it is taken to define all: those met elsewhere and the ``expected`` ones.
     """
-    random = [column.random for column in frame.columns]
-    axes = (frame.sheets, frame.laws, tuple(column.name for column in frame.columns), frame.motions)
-    sheet, law, column, motion = ({name: i for i, name in enumerate(axis)} for axis in axes)
-    kept: list[Row] = []
-    where: list[tuple[int, int, int, int, int, int]] = []
-    for row in rows:
-        try:
-            place = sheet[row.sheet], law[row.law], column[row.condition], motion[row.motion]
-        except KeyError:
-            continue
-        draw = row.draw if random[place[2]] and row.draw is not None else 0
-        kept.append(row)
-        where.append((*place, draw, STATES[row.outcome]))
-    names, scores = _score_table(kept, expected)
-    index = np.array(where, dtype=np.int64).reshape(-1, 6)
-    number = (index[:, 0] * len(law) + index[:, 1]) * len(column) + index[:, 2]
-    order = np.argsort(number, kind="stable")
-    bounds = np.searchsorted(number[order], np.arange(len(sheet) * len(law) * len(column) + 1))
-    cells = {
-        (place[0], place[1], place[2].name): _cell(order[start:end], index, scores, len(motion))
-        for place, start, end in zip(frame.places(), bounds[:-1], bounds[1:], strict=True)
-    }
-    defined = np.zeros((len(motion), len(names)), dtype=bool)
-    for k in range(len(motion)):
-        seen = np.any(~np.isnan(scores[index[:, 3] == k]), axis=0)
-        defined[k] = seen | ~np.any(seen)
-    return Gathered(names, defined, cells)
+    names = in_display_order([*table.names, *expected])
+    cells = _Cells(table, frame, names)
+    return Gathered(names, cells.defined(), cells)
 
 
-def _score_table(rows: Sequence[Row], expected: Iterable[str]) -> tuple[tuple[str, ...], Floats]:
-    """Return all scores' names, also of those expected, and the rows' values (rows, S), NaN where absent."""
-    layouts: dict[tuple[str, ...], tuple[list[int], list[list[float]]]] = {}
-    for number, row in enumerate(rows):
-        if row.outcome == "finished" and row.scores:
-            numbers, values = layouts.setdefault(tuple(row.scores), ([], []))
-            numbers.append(number)
-            values.append(list(row.scores.values()))
-    names = in_display_order([*(name for layout in layouts for name in layout), *expected])
-    place = {name: column for column, name in enumerate(names)}
-    table = np.full((len(rows), len(names)), np.nan)
-    for layout, (numbers, values) in layouts.items():
-        block = np.array(values, dtype=float)
-        block[np.isnan(block)] = np.inf
-        table[np.ix_(numbers, [place[name] for name in layout])] = block
-    return names, table
-
-
-def _cell(rows: NDArray[np.int64], index: NDArray[np.int64], scores: Floats, motions: int) -> CellRuns:
-    """Lay the rows of one cell out by draw and motion."""
-    draws, place = np.unique(index[rows, 4], return_inverse=True)
-    state = np.full((len(draws), motions), MISSING, dtype=np.int8)
-    cube = np.full((len(draws), motions, scores.shape[1]), np.nan)
-    state[place, index[rows, 3]] = index[rows, 5]
-    cube[place, index[rows, 3]] = scores[rows]
-    return CellRuns(draws, state, cube)
+def _indices(
+    places: Iterable[tuple[str, str, str, str]], axes: tuple[tuple[str, ...], ...]
+) -> NDArray[np.int64]:
+    """Return the index of each name of each place on its axis, (P, 4); -1 for what is not on it."""
+    index = [{name: i for i, name in enumerate(axis)} for axis in axes]
+    found = [[known.get(name, -1) for known, name in zip(index, place, strict=True)] for place in places]
+    return np.array(found, dtype=np.int64).reshape(-1, len(axes))

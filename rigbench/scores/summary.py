@@ -6,19 +6,24 @@ from collections.abc import Collection, Iterable, Iterator, Mapping, Sequence
 from dataclasses import replace
 
 from rigbench.scores.advice import advise
-from rigbench.scores.cell import CountedDraws, build_cell, counted
+from rigbench.scores.break_even import break_even_levels
+from rigbench.scores.cell import CountedDraws, build_cell
 from rigbench.scores.gather import CellKey, Frame, gather
 from rigbench.scores.levels import ladder, tolerated_level
 from rigbench.scores.names import main_score
-from rigbench.scores.pairs import best_law, break_even_levels
+from rigbench.scores.pairs import best_law
 from rigbench.scores.results import Cell, Column, LawStanding, Results, Tolerance
 from rigbench.scores.row import Row
+from rigbench.scores.run_table import RunTable, table_of
 
 __all__ = ["summarise"]
 
+MAIN = 0
+"""The place of the main score among those by which laws are compared: it is the only one."""
+
 
 def summarise(
-    rows: Iterable[Row],
+    runs: Iterable[Row] | RunTable,
     *,
     title: str,
     arm: str,
@@ -33,9 +38,9 @@ def summarise(
     failed: int,
     absent: Collection[CellKey] = (),
 ) -> Results:
-    """Return what the rows of a campaign, finished or not, show.
+    """Return what the runs of a campaign, finished or not, show: rows, or columns where they are many.
 
-    ``sheets`` is ('',) where nothing is swept. ``draws`` is how many each random cell should have. Rows
+    ``sheets`` is ('',) where nothing is swept. ``draws`` is how many each random cell should have. Runs
     whose sheet, law, motion or condition isn't named are passed over. ``planned``, ``done`` and
     ``failed`` count runs and are handed on. ``absent`` are the cells for which nothing is planned, since
     what they would combine can't be combined.
@@ -43,23 +48,23 @@ def summarise(
     frame = Frame(tuple(sheets), tuple(laws), tuple(columns), tuple(motions))
     limited = () if tolerance is None else tolerance.limited
     main = main_score(limited)
-    gathered = gather(rows, frame, expected=(main, *limited))
+    table = runs if isinstance(runs, RunTable) else table_of(runs)
+    gathered = gather(table, frame, expected=(main, *limited))
     nowhere = frozenset(absent)
-    count = {
-        key: counted(runs, gathered.names, frame.motions, tolerance)
-        for key, runs in gathered.cells.items()
-        if key not in nowhere
-    }
     place = gathered.names.index(main)
-    best = set(_best(frame, count, place))
-    cells = []
+    cells, count = [], {}
     for sheet, law, column in frame.places():
         key = sheet, law, column.name
         possible = key not in nowhere
-        cell = build_cell(
+        cell, here = build_cell(
             key, column, gathered, motions=motions, tolerance=tolerance, draws=draws, possible=possible
         )
-        cells.append(replace(cell, best=key in best))
+        cells.append(cell)
+        if possible:
+            # Laws are compared by one score alone: a copy of it lets the others go.
+            count[key] = replace(here, worst=here.worst[:, place : place + 1].copy())
+    best = set(_best(frame, count))
+    cells = [replace(cell, best=(cell.sheet, cell.law, cell.condition) in best) for cell in cells]
     results = Results(
         title=title,
         arm=arm,
@@ -75,18 +80,18 @@ def summarise(
         done=done,
         failed=failed,
         advice="",
-        break_even=tuple(_break_even(frame, count, main, place)),
+        break_even=tuple(_break_even(frame, count, main)),
     )
     return replace(results, advice=advise(results))
 
 
-def _best(frame: Frame, count: Mapping[CellKey, CountedDraws], main: int) -> Iterator[CellKey]:
+def _best(frame: Frame, count: Mapping[CellKey, CountedDraws]) -> Iterator[CellKey]:
     """Yield the cell of each column's best law, where there is one."""
     for sheet in frame.sheets:
         for column in frame.columns:
             keys = ((sheet, law, column.name) for law in frame.laws)
             here = {key[1]: count[key] for key in keys if key in count}
-            law = best_law(here, main, column.random)
+            law = best_law(here, MAIN, column.random)
             if law is not None:
                 yield sheet, law, column.name
 
@@ -104,7 +109,7 @@ def _standings(frame: Frame, cells: Iterable[Cell], tolerance: Tolerance | None)
 
 
 def _break_even(
-    frame: Frame, count: Mapping[CellKey, CountedDraws], main: str, place: int
+    frame: Frame, count: Mapping[CellKey, CountedDraws], main: str
 ) -> Iterator[Mapping[str, object]]:
     """Yield the break-even levels, in the form in which they are printed."""
     steps = ladder(frame.columns)
@@ -114,7 +119,7 @@ def _break_even(
             for law in frame.laws
             if all((sheet, law, step.name) in count for step in steps)
         }
-        for found in break_even_levels(ladders, place):
+        for found in break_even_levels(ladders, MAIN):
             yield {
                 "sheet": sheet,
                 "laws": list(found.laws),

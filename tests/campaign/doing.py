@@ -5,6 +5,7 @@ from __future__ import annotations
 import ctypes
 import hashlib
 import os
+import resource
 import signal
 import sys
 import time
@@ -132,13 +133,34 @@ def once(run: FakeRun, number: int, victim: int) -> Outcome:
     return finish(run)
 
 
+def threads() -> float:
+    """Return how many threads this process has."""
+    [line] = [
+        line for line in Path("/proc/self/status").read_text().splitlines() if line.startswith("Threads:")
+    ]
+    return float(line.split()[1])
+
+
 def look_around(run: FakeRun) -> Outcome:
     """Report what a worker process finds itself in, as scores."""
+    import numba
+    import numpy as np
+    import scipy.linalg
+
+    before = threads()
+    large = np.eye(600) + np.ones((600, 600))
+    scipy.linalg.cholesky(large @ large)
     return Outcome(
         run.key(),
         "finished",
         scores={
-            "threads": float(os.environ["OMP_NUM_THREADS"]),
+            "threads_allowed": float(os.environ["OMP_NUM_THREADS"]),
+            "threads_of_numba": float(numba.get_num_threads()),
+            "threads": before,
+            "threads_after_large_products": threads(),
+            "leads_its_group": float(os.getpgid(0) == os.getpid()),
+            "memory_is_limited": float(resource.getrlimit(resource.RLIMIT_DATA)[0] > 0),
+            "images_of_memory_kept": float(resource.getrlimit(resource.RLIMIT_CORE)[0]),
             "ignores_ctrl_c": float(signal.getsignal(signal.SIGINT) is signal.SIG_IGN),
             "stdout_is_stderr": float(os.path.samestat(os.fstat(1), os.fstat(2))),
             "kernels_are_loaded": float("rigbench.rig.simulate" in sys.modules),

@@ -2,7 +2,10 @@
 
 from __future__ import annotations
 
+import itertools
 import os
+import re
+import resource
 import signal
 import subprocess
 import sys
@@ -16,10 +19,11 @@ from typing import Any
 
 import pytest
 
+import rigbench
 from rigbench.campaign.executor import Executor, InProcess, Processes, executor_for, time_limit_s
 from rigbench.campaign.plan import Entry
 from rigbench.campaign.work import Outcome
-from rigbench.campaign.workers import Crew, usable_cores
+from rigbench.campaign.workers import usable_cores
 from rigbench.errors import RigbenchError
 
 EntryMaker = Callable[..., list[Entry]]
@@ -80,22 +84,10 @@ def test_a_run_whose_worker_died_is_done_once_more(
     assert {o.outcome for o in by_name(Processes(2, doing.work), entries).values()} == {"finished"}
 
 
-def test_a_crew_that_breaks_down_is_replaced(
-    doing: ModuleType, make_entries: EntryMaker, monkeypatch: pytest.MonkeyPatch
-) -> None:
-    """What it had in hand is done by the next crew, and nothing twice."""
-    answers = iter([True, True, False])
-    monkeypatch.setattr(Crew, "whole", property(lambda crew: next(answers, True)))
-    acts = {f"good {i}": ("finish", {"seconds": 0.02}) for i in range(20)}
-    outcomes = by_name(Processes(3, doing.work), make_entries(**acts))
-    assert next(answers, None) is None
-    assert {o.outcome for o in outcomes.values()} == {"finished"}
-
-
 def test_a_worker_killed_while_idle_costs_nothing(
     doing: ModuleType, make_entries: EntryMaker, tmp_path: Path
 ) -> None:
-    """The pool breaks whole when that happens; the campaign doesn't."""
+    """It is replaced before the next run is given to it."""
     entries = make_entries(**{name: ("finish", {"folder": str(tmp_path)}) for name in "abc"})
 
     def source() -> Iterator[Entry]:
@@ -127,7 +119,7 @@ def test_no_crew_at_all_is_an_error_and_not_a_hang(
     doing: ModuleType, make_entries: EntryMaker, monkeypatch: pytest.MonkeyPatch
 ) -> None:
     """Workers that can't be set up, or a server that can't, end in an error that names the way out."""
-    monkeypatch.setattr("rigbench.campaign.workers.prepare_worker", doing.leave)
+    monkeypatch.setattr("rigbench.campaign.workers.serve", doing.leave)
     with pytest.raises(RigbenchError, match="--jobs 0"):
         list(Processes(2, doing.work).run_all(make_entries(good=("finish", {}))))
 
@@ -174,15 +166,55 @@ def test_closing_drops_what_is_in_hand(doing: ModuleType, make_entries: EntryMak
 def test_what_a_worker_finds_itself_in(
     doing: ModuleType, make_entries: EntryMaker, monkeypatch: pytest.MonkeyPatch
 ) -> None:
-    """One thread for native libraries, no Ctrl-C, no way to our standard output, the rig loaded; here no trace."""
+    """One thread for native libraries, limits, no Ctrl-C, no way to our standard output, the rig loaded.
+
+    Of all that there is no trace here. The products are large enough for a pool of threads to be used: with
+    OMP_NUM_THREADS at 5 numpy's library starts four, on a machine of two cores or more.
+    """
     monkeypatch.setenv("OMP_NUM_THREADS", "5")
     [outcome] = Processes(1, doing.work).run_all(make_entries(one=("look around", {})))
     assert outcome.scores == {
-        "threads": 1.0, "ignores_ctrl_c": 1.0, "stdout_is_stderr": 1.0, "kernels_are_loaded": 1.0,
+        "threads_allowed": 1.0, "threads_of_numba": 1.0, "threads": 1.0, "threads_after_large_products": 1.0,
+        "leads_its_group": 1.0, "memory_is_limited": 1.0, "images_of_memory_kept": 0.0,
+        "ignores_ctrl_c": 1.0, "stdout_is_stderr": 1.0, "kernels_are_loaded": 1.0,
     }  # fmt: skip
+    assert resource.getrlimit(resource.RLIMIT_DATA)[0] == resource.RLIM_INFINITY
     assert os.environ["OMP_NUM_THREADS"] == "5"
     assert "PYTHONSAFEPATH" not in os.environ
     assert signal.SIGINT not in signal.pthread_sigmask(signal.SIG_BLOCK, ())
+
+
+def test_the_time_of_day_may_change(
+    doing: ModuleType, make_entries: EntryMaker, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """Neither a limit nor a wait is measured by it: a year on or back at every look, and nothing is given up.
+
+    What hangs is, in its time.
+    """
+    real, jumps = time.time, itertools.cycle([0.0, 3e7, -3e7])
+    monkeypatch.setattr("time.time", lambda: real() + next(jumps))
+    acts = {f"good {i}": ("finish", {"seconds": 0.05}) for i in range(10)}
+    began = time.monotonic()
+    outcomes = by_name(Processes(2, doing.work, lambda run: 3.0), make_entries(bad=("hang", {}), **acts))
+    assert outcomes.pop("bad").outcome == "timed-out"
+    assert {outcome.outcome for outcome in outcomes.values()} == {"finished"}
+    assert 3.0 < time.monotonic() - began < 30.0
+
+
+STAMPS = {
+    "campaign/store.py": "when a run was stored, and a store put aside",
+    "arm/kernel.py": "how old a cache of kernels is",
+}
+"""Who may ask for the time of day, and for what; beside them cli/ and report/, which show it."""
+
+
+def test_the_time_of_day_is_for_stamps_alone() -> None:
+    """Nothing that a run or a campaign does depends on it: no module asks but those that write it down."""
+    clocks = r"time\.(time|time_ns|ctime|localtime|gmtime|strftime)\(|(datetime|date)\.(now|today|utcnow)\("
+    package = Path(rigbench.__file__).parent
+    modules = {str(path.relative_to(package)): path.read_text("utf-8") for path in package.rglob("*.py")}
+    asking = {name for name, text in modules.items() if re.search(clocks, text)}
+    assert {name for name in asking if not name.startswith(("cli/", "report/"))} == set(STAMPS)
 
 
 def test_it_works_outside_the_main_thread(doing: ModuleType, make_entries: EntryMaker) -> None:

@@ -18,6 +18,7 @@ from rigbench.campaign import kept as kept_module
 from rigbench.campaign.find import run_by_key
 from rigbench.campaign.kept import Keeper, NotKept, restored
 from rigbench.campaign.migrations import MIGRATIONS, migrate
+from rigbench.campaign.packing import Layout, packed
 from rigbench.campaign.plan import Plan
 from rigbench.campaign.reading import Record
 from rigbench.campaign.replay import Replay, replay
@@ -38,8 +39,9 @@ def record_of(store: Store, law: str, draw: int | None = 1) -> Record:
 
 
 def altered(store: Store, key: str, statement: str, *values: object) -> Replay:
-    """Replay a run after something in the store was changed behind its back."""
-    store._connection.execute(statement, values)
+    """Replay a run after something in the store was changed behind its back; THIS stands for the run."""
+    this = f"id = (SELECT id FROM keys WHERE key = '{key}')"
+    store._connection.execute(statement.replace("THIS", this), values)
     record = store.record(key)
     assert record is not None
     return replay(store, record)
@@ -192,7 +194,7 @@ def test_draws_differ_and_are_told_apart(store: Store) -> None:
     one, other = (replay(store, record_of(store, "pd", draw)) for draw in (0, 1))
     assert one.scores != other.scores
     assert not np.array_equal(one.log.plant.parameters, other.log.plant.parameters)
-    count = store._connection.execute("SELECT count(DISTINCT run) FROM plan WHERE law = 'pd'").fetchone()[0]
+    count = store._connection.execute("SELECT count(DISTINCT run) FROM places WHERE law = 'pd'").fetchone()[0]
     assert count == 2  # nominal, and all draws
 
 
@@ -201,9 +203,9 @@ def test_what_differs_is_said_with_both_values(store: Store) -> None:
     record = record_of(store, "pd")
     scores = {n: v for n, v in record.row.scores.items() if not n.startswith("law_")}
     wrong = scores | {"tool_peak_mm": float(np.nextafter(scores["tool_peak_mm"], np.inf))}
-    again = altered(
-        store, record.key, "UPDATE runs SET scores = ? WHERE key = ?", json.dumps(wrong), record.key
-    )
+    host_scores = {n: v for n, v in record.row.scores.items() if n.startswith("law_")}
+    values = packed(wrong, host_scores)[1]
+    again = altered(store, record.key, "UPDATE runs SET scores = ? WHERE THIS", values)
     (difference,) = again.differences
     assert not again.identical
     assert difference.name == "tool_peak_mm"
@@ -219,8 +221,10 @@ def test_a_change_of_outcome_is_a_difference(store: Store) -> None:
     again = altered(
         store,
         record.key,
-        "UPDATE runs SET outcome = 'diverged', reason = 'x', scores = '{}' WHERE key = ?",
-        record.key,
+        "UPDATE runs SET outcome = 'diverged', reason = 'x', scores = ?,"
+        " layout = (SELECT id FROM layouts WHERE names = ?) WHERE THIS",
+        b"",
+        Layout((), ()).text,
     )
     names = [difference.name for difference in again.differences]
     assert names[:2] == ["outcome", "reason"]
@@ -237,7 +241,7 @@ def test_another_host_is_a_reason(store: Store) -> None:
     same = altered(store, record.key, "UPDATE hosts SET cpu = 'an abacus', versions = ?", json.dumps(there))
     assert same.identical
     assert same.reasons == ()
-    again = altered(store, record.key, "UPDATE runs SET residual_rad_s = 1.0 WHERE key = ?", record.key)
+    again = altered(store, record.key, "UPDATE runs SET residual_rad_s = 1.0 WHERE THIS")
     assert [difference.name for difference in again.differences] == ["residual_rad_s"]
     here = dict(host.versions)["numpy"]
     assert again.reasons == (
@@ -260,7 +264,7 @@ def test_a_changed_source_is_a_reason(store: Store, mark: str, says: str) -> Non
                 "UPDATE parts SET text = ? WHERE digest = ?", (json.dumps(found), digest)
             )
     assert replay(store, record).identical
-    again = altered(store, record.key, "UPDATE runs SET residual_rad_s = 1.0 WHERE key = ?", record.key)
+    again = altered(store, record.key, "UPDATE runs SET residual_rad_s = 1.0 WHERE THIS")
     (reason,) = again.reasons
     assert says in reason
 
@@ -271,9 +275,7 @@ def test_a_run_that_came_to_nothing_shows_its_own_traceback(store: Store) -> Non
     with pytest.raises(InputFaults, match=r"(?s)nothing to replay.*law-error.*enough.*mine\.py"):
         replay(store, record)
     with pytest.raises(InputFaults, match=r"nothing to replay.*timed-out"):
-        altered(
-            store, record.key, "UPDATE runs SET outcome = 'timed-out', trace = '' WHERE key = ?", record.key
-        )
+        altered(store, record.key, "UPDATE runs SET outcome = 'timed-out', trace = '' WHERE THIS")
 
 
 def test_a_law_that_raises_now_is_told_as_such(store: Store) -> None:
@@ -283,7 +285,7 @@ def test_a_law_that_raises_now_is_told_as_such(store: Store) -> None:
         InputFaults,
         match=r"(?s)had not when it was stored: nothing that.*raised ValueError: enough.*mine\.py",
     ):
-        altered(store, record.key, "UPDATE runs SET outcome = 'finished' WHERE key = ?", record.key)
+        altered(store, record.key, "UPDATE runs SET outcome = 'finished' WHERE THIS")
 
 
 def test_a_law_that_is_not_installed_is_named(store: Store) -> None:

@@ -242,7 +242,7 @@ def test_the_hosts_of_the_planned_runs_are_known(path: Path, make_plan: PlanMake
         store.record_plan(plan)
         store.add(Outcome(e.key, "finished", host=hosts[i % 2]) for i, e in enumerate(plan.entries))
         store.add([Outcome("another", "finished", host=hosts[2])])
-        assert store.hosts() == hosts[:2]
+        assert list(store.hosts().values()) == hosts[:2]
 
 
 def _database(path: Path) -> None:

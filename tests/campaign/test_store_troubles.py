@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import signal
 import sqlite3
+import struct
 import subprocess
 import sys
 import time
@@ -89,11 +90,12 @@ def test_a_killed_writer_leaves_whole_groups_only(path: Path, make_plan: PlanMak
         told = int((writer.communicate()[0].split() or [told])[-1])
         with Store.open_for_writing(path, make_plan()) as store:
             assert store._connection.execute("PRAGMA integrity_check").fetchone() == ("ok",)
-            groups = dict(
-                store._connection.execute(
-                    "SELECT scores ->> 'group', group_concat(scores ->> 'i', '') FROM runs GROUP BY 1"
-                )
-            )
+            groups: dict[int, str] = {}
+            for key, scores in store._connection.execute("SELECT key, scores FROM runs JOIN keys USING (id)"):
+                group, i, total = struct.unpack("<3d", scores)
+                assert key == f"{group:.0f}-{i:.0f}"
+                assert total == group + i
+                groups[int(group)] = groups.get(int(group), "") + f"{i:.0f}"
             assert set(groups.values()) == {"01234"}
             assert set(groups) >= set(range(told + 1))
             assert max(groups) <= told + 1

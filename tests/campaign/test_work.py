@@ -9,6 +9,8 @@ from typing import Any
 
 import pytest
 
+from rigbench.campaign.executor import InProcess
+from rigbench.campaign.plan import Entry
 from rigbench.campaign.work import do, summary, this_host
 from rigbench.errors import EngineError, InputFaults, LawError
 
@@ -63,7 +65,6 @@ def test_a_verdict_of_the_machine_is_kept_with_its_reason(rig: SimpleNamespace, 
             "engine failed while stepping: it broke",
             "EngineError",
         ),
-        (MemoryError(), "crashed", "MemoryError", "Traceback"),
         (SystemExit(2), "crashed", "SystemExit: 2", "Traceback"),
         (ZeroDivisionError("over\nnothing"), "crashed", "ZeroDivisionError: over nothing", "over\nnothing"),
     ],
@@ -82,6 +83,26 @@ def test_an_exception_is_an_outcome(
     assert reason in done.reason
     assert "\n" not in done.reason
     assert trace in done.trace
+
+
+@pytest.mark.parametrize("in_a_law", [True, False])
+def test_want_of_memory_is_raised_on(rig: SimpleNamespace, run: Any, in_a_law: bool) -> None:
+    """Whoever does the runs can try again elsewhere; in this process it is a row with the law's traceback."""
+
+    def fail(run: Any) -> None:
+        try:
+            raise MemoryError("no room")
+        except MemoryError:
+            if not in_a_law:
+                raise
+            raise LawError("mine", "MemoryError: no room", "their traceback") from None
+
+    rig.simulate = fail
+    with pytest.raises(MemoryError):
+        do(run)
+    [done] = InProcess().run_all([Entry("", "mine", "", "", 0.0, None, run)])
+    assert (done.outcome, "MemoryError" in done.reason, "\n" in done.reason) == ("crashed", True, False)
+    assert ("their traceback" if in_a_law else "no room") in done.trace
 
 
 @pytest.mark.parametrize("outcome", ["finished", "hit-stop"])

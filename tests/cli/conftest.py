@@ -2,9 +2,17 @@
 
 from __future__ import annotations
 
+import contextlib
+import fcntl
+import os
+import pty
+import select
+import struct
 import subprocess
 import sys
-from collections.abc import Callable
+import termios
+import time
+from collections.abc import Callable, Iterator
 from pathlib import Path
 from typing import Any
 
@@ -77,3 +85,68 @@ def in_process_of_its_own() -> Callable[..., subprocess.CompletedProcess[str]]:
         return subprocess.run(command, capture_output=True, text=True, timeout=120, check=False, **given)
 
     return start
+
+
+class Terminal:
+    """A command at a terminal of its own, 24 lines of 100 columns; ``said`` is all that came so far."""
+
+    def __init__(self, *arguments: str) -> None:
+        self._ours, theirs = pty.openpty()
+        fcntl.ioctl(theirs, termios.TIOCSWINSZ, struct.pack("HHHH", 24, 100, 0, 0))
+        environment = {name: value for name, value in os.environ.items() if name != "COLUMNS"}
+        self.process = subprocess.Popen(
+            [sys.executable, "-m", "rigbench", *arguments],
+            stdin=theirs,
+            stdout=theirs,
+            stderr=theirs,
+            start_new_session=True,
+            env=environment | {"TERM": "xterm"},
+        )
+        os.close(theirs)
+        self.said = ""
+
+    def wait_for(self, words: str, within_s: float = 120) -> None:
+        """Read until the words are there."""
+        deadline = time.monotonic() + within_s
+        while words not in self.said:
+            assert self._read(deadline), f"{words!r} is not in {self.said}"
+
+    def answer(self, text: str) -> None:
+        """Type a line."""
+        os.write(self._ours, f"{text}\n".encode())
+
+    def end(self, within_s: float = 120) -> int:
+        """Read to the end, and return the exit code."""
+        deadline = time.monotonic() + within_s
+        while self._read(deadline):
+            pass
+        return self.process.wait(timeout=within_s)
+
+    def close(self) -> None:
+        """End it, whatever it does."""
+        self.process.kill()
+        self.process.wait(timeout=60)
+        os.close(self._ours)
+
+    def _read(self, deadline: float) -> bool:
+        ready, _, _ = select.select([self._ours], [], [], max(0.0, deadline - time.monotonic()))
+        assert ready, f"nothing more came after {self.said}"
+        try:
+            part = os.read(self._ours, 65536)
+        except OSError:  # Linux: the other end is closed
+            return False
+        self.said += part.decode("utf-8", "replace").replace("\r\n", "\n")
+        return bool(part)
+
+
+@pytest.fixture
+def at_terminal() -> Iterator[Callable[..., Terminal]]:
+    """Give a command at a terminal."""
+    with contextlib.ExitStack() as undo:
+
+        def start(*arguments: str) -> Terminal:
+            terminal = Terminal(*arguments)
+            undo.callback(terminal.close)
+            return terminal
+
+        yield start

@@ -101,8 +101,13 @@ def test_a_campaign_from_check_to_export(
     assert len(rows) == 12
     assert {row["outcome"] for row in rows} == {"finished"}
     written = call("export", str(store), "-o", "runs.csv", "--json")
-    assert json.loads(written.stdout) == {"store": str(store), "file": "runs.csv", "rows": 12}
+    told = {"store": str(store), "file": "runs.csv", "columns": "runs-columns.csv", "rows": 12}
+    assert json.loads(written.stdout) == told
     assert Path("runs.csv").read_text("utf-8") == table.stdout
+    columns = csv.DictReader(io.StringIO(Path("runs-columns.csv").read_text("utf-8")))
+    assert [column["name"] for column in columns] == list(rows[0])
+    assert call("export", str(store), "-o", "runs.parquet").exit_code == 0
+    assert Path("runs.parquet").read_bytes().startswith(b"PAR1")
     assert not list(Path().glob("*.part"))
 
 
@@ -242,9 +247,10 @@ def test_a_file_that_can_not_be_written(
 ) -> None:
     """-o below what is no folder: exit code 5, and nothing is left behind."""
     run_here("trial.yaml")
-    result = call("export", "results/trial.sqlite", "-o", "trial.yaml/runs.csv")
-    assert result.exit_code == 5
-    assert "trial.yaml/runs.csv: can't be written" in result.stderr
+    for file in ("trial.yaml/runs.csv", "trial.yaml/runs.parquet"):
+        result = call("export", "results/trial.sqlite", "-o", file)
+        assert result.exit_code == 5
+        assert f"{file}: can't be written" in result.stderr
     assert not list(Path().rglob("*.part"))
 
 

@@ -12,6 +12,7 @@ from rigbench.scores.cell import build_cell, verdict_of
 from rigbench.scores.gather import Frame, gather
 from rigbench.scores.results import Cell, Column, Tolerance
 from rigbench.scores.row import HOST_OUTCOMES, Row
+from rigbench.scores.run_table import table_of
 
 NOMINAL = Column("nominal", None, random=False, ladder=True)
 LEVEL = Column("level 1", 1.0, random=True, ladder=True)
@@ -35,9 +36,9 @@ def cell_of(
 ) -> Cell:
     """The cell of the one law, as the summary builds it."""
     frame = Frame(("",), ("pd",), (NOMINAL, LEVEL), motions)
-    gathered = gather(rows, frame, expected=("tool_peak_mm",))
+    gathered = gather(table_of(rows), frame, expected=("tool_peak_mm",))
     key = ("", "pd", column.name)
-    return build_cell(key, column, gathered, motions=motions, tolerance=tolerance, draws=draws)
+    return build_cell(key, column, gathered, motions=motions, tolerance=tolerance, draws=draws)[0]
 
 
 def medians(cell: Cell) -> Mapping[str, float]:

@@ -10,10 +10,7 @@ import pytest
 from scipy import stats
 
 from rigbench.scores.cell import CountedDraws
-from rigbench.scores.pairs import BreakEven, best_law, better, break_even_levels, paired_difference
-from rigbench.scores.results import Column
-
-EXACT = Column("nominal", None, random=False, ladder=True)
+from rigbench.scores.pairs import best_law, better, paired_difference
 
 
 def draws_of(peaks: Sequence[float] | np.ndarray, limit: float = inf, first: int = 0) -> CountedDraws:
@@ -93,99 +90,6 @@ def test_the_best_law_is_better_than_every_other_one() -> None:
     assert best_law({"high": high, "low": low, "same": same}, 0, random=True) is None
     assert best_law({"low": low}, 0, random=True) is None
     assert best_law({"low": low, "silent": draws_of([])}, 0, random=True) is None
-
-
-def ladder_of(table: dict[float, Sequence[float] | np.ndarray]) -> list[tuple[Column, CountedDraws]]:
-    """Level to scores; level 0 is exact."""
-    return [
-        (EXACT if level == 0 else Column(f"level {level}", level, True, True), draws_of(scores))
-        for level, scores in table.items()
-    ]
-
-
-def break_even(one: dict[float, Sequence[float]], other: dict[float, Sequence[float]]) -> list[BreakEven]:
-    return list(break_even_levels({"one": ladder_of(one), "other": ladder_of(other)}, 0))
-
-
-def test_the_break_even_level_is_where_the_paired_median_changes_sign() -> None:
-    """Linear: the differences -1 at level 0 and +3 at level 2 cross at 0.5, on every draw alike."""
-    found = break_even({0: [1.0], 2: [8.0] * 9}, {0: [2.0], 2: [5.0] * 9})
-    assert found == [BreakEven(("one", "other"), 0.5, 0.5, 0.5, below="one")]
-
-
-def test_the_order_of_the_laws_changes_only_their_order() -> None:
-    """Level and interval are those of the pair."""
-    random = np.random.default_rng(2)
-    draws = random.uniform(0, 1, size=50)
-    one, other = (
-        {0: [1.0], 1: 1 + draws, 2: 1 + 3 * draws},
-        {0: [1.4], 1: 1.4 + draws / 5, 2: 1.4 + draws / 4},
-    )
-    (forth,), (back,) = break_even(one, other), break_even(other, one)
-    assert (forth.below, back.below) == ("one", "other")
-    assert (forth.value, forth.low, forth.high) == pytest.approx((back.value, back.low, back.high))
-    assert forth.low < forth.value < forth.high
-
-
-def test_pairs_that_never_change_places_have_no_break_even() -> None:
-    """Nor have equal ones, those with one level, or those without a draw."""
-    assert not break_even({0: [1.0], 1: [2.0] * 9}, {0: [2.0], 1: [3.0] * 9})
-    assert not break_even({0: [1.0], 1: [2.0] * 9}, {0: [1.0], 1: [2.0] * 9})
-    assert not break_even({0: [1.0]}, {0: [2.0]})
-    assert not break_even({}, {})
-    assert not break_even({0: [1.0], 1: []}, {0: [2.0], 1: [1.0] * 9})
-
-
-def test_a_law_that_diverges_breaks_even_somewhere_before() -> None:
-    """Between the last level where it was better and the one where it didn't finish: midway, open to both."""
-    (found,) = break_even({0: [1.0], 1: [2.0] * 9, 3: [inf] * 9}, {0: [2.0], 1: [3.0] * 9, 3: [4.0] * 9})
-    assert (found.value, found.low, found.high) == (2.0, 1.0, 3.0)
-
-
-def test_a_difference_of_zero_on_a_level_crosses_there() -> None:
-    """And one that was zero before either law led has no crossing."""
-    (found,) = break_even({0: [1.0], 1: [2.0] * 9, 2: [4.0] * 9}, {0: [2.0], 1: [2.0] * 9, 2: [3.0] * 9})
-    assert found.value == 1.0
-    assert not break_even({0: [1.0], 1: [2.0] * 9}, {0: [1.0], 1: [3.0] * 9})
-
-
-def test_a_change_too_weak_to_be_sure_of_reaches_down_to_the_lowest_level() -> None:
-    """Equal at level 0; at 1 seven draws of 13 favour one law, at 2 all the other: often, 1 shows no lead."""
-    one = {0: [1.0], 1: [1.0] * 7 + [3.0] * 6, 2: [3.0] * 13}
-    (found,) = break_even(one, {0: [1.0], 1: [2.0] * 13, 2: [2.0] * 13})
-    assert (found.value, found.low, found.high, found.below) == (1.5, 0.0, 1.5, "one")
-
-
-def test_a_change_too_weak_to_be_sure_of_has_no_upper_end() -> None:
-    """At the highest level seven draws of 13 show it, six don't."""
-    one = {0: [1.0], 1: [1.0] * 6 + [3.0] * 7}
-    (found,) = break_even(one, {0: [2.0], 1: [2.0] * 13})
-    assert (found.value, found.low, found.high) == (0.5, 0.5, inf)
-
-
-def test_levels_share_their_draws() -> None:
-    """A draw that misses at one level is left out at all: what is left crosses as if it had not been."""
-    one, other = {0: [1.0], 1: [3.0] * 9}, {0: [2.0], 1: [1.0] * 9}
-    full = break_even(one, other)
-    one[1], other[1] = [3.0] * 9 + [1e6], [1.0] * 9  # the tenth counts for one law alone
-    assert break_even(one, other) == full
-
-
-@pytest.mark.evidence
-def test_the_break_even_interval_covers_the_true_level() -> None:
-    """300 campaigns of 100 draws whose median difference is 2 a - 1.5: it crosses at 0.75.
-
-    The bootstrap of a median covers 95 % but for the discreteness of a hundred draws; two standard
-    errors of 300 campaigns are 2.5 %.
-    """
-    random, hits = np.random.default_rng(5), 0
-    for _ in range(300):
-        draws = random.standard_t(3, size=100)
-        one = {0: [0.0], 0.5: 3 + 1.0 + draws, 1: 3 + 2.0 + draws, 2: 3 + 4.0 + 2 * draws}
-        other = {0: [1.5], 0.5: [4.5] * 100, 1: [4.5] * 100, 2: [4.5] * 100}
-        (found,) = break_even(one, other)
-        hits += found.low <= 0.75 <= found.high
-    assert hits / 300 >= 0.92
 
 
 @pytest.mark.evidence

@@ -1,0 +1,108 @@
+"""A store opened for reading from Python."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from pathlib import Path
+from types import TracebackType
+from typing import TYPE_CHECKING, Any, Self
+
+import numpy as np
+from numpy.typing import NDArray
+
+from rigbench.campaign.columns import NUMBER, WHOLE, Columns, TableColumn
+from rigbench.campaign.reading import Reader
+from rigbench.errors import Fault, InputFaults, nearest
+from rigbench.scores.results import Results
+from rigbench.scores.run_table import NO_DRAW
+
+if TYPE_CHECKING:
+    import pandas
+
+__all__ = ["OpenedStore", "open_store"]
+
+EMPTY = {NUMBER: np.dtype(float), WHOLE: np.dtype(np.int64)}
+
+
+def open_store(path: str | Path) -> OpenedStore:
+    """Open a store that 'rigbench run' filled, for reading alone; StoreError if there is none at ``path``.
+
+    A campaign may go on meanwhile: each call shows the store as it is at that moment.
+    """
+    return OpenedStore(Reader.open_for_reading(path))
+
+
+class OpenedStore:
+    """What is stored of a campaign. Use it in a ``with``, or close it. Nothing is written to the file."""
+
+    def __init__(self, reader: Reader) -> None:
+        self._reader = reader
+
+    def columns(self) -> tuple[TableColumn, ...]:
+        """Return the columns of :meth:`runs`, each with its name, kind, unit and meaning."""
+        with self._reader.one_moment():
+            return Columns(self._reader).all
+
+    def runs(self, *names: str) -> Mapping[str, NDArray[Any]]:
+        """Return the stored runs as columns by name, (R,) each, in the order of the plan.
+
+        All columns, or those of ``names`` alone. Text is an array of str objects; numbers are float64, NaN
+        where there is none, inf where it is infinite; ``draw`` is int64, -1 where nothing is random.
+        InputFaults, all at once, if there are no columns of these names.
+        """
+        with self._reader.one_moment():
+            columns = Columns(self._reader)
+            kinds = {column.name: column.kind for column in columns.all}
+            self._check(names, list(kinds))
+            wanted = tuple(dict.fromkeys(names)) or tuple(kinds)
+            found: dict[str, list[NDArray[Any]]] = {name: [] for name in wanted}
+            for block in columns.blocks(wanted):
+                for name, values in block.items():
+                    found[name].append(values)
+        return {
+            # One column after the other, so that no more than one is there twice.
+            name: np.concatenate(found.pop(name) or [np.empty(0, EMPTY.get(kinds[name], np.dtype(object)))])
+            for name in wanted
+        }
+
+    def frame(self, *names: str) -> pandas.DataFrame:
+        """Return what :meth:`runs` does as a pandas DataFrame; ``draw`` is missing where nothing is random.
+
+        InputFaults if pandas is not installed.
+        """
+        try:
+            import pandas
+        except ImportError:
+            problem = "needs the package pandas, which is not installed"
+            raise InputFaults.one(
+                self._reader.path, "frame()", problem, "pip install pandas, or runs()"
+            ) from None
+        frame = pandas.DataFrame(dict(self.runs(*names)))
+        if "draw" in frame:
+            frame["draw"] = frame["draw"].astype("Int64").mask(frame["draw"] == NO_DRAW)
+        return frame
+
+    def results(self) -> Results:
+        """Return the cells and standings: all that the results matrix and its JSON show."""
+        return self._reader.results()
+
+    def close(self) -> None:
+        """Close the file."""
+        self._reader.close()
+
+    def __enter__(self) -> Self:
+        return self
+
+    def __exit__(
+        self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
+    ) -> None:
+        self.close()
+
+    def _check(self, names: tuple[str, ...], known: list[str]) -> None:
+        faults = [
+            Fault(str(self._reader.path), None, "", f"there is no column '{name}'", near=nearest(name, known))
+            for name in dict.fromkeys(names)
+            if name not in known
+        ]
+        if faults:
+            raise InputFaults(faults)
