@@ -2,13 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator, Sequence
-from contextlib import closing
+from collections.abc import Callable, Sequence
 
-from rigbench.arm.mismatch import draw_values
-from rigbench.campaign.executor import Executor, executor_for
+from rigbench.campaign.doing import Doing, Studying
+from rigbench.campaign.executor import Executor
 from rigbench.campaign.part import Part
-from rigbench.campaign.plan import Entry, Plan
+from rigbench.campaign.plan import Plan
 from rigbench.campaign.progress import Progress, Tracker
 from rigbench.campaign.reading import Counts
 from rigbench.campaign.stopping import stop_signals
@@ -16,7 +15,7 @@ from rigbench.campaign.store import Store
 from rigbench.campaign.tally import Tally
 from rigbench.errors import Stopped
 
-__all__ = ["Draws", "run_campaign"]
+__all__ = ["run_campaign"]
 
 ALL = Part()
 
@@ -38,6 +37,9 @@ def run_campaign(
     names laws to be run anew, see :meth:`Store.run_anew`. An outcome is stored as it comes, in a
     transaction of its own. ``on_progress`` is called at the start and after each.
 
+    The plan's studies follow, each with rounds of runs until it is finished; not where a part of the draws is
+    asked for, since what a study asks next depends on all of them.
+
     The first SIGINT or SIGTERM lets the runs in hand end and stores them, the second drops them; ``on_stop``
     is called at the first, from within the signal's handler. When the part's time is up, the runs in
     hand end and are stored. Each ends in Stopped, unless nothing was left to do. The runs are begun in
@@ -52,41 +54,21 @@ def run_campaign(
     tally = None if on_progress is None else Tally(plan, store, missing)
     tracker = Tracker(plan, part, missing, store.settled_troubles(part.draws), tally)
     report = on_progress or (lambda _: None)
-    draws = Draws()
-    executor = executor or executor_for(jobs, len(missing))
-    entries = {entry.key: entry for entry in missing}
+    studying = None
     with stop_signals(part.ends, on_stop) as stop:
+        doing = Doing(store, stop, jobs, executor)
         report(tracker.progress())
-        try:
-            with closing(executor.run_all(stop.until(missing))) as outcomes:
-                for outcome in outcomes:
-                    if stop.at_once:  # and should a law have swallowed the interrupt, its run is dropped too
-                        break
-                    store.add([outcome], draws.of(entries[outcome.key]))
-                    tracker.count(outcome)
-                    report(tracker.progress())
-        except KeyboardInterrupt:
-            stop.asked = True
+        for outcome in doing.outcomes(missing):
+            tracker.count(outcome)
+            report(tracker.progress())
+        for study in plan.studies if part.draws is None else ():
+            if not stop.why:
+                studying = Studying(study, store, doing)
+                studying.go(report)
     counts = store.counts()
-    if stop.why and tracker.left:
-        raise Stopped(counts.done + counts.failed, counts.planned, part.resume(plan.resume), stop.why)
+    done, planned = counts.done + counts.failed, counts.planned
+    if studying is not None:
+        done, planned = done + studying.done, planned + studying.asked
+    if stop.why and (tracker.left or (studying is not None and studying.done < studying.asked)):
+        raise Stopped(done, planned, part.resume(plan.resume), stop.why)
     return counts
-
-
-class Draws:
-    """The values of draws, each told once."""
-
-    def __init__(self) -> None:
-        self._told: set[tuple[object, ...]] = set()
-
-    def of(self, entry: Entry) -> Iterator[tuple[int, int, dict[str, float]]]:
-        """Yield (seed, draw, {parameter: u}) of what is random in an entry's run and was not told yet."""
-        run = entry.run
-        if run.draw is None or not run.sources:
-            return
-        for source in run.sources:
-            mark = (run.arm, run.seed, run.draw, source)
-            if mark not in self._told:
-                self._told.add(mark)
-                values = draw_values(run.arm.arm(), run.mismatch, (source,), run.seed, run.draw)
-                yield run.seed, run.draw, values

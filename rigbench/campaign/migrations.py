@@ -6,6 +6,7 @@ import sqlite3
 from collections.abc import Callable, Sequence
 
 from rigbench.campaign.migration_packing import PACKED
+from rigbench.campaign.studied import STUDIED
 
 __all__ = ["APPLICATION_ID", "MIGRATIONS", "migrate", "schema_of"]
 
@@ -92,7 +93,7 @@ _OWNER_AND_ANEW = (
 Step = Sequence[str | Callable[[sqlite3.Connection], None]]
 """Statements, and what prepares the connection for them."""
 
-MIGRATIONS: tuple[Step, ...] = (_FIRST, _KEPT_RUNS, _OWNER_AND_ANEW, PACKED)
+MIGRATIONS: tuple[Step, ...] = (_FIRST, _KEPT_RUNS, _OWNER_AND_ANEW, PACKED, STUDIED)
 """Step i leads from schema i to schema i + 1. A step that has been released is never edited."""
 
 

@@ -10,6 +10,7 @@ from typing import TYPE_CHECKING
 from rigbench.scores.results import Column, Tolerance
 
 if TYPE_CHECKING:
+    from rigbench.campaign.study import Study
     from rigbench.rig.run import Run  # not at run time: it brings the engine and the compiler
 
 __all__ = ["Entry", "Plan", "fair_order"]
@@ -63,6 +64,7 @@ class Plan:
     entries: tuple[Entry, ...]
     resume: str  # the command line that goes on where a stopped campaign ended
     absent: tuple[tuple[str, str, str], ...] = ()  # (sheet, law, condition) that can't be combined: no runs
+    studies: tuple[Study, ...] = ()  # done after the entries, in order
 
     @property
     def seed(self) -> int | None:

@@ -22,6 +22,7 @@ class Progress:
 
     ``rate`` [1/s] since the first run ended, and ``seconds_left`` by it, once they can be told; ``ends_in``
     [s] until its time is up, if that is limited; ``standing`` how the laws stand so far, if that is counted.
+    ``study`` names the study that is at work, if one is: then the runs are those it has asked for so far.
     """
 
     planned: int
@@ -31,6 +32,7 @@ class Progress:
     seconds_left: float | None = None
     ends_in: float | None = None
     standing: Standing | None = None
+    study: str = ""
 
 
 class Tracker:

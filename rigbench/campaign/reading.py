@@ -23,6 +23,7 @@ from rigbench.campaign.labels import Labels
 from rigbench.campaign.owner import Owner
 from rigbench.campaign.places import Place, places_of
 from rigbench.campaign.plan import Entry, Plan
+from rigbench.campaign.studied import Studied, stored_studies
 from rigbench.campaign.work import Host
 from rigbench.errors import StoreError
 from rigbench.scores.names import main_score
@@ -31,6 +32,12 @@ from rigbench.scores.row import HOST_OUTCOMES, MACHINE_OUTCOMES, SETTLED_TROUBLE
 from rigbench.scores.run_table import FINISHED, STATES, RunTable
 
 __all__ = ["Counts", "Reader", "Record"]
+
+PLANNED = (
+    "plan CROSS JOIN runs USING (id) CROSS JOIN keys USING (id) CROSS JOIN places ON places.id = place"
+)
+IN_STUDIES = "studied CROSS JOIN runs USING (id) CROSS JOIN keys USING (id)"
+"""Where the runs of the plan and those of the studies are found; either may be asked for the same columns."""
 
 SETTLED = (*MACHINE_OUTCOMES, *SETTLED_TROUBLES)
 """Outcomes that the same run would have again. The others are tried anew by the next campaign."""
@@ -165,7 +172,7 @@ class Reader:
 
     @property
     def history(self) -> tuple[int | None, str, str]:
-        """Seed of the draws (None: nothing is random), and when the plan was first and last recorded (UTC)."""
+        """Seed of the draws (None if nothing is random), and when the plan was first and last recorded."""
         with speaking_plainly(self.path):
             query = self._connection.execute("SELECT seed, created, updated FROM campaign")
             seed, created, updated = query.fetchone()
@@ -207,16 +214,47 @@ class Reader:
 
     def record(self, key: str) -> Record | None:
         """Return what is stored of a planned run, as the first of the entries that it stands for."""
-        return next(self._records("WHERE plan.id = (SELECT id FROM keys WHERE key = ?)", key), None)
+        for within, of_key in ((PLANNED, "plan.id"), (IN_STUDIES, "studied.id")):
+            where = f"WHERE {of_key} = (SELECT id FROM keys WHERE key = ?)"
+            for record in self._records(where, key, within=within):
+                return record
+        return None
 
-    def _records(self, where: str = "", *values: str) -> Iterator[Record]:
+    def row_of(self, entry: Entry) -> Row | None:
+        """Return what is stored of an entry's run, planned or not; None if nothing, or to be anew."""
+        place = entry.sheet, entry.law, entry.motion, entry.condition, entry.level, entry.draw
+        with speaking_plainly(self.path):
+            found = self._connection.execute(
+                "SELECT outcome, layout, scores, reason FROM keys JOIN runs USING (id)"
+                " WHERE key = ? AND NOT anew",
+                (entry.key,),
+            ).fetchone()
+            if found is None:
+                return None
+            outcome, layout, scores, reason = found
+            return Row(*place, outcome, layouts(self._connection)[layout].scores_of(scores), reason)
+
+    def studies(self) -> tuple[str, ...]:
+        """Return the names of the studies that the campaign has begun."""
+        with speaking_plainly(self.path):
+            return tuple(stored_studies(self._connection))
+
+    def study(self, name: str) -> Studied | None:
+        """Return a study and the runs of it that are stored, in its order; None if it has not begun."""
+        with speaking_plainly(self.path):
+            found = stored_studies(self._connection).get(name)
+        if found is None:
+            return None
+        declared, finished = found
+        records = tuple(self._records("WHERE study = ?", name, within=IN_STUDIES))
+        return Studied(name, declared, records, finished)
+
+    def _records(self, where: str = "", *values: str, within: str = PLANNED) -> Iterator[Record]:
         with speaking_plainly(self.path):
             known = layouts(self._connection)
             query = self._connection.execute(
                 "SELECT sheet, law, motion, condition, level, draw, outcome, layout, scores, reason, key,"
-                " trace, sources, residual_rad_s, wall_s FROM plan CROSS JOIN runs USING (id)"
-                " CROSS JOIN keys USING (id) CROSS JOIN places ON places.id = place"
-                f" {where} ORDER BY position",
+                f" trace, sources, residual_rad_s, wall_s FROM {within} {where} ORDER BY position",
                 values,
             )
             for *place, outcome, layout, scores, reason, key, trace, sources, residual, wall_s in query:
@@ -232,7 +270,8 @@ class Reader:
             planned, stored = (
                 {key for (key,) in self._connection.execute(query, (beginning, f"{beginning}g"))}
                 for query in (
-                    f"SELECT key FROM keys JOIN plan USING (id) WHERE {within}",
+                    f"SELECT key FROM keys WHERE {within}"
+                    " AND (id IN (SELECT id FROM plan) OR id IN (SELECT id FROM studied))",
                     f"SELECT key FROM keys JOIN runs USING (id) WHERE {within}",
                 )
             )
@@ -243,7 +282,8 @@ class Reader:
         with speaking_plainly(self.path):
             found = self._connection.execute(
                 "SELECT run, draw FROM keys JOIN plan USING (id) JOIN places ON places.id = place"
-                " WHERE key = ? LIMIT 1",
+                " WHERE key = ?1 UNION ALL"
+                " SELECT run, draw FROM keys JOIN studied USING (id) WHERE key = ?1 LIMIT 1",
                 (key,),
             ).fetchone()
             if found is None:

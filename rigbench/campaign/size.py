@@ -7,7 +7,7 @@ from collections.abc import Mapping
 from dataclasses import replace
 from pathlib import Path
 
-from rigbench.campaign.campaign import Draws
+from rigbench.campaign.doing import Draws
 from rigbench.campaign.plan import Entry, Plan
 from rigbench.campaign.store import Store
 from rigbench.campaign.work import Outcome

@@ -24,8 +24,10 @@ from rigbench.campaign.migrations import migrate
 from rigbench.campaign.owner import Owner
 from rigbench.campaign.packing import packed
 from rigbench.campaign.places import Places
-from rigbench.campaign.plan import Plan
+from rigbench.campaign.plan import Entry, Plan
 from rigbench.campaign.reading import Reader
+from rigbench.campaign.studied import forget, record_study
+from rigbench.campaign.study import Study
 from rigbench.campaign.work import Host, Outcome
 from rigbench.errors import StoreForeign
 from rigbench.scores.row import SETTLED_TROUBLES
@@ -93,6 +95,7 @@ class Store(Reader):
                 "INSERT INTO files VALUES (?, ?, ?, 1) ON CONFLICT (path, digest) DO UPDATE SET planned = 1",
                 _file_values(plan),
             )
+            forget(connection)
             for table in ("plan", "places", "parts"):
                 connection.execute(f"DELETE FROM {table}")
             connection.execute("DELETE FROM keys WHERE id NOT IN (SELECT id FROM runs)")
@@ -109,6 +112,11 @@ class Store(Reader):
             )
             connection.executemany("INSERT INTO places VALUES (?, ?, ?, ?, ?, ?, ?, ?)", places.rows())
             connection.executemany("INSERT INTO parts VALUES (?, ?)", keeper.texts.items())
+
+    def record_study(self, study: Study, entries: Iterable[Entry], finished: bool) -> None:
+        """Put down all runs that a study has asked for so far, and whether all of them are stored."""
+        with self._transaction() as connection:
+            record_study(connection, study.name, study.declared(), entries, finished)
 
     def add(
         self, outcomes: Iterable[Outcome], draws: Iterable[tuple[int, int, Mapping[str, float]]] = ()

@@ -80,7 +80,8 @@ class _Seldom:
 
 def _say_line(progress: Progress) -> None:
     standing = standing_words(progress.standing)
-    line = f"{progress.done} of {counted(progress.planned, 'run')} done, {_words(progress)}"
+    of = f" that {progress.study} has asked for so far" if progress.study else ""
+    line = f"{progress.done} of {counted(progress.planned, 'run')}{of} done, {_words(progress)}"
     say(f"{line}; {standing}" if standing else line)
 
 
@@ -93,13 +94,14 @@ def _bar() -> Iterator[OnProgress]:
     from rich.text import Text
 
     words = TextColumn("{task.fields[words]}", markup=False)
-    bar = Bar(TextColumn("runs"), BarColumn(), MofNCompleteColumn(), words)
+    bar = Bar(TextColumn("{task.description}"), BarColumn(), MofNCompleteColumn(), words)
     task = bar.add_task("runs", total=None, words="")
     standing = Text(no_wrap=True, overflow="ellipsis")
 
     def show(progress: Progress) -> None:
         ended = progress.done + progress.failed
         bar.update(task, total=progress.planned, completed=ended, words=_words(progress))
+        bar.update(task, description=progress.study or "runs")
         standing.plain = standing_words(progress.standing)
 
     with Live(Group(bar, standing), console=Console(stderr=True), transient=True):

@@ -64,6 +64,7 @@ class FakeRun:
     mismatch: Mismatch = field(default=MISMATCH)
     motion: FakeMotion = FakeMotion()
     rates: FakeRates = FakeRates()
+    directions: None = None
 
     def inputs(self) -> dict[str, Any]:
         return {"name": self.name}

@@ -7,7 +7,7 @@ from pathlib import Path
 
 import pytest
 
-from rigbench.campaign.campaign import Draws
+from rigbench.campaign.doing import Draws
 from rigbench.campaign.plan import Plan
 from rigbench.campaign.size import SAMPLE, store_bytes
 from rigbench.campaign.store import Store

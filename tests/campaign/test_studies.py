@@ -1,0 +1,149 @@
+"""Studies: runs that depend on what came out of others, done after the plan, stored, and gone on with."""
+
+from __future__ import annotations
+
+import os
+import signal
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass, replace
+from pathlib import Path
+from types import ModuleType
+from typing import Any
+
+import pytest
+
+from rigbench.campaign.campaign import run_campaign
+from rigbench.campaign.executor import InProcess, Processes
+from rigbench.campaign.part import Part
+from rigbench.campaign.plan import Entry, Plan
+from rigbench.campaign.progress import Progress
+from rigbench.campaign.store import Store
+from rigbench.campaign.study import Known
+from rigbench.errors import Stopped
+
+PlanMaker = Callable[..., Plan]
+
+
+@dataclass(frozen=True)
+class Growing:
+    """A study whose next run's name is as long as the last one's score says: three rounds of two runs."""
+
+    make_run: Callable[..., Any]
+    act: str = "finish"
+    name: str = "growing"
+    most_runs: int = 6
+
+    def declared(self) -> Mapping[str, Any]:
+        return {"rounds": 3}
+
+    def rounds(self, known: Known) -> Sequence[Sequence[Entry]]:
+        found: list[list[Entry]] = []
+        length = 1
+        for _ in range(3):
+            found.append([self.entry(letter * length) for letter in "ab"])
+            rows = [known(entry) for entry in found[-1]]
+            if None in rows:
+                break
+            length = 1 + sum(round(3 * row.scores.get("tool_peak_mm", 0)) for row in rows if row)
+        return found
+
+    def entry(self, name: str) -> Entry:
+        return Entry("", "pd", "lift", "growing", None, None, self.make_run(name, act=self.act))
+
+
+def names(plan: Plan) -> list[str]:
+    """What the study asks for, as the scores of its stand-in runs have it."""
+    return ["a", "b", "aaa", "bbb", "a" * 7, "b" * 7]
+
+
+@pytest.fixture
+def plan(make_plan: PlanMaker, doing: ModuleType) -> Plan:
+    return replace(make_plan(draws=1), studies=(Growing(doing.FakeRun),))
+
+
+@pytest.mark.parametrize("jobs", [0, 2])
+def test_rounds_follow_one_another_and_are_stored(
+    tmp_path: Path, doing: ModuleType, plan: Plan, jobs: int
+) -> None:
+    """Each round sees what came of the one before; the matrix holds nothing of it; a second time all is known."""
+    executor = Processes(jobs, doing.work) if jobs else InProcess(doing.work)
+    with Store.open_for_writing(tmp_path / "s.sqlite", plan) as store:
+        for new in (6, 0):
+            seen: list[Progress] = []
+            counts = run_campaign(plan, store, on_progress=seen.append, executor=executor)
+            assert counts.planned == counts.done == len(plan.entries)
+            assert len(store.rows()) == len(plan.entries)
+            assert store.studies() == ("growing",)
+            study = store.study("growing")
+            assert study is not None
+            assert study.finished
+            assert study.declared == {"rounds": 3}
+            assert [record.key for record in study.records] == [
+                doing.FakeRun(name).key() for name in names(plan)
+            ]
+            assert [record.row.scores["tool_peak_mm"] for record in study.records] == [
+                len(name) / 3 for name in names(plan)
+            ]
+            told = [progress for progress in seen if progress.study == "growing"]
+            assert (told[-1].planned, told[-1].done, told[-1].failed) == (6, 6, 0)
+            assert len(told) == new + (4 if new else 1)  # before each round, and after each run
+        assert store.study("another") is None
+
+
+def test_a_study_that_was_stopped_goes_on(tmp_path: Path, doing: ModuleType, plan: Plan) -> None:
+    """After a signal in its second round the runs done stay, and the next campaign does the rest alone."""
+    executor, asked = InProcess(doing.work), []
+
+    def stop_within(progress: Progress) -> None:
+        if progress.study and progress.done == 3 and not asked:
+            asked.append(progress)
+            os.kill(os.getpid(), signal.SIGINT)
+
+    with Store.open_for_writing(tmp_path / "s.sqlite", plan) as store:
+        with pytest.raises(Stopped) as stopped:
+            run_campaign(plan, store, on_progress=stop_within, executor=executor)
+        assert (stopped.value.done, stopped.value.planned) == (len(plan.entries) + 3, len(plan.entries) + 4)
+        study = store.study("growing")
+        assert study is not None
+        assert not study.finished
+        assert len(study.records) == 3
+        seen: list[Progress] = []
+        run_campaign(plan, store, on_progress=seen.append, executor=executor)
+        done = [progress.done for progress in seen if progress.study]
+        assert done == [3, 4, 4, 5, 6, 6]
+        study = store.study("growing")
+        assert study is not None
+        assert study.finished
+
+
+def test_a_run_that_comes_to_nothing_is_known_to_its_study(
+    tmp_path: Path, doing: ModuleType, make_plan: PlanMaker
+) -> None:
+    """A crash is a row to the study, or it would never end; the next campaign tries it again."""
+    plan = replace(make_plan(draws=1), studies=(Growing(doing.FakeRun, act="fail"),))
+    with Store.open_for_writing(tmp_path / "s.sqlite", plan) as store:
+        for _ in range(2):
+            seen: list[Progress] = []
+            run_campaign(plan, store, on_progress=seen.append, executor=InProcess(doing.work))
+            told = [progress for progress in seen if progress.study]
+            assert (told[-1].planned, told[-1].done, told[-1].failed) == (6, 0, 6)
+            assert len(told) == 4
+
+
+def test_a_study_waits_for_the_whole_campaign(tmp_path: Path, doing: ModuleType, plan: Plan) -> None:
+    """Where the first draws alone are asked for, nothing of a study is run."""
+    with Store.open_for_writing(tmp_path / "s.sqlite", plan) as store:
+        run_campaign(plan, store, part=Part(draws=1), executor=InProcess(doing.work))
+        assert store.studies() == ()
+
+
+def test_a_study_s_run_is_found_by_its_key(tmp_path: Path, doing: ModuleType, plan: Plan) -> None:
+    """As the matrix's runs are: by the beginning of its key, with all that is stored of it."""
+    key = doing.FakeRun("bbb").key()
+    with Store.open_for_writing(tmp_path / "s.sqlite", plan) as store:
+        run_campaign(plan, store, executor=InProcess(doing.work))
+        assert store.keys(key[:12]) == ([key], [])
+        record = store.record(key)
+        assert record is not None
+        assert record.row.condition == "growing"
+        assert record.row.scores == {"tool_peak_mm": 1.0}
