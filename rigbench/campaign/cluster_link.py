@@ -9,6 +9,7 @@ from __future__ import annotations
 import asyncio
 import contextlib
 import logging
+import socket
 from collections.abc import Callable, Coroutine, Iterator, Mapping
 from concurrent.futures import Future
 from types import TracebackType
@@ -32,6 +33,9 @@ SILENCE_S = 30.0
 """A scheduler that has not answered for so long is gone."""
 
 CLOSE_S = 5.0
+
+LONGEST_GREETING = 2**20
+"""Bytes; a scheduler's has some hundred."""
 
 Answer = TypeVar("Answer")
 
@@ -166,9 +170,19 @@ def _connected(address: str) -> Any:
             "--cluster", "", "needs dask, which is not installed", "pip install 'rigbench[cluster]'"
         ) from None
     try:
+        _knock(address)
         connect: Any = Client
         return connect(address, timeout=CONNECT_S, set_as_default=False, name="rigbench")
     except Exception as error:  # a refused or silent port, a name that nobody knows, another program
         said = " ".join(str(error).split()) or type(error).__name__
         problem = f"no scheduler answers at {address} within {CONNECT_S:g} s ({said:.200})"
         raise InputFaults.one("--cluster", "", problem, "what 'dask scheduler' prints") from None
+
+
+def _knock(address: str) -> None:
+    """OSError unless a scheduler greets who calls there: dask itself waits for ever for one that doesn't."""
+    parts = urlsplit(address)
+    with socket.create_connection((str(parts.hostname), parts.port or 0), CONNECT_S) as line:
+        length = int.from_bytes(line.recv(8), "little")  # of the greeting; another program's words are huge
+        if not 0 < length < LONGEST_GREETING:
+            raise ConnectionError("it is no scheduler that answers")

@@ -159,7 +159,7 @@ class Columns:
         def make(block: Block) -> Values:
             row = np.searchsorted(self._drawn, block.draw)
             known = np.append(self._drawn, -2)[row] == block.draw
-            return np.where(known & (acts(block) > 0.0), u[np.where(known, row, len(u) - 1)], np.nan)
+            return np.where(acts(block) > 0.0, u[np.where(known, row, -1)], np.nan)
 
         return make
 

@@ -134,7 +134,7 @@ def _check_sound(path: Path, connection: sqlite3.Connection) -> None:
     in_order = header[18:19] == b"\1"  # else it is in log mode still
     if in_order and path.stat().st_size > CHECKED_BYTES and schema_of(connection) == len(MIGRATIONS):
         return
-    said = connection.execute("PRAGMA quick_check(1)").fetchone()[0]
+    said = connection.execute("PRAGMA quick_check(1)").fetchone()[0].splitlines()[-1]
     if said != "ok":
         raise StoreError(str(path), f"is damaged ({said}); move it away and run again, or restore a copy")
 

@@ -5,16 +5,11 @@ from __future__ import annotations
 import contextlib
 import json
 import sqlite3
-from collections import Counter
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
-from itertools import compress
-from operator import not_
 from pathlib import Path
 from types import TracebackType
 from typing import Self
-
-import numpy as np
 
 from rigbench.campaign.blocks import SIZE, Block, blocks, layouts, stored_scores
 from rigbench.campaign.connection import connect, owner, speaking_plainly
@@ -24,18 +19,16 @@ from rigbench.campaign.owner import Owner
 from rigbench.campaign.places import Place, places_of
 from rigbench.campaign.plan import Entry, Plan
 from rigbench.campaign.studied import Studied, stored_studies
+from rigbench.campaign.tabling import tabled
 from rigbench.campaign.work import Host
 from rigbench.errors import StoreError
 from rigbench.scores.names import main_score
 from rigbench.scores.results import Results
 from rigbench.scores.row import HOST_OUTCOMES, MACHINE_OUTCOMES, SETTLED_TROUBLES, Row
-from rigbench.scores.run_table import FINISHED, STATES, RunTable
 
 __all__ = ["Counts", "Reader", "Record"]
 
-PLANNED = (
-    "plan CROSS JOIN runs USING (id) CROSS JOIN keys USING (id) CROSS JOIN places ON places.id = place"
-)
+PLANNED = "plan CROSS JOIN runs USING (id) CROSS JOIN keys USING (id) CROSS JOIN places ON places.id = place"
 IN_STUDIES = "studied CROSS JOIN runs USING (id) CROSS JOIN keys USING (id)"
 """Where the runs of the plan and those of the studies are found; either may be asked for the same columns."""
 
@@ -322,6 +315,12 @@ class Reader:
             )
             return {number: Host(cpu, tuple(json.loads(text).items())) for number, cpu, text in query}
 
+    def planned(self) -> int:
+        """Count the planned runs."""
+        with speaking_plainly(self.path):
+            number: int = self._connection.execute("SELECT count(*) FROM plan").fetchone()[0]
+        return number
+
     def places(self) -> dict[int, Place]:
         """Return where the planned runs stand, by the numbers that the runs have for it."""
         with speaking_plainly(self.path):
@@ -351,44 +350,22 @@ class Reader:
                 values.setdefault(draw, {})[name] = u
         return values
 
-    def _table(self, names: Sequence[str] | None) -> tuple[RunTable, Counts]:
-        """Return the runs as columns, and what :meth:`counts` counts: the file is read once for both."""
-        with speaking_plainly(self.path):
-            places = self.places()
-            planned = self._connection.execute("SELECT count(*) FROM plan").fetchone()[0]
-            names = self.scores() if names is None else tuple(names)
-            place, draw = np.empty((2, planned), dtype=np.int64)
-            state, scores = np.empty(planned, dtype=np.int8), np.empty((planned, len(names)))
-            found: Counter[str] = Counter()
-            end = 0
-            for block in self.blocks(names, ("anew",)):
-                here, end = slice(end, end + len(block)), end + len(block)
-                place[here], draw[here] = block.place, block.draw
-                state[here] = [STATES[outcome] for outcome in block.outcome]
-                scores[here] = block.scores
-                anew = block.more["anew"]
-                found.update(compress(block.outcome, map(not_, anew)) if any(anew) else block.outcome)
-        index = np.zeros(max(places, default=0) + 1, dtype=np.int64)
-        index[list(places)] = np.arange(len(places))
-        state, scores = state[:end], scores[:end]
-        scores[state != FINISHED] = np.nan
-        shown = tuple((each.sheet, each.law, each.motion, each.condition) for each in places.values())
-        table = RunTable(tuple(names), shown, index[place[:end]], draw[:end], state, scores)
-        return table, _counts(found | {"": planned - found.total()})
-
-    def results(self, brief: bool = False) -> Results:
+    def results(self, brief: bool = False, also: Sequence[str] = ()) -> Results:
         """Return the cells and standings of all that is stored, as of one moment.
 
         If ``brief``, the cells have the measures of the main score and of those with a limit alone: all that
-        a text shows, at a small part of the time.
+        a text shows, at a small part of the time. The scores named by ``also`` come besides, and their draws
+        are kept for comparisons as those of the main score are.
         """
         from rigbench.scores.summary import summarise  # scipy: slow to import
 
         with self.one_moment():
             labels = self.labels
             limited = () if labels.tolerance is None else labels.tolerance.limited
-            names = tuple(dict.fromkeys([main_score(limited), *limited])) if brief else None
-            table, counts = self._table(names)
+            names = tuple(dict.fromkeys([main_score(limited), *limited, *also])) if brief else None
+            names = self.scores() if names is None else names
+            table, outcomes = tabled(self.blocks(names, ("anew",)), self.places(), self.planned(), names)
+            counts = _counts(outcomes)
         return summarise(
             table,
             title=labels.title,
@@ -403,6 +380,7 @@ class Reader:
             done=counts.done,
             failed=counts.failed,
             absent=labels.absent,
+            also=also,
         )
 
 

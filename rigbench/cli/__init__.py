@@ -169,6 +169,32 @@ def matrix(
         draw_matrix(store, output, as_json)
 
 
+@app.command(epilog="Example: rigbench report results/first-look.sqlite -o first-look.html")
+def report(
+    store: StoreFile,
+    output: Annotated[
+        str | None,
+        typer.Option("--output", "-o", help="an .html file; STORE's name and -report.html if left out"),
+    ] = None,
+    traces: Annotated[
+        int | None,
+        typer.Option(
+            min=0, help="replay at most so many runs for their traces; as many as once took 20 s if left out"
+        ),
+    ] = None,
+    as_json: Json = False,
+) -> None:
+    """Write all that is stored as one HTML page: decision, matrix, details of each cell, curves, experiment.
+
+    The page needs no network, and asks for nothing. The worst and the median run of each cell are replayed for
+    the tool's error over time, law by law from the best: a law of your own runs as your code.
+    """
+    with telling(as_json):
+        from rigbench.cli.report import write_report
+
+        write_report(store, output, traces, as_json)
+
+
 @app.command(epilog="Example: rigbench export results/first-look.sqlite -o runs.csv")
 def export(
     store: StoreFile,

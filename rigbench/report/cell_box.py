@@ -5,14 +5,16 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import replace
 
-from rigbench.report.cells import CellWords
-from rigbench.report.paper import LINE, QUIET, Paper, Point
+from rigbench.report.cells import CHANGED, CellWords
+from rigbench.report.paper import INK, LINE, QUIET, Paper, Point
 from rigbench.report.shades import ABSENT, GAUGE_WIDTH, draw_gauge, shade
 from rigbench.report.style import Style
 
-__all__ = ["draw_cell", "figure_width", "fitted", "small_words"]
+__all__ = ["draw_cell", "draw_frame", "figure_width", "fitted", "small_words"]
 
 RULE = "#c9d3dd"
+FRAME_WIDTH = 1.6
+"""Of the frame around a cell that changed: within its edges."""
 
 
 def fitted(words: CellWords, style: Style) -> CellWords:
@@ -34,6 +36,13 @@ def figure_width(paper: Paper, words: CellWords, style: Style) -> float:
     return figure + paper.width(" " + words.unit, style.small + 1)
 
 
+def draw_frame(paper: Paper, corner: Point, size: Point, name: str = "") -> None:
+    """Draw the frame of a cell that got better or worse."""
+    (x, top), (width, height), inset = corner, size, FRAME_WIDTH / 2
+    inner = width - 2 * inset, height - 2 * inset
+    paper.box(x + inset, top + inset, *inner, edge=INK, line=FRAME_WIDTH, name=name, order=1.6)
+
+
 def draw_cell(
     paper: Paper, style: Style, words: CellWords, small: Sequence[str], corner: Point, size: Point, name: str
 ) -> None:
@@ -48,6 +57,8 @@ def draw_cell(
     edge = "none" if words.ink is not None else RULE
     paper.box(x, top, width, height, fill=shade(words.ink), edge=edge, name=f"cell-{name}")
     draw_gauge(paper, (x, top), height, words.verdict, f"gauge-{name}")
+    if words.change in CHANGED:
+        draw_frame(paper, corner, size, f"frame-{name}")
     y = top + style.pad
     if words.head:
         paper.text(left, y, words.head, style.small, name=f"text-{name}-head")

@@ -5,24 +5,29 @@ from __future__ import annotations
 import math
 from dataclasses import dataclass
 
+from rigbench.report.view import RATIO, View
 from rigbench.report.words import (
     NOT_POSSIBLE,
     figure,
     interval,
-    main_limits,
-    main_score,
+    limits_of,
     percent,
     quantity,
     tolerated_words,
 )
+from rigbench.scores.changes import CellChange, Changes
 from rigbench.scores.names import score_words
 from rigbench.scores.results import Cell, Column, Results, Tolerated
 
-__all__ = ["EXACT", "CellWords", "Grid"]
+__all__ = ["CHANGED", "EXACT", "SHARES", "CellWords", "Grid"]
 
 NOTHING = "-"
 EXACT = ("one exact run", "one run")
 """What a cell says where nothing is random, in full and in short."""
+
+CHANGED = ("better", "worse")
+SHARES = View()
+TIMES = "times"
 
 
 @dataclass(frozen=True)
@@ -30,8 +35,9 @@ class CellWords:
     """A cell in words: the verdict above, one large figure with its unit and interval, small lines beneath.
 
     ``interval`` is '' where there is none. ``ink`` from 0 to 1 is how dark the cell is: the pass share,
-    or without a tolerance how large the main score is among all cells; None where nothing is to be shown.
-    A law that is not ``possible`` in its sheet has that one small line and nothing else.
+    or where a score is shown how large it is among all cells; None where nothing is to be shown.
+    A law that is not ``possible`` in its sheet has that one small line and nothing else. ``change`` says
+    how the cell compares with another store, '' where there is none to compare with.
     """
 
     verdict: str
@@ -42,24 +48,26 @@ class CellWords:
     lines: tuple[str, ...]
     ink: float | None
     possible: bool = True
+    change: str = ""
 
     @property
     def head(self) -> str:
         """The line above the figure."""
-        return ", ".join(filter(None, (self.verdict, "best" if self.best else "")))
+        return ", ".join(filter(None, (self.verdict, self.change or ("best" if self.best else ""))))
 
 
 class Grid:
     """The cells of all sheets by name, put into words."""
 
-    def __init__(self, results: Results) -> None:
-        self.results = results
-        self.score = main_score(results)
-        self.limits = main_limits(results)
+    def __init__(self, results: Results, view: View = SHARES, changes: Changes | None = None) -> None:
+        self.results, self.view, self.changes = results, view, changes
+        self.score = view.score_of(results)
+        self.shares = view.shares(results)
+        self.limits = () if view.show == RATIO else limits_of(results, self.score)
         self.score_name = score_words(self.score)[0]
-        self._cells = {(cell.sheet, cell.law, cell.condition): cell for cell in results.cells}
+        self._cells = {cell.key: cell for cell in results.cells}
         self._tolerated = {(one.sheet, one.law): one.tolerated for one in results.standings}
-        found = (self._median(cell) for cell in results.cells)
+        found = (self._value(cell) for cell in results.cells)
         finite = [value for value in found if value is not None and math.isfinite(value)]
         self.least, self.most = (min(finite), max(finite)) if finite else (0.0, 0.0)
 
@@ -97,16 +105,16 @@ class Grid:
         return tolerated_words(tolerated) if tolerated else NOT_POSSIBLE
 
     def words(self, sheet: str, law: str, column: Column, full: bool = True) -> CellWords:
-        """Put one cell into words; ``full`` names the main score beside its value."""
+        """Put one cell into words; ``full`` names the score beside its value."""
         cell = self.cell(sheet, law, column)
         if not cell.planned:
             return CellWords("", False, "", "", "", (NOT_POSSIBLE,), None, possible=False)
-        median = self._median(cell)
-        if cell.draws == 0 or (median is None and self.results.tolerance is None):
-            shown, lines, ink = (NOTHING, "", ""), ["no result"], None
-        elif not column.random or self.results.tolerance is None:
+        value = self._value(cell)
+        if cell.draws == 0 or (value is None and not self.shares):
+            shown, lines, ink = (NOTHING, "", ""), [self._nothing(cell)], None
+        elif not column.random or not self.shares:
             shown, lines = self._score_large(cell, column, full)
-            ink = self._scale(median) if self.results.tolerance is None else float(cell.passed > 0)
+            ink = float(cell.passed > 0) if self.shares else self._scale(value)
         else:
             shown, lines = self._share_large(cell, full)
             ink = cell.pass_share
@@ -114,41 +122,82 @@ class Grid:
             lines.append(f"{cell.unfinished} did not finish")
         if cell.incomplete:
             lines.append(f"{cell.incomplete} incomplete")
-        return CellWords(cell.verdict, cell.best, *shown, tuple(lines), ink)
+        change = self.changes.cells[cell.key] if self.changes else None
+        if change is not None:
+            lines += self._earlier(change, column)
+        return CellWords(
+            cell.verdict, cell.best, *shown, tuple(lines), ink, change=change.kind if change else ""
+        )
 
-    def _median(self, cell: Cell) -> float | None:
-        measure = cell.measures.get(self.score)
-        return None if measure is None or math.isnan(measure.median) else measure.median
+    def _nothing(self, cell: Cell) -> str:
+        return "no result" if cell.draws == 0 else f"no {self.score_name}"
+
+    def _earlier(self, change: CellChange, column: Column) -> list[str]:
+        """Say what the cell showed in the earlier store."""
+        before = change.before
+        if before is None or not before.draws:
+            return [] if before is None else ["was without a result"]
+        value = self._value(before)
+        if self.shares and column.random and before.pass_share is not None:
+            lines = [f"was {self._share(before)} %"]
+        else:
+            lines = [] if value is None else [f"was {self._figure(value, self.limits)}"]
+        by = change.difference
+        if by is not None and self.changes and not by.tie and math.isfinite(by.value):
+            unit = score_words(self.changes.score)[1]
+            name = score_words(self.changes.score)[0] if self.shares else "by"
+            lines.append(f"{name} {by.value:+.2g} {unit}".rstrip())
+        return lines
+
+    def _value(self, cell: Cell) -> float | None:
+        shown = self.view.of(cell, self.score)
+        return None if shown is None else shown.value
+
+    def _share(self, cell: Cell) -> str:
+        tolerance = self.results.tolerance
+        share = cell.passed / cell.draws if cell.pass_share is None else cell.pass_share
+        return percent(share, tolerance.required_share if tolerance else None, exact=True)
+
+    def _figure(self, value: float, limits: tuple[float, ...] = ()) -> str:
+        """Return a value of the score, or a ratio, with its unit."""
+        if self.view.show != RATIO:
+            return quantity(value, self.score, *limits)
+        return "no end" if math.isinf(value) else f"{figure(value)} {TIMES}"
 
     def _share_large(self, cell: Cell, full: bool) -> tuple[tuple[str, str, str], list[str]]:
-        """Return the share, its unit and interval; and the main score's median."""
+        """Return the share, its unit and interval; and the score's median."""
         tolerance = self.results.tolerance
         required = tolerance.required_share if tolerance else None
-        share = cell.passed / cell.draws if cell.pass_share is None else cell.pass_share
         ends = [percent(end, required) for end in (cell.pass_low, cell.pass_high) if end is not None]
-        median, lines = self._median(cell), []
+        median, lines = self._value(cell), []
         if median is not None and math.isfinite(median):
             shown = quantity(median, self.score)
             lines.append(f"{self.score_name} {shown}" if full else shown)
-        return (percent(share, required, exact=True), "%", " to ".join(ends)), lines
+        return (self._share(cell), "%", " to ".join(ends)), lines
 
     def _score_large(self, cell: Cell, column: Column, full: bool) -> tuple[tuple[str, str, str], list[str]]:
-        """Return the main score, its unit and interval; and what they are."""
-        median = self._median(cell)
+        """Return the score, its unit and interval; and what they are."""
+        shown = self.view.of(cell, self.score)
         lines = [] if column.random else [EXACT[not full]]
-        if median is None:
+        if shown is None:
             return (NOTHING, "", ""), [f"no {self.score_name}", *lines]
-        if math.isinf(median):
-            return (NOTHING, "", ""), lines if column.random else ["did not finish", *lines]
-        ends = ""
-        if column.random:
-            measure = cell.measures[self.score]
-            ends = interval(measure.median_low, measure.median_high)
-        shown = figure(median) if column.random else figure(median, *self.limits)
-        return (shown, score_words(self.score)[1], ends), [self.score_name, *lines] if full else lines
+        if math.isinf(shown.value):
+            return (NOTHING, "", ""), [*self._endless(cell, column), *lines]
+        ends = interval(shown.low, shown.high) if column.random else ""
+        said = figure(shown.value) if column.random else figure(shown.value, *self.limits)
+        unit = TIMES if self.view.show == RATIO else score_words(self.score)[1]
+        return (said, unit, ends), [self.score_name, *lines] if full else lines
+
+    def _endless(self, cell: Cell, column: Column) -> list[str]:
+        """Say why there is no number; draws that did not finish are counted in a line of their own."""
+        if column.random and cell.unfinished:
+            return []
+        if self.view.show == RATIO:
+            return [f"nominal's {self.score_name} is 0"]
+        return [quantity(math.inf, self.score)]
 
     def _scale(self, median: float | None) -> float | None:
-        """Place a median among all cells' ones: by its logarithm where all are above 0; 1 if infinite."""
+        """Place a value among all cells' ones: by its logarithm where all are above 0; 1 if infinite."""
         if median is None or math.isinf(median):
             return None if median is None else 1.0
         if self.most <= self.least:

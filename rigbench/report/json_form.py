@@ -8,21 +8,24 @@ from numbers import Integral, Real
 from typing import Any
 
 from rigbench.report.cells import Grid
-from rigbench.scores.results import Cell, Measure, MotionCell, Results
+from rigbench.scores.comparison import Comparison
+from rigbench.scores.results import Cell, LawComparison, Measure, MotionCell, Results
 
-__all__ = ["results_json"]
+__all__ = ["plain_values", "results_json"]
 
 
 def results_json(results: Results, store: str) -> dict[str, Any]:
     """Return the results as plain values that ``json.dumps(..., allow_nan=False)`` takes.
 
     ``{"store", "runs": {"planned", "done", "failed"}, "cells": [...], "laws": [...], "break_even": [...],
-    "advice"}``. A cell holds sheet, law, condition, level, draws, incomplete, pass_share, pass_low,
+    "comparisons": [...], "advice"}``. A cell holds sheet, law, condition, level, draws, incomplete, pass_share, pass_low,
     pass_high, verdict, planned (how many draws; 0 where the law is not possible); then each
-    score by name, ``{"median", "p95", "median_low", "median_high", "p95_low", "p95_high"}`` in the unit that
-    the name carries; and ``"motions"``, each with draws, passed, pass_share and its scores. What is
+    score by name, ``{"median", "p95", "median_low", "median_high", "p95_low", "p95_high", "ratio",
+    "ratio_low", "ratio_high"}`` in the unit that the name carries, the ratio being to nominal, draw by draw; and ``"motions"``, each with draws, passed, pass_share and its scores. What is
     infinite, or isn't there, is None: p95_high where the draws don't reach, the tolerated level's high where
     no level was shown to miss, all shares without a tolerance, all verdicts where a law is not possible.
+    A comparison is of two laws under one condition: ``{"sheet", "condition", "level", "laws", "score",
+    "difference": {"value", "low", "high"}, "draws", "tie"}``, the first law's score less the second's.
     """
     with_tolerance, grid = results.tolerance is not None, Grid(results)
     document = {
@@ -44,10 +47,25 @@ def results_json(results: Results, store: str) -> dict[str, Any]:
             for standing in results.standings
         ],
         "break_even": results.break_even,
+        "comparisons": [_comparison(one) for one in results.comparisons],
         "advice": results.advice,
     }
-    plain: dict[str, Any] = _plain(document)
+    plain: dict[str, Any] = plain_values(document)
     return plain
+
+
+def _comparison(one: LawComparison) -> dict[str, Any]:
+    gap = one.difference
+    return {
+        "sheet": one.sheet,
+        "condition": one.condition,
+        "level": one.level,
+        "laws": one.laws,
+        "score": one.score,
+        "difference": {"value": gap.value, "low": gap.low, "high": gap.high},
+        "draws": gap.draws,
+        "tie": gap.tie,
+    }
 
 
 def _cell(cell: Cell, with_tolerance: bool) -> dict[str, Any]:
@@ -63,7 +81,7 @@ def _cell(cell: Cell, with_tolerance: bool) -> dict[str, Any]:
         "pass_high": cell.pass_high,
         "verdict": (cell.verdict if cell.planned else "") or None,
         "planned": cell.planned,
-        **_measures(cell.measures),
+        **{name: _measure(one) | _ratio(cell.ratios.get(name)) for name, one in cell.measures.items()},
         "motions": {name: _motion(motion, with_tolerance) for name, motion in cell.motions.items()},
     }
 
@@ -79,25 +97,31 @@ def _motion(motion: MotionCell, with_tolerance: bool) -> dict[str, Any]:
 
 
 def _measures(measures: Mapping[str, Measure]) -> dict[str, dict[str, float]]:
+    return {name: _measure(measure) for name, measure in measures.items()}
+
+
+def _measure(measure: Measure) -> dict[str, float]:
     return {
-        name: {
-            "median": measure.median,
-            "p95": measure.p95,
-            "median_low": measure.median_low,
-            "median_high": measure.median_high,
-            "p95_low": measure.p95_low,
-            "p95_high": measure.p95_high,
-        }
-        for name, measure in measures.items()
+        "median": measure.median,
+        "p95": measure.p95,
+        "median_low": measure.median_low,
+        "median_high": measure.median_high,
+        "p95_low": measure.p95_low,
+        "p95_high": measure.p95_high,
     }
 
 
-def _plain(value: Any) -> Any:
+def _ratio(ratio: Comparison | None) -> dict[str, float | None]:
+    ends = (None, None, None) if ratio is None else (ratio.value, ratio.low, ratio.high)
+    return dict(zip(("ratio", "ratio_low", "ratio_high"), ends, strict=True))
+
+
+def plain_values(value: Any) -> Any:
     """Return the value in JSON's own types, numpy's numbers included; None for what is not finite."""
     if isinstance(value, Mapping):
-        return {str(key): _plain(item) for key, item in value.items()}
+        return {str(key): plain_values(item) for key, item in value.items()}
     if isinstance(value, list | tuple):
-        return [_plain(item) for item in value]
+        return [plain_values(item) for item in value]
     if value is None or isinstance(value, str | bool):
         return value
     if isinstance(value, Integral):

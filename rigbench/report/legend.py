@@ -6,16 +6,25 @@ from collections.abc import Iterator
 
 from rigbench.report.arrange import Arrangement
 from rigbench.report.cautions import CAUTION
+from rigbench.report.cell_box import draw_frame
 from rigbench.report.cells import Grid
 from rigbench.report.legend_levels import GLYPH_HEIGHT, Entry, Glyph, curve_entries, level_entries
 from rigbench.report.paper import LINE, Paper, Point
 from rigbench.report.shades import GAUGE, GAUGE_WIDTH, draw_gauge, shade
-from rigbench.report.words import any_random, percent, quantity
+from rigbench.report.view import MEDIAN, P95, RATIO
+from rigbench.report.words import any_random, figure, percent, quantity
+from rigbench.scores.changes import Changes
+from rigbench.scores.names import score_words
 
 __all__ = ["draw_legend"]
 
 SIZE = 8.0
 APART = 20.0
+VIEW_WORDS = {
+    MEDIAN: "median over the draws",
+    P95: "95th percentile over the draws",
+    RATIO: "draw by draw over nominal's, median of these ratios",
+}
 
 
 def draw_legend(paper: Paper, grid: Grid, arrangement: Arrangement, corner: Point, width: float) -> float:
@@ -41,13 +50,17 @@ def entries(paper: Paper, grid: Grid, arrangement: Arrangement) -> Iterator[Entr
     """Yield what the legend explains: a glyph with its width, and its meaning."""
     results = grid.results
     random = any_random(results)
-    if results.tolerance is None:
+    if results.tolerance is not None:
+        yield from _verdict_entries(paper, grid, percent(results.tolerance.required_share), random)
+    if not grid.shares:
         yield from _scale_entries(paper, grid, random)
-    else:
-        yield from _share_entries(paper, grid, percent(results.tolerance.required_share), random)
+    elif random:
+        yield from _share_entries(paper, grid)
     if not all(column.random for column in results.columns):
-        yield 0, None, f"Where nothing is random, one exact run shows its {grid.score_name}."
-    if any(cell.best for cell in results.cells):
+        yield 0, None, f"Where nothing is random, one exact run shows {_exact(grid)}."
+    if grid.changes:
+        yield from _change_entries(paper, grid.changes)
+    elif any(cell.best for cell in results.cells):
         yield 0, None, "best: better than every other law of its column, beyond the interval."
     if any(cell.incomplete for cell in results.cells):
         yield (
@@ -64,16 +77,24 @@ def entries(paper: Paper, grid: Grid, arrangement: Arrangement) -> Iterator[Entr
             yield from curve_entries(paper, grid, required)
 
 
-def _share_entries(paper: Paper, grid: Grid, required: str, random: bool) -> Iterator[Entry]:
+def _exact(grid: Grid) -> str:
+    return f"the ratio of its {grid.score_name}" if grid.view.show == RATIO else f"its {grid.score_name}"
+
+
+def _verdict_entries(paper: Paper, grid: Grid, required: str, random: bool) -> Iterator[Entry]:
     if not random:
         yield GAUGE_WIDTH, _gauge(paper, "keeps"), "keeps the tolerance"
         if any(cell.verdict == "open" and cell.planned for cell in grid.results.cells):
             yield GAUGE_WIDTH, _gauge(paper, "open"), "open: no result"
         yield GAUGE_WIDTH, _gauge(paper, "misses"), "misses the tolerance"
         return
-    yield GAUGE_WIDTH, _gauge(paper, "keeps"), f"keeps: the interval's low end reaches {required} %"
+    share = "interval" if grid.shares else "share's interval"
+    yield GAUGE_WIDTH, _gauge(paper, "keeps"), f"keeps: the {share}'s low end reaches {required} %"
     yield GAUGE_WIDTH, _gauge(paper, "open"), "open: the draws so far show neither"
-    yield GAUGE_WIDTH, _gauge(paper, "misses"), f"misses: the interval's high end lies below {required} %"
+    yield GAUGE_WIDTH, _gauge(paper, "misses"), f"misses: the {share}'s high end lies below {required} %"
+
+
+def _share_entries(paper: Paper, grid: Grid) -> Iterator[Entry]:
     yield 90, _ramp(paper), "share of the draws that keep the tolerance, 0 to 100 %"
     yield (
         0,
@@ -86,18 +107,39 @@ def _share_entries(paper: Paper, grid: Grid, required: str, random: bool) -> Ite
 
 
 def _scale_entries(paper: Paper, grid: Grid, random: bool) -> Iterator[Entry]:
-    least, most = (quantity(value, grid.score) for value in (grid.least, grid.most))
+    ratio = grid.view.show == RATIO
+    ends = (grid.least, grid.most)
+    least, most = (figure(end) if ratio else quantity(end, grid.score) for end in ends)
     kind = ", logarithmic" if grid.least > 0 else ""
-    yield 90, _ramp(paper), f"{grid.score_name}, {least} to {most}{kind}"
+    name = f"{grid.score_name}, times nominal" if ratio else grid.score_name
+    yield 90, _ramp(paper), f"{name}, {least} to {most}{kind}"
     if random:
+        of = VIEW_WORDS.get(grid.view.show, VIEW_WORDS[MEDIAN])
         yield (
             0,
             None,
-            (
-                f"Large: the {grid.score_name} of the worst motion, median over the draws. "
-                "Beneath it: its 95 % interval."
-            ),
+            f"Large: the {grid.score_name} of the worst motion, {of}. Beneath it: its 95 % interval.",
         )
+
+
+def _change_entries(paper: Paper, changes: Changes) -> Iterator[Entry]:
+    name = score_words(changes.score)[0]
+    yield 14, _frame(paper), "better, worse: shown on the same draws, beyond the 95 % interval of the change"
+    yield (
+        0,
+        None,
+        f"was: in the other store; beneath it by how much the {name} changed, median over the draws.",
+    )
+    if changes.count("not comparable"):
+        yield (
+            0,
+            None,
+            "not comparable: nothing is random in one of the stores, or they have no draw in common.",
+        )
+
+
+def _frame(paper: Paper) -> Glyph:
+    return lambda x, top: draw_frame(paper, (x, top), (14, GLYPH_HEIGHT))
 
 
 def _gauge(paper: Paper, verdict: str) -> Glyph:

@@ -3,73 +3,63 @@
 from __future__ import annotations
 
 import datetime
-import math
-from io import BytesIO
 from pathlib import Path
-from typing import Any
 
 from matplotlib.figure import Figure
 
-from rigbench.errors import InputFaults, StoreError
 from rigbench.report.arrange import MARGIN, Arrangement, arrange
-from rigbench.report.cells import Grid
+from rigbench.report.cells import SHARES, Grid
+from rigbench.report.changes_words import changes_words
 from rigbench.report.legend import draw_legend
 from rigbench.report.paper import Paper, steady_settings, text_boxes
+from rigbench.report.picture import FORMATS, save_picture
+from rigbench.report.view import View
 from rigbench.report.words import arm_words, runs_words, tolerance_words
+from rigbench.scores.changes import Changes
 from rigbench.scores.results import Results
 
-__all__ = ["FORMATS", "matrix_figure", "matrix_picture", "text_boxes"]
+__all__ = ["FORMATS", "draw_head", "matrix_figure", "matrix_picture", "text_boxes"]
 
-FORMATS = ("png", "svg", "pdf")
 NARROWEST = 470.0
 READING = 900.0  # the longest lines of text
 BESIDE, LEAST_LEGEND = 40.0, 400.0  # the legend's distance from the curves, and the width it takes there
-DPI = 180
-MOST_PIXELS = 60e6  # what a viewer opens without pain
-MOST_SIDE = 60_000  # the rasteriser takes less than 2^16
 
 
-def matrix_picture(results: Results, path: Path, date: datetime.date) -> None:
+def matrix_picture(
+    results: Results,
+    path: Path,
+    date: datetime.date,
+    view: View = SHARES,
+    changes: Changes | None = None,
+    other: str = "",
+) -> None:
     """Draw the results matrix into a file whose suffix says the format: .png, .svg or .pdf.
 
     Rows are laws, best tolerated level first; columns are conditions. The sheets of a sweep stand side by
-    side, and beneath them the laws' tolerated levels as curves. The same results and date give the same
-    bytes. Missing folders are made.
+    side, and beneath them the laws' tolerated levels as curves. ``view`` says which number the cells show,
+    ``changes`` what was otherwise in the store named ``other``. The same results and date give the same bytes.
+    Missing folders are made.
 
     Raises InputFaults for another suffix and StoreError if the file can't be written.
     """
-    suffix = path.suffix.lower().removeprefix(".")
-    if suffix not in FORMATS:
-        raise InputFaults.one(path, "", f"'{path.suffix}' is no format of a picture", ".png, .svg or .pdf")
-    metadata: dict[str, dict[str, Any]] = {
-        "png": {"Software": "rigbench", "Title": results.title},
-        "svg": {"Creator": "rigbench", "Title": results.title, "Date": None},
-        "pdf": {"Creator": "rigbench", "Producer": None, "Title": results.title, "CreationDate": None},
-    }
-    drawn = BytesIO()
-    with steady_settings():
-        figure = matrix_figure(results, date)
-        figure.savefig(drawn, format=suffix, dpi=_resolution(figure), metadata=metadata[suffix])
-    try:
-        path.parent.mkdir(parents=True, exist_ok=True)
-        path.write_bytes(drawn.getvalue())
-    except OSError as error:
-        raise StoreError(str(path), f"the picture can't be written: {error.strerror}") from error
+    save_picture(path, results.title, lambda: matrix_figure(results, date, view, changes, other))
 
 
-def _resolution(figure: Figure) -> float:
-    wide, high = figure.get_size_inches()
-    return float(min(DPI, MOST_SIDE / max(wide, high), math.sqrt(MOST_PIXELS / (wide * high))))
-
-
-def matrix_figure(results: Results, date: datetime.date) -> Figure:
+def matrix_figure(
+    results: Results,
+    date: datetime.date,
+    view: View = SHARES,
+    changes: Changes | None = None,
+    other: str = "",
+) -> Figure:
     """Return the results matrix as a figure just as large as what is on it."""
     with steady_settings():
-        paper, grid = Paper(), Grid(results)
+        paper, grid = Paper(), Grid(results, view, changes)
         arrangement = arrange(paper, grid)
         width = max(NARROWEST, arrangement.width)
         reading = min(width, READING)
-        y = _draw_head(paper, results, date, reading)
+        said = results.advice if changes is None else changes_words(changes, other)
+        y = draw_head(paper, results, said, date, reading)
         y = arrangement.draw(MARGIN, y + 20)
         y = _draw_foot(paper, grid, arrangement, y, width)
         return paper.figure(width + 2 * MARGIN, y + MARGIN)
@@ -89,11 +79,11 @@ def _draw_foot(paper: Paper, grid: Grid, arrangement: Arrangement, top: float, w
     return max(end, below)
 
 
-def _draw_head(paper: Paper, results: Results, date: datetime.date, width: float) -> float:
-    """Draw title, advice, and what was run under which tolerance; return where it ends."""
+def draw_head(paper: Paper, results: Results, said: str, date: datetime.date, width: float) -> float:
+    """Draw title, what is ``said``, and what was run under which tolerance; return where it ends."""
     facts = (arm_words(results), tolerance_words(results), f"{runs_words(results)} {date.isoformat()}.")
     top = paper.lines(MARGIN, MARGIN, paper.wrap(results.title, width, 16, bold=True), 16, bold=True) + 3
-    top = paper.lines(MARGIN, top, paper.wrap(results.advice, width, 11), 11) + 6
+    top = paper.lines(MARGIN, top, paper.wrap(said, width, 11), 11) + 6
     for fact in facts:
         top = paper.lines(MARGIN, top, paper.wrap(fact, width, 9), 9) + 2
     return top

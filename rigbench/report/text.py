@@ -8,9 +8,11 @@ from typing import Any
 
 from rich.cells import cell_len
 
-from rigbench.report.cells import EXACT, CellWords, Grid
+from rigbench.report.cells import EXACT, SHARES, CellWords, Grid
 from rigbench.report.order import laws_in_order
+from rigbench.report.pairs_text import pairs_text
 from rigbench.report.table import Lines, blocks, laws_column, sheets_column
+from rigbench.report.view import P95, RATIO, View
 from rigbench.report.words import (
     any_random,
     arm_words,
@@ -20,6 +22,7 @@ from rigbench.report.words import (
     tolerance_words,
 )
 from rigbench.report.wrapping import wrap
+from rigbench.scores.changes import Changes
 from rigbench.scores.names import score_words
 from rigbench.scores.results import Results
 
@@ -31,21 +34,25 @@ FEW, SOME = 4, 12
 """So many sheets have their matrices printed always, and so many if each fits side by side."""
 
 
-def matrix_text(results: Results, width: int = 80) -> str:
+def matrix_text(
+    results: Results, width: int = 80, view: View = SHARES, changes: Changes | None = None, more: bool = False
+) -> str:
     """Return the results matrix as lines of at most ``width`` columns (40 at least).
 
     Rows are laws, best tolerated level first. Conditions that don't fit side by side follow in blocks
     below, each with the laws' names again; the last column holds the tolerated levels. Break-even levels
     stand beneath. Of several sheets there is first one table, sheets down and laws across; their matrices
-    follow where they are few, or narrow. The advice is not in it.
+    follow where they are few, or narrow. The advice is not in it. ``more`` adds how the laws compare draw by
+    draw; ``changes`` what was otherwise in another store.
     """
     width = max(width, NARROWEST)
-    grid = Grid(results)
+    grid = Grid(results, view, changes)
     laws = laws_in_order(grid)
     head = list(_head(results, width))
     if len(results.sheets) == 1:
         reading = _wrap(_reading(grid, has_levels(results)), width)
-        return "\n\n".join(["\n".join([*head, *reading]), *_matrices(grid, laws, width)])
+        told = pairs_text(grid, laws, width) if more and changes is None else ()
+        return "\n\n".join(["\n".join([*head, *reading]), *_matrices(grid, laws, width), *told])
     parts = ["\n".join(head), *_across_sheets(grid, laws, width)]
     if has_levels(results) or len(results.columns) > 1:
         parts += _of_sheets(grid, laws, width)
@@ -60,12 +67,16 @@ def _head(results: Results, width: int) -> Iterator[str]:
 
 def _reading(grid: Grid, levels: bool) -> str:
     """Say what the cells hold."""
-    name = grid.score_name
+    name, ratio = grid.score_name, grid.view.show == RATIO
+    was = " Was: in the other store." if grid.changes else ""
     if not any_random(grid.results):
-        return f"In each cell: the {name} of one exact run."
-    if grid.results.tolerance is None:
-        return f"In each cell: the {name}, median over the draws (95 % interval)."
+        return f"In each cell: the {name} of one exact run{', times nominal' if ratio else ''}.{was}"
+    if not grid.shares:
+        of = {P95: "95th percentile over the draws", RATIO: "median ratio to nominal, draw by draw"}
+        shown = of.get(grid.view.show, "median over the draws")
+        return f"In each cell: the {name}, {shown} (95 % interval).{was}"
     said = f"In each cell: share of the draws that keep it (95 % interval); beneath it the median {name}."
+    said += was
     return f"{said} Tolerated level: where the share falls below the required one {ENDS}." if levels else said
 
 
@@ -140,8 +151,10 @@ def _cell_lines(words: CellWords) -> list[str]:
     if words.interval:
         figure += f" ({words.interval.replace(' to ', '-')})"
     lines = [f"{figure} {words.verdict}".strip(), *words.lines]
-    if words.best:
+    if words.best and not words.change:
         lines[min(1, len(lines) - 1)] += ", best"
+    if words.change:
+        lines.insert(1, words.change)
     return lines
 
 

@@ -19,7 +19,7 @@ __all__ = [
     "interval",
     "level",
     "level_words",
-    "main_limits",
+    "limits_of",
     "main_score",
     "percent",
     "quantity",
@@ -76,14 +76,14 @@ def percent(share: float, required: float | None = None, exact: bool = False) ->
     return _digits_that_agree(lambda decimals: f"{value:.{decimals}f}", 0, agrees)
 
 
-def quantity(value: float, score: str) -> str:
-    """Return a score's value with its unit, or what an infinite one means."""
+def quantity(value: float, score: str, *limits: float) -> str:
+    """Return a score's value with its unit, or what an infinite one means; ``limits`` as for a figure."""
     if math.isnan(value):
         return "no value"
     if math.isinf(value):
         return "did not settle" if score.startswith("settle") else "did not finish"
     unit = score_words(score)[1]
-    return f"{figure(value)} {unit}".rstrip()
+    return f"{figure(value, *limits)} {unit}".rstrip()
 
 
 def interval(low: float, high: float) -> str:
@@ -101,12 +101,12 @@ def main_score(results: Results) -> str:
     return names.main_score(results.tolerance.limited if results.tolerance else ())
 
 
-def main_limits(results: Results) -> tuple[float, ...]:
-    """Return the limits of the main score, in whichever motion; () if it has none."""
+def limits_of(results: Results, score: str) -> tuple[float, ...]:
+    """Return the limits of a score, in whichever motion; () if it has none."""
     if results.tolerance is None:
         return ()
-    name, every = main_score(results), (results.tolerance.limits, *results.tolerance.motions.values())
-    return tuple(limits[name] for limits in every if name in limits)
+    every = (results.tolerance.limits, *results.tolerance.motions.values())
+    return tuple(limits[score] for limits in every if score in limits)
 
 
 def any_random(results: Results) -> bool:

@@ -11,13 +11,10 @@ from numpy.typing import NDArray
 
 from rigbench.arm.arm import Floats
 from rigbench.scores.names import in_display_order
-from rigbench.scores.results import Column
+from rigbench.scores.results import CellKey, Column
 from rigbench.scores.run_table import FINISHED, MISSING, UNFINISHED, RunTable
 
 __all__ = ["FINISHED", "MISSING", "UNFINISHED", "CellKey", "CellRuns", "Frame", "Gathered", "gather"]
-
-CellKey = tuple[str, str, str]
-"""Sheet, law, condition."""
 
 
 @dataclass(frozen=True)

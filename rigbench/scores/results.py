@@ -4,8 +4,27 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field
+from typing import TYPE_CHECKING
 
-__all__ = ["Cell", "Column", "LawStanding", "Measure", "MotionCell", "Results", "Tolerance", "Tolerated"]
+if TYPE_CHECKING:
+    from rigbench.scores.cell import CountedDraws
+    from rigbench.scores.comparison import Comparison
+
+__all__ = [
+    "Cell",
+    "CellKey",
+    "Column",
+    "LawComparison",
+    "LawStanding",
+    "Measure",
+    "MotionCell",
+    "Results",
+    "Tolerance",
+    "Tolerated",
+]
+
+CellKey = tuple[str, str, str]
+"""Sheet, law, condition."""
 
 
 @dataclass(frozen=True)
@@ -95,6 +114,12 @@ class Cell:
     best: bool = False  # better than every other law of its column beyond the interval
     unfinished: int = 0  # of the draws that count, those in which some motion did not finish
     planned: int = 1  # draws that the experiment plans here; 0: the law is not possible in this sheet
+    ratios: Mapping[str, Comparison] = field(default_factory=dict)  # per score, the median ratio to nominal
+
+    @property
+    def key(self) -> CellKey:
+        """Sheet, law and condition."""
+        return self.sheet, self.law, self.condition
 
 
 @dataclass(frozen=True)
@@ -119,8 +144,24 @@ class LawStanding:
 
 
 @dataclass(frozen=True)
+class LawComparison:
+    """Two laws under one condition: the ``score`` of the first less that of the second, draw by draw."""
+
+    sheet: str
+    condition: str
+    level: float
+    laws: tuple[str, str]
+    score: str
+    difference: Comparison
+
+
+@dataclass(frozen=True)
 class Results:
-    """Everything that the matrix, the terminal and the JSON show."""
+    """Everything that the matrix, the terminal and the JSON show.
+
+    ``comparisons`` are of each pair of laws at each level of all sources together. ``counted`` holds the
+    draws that count in each cell that is possible, their ``worst`` the scores named by ``compared``.
+    """
 
     title: str
     arm: str
@@ -137,6 +178,9 @@ class Results:
     failed: int
     advice: str
     break_even: tuple[Mapping[str, object], ...] = field(default_factory=tuple)
+    comparisons: tuple[LawComparison, ...] = ()
+    counted: Mapping[CellKey, CountedDraws] = field(default_factory=dict, compare=False, repr=False)
+    compared: tuple[str, ...] = ()
 
     def cell(self, sheet: str, law: str, condition: str) -> Cell:
         """Return the one cell of that name; KeyError if there is none."""

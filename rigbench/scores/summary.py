@@ -3,15 +3,17 @@
 from __future__ import annotations
 
 from collections.abc import Collection, Iterable, Iterator, Mapping, Sequence
-from dataclasses import replace
+from dataclasses import dataclass, replace
 
 from rigbench.scores.advice import advise
 from rigbench.scores.break_even import break_even_levels
 from rigbench.scores.cell import CountedDraws, build_cell
-from rigbench.scores.gather import CellKey, Frame, gather
+from rigbench.scores.gather import CellKey, Frame, Gathered, gather
+from rigbench.scores.law_pairs import compare_laws
 from rigbench.scores.levels import ladder, tolerated_level
 from rigbench.scores.names import main_score
 from rigbench.scores.pairs import best_law
+from rigbench.scores.ratios import ratios_to_nominal
 from rigbench.scores.results import Cell, Column, LawStanding, Results, Tolerance
 from rigbench.scores.row import Row
 from rigbench.scores.run_table import RunTable, table_of
@@ -19,7 +21,7 @@ from rigbench.scores.run_table import RunTable, table_of
 __all__ = ["summarise"]
 
 MAIN = 0
-"""The place of the main score among those by which laws are compared: it is the only one."""
+"""The place of the main score among those that are compared draw by draw."""
 
 
 def summarise(
@@ -37,32 +39,23 @@ def summarise(
     done: int,
     failed: int,
     absent: Collection[CellKey] = (),
+    also: Sequence[str] = (),
 ) -> Results:
     """Return what the runs of a campaign, finished or not, show: rows, or columns where they are many.
 
     ``sheets`` is ('',) where nothing is swept. ``draws`` is how many each random cell should have. Runs
     whose sheet, law, motion or condition isn't named are passed over. ``planned``, ``done`` and
     ``failed`` count runs and are handed on. ``absent`` are the cells for which nothing is planned, since
-    what they would combine can't be combined.
+    what they would combine can't be combined. The draws' main scores are kept for comparisons, and those
+    that are named by ``also``.
     """
     frame = Frame(tuple(sheets), tuple(laws), tuple(columns), tuple(motions))
     limited = () if tolerance is None else tolerance.limited
     main = main_score(limited)
     table = runs if isinstance(runs, RunTable) else table_of(runs)
-    gathered = gather(table, frame, expected=(main, *limited))
-    nowhere = frozenset(absent)
-    place = gathered.names.index(main)
-    cells, count = [], {}
-    for sheet, law, column in frame.places():
-        key = sheet, law, column.name
-        possible = key not in nowhere
-        cell, here = build_cell(
-            key, column, gathered, motions=motions, tolerance=tolerance, draws=draws, possible=possible
-        )
-        cells.append(cell)
-        if possible:
-            # Laws are compared by one score alone: a copy of it lets the others go.
-            count[key] = replace(here, worst=here.worst[:, place : place + 1].copy())
+    gathered = gather(table, frame, expected=(main, *limited, *also))
+    maker = _Maker(frame, gathered, tolerance, draws, frozenset(absent), tuple(dict.fromkeys([main, *also])))
+    cells, count = maker.cells()
     best = set(_best(frame, count))
     cells = [replace(cell, best=(cell.sheet, cell.law, cell.condition) in best) for cell in cells]
     results = Results(
@@ -81,8 +74,61 @@ def summarise(
         failed=failed,
         advice="",
         break_even=tuple(_break_even(frame, count, main)),
+        comparisons=tuple(compare_laws(frame, count, main, MAIN)),
+        counted=count,
+        compared=maker.compared,
     )
     return replace(results, advice=advise(results))
+
+
+@dataclass(frozen=True)
+class _Maker:
+    """Makes the cells; of their draws it keeps the scores named by ``compared``, and lets the others go."""
+
+    frame: Frame
+    gathered: Gathered
+    tolerance: Tolerance | None
+    draws: int
+    nowhere: Collection[CellKey]
+    compared: tuple[str, ...]
+
+    def cells(self) -> tuple[list[Cell], dict[CellKey, CountedDraws]]:
+        """Return all cells, and the draws that count of those that are possible."""
+        cells: list[Cell] = []
+        count: dict[CellKey, CountedDraws] = {}
+        for sheet in self.frame.sheets:
+            for law in self.frame.laws:
+                cells += self._row(sheet, law, count)
+        return cells, count
+
+    def _row(self, sheet: str, law: str, count: dict[CellKey, CountedDraws]) -> Iterator[Cell]:
+        """Return the cells of one law in one sheet, in order; nominal's draws are needed for every other."""
+        columns = self.frame.columns
+        foot = next((column for column in columns if column.ladder and not column.level), None)
+        nominal = None if foot is None else self._cell(sheet, law, foot)
+        for column in columns:
+            cell, here = nominal if nominal and column is foot else self._cell(sheet, law, column)
+            if nominal and foot:
+                ratios = ratios_to_nominal(
+                    self.gathered.names, (cell, here, column.random), (*nominal, foot.random)
+                )
+                cell = replace(cell, ratios=ratios)
+            if cell.planned:
+                places = [self.gathered.names.index(name) for name in self.compared]
+                count[cell.key] = replace(here, worst=here.worst[:, places])
+            yield cell
+
+    def _cell(self, sheet: str, law: str, column: Column) -> tuple[Cell, CountedDraws]:
+        key = sheet, law, column.name
+        return build_cell(
+            key,
+            column,
+            self.gathered,
+            motions=self.frame.motions,
+            tolerance=self.tolerance,
+            draws=self.draws,
+            possible=key not in self.nowhere,
+        )
 
 
 def _best(frame: Frame, count: Mapping[CellKey, CountedDraws]) -> Iterator[CellKey]:

@@ -73,6 +73,7 @@ class StubRun:
     seconds: float = 0.0
     arm: Any = STUB
     model: None = None
+    directions: None = None
     law: Stub = STUB
     motion: Stub = STUB
     rates: Stub = STUB

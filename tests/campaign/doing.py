@@ -148,13 +148,20 @@ def look_around(run: FakeRun) -> Outcome:
     import numpy as np
     import scipy.linalg
 
+    mark = Path(run.folder) / "looked"
+    looks = len(mark.read_text()) + 1 if mark.exists() else 1
+    mark.write_text("x" * looks)
     before = threads()
+    for process in (os.getppid(), os.getpid()):
+        os.kill(process, signal.SIGTERM)  # which a batch system sends to all: neither server nor worker minds
+    time.sleep(0.2)
     large = np.eye(600) + np.ones((600, 600))
     scipy.linalg.cholesky(large @ large)
     return Outcome(
         run.key(),
         "finished",
         scores={
+            "looks": float(looks),
             "threads_allowed": float(os.environ["OMP_NUM_THREADS"]),
             "threads_of_numba": float(numba.get_num_threads()),
             "threads": before,

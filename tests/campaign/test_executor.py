@@ -164,17 +164,18 @@ def test_closing_drops_what_is_in_hand(doing: ModuleType, make_entries: EntryMak
 
 
 def test_what_a_worker_finds_itself_in(
-    doing: ModuleType, make_entries: EntryMaker, monkeypatch: pytest.MonkeyPatch
+    doing: ModuleType, make_entries: EntryMaker, monkeypatch: pytest.MonkeyPatch, tmp_path: Path
 ) -> None:
-    """One thread for native libraries, limits, no Ctrl-C, no way to our standard output, the rig loaded.
+    """One thread for native libraries, limits, no Ctrl-C, no SIGTERM, no way to our standard output, the rig loaded.
 
     Of all that there is no trace here. The products are large enough for a pool of threads to be used: with
     OMP_NUM_THREADS at 5 numpy's library starts four, on a machine of two cores or more.
     """
     monkeypatch.setenv("OMP_NUM_THREADS", "5")
-    [outcome] = Processes(1, doing.work).run_all(make_entries(one=("look around", {})))
+    entries = make_entries(one=("look around", {"folder": str(tmp_path)}))
+    [outcome] = Processes(1, doing.work).run_all(entries)
     assert outcome.scores == {
-        "threads_allowed": 1.0, "threads_of_numba": 1.0, "threads": 1.0, "threads_after_large_products": 1.0,
+        "looks": 1.0, "threads_allowed": 1.0, "threads_of_numba": 1.0, "threads": 1.0, "threads_after_large_products": 1.0,
         "leads_its_group": 1.0, "memory_is_limited": 1.0, "images_of_memory_kept": 0.0,
         "ignores_ctrl_c": 1.0, "stdout_is_stderr": 1.0, "kernels_are_loaded": 1.0,
     }  # fmt: skip

@@ -38,7 +38,7 @@ def outcome_of(number: int, entry: Entry) -> Outcome:
     if number % 2:
         scores["joint_peak_deg.j1"] = 5e-324
     host_scores = {"law_us": number / 3}
-    if outcome != "finished":
+    if outcome not in ("finished", "hit-stop"):  # what a run that did not finish has counts for nothing
         scores, host_scores = {}, {}
     host = Host(f"CPU {number % 2}", (("numpy", "2"),))
     return Outcome(
@@ -129,6 +129,8 @@ def test_a_store_of_json_rows_is_brought_up_to_date(path: Path, make_plan: PlanM
         assert (old.counts(), old.outcomes()) == (new.counts(), new.outcomes())
         assert old.missing(plan) == new.missing(plan) != []
         assert old.keys("a") == new.keys("a")
+        assert old.keys("another") == ([], ["another"])
+        assert rows_of(old, "runs") == rows_of(new, "runs") == len(plan.entries)  # of which two are one run
         assert [old.host(entry.key) for entry in plan.entries] == [
             new.host(entry.key) for entry in plan.entries
         ]
@@ -204,6 +206,7 @@ def test_brief_results_differ_by_what_is_left_out_alone(path: Path, make_plan: P
         replace(
             cell,
             measures={n: m for n, m in cell.measures.items() if n in left},
+            ratios={n: r for n, r in cell.ratios.items() if n in left},
             motions={
                 motion: replace(part, measures={n: m for n, m in part.measures.items() if n in left})
                 for motion, part in cell.motions.items()
@@ -264,6 +267,20 @@ def test_a_large_store_that_was_closed_in_order_is_opened_at_once(
     monkeypatch.setattr("rigbench.campaign.connection.CHECKED_BYTES", 0)
     with Store.open_for_writing(path, plan) as store, pytest.raises(StoreError, match="is damaged"):
         store.rows()
+
+
+def test_a_large_store_is_checked_whole_before_it_is_brought_up_to_date(
+    path: Path, make_plan: PlanMaker, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """All of it is about to be copied: damage is told first, and the file stays what it is."""
+    plan = make_plan(draws=30)
+    fill_old(path, plan)
+    _scribble(path)
+    before = path.read_bytes()
+    monkeypatch.setattr("rigbench.campaign.connection.CHECKED_BYTES", 0)
+    with pytest.raises(StoreError, match=r"is damaged \(Page"):
+        Store.open_for_writing(path, plan)
+    assert path.read_bytes() == before
 
 
 def test_a_large_store_that_was_cut_short_is_refused_at_once(

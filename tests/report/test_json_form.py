@@ -11,7 +11,8 @@ import numpy as np
 import pytest
 
 from rigbench.report.json_form import results_json
-from rigbench.scores.results import Measure, Results
+from rigbench.scores.comparison import Comparison
+from rigbench.scores.results import LawComparison, Measure, Results
 
 CROSSING = {
     "sheet": "",
@@ -24,13 +25,30 @@ CROSSING = {
 
 def test_the_document_has_its_declared_shape(make_results: Callable[..., Results]) -> None:
     """Key by key, as the commands promise it."""
-    results = replace(make_results(2, 3), break_even=(CROSSING,))
+    gap = Comparison(-0.5, -0.7, -math.inf, 128, False)
+    pair = LawComparison("", "together 0.25", 0.25, ("computed torque", "joint pd"), "tool_peak_mm", gap)
+    results = replace(make_results(2, 3), break_even=(CROSSING,), comparisons=(pair,))
+    ratios = {"tool_peak_mm": Comparison(1.5, 1.2, math.inf, 128, False)}
+    cells = (results.cells[0], replace(results.cells[1], ratios=ratios), *results.cells[2:])
+    results = replace(results, cells=cells)
     document = results_json(results, "results/trays.sqlite")
-    assert list(document) == ["store", "runs", "cells", "laws", "break_even", "advice"]
+    assert list(document) == ["store", "runs", "cells", "laws", "break_even", "comparisons", "advice"]
     assert document["store"] == "results/trays.sqlite"
     assert document["runs"] == {"planned": results.planned, "done": results.done, "failed": results.failed}
     assert document["advice"] == results.advice
     assert document["break_even"] == [{**CROSSING, "level": {"value": 0.7, "low": 0.5, "high": None}}]
+    assert document["comparisons"] == [
+        {
+            "sheet": "",
+            "condition": "together 0.25",
+            "level": 0.25,
+            "laws": ["computed torque", "joint pd"],
+            "score": "tool_peak_mm",
+            "difference": {"value": -0.5, "low": -0.7, "high": None},
+            "draws": 128,
+            "tie": False,
+        }
+    ]
     assert [(c["sheet"], c["law"], c["condition"]) for c in document["cells"]] == [
         (c.sheet, c.law, c.condition) for c in results.cells
     ]
@@ -49,7 +67,9 @@ def test_the_document_has_its_declared_shape(make_results: Callable[..., Results
         "p95_low": peak.p95_low,
         "p95_high": None,
     }
-    assert cell["tool_peak_mm"] == expected
+    ratios = {"ratio": 1.5, "ratio_low": 1.2, "ratio_high": None}
+    assert cell["tool_peak_mm"] == expected | ratios
+    assert cell["settle_ms"]["ratio"] is None
     motion = cell["motions"]["load tray"]
     assert (motion["draws"], motion["passed"], motion["pass_share"]) == (
         128,

@@ -19,7 +19,7 @@ from matplotlib.image import imread
 from matplotlib.patches import Polygon
 
 from rigbench.errors import InputFaults, StoreError
-from rigbench.report import matrix
+from rigbench.report import picture
 from rigbench.report.cells import Grid
 from rigbench.report.matrix import matrix_figure, matrix_picture, text_boxes
 from rigbench.report.paper import INK, Paper
@@ -234,7 +234,7 @@ def test_the_margin_stays_white(make_results: Callable[..., Results], tmp_path: 
     path = tmp_path / "new folder" / "matrix.png"
     matrix_picture(make_results(4, 9), path, DATE)
     pixels = imread(path)[:, :, :3]
-    rim = int(20 * matrix.DPI / 72)
+    rim = int(20 * picture.DPI / 72)
     for edge in (pixels[:rim], pixels[-rim:], pixels[:, :rim], pixels[:, -rim:]):
         assert edge.min() == 1.0
     assert pixels.min() < 0.5
@@ -246,7 +246,7 @@ def test_a_huge_picture_gets_fewer_pixels(
     """Rather than fail in the rasteriser, which takes less than 2^16 pixels a side, the resolution falls."""
     results = make_results(2, 2, sheets=tuple(f"gear_ratio {ratio}" for ratio in range(6)))
     for limit, value, attained in (("MOST_SIDE", 800, max), ("MOST_PIXELS", 5e5, np.prod)):
-        monkeypatch.setattr(matrix, limit, value)
+        monkeypatch.setattr(picture, limit, value)
         matrix_picture(results, tmp_path / "matrix.png", DATE)
         assert 0.9 * value <= attained(imread(tmp_path / "matrix.png").shape[:2]) <= value + 2
         monkeypatch.undo()

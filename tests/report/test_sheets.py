@@ -19,7 +19,7 @@ from matplotlib.image import imread
 from matplotlib.lines import Line2D
 from matplotlib.patches import Polygon
 
-from rigbench.report import matrix
+from rigbench.report import picture
 from rigbench.report.marks import TONES, mark_of
 from rigbench.report.matrix import matrix_figure, matrix_picture, text_boxes
 from rigbench.report.paper import QUIET
@@ -345,7 +345,7 @@ def test_the_margin_of_a_sweep_stays_white(make_results: Callable[..., Results],
     path = tmp_path / "matrix.png"
     matrix_picture(make_results(3, 4, sheets=RATIOS), path, DATE)
     pixels = imread(path)[:, :, :3]
-    rim = int(20 * matrix.DPI / 72)
+    rim = int(20 * picture.DPI / 72)
     for edge in (pixels[:rim], pixels[-rim:], pixels[:, :rim], pixels[:, -rim:]):
         assert edge.min() == 1.0
     one = path.read_bytes()

@@ -17,7 +17,7 @@ from rigbench.report.words import (
     interval,
     level,
     level_words,
-    main_limits,
+    limits_of,
     main_score,
     percent,
     quantity,
@@ -141,11 +141,11 @@ def test_the_main_score_is_the_first_limited_one_of_the_tool(make_results: Calla
     """The cells show the score by which laws are compared, and its limit."""
     results = make_results(1, 1)
     angle = replace(results, tolerance=Tolerance({"settle_ms": 250.0, "tool_angle_peak_deg": 0.5}))
-    assert (main_score(angle), main_limits(angle)) == ("tool_angle_peak_deg", (0.5,))
+    assert (main_score(angle), limits_of(angle, main_score(angle))) == ("tool_angle_peak_deg", (0.5,))
     joint = replace(results, tolerance=Tolerance({"joint_peak_deg.j1": 0.05}))
-    assert (main_score(joint), main_limits(joint)) == ("tool_peak_mm", ())
+    assert (main_score(joint), limits_of(joint, main_score(joint))) == ("tool_peak_mm", ())
     free = replace(results, tolerance=None)
-    assert (main_score(free), main_limits(free)) == ("tool_peak_mm", ())
+    assert (main_score(free), limits_of(free, main_score(free))) == ("tool_peak_mm", ())
 
 
 def test_limits_of_single_motions_are_said_after_the_others(make_results: Callable[..., Results]) -> None:
@@ -159,9 +159,9 @@ def test_limits_of_single_motions_are_said_after_the_others(make_results: Callab
     )
     alone = replace(both, tolerance=Tolerance({}, 0.95, {"rim": rim}))
     assert tolerance_words(alone).startswith("Tolerance: rim: path peak at most 1 mm, ")
-    assert (main_score(alone), main_limits(alone)) == ("path_peak_mm", (1.0,))
+    assert (main_score(alone), limits_of(alone, main_score(alone))) == ("path_peak_mm", (1.0,))
     tighter = replace(both, tolerance=Tolerance({"tool_peak_mm": 3.0}, 0.95, {"rim": {"tool_peak_mm": 1.0}}))
-    assert main_limits(tighter) == (3.0, 1.0)
+    assert limits_of(tighter, main_score(tighter)) == (3.0, 1.0)
 
 
 def test_a_tolerated_level_takes_a_tolerance_and_levels(make_results: Callable[..., Results]) -> None:

@@ -5,6 +5,7 @@ from __future__ import annotations
 import pickle
 import time
 from collections.abc import Callable, Iterable
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -42,6 +43,18 @@ def rows_of(
                         Row(sheet, law, "load", column.name, outcome="finished", scores=scores, **given)
                     )
     return rows
+
+
+def test_laws_are_compared_by_the_main_score_wherever_it_stands() -> None:
+    """With a limit on the tool's angle the lower angle is best, though the other law's peak is lower."""
+    angle = {"pd": 0.1, "computed": 0.2}
+    rows = [
+        replace(row, scores={"tool_peak_mm": 0.5 - angle[row.law], "tool_angle_peak_deg": angle[row.law]})
+        for row in rows_of(linear, [""], ["pd", "computed"], 80)
+    ]
+    results = results_of(rows, tolerance=Tolerance({"tool_angle_peak_deg": 1.0}))
+    assert {cell.law for cell in results.cells if cell.best} == {"pd"}
+    assert {cell.law for cell in results_of(rows).cells if cell.best} == {"computed"}
 
 
 def results_of(rows: list[Row], **given: Any) -> Results:

@@ -1,0 +1,1 @@
+"""The studies that come with the package, one file each; see rigbench.campaign.study."""

@@ -1,0 +1,1 @@
+"""The report of a campaign as one HTML page that needs nothing but itself."""
