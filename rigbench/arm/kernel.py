@@ -28,14 +28,17 @@ def kernel_cache() -> Path:
     """Return the folder of the compiled kernels.
 
     numba's own cache looks at one file's date and misses a change in another file that is compiled
-    into it. So the folder's name is a digest of the source of every room that holds kernels. Where
+    into it. So the folder's name is a digest of the sources of the rooms whose numbers kernels are made
+    of, and of every other file that makes kernels. Where
     the user's cache folder can't be written, a temporary one serves for as long as the machine is up.
     """
     package = Path(__file__).resolve().parent.parent
     digest = hashlib.blake2b(numba.__version__.encode(), digest_size=8)
-    for room in ("arm", "laws", "rig", "scores"):
+    for room in ("arm", "laws", "motion", "rig", "scores"):
         for source in sorted((package / room).glob("*.py")):
-            digest.update(source.read_bytes())
+            text = source.read_bytes()
+            if room in ("arm", "laws", "rig") or b"rigbench.arm.kernel" in text:
+                digest.update(text)
     home = Path(os.environ.get("XDG_CACHE_HOME") or Path.home() / ".cache")
     folder = home / "rigbench" / f"kernels-{digest.hexdigest()}"
     try:

@@ -5,12 +5,13 @@ from __future__ import annotations
 import math
 from dataclasses import dataclass
 
-from rigbench.report.view import RATIO, View
+from rigbench.report.view import MEDIAN, RATIO, SHARE, View
 from rigbench.report.words import (
     NOT_POSSIBLE,
     figure,
     interval,
     limits_of,
+    main_score,
     percent,
     quantity,
     tolerated_words,
@@ -53,7 +54,7 @@ class CellWords:
     @property
     def head(self) -> str:
         """The line above the figure."""
-        return ", ".join(filter(None, (self.verdict, self.change or ("best" if self.best else ""))))
+        return ", ".join(filter(None, (self.verdict, "best" if self.best else "", self.change)))
 
 
 class Grid:
@@ -63,6 +64,8 @@ class Grid:
         self.results, self.view, self.changes = results, view, changes
         self.score = view.score_of(results)
         self.shares = view.shares(results)
+        # By which law is best is decided: of other numbers the mark would be misread.
+        self.marks_best = view.show in {SHARE, MEDIAN} and self.score == main_score(results) and not changes
         self.limits = () if view.show == RATIO else limits_of(results, self.score)
         self.score_name = score_words(self.score)[0]
         self._cells = {cell.key: cell for cell in results.cells}
@@ -125,8 +128,9 @@ class Grid:
         change = self.changes.cells[cell.key] if self.changes else None
         if change is not None:
             lines += self._earlier(change, column)
+        best = cell.best and self.marks_best
         return CellWords(
-            cell.verdict, cell.best, *shown, tuple(lines), ink, change=change.kind if change else ""
+            cell.verdict, best, *shown, tuple(lines), ink, change=change.kind if change else ""
         )
 
     def _nothing(self, cell: Cell) -> str:

@@ -18,12 +18,13 @@ def results_json(results: Results, store: str) -> dict[str, Any]:
     """Return the results as plain values that ``json.dumps(..., allow_nan=False)`` takes.
 
     ``{"store", "runs": {"planned", "done", "failed"}, "cells": [...], "laws": [...], "break_even": [...],
-    "comparisons": [...], "advice"}``. A cell holds sheet, law, condition, level, draws, incomplete, pass_share, pass_low,
-    pass_high, verdict, planned (how many draws; 0 where the law is not possible); then each
-    score by name, ``{"median", "p95", "median_low", "median_high", "p95_low", "p95_high", "ratio",
-    "ratio_low", "ratio_high"}`` in the unit that the name carries, the ratio being to nominal, draw by draw; and ``"motions"``, each with draws, passed, pass_share and its scores. What is
-    infinite, or isn't there, is None: p95_high where the draws don't reach, the tolerated level's high where
-    no level was shown to miss, all shares without a tolerance, all verdicts where a law is not possible.
+    "comparisons": [...], "advice"}``. A cell holds sheet, law, condition, level, draws, incomplete,
+    pass_share, pass_low, pass_high, verdict, planned (how many draws; 0 where the law is not possible);
+    then each score by name, ``{"median", "p95", "median_low", "median_high", "p95_low", "p95_high", "ratio",
+    "ratio_low", "ratio_high"}`` in the unit that the name carries, the ratio being to nominal, draw by draw;
+    and ``"motions"``, each with draws, passed, pass_share and its scores. What is infinite, or isn't there, is
+    None: p95_high where the draws don't reach, the tolerated level's high where no level was shown to miss,
+    all shares without a tolerance, all verdicts where a law is not possible.
     A comparison is of two laws under one condition: ``{"sheet", "condition", "level", "laws", "score",
     "difference": {"value", "low", "high"}, "draws", "tie"}``, the first law's score less the second's.
     """

@@ -60,7 +60,7 @@ def entries(paper: Paper, grid: Grid, arrangement: Arrangement) -> Iterator[Entr
         yield 0, None, f"Where nothing is random, one exact run shows {_exact(grid)}."
     if grid.changes:
         yield from _change_entries(paper, grid.changes)
-    elif any(cell.best for cell in results.cells):
+    elif grid.marks_best and any(cell.best for cell in results.cells):
         yield 0, None, "best: better than every other law of its column, beyond the interval."
     if any(cell.incomplete for cell in results.cells):
         yield (

@@ -37,8 +37,8 @@ def matrix_picture(
 
     Rows are laws, best tolerated level first; columns are conditions. The sheets of a sweep stand side by
     side, and beneath them the laws' tolerated levels as curves. ``view`` says which number the cells show,
-    ``changes`` what was otherwise in the store named ``other``. The same results and date give the same bytes.
-    Missing folders are made.
+    ``changes`` what was otherwise in the store named ``other``. The same results and date
+    give the same bytes. Missing folders are made.
 
     Raises InputFaults for another suffix and StoreError if the file can't be written.
     """

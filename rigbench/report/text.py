@@ -151,7 +151,7 @@ def _cell_lines(words: CellWords) -> list[str]:
     if words.interval:
         figure += f" ({words.interval.replace(' to ', '-')})"
     lines = [f"{figure} {words.verdict}".strip(), *words.lines]
-    if words.best and not words.change:
+    if words.best:
         lines[min(1, len(lines) - 1)] += ", best"
     if words.change:
         lines.insert(1, words.change)

@@ -78,6 +78,11 @@ class Chart:
     width: float = WIDTH
 
     @property
+    def endless(self) -> bool:
+        """Whether any median is infinite."""
+        return any(curve.beyond for curve in self.curves)
+
+    @property
     def bottom(self) -> float:
         """Where the level axis lies."""
         return self.height - FOOT

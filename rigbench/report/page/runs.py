@@ -84,7 +84,9 @@ class _Table:
             wall = np.array([one or 0.0 for one in block.more["wall_s"]])
             keys = np.array(block.more["key"], dtype=KEY)
             parts.append((block.place, block.draw, outcome, keys, wall, block.scores))
-        self.place, self.draw, self.outcome, self.key, self.wall, self.scores = _joined(parts, len(self.names))
+        self.place, self.draw, self.outcome, self.key, self.wall, self.scores = _joined(
+            parts, len(self.names)
+        )
         self.state = np.array([STATES[outcome] for outcome in OUTCOMES])[self.outcome]
         self._places = store.places()
         self._cells = {(cell.sheet, cell.law, cell.condition): n for n, cell in enumerate(results.cells)}

@@ -9,7 +9,7 @@ from typing import Any
 
 from rigbench.report.axis import LevelAxis
 from rigbench.report.cells import CellWords, Grid
-from rigbench.report.words import level, level_words, percent
+from rigbench.report.words import level_words, percent
 from rigbench.scores.levels import ladder
 from rigbench.scores.names import score_words
 from rigbench.scores.results import Cell, Column
@@ -51,6 +51,7 @@ class Shown:
 
     number: int
     words: CellWords
+    lines: Sequence[str]  # the small ones, no number of them parted from its unit
     shade: int | None
     condition: str
     wait: bool  # the first cell of its matrix, which the tabulator reaches
@@ -90,7 +91,8 @@ def matrix_rows(grid: Grid, sheet: str, laws: Sequence[str], levels: bool) -> It
             words = grid.words(sheet, law, column)
             shade = None if words.ink is None else round(STEPS * min(max(words.ink, 0.0), 1.0))
             at = number[sheet, law, column.name]
-            cells.append(Shown(at, words, shade, column.name, place == 0 and k == 0))
+            lines = ["\u00a0".join(line.rsplit(" ", 1)) for line in words.lines]
+            cells.append(Shown(at, words, lines, shade, column.name, place == 0 and k == 0))
         yield Row(
             law, cells, grid.level(sheet, law) if levels else "", _strip(grid, sheet, law) if levels else None
         )
@@ -128,13 +130,15 @@ def evidence(grid: Grid, laws: Sequence[str], levels: bool) -> list[Evidence]:
 
 
 def _deciding(grid: Grid, sheet: str, law: str) -> list[Column]:
-    """Return the columns of the largest level kept and the smallest missed, and of what is open between."""
+    """Return the columns of the largest level kept, of the next one, and of the smallest missed."""
     steps = ladder(grid.results.columns) or grid.results.columns[:1]
     tolerated = grid.tolerated(sheet, law)
     if tolerated is None:
         return list(steps[-1:])
-    ends = [step for step in steps if (step.level or 0.0) in (tolerated.low, tolerated.high)]
-    return ends or list(steps[:1])
+    levels = [step.level or 0.0 for step in steps]
+    beyond = next((at for at in levels if at > tolerated.low), tolerated.high)
+    wanted = {tolerated.low, min(beyond, tolerated.high), tolerated.high}
+    return [step for step, at in zip(steps, levels, strict=True) if at in wanted]
 
 
 def _cell_words(grid: Grid, cell: Cell, column: Column) -> str:
@@ -172,5 +176,5 @@ def break_even_rows(grid: Grid) -> Iterator[dict[str, Any]]:
             "above": other if below == one else one,
             "score": score_words(found["score"])[0],
             "level": f"{found['level']['value']:.2g}",
-            "interval": f"{level(low)} to {'no end' if math.isinf(high) else level(high)}",
+            "interval": f"{low:.2g} to {'no end' if math.isinf(high) else f'{high:.2g}'}",
         }
