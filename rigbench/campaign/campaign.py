@@ -2,17 +2,19 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Iterator, Sequence
 
 from rigbench.campaign.doing import Doing, Studying
 from rigbench.campaign.executor import Executor
 from rigbench.campaign.part import Part
-from rigbench.campaign.plan import Plan
+from rigbench.campaign.plan import Entry, Plan
 from rigbench.campaign.progress import Progress, Tracker
 from rigbench.campaign.reading import Counts
+from rigbench.campaign.settling import Settling
 from rigbench.campaign.stopping import stop_signals
 from rigbench.campaign.store import Store
 from rigbench.campaign.tally import Tally
+from rigbench.campaign.work import Outcome
 from rigbench.errors import Stopped
 
 __all__ = ["run_campaign"]
@@ -37,6 +39,9 @@ def run_campaign(
     names laws to be run anew, see :meth:`Store.run_anew`. An outcome is stored as it comes, in a
     transaction of its own. ``on_progress`` is called at the start and after each.
 
+    Where the plan is to stop early, a column's runs are no longer begun once it is settled; what is in hand then
+    is stored all the same. See :class:`Settling`.
+
     The plan's studies follow, each with rounds of runs until it is finished; not where a part of the draws is
     asked for, since what a study asks next depends on all of them.
 
@@ -51,14 +56,20 @@ def run_campaign(
     for law in again:
         store.run_anew(law)
     missing = [entry for entry in store.missing(plan) if part.has(entry)]
+    settling = Settling.read(plan, store)
+    store.record_settled(settling.settled)
     tally = None if on_progress is None else Tally(plan, store, missing)
     tracker = Tracker(plan, part, missing, store.settled_troubles(part.draws), tally)
+    tracker.settle(settling)
     report = on_progress or (lambda _: None)
     studying = None
     with stop_signals(part.ends, on_stop) as stop:
         doing = Doing(store, stop, jobs, executor)
         report(tracker.progress())
-        for outcome in doing.outcomes(missing):
+        for outcome in _matrix(doing, missing, settling):
+            if settling.count(outcome):
+                store.record_settled(settling.settled)
+                tracker.settle(settling)
             tracker.count(outcome)
             report(tracker.progress())
         for study in plan.studies if part.draws is None else ():
@@ -72,3 +83,18 @@ def run_campaign(
     if stop.why and (tracker.left or (studying is not None and studying.done < studying.asked)):
         raise Stopped(done, planned, part.resume(plan.resume), stop.why)
     return counts
+
+
+def _matrix(doing: Doing, missing: Sequence[Entry], settling: Settling) -> Iterator[Outcome]:
+    """Do the runs of the matrix that are wanted, until none is left.
+
+    A column that was settled is open again if a run that had come to nothing comes to another result when it
+    is done anew: then there is more to do.
+    """
+    left = {entry.key: entry for entry in missing}
+    while todo := [entry for entry in left.values() if settling.wants(entry)]:
+        for outcome in doing.outcomes(todo, settling.wants):
+            del left[outcome.key]
+            yield outcome
+        if doing.stop.why or all(entry.key in left for entry in todo):
+            return

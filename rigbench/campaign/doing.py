@@ -27,12 +27,17 @@ class Doing:
         self._store, self._jobs, self._executor = store, jobs, executor
         self._draws = Draws()
 
-    def outcomes(self, entries: Sequence[Entry]) -> Iterator[Outcome]:
-        """Do the entries' runs, and yield each outcome once it is stored."""
+    def outcomes(
+        self, entries: Sequence[Entry], wanted: Callable[[Entry], bool] = lambda _: True
+    ) -> Iterator[Outcome]:
+        """Do the entries' runs, those that are still ``wanted`` when it is their turn.
+
+        Each outcome is yielded once it is stored.
+        """
         executor = self._executor or executor_for(self._jobs, len(entries))
         by_key = {entry.key: entry for entry in entries}
         try:
-            with closing(executor.run_all(self.stop.until(entries))) as outcomes:
+            with closing(executor.run_all(filter(wanted, self.stop.until(entries)))) as outcomes:
                 for outcome in outcomes:
                     if self.stop.at_once:  # a law may have swallowed the interrupt: its run is dropped too
                         break

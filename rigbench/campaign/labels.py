@@ -14,7 +14,10 @@ __all__ = ["Labels"]
 
 @dataclass(frozen=True)
 class Labels:
-    """What a store says about its campaign; the fields are those of the :class:`Plan` it was given last."""
+    """What a store says about its campaign; the fields are those of the :class:`Plan` it was given last.
+
+    But for ``settled``: each column that stopped early, as (sheet, condition, after how many draws).
+    """
 
     title: str
     arm: str
@@ -26,11 +29,14 @@ class Labels:
     tolerance: Tolerance | None
     resume: str
     absent: tuple[tuple[str, str, str], ...] = ()
+    stop_early: bool = False
+    settled: tuple[tuple[str, str, int], ...] = ()
 
     @classmethod
     def of(cls, plan: Plan) -> Labels:
-        """Return the labels of a plan."""
-        return cls(**{field.name: getattr(plan, field.name) for field in dataclasses.fields(cls)})
+        """Return the labels of a plan of which nothing is known yet."""
+        names = {field.name for field in dataclasses.fields(cls)} - {"settled"}
+        return cls(**{name: getattr(plan, name) for name in names})
 
     def to_json(self) -> str:
         """Return the labels as one JSON object."""
@@ -53,5 +59,6 @@ class Labels:
         found["columns"] = tuple(Column(**column) for column in found["columns"])
         if found["tolerance"] is not None:
             found["tolerance"] = Tolerance(**found["tolerance"])
-        found["absent"] = tuple(tuple(place) for place in found.get("absent", ()))
+        for name in ("absent", "settled"):
+            found[name] = tuple(tuple(place) for place in found.get(name, ()))
         return cls(**found)

@@ -9,6 +9,7 @@ from dataclasses import dataclass
 
 from rigbench.campaign.part import Part
 from rigbench.campaign.plan import Entry, Plan
+from rigbench.campaign.settling import Settling
 from rigbench.campaign.tally import Standing, Tally
 from rigbench.campaign.work import Outcome
 from rigbench.scores.row import MACHINE_OUTCOMES
@@ -22,6 +23,7 @@ class Progress:
 
     ``rate`` [1/s] since the first run ended, and ``seconds_left`` by it, once they can be told; ``ends_in``
     [s] until its time is up, if that is limited; ``standing`` how the laws stand so far, if that is counted.
+    ``settled``: so many columns stopped early, whose further runs are not planned any more.
     ``study`` names the study that is at work, if one is: then the runs are those it has asked for so far.
     """
 
@@ -33,6 +35,7 @@ class Progress:
     ends_in: float | None = None
     standing: Standing | None = None
     study: str = ""
+    settled: int = 0
 
 
 class Tracker:
@@ -46,12 +49,17 @@ class Tracker:
         self._planned, self._failed = weights.total(), failed
         self._done = self._planned - sum(self._weights.values()) - failed
         self._ends, self._tally = part.ends, tally
+        self._left = {entry.key: entry for entry in missing}
+        self._spared: set[str] = set()
+        self._settled = 0
         self._first: tuple[float, int] | None = None  # when a run first ended, and its weight
         self._ran = 0
 
     def count(self, outcome: Outcome) -> None:
         """Count what came of a run."""
         weight = self._weights[outcome.key]
+        self._left.pop(outcome.key, None)
+        self._spared.discard(outcome.key)
         if outcome.outcome in MACHINE_OUTCOMES:
             self._done += weight
         else:
@@ -61,10 +69,20 @@ class Tracker:
         if self._tally is not None:
             self._tally.count(outcome)
 
+    def settle(self, settling: Settling) -> None:
+        """Learn which columns are settled: runs that nobody wants any more are no longer planned."""
+        self._spared = {key for key, entry in self._left.items() if not settling.wants(entry)}
+        self._settled = len(settling.settled)
+
+    @property
+    def planned(self) -> int:
+        """Runs that are planned still."""
+        return self._planned - sum(self._weights[key] for key in self._spared)
+
     @property
     def left(self) -> int:
         """Planned runs that have come to nothing yet."""
-        return self._planned - self._done - self._failed
+        return self.planned - self._done - self._failed
 
     def progress(self) -> Progress:
         """Return how far the campaign is now."""
@@ -73,11 +91,12 @@ class Tracker:
         if self._first is not None and self._ran > self._first[1]:  # before, workers start and compile
             rate = (self._ran - self._first[1]) / max(now - self._first[0], 1e-9)
         return Progress(
-            self._planned,
+            self.planned,
             self._done,
             self._failed,
             rate,
             None if rate is None else self.left / rate,
             None if self._ends is None else max(0.0, self._ends - now),
             None if self._tally is None else self._tally.standing,
+            settled=self._settled,
         )

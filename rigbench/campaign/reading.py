@@ -9,7 +9,7 @@ from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from types import TracebackType
-from typing import Self
+from typing import TYPE_CHECKING, Self
 
 from rigbench.campaign.blocks import SIZE, Block, blocks, layouts, stored_scores
 from rigbench.campaign.connection import connect, owner, speaking_plainly
@@ -26,11 +26,20 @@ from rigbench.scores.names import main_score
 from rigbench.scores.results import Results
 from rigbench.scores.row import HOST_OUTCOMES, MACHINE_OUTCOMES, SETTLED_TROUBLES, Row
 
+if TYPE_CHECKING:
+    from rigbench.scores.searched import Searched  # not at run time: it brings scipy
+
 __all__ = ["Counts", "Reader", "Record"]
 
 PLANNED = "plan CROSS JOIN runs USING (id) CROSS JOIN keys USING (id) CROSS JOIN places ON places.id = place"
 IN_STUDIES = "studied CROSS JOIN runs USING (id) CROSS JOIN keys USING (id)"
 """Where the runs of the plan and those of the studies are found; either may be asked for the same columns."""
+
+IN_PLAY = (
+    "(SELECT id, draw FROM plan LEFT JOIN (SELECT CAST(key AS INTEGER) AS at, value AS after FROM json_each(?))"
+    " ON at = place WHERE draw IS NULL OR after IS NULL OR draw < after)"
+)
+"""The plan without the draws of columns that stopped before them; its parameter is what _ends returns."""
 
 SETTLED = (*MACHINE_OUTCOMES, *SETTLED_TROUBLES)
 """Outcomes that the same run would have again. The others are tried anew by the next campaign."""
@@ -188,9 +197,17 @@ class Reader:
             return dict(
                 self._connection.execute(
                     "SELECT CASE WHEN anew THEN '' ELSE coalesce(outcome, '') END, count(*)"
-                    " FROM plan LEFT JOIN runs USING (id) GROUP BY 1"
+                    f" FROM {IN_PLAY} LEFT JOIN runs USING (id) GROUP BY 1",
+                    (self._ends(),),
                 )
             )
+
+    def _ends(self) -> str:
+        """Return after how many draws each place was settled that stopped early, as JSON."""
+        ends = {(sheet, condition): after for sheet, condition, after in self.labels.settled}
+        places = self.places().items() if ends else ()
+        found = {number: ends.get((place.sheet, place.condition)) for number, place in places}
+        return json.dumps({number: after for number, after in found.items() if after is not None})
 
     def records(self) -> Iterator[Record]:
         """Yield what is stored of the planned runs, in the order of the plan."""
@@ -365,7 +382,8 @@ class Reader:
             names = tuple(dict.fromkeys([main_score(limited), *limited, *also])) if brief else None
             names = self.scores() if names is None else names
             table, outcomes = tabled(self.blocks(names, ("anew",)), self.places(), self.planned(), names)
-            counts = _counts(outcomes)
+            counts = self.counts() if labels.settled else _counts(outcomes)
+            search = self._searched(labels)
         return summarise(
             table,
             title=labels.title,
@@ -381,7 +399,19 @@ class Reader:
             failed=counts.failed,
             absent=labels.absent,
             also=also,
+            search=search,
+            stop_early=labels.stop_early,
+            settled={(sheet, condition): after for sheet, condition, after in labels.settled},
         )
+
+    def _searched(self, labels: Labels) -> Searched | None:
+        """Return what the study find_level has shown, once it is finished."""
+        from rigbench.campaign.studies.find_level import NAME, searched_of
+
+        study = self.study(NAME)
+        if study is None or not study.finished or labels.tolerance is None:
+            return None
+        return searched_of(study, labels.tolerance)
 
 
 def _counts(outcomes: Mapping[str, int]) -> Counts:

@@ -8,6 +8,7 @@ write-ahead-log mode; at rest it is one plain file that can be copied and read f
 from __future__ import annotations
 
 import contextlib
+import dataclasses
 import hashlib
 import json
 import sqlite3
@@ -25,7 +26,7 @@ from rigbench.campaign.owner import Owner
 from rigbench.campaign.packing import packed
 from rigbench.campaign.places import Places
 from rigbench.campaign.plan import Entry, Plan
-from rigbench.campaign.reading import Reader
+from rigbench.campaign.reading import IN_PLAY, Reader
 from rigbench.campaign.studied import forget, record_study
 from rigbench.campaign.study import Study
 from rigbench.campaign.work import Host, Outcome
@@ -113,6 +114,15 @@ class Store(Reader):
             connection.executemany("INSERT INTO places VALUES (?, ?, ?, ?, ?, ?, ?, ?)", places.rows())
             connection.executemany("INSERT INTO parts VALUES (?, ?)", keeper.texts.items())
 
+    def record_settled(self, settled: Mapping[tuple[str, str], int]) -> None:
+        """Put down after how many draws each column, a sheet and condition, was settled and stopped."""
+        labels = self.labels
+        new = tuple((*column, after) for column, after in settled.items())
+        if new != labels.settled:
+            with self._transaction() as connection:
+                text = dataclasses.replace(labels, settled=new).to_json()
+                connection.execute("UPDATE campaign SET labels = ?", (text,))
+
     def record_study(self, study: Study, entries: Iterable[Entry], finished: bool) -> None:
         """Put down all runs that a study has asked for so far, and whether all of them are stored."""
         with self._transaction() as connection:
@@ -182,9 +192,9 @@ class Store(Reader):
         marks = ", ".join("?" * len(SETTLED_TROUBLES))
         with speaking_plainly(self.path):
             query = self._connection.execute(
-                f"SELECT count(*) FROM plan JOIN runs USING (id) WHERE NOT anew AND outcome IN ({marks})"
+                f"SELECT count(*) FROM {IN_PLAY} JOIN runs USING (id) WHERE NOT anew AND outcome IN ({marks})"
                 " AND (draw IS NULL OR draw < coalesce(?, draw + 1))",
-                (*SETTLED_TROUBLES, draws),
+                (self._ends(), *SETTLED_TROUBLES, draws),
             )
             number: int = query.fetchone()[0]
         return number

@@ -22,7 +22,7 @@ app = typer.Typer(
     help="A software test rig for the joint control of robot arms: which law still meets the tolerance on a "
     "machine that is not the one in the model?",
     epilog="Exit codes: 0 done; 1 an error that nobody foresaw; 2 the input is at fault; 3 a campaign "
-    "stopped before its end and can be resumed; 5 the store or the disk.",
+    "stopped before its end and can be resumed; 4 'gate' says no; 5 the store or the disk.",
     no_args_is_help=True,
     add_completion=False,
     rich_markup_mode=None,
@@ -149,24 +149,111 @@ def status(
             print_status(store, as_json)
 
 
-@app.command(epilog="Example: rigbench matrix results/first-look.sqlite -o matrix.svg")
+@app.command(
+    epilog="Example: rigbench matrix results/first-look.sqlite --show p95 --score settle_ms -o matrix.svg"
+)
 def matrix(
     store: StoreFile,
+    shown: Annotated[
+        str,
+        typer.Option(
+            "--show",
+            metavar="share|median|p95|ratio",
+            help="in each cell the share of draws that keep the tolerance; or of a score the median, the "
+            "95th percentile, or the median ratio to nominal",
+        ),
+    ] = "share",
+    score: Annotated[
+        str | None,
+        typer.Option(metavar="NAME", help="of which score; by default the one by which laws are compared"),
+    ] = None,
+    against: Annotated[
+        str | None,
+        typer.Option(metavar="OLD", help="show what changed since another store of the same experiment"),
+    ] = None,
+    curves: Annotated[
+        bool, typer.Option("--curves", help="draw curves against the level instead, with bands and tolerance")
+    ] = False,
+    drivers: Annotated[
+        str | None,
+        typer.Option(
+            metavar="LAW", help="show instead which source's draws drive this law's score and failures"
+        ),
+    ] = None,
+    condition: Annotated[
+        str | None,
+        typer.Option(
+            metavar="NAME",
+            help="with --drivers: under which condition; all sources nearest to level 1 if left out",
+        ),
+    ] = None,
+    sheet: Annotated[
+        str | None, typer.Option(metavar="NAME", help="with --drivers: in which sheet; the first if left out")
+    ] = None,
+    text: Annotated[
+        bool, typer.Option("--text", help="print instead of drawing, with the laws compared draw by draw")
+    ] = False,
     output: Annotated[
         str | None,
         typer.Option(
             "--output",
             "-o",
-            help="a .png, .svg or .pdf file; STORE's name and -matrix.png if left out",
+            help="a .png, .svg or .pdf file; STORE's name and -matrix.png (or what else is drawn) if left out",
         ),
     ] = None,
     as_json: Json = False,
 ) -> None:
-    """Draw the results matrix of what is stored."""
-    with telling(as_json):
-        from rigbench.cli.stored import draw_matrix
+    """Draw the results matrix of what is stored, or what drives a law, or curves against the level.
 
-        draw_matrix(store, output, as_json)
+    A score is any that 'export' writes, of a single joint too (joint_peak_deg.j1).
+    """
+    with telling(as_json):
+        from rigbench.cli.matrix import Wanted, draw_matrix
+
+        wanted = Wanted(shown, score, against, curves, drivers, condition, sheet, text, output)
+        draw_matrix(store, wanted, as_json)
+
+
+@app.command(epilog="Example: rigbench gate results/first-look.sqlite --law 'computed torque' --level 1")
+def gate(
+    store: StoreFile,
+    law: Annotated[
+        list[str],
+        typer.Option(metavar="NAME", help="the law that must be good enough; may be given several times"),
+    ],
+    level: Annotated[
+        float | None,
+        typer.Option(metavar="L", help="with all sources together at this level; nearest to 1 if left out"),
+    ] = None,
+    condition: Annotated[
+        str | None, typer.Option(metavar="NAME", help="under this condition instead")
+    ] = None,
+    sheet: Annotated[
+        list[str] | None,
+        typer.Option(metavar="NAME", help="in this sheet alone; may be given several times; all if left out"),
+    ] = None,
+    baseline: Annotated[
+        str | None,
+        typer.Option(metavar="OLD", help="a store of the same experiment than which it must not be worse"),
+    ] = None,
+    allow_open: Annotated[
+        bool, typer.Option("--allow-open", help="let pass what the draws show neither to keep nor to miss")
+    ] = False,
+    junit: Annotated[
+        str | None, typer.Option(metavar="FILE", help="write the checks as JUnit XML too, for CI systems")
+    ] = None,
+    as_json: Json = False,
+) -> None:
+    """Leave with exit code 4 if a law misses its tolerance, is open, or got worse than a baseline; say why.
+
+    Worse is what is shown on the same draws, beyond the 95 % interval: fewer draws pass, or with as many
+    the main score is larger. A law of which nothing was run fails.
+    """
+    with telling(as_json):
+        from rigbench.cli.gate import Asked, gate_store
+
+        asked = Asked(tuple(law), level, condition, tuple(sheet or ()), baseline, allow_open, junit)
+        gate_store(store, asked, as_json)
 
 
 @app.command(epilog="Example: rigbench report results/first-look.sqlite -o first-look.html")
@@ -266,6 +353,27 @@ def audit(
         from rigbench.cli.audit import audit_arm
 
         audit_arm(arm, output, as_json)
+
+
+@app.command(epilog="Example: rigbench needs results/needs-tray6.sqlite -o needs.png")
+def needs(
+    store: StoreFile,
+    law: Annotated[str | None, typer.Option(help="of this law alone")] = None,
+    output: Annotated[
+        str | None,
+        typer.Option("--output", "-o", help="draw it too: a .png, .svg or .pdf file"),
+    ] = None,
+    as_json: Json = False,
+) -> None:
+    """Show which sources of mismatch must be known, and how well.
+
+    The experiment asks for it by its key 'needs', and 'run' does the runs after those of the matrix. What to
+    identify first stands first: the largest total share of the variance; then what tolerates least alone.
+    """
+    with telling(as_json):
+        from rigbench.cli.needs import tell_needs
+
+        tell_needs(store, law, output, as_json)
 
 
 @app.command(epilog="Example: rigbench schema > rigbench.schema.json")

@@ -68,6 +68,8 @@ def _lines(experiment: Experiment, plan: Plan, stored: Stored, estimate: Estimat
     if stored.runs is not None:
         yield f"stored: {stored.runs} of them, in {stored.path}"
     yield from _draws_lines(experiment)
+    for study in plan.studies:
+        yield f"{study.name}: at most {counted(study.most_runs, 'run')} more, after those of the plan"
     if stored.runs == len(plan.entries):
         yield "time: none, all is stored"
     elif estimate.seconds is None:
@@ -75,7 +77,8 @@ def _lines(experiment: Experiment, plan: Plan, stored: Stored, estimate: Estimat
     else:
         cores = counted(estimate.cores, "core")
         said = f"{duration_words(estimate.seconds)} on {cores}"
-        yield f"time: {said}; an estimate, from a short run of each law"
+        besides = "".join(f", without {study.name}" for study in plan.studies)
+        yield f"time: {said}{besides}; an estimate, from a short run of each law"
     if estimate.store_bytes is not None:
         yield f"store: {size_words(estimate.store_bytes)} when all is done; an estimate, from a small one"
 
@@ -130,6 +133,7 @@ def _document(experiment: Experiment, plan: Plan, stored: Stored, estimate: Esti
         "draws_needed": None if share is None else draws_needed(share),
         "misses_allowed": None if share is None else misses_allowed(share, plan.draws),
         "runs": {"planned": len(plan.entries), "stored": stored.runs},
+        "studies": [{"name": study.name, "most_runs": study.most_runs} for study in plan.studies],
         "estimate": {
             "seconds": estimate.seconds,
             "cores": estimate.cores,

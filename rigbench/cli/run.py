@@ -7,6 +7,7 @@ import shlex
 import time
 from collections import Counter
 from collections.abc import Collection, Iterator
+from dataclasses import replace
 from pathlib import Path
 
 from rigbench.campaign.campaign import run_campaign
@@ -51,6 +52,7 @@ def run_experiment(file: str, wishes: Wishes, as_json: bool) -> None:
         path = store_path(file, wishes.store)
         executor = None
         if wishes.cluster is not None:  # before anything is set aside or stored
+            plan = replace(plan, resume=f"{plan.resume} --cluster {shlex.quote(wishes.cluster)}")
             executor = cluster_executor(wishes.cluster, plan.entries, say)
         if wishes.fresh:
             make_room(path, plan, wishes.sure)
@@ -93,7 +95,7 @@ def _campaign(
         return stopped
     except ClusterLost as lost:
         counts = store.counts()
-        return Stopped(counts.done + counts.failed, counts.planned, part.resume(plan.resume), str(lost))
+        return Stopped(counts.done + counts.failed, counts.planned, part.resume(plan.resume), f"as {lost}")
     return None
 
 

@@ -1,8 +1,7 @@
-"""``rigbench status``, ``matrix`` and ``export``: what is in a store."""
+"""``rigbench status`` and ``export``: what is in a store."""
 
 from __future__ import annotations
 
-import datetime
 import io
 import tempfile
 from collections.abc import Callable, Iterable, Iterator
@@ -19,7 +18,7 @@ from rigbench.report import cautions
 from rigbench.report.output_file import write_whole
 from rigbench.scores.results import Results
 
-__all__ = ["CAUTION", "draw_matrix", "export_runs", "picture_path", "print_status", "status_text"]
+__all__ = ["CAUTION", "check_output", "export_runs", "picture_path", "print_status", "status_text"]
 
 CAUTION = f"{cautions.CAUTION.removesuffix('.')}; see the cautions in the README."
 
@@ -29,9 +28,9 @@ PART = 65536
 """Characters of a table that are printed at once."""
 
 
-def picture_path(store: Path) -> Path:
-    """Return where the picture of a store goes: <name>-matrix.png beside it."""
-    return store.with_name(f"{store.stem}-matrix.png")
+def picture_path(store: Path, of: str = "matrix") -> Path:
+    """Return where a picture of a store goes: <name>-matrix.png beside it."""
+    return store.with_name(f"{store.stem}-{of}.png")
 
 
 def print_status(path: str, as_json: bool) -> None:
@@ -51,8 +50,7 @@ def status_text(results: Results, notes: Iterable[str] = ()) -> str:
     """Return the matrix, the advice and the notes, as wide as the terminal."""
     from rigbench.report.text import matrix_text
 
-    parts = [matrix_text(results, width()), paragraph(results.advice), *map(paragraph, notes)]
-    return "\n\n".join(parts)
+    return "\n\n".join([matrix_text(results, width()), paragraph(results.advice), *map(paragraph, notes)])
 
 
 def _notes(hosts: Iterable[Host]) -> Iterator[str]:
@@ -66,21 +64,6 @@ def _notes(hosts: Iterable[Host]) -> Iterator[str]:
     if differ:
         said = " and ".join(differ)
         yield f"Note: the stored runs were done with different {said}, so last digits may differ."
-
-
-def draw_matrix(path: str, output: str | None, as_json: bool) -> None:
-    """Draw the matrix of what is stored."""
-    from rigbench.report.matrix import matrix_picture
-
-    picture = picture_path(Path(path)) if output is None else Path(output)
-    _check_output(picture, path)
-    with Store.open_for_reading(path) as store:
-        results = store.results(brief=True)
-    matrix_picture(results, picture, datetime.date.today())
-    if as_json:
-        print_json({"store": path, "picture": str(picture)})
-    else:
-        show(str(picture))
 
 
 def export_runs(path: str, output: str | None, as_json: bool) -> None:
@@ -100,7 +83,7 @@ def export_runs(path: str, output: str | None, as_json: bool) -> None:
         return
     columns = Path(output).with_name(f"{Path(output).stem}-columns.csv")
     for file in (Path(output), columns):
-        _check_output(file, path)
+        check_output(file, path)
     write = _parquet if Path(output).suffix.lower() == ".parquet" else _csv
     if write is _parquet:
         check_parquet(output)
@@ -137,6 +120,7 @@ def _as_text(stream: BinaryIO, write: Callable[[TextIO], T]) -> T:
         text.detach()
 
 
-def _check_output(output: Path, store: str) -> None:
+def check_output(output: Path, store: str) -> None:
+    """Raise InputFaults for an output that is the store itself."""
     if output.resolve() == Path(store).resolve():
         raise InputFaults.one(output, "-o", "is the store itself", "another file")

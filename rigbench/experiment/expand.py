@@ -11,9 +11,18 @@ from rigbench.experiment.condition_keys import ConditionsKeys
 from rigbench.laws.registry import LawChoice
 from rigbench.motion.motion import Motion
 from rigbench.rig.run import Run
-from rigbench.scores.results import Column
+from rigbench.scores.results import Column, level_name
 
-__all__ = ["NAMES", "Condition", "Sheet", "conditions_of", "entries_of", "nominal_and_levels", "spreading"]
+__all__ = [
+    "NAMES",
+    "Condition",
+    "Sheet",
+    "bare_run",
+    "conditions_of",
+    "entries_of",
+    "nominal_and_levels",
+    "spreading",
+]
 
 NAMES = {
     "link_mass_percent": "link mass",
@@ -70,8 +79,7 @@ def spreading(mismatch: Mismatch) -> tuple[str, ...]:
 
 def nominal_and_levels(keys: ConditionsKeys) -> dict[str, float]:
     """Return the levels of the columns that make the ladder, by the names of these."""
-    levels = {f"all at {str(float(level)).removesuffix('.0')}": level for level in keys.together or ()}
-    return {"nominal": 0.0} | levels
+    return {"nominal": 0.0} | {level_name(level): level for level in keys.together or ()}
 
 
 def conditions_of(
@@ -95,16 +103,20 @@ def conditions_of(
     return tuple(found)
 
 
+def bare_run(sheet: Sheet, law: str, motion: str) -> Run:
+    """Return the run of a law in a motion that all its conditions have in common: no source acts."""
+    band = sheet.settle_bands_mm[motion]
+    return replace(sheet.first, law=sheet.laws[law], motion=sheet.motions[motion], settle_band_mm=band)
+
+
 def entries_of(sheet: Sheet, draws: int) -> Iterator[Entry]:
     """Yield every run of a sheet, law by law: once where nothing is random, else once a draw.
 
     In a column that is random in another sheet alone, the draws stand for one and the same run.
     """
-    for law, choice in sheet.laws.items():
-        for motion, reference in sheet.motions.items():
-            shared = replace(
-                sheet.first, law=choice, motion=reference, settle_band_mm=sheet.settle_bands_mm[motion]
-            )
+    for law in sheet.laws:
+        for motion in sheet.motions:
+            shared = bare_run(sheet, law, motion)
             for condition in sheet.conditions:
                 column = condition.column
                 level = column.level or 0.0

@@ -9,13 +9,16 @@ from itertools import chain
 from pathlib import Path
 
 from rigbench.campaign.plan import Plan, fair_order
+from rigbench.campaign.study import Study
 from rigbench.errors import Fault, InputFaults
 from rigbench.experiment.across import Skipped, faults_across, notes_across, skipped_of
 from rigbench.experiment.combinations import combinations
 from rigbench.experiment.expand import Sheet, entries_of, spreading
+from rigbench.experiment.find_level import stop_early_notes
 from rigbench.experiment.read_vary import read_sweep
 from rigbench.experiment.schema import ExperimentKeys
 from rigbench.experiment.sheet import Checked, check_sheet
+from rigbench.experiment.studies import studies_of
 from rigbench.scores.intervals import draws_needed, misses_allowed
 from rigbench.scores.results import Column, Tolerance
 from rigbench.yamlfile import Document, load, partial, read_text
@@ -33,7 +36,7 @@ class Experiment:
     ``path`` as the user named it; ``laws`` the rows, variants included, and ``columns`` what is possible in
     any sheet; ``draws`` the machines drawn in each random condition; ``skipped`` the
     combinations that can't be; ``law_lines`` where the laws stand in the file; ``notes`` what the user
-    should know but need not change.
+    should know but need not change; ``studies`` what is asked after the matrix.
     """
 
     path: str
@@ -49,6 +52,8 @@ class Experiment:
     law_lines: Mapping[str, int | None]
     skipped: tuple[Skipped, ...] = ()
     notes: tuple[Fault, ...] = ()
+    studies: tuple[Study, ...] = ()
+    stop_early: bool = False
 
     @property
     def random(self) -> bool:
@@ -92,6 +97,8 @@ class Experiment:
             entries=fair_order(chain.from_iterable(entries_of(sheet, self.draws) for sheet in self.sheets)),
             resume=shlex.join(resume),
             absent=self.absent,
+            studies=self.studies,
+            stop_early=self.stop_early,
         )
 
 
@@ -114,7 +121,10 @@ def load_experiment(path: str | Path) -> Experiment:
     faults += [*more, *collisions, *faults_across(document, sweep, checked)]
     if not faults:
         experiment = _assembled(document, text, keys, checked)
-        faults += _size_faults(document, experiment)
+        variants = made[0].variants
+        studies, too_large = studies_of(document, keys, experiment.sheets, variants, experiment.tolerance)
+        experiment = replace(experiment, studies=studies)
+        faults += [*_size_faults(document, experiment), *too_large]
     if faults:
         once = dict.fromkeys(faults)
         raise InputFaults(sorted(once, key=lambda fault: (fault.file != file, fault.file, fault.line or 0)))
@@ -141,6 +151,7 @@ def _assembled(document: Document, text: str, keys: ExperimentKeys, checked: lis
         tolerance=whole[0].tolerance,
         law_lines={row: lines.line(("laws", row)) for row in rows},
         skipped=tuple(skipped_of(checked)),
+        stop_early=keys.stop_early,
     )
 
 
@@ -186,6 +197,9 @@ def _looked_over(document: Document, keys: ExperimentKeys, experiment: Experimen
     if sources and not acting:
         said = "no condition uses it: declare each_alone or together under conditions, or a case's level"
         yield document.fault(("mismatch",), said)
+    if experiment.stop_early:
+        yield from stop_early_notes(document, keys, experiment.random)
+        return
     tolerance = experiment.tolerance
     if tolerance is None or not experiment.random:
         return

@@ -23,8 +23,11 @@ MOST_ROWS = 5000
 
 FIXED = tuple(
     (key,)
-    for key in ("rigbench", "title", "seed", "conditions", "draws", "vary", "tolerance", "required_share")
-)
+    for key in (
+        "rigbench", "title", "seed", "conditions", "draws", "vary", "tolerance", "required_share", "needs",
+        "stop_early", "find_level",
+    )
+)  # fmt: skip
 """Keys that all sheets share, or they could not be shown side by side."""
 
 NAMED = (("laws",), ("motions",))

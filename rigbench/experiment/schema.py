@@ -14,8 +14,10 @@ from pydantic import ConfigDict, Field, create_model
 
 from rigbench.arm.declaration import DriveDeclaration
 from rigbench.experiment.condition_keys import ConditionsKeys
+from rigbench.experiment.find_level_keys import FindLevelKeys
 from rigbench.experiment.mismatch_keys import MismatchKeys
 from rigbench.experiment.motion_keys import MotionKeys
+from rigbench.experiment.needs_keys import NeedsKeys
 from rigbench.experiment.rig_keys import SensingKeys, TimingKeys
 from rigbench.yamlfile import Declared
 
@@ -161,4 +163,19 @@ class ExperimentKeys(Declared):
         gt=0,
         lt=1,
         description="share of the draws that must keep the tolerance, in every motion; default 0.95",
+    )
+    stop_early: bool = Field(
+        default=False,
+        description="true: a random column gets no more draws once each of its laws is shown to keep or to "
+        "miss, by intervals that hold however often one looks; default false",
+    )
+    find_level: FindLevelKeys | None = Field(
+        default=None,
+        description="find each draw's own limit, by runs after the matrix, and from these the tolerated level; "
+        "{} for the defaults; default: the tolerated level from the columns",
+    )
+    needs: NeedsKeys | None = Field(
+        default=None,
+        description="ask which sources of mismatch must be known, and how well, by runs after the matrix; "
+        "default: not asked",
     )

@@ -13,11 +13,13 @@ from rigbench.errors import Fault
 from rigbench.experiment.arms import arms_of, note_free_gears
 from rigbench.experiment.combinations import Combination
 from rigbench.experiment.expand import Sheet, conditions_of, spreading
+from rigbench.experiment.find_level import check_find_level, check_stop_early
 from rigbench.experiment.findings import Findings
 from rigbench.experiment.laws import is_whole, law_choices
 from rigbench.experiment.meeting import sensing_of, timing_of
 from rigbench.experiment.mismatch import cases_of, check_conditions, mismatch_of
 from rigbench.experiment.motions import check_without_arm, motions_of
+from rigbench.experiment.needs import check_needs, check_needs_score
 from rigbench.experiment.positions import check_start, joint_list
 from rigbench.experiment.scenes import scene_choice
 from rigbench.experiment.schema import ExperimentKeys, RatesKeys
@@ -68,6 +70,9 @@ def check_sheet(combination: Combination, axes: tuple[Axis, ...], folder: Path) 
     check_conditions(keys.conditions, spreading(mismatch), findings)
     cases = cases_of(keys.conditions, mismatch, arm, findings)
     tolerance, bands = tolerance_of(keys, arm, findings)
+    check_find_level(keys, mismatch, tolerance, findings)
+    check_stop_early(keys, tolerance, findings)
+    check_needs(keys.needs, tuple(keys.laws or ()), combination.variants, mismatch, tolerance, findings)
     if arm is None or arms is None:
         check_without_arm(keys.motions or {}, findings, folder)
         scene_choice(keys.scene, None, findings, folder)
@@ -76,6 +81,7 @@ def check_sheet(combination: Combination, axes: tuple[Axis, ...], folder: Path) 
     motions = motions_of(keys.motions or {}, findings, folder, arm, control_hz or 1000.0, gain_pose)
     if tolerance is not None and motions and findings.clean("motions"):
         check_applies(tolerance, motions, arm, findings)
+    check_needs_score(keys.needs, motions, arm, findings)
     start_offset = joint_list("start_offset_deg", keys.start_offset_deg, arm, findings)
     if start_offset is not None:
         check_start(start_offset, motions, arm, findings)

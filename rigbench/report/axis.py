@@ -13,13 +13,18 @@ __all__ = ["LevelAxis"]
 
 
 class LevelAxis:
-    """The levels that were run stand at equal distances, and others between them in proportion.
+    """The levels of the matrix, and the highest of a search, stand at equal distances.
+
+    Others stand between them in proportion.
 
     Levels mostly double from one to the next and would crowd at the low end of a linear axis.
     """
 
     def __init__(self, results: Results) -> None:
-        self.levels = sorted({column.level or 0.0 for column in results.columns if column.ladder} | {0.0})
+        levels = {column.level or 0.0 for column in results.columns if column.ladder} | {0.0}
+        if results.level_search is not None:
+            levels.add(results.level_search.most)
+        self.levels = sorted(levels)
         self.steps = len(self.levels) - 1
 
     def place(self, level: float) -> float:

@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from dataclasses import dataclass
 
+from rigbench.errors import counted
 from rigbench.report.view import MEDIAN, RATIO, SHARE, View
 from rigbench.report.words import (
     NOT_POSSIBLE,
@@ -14,6 +15,7 @@ from rigbench.report.words import (
     main_score,
     percent,
     quantity,
+    signed,
     tolerated_words,
 )
 from rigbench.scores.changes import CellChange, Changes
@@ -125,13 +127,13 @@ class Grid:
             lines.append(f"{cell.unfinished} did not finish")
         if cell.incomplete:
             lines.append(f"{cell.incomplete} incomplete")
+        if cell.settled:
+            lines.append(f"settled, {counted(cell.planned, 'draw')}")
         change = self.changes.cells[cell.key] if self.changes else None
         if change is not None:
             lines += self._earlier(change, column)
         best = cell.best and self.marks_best
-        return CellWords(
-            cell.verdict, best, *shown, tuple(lines), ink, change=change.kind if change else ""
-        )
+        return CellWords(cell.verdict, best, *shown, tuple(lines), ink, change=change.kind if change else "")
 
     def _nothing(self, cell: Cell) -> str:
         return "no result" if cell.draws == 0 else f"no {self.score_name}"
@@ -148,9 +150,9 @@ class Grid:
             lines = [] if value is None else [f"was {self._figure(value, self.limits)}"]
         by = change.difference
         if by is not None and self.changes and not by.tie and math.isfinite(by.value):
-            unit = score_words(self.changes.score)[1]
-            name = score_words(self.changes.score)[0] if self.shares else "by"
-            lines.append(f"{name} {by.value:+.2g} {unit}".rstrip())
+            name, unit = score_words(self.changes.score)
+            told = f"by {signed(by.value)} {unit}".rstrip()
+            lines.append(f"{name} {told}" if self.shares else told)
         return lines
 
     def _value(self, cell: Cell) -> float | None:

@@ -12,7 +12,7 @@ from rigbench.arm.mismatch import Mismatch, Payload, Spread, carriers
 from rigbench.arm.spread import WHOLE_SOURCES
 from rigbench.rig.run import Run
 
-__all__ = ["Drawn", "case_words", "drawn_of"]
+__all__ = ["Drawn", "case_words", "drawn_of", "parameter_words"]
 
 UNITS = {"percent": "%", "mm": "mm", "deg": "deg", "ms": "ms", "kg": "kg"}
 """Units as the names of sources end, and as they are written."""
@@ -49,7 +49,7 @@ def drawn_of(run: Run) -> tuple[Drawn, ...]:
     """
     arm = run.arm.arm()
     found = [
-        Drawn(name, _words(name), u, amount)
+        Drawn(name, parameter_words(name), u, amount)
         for name, u in run.factors().items()
         if not _is_replaced(run, name) and (amount := _amount(run, arm, name, u)) is not None
     ]
@@ -81,7 +81,7 @@ def _stated(value: object) -> Iterator[str]:
         yield f"{value:g}"
 
 
-def _words(name: str) -> str:
+def parameter_words(name: str) -> str:
     """Return 'coulomb, j3' for coulomb_percent.j3, 'link cog x, wrist' for link_cog_mm.wrist.x."""
     source, _, rest = name.partition(".")
     words = source.removesuffix(f"_{source.rpartition('_')[2]}") if _unit(source) else source

@@ -9,6 +9,7 @@ from rigbench.report.cautions import CAUTION
 from rigbench.report.cell_box import draw_frame
 from rigbench.report.cells import Grid
 from rigbench.report.legend_levels import GLYPH_HEIGHT, Entry, Glyph, curve_entries, level_entries
+from rigbench.report.limits_words import limits_words
 from rigbench.report.paper import LINE, Paper, Point
 from rigbench.report.shades import GAUGE, GAUGE_WIDTH, draw_gauge, shade
 from rigbench.report.view import MEDIAN, P95, RATIO
@@ -68,11 +69,15 @@ def entries(paper: Paper, grid: Grid, arrangement: Arrangement) -> Iterator[Entr
             None,
             "incomplete: draws not run yet, or ended by an error or a time limit; they don't count.",
         )
+    if any(cell.settled for cell in results.cells):
+        yield 0, None, "settled: after so many draws all laws of the column were, and it got no more."
     if any(not cell.planned for cell in results.cells):
         yield 0, None, "not possible: the experiment's settings leave the law out of this sheet."
     if arrangement.block.strip and results.tolerance:
         required = percent(results.tolerance.required_share)
         yield from level_entries(paper, grid, arrangement.block.strip, required)
+        if results.level_search is not None:
+            yield 0, None, limits_words(results)
         if arrangement.curves:
             yield from curve_entries(paper, grid, required)
 
@@ -95,12 +100,13 @@ def _verdict_entries(paper: Paper, grid: Grid, required: str, random: bool) -> I
 
 
 def _share_entries(paper: Paper, grid: Grid) -> Iterator[Entry]:
+    kind = "valid at any number of draws" if grid.results.stop_early else "Wilson"
     yield 90, _ramp(paper), "share of the draws that keep the tolerance, 0 to 100 %"
     yield (
         0,
         None,
         (
-            "Large: that share. Beneath it: its 95 % interval (Wilson), and the "
+            f"Large: that share. Beneath it: its 95 % interval ({kind}), and the "
             f"{grid.score_name} of the worst motion, median over the draws."
         ),
     )

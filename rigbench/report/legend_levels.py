@@ -25,14 +25,11 @@ GLYPH_HEIGHT = 10.0
 
 def level_entries(paper: Paper, grid: Grid, strip: LevelStrip, required: str) -> Iterator[Entry]:
     """Yield what explains the strips."""
-    yield (
-        40,
-        _level(paper, strip, False),
-        (
-            "tolerated level: left end shown to keep, right end shown to miss, dot where the share "
-            f"crosses {required} %"
-        ),
-    )
+    dot = f"dot where the share crosses {required} %"
+    if grid.results.level_search is not None:
+        dot = f"dot at the own limit that {required} % of the draws reach"
+    said = f"tolerated level: left end shown to keep, right end shown to miss, {dot}"
+    yield 40, _level(paper, strip, False), said
     if any(math.isinf(one.high) for one in _levels(grid)):
         yield 40, _level(paper, strip, True), "not shown to miss at any level run"
 

@@ -2,20 +2,19 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Iterator, Sequence
 
 from rich.cells import cell_len
 
 from rigbench.report.cells import Grid
 from rigbench.report.table import blocks, laws_column
-from rigbench.report.words import figure
+from rigbench.report.words import signed
 from rigbench.report.wrapping import wrap
 from rigbench.scores.comparison import Comparison
 from rigbench.scores.levels import ladder
 from rigbench.scores.names import score_words
 
-__all__ = ["pairs_text", "signed"]
+__all__ = ["pairs_text"]
 
 
 def pairs_text(grid: Grid, laws: Sequence[str], width: int) -> Iterator[str]:
@@ -55,10 +54,3 @@ def _words(gap: Comparison, random: bool) -> list[str]:
     if random:
         said += f" ({signed(gap.low)} to {signed(gap.high)})"
     return [f"{said} tie" if gap.tie else said]
-
-
-def signed(value: float) -> str:
-    """Return a difference with its sign: '+1.2', '-0.3', '0', 'no end' where it is infinite."""
-    if math.isinf(value):
-        return "no end"
-    return "0" if value == 0 else f"{'+' if value > 0 else '-'}{figure(abs(value))}"

@@ -103,9 +103,10 @@ class Paper:
         patch.set_joinstyle("miter")
         self._add(patch, name, zorder=order)
 
-    def shape(self, corners: Sequence[Point], fill: str) -> None:
-        """Draw a filled polygon."""
-        self._add(Polygon(list(corners), closed=True, facecolor=fill, edgecolor="none"), zorder=2.2)
+    def shape(self, corners: Sequence[Point], fill: str, *, opacity: float = 1.0, name: str = "") -> None:
+        """Draw a filled polygon; one that is not opaque lies beneath all lines."""
+        shape = Polygon(list(corners), closed=True, facecolor=fill, edgecolor="none", alpha=opacity)
+        self._add(shape, name, zorder=2.2 if opacity == 1.0 else 1.1)
 
     def stroke(
         self, start: Point, end: Point, *, color: str, line: float,

@@ -9,6 +9,7 @@ from typing import Any
 from rich.cells import cell_len
 
 from rigbench.report.cells import EXACT, SHARES, CellWords, Grid
+from rigbench.report.limits_words import ENDS, limits_words, tolerated_reading
 from rigbench.report.order import laws_in_order
 from rigbench.report.pairs_text import pairs_text
 from rigbench.report.table import Lines, blocks, laws_column, sheets_column
@@ -29,7 +30,6 @@ from rigbench.scores.results import Results
 __all__ = ["matrix_text"]
 
 NARROWEST = 40
-ENDS = "(shown to keep at, shown to miss from)"
 FEW, SOME = 4, 12
 """So many sheets have their matrices printed always, and so many if each fits side by side."""
 
@@ -49,14 +49,16 @@ def matrix_text(
     grid = Grid(results, view, changes)
     laws = laws_in_order(grid)
     head = list(_head(results, width))
+    limits = _wrap(limits_words(results), width)
     if len(results.sheets) == 1:
         reading = _wrap(_reading(grid, has_levels(results)), width)
         told = pairs_text(grid, laws, width) if more and changes is None else ()
-        return "\n\n".join(["\n".join([*head, *reading]), *_matrices(grid, laws, width), *told])
+        parts = ["\n".join([*head, *reading]), *_matrices(grid, laws, width), *told]
+        return "\n\n".join([*parts, *(["\n".join(limits)] if limits else [])])
     parts = ["\n".join(head), *_across_sheets(grid, laws, width)]
     if has_levels(results) or len(results.columns) > 1:
         parts += _of_sheets(grid, laws, width)
-    return "\n\n".join(parts)
+    return "\n\n".join([*parts, *(["\n".join(limits)] if limits else [])])
 
 
 def _head(results: Results, width: int) -> Iterator[str]:
@@ -75,8 +77,11 @@ def _reading(grid: Grid, levels: bool) -> str:
         of = {P95: "95th percentile over the draws", RATIO: "median ratio to nominal, draw by draw"}
         shown = of.get(grid.view.show, "median over the draws")
         return f"In each cell: the {name}, {shown} (95 % interval).{was}"
-    said = f"In each cell: share of the draws that keep it (95 % interval); beneath it the median {name}."
+    holds = ", at any number of draws" if grid.results.stop_early else ""
+    said = f"In each cell: share of the draws that keep it (95 % interval{holds}); beneath it the median {name}."
     said += was
+    if levels and grid.results.level_search is not None:
+        return f"{said} {tolerated_reading(grid.results)}"
     return f"{said} Tolerated level: where the share falls below the required one {ENDS}." if levels else said
 
 
@@ -84,9 +89,7 @@ def _across_sheets(grid: Grid, laws: Sequence[str], width: int) -> Iterator[str]
     """Yield a table of what matters most, sheets down and laws across: tolerated levels, if there are any."""
     results, column = grid.results, grid.results.columns[0]
     if has_levels(results):
-        said = (
-            f"Tolerated level: where the share of the draws that keep it falls below the required one {ENDS}."
-        )
+        said = tolerated_reading(results)
         columns = [[[law], *([grid.level(sheet, law)] for sheet in results.sheets)] for law in laws]
     else:
         said = f"{_reading(grid, False)} Under '{column.name}':"

@@ -24,6 +24,7 @@ __all__ = [
     "percent",
     "quantity",
     "runs_words",
+    "signed",
     "tolerance_words",
     "tolerated_words",
 ]
@@ -86,6 +87,13 @@ def quantity(value: float, score: str, *limits: float) -> str:
     return f"{figure(value, *limits)} {unit}".rstrip()
 
 
+def signed(value: float) -> str:
+    """Return a difference with its sign: '+1.2', '-0.3', '0', 'no end' where it is infinite."""
+    if math.isinf(value):
+        return "no end"
+    return "0" if value == 0 else f"{'+' if value > 0 else '-'}{figure(abs(value))}"
+
+
 def interval(low: float, high: float) -> str:
     """Return an interval of figures, '1.6 to 2.1'; an infinite end is 'no end'."""
     return " to ".join("no end" if math.isinf(end) else figure(end) for end in (low, high))
@@ -143,6 +151,9 @@ def _limit_words(limits: Mapping[str, float]) -> str:
 def runs_words(results: Results) -> str:
     """Say how many draws there are, and how many of the planned runs are done and failed."""
     draws = f"{results.draws} draw{'s' if results.draws != 1 else ''}. " if any_random(results) else ""
+    if draws and results.stop_early:
+        stopped = len({(cell.sheet, cell.condition) for cell in results.cells if cell.settled})
+        draws = f"At most {draws.removesuffix('. ')} (columns settled before that: {stopped or 'none'}). "
     runs = f"{results.planned} run{'s' if results.planned != 1 else ''} planned"
     done = "all done" if results.done == results.planned else f"{results.done} done"
     return f"{draws}{runs}, {done}, {results.failed or 'none'} failed."
@@ -166,7 +177,8 @@ def _number(text: str) -> float | None:
 
 def has_levels(results: Results) -> bool:
     """Tell whether there is a tolerated level to show: a tolerance and a level beyond nominal."""
-    return results.tolerance is not None and any(column.ladder and column.level for column in results.columns)
+    higher = any(column.ladder and column.level for column in results.columns)
+    return results.tolerance is not None and (higher or results.level_search is not None)
 
 
 def tolerated_words(tolerated: Tolerated) -> str:

@@ -179,17 +179,16 @@ def _shown(sheet: SheetStanding, law: str) -> str:
     level = sheet.level(law)
     if level.high == 0.0:
         return "misses the tolerance at level 0 already"
-    keeping = [step for step in sheet.steps if sheet.cell(law, step).verdict == "keeps"]
-    if not any((step.level or 0.0) < level.high for step in keeping):
+    kept = sheet.shown_to_keep(law)
+    if kept is None:
         said = "is not shown to keep the tolerance at any level"
-    elif level.low > 0.0:
-        said = f"is shown to keep the tolerance up to level {level.low:g}"
+    elif kept > 0.0:
+        said = f"is shown to keep the tolerance up to level {kept:g}"
     else:
         said = "is shown to keep the tolerance at level 0 only"
     if isfinite(level.high):
         return f"{said} and to miss it from level {level.high:g}"
-    top = max(column.level or 0.0 for column in sheet.steps)
-    return f"{said}, the highest run" if level.low == top else f"{said} (higher ones are open)"
+    return f"{said}, the highest run" if kept == sheet.highest else f"{said} (higher ones are open)"
 
 
 def _elsewhere(sheet: SheetStanding, law: str) -> Iterator[str]:

@@ -2,19 +2,22 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from rigbench.arm.arm import Floats
+from rigbench.scores.anytime import anytime_interval, settled
 from rigbench.scores.gather import FINISHED, CellKey, CellRuns, Gathered
 from rigbench.scores.intervals import quantiles, wilson
 from rigbench.scores.names import score_info
 from rigbench.scores.results import Cell, Column, Measure, MotionCell, Tolerance
 
 __all__ = ["CountedDraws", "build_cell", "counted", "verdict_of"]
+
+Interval = Callable[[int, int], tuple[float, float]]
 
 
 @dataclass(frozen=True, eq=False)
@@ -79,21 +82,26 @@ def build_cell(
     tolerance: Tolerance | None,
     draws: int,
     possible: bool = True,
+    anytime: bool = False,
+    settled_after: int | None = None,
 ) -> tuple[Cell, CountedDraws]:
     """Return the cell of one law under one condition, and its draws that count.
 
-    It is of ``draws`` draws if anything in it is random.
-
-    Unless it is ``possible``: then it plans none, and has no verdict.
+    It is of ``draws`` draws if anything in it is random, or of the first ``settled_after`` where its column
+    was settled after these. Unless it is ``possible``: then it plans none, and has no verdict. ``anytime``:
+    its share's interval is to hold at any number of draws.
 
     Draws that lack a verdict of the machine, for now or for good, are ``incomplete`` and count neither
     for nor against the law. Where nothing is random the one run is exact: its share is 1 or 0 and its
     interval that point. A motion's own part counts the draws on which that motion has its verdict.
     """
     runs, names = gathered.cells[key], gathered.names
+    if settled_after is not None:
+        runs, draws = runs.first(settled_after), settled_after
     here = counted(runs, names, motions, tolerance)
     total, passed = len(here.draws), int(here.passed.sum())
-    share, low, high, verdict = _shares(passed, total, column.random, tolerance if possible else None)
+    interval = (anytime_interval if anytime else wilson) if column.random else None
+    share, low, high, verdict = _shares(passed, total, interval, tolerance if possible else None)
     planned = max(draws if possible else 0, len(runs.draws)) if column.random else int(possible)
     measures = _measures(here.worst, names, np.any(gathered.defined, axis=0), column.random)
     if len(motions) == 1:
@@ -119,20 +127,23 @@ def build_cell(
         motions=parts,
         unfinished=int(np.sum(~here.finished)),
         planned=planned,
+        settled=settled_after is not None,
     )
     return cell, here
 
 
 def _shares(
-    passed: int, draws: int, random: bool, tolerance: Tolerance | None
+    passed: int, draws: int, interval: Interval | None, tolerance: Tolerance | None
 ) -> tuple[float | None, float | None, float | None, str]:
-    """Return the pass share, its interval and the verdict."""
+    """Return the pass share, its interval and the verdict; without an ``interval`` the one run is exact."""
     if tolerance is None:
         return None, None, None, ""
     if draws == 0:
         return None, None, None, "open"
     share = passed / draws
-    low, high = wilson(passed, draws) if random else (share, share)
+    low, high = interval(passed, draws) if interval else (share, share)
+    if interval is anytime_interval:  # the very rule by which columns stop: no rounding error in between
+        return share, low, high, settled(passed, draws, tolerance.required_share)
     return share, low, high, verdict_of(low, high, tolerance.required_share)
 
 

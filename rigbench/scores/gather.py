@@ -45,6 +45,11 @@ class CellRuns:
         complete: NDArray[np.bool_] = np.all(self.state != MISSING, axis=1)
         return complete
 
+    def first(self, draws: int) -> CellRuns:
+        """Return the runs of the first so many draws."""
+        own = self.draws < draws
+        return CellRuns(self.draws[own], self.state[own], self.scores[own])
+
 
 class _Cells(Mapping[CellKey, CellRuns]):
     """The cells of a table, each of which is laid out when it is asked for: the scores stand there once."""

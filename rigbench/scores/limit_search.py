@@ -26,11 +26,13 @@ Known = Mapping[int, Mapping[int, bool | None]]
 
 
 def search_draws(required_share: float) -> int:
-    """Return how many draws a search takes: the fewest that can show the required share (73 for 0.95)."""
-    needed = draws_needed(required_share)
-    if needed is None:
+    """Return how many draws a search takes: the fewest that can show a level as tolerated (73 for 0.95)."""
+    draws = draws_needed(required_share)
+    if draws is None:
         raise ValueError("no number of draws shows a share of 1")
-    return needed
+    while _ranks(draws, required_share)[0] < 1:
+        draws += 1
+    return draws
 
 
 def decisive(draws: int, required_share: float) -> int:
@@ -39,9 +41,7 @@ def decisive(draws: int, required_share: float) -> int:
     The rank, from the lowest limit, of the order statistic that bounds the tolerated level from above; all
     ``draws`` where they are too few for there to be one.
     """
-    ranks = np.arange(1.0, draws + 1.0)
-    high = -quantile_interval(-ranks, required_share, least=-np.inf)[1]
-    return int(min(high, draws))
+    return int(min(_ranks(draws, required_share)[1], draws))
 
 
 def next_probes(known: Known, draws: int, lowest: int, rungs: int = len(LADDER)) -> list[tuple[int, int]]:
@@ -67,6 +67,13 @@ def most_probes(draws: int, lowest: int, rungs: int = len(LADDER)) -> int:
     bisection = rungs.bit_length()  # ceil(log2(rungs + 1)), of as many limits
     below_cut = (rungs - 1).bit_length()
     return lowest * bisection + (draws - lowest) * max(1 + below_cut, bisection)
+
+
+def _ranks(draws: int, required_share: float) -> tuple[float, float]:
+    """Return which of the limits, from the lowest, are the ends of the tolerated level's interval."""
+    ranks = np.arange(1.0, draws + 1.0)
+    _, high, low = quantile_interval(-ranks, required_share, least=-np.inf)
+    return -low, -high
 
 
 def _bounds(draws: int, lowest: int) -> Iterator[int]:
@@ -100,6 +107,6 @@ def _next_rung(own: Mapping[int, bool | None], cut: int, rungs: int) -> int | No
 
 
 def _bracket(own: Mapping[int, bool | None], rungs: int) -> tuple[int, int]:
-    """Return the highest rung that keeps below the first that misses, and that one: -1 and ``rungs`` for none."""
+    """Return the highest rung that keeps below the first that misses, and that one; or -1, ``rungs``."""
     high = min((rung for rung, kept in own.items() if not kept), default=rungs)
     return max((rung for rung, kept in own.items() if kept and rung < high), default=-1), high

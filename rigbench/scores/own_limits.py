@@ -31,12 +31,16 @@ class OwnLimits:
 
 @dataclass(frozen=True)
 class FoundLevel:
-    """The tolerated level over ``draws``, of which so many miss nowhere and so many keep again."""
+    """The tolerated level over ``draws``, of which so many miss nowhere and so many keep again.
+
+    ``left_open``: so many were left with a wider bracket than was asked for.
+    """
 
     tolerated: Tolerated
     draws: int
     never_miss: int
     keep_again: int
+    left_open: int = 0
 
 
 def own_limits(levels: Floats, kept: NDArray[np.bool_]) -> OwnLimits:

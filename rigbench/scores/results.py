@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING
 if TYPE_CHECKING:
     from rigbench.scores.cell import CountedDraws
     from rigbench.scores.comparison import Comparison
+    from rigbench.scores.own_limits import FoundLevel, OwnLimits
 
 __all__ = [
     "Cell",
@@ -16,11 +17,13 @@ __all__ = [
     "Column",
     "LawComparison",
     "LawStanding",
+    "LevelSearch",
     "Measure",
     "MotionCell",
     "Results",
     "Tolerance",
     "Tolerated",
+    "level_name",
 ]
 
 CellKey = tuple[str, str, str]
@@ -114,6 +117,7 @@ class Cell:
     best: bool = False  # better than every other law of its column beyond the interval
     unfinished: int = 0  # of the draws that count, those in which some motion did not finish
     planned: int = 1  # draws that the experiment plans here; 0: the law is not possible in this sheet
+    settled: bool = False  # the column stopped after so many draws: its laws were settled
     ratios: Mapping[str, Comparison] = field(default_factory=dict)  # per score, the median ratio to nominal
 
     @property
@@ -135,12 +139,27 @@ class Tolerated:
 
 
 @dataclass(frozen=True)
+class LevelSearch:
+    """A search for each draw's own limit: of how many draws, up to the level ``most``, and how finely."""
+
+    draws: int
+    most: float
+    finest: float  # the width of the brackets in the end
+
+
+@dataclass(frozen=True)
 class LawStanding:
-    """One law across the columns."""
+    """One law across the columns.
+
+    ``tolerated`` is by the draws' own ``limits``, with what was ``found`` of them, where there was a search;
+    else by the pass shares of the ladder.
+    """
 
     sheet: str
     law: str
     tolerated: Tolerated | None  # None without a tolerance, and where the law is not possible in the sheet
+    found: FoundLevel | None = None
+    limits: OwnLimits | None = field(default=None, compare=False, repr=False)
 
 
 @dataclass(frozen=True)
@@ -161,6 +180,8 @@ class Results:
 
     ``comparisons`` are of each pair of laws at each level of all sources together. ``counted`` holds the
     draws that count in each cell that is possible, their ``worst`` the scores named by ``compared``.
+    ``stop_early``: columns stop as soon as they are settled, and all shares have intervals that hold at any
+    number of draws.
     """
 
     title: str
@@ -181,6 +202,8 @@ class Results:
     comparisons: tuple[LawComparison, ...] = ()
     counted: Mapping[CellKey, CountedDraws] = field(default_factory=dict, compare=False, repr=False)
     compared: tuple[str, ...] = ()
+    level_search: LevelSearch | None = None
+    stop_early: bool = False
 
     def cell(self, sheet: str, law: str, condition: str) -> Cell:
         """Return the one cell of that name; KeyError if there is none."""
@@ -188,3 +211,8 @@ class Results:
             if (cell.sheet, cell.law, cell.condition) == (sheet, law, condition):
                 return cell
         raise KeyError((sheet, law, condition))
+
+
+def level_name(level: float) -> str:
+    """Return the name of the condition in which all sources act at a level: 'all at 0.5'."""
+    return f"all at {str(float(level)).removesuffix('.0')}"

@@ -26,12 +26,26 @@ class SheetStanding:
         self.main = main_score(() if results.tolerance is None else results.tolerance.limited)
         self.steps = ladder(self.columns)
         self._break_even: list[Mapping[str, Any]] = [b for b in results.break_even if b["sheet"] == sheet]
+        self._search = results.level_search
         self._levels = {s.law: s.tolerated for s in results.standings if s.sheet == sheet}
 
     @property
     def has_levels(self) -> bool:
         """Whether the ladder has more than its foot, so that a tolerated level says something."""
-        return any(column.level for column in self.steps)
+        return self._search is not None or any(column.level for column in self.steps)
+
+    @property
+    def highest(self) -> float:
+        """The highest level run of all sources together."""
+        levels = (column.level or 0.0 for column in self.steps)
+        return max([*levels, 0.0 if self._search is None else self._search.most])
+
+    def shown_to_keep(self, law: str) -> float | None:
+        """Return the highest level below its first miss that a law is shown to keep; None for none."""
+        level = self.level(law)
+        kept = [step.level or 0.0 for step in self.steps if self.cell(law, step).verdict == "keeps"]
+        kept += [level.low] if level.low > 0.0 else []
+        return max((one for one in kept if one < level.high), default=None)
 
     def cell(self, law: str, column: Column) -> Cell:
         """Return the cell of a law and a column."""
@@ -82,9 +96,8 @@ class SheetStanding:
         return any(test(one, other) or test(other, one) for test in shown)
 
     def _bears_more(self, one: str, other: str) -> bool:
-        missed = self.level(other).high
-        kept = (step.level or 0.0 for step in self.steps if self.cell(one, step).verdict == "keeps")
-        return any(missed <= level < self.level(one).high for level in kept)
+        kept = self.shown_to_keep(one)
+        return kept is not None and kept >= self.level(other).high
 
     def _keeps_more(self, one: str, other: str) -> bool:
         verdicts = [(self.cell(one, c).verdict, self.cell(other, c).verdict) for c in self.columns]

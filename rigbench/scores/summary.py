@@ -17,6 +17,7 @@ from rigbench.scores.ratios import ratios_to_nominal
 from rigbench.scores.results import Cell, Column, LawStanding, Results, Tolerance
 from rigbench.scores.row import Row
 from rigbench.scores.run_table import RunTable, table_of
+from rigbench.scores.searched import Searched, found_level
 
 __all__ = ["summarise"]
 
@@ -40,6 +41,9 @@ def summarise(
     failed: int,
     absent: Collection[CellKey] = (),
     also: Sequence[str] = (),
+    search: Searched | None = None,
+    stop_early: bool = False,
+    settled: Mapping[tuple[str, str], int] | None = None,
 ) -> Results:
     """Return what the runs of a campaign, finished or not, show: rows, or columns where they are many.
 
@@ -47,14 +51,17 @@ def summarise(
     whose sheet, law, motion or condition isn't named are passed over. ``planned``, ``done`` and
     ``failed`` count runs and are handed on. ``absent`` are the cells for which nothing is planned, since
     what they would combine can't be combined. The draws' main scores are kept for comparisons, and those
-    that are named by ``also``.
+    that are named by ``also``. A ``search`` for each draw's own limit gives the tolerated levels in place of
+    the ladder. Of a campaign that may ``stop_early``, ``settled`` holds after how many draws the column of a
+    sheet and condition was settled: no more of them count there.
     """
     frame = Frame(tuple(sheets), tuple(laws), tuple(columns), tuple(motions))
     limited = () if tolerance is None else tolerance.limited
     main = main_score(limited)
     table = runs if isinstance(runs, RunTable) else table_of(runs)
     gathered = gather(table, frame, expected=(main, *limited, *also))
-    maker = _Maker(frame, gathered, tolerance, draws, frozenset(absent), tuple(dict.fromkeys([main, *also])))
+    compared = tuple(dict.fromkeys([main, *also]))
+    maker = _Maker(frame, gathered, tolerance, draws, frozenset(absent), compared, stop_early, settled or {})
     cells, count = maker.cells()
     best = set(_best(frame, count))
     cells = [replace(cell, best=(cell.sheet, cell.law, cell.condition) in best) for cell in cells]
@@ -68,7 +75,7 @@ def summarise(
         laws=frame.laws,
         columns=frame.columns,
         cells=tuple(cells),
-        standings=tuple(_standings(frame, cells, tolerance)),
+        standings=tuple(_standings(frame, cells, count, tolerance, search)),
         planned=planned,
         done=done,
         failed=failed,
@@ -77,6 +84,8 @@ def summarise(
         comparisons=tuple(compare_laws(frame, count, main, MAIN)),
         counted=count,
         compared=maker.compared,
+        level_search=search,
+        stop_early=stop_early,
     )
     return replace(results, advice=advise(results))
 
@@ -91,6 +100,8 @@ class _Maker:
     draws: int
     nowhere: Collection[CellKey]
     compared: tuple[str, ...]
+    stop_early: bool
+    settled: Mapping[tuple[str, str], int]
 
     def cells(self) -> tuple[list[Cell], dict[CellKey, CountedDraws]]:
         """Return all cells, and the draws that count of those that are possible."""
@@ -128,6 +139,8 @@ class _Maker:
             tolerance=self.tolerance,
             draws=self.draws,
             possible=key not in self.nowhere,
+            anytime=self.stop_early,
+            settled_after=self.settled.get((sheet, column.name)) if column.random else None,
         )
 
 
@@ -142,16 +155,28 @@ def _best(frame: Frame, count: Mapping[CellKey, CountedDraws]) -> Iterator[CellK
                 yield sheet, law, column.name
 
 
-def _standings(frame: Frame, cells: Iterable[Cell], tolerance: Tolerance | None) -> Iterator[LawStanding]:
+def _standings(
+    frame: Frame,
+    cells: Iterable[Cell],
+    count: Mapping[CellKey, CountedDraws],
+    tolerance: Tolerance | None,
+    search: Searched | None,
+) -> Iterator[LawStanding]:
     """Yield each law's tolerated level; None without a tolerance, and where nothing is planned."""
-    steps = {column.name for column in ladder(frame.columns)}
+    steps = {column.name: column for column in ladder(frame.columns)}
     on_ladder: dict[tuple[str, str], list[Cell]] = {}
     for cell in cells:
         shows = cell.condition in steps and cell.planned > 0
         on_ladder.setdefault((cell.sheet, cell.law), []).extend([cell] if shows else [])
-    for (sheet, law), own in on_ladder.items():
-        level = None if tolerance is None or not own else tolerated_level(own, tolerance.required_share)
-        yield LawStanding(sheet, law, level)
+    for place, own in on_ladder.items():
+        if tolerance is None or not own:
+            yield LawStanding(*place, None)
+        elif search is None:
+            yield LawStanding(*place, tolerated_level(own, tolerance.required_share))
+        else:
+            rungs = [(steps[cell.condition], count[cell.key]) for cell in own]
+            found, limits = found_level(search, place, rungs, tolerance.required_share)
+            yield LawStanding(*place, found.tolerated, found, limits)
 
 
 def _break_even(

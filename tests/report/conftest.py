@@ -12,9 +12,12 @@ import pytest
 from matplotlib.figure import Figure
 from matplotlib.lines import Line2D
 from matplotlib.patches import Rectangle
+from matplotlib.text import Text
 from matplotlib.transforms import Bbox
 
 from rigbench.report.matrix import text_boxes
+from rigbench.scores.cell import CountedDraws
+from rigbench.scores.comparison import Comparison
 from rigbench.scores.results import (
     Cell,
     Column,
@@ -92,10 +95,20 @@ def cell_of(
         peak, settle = Measure(*[median] * 6), Measure(*[120.0] * 6)
     measures = {"tool_peak_mm": peak, "settle_ms": settle} if draws else {}
     motions = {"load tray": MotionCell(passed, draws, measures)}
+    times = Comparison(median / 0.7, median / 0.8, median / 0.6, draws, False)
     return Cell(
         sheet, law, column.name, column.level, draws, incomplete, passed, share, low, high, verdict,
-        measures, motions, best, unfinished,
+        measures, motions, best, unfinished, ratios={"tool_peak_mm": times} if draws else {},
     )  # fmt: skip
+
+
+def counted_draws(cell: Cell) -> CountedDraws:
+    """Draws that count, of which the first pass; the main score rises with the draw's number."""
+    draws = np.arange(cell.draws)
+    worst = np.full(cell.draws, math.inf)
+    if cell.draws and math.isfinite(cell.measures["tool_peak_mm"].median):
+        worst = cell.measures["tool_peak_mm"].median * np.linspace(0.5, 1.5, cell.draws)
+    return CountedDraws(draws, np.isfinite(worst), draws < cell.passed, worst[:, None])
 
 
 def not_possible(sheet: str, law: str, column: Column, tolerance: bool) -> Cell:
@@ -171,6 +184,8 @@ def build(
         done=planned - missing,
         failed=min(missing, 2),
         advice="Computed torque is shown to keep the tolerance up to level 1; feedforward is too close to call.",
+        counted={cell.key: counted_draws(cell) for cell in cells if cell.planned},
+        compared=("tool_peak_mm",),
     )
 
 
@@ -220,9 +235,9 @@ class Look:
         top = figure.get_size_inches()[1] * 72
         return Bbox([[x, top - y - height], [x + width, top - y]])
 
-    @classmethod
-    def tidy(cls, figure: Figure) -> None:
-        """No two texts overlap, nor do two cells; none leaves the figure or its cell, and none is under 7 pt."""
+    @staticmethod
+    def clear(figure: Figure) -> list[tuple[Text, Bbox]]:
+        """No two texts overlap, none leaves the figure, and none is under 7 pt; return them."""
         boxes = text_boxes(figure)
         width, height = figure.get_size_inches() * 72
         edges = np.array([box.extents for _, box in boxes])
@@ -232,6 +247,12 @@ class Look:
         assert min(text.get_fontsize() for text, _ in boxes) >= 7
         meeting = [(boxes[i][0].get_text(), boxes[j][0].get_text()) for i, j in _meeting(edges)]
         assert not meeting
+        return boxes
+
+    @classmethod
+    def tidy(cls, figure: Figure) -> None:
+        """It is clear, and no two cells overlap; no text leaves its cell."""
+        boxes = cls.clear(figure)
         cells = {name: cls.extent(figure, cell) for name, cell in cls.rectangles(figure, "cell-").items()}
         assert cells
         assert not _meeting(np.array([cell.extents for cell in cells.values()]))

@@ -12,6 +12,8 @@ from rigbench.arm.arm import Floats
 __all__ = ["Bins", "binned"]
 
 BINS = 40
+LEAST = 1e-12
+"""An axis does not end below it: no score is known so exactly."""
 
 
 @dataclass(frozen=True)
@@ -38,8 +40,9 @@ def binned(values: Floats, limit: float | None) -> Bins | None:
     if len(values) == 0:
         return None
     finite = values[np.isfinite(values)]
-    limit = limit if limit is not None and limit > 0.0 else 0.0
-    most = max(float(finite.max(initial=0.0)), 1.1 * limit) or 1.0
+    limit = limit or 0.0
+    most = max(float(finite.max(initial=0.0)), 1.1 * limit)
+    most = most if most > LEAST else 1.0
     below = max(1, round(BINS * limit / most)) if limit else 0
     width = limit / below if limit and most <= BINS * limit else (most - limit) / (BINS - below)
     above = max(1, ceil((most - limit) / width - 1e-9))

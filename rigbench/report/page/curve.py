@@ -219,10 +219,9 @@ class _Drawing:
             for number, one in numbered
             if one["sheet"] == self.sheet and one["score"] == self.score
         ]
-        for number, one in found if len(found) <= MARKED else ():
-            at = one["level"]
-            low, value, high = (self._x(at[end]) for end in ("low", "value", "high"))
-            yield {"number": number, "x": value, "low": low, "high": high}
+        for place, (number, one) in enumerate(found if len(found) <= MARKED else ()):
+            low, value, high = (self._x(one["level"][end]) for end in ("low", "value", "high"))
+            yield {"number": number, "x": value, "low": low, "high": high, "y": self._bottom - 7 - 12 * place}
 
 
 def _ends(measure: Measure) -> tuple[float, float, float]:

@@ -21,7 +21,7 @@ from rigbench.report.words import figure, interval, percent, quantity
 from rigbench.scores.names import SCORES, score_words
 from rigbench.scores.results import Cell, Measure, MotionCell
 
-__all__ = ["NAMED", "cell_data", "embedded", "run_data"]
+__all__ = ["NAMED", "TRACE_LENGTH", "cell_data", "embedded", "run_data"]
 
 NAMED = 2000
 """The draws of so many runs at most are put into words: each takes some 2 ms."""
@@ -50,9 +50,15 @@ def embedded(document: Any) -> str:
 
 
 def cell_data(
-    grid: Grid, cell: Cell, runs: CellRuns, shown: Sequence[Mapping[str, Any]], tracebacks: Mapping[str, str]
+    grid: Grid,
+    cell: Cell,
+    runs: CellRuns,
+    shown: Sequence[Mapping[str, Any]],
+    tracebacks: Mapping[tuple[str, str, str], int],
 ) -> dict[str, Any]:
-    """Return what the panel of one cell shows; ``shown`` are its named runs as :func:`run_data` has them."""
+    """Return what the panel of one cell shows; ``shown`` are its named runs as :func:`run_data` has them,
+    ``tracebacks`` the numbers of tracebacks by law, outcome and reason.
+    """
     tolerance, column = (
         grid.results.tolerance,
         next(column for column in grid.results.columns if column.name == cell.condition),
@@ -72,7 +78,9 @@ def cell_data(
             if motion in cell.motions and cell.motions[motion].measures
         ],
         "runs": list(shown),
-        "troubles": [_trouble(one, tracebacks) for one in runs.troubles],
+        "troubles": [
+            _trouble(one, tracebacks.get((cell.law, one.outcome, one.reason))) for one in runs.troubles
+        ],
     }
 
 
@@ -148,12 +156,12 @@ def _plain(value: float, name: str) -> str:
     return figure(value) if math.isfinite(value) else quantity(value, name)
 
 
-def _trouble(one: Trouble, tracebacks: Mapping[str, str]) -> dict[str, Any]:
+def _trouble(one: Trouble, traceback: int | None) -> dict[str, Any]:
     runs = counted(one.count, "run")
     return {
         "said": f"{runs} {ENDS.get(one.outcome, one.outcome)} ({one.outcome})",
         "reason": one.reason,
-        "traceback": tracebacks.get(one.key, "")[-TRACE_LENGTH:],
+        "traceback": traceback,
     }
 
 

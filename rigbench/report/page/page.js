@@ -35,7 +35,7 @@
 
   const spread = (one, exact, wide) => {
     const { below, limit, width, counts, endless } = one.bins;
-    const left = 6, right = endless ? wide - 60 : wide - 12, foot = exact ? 46 : 96, high = exact ? 18 : 66;
+    const left = 6, right = endless ? wide - 60 : wide - 12, foot = exact ? 46 : 104, high = exact ? 18 : 66;
     const edge = (k) => (k < below ? (limit * k) / below : limit + (k - below) * width);
     const most = edge(counts.length);
     const x = (value) => left + (Math.min(value, most) / most) * (right - left);
@@ -55,8 +55,8 @@
     axis(picture, x, most, foot, left, right, one.unit);
     if (one.limit !== null) {
       const side = x(one.limit) > wide - 130 ? ["end", -5] : ["start", 5];
-      picture.append(draw("path", { class: "limit", d: `M${x(one.limit)} 8V${foot}` }),
-        word(x(one.limit) + side[1], 16, `at most ${one.limit}`, side[0], "limit-name"));
+      picture.append(draw("path", { class: "limit", d: `M${x(one.limit)} 4V${foot}` }),
+        word(x(one.limit) + side[1], 13, `at most ${one.limit}`, side[0], "limit-name"));
     }
     const [middle, low, up] = one.median;
     if (middle !== null) {
@@ -127,7 +127,7 @@
   };
 
   const trouble = (one) => make("div", {}, make("p", {}, `${one.said}${one.reason ? `: ${one.reason}` : ""}`),
-    one.traceback ? make("pre", { tabindex: "0", "aria-label": "Traceback" }, make("code", {}, one.traceback)) : null);
+    one.traceback === null ? null : make("pre", { tabindex: "0", "aria-label": "Traceback" }, make("code", {}, data.tracebacks[one.traceback])));
 
   const printed = (command) => make("p", { class: "printed" }, "Printed by ", make("code", {}, command));
 

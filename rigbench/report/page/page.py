@@ -6,7 +6,7 @@ import base64
 import datetime
 import hashlib
 import shlex
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
 from importlib.resources import files
 from pathlib import Path
@@ -23,7 +23,7 @@ from rigbench.report.cells import Grid
 from rigbench.report.order import laws_in_order
 from rigbench.report.output_file import write_whole
 from rigbench.report.page.curve import charts
-from rigbench.report.page.data import NAMED, cell_data, embedded, run_data
+from rigbench.report.page.data import NAMED, TRACE_LENGTH, cell_data, embedded, run_data
 from rigbench.report.page.runs import CellRuns, NamedRun, read_runs, shown_scores
 from rigbench.report.page.sections import STEPS, break_even_rows, evidence, heads, matrix_rows, overview
 from rigbench.report.page.traces import Trace, chosen, traced
@@ -36,6 +36,9 @@ __all__ = ["Facts", "Findings", "gathered", "page_html", "write_page"]
 
 DARK = (26, 36, 47), (42, 88, 136)
 """The scale's two ends on a dark screen, where light type stays readable on both."""
+
+Tracebacks = dict[tuple[str, str, str], str]
+"""A traceback by law, outcome and reason."""
 
 PRINTED = 2
 """On paper the deciding cells of so many laws stand with their details."""
@@ -60,6 +63,7 @@ class Findings:
     facts: Facts
     results: Results
     details: tuple[dict[str, Any], ...]
+    tracebacks: tuple[str, ...]  # each once; the details have their numbers
     named: int  # runs that the panels name
     replayed: int
 
@@ -84,10 +88,12 @@ def gathered(
     wanted = chosen(named, most)
     tell(len(wanted), len(named))
     traces = {run.key: traced(store, run) for run in wanted}
-    details = _details(store, path, results, runs, traces, {run.key for run in named[:NAMED]})
-    return Findings(
-        facts, results, tuple(details), len(named), sum(bool(one.error_mm) for one in traces.values())
-    )
+    tracebacks = _tracebacks(store, runs)
+    numbers = {of: number for number, of in enumerate(tracebacks)}
+    told = {run.key for run in named[:NAMED]}
+    details = tuple(_details(store, path, results, runs, traces, told, numbers))
+    replayed = sum(bool(one.error_mm) for one in traces.values())
+    return Findings(facts, results, details, tuple(tracebacks.values()), len(named), replayed)
 
 
 def write_page(findings: Findings, path: Path) -> None:
@@ -107,6 +113,7 @@ def page_html(findings: Findings) -> str:
     script, deciding, commands = _own("page.js"), evidence(grid, laws, levels), _commands(facts)
     data = {
         "cells": findings.details,
+        "tracebacks": [text[-TRACE_LENGTH:] for text in findings.tracebacks],
         "deciding": [number for one in deciding[:PRINTED] for number, _ in one.cells],
         "commands": {"draws": commands["export"], "scores": commands["json"]},
     }
@@ -185,9 +192,9 @@ def _details(
     runs: dict[CellKey, CellRuns],
     traces: dict[str, Trace],
     told: set[str],
+    tracebacks: Mapping[tuple[str, str, str], int],
 ) -> Iterator[dict[str, Any]]:
     grid = Grid(results)
-    tracebacks = _tracebacks(store, runs)
     for cell in results.cells:
         own = runs[cell.sheet, cell.law, cell.condition]
         shown = [
@@ -196,14 +203,14 @@ def _details(
         yield cell_data(grid, cell, own, shown, tracebacks) if cell.planned else {}
 
 
-def _tracebacks(store: Reader, runs: dict[CellKey, CellRuns]) -> dict[str, str]:
-    """Return by key the traceback of the first run of each law that came to each trouble for each reason."""
+def _tracebacks(store: Reader, runs: dict[CellKey, CellRuns]) -> Tracebacks:
+    """Return the traceback of the first run of each law that came to each trouble for each reason."""
     first: dict[tuple[str, str, str], str] = {}
     for (_, law, _), own in runs.items():
         for trouble in own.troubles:
             first.setdefault((law, trouble.outcome, trouble.reason), trouble.key)
-    records = {key: store.record(key) for key in first.values()}
-    return {key: record.trace for key, record in records.items() if record is not None}
+    records = {of: store.record(key) for of, key in first.items()}
+    return {of: record.trace for of, record in records.items() if record is not None and record.trace}
 
 
 def _own(name: str) -> str:

@@ -1,0 +1,204 @@
+"""The page as a file: what is in it, that nothing users named is markup, and that it needs nothing else."""
+
+from __future__ import annotations
+
+import base64
+import hashlib
+import json
+import re
+from collections.abc import Callable
+from html.parser import HTMLParser
+from pathlib import Path
+from typing import Any
+
+import pytest
+
+from rigbench.campaign.plan import Entry
+from rigbench.campaign.reading import Reader
+from rigbench.report.cautions import BEFORE_A_REAL_ARM, CAUTION, NOT_MODELLED
+from rigbench.report.json_form import results_json
+from rigbench.report.page.data import embedded
+
+ROOT = Path(__file__).resolve().parents[3]
+EVIL = (
+    "<script>alert(1)</script>",
+    "</script><img src=x onerror=alert(1)>",
+    "\"'&<b onclick=alert(1)>",
+    "{{ 7*7 }}{% raise %}",
+)
+MB = 1e6
+
+
+class Reading(HTMLParser):
+    """Tags with their attributes, and the text of each script apart from that of the page."""
+
+    def __init__(self, path: Path) -> None:
+        super().__init__()
+        self.tags: list[tuple[str, dict[str, str | None]]] = []
+        self.text, self.scripts, self.inside = "", [], ""
+        self.feed(path.read_text("utf-8"))
+
+    def handle_starttag(self, tag: str, attributes: list[tuple[str, str | None]]) -> None:
+        self.tags.append((tag, dict(attributes)))
+        self.inside = tag
+        if tag == "script":
+            self.scripts.append("")
+
+    def handle_data(self, data: str) -> None:
+        if self.inside == "script":
+            self.scripts[-1] += data
+        elif self.inside != "style":
+            self.text += data
+
+    def handle_endtag(self, tag: str) -> None:
+        self.inside = ""
+
+    @property
+    def said(self) -> str:
+        return " ".join(self.text.split())
+
+    @property
+    def data(self) -> Any:
+        return json.loads(self.scripts[0])
+
+    def ids(self) -> set[str]:
+        return {attributes["id"] or "" for _, attributes in self.tags if "id" in attributes}
+
+
+def test_nothing_that_users_name_is_markup(
+    make_store: Callable[..., Path], make_page: Callable[[Path], Path]
+) -> None:
+    """Names of laws, sheets and motions, title, YAML, reasons and tracebacks: text in the page and its data."""
+
+    def ends(entry: Entry) -> str:
+        return "law-error" if entry.law == EVIL[0] and entry.draw == 1 else "finished"
+
+    store = make_store(
+        EVIL, 3, 4, sheets=(EVIL[2], "two"), motions=(EVIL[3],), title=EVIL[1], text=EVIL[1] + "\n", ends=ends
+    )
+    page = Reading(make_page(store))
+    assert len(page.scripts) == 2
+    assert not [
+        tag for tag, _ in page.tags if tag in {"img", "b", "iframe", "object", "embed", "link", "base"}
+    ]
+    assert not [name for _, attributes in page.tags for name in attributes if name.startswith("on")]
+    for name in EVIL[:3]:
+        assert name in page.text
+    assert "49" not in page.text.split("Experiment")[0]
+    cells = page.data["cells"]
+    assert {cell["law"] for cell in cells} == set(EVIL)
+    troubles = [trouble for cell in cells for trouble in cell["troubles"]]
+    assert len(troubles) == 4
+    assert {(one["reason"], page.data["tracebacks"][one["traceback"]]) for one in troubles} == {
+        ("the tray <b>fell</b>", "Traceback: <script>alert(3)</script>"),
+    }
+
+
+def test_data_can_not_end_its_element() -> None:
+    """Whatever is embedded has no < > & of its own, and reads back as it was; nothing infinite gets in."""
+    document = {"</script>": ["<!--", "&lt;", "\u2028", "é"]}
+    text = embedded(document)
+    assert not set(text) & set("<>&\u2028")
+    assert json.loads(text) == document
+    with pytest.raises(ValueError, match="JSON"):
+        embedded({"value": float("inf")})
+
+
+def test_the_page_asks_for_nothing(
+    make_store: Callable[..., Path], make_page: Callable[[Path], Path]
+) -> None:
+    """No address but that of SVG's names; a policy that lets this script alone run, by its digest."""
+    path = make_page(make_store())
+    page, text = Reading(path), path.read_text("utf-8")
+    assert set(re.findall(r"https?://[^\s\"']+", text)) == {"http://www.w3.org/2000/svg"}
+    assert "url(" not in text
+    assert "@import" not in text
+    assert not [attributes for _, attributes in page.tags if "src" in attributes]
+    policy = next(a["content"] or "" for tag, a in page.tags if tag == "meta" and "http-equiv" in a)
+    digest = base64.b64encode(hashlib.sha256(page.scripts[1].encode()).digest()).decode()
+    assert policy.startswith("default-src 'none';")
+    assert f"script-src 'sha256-{digest}';" in policy
+
+
+def test_figures_are_those_of_status_json(
+    make_store: Callable[..., Path], make_page: Callable[[Path], Path]
+) -> None:
+    """Verdicts, counts, medians and tolerated levels are what the commands that the page names print."""
+    store = make_store(3, 5, 80)
+    page = Reading(make_page(store))
+    with Reader.open_for_reading(store) as reader:
+        results = reader.results()
+    printed = results_json(results, str(store))
+    for shown, cell in zip(page.data["cells"], printed["cells"], strict=True):
+        assert (shown["law"], shown["condition"]) == (cell["law"], cell["condition"])
+        assert shown["verdict"] == cell["verdict"]
+        spread = next(one for one in shown["spreads"] if one["title"] == "tool peak")
+        assert spread["median"][0] == pytest.approx(cell["tool_peak_mm"]["median"], rel=1e-5)
+        assert spread["limit"] == 1.0
+        if not shown["exact"]:
+            kept = round(cell["pass_share"] * cell["draws"])
+            assert shown["said"][0].startswith(f"{kept} of 80 draws keep the tolerance")
+            counts, below = spread["bins"]["counts"], spread["bins"]["below"]
+            assert sum(counts[:below]) == kept  # settling times are far below their limit
+    assert results.advice.split("; ")[0].rstrip(".") in page.said
+    for command in ("status", "status trays.sqlite --json", "matrix", "export"):
+        assert f"rigbench {command}" in page.said
+    assert (
+        f"rigbench trace trays.sqlite {page.data['cells'][0]['runs'][0]['key'][:12]}"
+        == (page.data["cells"][0]["runs"][0]["command"])
+    )
+
+
+def test_what_stands_behind_the_figures_is_told(
+    make_store: Callable[..., Path], make_page: Callable[[Path], Path]
+) -> None:
+    """The experiment's text, seed, CPU, versions, date, and the cautions: those of the README."""
+    page = Reading(make_page(make_store(text="# how\nrigbench: 1\n")))
+    assert "# how\nrigbench: 1\n" in page.text
+    for word in ("Seed of the draws3", "a type of CPU", "numpy 2.4.6", "2026-05-04", "0 of the"):
+        assert word in page.said
+    readme = " ".join((ROOT / "README.md").read_text("utf-8").split())
+    for caution in (CAUTION, BEFORE_A_REAL_ARM, NOT_MODELLED):
+        assert caution in page.said
+        assert caution.removeprefix("Simulation is ").rstrip(".") in readme
+
+
+def test_sections_appear_when_there_is_something_in_them(
+    make_store: Callable[..., Path], make_page: Callable[[Path], Path]
+) -> None:
+    """Curves need a level, the break-even table a crossing; decision, matrix, experiment are always there."""
+    always = {"decision", "matrix", "experiment", "cautions"}
+    plain = Reading(make_page(make_store(2, 1, 1, name="plain.sqlite")))
+    assert always <= plain.ids()
+    assert not {"curves", "break-even"} & plain.ids()
+    crossing = make_store(4, 4, 12, name="crossing.sqlite")
+    with Reader.open_for_reading(crossing) as reader:
+        found = reader.results().break_even
+    assert found, "the invented scores no longer cross"
+    page = Reading(make_page(crossing))
+    assert {"curves", "break-even"} <= page.ids()
+    assert f"{len(found)} pair" in page.said
+
+
+def test_the_same_findings_give_the_same_bytes(
+    make_store: Callable[..., Path], make_page: Callable[..., Path], run_store: Path
+) -> None:
+    """Replays included; nothing is left beside the page."""
+    one = make_page(run_store, 4).read_bytes()
+    assert make_page(run_store, 4).read_bytes() == one
+    assert not list(run_store.parent.glob("*.part"))
+    assert b"4 of the" in one
+
+
+@pytest.mark.parametrize("draws", [2, pytest.param(128, marks=pytest.mark.evidence)])
+def test_twenty_laws_by_twenty_conditions_stay_under_5_mb(
+    make_store: Callable[..., Path], make_page: Callable[..., Path], draws: int
+) -> None:
+    """With the trace of every named run the page still loads at once."""
+    path = make_page(make_store(20, 20, draws), None if draws == 2 else 10_000)
+    page = Reading(path)
+    traced = [run for cell in page.data["cells"] for run in cell["runs"] if run["trace"]]
+    points = sum(len(run["trace"]["error_mm"]) for run in traced)
+    rest = 2 * 400 - len(traced)
+    assert path.stat().st_size + rest * 7 * points / len(traced) < 5 * MB
+    assert len(page.data["cells"]) == 400
