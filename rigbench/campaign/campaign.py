@@ -39,8 +39,8 @@ def run_campaign(
     names laws to be run anew, see :meth:`Store.run_anew`. An outcome is stored as it comes, in a
     transaction of its own. ``on_progress`` is called at the start and after each.
 
-    Where the plan is to stop early, a column's runs are no longer begun once it is settled; what is in hand then
-    is stored all the same. See :class:`Settling`.
+    Where the plan is to stop early, a column's runs are no longer begun once it is settled; what is in hand
+    then is stored all the same. See :class:`Settling`.
 
     The plan's studies follow, each with rounds of runs until it is finished; not where a part of the draws is
     asked for, since what a study asks next depends on all of them.

@@ -36,8 +36,9 @@ IN_STUDIES = "studied CROSS JOIN runs USING (id) CROSS JOIN keys USING (id)"
 """Where the runs of the plan and those of the studies are found; either may be asked for the same columns."""
 
 IN_PLAY = (
-    "(SELECT id, draw FROM plan LEFT JOIN (SELECT CAST(key AS INTEGER) AS at, value AS after FROM json_each(?))"
-    " ON at = place WHERE draw IS NULL OR after IS NULL OR draw < after)"
+    "(SELECT id, draw FROM plan LEFT JOIN"
+    " (SELECT CAST(key AS INTEGER) AS at, value AS after FROM json_each(?)) ON at = place"
+    " WHERE draw IS NULL OR after IS NULL OR draw < after)"
 )
 """The plan without the draws of columns that stopped before them; its parameter is what _ends returns."""
 

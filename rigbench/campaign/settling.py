@@ -2,9 +2,9 @@
 
 A column is a condition in a sheet. Its laws are looked at after each draw of its gapless beginning, in which
 every run of every law has come to something; it is settled after the first draw at which the interval that
-holds at any time (see scores/anytime.py) lies on one side of the required share for each law. So the laws of a
-column keep the same draws, and the number of them follows from the stored rows alone, in whichever order they
-came. A draw with a host's trouble does not count for its law, as in the cells.
+holds at any time (see scores/anytime.py) lies on one side of the required share for each law. So the laws of
+a column keep the same draws, and the number of them follows from the stored rows alone, in whichever order
+they came. A draw with a host's trouble does not count for its law, as in the cells.
 """
 
 from __future__ import annotations
@@ -174,8 +174,9 @@ def to_do(plan: Plan, store: Reader) -> list[Entry]:
     The store may be of an older plan: a column counts as settled only if the draws that settled it are
     all stored under this one's keys, and are judged by the same tolerance.
     """
-    missing, labels = store.missing(plan), store.labels
-    if not plan.stop_early or labels.tolerance != plan.tolerance:
+    missing = store.missing(plan)
+    labels = store.labels if plan.stop_early and store.owner is not None else None
+    if labels is None or labels.tolerance != plan.tolerance:
         return missing
     ends = {(sheet, condition): after for sheet, condition, after in labels.settled}
 

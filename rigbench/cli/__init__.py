@@ -174,6 +174,10 @@ def matrix(
     curves: Annotated[
         bool, typer.Option("--curves", help="draw curves against the level instead, with bands and tolerance")
     ] = False,
+    limits: Annotated[
+        bool,
+        typer.Option("--limits", help="draw how the draws' own limits are spread, which find_level found"),
+    ] = False,
     drivers: Annotated[
         str | None,
         typer.Option(
@@ -210,7 +214,7 @@ def matrix(
     with telling(as_json):
         from rigbench.cli.matrix import Wanted, draw_matrix
 
-        wanted = Wanted(shown, score, against, curves, drivers, condition, sheet, text, output)
+        wanted = Wanted(shown, score, against, curves, limits, drivers, condition, sheet, text, output)
         draw_matrix(store, wanted, as_json)
 
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections import Counter
 from collections.abc import Iterator
 from dataclasses import asdict, dataclass
 from pathlib import Path
@@ -9,6 +10,7 @@ from typing import Any
 
 from rigbench.campaign.owner import Owner
 from rigbench.campaign.plan import Plan
+from rigbench.campaign.settling import to_do
 from rigbench.campaign.store import Store
 from rigbench.cli.estimate import Estimate, estimate_of
 from rigbench.cli.output import print_json, show, tell_notes
@@ -16,6 +18,7 @@ from rigbench.cli.run import store_path
 from rigbench.cli.spans import duration_words, size_words
 from rigbench.errors import Fault, StoreError, counted
 from rigbench.experiment import Experiment, load_experiment
+from rigbench.scores.anytime import draws_to_settle
 from rigbench.scores.intervals import draws_needed, misses_allowed
 
 __all__ = ["check_experiment"]
@@ -28,6 +31,7 @@ class Stored:
     path: Path
     runs: int | None
     notes: tuple[Fault, ...] = ()
+    spared: int = 0  # neither stored nor wanted: their columns were settled before
 
 
 def check_experiment(file: str, as_json: bool) -> None:
@@ -35,7 +39,7 @@ def check_experiment(file: str, as_json: bool) -> None:
     experiment = load_experiment(file)
     plan = experiment.plan()
     stored = _stored(plan, store_path(file, None))
-    estimate = estimate_of(experiment, plan, stored.runs or 0)
+    estimate = estimate_of(experiment, plan, (stored.runs or 0) + stored.spared)
     tell_notes([*experiment.notes, *stored.notes, *estimate.notes])
     if as_json:
         print_json(_document(experiment, plan, stored, estimate))
@@ -50,12 +54,14 @@ def _stored(plan: Plan, path: Path) -> Stored:
         with Store.open_for_reading(path) as store:
             owner = store.owner
             missing = {entry.key for entry in store.missing(plan)}
+            wanted = {entry.key for entry in to_do(plan, store)}
     except StoreError as error:
         return Stored(path, None, (Fault(error.path, None, "", error.problem),))
     if owner is not None and not owner.is_same(Owner.of(plan)):
         problem = f"belongs to {owner}: 'run' will want another one, named with --store"
         return Stored(path, None, (Fault(str(path), None, "", problem),))
-    return Stored(path, sum(entry.key not in missing for entry in plan.entries))
+    counts = Counter((entry.key in missing, entry.key in wanted) for entry in plan.entries)
+    return Stored(path, counts[False, False], spared=counts[True, False])
 
 
 def _lines(experiment: Experiment, plan: Plan, stored: Stored, estimate: Estimate) -> Iterator[str]:
@@ -66,11 +72,12 @@ def _lines(experiment: Experiment, plan: Plan, stored: Stored, estimate: Estimat
     yield f"laws: {', '.join(plan.laws)}"
     yield f"conditions: {', '.join(column.name for column in plan.columns)}"
     if stored.runs is not None:
-        yield f"stored: {stored.runs} of them, in {stored.path}"
+        spared = f"; {stored.spared} more are not wanted, as their columns are settled"
+        yield f"stored: {stored.runs} of them, in {stored.path}{spared if stored.spared else ''}"
     yield from _draws_lines(experiment)
     for study in plan.studies:
         yield f"{study.name}: at most {counted(study.most_runs, 'run')} more, after those of the plan"
-    if stored.runs == len(plan.entries):
+    if (stored.runs or 0) + stored.spared == len(plan.entries):
         yield "time: none, all is stored"
     elif estimate.seconds is None:
         yield "time: can't be told, for not every law finishes its nominal run"
@@ -78,7 +85,8 @@ def _lines(experiment: Experiment, plan: Plan, stored: Stored, estimate: Estimat
         cores = counted(estimate.cores, "core")
         said = f"{duration_words(estimate.seconds)} on {cores}"
         besides = "".join(f", without {study.name}" for study in plan.studies)
-        yield f"time: {said}{besides}; an estimate, from a short run of each law"
+        most = "at most " if experiment.stop_early else ""
+        yield f"time: {most}{said}{besides}; an estimate, from a short run of each law"
     if estimate.store_bytes is not None:
         yield f"store: {size_words(estimate.store_bytes)} when all is done; an estimate, from a small one"
 
@@ -105,6 +113,11 @@ def _draws_lines(experiment: Experiment) -> Iterator[str]:
     if experiment.tolerance is None or not experiment.random:
         return
     share = experiment.tolerance.required_share
+    if experiment.stop_early:
+        needed = draws_to_settle(share)
+        said = f"draws: to settle that a share of {share:g} keeps takes {needed} that all keep the tolerance"
+        yield f"{said}; a column stops once all its laws are settled, at {experiment.draws} the latest"
+        return
     allowed = misses_allowed(share, experiment.draws)
     said = f"draws: to show a share of {share:g} takes {draws_needed(share)} that all keep the tolerance"
     if allowed is None:
@@ -117,6 +130,7 @@ def _document(experiment: Experiment, plan: Plan, stored: Stored, estimate: Esti
     share = (
         None if experiment.tolerance is None or not experiment.random else experiment.tolerance.required_share
     )
+    needed = draws_to_settle if experiment.stop_early else draws_needed
     return {
         "title": plan.title,
         "arm": plan.arm,
@@ -130,9 +144,10 @@ def _document(experiment: Experiment, plan: Plan, stored: Stored, estimate: Esti
         "conditions": [asdict(column) for column in plan.columns],
         "draws": plan.draws if experiment.random else None,
         "required_share": share,
-        "draws_needed": None if share is None else draws_needed(share),
-        "misses_allowed": None if share is None else misses_allowed(share, plan.draws),
-        "runs": {"planned": len(plan.entries), "stored": stored.runs},
+        "stop_early": plan.stop_early,
+        "draws_needed": None if share is None else needed(share),
+        "misses_allowed": None if share is None or plan.stop_early else misses_allowed(share, plan.draws),
+        "runs": {"planned": len(plan.entries), "stored": stored.runs, "not_wanted": stored.spared},
         "studies": [{"name": study.name, "most_runs": study.most_runs} for study in plan.studies],
         "estimate": {
             "seconds": estimate.seconds,

@@ -30,6 +30,7 @@ class Wanted:
     score: str | None = None
     against: str | None = None
     curves: bool = False
+    limits: bool = False
     drivers: str | None = None
     condition: str | None = None
     sheet: str | None = None
@@ -51,8 +52,8 @@ class Wanted:
         """What the picture is of, as its file's name says."""
         if self.drivers is not None:
             return "drivers"
-        if self.curves:
-            return "curves"
+        if self.curves or self.limits:
+            return "curves" if self.curves else "limits"
         if self.against is not None:
             return "changes"
         return "matrix" if self.show == SHARE else self.show
@@ -78,7 +79,9 @@ def draw_matrix(path: str, wanted: Wanted, as_json: bool) -> None:
     changes = None
     if wanted.against is not None:
         changes = changes_against(path, wanted.against, results, wanted.score, "--against")
-    if wanted.curves:
+    if wanted.limits:
+        _draw_limits(path, results, picture)
+    elif wanted.curves:
         _draw_curves(results, picture, wanted)
     else:
         document |= _draw(results, changes, picture, wanted, as_json)
@@ -88,7 +91,11 @@ def draw_matrix(path: str, wanted: Wanted, as_json: bool) -> None:
 def _faults(path: str, wanted: Wanted, as_json: bool) -> Iterator[Fault]:
     """Yield what of the options can't go together."""
     yield from name_fault(path, "--show", "view of the matrix", wanted.show, SHOWS)
-    ways = {"--against": wanted.against is not None, "--curves": wanted.curves}
+    ways = {
+        "--against": wanted.against is not None,
+        "--curves": wanted.curves,
+        "--limits": wanted.limits,
+    }
     ways["--drivers"] = wanted.drivers is not None
     given = [option for option, is_given in ways.items() if is_given]
     if len(given) > 1:
@@ -101,8 +108,11 @@ def _faults(path: str, wanted: Wanted, as_json: bool) -> Iterator[Fault]:
         yield Fault(path, None, "--show", "says nothing about --drivers", "--score alone")
     if wanted.text and wanted.output is not None:
         yield Fault(path, None, "--text", "prints and -o writes a picture", "one of them")
-    if wanted.text and wanted.curves:
-        yield Fault(path, None, "--text", "has no form for --curves", "-o FILE")
+    for option, given_too in (("--curves", wanted.curves), ("--limits", wanted.limits)):
+        if wanted.text and given_too:
+            yield Fault(path, None, "--text", f"has no form for {option}", "-o FILE")
+    if wanted.limits and (wanted.show != SHARE or wanted.score is not None):
+        yield Fault(path, None, "--limits", "is of the tolerance as a whole", "no --show, no --score")
     if as_json and wanted.text and wanted.against is None and wanted.drivers is None:
         yield Fault(
             path, None, "--text --json", "are two forms of the same", "'rigbench status STORE --json'"
@@ -148,6 +158,16 @@ def _draw_curves(results: Results, picture: Path | None, wanted: Wanted) -> None
 
     if picture is not None:
         level_curves_picture(results, picture, datetime.date.today(), wanted.view)
+
+
+def _draw_limits(path: str, results: Results, picture: Path | None) -> None:
+    from rigbench.report.limits import limits_picture
+
+    if results.level_search is None:
+        expected = "find_level in the experiment file, and 'rigbench run' to its end"
+        raise InputFaults.one(path, "--limits", "no search for the draws' own limits is stored", expected)
+    if picture is not None:
+        limits_picture(results, picture, datetime.date.today())
 
 
 def _drivers(

@@ -60,6 +60,8 @@ def _words(progress: Progress) -> str:
         parts += [f"{progress.rate:.3g} runs a second", f"{duration_words(progress.seconds_left)} left"]
     if progress.ends_in is not None and progress.ends_in < (progress.seconds_left or float("inf")):
         parts.append(f"stops in {duration_words(progress.ends_in)}")
+    if progress.settled:
+        parts.append(f"{counted(progress.settled, 'column')} settled")
     parts.append(f"{progress.failed} failed")
     return ", ".join(parts)
 

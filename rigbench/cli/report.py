@@ -7,7 +7,7 @@ from pathlib import Path
 
 from rigbench.campaign.store import Store
 from rigbench.cli.output import print_json, say, show
-from rigbench.cli.stored import CAUTION
+from rigbench.cli.stored import CAUTION, check_output
 from rigbench.errors import InputFaults, counted
 
 __all__ = ["ENDINGS", "write_report"]
@@ -18,8 +18,7 @@ ENDINGS = (".html", ".htm")
 def write_report(path: str, output: str | None, traces: int | None, as_json: bool) -> None:
     """Write the page of what is stored; at most ``traces`` runs are replayed for it (None: 20 s of them)."""
     page = Path(path).with_name(f"{Path(path).stem}-report.html") if output is None else Path(output)
-    if page.resolve() == Path(path).resolve():
-        raise InputFaults.one(page, "-o", "is the store itself", "another file")
+    check_output(page, path)
     if page.suffix.lower() not in ENDINGS:
         raise InputFaults.one(page, "-o", f"'{page.suffix}' is no ending of a page", " or ".join(ENDINGS))
     with Store.open_for_reading(path) as store:

@@ -16,6 +16,7 @@ from rigbench.campaign.executor import Executor
 from rigbench.campaign.owner import Owner
 from rigbench.campaign.part import Part
 from rigbench.campaign.plan import Plan
+from rigbench.campaign.settling import to_do
 from rigbench.campaign.store import Store
 from rigbench.cli.fresh import make_room
 from rigbench.cli.output import interrupts_alike, print_json, say, show, tell_notes
@@ -111,13 +112,15 @@ def _tell_move(store: Store, plan: Plan) -> None:
 
 def _intent(plan: Plan, part: Part, store: Store, path: Path, again: Collection[str]) -> str:
     wanted = [entry for entry in plan.entries if part.has(entry)]
-    keys = {entry.key for entry in store.missing(plan)}
+    keys = {entry.key for entry in to_do(plan, store)}
     keys |= {entry.key for entry in wanted if entry.law in again}
     missing = sum(entry.key in keys for entry in wanted)
     first = "" if part.draws is None else f" of the first {counted(part.draws, 'draw')}"
     if missing == 0:
-        return f"all {len(wanted)} runs{first} are stored in {path}: nothing to run"
-    said = f"{missing} of {counted(len(wanted), 'run')}{first} to do, stored in {path}"
+        all_of = "all runs that are wanted" if plan.stop_early else f"all {len(wanted)} runs"
+        return f"{all_of}{first} are stored in {path}: nothing to run"
+    most = "at most " if plan.stop_early else ""
+    said = f"{most}{missing} of {counted(len(wanted), 'run')}{first} to do, stored in {path}"
     if part.ends is None:
         return said
     return f"{said}; none begins when {duration_words(part.ends - time.monotonic())} have passed"

@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 import shlex
-from collections.abc import Iterable, Iterator, Mapping, Sequence
-from dataclasses import dataclass, replace
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
+from dataclasses import dataclass, field, replace
 from itertools import chain
 from pathlib import Path
 
 from rigbench.campaign.plan import Plan, fair_order
+from rigbench.campaign.studies.tune import Tune, with_gains
 from rigbench.campaign.study import Study
 from rigbench.errors import Fault, InputFaults
 from rigbench.experiment.across import Skipped, faults_across, notes_across, skipped_of
@@ -19,6 +20,7 @@ from rigbench.experiment.read_vary import read_sweep
 from rigbench.experiment.schema import ExperimentKeys
 from rigbench.experiment.sheet import Checked, check_sheet
 from rigbench.experiment.studies import studies_of
+from rigbench.experiment.tune import tune_study
 from rigbench.scores.intervals import draws_needed, misses_allowed
 from rigbench.scores.results import Column, Tolerance
 from rigbench.yamlfile import Document, load, partial, read_text
@@ -36,7 +38,8 @@ class Experiment:
     ``path`` as the user named it; ``laws`` the rows, variants included, and ``columns`` what is possible in
     any sheet; ``draws`` the machines drawn in each random condition; ``skipped`` the
     combinations that can't be; ``law_lines`` where the laws stand in the file; ``notes`` what the user
-    should know but need not change; ``studies`` what is asked after the matrix.
+    should know but need not change; ``studies`` what is asked after the matrix; ``tune`` the search for gains
+    before it, if one is declared; ``studies_of`` gives the studies of changed sheets.
     """
 
     path: str
@@ -54,6 +57,10 @@ class Experiment:
     notes: tuple[Fault, ...] = ()
     studies: tuple[Study, ...] = ()
     stop_early: bool = False
+    tune: Tune | None = None
+    studies_of: Callable[[Sequence[Sheet]], tuple[Study, ...]] = field(
+        default=lambda _: (), repr=False, compare=False
+    )
 
     @property
     def random(self) -> bool:
@@ -79,6 +86,20 @@ class Experiment:
             for column in self.columns
             if law not in sheet.laws or column not in [own.column for own in sheet.conditions]
         )
+
+    def tuned(self, gains: Mapping[tuple[str, str], Mapping[str, float]]) -> Experiment:
+        """Return the experiment with these gains, by sheet and law, in place of those declared."""
+        sheets = tuple(
+            replace(
+                sheet,
+                laws={
+                    law: with_gains(choice, gains.get((sheet.name, law), {}))
+                    for law, choice in sheet.laws.items()
+                },
+            )
+            for sheet in self.sheets
+        )
+        return replace(self, sheets=sheets, studies=self.studies_of(sheets))
 
     def plan(self, store: str | None = None) -> Plan:
         """Return every run, in order; ``store`` is the store's path if the user named one."""
@@ -121,9 +142,15 @@ def load_experiment(path: str | Path) -> Experiment:
     faults += [*more, *collisions, *faults_across(document, sweep, checked)]
     if not faults:
         experiment = _assembled(document, text, keys, checked)
-        variants = made[0].variants
-        studies, too_large = studies_of(document, keys, experiment.sheets, variants, experiment.tolerance)
-        experiment = replace(experiment, studies=studies)
+        variants, tolerance = made[0].variants, experiment.tolerance
+        studies, too_large = studies_of(document, keys, experiment.sheets, variants, tolerance)
+        rows = {row: law for each in checked if each.keys for row, law in (each.keys.laws or {}).items()}
+        experiment = replace(
+            experiment,
+            studies=studies,
+            tune=tune_study(document, keys, rows, experiment.sheets, variants, axes, tolerance),
+            studies_of=lambda sheets: studies_of(document, keys, sheets, variants, tolerance)[0],
+        )
         faults += [*_size_faults(document, experiment), *too_large]
     if faults:
         once = dict.fromkeys(faults)

@@ -25,7 +25,7 @@ FIXED = tuple(
     (key,)
     for key in (
         "rigbench", "title", "seed", "conditions", "draws", "vary", "tolerance", "required_share", "needs",
-        "stop_early", "find_level",
+        "stop_early", "find_level", "worst_case", "tune",
     )
 )  # fmt: skip
 """Keys that all sheets share, or they could not be shown side by side."""

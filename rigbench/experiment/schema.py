@@ -19,6 +19,8 @@ from rigbench.experiment.mismatch_keys import MismatchKeys
 from rigbench.experiment.motion_keys import MotionKeys
 from rigbench.experiment.needs_keys import NeedsKeys
 from rigbench.experiment.rig_keys import SensingKeys, TimingKeys
+from rigbench.experiment.tune_keys import TuneKeys
+from rigbench.experiment.worst_case_keys import WorstCaseKeys
 from rigbench.yamlfile import Declared
 
 __all__ = ["DriveKeys", "ExperimentKeys", "LawKeys", "RatesKeys"]
@@ -171,11 +173,21 @@ class ExperimentKeys(Declared):
     )
     find_level: FindLevelKeys | None = Field(
         default=None,
-        description="find each draw's own limit, by runs after the matrix, and from these the tolerated level; "
-        "{} for the defaults; default: the tolerated level from the columns",
+        description="find each draw's own limit by runs after the matrix, and from these the tolerated "
+        "level; {} for the defaults; default: the tolerated level from the columns",
     )
     needs: NeedsKeys | None = Field(
         default=None,
         description="ask which sources of mismatch must be known, and how well, by runs after the matrix; "
         "default: not asked",
+    )
+    worst_case: WorstCaseKeys | None = Field(
+        default=None,
+        description="search for the machine that breaks a law, by runs after the matrix; {} for the "
+        "defaults; default: not searched",
+    )
+    tune: TuneKeys | None = Field(
+        default=None,
+        description="find the gains of each law that do best on the nominal machine, by runs before the matrix, "
+        "which then has them; {} for the defaults; default: the gains as declared",
     )

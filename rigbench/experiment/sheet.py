@@ -24,7 +24,9 @@ from rigbench.experiment.positions import check_start, joint_list
 from rigbench.experiment.scenes import scene_choice
 from rigbench.experiment.schema import ExperimentKeys, RatesKeys
 from rigbench.experiment.tolerance import SETTLE_BAND_MM, check_applies, tolerance_of
+from rigbench.experiment.tune import check_tune, check_tune_scores
 from rigbench.experiment.vary import Axis
+from rigbench.experiment.worst_case import check_worst_case
 from rigbench.rig.run import Rates, Run
 from rigbench.scores.results import Tolerance
 from rigbench.yamlfile import partial
@@ -73,6 +75,8 @@ def check_sheet(combination: Combination, axes: tuple[Axis, ...], folder: Path) 
     check_find_level(keys, mismatch, tolerance, findings)
     check_stop_early(keys, tolerance, findings)
     check_needs(keys.needs, tuple(keys.laws or ()), combination.variants, mismatch, tolerance, findings)
+    check_worst_case(keys, combination.variants, mismatch, tolerance, findings)
+    check_tune(keys, laws, combination.variants, axes, findings)
     if arm is None or arms is None:
         check_without_arm(keys.motions or {}, findings, folder)
         scene_choice(keys.scene, None, findings, folder)
@@ -82,6 +86,7 @@ def check_sheet(combination: Combination, axes: tuple[Axis, ...], folder: Path) 
     if tolerance is not None and motions and findings.clean("motions"):
         check_applies(tolerance, motions, arm, findings)
     check_needs_score(keys.needs, motions, arm, findings)
+    check_tune_scores(keys, motions, arm, findings)
     start_offset = joint_list("start_offset_deg", keys.start_offset_deg, arm, findings)
     if start_offset is not None:
         check_start(start_offset, motions, arm, findings)

@@ -10,6 +10,7 @@ from rigbench.experiment.expand import Sheet
 from rigbench.experiment.find_level import find_level_study
 from rigbench.experiment.needs import needs_size_faults, needs_study
 from rigbench.experiment.schema import ExperimentKeys
+from rigbench.experiment.worst_case import worst_case_study
 from rigbench.scores.results import Tolerance
 from rigbench.yamlfile import Document
 
@@ -29,5 +30,6 @@ def studies_of(
     """
     needs = needs_study(keys.needs, sheets, variants, tolerance)
     faults = needs_size_faults(document, keys.needs, needs)
-    found = (find_level_study(keys, sheets, tolerance), needs)
+    worst_case = worst_case_study(keys, sheets, variants, tolerance)
+    found = (find_level_study(keys, sheets, tolerance), needs, worst_case)
     return tuple(study for study in found if study is not None), tuple(faults)

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterable, Iterator, Mapping
 from typing import Any
 
 from rigbench.arm.arm import PRISMATIC, REVOLUTE, Arm
@@ -15,7 +15,7 @@ from rigbench.scores.names import SCORES
 from rigbench.scores.results import Tolerance
 from rigbench.yamlfile import KeyPath
 
-__all__ = ["SETTLE_BAND_MM", "check_applies", "tolerance_of"]
+__all__ = ["SETTLE_BAND_MM", "check_applies", "check_limits", "limits_of", "tolerance_of"]
 
 BAND = "settle_band_mm"
 
@@ -36,9 +36,9 @@ def tolerance_of(
     The bands are by the motion's name; that of the experiment is under ''.
     """
     bands: dict[str, float] = {}
-    limits = _limits_of(("tolerance",), keys.tolerance, arm, bands, "", findings)
+    limits = limits_of(("tolerance",), keys.tolerance, arm, bands, "", findings)
     own = {
-        name: _limits_of(("motions", name, "tolerance"), motion.tolerance, arm, bands, name, findings)
+        name: limits_of(("motions", name, "tolerance"), motion.tolerance, arm, bands, name, findings)
         for name, motion in (keys.motions or {}).items()
     }
     tolerance = Tolerance(limits, keys.required_share, {name: found for name, found in own.items() if found})
@@ -47,7 +47,7 @@ def tolerance_of(
     return (tolerance if tolerance.limited else None), bands
 
 
-def _limits_of(
+def limits_of(
     path: KeyPath,
     declared: Mapping[str, Any] | None,
     arm: Arm | None,
@@ -55,7 +55,7 @@ def _limits_of(
     motion: str,
     findings: Findings,
 ) -> dict[str, float]:
-    """Return the limits that are declared at ``path``; a settle band goes to ``bands``."""
+    """Return the limits that are declared at ``path``; a settle band of ``motion`` goes to ``bands``."""
     limits: dict[str, float] = {}
     for name, value in (declared or {}).items():
         here = (*path, name)
@@ -119,16 +119,17 @@ def _shown(value: Any) -> str:
 
 def check_applies(tolerance: Tolerance, motions: Mapping[str, Motion], arm: Arm, findings: Findings) -> None:
     """Add a fault for each limit on a score that no motion has that it is for; a note where some lack it."""
-    _check_limits(("tolerance",), tolerance.limits, motions, arm, findings)
+    check_limits(("tolerance",), tolerance.limits, motions, arm, findings)
     for name, limits in tolerance.motions.items():
         if name in motions:
             path = ("motions", name, "tolerance")
-            _check_limits(path, limits, {name: motions[name]}, arm, findings)
+            check_limits(path, limits, {name: motions[name]}, arm, findings)
 
 
-def _check_limits(
-    path: KeyPath, limits: Mapping[str, float], motions: Mapping[str, Motion], arm: Arm, findings: Findings
+def check_limits(
+    path: KeyPath, limits: Iterable[str], motions: Mapping[str, Motion], arm: Arm, findings: Findings
 ) -> None:
+    """Add a fault for each score limited at ``path`` that none of the motions has; a note where some lack it."""
     for name in limits:
         base, _, joint = name.partition(".")
         here: KeyPath = (*path, base, joint) if joint else (*path, base)

@@ -131,14 +131,14 @@ class Grid:
             lines.append(f"settled, {counted(cell.planned, 'draw')}")
         change = self.changes.cells[cell.key] if self.changes else None
         if change is not None:
-            lines += self._earlier(change, column)
+            lines += self._earlier(change, column, full)
         best = cell.best and self.marks_best
         return CellWords(cell.verdict, best, *shown, tuple(lines), ink, change=change.kind if change else "")
 
     def _nothing(self, cell: Cell) -> str:
         return "no result" if cell.draws == 0 else f"no {self.score_name}"
 
-    def _earlier(self, change: CellChange, column: Column) -> list[str]:
+    def _earlier(self, change: CellChange, column: Column, full: bool) -> list[str]:
         """Say what the cell showed in the earlier store."""
         before = change.before
         if before is None or not before.draws:
@@ -152,7 +152,7 @@ class Grid:
         if by is not None and self.changes and not by.tie and math.isfinite(by.value):
             name, unit = score_words(self.changes.score)
             told = f"by {signed(by.value)} {unit}".rstrip()
-            lines.append(f"{name} {told}" if self.shares else told)
+            lines.append(f"{name} {told}" if self.shares and full else told)
         return lines
 
     def _value(self, cell: Cell) -> float | None:

@@ -17,7 +17,8 @@ MOST = 3
 def changes_words(changes: Changes, other: str) -> str:
     """Say how many cells changed against the store named ``other``, and what only one of the stores has."""
     cells = ", ".join(f"{changes.count(kind)} {kind}" for kind in KINDS if changes.count(kind))
-    said = [f"Against {other}, on the same draws: of {counted(len(changes.cells), 'cell')} {cells}"]
+    of = f"Against {other}, on the same draws: of {counted(len(changes.cells), 'cell')}"
+    said = [f"{of} {cells}".rstrip()]
     for where, only in ((f"only in {other}", changes.only_before), (f"not in {other}", changes.only_after)):
         if only:
             said.append(f"{where}: {', '.join(_named(only))}")

@@ -27,13 +27,13 @@ def results_json(results: Results, store: str) -> dict[str, Any]:
     """Return the results as plain values that ``json.dumps(..., allow_nan=False)`` takes.
 
     ``{"store", "runs": {"planned", "done", "failed"}, "cells": [...], "laws": [...], "break_even": [...],
-    "comparisons": [...], "stop_early", "advice"}``. A cell holds sheet, law, condition, level, draws, incomplete,
-    pass_share, pass_low, pass_high, verdict, planned (how many draws; 0 where the law is not possible);
-    then each score by name, ``{"median", "p95", "median_low", "median_high", "p95_low", "p95_high", "ratio",
-    "ratio_low", "ratio_high"}`` in the unit that the name carries, the ratio being to nominal, draw by draw;
-    and ``"motions"``, each with draws, passed, pass_share and its scores. What is infinite, or missing, is
-    None: p95_high where the draws don't reach, the tolerated level's high where no level was shown to miss,
-    all shares without a tolerance, all verdicts where a law is not possible.
+    "comparisons": [...], "stop_early", "advice"}``. A cell holds sheet, law, condition, level, draws,
+    incomplete, pass_share, pass_low, pass_high, verdict, planned (how many draws; 0 where the law is not
+    possible); then each score by name, ``{"median", "p95", "median_low", "median_high", "p95_low",
+    "p95_high", "ratio", "ratio_low", "ratio_high"}`` in the unit that the name carries, the ratio being to
+    nominal, draw by draw; and ``"motions"``, each with draws, passed, pass_share and its scores. What is
+    infinite, or missing, is None: p95_high where the draws don't reach, the tolerated level's high where no
+    level was shown to miss, all shares without a tolerance, all verdicts where a law is not possible.
     A law holds sheet, law, ``"tolerated_level": {"value", "low", "high"}``, found_by: "pass_shares" or
     "own_limits", and of the latter ``"own_limits": {"draws", "most", "finest", "never_miss", "keep_again",
     "left_open"}``. A cell is ``settled`` where its column stopped early, after the draws ``planned``; where

@@ -18,8 +18,10 @@ MOST = 3
 def tolerated_reading(results: Results) -> str:
     """Say what a tolerated level is, and how it was found."""
     if results.level_search is None:
-        return f"Tolerated level: where the share of the draws that keep it falls below the required one {ENDS}."
-    return f"Tolerated level: up to which the required share of the draws keep, by each draw's own limit {ENDS}."
+        said = "where the share of the draws that keep it falls below the required one"
+    else:
+        said = "up to which the required share of the draws keep, by each draw's own limit"
+    return f"Tolerated level: {said} {ENDS}."
 
 
 def found_by(standing: LawStanding) -> str | None:
@@ -34,10 +36,8 @@ def limits_words(results: Results) -> str:
     search = results.level_search
     if search is None:
         return ""
-    said = [
-        f"Own limits: of {counted(search.draws, 'draw')} of each law, up to level {level(search.most)} to within"
-        f" {level(search.finest)}"
-    ]
+    draws, most, finest = counted(search.draws, "draw"), level(search.most), level(search.finest)
+    said = [f"Own limits: of {draws} of each law, up to level {most}, to within {finest}"]
     again = {s: s.found.keep_again for s in results.standings if s.found and s.found.keep_again}
     left = {s: s.found.left_open for s in results.standings if s.found and s.found.left_open}
     if again:

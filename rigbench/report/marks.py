@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 from rigbench.report.paper import Paper, Point
@@ -34,6 +35,10 @@ class Mark:
     def line(self, paper: Paper, start: Point, end: Point, name: str = "") -> None:
         """Draw a piece of the curve."""
         paper.stroke(start, end, color=self.tone, line=LINE_WIDTH, dashes=self.dashes, order=1.9, name=name)
+
+    def path(self, paper: Paper, points: Sequence[Point], name: str = "") -> None:
+        """Draw a curve that goes through points."""
+        paper.path(points, color=self.tone, line=LINE_WIDTH, dashes=self.dashes, name=name)
 
     def bar(self, paper: Paper, x: float, ends: Point, open_end: bool) -> None:
         """Draw the interval from its low end up to its high one: with a stop there, or open with an arrow."""

@@ -14,7 +14,7 @@ from rigbench.report.needs_words import (
     subject_words,
     together_words,
 )
-from rigbench.report.table import blocks
+from rigbench.report.table import blocks, laws_column
 from rigbench.report.words import level, tolerated_words
 from rigbench.scores.names import score_words
 from rigbench.scores.needs import LawNeeds
@@ -51,4 +51,5 @@ def _table(needs: LawNeeds, width: int) -> Sequence[str]:
         [["tolerated", "level alone"], *([tolerated_words(need.alone.found.tolerated)] for need in sources)],
         [["shown to keep", "up to"], *([kept_words(need)] for need in sources)],
     ]
-    return list(blocks([[""], *([need.group.name] for need in sources)], columns, max(width, 60)))
+    names = laws_column([need.group.name for need in sources], width)
+    return list(blocks(names, columns, width))

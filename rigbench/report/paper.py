@@ -119,6 +119,17 @@ class Paper:
             drawn.set_linestyle((0, tuple(dashes)))
         self._add(drawn, name, zorder=order)
 
+    def path(
+        self, points: Sequence[Point], *, color: str, line: float,
+        dashes: Sequence[float] = (), name: str = "",
+    ) -> None:  # fmt: skip
+        """Draw straight lines from point to point; ``dashes`` as those of a stroke."""
+        xs, ys = zip(*points, strict=True)
+        drawn = Line2D(xs, ys, color=color, linewidth=line, solid_joinstyle="miter")
+        if dashes:
+            drawn.set_linestyle((0, tuple(dashes)))
+        self._add(drawn, name, zorder=1.9)
+
     def marker(
         self, x: float, y: float, size: float, shape: str, *, fill: str, edge: str, name: str = ""
     ) -> None:

@@ -49,16 +49,16 @@ def matrix_text(
     grid = Grid(results, view, changes)
     laws = laws_in_order(grid)
     head = list(_head(results, width))
-    limits = _wrap(limits_words(results), width)
+    limits = ["\n".join(_wrap(said, width)) for said in (limits_words(results),) if said]
     if len(results.sheets) == 1:
         reading = _wrap(_reading(grid, has_levels(results)), width)
         told = pairs_text(grid, laws, width) if more and changes is None else ()
         parts = ["\n".join([*head, *reading]), *_matrices(grid, laws, width), *told]
-        return "\n\n".join([*parts, *(["\n".join(limits)] if limits else [])])
+        return "\n\n".join([*parts, *limits])
     parts = ["\n".join(head), *_across_sheets(grid, laws, width)]
     if has_levels(results) or len(results.columns) > 1:
         parts += _of_sheets(grid, laws, width)
-    return "\n\n".join([*parts, *(["\n".join(limits)] if limits else [])])
+    return "\n\n".join([*parts, *limits])
 
 
 def _head(results: Results, width: int) -> Iterator[str]:
@@ -77,9 +77,8 @@ def _reading(grid: Grid, levels: bool) -> str:
         of = {P95: "95th percentile over the draws", RATIO: "median ratio to nominal, draw by draw"}
         shown = of.get(grid.view.show, "median over the draws")
         return f"In each cell: the {name}, {shown} (95 % interval).{was}"
-    holds = ", at any number of draws" if grid.results.stop_early else ""
-    said = f"In each cell: share of the draws that keep it (95 % interval{holds}); beneath it the median {name}."
-    said += was
+    kind = "95 % interval, at any number of draws" if grid.results.stop_early else "95 % interval"
+    said = f"In each cell: share of the draws that keep it ({kind}); beneath it the median {name}.{was}"
     if levels and grid.results.level_search is not None:
         return f"{said} {tolerated_reading(grid.results)}"
     return f"{said} Tolerated level: where the share falls below the required one {ENDS}." if levels else said

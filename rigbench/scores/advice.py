@@ -7,6 +7,7 @@ from dataclasses import dataclass
 from math import inf, isfinite
 
 from rigbench.errors import counted
+from rigbench.scores.anytime import draws_to_settle
 from rigbench.scores.intervals import draws_to_decide
 from rigbench.scores.names import score_words
 from rigbench.scores.results import Cell, Results
@@ -179,16 +180,16 @@ def _shown(sheet: SheetStanding, law: str) -> str:
     level = sheet.level(law)
     if level.high == 0.0:
         return "misses the tolerance at level 0 already"
-    kept = sheet.shown_to_keep(law)
-    if kept is None:
+    top = sheet.shown_to_keep(law)
+    if top is None:
         said = "is not shown to keep the tolerance at any level"
-    elif kept > 0.0:
-        said = f"is shown to keep the tolerance up to level {kept:g}"
+    elif top > 0.0:
+        said = f"is shown to keep the tolerance up to level {top:g}"
     else:
         said = "is shown to keep the tolerance at level 0 only"
     if isfinite(level.high):
         return f"{said} and to miss it from level {level.high:g}"
-    return f"{said}, the highest run" if kept == sheet.highest else f"{said} (higher ones are open)"
+    return f"{said}, the highest run" if top == sheet.highest else f"{said} (higher ones are open)"
 
 
 def _elsewhere(sheet: SheetStanding, law: str) -> Iterator[str]:
@@ -208,7 +209,10 @@ def _would_decide(sheet: SheetStanding, laws: Sequence[str]) -> Iterator[str]:
             cell = sheet.cell(law, column)
             if sheet.tolerance is None or cell.verdict != "open" or cell.pass_share is None:
                 continue
-            needed = draws_to_decide(cell.pass_share, sheet.tolerance.required_share)
+            share, required = cell.pass_share, sheet.tolerance.required_share
+            needed = draws_to_decide(share, required)
+            if sheet.stop_early:
+                needed = draws_to_settle(required, share)
             if needed is not None and needed > sheet.draws:
                 yield (
                     f"about {needed} draws would decide '{law}' under '{column.name}' "

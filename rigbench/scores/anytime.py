@@ -18,7 +18,7 @@ RARE = log(20.0)
 """Of the evidence against a share: what one in 20 campaigns ever reaches, if the share is the true one."""
 
 
-def evidence_against(share: float, passed: int, draws: int) -> float:
+def evidence_against(share: float, passed: float, draws: int) -> float:
     """Return the logarithm of the evidence that the draws hold against a pass share.
 
     log of M = B(k + 1, n - k + 1) / (p^k (1 - p)^(n - k)), k of n passed, B the beta function: the
@@ -59,15 +59,24 @@ def settled(passed: int, draws: int, required_share: float) -> str:
     return "keeps" if passed > required_share * draws else "misses"
 
 
-@lru_cache(maxsize=64)
-def draws_to_settle(required_share: float) -> int | None:
-    """Return how many draws without a miss settle that the share is kept; None for a share of 1.
+@lru_cache(maxsize=1024)
+def draws_to_settle(required_share: float, share: float = 1.0) -> int | None:
+    """Return how many draws settle a law whose pass share stays at ``share``; None if no number does.
 
-    The price of looking at any time: 158 for 0.95, where a single look needs 73.
+    Without a miss, a share of 1, that is the price of looking at any time: 158 for 0.95, where a single look
+    needs 73. The evidence falls at first and then rises with the draws, so it reaches 20 once.
     """
-    if required_share >= 1.0:
+    if share == required_share or share >= required_share >= 1.0:
         return None
-    draws = 1
-    while settled(draws, draws, required_share) != "keeps":
-        draws += 1
-    return draws
+
+    def enough(draws: int) -> bool:
+        return evidence_against(required_share, share * draws, draws) >= RARE
+
+    high = 1
+    while not enough(high):
+        high *= 2
+    low = high // 2
+    while high - low > 1:
+        middle = (low + high) // 2
+        low, high = (low, middle) if enough(middle) else (middle, high)
+    return high

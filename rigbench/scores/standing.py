@@ -22,7 +22,7 @@ class SheetStanding:
         possible = {place for place, cell in self._cells.items() if cell.planned > 0}
         self.laws = tuple(law for law in results.laws if any(law == named for named, _ in possible))
         self.columns = tuple(c for c in results.columns if any(c.name == named for _, named in possible))
-        self.tolerance, self.draws = results.tolerance, results.draws
+        self.tolerance, self.draws, self.stop_early = results.tolerance, results.draws, results.stop_early
         self.main = main_score(() if results.tolerance is None else results.tolerance.limited)
         self.steps = ladder(self.columns)
         self._break_even: list[Mapping[str, Any]] = [b for b in results.break_even if b["sheet"] == sheet]

@@ -12,7 +12,8 @@ import pytest
 
 from rigbench.report.json_form import results_json
 from rigbench.scores.comparison import Comparison
-from rigbench.scores.results import LawComparison, Measure, Results
+from rigbench.scores.own_limits import FoundLevel
+from rigbench.scores.results import LawComparison, LevelSearch, Measure, Results, Tolerated
 
 CROSSING = {
     "sheet": "",
@@ -32,7 +33,9 @@ def test_the_document_has_its_declared_shape(make_results: Callable[..., Results
     cells = (results.cells[0], replace(results.cells[1], ratios=ratios), *results.cells[2:])
     results = replace(results, cells=cells)
     document = results_json(results, "results/trays.sqlite")
-    assert list(document) == ["store", "runs", "cells", "laws", "break_even", "comparisons", "advice"]
+    assert list(document) == [
+        "store", "runs", "cells", "laws", "break_even", "comparisons", "stop_early", "advice",
+    ]  # fmt: skip
     assert document["store"] == "results/trays.sqlite"
     assert document["runs"] == {"planned": results.planned, "done": results.done, "failed": results.failed}
     assert document["advice"] == results.advice
@@ -84,7 +87,32 @@ def test_the_document_has_its_declared_shape(make_results: Callable[..., Results
         "sheet": "",
         "law": "computed torque",
         "tolerated_level": {"value": standing.tolerated.value, "low": standing.tolerated.low, "high": high},
+        "found_by": "pass_shares",
+        "own_limits": None,
     }
+    assert document["stop_early"] is cell["settled"] is False
+
+
+def test_own_limits_and_settled_columns_say_so(make_results: Callable[..., Results]) -> None:
+    """How the level was found, of how many draws, and what was odd in them; which cells stopped early."""
+    results = make_results(1, 3)
+    level = Tolerated(1.5, 1.25, math.inf)
+    standing = replace(results.standings[0], tolerated=level, found=FoundLevel(level, 90, 80, 2, 1))
+    cells = (results.cells[0], replace(results.cells[1], settled=True, planned=60), results.cells[2])
+    search = LevelSearch(90, 4.0, 0.0625)
+    results = replace(results, standings=(standing,), cells=cells, level_search=search, stop_early=True)
+    document = results_json(results, "")
+    assert document["laws"][0] == {
+        "sheet": "",
+        "law": "computed torque",
+        "tolerated_level": {"value": 1.5, "low": 1.25, "high": None},
+        "found_by": "own_limits",
+        "own_limits": {
+            "draws": 90, "most": 4.0, "finest": 0.0625, "never_miss": 80, "keep_again": 2, "left_open": 1,
+        },
+    }  # fmt: skip
+    assert document["stop_early"] is True
+    assert [(cell["settled"], cell["planned"]) for cell in document["cells"]][1] == (True, 60)
 
 
 @pytest.mark.parametrize("tolerance", [True, False])

@@ -20,10 +20,12 @@ from rigbench.campaign.reading import Reader
 from rigbench.campaign.work import Host
 from rigbench.report.cautions import BEFORE_A_REAL_ARM, CAUTION, NOT_MODELLED
 from rigbench.report.cells import Grid
+from rigbench.report.limits_words import limits_words, tolerated_reading
 from rigbench.report.order import laws_in_order
 from rigbench.report.output_file import write_whole
 from rigbench.report.page.curve import charts
 from rigbench.report.page.data import NAMED, TRACE_LENGTH, cell_data, embedded, run_data
+from rigbench.report.page.needs import KEY, READING, FoundNeeds, found_needs, needs_tables
 from rigbench.report.page.runs import CellRuns, NamedRun, read_runs, shown_scores
 from rigbench.report.page.sections import STEPS, break_even_rows, evidence, heads, matrix_rows, overview
 from rigbench.report.page.traces import Trace, chosen, traced
@@ -64,6 +66,7 @@ class Findings:
     results: Results
     details: tuple[dict[str, Any], ...]
     tracebacks: tuple[str, ...]  # each once; the details have their numbers
+    needs: FoundNeeds | None
     named: int  # runs that the panels name
     replayed: int
 
@@ -83,7 +86,7 @@ def gathered(
     with store.one_moment():
         results = store.results()
         runs = read_runs(store, results)
-        facts = _facts(store, path, date)
+        facts, studied = _facts(store, path, date), store.study(KEY)
     named = list(_in_order(results, runs))
     wanted = chosen(named, most)
     tell(len(wanted), len(named))
@@ -93,7 +96,8 @@ def gathered(
     told = {run.key for run in named[:NAMED]}
     details = tuple(_details(store, path, results, runs, traces, told, numbers))
     replayed = sum(bool(one.error_mm) for one in traces.values())
-    return Findings(facts, results, details, tuple(tracebacks.values()), len(named), replayed)
+    needs = found_needs(studied, results.tolerance)
+    return Findings(facts, results, details, tuple(tracebacks.values()), needs, len(named), replayed)
 
 
 def write_page(findings: Findings, path: Path) -> None:
@@ -129,12 +133,16 @@ def page_html(findings: Findings) -> str:
         levels=levels,
         random=any_random(results),
         required=percent(results.tolerance.required_share) if results.tolerance else "",
+        tolerated_reading=tolerated_reading(results),
+        limits=limits_words(results),
         about=(arm_words(results), tolerance_words(results), runs_words(results)),
         rows={sheet: list(matrix_rows(grid, sheet, laws, levels)) for sheet in results.sheets},
         overview=overview(grid, laws, levels),
         evidence=deciding,
         charts={sheet: list(charts(grid, sheet, laws, scores)) for sheet in results.sheets},
         break_even=list(break_even_rows(grid)),
+        needs=list(needs_tables(findings.needs)),
+        needs_reading=READING,
         cautions=(CAUTION, BEFORE_A_REAL_ARM, NOT_MODELLED),
         commands=commands,
         steps=[(step, shade(step / STEPS), _dark(step / STEPS)) for step in range(STEPS + 1)],
@@ -164,6 +172,7 @@ def _commands(facts: Facts) -> dict[str, str]:
         "json": f"rigbench status {store} --json",
         "matrix": f"rigbench matrix {store}",
         "export": f"rigbench export {store}",
+        "needs": f"rigbench needs {store}",
         "check": f"rigbench check {experiment}",
     }
 

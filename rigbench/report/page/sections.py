@@ -108,7 +108,7 @@ def _strip(grid: Grid, sheet: str, law: str) -> Strip | None:
         return None
 
     def place(at: float) -> float:
-        return round(4 + 84 * axis.place(at) / axis.steps, 1) if math.isfinite(at) else 100.0
+        return round(min(4 + 84 * axis.place(at) / axis.steps, 100.0), 1)
 
     low, high = sorted((tolerated.low, tolerated.high))
     dot = None if tolerated.value is None else place(tolerated.value)
@@ -135,10 +135,10 @@ def _deciding(grid: Grid, sheet: str, law: str) -> list[Column]:
     tolerated = grid.tolerated(sheet, law)
     if tolerated is None:
         return list(steps[-1:])
-    levels = [step.level or 0.0 for step in steps]
-    beyond = next((at for at in levels if at > tolerated.low), tolerated.high)
-    wanted = {tolerated.low, min(beyond, tolerated.high), tolerated.high}
-    return [step for step, at in zip(steps, levels, strict=True) if at in wanted]
+    kept = [step for step in steps if (step.level or 0.0) <= tolerated.low][-1:]
+    beyond = [step for step in steps if tolerated.low < (step.level or 0.0) <= tolerated.high][:1]
+    missed = [step for step in steps if (step.level or 0.0) >= tolerated.high][:1]
+    return list(dict.fromkeys([*kept, *beyond, *missed]))
 
 
 def _cell_words(grid: Grid, cell: Cell, column: Column) -> str:

@@ -115,6 +115,12 @@ def build(
 
 
 @pytest.fixture
+def make_plan() -> Callable[..., Plan]:
+    """Build the plan that a store of these names has."""
+    return plan_of
+
+
+@pytest.fixture
 def make_store(tmp_path: Path) -> Callable[..., Path]:
     """Fill a store with invented outcomes."""
 

@@ -3,21 +3,33 @@
 from __future__ import annotations
 
 import base64
+import datetime
 import hashlib
 import json
+import math
 import re
 from collections.abc import Callable
+from dataclasses import replace
 from html.parser import HTMLParser
 from pathlib import Path
 from typing import Any
 
 import pytest
 
-from rigbench.campaign.plan import Entry
+from rigbench.campaign.plan import Entry, Plan
 from rigbench.campaign.reading import Reader
+from rigbench.campaign.store import Store
+from rigbench.campaign.work import Outcome
 from rigbench.report.cautions import BEFORE_A_REAL_ARM, CAUTION, NOT_MODELLED
 from rigbench.report.json_form import results_json
+from rigbench.report.needs_words import share_words
 from rigbench.report.page.data import embedded
+from rigbench.report.page.needs import FoundNeeds
+from rigbench.report.page.page import gathered, page_html
+from rigbench.scores.needs import Alone, LawNeeds, SourceNeed
+from rigbench.scores.needs_design import Group, NeedsDesign, Subject
+from rigbench.scores.own_limits import FoundLevel
+from rigbench.scores.results import Tolerated
 
 ROOT = Path(__file__).resolve().parents[3]
 EVIL = (
@@ -178,6 +190,68 @@ def test_sections_appear_when_there_is_something_in_them(
     page = Reading(make_page(crossing))
     assert {"curves", "break-even"} <= page.ids()
     assert f"{len(found)} pair" in page.said
+
+
+def test_what_must_be_known_is_told_where_it_was_asked(
+    make_store: Callable[..., Path], tmp_path: Path
+) -> None:
+    """A row for each source, what to identify first standing first, in the words of `rigbench needs`."""
+    group = Group(
+        "viscous", "viscous_percent", "", ("v",), {"grows": "factor", "unit": "%", "values": {"all": 30.0}}
+    )
+    rest = replace(group, name="coulomb", source="coulomb_percent")
+    found = FoundLevel(Tolerated(1.1, 0.8, 1.25), 73, 60, 0)
+    alone, free = (
+        Alone(found, 0, True),
+        Alone(replace(found, tolerated=Tolerated(None, 5.0, math.inf)), 0, True),
+    )
+    sources = (
+        SourceNeed(group, (0.8, 0.7, 0.9), (0.9, 0.8, 1.0), alone),
+        SourceNeed(rest, (0.0, 0.0, 0.05), (0.01, 0.0, 0.03), free),
+    )
+    law = LawNeeds("", "<law>", sources, alone, 64, 64, 0, 0, 0, "score")
+    design = NeedsDesign(
+        "tool_peak_mm", 1.0, 64, 73, 0.95, (Subject("", "<law>", ("load tray",), (group, rest)),)
+    )
+    with Reader.open_for_reading(make_store(1, 2, 2)) as store:
+        findings = gathered(store, "trays.sqlite", datetime.date(2026, 5, 4), 0)
+    (tmp_path / "none.html").write_text(page_html(findings), encoding="utf-8")
+    (tmp_path / "needs.html").write_text(
+        page_html(replace(findings, needs=FoundNeeds((law,), design))), encoding="utf-8"
+    )
+    assert "needs" not in Reading(tmp_path / "none.html").ids()
+    page = Reading(tmp_path / "needs.html")
+    assert "needs" in page.ids()
+    assert "rigbench needs trays.sqlite" in page.said
+    rows = page.said.split("Shown to keep up to")[1]
+    assert rows.index("viscous") < rows.index("coulomb")
+    assert share_words((0.9, 0.8, 1.0)) in rows
+    assert "Identify first" in page.said
+    assert "<law>" in page.said
+
+
+def test_all_of_a_page_is_of_one_moment(
+    make_store: Callable[..., Path], make_plan: Callable[..., Plan], monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """Runs that a campaign stores while the page is made are in all of it or in none."""
+    path = make_store(1, 2, 6, done=0.5)
+    plan = make_plan(["law 0"], 2, 6)
+    with Store.open_for_writing(path, plan) as writer, Reader.open_for_reading(path) as store:
+        results = store.results
+        missing = writer.missing(plan)
+        assert missing
+
+        def then_more(*given: Any, **more: Any) -> Any:
+            found = results(*given, **more)
+            writer.add([Outcome(entry.key, "finished", scores={"tool_peak_mm": 9.0}) for entry in missing])
+            return found
+
+        monkeypatch.setattr(store, "results", then_more)
+        findings = gathered(store, "trays.sqlite", datetime.date(2026, 5, 4), 0)
+        assert store.counts().done == findings.results.done + len(missing)
+    for cell, shown in zip(findings.results.cells, findings.details, strict=True):
+        for spread in shown["spreads"]:
+            assert sum(spread["bins"]["counts"]) == cell.draws
 
 
 def test_the_same_findings_give_the_same_bytes(
