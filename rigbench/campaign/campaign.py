@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Sequence
 
-from rigbench.campaign.doing import Doing, Studying
+from rigbench.campaign.doing import Doing, Studying, record_known
 from rigbench.campaign.executor import Executor
 from rigbench.campaign.part import Part
 from rigbench.campaign.plan import Entry, Plan
@@ -17,7 +17,7 @@ from rigbench.campaign.tally import Tally
 from rigbench.campaign.work import Outcome
 from rigbench.errors import Stopped
 
-__all__ = ["run_campaign"]
+__all__ = ["run_campaign", "run_first"]
 
 ALL = Part()
 
@@ -42,7 +42,8 @@ def run_campaign(
     Where the plan is to stop early, a column's runs are no longer begun once it is settled; what is in hand
     then is stored all the same. See :class:`Settling`.
 
-    The plan's studies follow, each with rounds of runs until it is finished; not where a part of the draws is
+    A study that comes first is put down with what is known of it, no more: see :func:`run_first`. The
+    plan's studies follow, each with rounds of runs until it is finished; not where a part of the draws is
     asked for, since what a study asks next depends on all of them.
 
     The first SIGINT or SIGTERM lets the runs in hand end and stores them, the second drops them; ``on_stop``
@@ -53,6 +54,8 @@ def run_campaign(
     disk refuses.
     """
     store.record_plan(plan)
+    if plan.first is not None:
+        record_known(plan.first, store)
     for law in again:
         store.run_anew(law)
     missing = [entry for entry in store.missing(plan) if part.has(entry)]
@@ -83,6 +86,30 @@ def run_campaign(
     if stop.why and (tracker.left or (studying is not None and studying.done < studying.asked)):
         raise Stopped(done, planned, part.resume(plan.resume), stop.why)
     return counts
+
+
+def run_first(
+    plan: Plan,
+    store: Store,
+    jobs: int | None = None,
+    on_progress: Callable[[Progress], None] | None = None,
+    *,
+    part: Part = ALL,
+    executor: Executor | None = None,
+    on_stop: Callable[[], None] = lambda: None,
+) -> None:
+    """Do the study on which the plan's entries depend, whole, and none of these; the rest as in run_campaign.
+
+    The plan that follows from it is for :func:`run_campaign`.
+    """
+    if plan.first is None:
+        return
+    store.record_plan(plan)
+    with stop_signals(part.ends, on_stop) as stop:
+        studying = Studying(plan.first, store, Doing(store, stop, jobs, executor))
+        studying.go(on_progress or (lambda _: None))
+    if stop.why and studying.done < studying.asked:
+        raise Stopped(studying.done, studying.asked, part.resume(plan.resume), stop.why)
 
 
 def _matrix(doing: Doing, missing: Sequence[Entry], settling: Settling) -> Iterator[Outcome]:

@@ -16,7 +16,7 @@ from rigbench.campaign.study import Study
 from rigbench.campaign.work import Outcome
 from rigbench.scores.row import MACHINE_OUTCOMES, Row
 
-__all__ = ["Doing", "Draws", "Studying"]
+__all__ = ["Doing", "Draws", "Studying", "record_known"]
 
 
 class Doing:
@@ -79,6 +79,12 @@ class Studying:
         if row is not None and row.outcome not in SETTLED and entry.key not in self._tried:
             return None
         return row
+
+
+def record_known(study: Study, store: Store) -> None:
+    """Put down the runs that a study asks for as things are, and whether all of them are stored."""
+    asked = [entry for entries in study.rounds(store.row_of) for entry in entries]
+    store.record_study(study, asked, finished=all(store.row_of(entry) is not None for entry in asked))
 
 
 class Draws:

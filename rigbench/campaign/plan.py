@@ -65,6 +65,7 @@ class Plan:
     resume: str  # the command line that goes on where a stopped campaign ended
     absent: tuple[tuple[str, str, str], ...] = ()  # (sheet, law, condition) that can't be combined: no runs
     studies: tuple[Study, ...] = ()  # done after the entries, in order
+    first: Study | None = None  # on which the entries depend; see run_first
     stop_early: bool = False  # a column gets no more draws once it is settled for all its laws
 
     @property

@@ -56,18 +56,20 @@ class Settling:
 
     @classmethod
     def read(cls, plan: Plan, store: Reader) -> Settling:
-        """Return what the rows of a store say in which the plan is recorded."""
+        """Return what the rows of a store say in which the plan is recorded.
+
+        What is to be done anew stands as it is until it has been.
+        """
         found = cls(plan)
         if plan.tolerance is not None and found._columns:
             names, places = plan.tolerance.limited, store.places()
             limits = {motion: _ceiling(plan.tolerance, motion, names) for motion in plan.motions}
-            for block in store.blocks(names, ("anew",)):
+            for block in store.blocks(names):
                 state = np.array([STATES[outcome] for outcome in block.outcome])
-                known = np.array(block.more["anew"]) == 0
                 for number in np.unique(block.place).tolist():
                     place = places[number]
                     column = found._columns.get((place.sheet, place.condition))
-                    rows = np.flatnonzero((block.place == number) & known)
+                    rows = np.flatnonzero(block.place == number)
                     if column is not None:
                         scores = block.scores[rows]
                         kept = np.all(np.isnan(scores) | (scores <= limits[place.motion]), axis=1)

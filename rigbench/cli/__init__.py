@@ -184,15 +184,24 @@ def matrix(
             metavar="LAW", help="show instead which source's draws drive this law's score and failures"
         ),
     ] = None,
+    accuracy: Annotated[
+        str | None,
+        typer.Option(
+            metavar="LAW",
+            help="print instead accuracy and repeatability after ISO 9283, from replays of up to 30 runs "
+            "that differ by noise alone",
+        ),
+    ] = None,
     condition: Annotated[
         str | None,
         typer.Option(
             metavar="NAME",
-            help="with --drivers: under which condition; all sources nearest to level 1 if left out",
+            help="with --drivers or --accuracy: under which condition; by default "
+            "nominal for --accuracy, and all sources nearest to level 1 for --drivers",
         ),
     ] = None,
     sheet: Annotated[
-        str | None, typer.Option(metavar="NAME", help="with --drivers: in which sheet; the first if left out")
+        str | None, typer.Option(metavar="NAME", help="with these: in which sheet; the first if left out")
     ] = None,
     text: Annotated[
         bool, typer.Option("--text", help="print instead of drawing, with the laws compared draw by draw")
@@ -202,7 +211,7 @@ def matrix(
         typer.Option(
             "--output",
             "-o",
-            help="a .png, .svg or .pdf file; STORE's name and -matrix.png (or what else is drawn) if left out",
+            help="a .png, .svg or .pdf file; if left out STORE's name and -matrix.png, or what else is drawn",
         ),
     ] = None,
     as_json: Json = False,
@@ -214,7 +223,9 @@ def matrix(
     with telling(as_json):
         from rigbench.cli.matrix import Wanted, draw_matrix
 
-        wanted = Wanted(shown, score, against, curves, limits, drivers, condition, sheet, text, output)
+        wanted = Wanted(
+            shown, score, against, curves, limits, drivers, condition, sheet, text, output, accuracy
+        )
         draw_matrix(store, wanted, as_json)
 
 
@@ -378,6 +389,38 @@ def needs(
         from rigbench.cli.needs import tell_needs
 
         tell_needs(store, law, output, as_json)
+
+
+@app.command(epilog="Example: rigbench worst results/worst-machines.sqlite -o worst.png")
+def worst(
+    store: StoreFile,
+    output: Annotated[
+        str | None,
+        typer.Option("--output", "-o", help="draw it too: a .png, .svg or .pdf file"),
+    ] = None,
+    as_json: Json = False,
+) -> None:
+    """Print the worst machines found within the mismatch, and from which level on a law was found to miss.
+
+    The experiment asks for the search by its key 'worst_case', and 'run' does it after the matrix. What it
+    finds was run, and can be replayed; that it finds nothing does not show that there is nothing.
+    """
+    with telling(as_json):
+        from rigbench.cli.worst import tell_worst
+
+        tell_worst(store, output, as_json)
+
+
+@app.command(epilog="Example: rigbench gains results/worst-machines.sqlite")
+def gains(store: StoreFile, as_json: Json = False) -> None:
+    """Print the gains that were found for the laws, as YAML that can be pasted into an experiment.
+
+    The experiment asks for the search by its key 'tune', and 'run' does it before the matrix.
+    """
+    with telling(as_json):
+        from rigbench.cli.gains import print_gains
+
+        print_gains(store, as_json)
 
 
 @app.command(epilog="Example: rigbench schema > rigbench.schema.json")

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 from collections import Counter
 from collections.abc import Iterator
 from dataclasses import asdict, dataclass
@@ -12,7 +13,9 @@ from rigbench.campaign.owner import Owner
 from rigbench.campaign.plan import Plan
 from rigbench.campaign.settling import to_do
 from rigbench.campaign.store import Store
+from rigbench.campaign.studies.tune import Tune
 from rigbench.cli.estimate import Estimate, estimate_of
+from rigbench.cli.gains import with_stored_gains
 from rigbench.cli.output import print_json, show, tell_notes
 from rigbench.cli.run import store_path
 from rigbench.cli.spans import duration_words, size_words
@@ -37,14 +40,25 @@ class Stored:
 def check_experiment(file: str, as_json: bool) -> None:
     """Print the plan of an experiment that is in order."""
     experiment = load_experiment(file)
+    path = store_path(file, None)
+    experiment, found = _with_gains(experiment, path)
     plan = experiment.plan()
-    stored = _stored(plan, store_path(file, None))
+    stored = _stored(plan, path)
     estimate = estimate_of(experiment, plan, (stored.runs or 0) + stored.spared)
     tell_notes([*experiment.notes, *stored.notes, *estimate.notes])
     if as_json:
-        print_json(_document(experiment, plan, stored, estimate))
+        print_json(_document(experiment, plan, stored, estimate, found))
     else:
-        show("\n".join(_lines(experiment, plan, stored, estimate)))
+        show("\n".join(_lines(experiment, plan, stored, estimate, found)))
+
+
+def _with_gains(experiment: Experiment, path: Path) -> tuple[Experiment, bool]:
+    """Return the experiment with the gains that its store holds, and whether that holds them."""
+    if experiment.tune is not None and path.exists():
+        with contextlib.suppress(StoreError), Store.open_for_reading(path) as store:
+            tuned = with_stored_gains(experiment, store)
+            return tuned, tuned is not experiment
+    return experiment, False
 
 
 def _stored(plan: Plan, path: Path) -> Stored:
@@ -64,7 +78,9 @@ def _stored(plan: Plan, path: Path) -> Stored:
     return Stored(path, counts[False, False], spared=counts[True, False])
 
 
-def _lines(experiment: Experiment, plan: Plan, stored: Stored, estimate: Estimate) -> Iterator[str]:
+def _lines(
+    experiment: Experiment, plan: Plan, stored: Stored, estimate: Estimate, found: bool
+) -> Iterator[str]:
     yield f"{plan.title}: in order"
     yield f"plan: {_product(plan)} = {counted(len(plan.entries), 'run')}"
     if plan.sheets != ("",):
@@ -75,20 +91,33 @@ def _lines(experiment: Experiment, plan: Plan, stored: Stored, estimate: Estimat
         spared = f"; {stored.spared} more are not wanted, as their columns are settled"
         yield f"stored: {stored.runs} of them, in {stored.path}{spared if stored.spared else ''}"
     yield from _draws_lines(experiment)
+    if experiment.tune is not None:
+        yield _tune_line(experiment.tune, found)
     for study in plan.studies:
         yield f"{study.name}: at most {counted(study.most_runs, 'run')} more, after those of the plan"
     if (stored.runs or 0) + stored.spared == len(plan.entries):
-        yield "time: none, all is stored"
+        yield f"time: none, all {'of the plan ' if plan.studies else ''}is stored"
     elif estimate.seconds is None:
         yield "time: can't be told, for not every law finishes its nominal run"
     else:
         cores = counted(estimate.cores, "core")
         said = f"{duration_words(estimate.seconds)} on {cores}"
-        besides = "".join(f", without {study.name}" for study in plan.studies)
+        left = [study.name for study in plan.studies]
+        left += ["tune"] if experiment.tune is not None and not found else []
+        besides = "".join(f", without {name}" for name in left)
         most = "at most " if experiment.stop_early else ""
         yield f"time: {most}{said}{besides}; an estimate, from a short run of each law"
     if estimate.store_bytes is not None:
-        yield f"store: {size_words(estimate.store_bytes)} when all is done; an estimate, from a small one"
+        besides = "".join(f", without {study.name}" for study in plan.studies)
+        done = f"{size_words(estimate.store_bytes)} when all is done{besides}"
+        yield f"store: {done}; an estimate, from a small one"
+
+
+def _tune_line(tune: Tune, found: bool) -> str:
+    """Say what the search for gains takes."""
+    each = f"{tune.runs} for each law in each sheet"
+    done = "; done, and the gains are stored" if found else ""
+    return f"tune: at most {counted(tune.most_runs, 'run')}, {each}, before those of the plan{done}"
 
 
 def _product(plan: Plan) -> str:
@@ -126,7 +155,9 @@ def _draws_lines(experiment: Experiment) -> Iterator[str]:
         yield f"{said}; of {experiment.draws}, {allowed or 'none'} may miss it"
 
 
-def _document(experiment: Experiment, plan: Plan, stored: Stored, estimate: Estimate) -> dict[str, Any]:
+def _document(
+    experiment: Experiment, plan: Plan, stored: Stored, estimate: Estimate, found: bool
+) -> dict[str, Any]:
     share = (
         None if experiment.tolerance is None or not experiment.random else experiment.tolerance.required_share
     )
@@ -149,6 +180,7 @@ def _document(experiment: Experiment, plan: Plan, stored: Stored, estimate: Esti
         "misses_allowed": None if share is None or plan.stop_early else misses_allowed(share, plan.draws),
         "runs": {"planned": len(plan.entries), "stored": stored.runs, "not_wanted": stored.spared},
         "studies": [{"name": study.name, "most_runs": study.most_runs} for study in plan.studies],
+        "tune": None if plan.first is None else {"most_runs": plan.first.most_runs, "done": found},
         "estimate": {
             "seconds": estimate.seconds,
             "cores": estimate.cores,

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import datetime
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
 
@@ -36,11 +36,22 @@ class Wanted:
     sheet: str | None = None
     text: bool = False
     output: str | None = None
+    accuracy: str | None = None
+
+    @property
+    def law(self) -> str | None:
+        """The law that is looked at by itself."""
+        return self.drivers if self.accuracy is None else self.accuracy
 
     @property
     def view(self) -> View:
         """Which number the cells show."""
         return View(self.show, self.score or "")
+
+    @property
+    def draws(self) -> bool:
+        """Whether a picture is drawn."""
+        return not self.text and self.accuracy is None
 
     @property
     def also(self) -> tuple[str, ...]:
@@ -65,13 +76,16 @@ def draw_matrix(path: str, wanted: Wanted, as_json: bool) -> None:
     if faults:
         raise InputFaults(faults)
     picture = None
-    if not wanted.text:
+    if wanted.draws:
         picture = picture_path(Path(path), wanted.kind) if wanted.output is None else Path(wanted.output)
         check_output(picture, path)
     with Store.open_for_reading(path) as store, store.one_moment():
         results = store.results(brief=True, also=wanted.also)
         if wanted.score is not None:
             check_score(path, wanted.score, store.scores(), results)
+        if wanted.accuracy is not None:
+            _accuracy(path, store, results, wanted, as_json)
+            return
         if wanted.drivers is not None:
             _drivers(path, store, results, wanted, picture, as_json)
             return
@@ -96,16 +110,19 @@ def _faults(path: str, wanted: Wanted, as_json: bool) -> Iterator[Fault]:
         "--curves": wanted.curves,
         "--limits": wanted.limits,
     }
-    ways["--drivers"] = wanted.drivers is not None
+    ways |= {"--drivers": wanted.drivers is not None, "--accuracy": wanted.accuracy is not None}
     given = [option for option, is_given in ways.items() if is_given]
     if len(given) > 1:
-        yield Fault(path, None, " ".join(given), "are pictures of their own", "one of them")
-    if wanted.drivers is None:
+        yield Fault(path, None, " ".join(given), "are views of their own", "one of them")
+    if wanted.law is None:
         for option, value in (("--condition", wanted.condition), ("--sheet", wanted.sheet)):
             if value is not None:
-                yield Fault(path, None, option, "narrows --drivers, which is not given", "--drivers LAW")
+                problem = "narrows --drivers and --accuracy, of which none is given"
+                yield Fault(path, None, option, problem, "--drivers LAW")
     elif wanted.show != SHARE:
-        yield Fault(path, None, "--show", "says nothing about --drivers", "--score alone")
+        yield Fault(path, None, "--show", "says nothing about a law by itself", "--drivers LAW alone")
+    if wanted.accuracy is not None and (wanted.output is not None or wanted.score is not None):
+        yield Fault(path, None, "--accuracy", "prints a table, of no score", "--accuracy LAW alone")
     if wanted.text and wanted.output is not None:
         yield Fault(path, None, "--text", "prints and -o writes a picture", "one of them")
     for option, given_too in (("--curves", wanted.curves), ("--limits", wanted.limits)):
@@ -113,7 +130,7 @@ def _faults(path: str, wanted: Wanted, as_json: bool) -> Iterator[Fault]:
             yield Fault(path, None, "--text", f"has no form for {option}", "-o FILE")
     if wanted.limits and (wanted.show != SHARE or wanted.score is not None):
         yield Fault(path, None, "--limits", "is of the tolerance as a whole", "no --show, no --score")
-    if as_json and wanted.text and wanted.against is None and wanted.drivers is None:
+    if as_json and wanted.text and wanted.against is None and wanted.law is None:
         yield Fault(
             path, None, "--text --json", "are two forms of the same", "'rigbench status STORE --json'"
         )
@@ -187,10 +204,27 @@ def _drivers(
     _tell({"store": path, "drivers": driver_json(strip)}, picture, as_json)
 
 
+def _accuracy(path: str, store: Reader, results: Results, wanted: Wanted, as_json: bool) -> None:
+    """Print accuracy and repeatability of a law under a condition that has noise alone."""
+    from rigbench.campaign.accuracy import accuracies, is_one_machine
+    from rigbench.report.accuracy_text import accuracy_json, accuracy_text
+
+    nominal = next((column.name for column in results.columns if column.ladder and not column.level), None)
+    condition = nominal if wanted.condition is None else wanted.condition
+    key = _cell_of(path, results, replace(wanted, condition=condition))
+    if not is_one_machine(store, key):
+        problem = f"the draws under '{key[2]}' are different machines, and ISO 9283 is about runs of one"
+        raise InputFaults.one(path, "--condition", problem, "nominal, or a case, of an experiment with noise")
+    found = accuracies(store, key)
+    if not as_json:
+        show(accuracy_text(key, found, width()))
+    _tell({"store": path, "accuracy": accuracy_json(key, found)}, None, as_json)
+
+
 def _cell_of(path: str, results: Results, wanted: Wanted) -> CellKey:
-    """Return the cell whose drivers are wanted: by default all sources together, nearest to level 1."""
-    law = wanted.drivers or ""
-    faults = list(name_fault(path, "--drivers", "law", law, results.laws))
+    """Return the cell of the law that is looked at: by default all sources together, nearest to level 1."""
+    law, option = wanted.law or "", "--drivers" if wanted.accuracy is None else "--accuracy"
+    faults = list(name_fault(path, option, "law", law, results.laws))
     if wanted.sheet is not None:
         faults += name_fault(path, "--sheet", "sheet", wanted.sheet, results.sheets)
     columns = [column for column in conditions_of(results, law) if column.random]
@@ -201,12 +235,14 @@ def _cell_of(path: str, results: Results, wanted: Wanted) -> CellKey:
         raise InputFaults(faults)
     column = telling_column(columns)
     if column is None:
-        raise InputFaults.one(
-            path, "--drivers", f"nothing is random in any run of '{law}'", "a law with draws"
-        )
+        raise InputFaults.one(path, option, f"nothing is random in any run of '{law}'", "a law with draws")
     condition = wanted.condition or column.name
     if condition not in [column.name for column in columns]:
         expected = f"one of {', '.join(repr(column.name) for column in columns)}"
+        if wanted.accuracy is not None:
+            expected = (
+                "an experiment with noise, jitter or dropped ticks, which make runs of one machine differ"
+            )
         raise InputFaults.one(path, "--condition", f"nothing is random under '{condition}'", expected)
     possible = [
         cell.sheet

@@ -14,7 +14,7 @@ from rigbench.cli.output import say
 from rigbench.cli.spans import duration_words
 from rigbench.errors import counted
 
-__all__ = ["progress_shown", "standing_words", "tell_stopping"]
+__all__ = ["OnProgress", "progress_shown", "standing_words", "tell_stopping"]
 
 LINE_EVERY_S = 10.0
 BAR_EVERY_S = 0.5

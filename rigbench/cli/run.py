@@ -6,11 +6,11 @@ import datetime
 import shlex
 import time
 from collections import Counter
-from collections.abc import Collection, Iterator
+from collections.abc import Callable, Collection, Iterable, Iterator
 from dataclasses import replace
 from pathlib import Path
 
-from rigbench.campaign.campaign import run_campaign
+from rigbench.campaign.campaign import run_campaign, run_first
 from rigbench.campaign.cluster import cluster_executor
 from rigbench.campaign.executor import Executor
 from rigbench.campaign.owner import Owner
@@ -18,9 +18,11 @@ from rigbench.campaign.part import Part
 from rigbench.campaign.plan import Plan
 from rigbench.campaign.settling import to_do
 from rigbench.campaign.store import Store
+from rigbench.campaign.studies.tune import Tune
 from rigbench.cli.fresh import make_room
+from rigbench.cli.gains import gains_notes, with_stored_gains
 from rigbench.cli.output import interrupts_alike, print_json, say, show, tell_notes
-from rigbench.cli.progress import progress_shown, tell_stopping
+from rigbench.cli.progress import OnProgress, progress_shown, tell_stopping
 from rigbench.cli.spans import duration_words
 from rigbench.cli.stored import CAUTION, picture_path, status_text
 from rigbench.cli.wishes import Wishes, part_of
@@ -59,9 +61,14 @@ def run_experiment(file: str, wishes: Wishes, as_json: bool) -> None:
             make_room(path, plan, wishes.sure)
         with Store.open_for_writing(path, plan) as opened:
             _tell_move(opened, plan)
-            say(_intent(plan, part, opened, path, wishes.again))
-            stopped = _campaign(plan, part, opened, wishes, executor)
-            results = opened.results(brief=not as_json)
+            stopped = _first(experiment.tune, plan, part, opened, wishes, executor)
+            if stopped is None:
+                if experiment.tune is not None:
+                    tuned = with_stored_gains(experiment, opened)
+                    plan = replace(tuned.plan(wishes.store), resume=plan.resume)
+                say(_intent(plan, part, opened, path, wishes.again))
+                stopped = _campaign(plan, part, opened, wishes, executor)
+            results, notes = opened.results(brief=not as_json), list(gains_notes(opened))
             troubles = [*_troubles(opened), *_ways_out(opened, plan)]
         for trouble in troubles:
             say(trouble)
@@ -69,29 +76,60 @@ def run_experiment(file: str, wishes: Wishes, as_json: bool) -> None:
             if as_json:
                 print_json(results_json(results, str(path)))
             else:
-                _show_results(results)
+                _show_results(results, notes)
             say(str(stopped))
             raise SystemExit(Stopped.exit_code)
-        _tell_results(results, path, as_json)
+        _tell_results(results, notes, path, as_json)
         _tell_part(part, results, plan)
+        if part.draws is None and any(study.name == "needs" for study in plan.studies):
+            say(f"what must be known, and how well: {shlex.join(['rigbench', 'needs', str(path)])}")
+
+
+def _first(
+    tune: Tune | None, plan: Plan, part: Part, store: Store, wishes: Wishes, executor: Executor | None
+) -> Stopped | None:
+    """Find the gains that the store does not have yet, and return how that stopped, if before its end."""
+    if tune is None or tune.found(store.row_of) is not None:
+        return None
+    say(
+        f"gains first: at most {counted(tune.most_runs, 'run')} of 'tune', then the matrix with what it finds"
+    )
+    return _done(
+        plan,
+        part,
+        store,
+        lambda on_progress: run_first(
+            plan, store, wishes.jobs, on_progress, part=part, executor=executor, on_stop=tell_stopping
+        ),
+    )
 
 
 def _campaign(
     plan: Plan, part: Part, store: Store, wishes: Wishes, executor: Executor | None
 ) -> Stopped | None:
     """Do the runs, and return how the campaign stopped, if it did so before its end."""
+    return _done(
+        plan,
+        part,
+        store,
+        lambda on_progress: run_campaign(
+            plan,
+            store,
+            wishes.jobs,
+            on_progress,
+            again=wishes.again,
+            part=part,
+            executor=executor,
+            on_stop=tell_stopping,
+        ),
+    )
+
+
+def _done(plan: Plan, part: Part, store: Store, work: Callable[[OnProgress], object]) -> Stopped | None:
+    """Do some work while its progress is shown, and return how it stopped, if it did so before its end."""
     try:
         with progress_shown() as on_progress:
-            run_campaign(
-                plan,
-                store,
-                wishes.jobs,
-                on_progress,
-                again=wishes.again,
-                part=part,
-                executor=executor,
-                on_stop=tell_stopping,
-            )
+            work(on_progress)
     except Stopped as stopped:
         return stopped
     except ClusterLost as lost:
@@ -134,10 +172,10 @@ def _tell_part(part: Part, results: Results, plan: Plan) -> None:
         say(f"{said}; '{plan.resume}' does the other {counted(left, 'run')}")
 
 
-def _tell_results(results: Results, path: Path, as_json: bool) -> None:
+def _tell_results(results: Results, notes: Iterable[str], path: Path, as_json: bool) -> None:
     """Print and draw; a picture that can't be drawn loses no text, and JSON stays one document."""
     if not as_json:
-        _show_results(results)
+        _show_results(results, notes)
     picture = picture_path(path)
     matrix_picture(results, picture, datetime.date.today())
     if as_json:
@@ -145,8 +183,8 @@ def _tell_results(results: Results, path: Path, as_json: bool) -> None:
     say(f"picture: {picture}\nstore: {path}\n{CAUTION}")
 
 
-def _show_results(results: Results) -> None:
-    show(f"{status_text(results)}\n")
+def _show_results(results: Results, notes: Iterable[str]) -> None:
+    show(f"{status_text(results, notes)}\n")
 
 
 def _ways_out(store: Store, plan: Plan) -> Iterator[str]:

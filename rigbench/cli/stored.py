@@ -12,6 +12,7 @@ from rigbench.campaign.export import check_parquet, export_columns, export_csv, 
 from rigbench.campaign.reading import Reader
 from rigbench.campaign.store import Store
 from rigbench.campaign.work import Host
+from rigbench.cli.gains import gains_notes
 from rigbench.cli.output import paragraph, print_json, put, say, show, width
 from rigbench.errors import InputFaults
 from rigbench.report import cautions
@@ -38,7 +39,8 @@ def print_status(path: str, as_json: bool) -> None:
     from rigbench.report.json_form import results_json
 
     with Store.open_for_reading(path) as store:
-        results, notes = store.results(brief=not as_json), list(_notes(store.hosts().values()))
+        results = store.results(brief=not as_json)
+        notes = [*gains_notes(store), *_notes(store.hosts().values())]
     if as_json:
         print_json(results_json(results, path) | {"notes": notes})
         return

@@ -120,6 +120,7 @@ class Experiment:
             absent=self.absent,
             studies=self.studies,
             stop_early=self.stop_early,
+            first=self.tune,
         )
 
 

@@ -188,6 +188,6 @@ class ExperimentKeys(Declared):
     )
     tune: TuneKeys | None = Field(
         default=None,
-        description="find the gains of each law that do best on the nominal machine, by runs before the matrix, "
-        "which then has them; {} for the defaults; default: the gains as declared",
+        description="find the gains of each law that do best on the nominal machine, by runs before the "
+        "matrix, which then has them; {} for the defaults; default: the gains as declared",
     )

@@ -129,7 +129,7 @@ def check_applies(tolerance: Tolerance, motions: Mapping[str, Motion], arm: Arm,
 def check_limits(
     path: KeyPath, limits: Iterable[str], motions: Mapping[str, Motion], arm: Arm, findings: Findings
 ) -> None:
-    """Add a fault for each score limited at ``path`` that none of the motions has; a note where some lack it."""
+    """Add a fault for each score limited at ``path`` that no motion has; a note where some lack it."""
     for name in limits:
         base, _, joint = name.partition(".")
         here: KeyPath = (*path, base, joint) if joint else (*path, base)

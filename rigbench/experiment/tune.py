@@ -55,12 +55,12 @@ def check_tune(
         if is_named(asked.law, row, variants)
     }
     if why and all(why.values()):
-        said = "; ".join(f"'{row}' {reason}" for row, reason in why.items())
-        findings.fault(("tune",), f"leaves every law alone: {said}", "a law that has these gains")
+        said = "; ".join(f"'{row}': {reason}" for row, reason in why.items())
+        findings.fault(("tune",), f"leaves every law alone ({said})", "a law that has these gains")
         return
     for row, reason in why.items():
         if reason:
-            findings.note(("laws", row), f"is left alone by tune: it {reason}")
+            findings.note(("laws", row), f"is left alone by tune: {reason}")
 
 
 def check_tune_scores(
@@ -75,9 +75,10 @@ def check_tune_scores(
         findings.fault(("tune", "most", "settle_band_mm"), "is no limit", "settle_band_mm under tolerance")
     if motions and findings.clean("motions"):
         check_limits(("tune", "most"), limits, motions, arm, findings)
-        if keys.tune.score in SCORES:
+        score = keys.tune.score
+        if score is not None and score in SCORES:
             probe = Findings(findings.document)
-            check_limits(("tune", "score"), [keys.tune.score], motions, arm, probe)
+            check_limits(("tune", "score"), [score], motions, arm, probe)
             for fault in probe.faults:
                 findings.fault(("tune", "score"), fault.problem, fault.expected)
 
@@ -144,12 +145,13 @@ def _left_alone(
     gains, options = list(asked.gains), dict(choice.options)
     lacking = [name for name in gains if not isinstance(options.get(name), float)]
     if lacking:
-        return f"has no gain {lacking[0]} to look for"
+        return f"it has no gain {lacking[0]} to look for"
     both = [name for name in gains if name in varied]
     if both:
-        return f"has its {both[0]} from vary"
+        return f"its {both[0]} is varied"
     given = {name for name, value in (_extra(laws, row)).items() if value is not None}
-    return choice.law_class().conflict(frozenset({*given, *gains})) or ""
+    conflict = choice.law_class().conflict(frozenset({*given, *gains}))
+    return f"with {' and '.join(gains)} found besides, {conflict}" if conflict else ""
 
 
 def _extra(laws: Mapping[str, LawKeys], row: str) -> dict[str, Any]:
@@ -160,12 +162,10 @@ def _aim(
     asked: TuneKeys, keys: ExperimentKeys, limits: Mapping[str, float], tolerance: Tolerance | None
 ) -> Aim:
     score = asked.score or main_score(() if tolerance is None else tolerance.limited)
-    enough = {
-        motion: tolerance.limits_for(motion)[score]
-        for motion in keys.motions or ()
-        if tolerance is not None and score in tolerance.limits_for(motion)
-    }
-    return Aim(score, limits, asked.delay_margin_ms, asked.delay_factor, enough)
+    kept = (
+        {} if tolerance is None else {motion: tolerance.limits_for(motion) for motion in keys.motions or ()}
+    )
+    return Aim(score, limits, asked.delay_margin_ms, asked.delay_factor, kept)
 
 
 def _subject(sheet: Sheet, law: str, gains: Sequence[Gain], laws: Mapping[str, LawKeys]) -> Subject:

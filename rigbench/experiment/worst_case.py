@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import replace
+from itertools import pairwise
 
 from rigbench.arm.draws import draw_values
 from rigbench.arm.mismatch import Mismatch
@@ -35,19 +36,15 @@ def check_worst_case(
         findings.fault(("worst_case",), "needs a mismatch", "a source with a spread under mismatch")
     if tolerance is None and findings.clean("tolerance") and findings.clean("motions"):
         findings.fault(("worst_case",), "needs a tolerance to be missed", "a limit under tolerance")
-    for number, (below, level) in enumerate(
-        zip(asked.levels or (), (asked.levels or ())[1:], strict=False), 1
-    ):
+    for number, (below, level) in enumerate(pairwise(asked.levels or ()), 1):
         if level <= below:
             expected = "levels that rise, each once"
             findings.fault(("worst_case", "levels", number), f"{level:g} after {below:g}", expected)
     levels, motions = _levels(asked, keys), len(keys.motions or ())
     least = least_runs(len(levels), motions)
     if motions and asked.runs < least and findings.clean("conditions"):
-        problem = (
-            f"{asked.runs} are too few for {counted(len(levels), 'level')} and {counted(motions, 'motion')}"
-        )
-        findings.fault(("worst_case", "runs"), problem, f"at least {least}")
+        what = f"{counted(len(levels), 'level')} and {counted(motions, 'motion')}"
+        findings.fault(("worst_case", "runs"), f"{asked.runs} are too few for {what}", f"at least {least}")
 
 
 def worst_case_study(

@@ -169,6 +169,10 @@ class _Page:
         silent = [law for law in self.laws if all((s, law) not in self.limits for s in self.results.sheets)]
         if silent:
             yield f"Without a limit: {', '.join(silent)}."
+        found = {law: [self.grid.tolerated(s, law) for s in self.results.sheets] for law in self.laws}
+        none = [law for law in self.laws if all(one is not None and one.high == 0.0 for one in found[law])]
+        if none:
+            yield f"Shown to miss at level 0 already: {', '.join(none)}."
         yield CAUTION
 
 

@@ -19,7 +19,7 @@ from rigbench.report.needs_words import READING, advice, cut, kept_words, notes,
 from rigbench.report.output_file import write_whole
 from rigbench.report.paper import INK, LINE, Paper, steady_settings
 from rigbench.report.shades import GAUGE, shade
-from rigbench.report.words import level, tolerated_words
+from rigbench.report.words import level, percent, tolerated_words
 from rigbench.scores.limit_search import LADDER
 from rigbench.scores.names import score_words
 from rigbench.scores.needs import LawNeeds, SourceNeed
@@ -70,7 +70,8 @@ def needs_figure(found: Sequence[LawNeeds], design: NeedsDesign, title: str, dat
         y = paper.lines(MARGIN, MARGIN, paper.wrap(title, WIDTH, TITLE, bold=True), TITLE, bold=True)
         said = (
             f"What must be known, and how well: what to identify first stands first. Variance of the "
-            f"{score_words(design.score)[0]} at level {level(design.level)}. {date.isoformat()}."
+            f"{score_words(design.score)[0]} at level {level(design.level)}; of {design.draws} draws "
+            f"{percent(design.required_share)} % must keep the tolerance. {date.isoformat()}."
         )
         y = paper.lines(MARGIN, y + 4, paper.wrap(said, WIDTH, HEAD), HEAD)
         for number, needs in enumerate(found):

@@ -15,7 +15,7 @@ from rigbench.report.needs_words import (
     together_words,
 )
 from rigbench.report.table import blocks, laws_column
-from rigbench.report.words import level, tolerated_words
+from rigbench.report.words import level, percent, tolerated_words
 from rigbench.scores.names import score_words
 from rigbench.scores.needs import LawNeeds
 from rigbench.scores.needs_design import NeedsDesign
@@ -39,7 +39,8 @@ def _head(needs: LawNeeds, design: NeedsDesign) -> str:
     score = score_words(design.score)[0]
     return (
         f"What must be known for {subject_words(needs)}, what to identify first standing first. Variance of "
-        f"the {score} at level {level(design.level)}; {needs.points} rows, {design.draws} draws."
+        f"the {score} at level {level(design.level)}; {needs.points} rows, {design.draws} draws, of which "
+        f"{percent(design.required_share)} % must keep the tolerance."
     )
 
 

@@ -33,6 +33,9 @@ READING = (
     "draws keeps the tolerance (shown to keep at, shown to miss from)."
 )
 
+MOST_NAMED = 4
+"""So many sources are named in a sentence; of the others the number is given."""
+
 CUT = 0.05
 """A source whose total share is below this is not among those to identify first."""
 
@@ -82,7 +85,7 @@ def advice(needs: LawNeeds, design: NeedsDesign) -> str:
         why = "no row of the design counts yet" if needs.points == 0 else f"the {score} does not vary"
         return f"Nothing can be shared out, for {why}."
     first = [need for need in shared if need.total[0] >= CUT] or shared[:1]
-    named = ", ".join(f"{need.group.name} {share_words(need.total)}" for need in first)
+    named = _named([f"{need.group.name} {share_words(need.total)}" for need in first])
     said = f"Identify first, by total share of the variance of the {score}: {named}."
     leads = first[0]
     if leads.alone.finished:
@@ -90,8 +93,13 @@ def advice(needs: LawNeeds, design: NeedsDesign) -> str:
     easy = [need.group.name for need in needs.sources if _keeps_everywhere(need.alone, design)]
     if easy:
         most = level(design.level * LADDER[-1])
-        said += f" Alone, at {most} times the declared spread, still no trouble: {', '.join(easy)}."
+        said += f" Alone, at {most} times the declared spread, still no trouble: {_named(easy)}."
     return said
+
+
+def _named(names: Sequence[str]) -> str:
+    more = f" and {len(names) - MOST_NAMED} more" if len(names) > MOST_NAMED else ""
+    return f"{', '.join(names[:MOST_NAMED])}{more}"
 
 
 def _alone_words(need: SourceNeed) -> str:

@@ -39,7 +39,7 @@ DIGITS = 3
 def find_gains(
     ask: Ask, bounds: Sequence[tuple[float, float]], trials: int, seed: int, declared: Point
 ) -> tuple[Point, Merit]:
-    """Return the best of at most ``trials`` points within ``bounds`` (low, high), each above 0, and its merit.
+    """Return the best of at most ``trials`` points within ``bounds`` (low, high), all above 0, and its merit.
 
     The ``declared`` point is tried first, whether or not it is within. The box is measured in logarithms, and
     points other than the declared one are rounded to three digits. A quasi-random start (Sobol', scrambled

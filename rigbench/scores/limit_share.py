@@ -13,10 +13,10 @@ __all__ = ["LimitShare", "limit_share"]
 
 @dataclass(frozen=True)
 class LimitShare:
-    """``share`` of the limit that is used up, above 1 where the run misses the tolerance, inf where it did not finish.
+    """``share`` of a limit that is used up: above 1 where the run misses the tolerance.
 
-    ``score`` is that with the largest share and ``value`` what it came to; '' and inf for a run that did not
-    finish.
+    ``score`` is that with the largest share and ``value`` what it came to. Of a run that did not finish the
+    share and the value are inf, and the score is ''.
     """
 
     share: float

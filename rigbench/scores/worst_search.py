@@ -48,7 +48,7 @@ class _Trials:
         return self._most - len(self.found)
 
     def values(self, points: Floats) -> Floats:
-        """Return the badness of points; _SpentError if there are not enough trials for all, once these are used."""
+        """Return the badness of points; _SpentError, with the last trials used, if there are too few left."""
         rounded = [tuple(point) for point in (np.round(points, DIGITS) + 0.0).tolist()]
         new = list(dict.fromkeys(point for point in rounded if point not in self.found))
         spent = len(new) > self.left

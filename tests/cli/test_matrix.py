@@ -84,7 +84,7 @@ def test_drivers_print_and_draw(stored: Path, call: Callable[..., Result]) -> No
         (["--drivers", "joint pd", "--condition", "nominal"], "nothing is random under 'nominal'"),
         (["--drivers", "joint pd", "--condition", "all at 11"], "(did you mean 'all at 1'?)"),
         (["--drivers", "joint pd", "--sheet", "x"], "no sheet is called 'x'"),
-        (["--drivers", "joint pd", "--curves"], "are pictures of their own"),
+        (["--drivers", "joint pd", "--curves"], "are views of their own"),
         (["--condition", "all at 1"], "narrows --drivers"),
         (["--text", "--curves"], "has no form for --curves"),
         (["--text", "-o", "x.png"], "prints and -o writes a picture"),

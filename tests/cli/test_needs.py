@@ -41,7 +41,9 @@ def test_what_must_be_known(asking: Path, call: Call, run_here: Call) -> None:
     text = call("needs", store)
     assert text.exit_code == 0, text.output
     assert "link mass" in text.stdout
-    assert "Variance of the tool peak at level 2; 16 rows, 6 draws" in " ".join(text.stdout.split())
+    assert "Variance of the tool peak at level 2; 16 rows, 6 draws, of which 50 % must keep" in " ".join(
+        text.stdout.split()
+    )
     said = call("needs", store, "--json", "-o", "needs.svg")
     found = json.loads(said.stdout)
     assert found["finished"] is True
@@ -102,8 +104,11 @@ def test_while_it_is_not_finished(
         assert run_here(str(asking)).exit_code == 3
     answer = call("needs", "results/trial.sqlite", "-o", "needs.png")
     assert answer.exit_code == 0, answer.output
-    assert "38 runs of the shares are missing" in answer.stdout
+    found = json.loads(call("needs", "results/trial.sqlite", "--json").stdout)
+    missing = found["laws"][0]["runs_missing"]
+    assert missing == 48 - found["runs"]["stored"] > 0
+    assert f"{missing} runs of the shares are missing" in " ".join(answer.stdout.split())
     assert "the study is not finished: 'rigbench run trial.yaml" in " ".join(answer.stderr.split())
-    assert json.loads(call("needs", "results/trial.sqlite", "--json").stdout)["finished"] is False
+    assert found["finished"] is False
     assert run_here(str(asking)).exit_code == 0
     assert "issing" not in call("needs", "results/trial.sqlite").stdout

@@ -69,6 +69,7 @@ def test_its_first_levels_are_runs_of_the_matrix(load: Load, more: dict[str, Any
     assert not {entry.key for entry in own} & set(keys)
     assert all(entry.run.sources == ("link_mass_percent", "coulomb_percent") for entry in own)
     assert {entry.condition for entry in own} == {"all at 2"}
+    assert {entry.run.sources for entry in entries if entry.level == 0.0} == {()}
 
 
 MOTIONS = {

@@ -78,7 +78,8 @@ def test_options_of_every_registered_law_are_there() -> None:
 def test_vary_mirrors_the_file() -> None:
     """The same keys, but for those that all sheets share; lists of values wherever the file has a value."""
     varied = EXPERIMENT["properties"]["vary"]
-    shared = {"rigbench", "title", "seed", "conditions", "draws", "vary", "tolerance", "required_share", "needs"}
+    shared = {"rigbench", "title", "seed", "conditions", "draws", "vary", "tolerance", "required_share"}
+    shared |= {"stop_early", "find_level", "worst_case", "tune", "needs"}
     assert set(varied["properties"]) == set(ExperimentKeys.model_fields) - shared
     rates = EXPERIMENT["$defs"]["VaryRatesKeys"]["properties"]["control_hz"]["anyOf"]
     assert [branch["type"] for branch in rates] == ["array"]

@@ -38,7 +38,10 @@ def test_without_the_key_nothing_is_asked(load: Load) -> None:
         ("", "joint pd", ("swing",))
     ]
     assert (design.level, design.score, design.points, design.draws) == (1.0, "tool_peak_mm", 128, 73)
-    assert study_of(load(needs={"law": "joint pd"}, tolerance={"path_peak_mm": 3})).design.score == "path_peak_mm"
+    assert (
+        study_of(load(needs={"law": "joint pd"}, tolerance={"path_peak_mm": 3})).design.score
+        == "path_peak_mm"
+    )
 
 
 def test_sources_are_groups_with_what_is_declared_of_them(load: Load) -> None:
@@ -53,7 +56,14 @@ def test_sources_are_groups_with_what_is_declared_of_them(load: Load) -> None:
     assert groups["link mass"].parameters == ("link_mass_percent.l1", "link_mass_percent.l2")
     design = study_of(load(needs={"law": "joint pd", "per_link": True}, mismatch=MISMATCH)).design
     parts = {group.name: group for group in design.subjects[0].groups}
-    assert list(parts) == ["link mass of l1", "link mass of l2", "payload", "coulomb", "viscous of j2", "delay"]
+    assert list(parts) == [
+        "link mass of l1",
+        "link mass of l2",
+        "payload",
+        "coulomb",
+        "viscous of j2",
+        "delay",
+    ]
     assert parts["link mass of l2"].spread["values"] == {"l2": 20}
     assert parts["viscous of j2"].parameters == ("viscous_percent.j2",)
     assert NeedsDesign.of(study_of(load(needs={"law": "joint pd"})).declared()).declared()
@@ -72,7 +82,10 @@ def test_runs_bound_the_price(load: Load, faults: Faults) -> None:
 
 def test_a_law_that_varies_is_asked_in_all_its_variants_and_sheets(load: Load) -> None:
     """By the law's own name all, by a variant's that alone; in each sheet."""
-    vary: dict[str, Any] = {"laws": {"joint pd": {"natural_hz": [4, 5]}}, "rates": {"control_hz": [500, 1000]}}
+    vary: dict[str, Any] = {
+        "laws": {"joint pd": {"natural_hz": [4, 5]}},
+        "rates": {"control_hz": [500, 1000]},
+    }
     for law, rows in (
         ("joint pd", ["joint pd (natural_hz 4)", "joint pd (natural_hz 5)"]),
         ("joint pd (natural_hz 4)", ["joint pd (natural_hz 4)"]),
@@ -136,7 +149,11 @@ def test_the_searches_share_the_matrix_s_machines(load: Load) -> None:
         return None
 
     study.rounds(known)
-    for condition, column in (("link mass alone", "link mass"), ("coulomb alone", "coulomb"), ("together", "all at 1")):
+    for condition, column in (
+        ("link mass alone", "link mass"),
+        ("coulomb alone", "coulomb"),
+        ("together", "all at 1"),
+    ):
         own = asked[condition, 1.0]
         assert own
         assert set(own) <= keys[column]

@@ -39,7 +39,13 @@ LEVELS = (
 
 def group(number: int, spread: dict[str, object] | None = None) -> Group:
     names = ("link mass", "payload", "torque constant of the_left_gripper_finger_joint", "x" * 60)
-    return Group(f"{names[number % 4]} {number}", "link_mass_percent", "", ("a",), spread or (PERCENT, LOAD, SHIFT)[number % 3])
+    return Group(
+        f"{names[number % 4]} {number}",
+        "link_mass_percent",
+        "",
+        ("a",),
+        spread or (PERCENT, LOAD, SHIFT)[number % 3],
+    )
 
 
 def law_needs(sources: int, law: str = "computed torque", **changes: object) -> LawNeeds:
@@ -84,7 +90,9 @@ def assert_clear(figure: Figure) -> None:
 def test_nothing_overlaps(sources: int, level: float) -> None:
     """With many sources and long names, of several laws, finished or not."""
     one = law_needs(sources)
-    other = law_needs(sources, "a law whose name is as long as any that a user may think of " * 2, missing=7, dropped=3)
+    other = law_needs(
+        sources, "a law whose name is as long as any that a user may think of " * 2, missing=7, dropped=3
+    )
     assert_clear(needs_figure([one, other], design_of(one, other, level=level), "A title " * 12, DAY))
 
 
@@ -131,7 +139,9 @@ def test_the_advice_names_what_leads_and_what_is_easy() -> None:
     """What to identify first, how well, and what need not be known better."""
     needs = law_needs(2)
     said = advice(needs, design_of(needs))
-    assert said.startswith("Identify first, by total share of the variance of the tool peak: link mass 0 100 % (100-100)")
+    assert said.startswith(
+        "Identify first, by total share of the variance of the tool peak: link mass 0 100 % (100-100)"
+    )
     assert "up to 0.63 times the declared spread (3.12 %" in said
     assert "to miss from 1.25" in said
     assert said.endswith(f"at {LADDER[-1]:g} times the declared spread, still no trouble: payload 1.")
@@ -144,7 +154,9 @@ def test_words_for_what_has_no_value() -> None:
     need = SourceNeed(group(0), nothing, nothing, Alone(FoundLevel(LEVELS[3], 0, 0, 0), 0, False))
     needs = LawNeeds("", "law", (need,), need.alone, 0, 128, 0, 0, 384, "score")
     assert kept_words(need) == "-"
-    assert advice(needs, design_of(needs)) == "Nothing can be shared out, for no row of the design counts yet."
+    assert (
+        advice(needs, design_of(needs)) == "Nothing can be shared out, for no row of the design counts yet."
+    )
     said = " ".join(notes(needs, design_of(needs)))
     assert "384 runs of the shares are missing; 0 of 128 rows count" in said
     assert "2 of the 2 searches" in said

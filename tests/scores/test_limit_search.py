@@ -14,7 +14,9 @@ RUNGS = len(LADDER)
 SHARE = 0.95
 
 
-def search(limits: NDArray[np.int64], lowest: int, troubled: frozenset[int] = frozenset()) -> dict[int, dict[int, bool | None]]:
+def search(
+    limits: NDArray[np.int64], lowest: int, troubled: frozenset[int] = frozenset()
+) -> dict[int, dict[int, bool | None]]:
     """All that is run, where draw k keeps at the rungs below ``limits[k]``."""
     known: dict[int, dict[int, bool | None]] = {}
     for _ in range(1000):

@@ -206,3 +206,29 @@ def test_a_hundred_thousand_rows_take_seconds() -> None:
     results_of(rows, laws=laws, draws=4200)
     assert len(rows) > 100_000
     assert time.perf_counter() - begin < 5.0
+
+
+def test_laws_and_nominal_are_compared_by_hand() -> None:
+    """At level 1 computed torque is 2 u - 1 mm above pd, u the draw's factor; its ratio to nominal is 1 + 2.4 u."""
+    results = results_of(rows_of(linear, [""], ["pd", "computed"], 80))
+    found = {(one.condition, one.laws): one.difference for one in results.comparisons}
+    assert {condition for condition, _ in found} == {"nominal", "level 0.5", "level 1"}
+    gap = found["level 1", ("pd", "computed")]
+    assert gap.value == pytest.approx(1.0 - 2.0 * 21 / 40)
+    assert gap.tie
+    assert found["nominal", ("pd", "computed")].value == pytest.approx(1.0)
+    assert not found["nominal", ("pd", "computed")].tie
+    ratio = results.cell("", "computed", "level 1").ratios["tool_peak_mm"]
+    assert ratio.value == pytest.approx(1.0 + 2.4 * 20 / 40)
+    assert results.cell("", "computed", "nominal").ratios["tool_peak_mm"].value == 1.0
+
+
+def test_the_draws_are_kept_of_the_scores_that_are_asked_for() -> None:
+    """The main score and those named besides, in that order, draw by draw; other scores are let go."""
+    rows = rows_of(linear, [""], ["pd", "computed"], 80)
+    assert results_of(rows).compared == ("tool_peak_mm",)
+    results = results_of(rows, also=["joint_rms_deg.j1", "tool_peak_mm"])
+    assert results.compared == ("tool_peak_mm", "joint_rms_deg.j1")
+    here = results.counted["", "pd", "level 1"]
+    assert here.worst[:, 0] == pytest.approx([linear("pd", 1.0, draw) for draw in range(80)])
+    assert here.worst[:, 1] == pytest.approx(here.worst[:, 0] / 10)

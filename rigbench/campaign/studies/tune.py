@@ -43,15 +43,15 @@ class Aim:
     """What makes gains good: the least ``score`` (in the worst motion) within limits on the nominal machine.
 
     ``most`` limits other scores. With a ``delay_margin_ms`` above 0 each run is repeated with that much more
-    delay, and must finish with ``delay_factor`` times its score at most, or with what ``enough`` has for
-    the motion: the tolerance's limit on the score.
+    delay, and must finish with ``delay_factor`` times its score at most, or keep the ``tolerance``, which is
+    by motion: an error near 0 may well become a multiple of itself.
     """
 
     score: str
     most: Mapping[str, float] = field(default_factory=dict)
     delay_margin_ms: float = 0.0
     delay_factor: float = 2.0
-    enough: Mapping[str, float] = field(default_factory=dict)
+    tolerance: Mapping[str, Mapping[str, float]] = field(default_factory=dict)
 
     @property
     def runs_a_motion(self) -> int:
@@ -71,11 +71,17 @@ class Aim:
             if row.outcome != "finished":
                 missed = math.inf
             elif later:
-                allowed = self.delay_factor * scores[motion, False]
-                missed += _beyond(scores[motion, True], max(allowed, self.enough.get(motion, 0.0)))
+                missed += self._missed_later(row, scores[motion, False])
             else:
                 missed += sum(_beyond(row.scores.get(name, 0.0), most) for name, most in self.most.items())
         return missed, max(value for (_, later), value in scores.items() if not later)
+
+    def _missed_later(self, row: Row, score: float) -> float:
+        """Return by how much a finished run with more delay, and ``score`` without, misses what it must keep."""
+        limits = self.tolerance.get(row.motion)
+        if limits and all(row.scores.get(name, 0.0) <= most for name, most in limits.items()):
+            return 0.0
+        return _beyond(self._score(row), self.delay_factor * score)
 
     def _score(self, row: Row) -> float:
         return row.scores.get(self.score, 0.0) if row.outcome == "finished" else math.inf
@@ -93,7 +99,7 @@ def _is_later(row: Row) -> bool:
 
 @dataclass(frozen=True)
 class Subject:
-    """A law in a sheet: its nominal run by motion, the ``declared`` gains, and how the file has it (``given``)."""
+    """A law in a sheet: its nominal run by motion, its ``declared`` gains, what is ``given`` in the file."""
 
     sheet: str
     law: str
@@ -195,7 +201,7 @@ def least_runs(aim: Aim, motions: int) -> int:
 class GainsFound:
     """What was found for a law in a sheet with so many ``runs``: the best gains and their score.
 
-    ``within``: they keep the limits; if not, the declared ones stay, and these are those nearest to the
+    ``at_ends``: those at an end of the range in which they were looked for. ``within``: they keep the limits; if not, the declared ones stay, and these are those nearest to the
     limits. ``score_declared`` is None, and ``within_declared`` false, where they were not run to the end.
     ``given`` is what the file has of the law.
     """
@@ -203,6 +209,7 @@ class GainsFound:
     sheet: str
     law: str
     gains: Mapping[str, float]
+    at_ends: tuple[str, ...]
     score: float
     within: bool
     declared: Mapping[str, float]
@@ -215,7 +222,8 @@ class GainsFound:
 def gains_found(study: Studied) -> list[GainsFound]:
     """Return what a stored study of this kind has found so far, by law and sheet as declared."""
     aim = Aim(**study.declared["aim"])
-    names = [gain["name"] for gain in study.declared["gains"]]
+    ranges = {gain["name"]: (gain["low"], gain["high"]) for gain in study.declared["gains"]}
+    names = list(ranges)
     trials: dict[tuple[str, str], dict[Point, list[Row]]] = {}
     for record in study.records:
         row = record.row
@@ -236,6 +244,7 @@ def gains_found(study: Studied) -> list[GainsFound]:
                 law["sheet"],
                 law["law"],
                 dict(zip(names, best, strict=True)),
+                tuple(name for name, value in zip(names, best, strict=True) if value in ranges[name]),
                 merits[best][1],
                 merits[best][0] == 0.0,
                 dict(zip(names, declared, strict=True)),

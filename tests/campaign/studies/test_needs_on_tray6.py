@@ -100,12 +100,19 @@ def test_the_same_three_sources_as_by_brute_force(tmp_path: Path) -> None:
     assert isinstance(true, dict)
     print(f"{runs} runs of the study, of at most {study.most_runs}")
     for need in needs.sources:
-        print(need.group.name, *(f"{x:.3f}" for x in need.total), f"brute {true[need.group.name]:.3f}", need.alone.found.tolerated)
+        print(
+            need.group.name,
+            *(f"{x:.3f}" for x in need.total),
+            f"brute {true[need.group.name]:.3f}",
+            need.alone.found.tolerated,
+        )
     by_brute_force = sorted(true, key=lambda name: -true[name])
     assert [need.group.name for need in needs.sources[:3]] == by_brute_force[:3]
     for need in needs.sources[:3]:
         assert need.total[1] <= true[need.group.name] <= need.total[2]
         tolerated = need.alone.found.tolerated
-        kept, missed = (share_alone(study, need.group.source, level, 730) for level in (tolerated.low, tolerated.high))
+        kept, missed = (
+            share_alone(study, need.group.source, level, 730) for level in (tolerated.low, tolerated.high)
+        )
         print(need.group.name, f"keeps {kept:.3f} at {tolerated.low}, {missed:.3f} at {tolerated.high}")
         assert missed - 0.024 < 0.95 < kept + 0.024

@@ -1,0 +1,129 @@
+"""``rigbench gains``: what the search for gains found, as YAML to paste back."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Sequence
+from itertools import groupby
+from typing import Any
+
+import yaml
+
+from rigbench.campaign.reading import Reader
+from rigbench.campaign.store import Store
+from rigbench.campaign.studies.tune import NAME, Aim, GainsFound, gains_found
+from rigbench.cli.output import print_json, say, show
+from rigbench.errors import InputFaults, counted
+from rigbench.experiment import Experiment
+from rigbench.report import cautions
+from rigbench.scores.names import score_words
+
+__all__ = ["gains_notes", "print_gains", "with_stored_gains"]
+
+MOST = 6
+"""Laws whose gains are named beneath the matrix; of the others the number is given."""
+
+HOW = "'tune: {}' in the experiment file, then 'rigbench run' again"
+
+
+def with_stored_gains(experiment: Experiment, store: Reader) -> Experiment:
+    """Return the experiment with the gains that were found; itself where that is not, or not yet, so."""
+    gains = None if experiment.tune is None else experiment.tune.found(store.row_of)
+    return experiment if gains is None else experiment.tuned(gains)
+
+
+def gains_notes(store: Reader) -> Iterator[str]:
+    """Say beneath a matrix which gains its laws have from the search, and which have none."""
+    study = store.study(NAME)
+    found = [] if study is None else gains_found(study)
+    if study is None or not study.finished or not found:
+        return
+    told = [f"{_place(one)} {_gains(one)}" for one in found if one.within]
+    if len(told) > MOST:
+        told = [*told[:MOST], f"{len(told) - MOST} more"]
+    if told:
+        yield f"Gains found by tune on the nominal machine: {'; '.join(told)}."
+    kept = [f"'{_place(one)}'" for one in found if not one.within]
+    if kept:
+        yield f"Tune found no gains within its limits for {', '.join(kept)}: the declared ones stay."
+
+
+def print_gains(path: str, as_json: bool) -> None:
+    """Print the gains found, law by law and sheet by sheet; those of all laws that were looked at."""
+    with Store.open_for_reading(path) as store, store.one_moment():
+        study, resume = store.study(NAME), store.labels.resume
+    if study is None:
+        raise InputFaults.one(path, "", "its experiment looks for no gains, or has not begun to", HOW)
+    found, aim = gains_found(study), Aim(**study.declared["aim"])
+    if as_json:
+        aimed = {"score": aim.score, "most": aim.most, "delay_margin_ms": aim.delay_margin_ms}
+        about = {"store": path, "finished": study.finished} | aimed | {"delay_factor": aim.delay_factor}
+        print_json(about | {"laws": [_document(one) for one in found]})
+    else:
+        show("\n".join(_lines(found, aim)))
+    if not study.finished:
+        say(f"the search is not finished: '{resume}' goes on with it")
+    say(f"{cautions.CAUTION.removesuffix('.')}; see the cautions in the README.")
+
+
+def _lines(found: Sequence[GainsFound], aim: Aim) -> Iterator[str]:
+    """Yield YAML: one document a sheet, with what was found in comments."""
+    words, unit = score_words(aim.score)
+    limits = [
+        f"{score_words(name)[0]} at most {most:g} {score_words(name)[1]}".rstrip()
+        for name, most in aim.most.items()
+    ]
+    if aim.delay_margin_ms:
+        limits.append(f"{aim.delay_margin_ms:g} ms more delay borne")
+    yield f"# {'; '.join([f'Gains found by tune: least {words} on the nominal machine', *limits])}."
+    for sheet, own in groupby(found, key=lambda one: one.sheet):
+        laws = list(own)
+        if sheet:
+            yield f"---  # sheet: {sheet}"
+        yield "laws:"
+        for one in laws:
+            before = "not run" if one.score_declared is None else f"{one.score_declared:.3g} {unit}".rstrip()
+            outside = "" if one.within_declared else ", outside the limits"
+            said = f"declared: {_values(one.declared)}, {before}{outside}; {counted(one.runs, 'run')}"
+            if one.within:
+                found_score = f"{words} {one.score:.3g} {unit}".rstrip()
+                ends = [f"{name} at the end of its range" for name in one.at_ends]
+                yield f"  # {'; '.join([found_score, *ends, said])}"
+            else:
+                yield f"  # none found within the limits, so the declared ones stay; {said}"
+            gains = one.gains if one.within else {}
+            yield f"  {_yaml({one.law: dict(one.given) | dict(gains)})}"
+
+
+def _yaml(mapping: dict[str, Any]) -> str:
+    text: str = yaml.safe_dump(
+        mapping, default_flow_style=None, sort_keys=False, allow_unicode=True, width=1_000_000
+    )
+    return text.rstrip("\n")
+
+
+def _document(one: GainsFound) -> dict[str, Any]:
+    return {
+        "sheet": one.sheet,
+        "law": one.law,
+        "within_limits": one.within,
+        "gains": dict(one.gains) if one.within else None,
+        "score": one.score if one.within else None,
+        "declared": {
+            "gains": dict(one.declared),
+            "score": one.score_declared,
+            "within_limits": one.within_declared,
+        },
+        "runs": one.runs,
+    }
+
+
+def _place(one: GainsFound) -> str:
+    return f"{one.law} ({one.sheet})" if one.sheet else one.law
+
+
+def _gains(one: GainsFound) -> str:
+    return _values(one.gains)
+
+
+def _values(gains: Any) -> str:
+    return ", ".join(f"{name} {value:g}" for name, value in gains.items())

@@ -1,0 +1,131 @@
+"""``rigbench worst``: the machines that a search found to break the laws."""
+
+from __future__ import annotations
+
+import datetime
+import math
+from collections.abc import Iterator
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+from rigbench.campaign.reading import Reader
+from rigbench.campaign.store import Store
+from rigbench.campaign.studied import Studied
+from rigbench.campaign.studies.worst_case import NAME, WorstFound, worst_found
+from rigbench.cli.output import print_json, say, show
+from rigbench.cli.stored import CAUTION, check_output
+from rigbench.errors import InputFaults
+from rigbench.scores.limit_share import limit_share
+from rigbench.scores.results import Tolerance, level_name
+from rigbench.yamlfile import load
+
+if TYPE_CHECKING:
+    from rigbench.report.worst_words import LawWorst
+
+__all__ = ["tell_worst"]
+
+HOW = "'worst_case: {}' in the experiment file, then 'rigbench run' again"
+
+
+def tell_worst(path: str, output: str | None, as_json: bool) -> None:
+    """Print what the search found of each law; draw it where an ``output`` is named."""
+    from rigbench.report.worst_words import worst_text
+
+    if output is not None:
+        check_output(Path(output), path)
+    with Store.open_for_reading(path) as store, store.one_moment():
+        study, labels = _studied(store, path), store.labels
+        laws = list(_laws(store, study, labels.tolerance or Tolerance({})))
+    if output is not None:
+        from rigbench.report.worst_picture import worst_picture
+
+        worst_picture(laws, labels.title, Path(output), datetime.date.today())
+    if as_json:
+        about = {"store": path, "picture": output, "finished": study.finished}
+        print_json(about | {"laws": [_law(law) for law in laws]})
+    else:
+        show(worst_text(laws, path))
+    if not study.finished:
+        say(f"the search is not finished: '{labels.resume}' goes on with it")
+    if output is not None and not as_json:
+        say(f"picture: {output}")
+    say(CAUTION)
+
+
+def _studied(store: Reader, path: str) -> Studied:
+    """Return the study; InputFaults, with what to do, where the store has none."""
+    study = store.study(NAME)
+    if study is not None:
+        return study
+    name, text = store.experiment
+    if NAME in load(name, text).data:
+        problem = "its search for worst cases has not begun: the matrix comes first"
+        raise InputFaults.one(path, "", problem, f"'{store.labels.resume}' done to its end")
+    raise InputFaults.one(path, "", "its experiment does not search for worst cases", HOW)
+
+
+def _laws(store: Reader, study: Studied, tolerance: Tolerance) -> Iterator[LawWorst]:
+    from rigbench.campaign.studies.worst_direction import departures
+    from rigbench.report.worst_words import LawWorst, by_law
+
+    for levels, told in by_law(worst_found(study, tolerance)):
+        drawn = {
+            one.level: shares
+            for one in levels
+            if one.searched and (shares := _drawn(store, one, tolerance)) is not None
+        }
+        found = departures(store, study, told, tolerance)
+        yield LawWorst(told.sheet, told.law, levels, told, found, drawn)
+
+
+def _drawn(store: Reader, found: WorstFound, tolerance: Tolerance) -> tuple[float, int] | None:
+    """Return the largest share of a limit among the draws of the matrix at a level, and of how many."""
+    shares = {
+        (record.row.draw, record.row.motion): used.share
+        for record in store.records_of(found.law, level_name(found.level))
+        if record.row.sheet == found.sheet
+        and (used := limit_share(record.row, tolerance.limits_for(record.row.motion))) is not None
+    }
+    return (max(shares.values()), len({draw for draw, _ in shares})) if shares else None
+
+
+def _law(law: LawWorst) -> dict[str, Any]:
+    smallest = law.smallest
+    below = [one.level for one in law.levels if smallest is None or one.level < smallest.level]
+    return {
+        "sheet": law.sheet,
+        "law": law.law,
+        "smallest_level_found_to_miss": None if smallest is None else smallest.level,
+        "largest_level_below": max(below, default=None),
+        "levels": [_level(one, law) for one in law.levels],
+        "direction": {
+            "level": law.told.level,
+            "run": None if law.told.record is None else law.told.record.key,
+            "parameters": [
+                {"name": one.parameter, "u": one.u, "share_turned": _finite(one.turned)}
+                for one in law.departures
+            ],
+        },
+    }
+
+
+def _level(one: WorstFound, law: LawWorst) -> dict[str, Any]:
+    row = None if one.record is None else one.record.row
+    return {
+        "level": one.level,
+        "searched": one.searched,
+        "misses": one.misses,
+        "runs": one.runs,
+        "without_verdict": one.dropped,
+        "share_of_limit": None if one.used is None else _finite(one.used.share),
+        "score": None if one.used is None else one.used.score or None,
+        "value": None if one.used is None else _finite(one.used.value),
+        "motion": None if row is None else row.motion,
+        "outcome": None if row is None else row.outcome,
+        "run": None if one.record is None else one.record.key,
+        "share_of_draws": _finite(law.drawn[one.level][0]) if one.level in law.drawn else None,
+    }
+
+
+def _finite(value: float | None) -> float | None:
+    return None if value is None or math.isinf(value) else value

@@ -1,0 +1,130 @@
+"""The worst cases found, as a picture: a block for each law, with its levels and the direction."""
+
+from __future__ import annotations
+
+import datetime
+import math
+from collections.abc import Sequence
+from pathlib import Path
+
+from matplotlib.figure import Figure
+
+from rigbench.report.cautions import CAUTION
+from rigbench.report.paper import INK, LINE, QUIET, Paper, steady_settings
+from rigbench.report.picture import save_picture
+from rigbench.report.words import level
+from rigbench.report.worst_words import READING, LawWorst, share_words, smallest_words
+
+__all__ = ["worst_figure", "worst_picture"]
+
+MARGIN = 24.0
+SIZE, SMALL, HEAD, TITLE = 8.5, 7.5, 11.0, 16.0
+AXIS, PLOT, HIGH = 40.0, 260.0, 150.0  # room of the left axis; the plot's width and height
+APART = 34.0
+NAME, BAR, TURNED = 150.0, 100.0, 110.0
+WIDTH = AXIS + PLOT + APART + NAME + BAR + TURNED
+ROW = 17.0
+SHOWN = 8
+"""Parameters of a direction that are drawn."""
+
+MOST = 3.0
+"""Share of a limit up to which the axis goes at most; what lies beyond stands at its upper end."""
+
+RAIL, STRIPE, TONE, PALE = "#c9d3de", "#f5f7fa", "#1d4a75", "#9bbfe2"
+
+
+def worst_picture(laws: Sequence[LawWorst], title: str, path: Path, date: datetime.date) -> None:
+    """Draw what was found into a file whose suffix says the format: .png, .svg or .pdf.
+
+    The same bytes each time. InputFaults for another suffix, StoreError if the file can't be written.
+    """
+    save_picture(path, title, lambda: worst_figure(laws, title, date))
+
+
+def worst_figure(laws: Sequence[LawWorst], title: str, date: datetime.date) -> Figure:
+    """Return a page just as high as what is on it."""
+    with steady_settings():
+        paper = Paper()
+        y = paper.lines(MARGIN, MARGIN, paper.wrap(title, WIDTH, TITLE, bold=True), TITLE, bold=True)
+        said = f"The worst cases found, by level of the mismatch. {date.isoformat()}."
+        y = paper.lines(MARGIN, y + 4, paper.wrap(said, WIDTH, SIZE), SIZE)
+        for number, law in enumerate(laws):
+            y = _block(paper, law, y + 16, f"law-{number}")
+        y += 12
+        for text in (f"Filled: searched; hollow: tried along the directions found. {READING}", CAUTION):
+            y = paper.lines(MARGIN, y + 4, paper.wrap(text, WIDTH, SMALL), SMALL, ink=QUIET)
+        return paper.figure(WIDTH + 2 * MARGIN, y + MARGIN)
+
+
+def _block(paper: Paper, law: LawWorst, top: float, name: str) -> float:
+    """Draw a law's block; return where it ends."""
+    heading = f"{law.law} ({law.sheet})" if law.sheet else law.law
+    y = paper.lines(MARGIN, top, paper.wrap(heading, WIDTH, HEAD, bold=True), HEAD, bold=True, name=name)
+    words = smallest_words(law)
+    y = paper.lines(MARGIN, y + 1, paper.wrap(f"{words[0].upper()}{words[1:]}.", WIDTH, SIZE), SIZE)
+    below = _levels(paper, law, y + 18, name)
+    beside = _direction(paper, law, MARGIN + AXIS + PLOT + APART, y + 4)
+    return max(below, beside)
+
+
+def _levels(paper: Paper, law: LawWorst, top: float, name: str) -> float:
+    """Draw the share of a limit that the worst machine uses up against the level."""
+    left, base = MARGIN + AXIS, top + HIGH
+    points = [(one.level, one.used.share, one.searched) for one in law.levels if one.used is not None]
+    widest = max([level_ for level_, _, _ in points], default=1.0) * 1.08
+    finite = [share for _, share, _ in points if math.isfinite(share)]
+    highest = min(max([1.25, *(1.1 * share for share in finite)]), MOST)
+
+    def place(at: float, share: float) -> tuple[float, float]:
+        return left + PLOT * at / widest, base - HIGH * min(share / highest, 1.0)
+
+    paper.text(MARGIN, top - 15, "largest share of a limit [%]", SMALL, ink=QUIET)
+    paper.box(left, top, PLOT, HIGH, fill=STRIPE, order=0.5)
+    for share in [tick / 4 for tick in range(int(4 * highest) + 1) if highest <= 1.5 or tick % 2 == 0]:
+        y = place(0.0, share)[1]
+        if share != 1.0:
+            paper.stroke((left, y), (left + PLOT, y), color=RAIL, line=0.6)
+        paper.text(left - 5, y - LINE * SIZE / 2, f"{100 * share:g}", SIZE, at="right")
+    y = place(0.0, 1.0)[1]
+    paper.stroke((left, y), (left + PLOT, y), color=INK, line=1.2, dashes=(5, 2), name=f"{name}-tolerance")
+    paper.text(left + 4, y - LINE * SMALL - 1, "tolerance", SMALL)
+    ends = -math.inf
+    for at in sorted({one.level for one in law.levels if one.searched} | {0.0}):
+        x, said = place(at, 0.0)[0], level(at)
+        if x - paper.width(said, SIZE) / 2 > ends:
+            paper.text(x, base + 3, said, SIZE, at="center")
+            ends = x + paper.width(said, SIZE) / 2 + 4
+    paper.text(left + PLOT / 2, base + 3 + LINE * SIZE, "level", SMALL, at="center", ink=QUIET)
+    for number, (at, share, searched) in enumerate(points):
+        x, y = place(at, share)
+        shape = "^" if share > highest else "o"
+        paper.marker(
+            x, y, 6.5, shape, fill=TONE if searched else "white", edge=TONE, name=f"{name}-level-{number}"
+        )
+    return base + 3 + LINE * (SIZE + SMALL)
+
+
+def _direction(paper: Paper, law: LawWorst, left: float, top: float) -> float:
+    """Draw in what the worst machine departs most, from -1 to 1."""
+    if not law.departures:
+        return top
+    said = f"worst found at level {level(law.told.level)}: u, and what is used up with it alone turned round"
+    y = paper.lines(left, top, paper.wrap(said, NAME + BAR + TURNED, SMALL), SMALL, ink=QUIET) + 4
+    middle = left + NAME + BAR / 2
+    shown = law.departures[:SHOWN]
+    for number, one in enumerate(shown):
+        at = y + number * ROW
+        parts = paper.wrap(one.parameter, NAME - 6, SMALL)
+        paper.lines(left, at + (ROW - LINE * SMALL * min(len(parts), 1)) / 2, parts[:1], SMALL)
+        start, end = sorted((middle, middle + one.u * BAR / 2))
+        paper.box(start, at + 3, max(end - start, 0.5), ROW - 6, fill=PALE)
+        turned = "not run" if one.turned is None else share_words(one.turned)
+        paper.text(left + NAME + BAR + 8, at + (ROW - LINE * SMALL) / 2, turned, SMALL)
+    bottom = y + len(shown) * ROW
+    for x, tick in ((middle - BAR / 2, "-1"), (middle, "0"), (middle + BAR / 2, "1")):
+        paper.stroke((x, y), (x, bottom), color=RAIL, line=0.8)
+        paper.text(x, bottom + 1, tick, SMALL, at="center", ink=QUIET)
+    more = len(law.departures) - len(shown)
+    if more:
+        paper.text(left, bottom + 1, f"and {more} more", SMALL, ink=QUIET)
+    return bottom + LINE * SMALL + 2

@@ -1,0 +1,137 @@
+"""The worst cases found, in words: what was found, never what is the worst there is."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import dataclass
+from itertools import groupby
+
+from rigbench.campaign.studies.worst_case import WorstFound
+from rigbench.campaign.studies.worst_direction import Departure
+from rigbench.errors import counted
+from rigbench.report.words import level, quantity
+from rigbench.scores.limit_share import LimitShare
+from rigbench.scores.names import score_words
+
+__all__ = ["KEY_DIGITS", "READING", "LawWorst", "by_law", "share_words", "smallest_words", "worst_text"]
+
+KEY_DIGITS = 12
+
+SHOWN = 6
+"""Parameters that are told of a direction."""
+
+READING = (
+    "A search finds machines that were run: where it finds one that misses, the law misses there; where it "
+    "finds none, there may still be one. u is a parameter's place in its spread, from -1 to 1."
+)
+
+
+@dataclass(frozen=True)
+class LawWorst:
+    """What was found of a law in a sheet, levels rising, and the direction of the worst machine to be told.
+
+    ``told`` is of the smallest level searched at which one misses, or else of the largest; ``drawn`` the
+    largest share of a limit among so many draws of the matrix, by level where it has such a condition.
+    """
+
+    sheet: str
+    law: str
+    levels: tuple[WorstFound, ...]
+    told: WorstFound
+    departures: tuple[Departure, ...]
+    drawn: Mapping[float, tuple[float, int]]
+
+    @property
+    def smallest(self) -> WorstFound | None:
+        """The smallest level at which a machine was found that misses."""
+        return next((found for found in self.levels if found.misses), None)
+
+
+def by_law(found: Sequence[WorstFound]) -> Iterator[tuple[tuple[WorstFound, ...], WorstFound]]:
+    """Yield the levels of each law in a sheet, and the one whose direction is to be told."""
+    for _, own in groupby(found, key=lambda one: (one.sheet, one.law)):
+        levels = tuple(own)
+        searched = [one for one in levels if one.searched]
+        yield levels, next((one for one in searched if one.misses), searched[-1])
+
+
+def share_words(share: float) -> str:
+    """Return a share of a limit: '82 % of its limit', 'beyond all limits' where it is infinite."""
+    return "beyond all limits" if math.isinf(share) else f"{_percent(share)} of its limit"
+
+
+def _percent(share: float) -> str:
+    """Return a share in percent with three digits, or as many as tell on which side of the limit it lies."""
+    for digits in range(3, 16):
+        text = f"{100.0 * share:.{digits}g}"
+        if (float(text) > 100.0) == (share > 1.0):
+            break
+    return f"{float(text):g} %" if float(text) < 1e6 else f"{text} %"
+
+
+def _used_words(found: WorstFound, used: LimitShare) -> str:
+    assert found.record is not None
+    row = found.record.row
+    if not used.score:
+        return f"a run that {_outcome(row.outcome)} in '{row.motion}'"
+    words = score_words(used.score)[0]
+    return f"{words} {quantity(used.value, used.score)}, {share_words(used.share)}, in '{row.motion}'"
+
+
+def _outcome(outcome: str) -> str:
+    return {"diverged": "diverged", "hit-stop": "hit a stop"}.get(outcome, f"ended as {outcome}")
+
+
+def worst_text(laws: Sequence[LawWorst], store: str) -> str:
+    """Return everything as text: law by law, its levels, the smallest that fails, the direction, the replay."""
+    parts = ["\n".join(_law_lines(law, store)) for law in laws]
+    return "\n\n".join([*parts, READING])
+
+
+def _law_lines(law: LawWorst, store: str) -> Iterator[str]:
+    yield f"{law.law} ({law.sheet})" if law.sheet else law.law
+    for found in law.levels:
+        if found.searched:
+            yield f"  level {level(found.level)}: {_level_words(found)}{_drawn_words(law, found)}"
+    yield f"  {smallest_words(law)}"
+    if law.told.record is None:
+        return
+    yield f"  the worst machine found at level {level(law.told.level)}: {_departures_words(law.departures)}"
+    yield f"  replay: rigbench trace {store} {law.told.record.key[:KEY_DIGITS]}"
+
+
+def _level_words(found: WorstFound) -> str:
+    without = f" ({found.dropped} without verdict)" if found.dropped else ""
+    runs = f"{counted(found.runs, 'run')}{without}"
+    if found.used is None:
+        return f"nothing is known from {runs}"
+    said = "found to miss:" if found.misses else "none found that misses; the worst:"
+    return f"{said} {_used_words(found, found.used)}; {runs}"
+
+
+def _drawn_words(law: LawWorst, found: WorstFound) -> str:
+    if found.level not in law.drawn:
+        return ""
+    share, draws = law.drawn[found.level]
+    return f"; the worst of {counted(draws, 'draw')}: {share_words(share)}"
+
+
+def smallest_words(law: LawWorst) -> str:
+    """Say which is the smallest level at which a machine was found that misses."""
+    smallest = law.smallest
+    if smallest is None:
+        return f"no machine found that misses, up to level {level(law.levels[-1].level)}"
+    below = [one.level for one in law.levels if one.level < smallest.level]
+    kept = f"; none found at {level(below[-1])}" if below else ""
+    run = "" if smallest.record is None else f" (run {smallest.record.key[:KEY_DIGITS]})"
+    return f"smallest level found to miss: {level(smallest.level)}{run}{kept}"
+
+
+def _departures_words(found: Sequence[Departure]) -> str:
+    told = []
+    for one in found[:SHOWN]:
+        turned = "" if one.turned is None else f" (turned round: {share_words(one.turned)})"
+        told.append(f"{one.parameter} {one.u:+g}{turned}")
+    more = len(found) - len(told)
+    return ", ".join(told) + (f" and {more} more" if more else "")
