@@ -59,7 +59,8 @@ def gate_store(path: str, asked: Asked, as_json: bool) -> None:
     if asked.junit is not None:
         from rigbench.report.junit import write_junit
 
-        check_output(Path(asked.junit), path)
+        for store_file in filter(None, (path, asked.baseline)):
+            check_output(Path(asked.junit), store_file)
         write_junit(Path(asked.junit), checks, results, datetime.datetime.now())
     if as_json:
         told = [check_json(check, results) for check in checks]

@@ -84,7 +84,7 @@ def _outcome(outcome: str) -> str:
 
 
 def worst_text(laws: Sequence[LawWorst], store: str) -> str:
-    """Return everything as text: law by law, its levels, the smallest that fails, the direction, the replay."""
+    """Return everything as text: law by law its levels, the smallest that fails, direction and replay."""
     parts = ["\n".join(_law_lines(law, store)) for law in laws]
     return "\n\n".join([*parts, READING])
 
@@ -97,7 +97,12 @@ def _law_lines(law: LawWorst, store: str) -> Iterator[str]:
     yield f"  {smallest_words(law)}"
     if law.told.record is None:
         return
-    yield f"  the worst machine found at level {level(law.told.level)}: {_departures_words(law.departures)}"
+    yield f"  the worst machine found at level {level(law.told.level)} departs so (u, from -1 to 1):"
+    for one in law.departures[:SHOWN]:
+        turned = "" if one.turned is None else f"; with it alone turned round: {share_words(one.turned)}"
+        yield f"    {one.parameter} {one.u:+g}{turned}"
+    if len(law.departures) > SHOWN:
+        yield f"    and {len(law.departures) - SHOWN} more"
     yield f"  replay: rigbench trace {store} {law.told.record.key[:KEY_DIGITS]}"
 
 
@@ -126,12 +131,3 @@ def smallest_words(law: LawWorst) -> str:
     kept = f"; none found at {level(below[-1])}" if below else ""
     run = "" if smallest.record is None else f" (run {smallest.record.key[:KEY_DIGITS]})"
     return f"smallest level found to miss: {level(smallest.level)}{run}{kept}"
-
-
-def _departures_words(found: Sequence[Departure]) -> str:
-    told = []
-    for one in found[:SHOWN]:
-        turned = "" if one.turned is None else f" (turned round: {share_words(one.turned)})"
-        told.append(f"{one.parameter} {one.u:+g}{turned}")
-    more = len(found) - len(told)
-    return ", ".join(told) + (f" and {more} more" if more else "")

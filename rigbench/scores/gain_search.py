@@ -44,8 +44,9 @@ def find_gains(
     The ``declared`` point is tried first, whether or not it is within. The box is measured in logarithms, and
     points other than the declared one are rounded to three digits. A quasi-random start (Sobol', scrambled
     by ``seed``) is followed by a pattern search (Hooke and Jeeves 1961; polls along a new orthonormal basis
-    each time, as mesh-adaptive search has it: Audet and Dennis 2006, both from memory): the step is halved
-    where none of 2 N polls is better. The same arguments and answers give the same points again. ValueError
+    each time, as mesh-adaptive search has it: Audet and Dennis 2006; both from memory): 2 N polls from the
+    best point, N from that nearest to the limits of those with a better score, and the step is halved where
+    none of them is better. The same arguments and answers give the same points again. ValueError
     below LEAST_TRIALS.
     """
     if trials < LEAST_TRIALS:
@@ -55,11 +56,11 @@ def find_gains(
     tried.at(_filling(len(bounds), round(FILLED * trials), seed))
     rng, step = np.random.default_rng(seed), FIRST_STEP
     while tried.left and step >= LAST_STEP:
-        before = tried.best
+        before = tried.merits[tried.best]
         basis = np.linalg.qr(rng.standard_normal((len(bounds), len(bounds))))[0]
-        here = tried.place(before)
-        tried.at(np.clip(here + step * np.vstack([basis, -basis]), 0.0, 1.0))
-        if tried.best == before:
+        for centre, polls in zip(tried.centres(), (np.vstack([basis, -basis]), basis), strict=False):
+            tried.at(np.clip(tried.place(centre) + step * polls, 0.0, 1.0))
+        if tried.merits[tried.best] >= before:
             step /= 2.0
     return tried.best, tried.merits[tried.best]
 
@@ -89,6 +90,16 @@ class _Tried:
     def best(self) -> Point:
         """The point with the least merit, the first of equals."""
         return min(self.merits, key=self.merits.__getitem__)
+
+    def centres(self) -> list[Point]:
+        """Return where to poll: the best point, and that nearest to the limits with a better score."""
+        missed, score = self.merits[self.best]
+        beyond = [
+            point
+            for point, merit in self.merits.items()
+            if missed == 0.0 < merit[0] < np.inf and merit[1] < score
+        ]
+        return [self.best, *sorted(beyond, key=self.merits.__getitem__)[:1]]
 
     def place(self, point: Point) -> Floats:
         """Return where a point lies in the unit box."""

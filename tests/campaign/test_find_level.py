@@ -245,6 +245,19 @@ def test_every_motion_must_keep(tmp_path: Path, build: Build) -> None:
     assert np.all((limits.low <= true) & (true <= limits.high))
 
 
+def test_rungs_that_stopped_early_are_run_where_a_draw_needs_them(tmp_path: Path, build: Build) -> None:
+    """With columns that are settled before the last draw, each draw has its limit all the same."""
+    plan, work = replace(build(60, rungs_missing=True), stop_early=True), Work(lambda run: 3.0 * error(run))
+    results = results_of(plan, tmp_path / "s.sqlite", work)
+    assert any(cell.settled and cell.draws < 60 for cell in results.cells)
+    for law, slope in SLOPES.items():
+        true, limits = np.array([1.0 / (3.0 * slope * u(d)) for d in range(60)]), limits_of(results, law)
+        assert np.all((limits.low <= true) & (true <= limits.high))
+        assert np.all((limits.high - limits.low <= 0.0625) | (limits.low == 4.0))
+    keys = [run.key() for run in work.done]
+    assert len(set(keys)) == len(keys) <= results.planned + plan.studies[0].most_runs
+
+
 def test_until_it_is_finished_the_ladder_tells_the_level(tmp_path: Path, build: Build) -> None:
     """A search that is at work has brackets of unlike width: what the matrix shows stands until it ends."""
     plan = build(80)

@@ -136,3 +136,7 @@ def test_a_disk_that_refuses_the_xml(gated: Path, call: Callable[..., Result]) -
     Path("file").write_text("")
     assert call("gate", STORE, "--law", "joint pd", "--junit", "file/gate.xml").exit_code == 5
     assert call("gate", STORE, "--law", "joint pd", "--junit", STORE).exit_code == 2
+    Path("old.sqlite").write_bytes(Path(STORE).read_bytes())
+    baseline = ("--baseline", "old.sqlite", "--junit", "old.sqlite")
+    assert call("gate", STORE, "--law", "joint pd", *baseline).exit_code == 2
+    assert Path("old.sqlite").read_bytes() == Path(STORE).read_bytes()

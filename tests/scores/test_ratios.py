@@ -70,3 +70,15 @@ def test_an_exact_run_has_one_ratio() -> None:
     assert found["tool_peak_mm"].value == found["tool_peak_mm"].high == 2.0
     noisy = counted(np.arange(9), np.ones((9, 3)))
     assert not ratios_to_nominal(NAMES, (cell_of(case, False), case, False), (cell_of(noisy), noisy, True))
+
+
+def test_a_score_that_some_runs_lack_counts_where_both_have_it() -> None:
+    """Draws without it in the cell or in a random nominal are left out, not taken for ties."""
+    here = counted(np.arange(40), np.full((40, 3), 3.0))
+    foot = counted(np.arange(40), np.full((40, 3), 2.0))
+    here.worst[:12, 1] = np.nan
+    foot.worst[30:, 1] = np.nan
+    found = ratios_to_nominal(NAMES, (cell_of(here), here, True), (cell_of(foot), foot, True))
+    assert found["settle_ms"].draws == 18
+    assert (found["settle_ms"].value, found["settle_ms"].low) == (1.5, 1.5)
+    assert found["tool_peak_mm"].draws == 40

@@ -77,7 +77,7 @@ class Aim:
         return missed, max(value for (_, later), value in scores.items() if not later)
 
     def _missed_later(self, row: Row, score: float) -> float:
-        """Return by how much a finished run with more delay, and ``score`` without, misses what it must keep."""
+        """Return by how much a finished run with more delay misses; ``score`` is what it came to without."""
         limits = self.tolerance.get(row.motion)
         if limits and all(row.scores.get(name, 0.0) <= most for name, most in limits.items()):
             return 0.0
@@ -201,9 +201,10 @@ def least_runs(aim: Aim, motions: int) -> int:
 class GainsFound:
     """What was found for a law in a sheet with so many ``runs``: the best gains and their score.
 
-    ``at_ends``: those at an end of the range in which they were looked for. ``within``: they keep the limits; if not, the declared ones stay, and these are those nearest to the
-    limits. ``score_declared`` is None, and ``within_declared`` false, where they were not run to the end.
-    ``given`` is what the file has of the law.
+    ``at_ends``: those at an end of the range in which they were looked for. ``within``: they keep the limits;
+    if not, the declared ones stay, and these are those nearest to the limits. ``score_declared`` is None,
+    and ``within_declared`` false, where the declared ones were not run to the end. ``given`` is what the file
+    has of the law.
     """
 
     sheet: str
