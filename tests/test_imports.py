@@ -21,6 +21,7 @@ ROOMS = (
     "campaign",
     "report",
     "experiment",
+    "calls",
     "cli",
     "__main__",
 )

@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
+from dataclasses import fields
 from pathlib import Path
 from types import TracebackType
 from typing import TYPE_CHECKING, Any, Self
@@ -13,13 +14,17 @@ from numpy.typing import NDArray
 from rigbench.campaign.columns import NUMBER, WHOLE, Columns, TableColumn
 from rigbench.campaign.reading import Reader
 from rigbench.errors import Fault, InputFaults, nearest
-from rigbench.scores.results import Results
+from rigbench.scores.results import Measure, Results
 from rigbench.scores.run_table import NO_DRAW
 
 if TYPE_CHECKING:
     import pandas
 
 __all__ = ["OpenedStore", "open_store"]
+
+CELL_TEXT = ("sheet", "law", "condition", "verdict")
+CELL_COUNTS = ("draws", "incomplete", "unfinished", "planned", "passed")
+CELL_NUMBERS = ("level", "pass_share", "pass_low", "pass_high")
 
 EMPTY = {NUMBER: np.dtype(float), WHOLE: np.dtype(np.int64)}
 
@@ -70,14 +75,7 @@ class OpenedStore:
 
         InputFaults if pandas is not installed.
         """
-        try:
-            import pandas
-        except ImportError:
-            problem = "needs the package pandas, which is not installed"
-            raise InputFaults.one(
-                self._reader.path, "frame()", problem, "pip install pandas, or runs()"
-            ) from None
-        frame = pandas.DataFrame(dict(self.runs(*names)))
+        frame = self._framed("frame()", "runs()", lambda: self.runs(*names))
         if "draw" in frame:
             frame["draw"] = frame["draw"].astype("Int64").mask(frame["draw"] == NO_DRAW)
         return frame
@@ -85,6 +83,43 @@ class OpenedStore:
     def results(self) -> Results:
         """Return the cells and standings: all that the results matrix and its JSON show."""
         return self._reader.results()
+
+    def cells(self) -> Mapping[str, NDArray[Any]]:
+        """Return the cells of the results matrix as columns by name, (C,) each, in the matrix's order.
+
+        What a cell is: sheet, law, condition, level, and its counts, shares and verdict as the matrix has
+        them; then each score's median and 95th percentile with their intervals (``tool_peak_mm.median``,
+        ``.median_low``, ``.median_high``, ``.p95`` ...). NaN where there is none, inf where it is infinite.
+        """
+        cells = self.results().cells
+        scores = dict.fromkeys(name for cell in cells for name in cell.measures)
+        columns: dict[str, NDArray[Any]] = {}
+        for name in CELL_TEXT:
+            columns[name] = np.array([getattr(cell, name) for cell in cells], dtype=object)
+        for name in CELL_COUNTS:
+            columns[name] = np.array([getattr(cell, name) for cell in cells], dtype=np.int64)
+        for name in CELL_NUMBERS:
+            columns[name] = np.array([_number(getattr(cell, name)) for cell in cells], dtype=float)
+        for score in scores:
+            for part in (field.name for field in fields(Measure)):
+                found = [getattr(cell.measures.get(score), part, None) for cell in cells]
+                columns[f"{score}.{part}"] = np.array([_number(value) for value in found], dtype=float)
+        return columns
+
+    def cells_frame(self) -> pandas.DataFrame:
+        """Return what :meth:`cells` does as a pandas DataFrame; InputFaults if pandas is not installed."""
+        return self._framed("cells_frame()", "cells()", self.cells)
+
+    def _framed(
+        self, asked: str, instead: str, columns: Callable[[], Mapping[str, NDArray[Any]]]
+    ) -> pandas.DataFrame:
+        try:
+            import pandas
+        except ImportError:
+            problem = "needs the package pandas, which is not installed"
+            expected = f"pip install pandas, or {instead}"
+            raise InputFaults.one(self._reader.path, asked, problem, expected) from None
+        return pandas.DataFrame(dict(columns()))
 
     def close(self) -> None:
         """Close the file."""
@@ -106,3 +141,7 @@ class OpenedStore:
         ]
         if faults:
             raise InputFaults(faults)
+
+
+def _number(value: float | None) -> float:
+    return np.nan if value is None else float(value)

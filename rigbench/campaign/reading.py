@@ -5,7 +5,7 @@ from __future__ import annotations
 import contextlib
 import json
 import sqlite3
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from pathlib import Path
 from types import TracebackType
@@ -13,6 +13,7 @@ from typing import TYPE_CHECKING, Self
 
 from rigbench.campaign.blocks import SIZE, Block, blocks, layouts, stored_scores
 from rigbench.campaign.connection import connect, owner, speaking_plainly
+from rigbench.campaign.counts import IN_PLAY, Counts, counts_of, ends_of
 from rigbench.campaign.kept import Kept, NotKept, restored
 from rigbench.campaign.labels import Labels
 from rigbench.campaign.owner import Owner
@@ -24,7 +25,7 @@ from rigbench.campaign.work import Host
 from rigbench.errors import StoreError
 from rigbench.scores.names import main_score
 from rigbench.scores.results import Results
-from rigbench.scores.row import HOST_OUTCOMES, MACHINE_OUTCOMES, SETTLED_TROUBLES, Row
+from rigbench.scores.row import MACHINE_OUTCOMES, SETTLED_TROUBLES, Row
 
 if TYPE_CHECKING:
     from rigbench.scores.searched import Searched  # not at run time: it brings scipy
@@ -35,27 +36,8 @@ PLANNED = "plan CROSS JOIN runs USING (id) CROSS JOIN keys USING (id) CROSS JOIN
 IN_STUDIES = "studied CROSS JOIN runs USING (id) CROSS JOIN keys USING (id)"
 """Where the runs of the plan and those of the studies are found; either may be asked for the same columns."""
 
-IN_PLAY = (
-    "(SELECT id, draw FROM plan LEFT JOIN"
-    " (SELECT CAST(key AS INTEGER) AS at, value AS after FROM json_each(?)) ON at = place"
-    " WHERE draw IS NULL OR after IS NULL OR draw < after)"
-)
-"""The plan without the draws of columns that stopped before them; its parameter is what _ends returns."""
-
 SETTLED = (*MACHINE_OUTCOMES, *SETTLED_TROUBLES)
 """Outcomes that the same run would have again. The others are tried anew by the next campaign."""
-
-
-@dataclass(frozen=True)
-class Counts:
-    """How far a campaign is, in planned runs.
-
-    ``done`` have the machine's verdict, ``failed`` the host's trouble; the rest has not been run.
-    """
-
-    planned: int
-    done: int
-    failed: int
 
 
 @dataclass(frozen=True)
@@ -190,7 +172,7 @@ class Reader:
 
     def counts(self) -> Counts:
         """Count the planned runs, and of those the ones that are done and those that failed."""
-        return _counts(self.outcomes())
+        return counts_of(self.outcomes())
 
     def outcomes(self) -> dict[str, int]:
         """Count the planned runs by their outcome, '' for those without one or put down to be run anew."""
@@ -204,11 +186,8 @@ class Reader:
             )
 
     def _ends(self) -> str:
-        """Return after how many draws each place was settled that stopped early, as JSON."""
-        ends = {(sheet, condition): after for sheet, condition, after in self.labels.settled}
-        places = self.places().items() if ends else ()
-        found = {number: ends.get((place.sheet, place.condition)) for number, place in places}
-        return json.dumps({number: after for number, after in found.items() if after is not None})
+        labels = self.labels
+        return ends_of(labels, self.places() if labels.settled else {})
 
     def records(self) -> Iterator[Record]:
         """Yield what is stored of the planned runs, in the order of the plan."""
@@ -383,7 +362,7 @@ class Reader:
             names = tuple(dict.fromkeys([main_score(limited), *limited, *also])) if brief else None
             names = self.scores() if names is None else names
             table, outcomes = tabled(self.blocks(names, ("anew",)), self.places(), self.planned(), names)
-            counts = self.counts() if labels.settled else _counts(outcomes)
+            counts = self.counts() if labels.settled else counts_of(outcomes)
             search = self._searched(labels)
         return summarise(
             table,
@@ -413,11 +392,3 @@ class Reader:
         if study is None or not study.finished or labels.tolerance is None:
             return None
         return searched_of(study, labels.tolerance)
-
-
-def _counts(outcomes: Mapping[str, int]) -> Counts:
-    return Counts(
-        sum(outcomes.values()),
-        sum(outcomes.get(outcome, 0) for outcome in MACHINE_OUTCOMES),
-        sum(outcomes.get(outcome, 0) for outcome in HOST_OUTCOMES),
-    )

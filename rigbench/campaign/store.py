@@ -18,6 +18,7 @@ from itertools import chain, count
 from pathlib import Path
 
 from rigbench.campaign.connection import connect, owner, speaking_plainly
+from rigbench.campaign.counts import IN_PLAY
 from rigbench.campaign.kept import Keeper
 from rigbench.campaign.labels import Labels
 from rigbench.campaign.lock import WriterLock
@@ -26,7 +27,7 @@ from rigbench.campaign.owner import Owner
 from rigbench.campaign.packing import packed
 from rigbench.campaign.places import Places
 from rigbench.campaign.plan import Entry, Plan
-from rigbench.campaign.reading import IN_PLAY, Reader
+from rigbench.campaign.reading import Reader
 from rigbench.campaign.studied import forget, record_study
 from rigbench.campaign.study import Study
 from rigbench.campaign.work import Host, Outcome

@@ -105,7 +105,7 @@ def test_the_worst_machine_and_the_smallest_level_that_fails_are_found(
         smallest = min(one.level for one in found if one.misses)
         below = max(one.level for one in found if not one.misses)
         assert 1.0 < smallest <= 1.0 + 1.5 / 2**HALVINGS
-        assert smallest - below == pytest.approx(1.5 / 2**HALVINGS)
+        assert smallest - below == pytest.approx(1.5 / 2**HALVINGS, rel=1e-3)  # levels have six digits
         assert len(stored.records) <= study.most_runs
         assert len({run.key() for run in work.done}) == len(work.done)
 

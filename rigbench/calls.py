@@ -1,0 +1,140 @@
+"""What the commands do, as one call each, for notebooks and scripts. Nothing is printed here.
+
+What is at fault raises an error of :mod:`rigbench.errors`, as the commands tell it.
+"""
+
+from __future__ import annotations
+
+import datetime
+import time
+from collections.abc import Callable, Sequence
+from pathlib import Path
+
+from rigbench.arm.files import ArmFiles
+from rigbench.campaign.audit import Audit
+from rigbench.campaign.audit import audit as audit_files
+from rigbench.campaign.campaign import run_campaign, run_first
+from rigbench.campaign.find import run_by_key
+from rigbench.campaign.part import Part
+from rigbench.campaign.progress import Progress
+from rigbench.campaign.reading import Reader
+from rigbench.campaign.replay import Replay, replay
+from rigbench.campaign.store import Store
+from rigbench.campaign.studied import Studied
+from rigbench.campaign.studies.tune import GainsFound, gains_found
+from rigbench.campaign.studies.worst_case import WorstFound, worst_found
+from rigbench.errors import InputFaults
+from rigbench.experiment import Experiment
+from rigbench.report.matrix import matrix_picture
+from rigbench.report.page.page import gathered, write_page
+from rigbench.report.view import SHARE, View
+from rigbench.scores.gating import Check, judge
+from rigbench.scores.needs import LawNeeds, needs_of
+from rigbench.scores.needs_design import NeedsDesign
+from rigbench.scores.results import Results, Tolerance
+
+__all__ = ["audit", "draw_matrix", "gains", "gate", "needs", "run", "trace", "worst_case", "write_report"]
+
+File = str | Path
+
+
+def run(
+    experiment: Experiment,
+    store: File | None = None,
+    *,
+    jobs: int | None = None,
+    draws: int | None = None,
+    seconds: float | None = None,
+    again: Sequence[str] = (),
+    on_progress: Callable[[Progress], None] | None = None,
+) -> Results:
+    """Do what of an experiment is not stored yet, gains and studies included, and return the results.
+
+    As ``rigbench run``: ``store`` is results/<the file's stem>.sqlite in the current folder by default;
+    ``jobs`` worker processes (None: one a core; 0: none, and no limits on time and memory); the first
+    ``draws`` of every cell alone; ``seconds`` after which no run is begun; laws to be run ``again``. A
+    signal or the end of the time raises Stopped, with all that was done stored.
+    """
+    path = Path("results") / f"{Path(experiment.path).stem}.sqlite" if store is None else Path(store)
+    part = Part(draws, None if seconds is None else time.monotonic() + seconds)
+    named = None if store is None else str(store)
+    plan = experiment.plan(named)
+    with Store.open_for_writing(path, plan) as opened:
+        if experiment.tune is not None:
+            run_first(plan, opened, jobs, on_progress, part=part)
+            found = experiment.tune.found(opened.row_of)
+            plan = plan if found is None else experiment.tuned(found).plan(named)
+        run_campaign(plan, opened, jobs, on_progress, again=again, part=part)
+        return opened.results()
+
+
+def draw_matrix(results: Results, picture: File, show: str = SHARE, score: str = "") -> None:
+    """Draw the results matrix as .png, .svg or .pdf; ``show`` share, median, p95 or ratio, of ``score``."""
+    matrix_picture(results, Path(picture), datetime.date.today(), View(show, score))
+
+
+def write_report(store: File, page: File, traces: int | None = None) -> None:
+    """Write the HTML page of a store; at most ``traces`` runs are replayed (None: 20 s of them)."""
+    with Store.open_for_reading(store) as opened:
+        write_page(gathered(opened, str(store), datetime.date.today(), traces), Path(page))
+
+
+def gate(store: File, laws: Sequence[str], condition: str, allow_open: bool = False) -> tuple[Check, ...]:
+    """Return whether laws keep the tolerance under a condition (its column's name), in every sheet.
+
+    InputFaults for a law or condition that the store doesn't have.
+    """
+    with Store.open_for_reading(store) as opened:
+        results = opened.results(brief=True)
+    known = {"law": results.laws, "condition": tuple(column.name for column in results.columns)}
+    for what, names in (("law", laws), ("condition", (condition,))):
+        for name in names:
+            if name not in known[what]:
+                problem = f"there is no {what} '{name}'"
+                raise InputFaults.one(store, what, problem, f"one of {', '.join(known[what])}")
+    return judge(results, laws, condition, results.sheets, allow_open)
+
+
+def needs(store: File) -> tuple[LawNeeds, ...]:
+    """Return what must be known, and how well, law by law; InputFaults where ``needs`` was not asked."""
+    with Store.open_for_reading(store) as opened, opened.one_moment():
+        studied, tolerance = _studied(opened, "needs"), opened.labels.tolerance
+    design = NeedsDesign.of(studied.declared)
+    rows = [record.row for record in studied.records]
+    return needs_of(design, rows, tolerance or Tolerance({}, design.required_share))
+
+
+def worst_case(store: File) -> list[WorstFound]:
+    """Return the worst machines found; InputFaults where ``worst_case`` was not asked."""
+    with Store.open_for_reading(store) as opened, opened.one_moment():
+        return worst_found(_studied(opened, "worst_case"), opened.labels.tolerance or Tolerance({}))
+
+
+def gains(store: File) -> list[GainsFound]:
+    """Return the gains found, by law and sheet; InputFaults where ``tune`` was not asked."""
+    with Store.open_for_reading(store) as opened, opened.one_moment():
+        return gains_found(_studied(opened, "tune"))
+
+
+def trace(store: File, run: str) -> Replay:
+    """Do a stored run again, bit for bit; ``run`` is its key or the beginning of it.
+
+    The replay holds the log (reference, positions, speeds, torques by tick), the scores and whether all is
+    as it was stored.
+    """
+    with Store.open_for_reading(store) as opened:
+        return replay(opened, run_by_key(opened, run))
+
+
+def audit(arm: File) -> Audit:
+    """Measure whether the engine plays the arm of an arm file, and which physics_hz it needs."""
+    return audit_files(ArmFiles.read(arm))
+
+
+def _studied(store: Reader, name: str) -> Studied:
+    studied = store.study(name)
+    if studied is None:
+        problem = "the campaign has not asked this, or has not come to it yet"
+        expected = f"'{name}:' in the experiment file, and a run to its end"
+        raise InputFaults.one(store.path, name, problem, expected)
+    return studied
