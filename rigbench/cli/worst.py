@@ -102,7 +102,7 @@ def _law(law: LawWorst) -> dict[str, Any]:
             "level": law.told.level,
             "run": None if law.told.record is None else law.told.record.key,
             "parameters": [
-                {"name": one.parameter, "u": one.u, "share_turned": _finite(one.turned)}
+                {"name": one.parameter, "u": one.u, "difference_by_itself": _finite(one.difference)}
                 for one in law.departures
             ],
         },

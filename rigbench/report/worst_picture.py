@@ -13,7 +13,7 @@ from rigbench.report.cautions import CAUTION
 from rigbench.report.paper import INK, LINE, QUIET, Paper, steady_settings
 from rigbench.report.picture import save_picture
 from rigbench.report.words import level
-from rigbench.report.worst_words import READING, LawWorst, share_words, smallest_words
+from rigbench.report.worst_words import READING, LawWorst, smallest_words
 
 __all__ = ["worst_figure", "worst_picture"]
 
@@ -112,7 +112,7 @@ def _direction(paper: Paper, law: LawWorst, left: float, top: float, names: floa
     """Draw in what the worst machine departs most, from -1 to 1."""
     if not law.departures:
         return top
-    said = f"worst found at level {level(law.told.level)}: u, and what is used up with it alone turned round"
+    said = f"worst found at level {level(law.told.level)}: u, and what each by itself makes of the limit"
     y = paper.lines(left, top, paper.wrap(said, names + BAR + TURNED, SMALL), SMALL, ink=QUIET) + 4
     middle = left + names + BAR / 2
     shown = law.departures[:SHOWN]
@@ -121,8 +121,7 @@ def _direction(paper: Paper, law: LawWorst, left: float, top: float, names: floa
         paper.text(left, at + (ROW - LINE * SMALL) / 2, one.parameter, SMALL)
         start, end = sorted((middle, middle + one.u * BAR / 2))
         paper.box(start, at + 3, max(end - start, 0.5), ROW - 6, fill=PALE)
-        turned = "not run" if one.turned is None else share_words(one.turned)
-        paper.text(left + names + BAR + 8, at + (ROW - LINE * SMALL) / 2, turned, SMALL)
+        paper.text(left + names + BAR + 8, at + (ROW - LINE * SMALL) / 2, _difference(one.difference), SMALL)
     bottom = y + len(shown) * ROW
     for x, tick in ((middle - BAR / 2, "-1"), (middle, "0"), (middle + BAR / 2, "1")):
         paper.stroke((x, y), (x, bottom), color=RAIL, line=0.8)
@@ -131,3 +130,9 @@ def _direction(paper: Paper, law: LawWorst, left: float, top: float, names: floa
     if more:
         paper.text(left, bottom + 1, f"and {more} more", SMALL, ink=QUIET)
     return bottom + LINE * SMALL + 2
+
+
+def _difference(difference: float | None) -> str:
+    if difference is None:
+        return "not run"
+    return "finishing or not" if math.isinf(difference) else f"{100.0 * difference:.3g} %"

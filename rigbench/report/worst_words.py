@@ -14,7 +14,16 @@ from rigbench.report.words import level, quantity
 from rigbench.scores.limit_share import LimitShare
 from rigbench.scores.names import score_words
 
-__all__ = ["KEY_DIGITS", "READING", "LawWorst", "by_law", "share_words", "smallest_words", "worst_text"]
+__all__ = [
+    "KEY_DIGITS",
+    "READING",
+    "LawWorst",
+    "by_law",
+    "difference_words",
+    "share_words",
+    "smallest_words",
+    "worst_text",
+]
 
 KEY_DIGITS = 12
 
@@ -67,7 +76,7 @@ def _percent(share: float) -> str:
         text = f"{100.0 * share:.{digits}g}"
         if (float(text) > 100.0) == (share > 1.0):
             break
-    return f"{float(text):g} %" if float(text) < 1e6 else f"{text} %"
+    return f"{float(text):g} %" if "e" in text else f"{text} %"
 
 
 def _used_words(found: WorstFound, used: LimitShare) -> str:
@@ -81,6 +90,15 @@ def _used_words(found: WorstFound, used: LimitShare) -> str:
 
 def _outcome(outcome: str) -> str:
     return {"diverged": "diverged", "hit-stop": "hit a stop"}.get(outcome, f"ended as {outcome}")
+
+
+def difference_words(one: Departure) -> str:
+    """Say what a parameter makes by itself, between one sign of its u and the other."""
+    if one.difference is None:
+        return ""
+    if math.isinf(one.difference):
+        return "by itself decides whether a run finishes"
+    return f"by itself makes {100.0 * one.difference:.3g} % of the limit"
 
 
 def worst_text(laws: Sequence[LawWorst], store: str) -> str:
@@ -99,8 +117,8 @@ def _law_lines(law: LawWorst, store: str) -> Iterator[str]:
         return
     yield f"  the worst machine found at level {level(law.told.level)} departs so (u, from -1 to 1):"
     for one in law.departures[:SHOWN]:
-        turned = "" if one.turned is None else f"; with it alone turned round: {share_words(one.turned)}"
-        yield f"    {one.parameter} {one.u:+g}{turned}"
+        said = difference_words(one)
+        yield f"    {one.parameter} {one.u:+g}{f'; {said}' if said else ''}"
     if len(law.departures) > SHOWN:
         yield f"    and {len(law.departures) - SHOWN} more"
     yield f"  replay: rigbench trace {store} {law.told.record.key[:KEY_DIGITS]}"

@@ -77,7 +77,7 @@ def test_the_words_claim_no_more_than_was_found() -> None:
     assert "nothing is known from 7 runs" in text
     assert f"replay: rigbench trace results/x.sqlite {KEY[:12]}" in text
     assert "the worst machine found at level 0.5 departs so" in text
-    assert "with it alone turned round: 50 % of its limit" in text
+    assert "by itself makes 50 % of the limit" in text
     assert "and 6 more" in text
     assert "the worst case" not in text
 

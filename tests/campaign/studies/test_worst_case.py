@@ -111,7 +111,7 @@ def test_the_worst_machine_and_the_smallest_level_that_fails_are_found(
 
 
 def test_the_direction_says_what_matters(tmp_path: Path, study: WorstCase) -> None:
-    """Turned round, the heavier parameter takes abs(1 - 2) = 1 mm of 3 at level 1, the lighter the same: by formula."""
+    """From abs(1 + 2) = 3 mm at the worst either parameter turned round leaves 1 mm: 2 of the limit's 3 mm."""
     with searched(replace(study, levels=(1.0,)), tmp_path / "s.sqlite", work_for(study)) as store:
         stored = store.study("worst_case")
         assert stored is not None
@@ -119,7 +119,19 @@ def test_the_direction_says_what_matters(tmp_path: Path, study: WorstCase) -> No
         found = departures(store, stored, one, TOLERANCE)
         assert {each.parameter for each in found} == set(NAMES)
         for each in found:
-            assert each.turned == pytest.approx(1.0 / 3.0)
+            assert each.difference == pytest.approx(2.0 / 3.0)
+
+
+def test_what_decides_whether_a_run_finishes_comes_first(tmp_path: Path, study: WorstCase) -> None:
+    """Machines that diverge by the second parameter alone: it makes all the difference, the first none."""
+    work = work_for(study, breaks=lambda level, u: "diverged" if u[1] > 0.99 else "finished")
+    with searched(replace(study, levels=(1.0,)), tmp_path / "s.sqlite", work) as store:
+        stored = store.study("worst_case")
+        assert stored is not None
+        one = worst_found(stored, TOLERANCE)[-1]
+        first, second = departures(store, stored, one, TOLERANCE)
+        assert (first.parameter, first.difference) == (NAMES[1], math.inf)
+        assert (second.parameter, second.difference) == (NAMES[0], 0.0)
 
 
 def test_one_that_was_stopped_finds_the_same(tmp_path: Path, study: WorstCase) -> None:
