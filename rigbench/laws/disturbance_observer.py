@@ -17,10 +17,10 @@ INERTIA, CORNER, LIMIT, ESTIMATE, LAST_TORQUE, LAST_SPEED, LAST_TIME = range(6, 
 
 
 class DisturbanceObserver(PdLaw):
-    """tau = J' (a_ref + (Kd e' + Kp e) / J') + d [+ friction(v_ref)], d the estimated disturbance.
+    """tau = J' a_ref + Kp e + Kd e' + d [+ friction(v_ref)], d [N m] the estimated disturbance.
 
     e = q_ref - q; J' = G^2 Jm + M_jj [kg m^2] of the model at the gain pose; Kp, Kd as in
-    independent-joint. The estimate d [N m] is (tau - J' q'') after a first-order filter, g / (s + g) with
+    independent-joint. The estimate is (tau - J' q'') after a first-order filter, g / (s + g) with
     g = 2 pi observer_hz: whatever the torque did not accelerate J' with (gravity, coupling, friction, a
     wrong J'). On a joint of just that inertia a disturbance D leaves the error
     e = D s / ((s + g) (J' s^2 + Kd s + Kp)): none where D is constant.

@@ -10,13 +10,13 @@ from rigbench.arm.arm import Floats
 from rigbench.arm.dynamics import composite_inertia, newton_euler, place
 from rigbench.arm.kernel import kernel
 from rigbench.laws.feedback import HeldTermLaw, believed_friction, feedback_on_held
-from rigbench.laws.law import A_REF, Q_REF, V_REF, Compiled, Reference, Setup, option
+from rigbench.laws.law import A_REF, CLOCK, Q_REF, V_REF, Compiled, Reference, Setup, option
 from rigbench.laws.model import FrictionTerm, friction_torque
 
 __all__ = ["TorqueFeedforward"]
 
-REFLECTED, AHEAD, DIAGONAL = 6, 7, 8
-"""Rows of ``own`` after kp, kd and the believed friction."""
+REFLECTED, AHEAD, DIAGONAL, LAST, LAST_TIME = range(6, 11)
+"""Rows of ``own`` after kp, kd and the believed friction; the last two are the state."""
 
 
 class TorqueFeedforward(HeldTermLaw):
@@ -29,8 +29,9 @@ class TorqueFeedforward(HeldTermLaw):
 
     With terms: diagonal it is (diag M(q_ref) + Jr) a_ref + g(q_ref) + friction(v_ref): gravity and each
     joint's own inertia, without coupling. A held term is half a period late on average; look_ahead: 0.5 works
-    it out for where the reference will be by then, q_ref + v_ref T + a_ref T^2 / 2 and v_ref + a_ref T with
-    T = look_ahead / model_hz (control_hz where model_hz is absent), a_ref as it stands (Taylor).
+    it out for where the reference will be by then (Taylor): q_ref + v_ref T + a_ref T^2 / 2, v_ref + a_ref T
+    and a_ref + j T, T = look_ahead / model_hz (control_hz where model_hz is absent), j [rad/s^3] the
+    difference of a_ref to the model's tick before over the time between (0 at the first).
     """
 
     friction: FrictionTerm = believed_friction()
@@ -48,41 +49,68 @@ class TorqueFeedforward(HeldTermLaw):
         """Take model and gains; work out how far to look ahead [s]."""
         super().start(setup)
         self._ahead = self.look_ahead / (self.model_hz or setup.control_hz)
+        self._last, self._last_time = np.zeros(setup.n), -1.0
 
     def model_term(self, t: float, q: Floats, v: Floats, ref: Reference) -> Floats:
         """Return the feedforward torque (n,) [N m]."""
-        del t, q, v
-        ahead, model = self._ahead, self._model
-        at, rate = ref.q + ahead * ref.v + 0.5 * ahead**2 * ref.a, ref.v + ahead * ref.a
-        friction = model.friction(rate, self.friction)
+        del q, v
+        at, rate, push = self._taylor(t, ref) if self.look_ahead > 0 else ref
+        friction = self._model.friction(rate, self.friction)
         if self.terms == "full":
-            return model.inverse_dynamics(at, rate, ref.a) + friction
-        return np.diag(model.mass_matrix(at)) * ref.a + model.gravity_torque(at) + friction
+            return self._model.inverse_dynamics(at, rate, push) + friction
+        return np.diag(self._model.mass_matrix(at)) * push + self._model.gravity_torque(at) + friction
+
+    def _taylor(self, t: float, ref: Reference) -> Reference:
+        """Return the reference where it is expected to be ``ahead`` of now."""
+        ahead, jerk = self._ahead, np.zeros(self._model.n)
+        if self._last_time >= 0:
+            jerk = (ref.a - self._last) / (t - self._last_time)
+        self._last, self._last_time = ref.a, t
+        return Reference(
+            ref.q + ahead * ref.v + 0.5 * ahead**2 * ref.a, ref.v + ahead * ref.a, ref.a + ahead * jerk
+        )
 
     def compiled(self) -> Compiled:
         """Return the kernels; ``own`` rows: kp, kd, friction (4), and as the names at the top say."""
         model, n = self._model, self._model.n
-        rest = [model.reflected, np.full(n, self._ahead), np.full(n, float(self.terms == "diagonal"))]
-        own = np.vstack([self.own_rows(), *rest])
+        flags = np.full((2, n), [[self._ahead], [float(self.terms == "diagonal")]])
+        state = [self._last, np.full(n, self._last_time)]
+        own = np.vstack([self.own_rows(), model.reflected, flags, *state])
         return Compiled(torque=feedback_on_held, own=own, model_term=_model_term, held_size=n)
 
 
 @kernel
+def _taylor(io: Floats, own: Floats, wanted: Floats) -> None:
+    """Fill ``wanted`` (3, n) with the reference where it is expected to be at the time looked ahead to."""
+    ahead, since = own[AHEAD, 0], io[CLOCK, 0] - own[LAST_TIME, 0]
+    for i in range(io.shape[1]):
+        rate, push = io[V_REF, i], io[A_REF, i]
+        wanted[0, i] = io[Q_REF, i] + ahead * rate + 0.5 * ahead * ahead * push
+        wanted[1, i] = rate + ahead * push
+        wanted[2, i] = push
+        if own[LAST_TIME, 0] >= 0.0:
+            wanted[2, i] += ahead * (push - own[LAST, i]) / since
+        own[LAST, i] = push
+    own[LAST_TIME, 0] = io[CLOCK, 0]
+
+
+@kernel
 def _model_term(io: Floats, held: Floats, chain: Floats, own: Floats) -> None:
-    n, ahead = io.shape[1], own[AHEAD, 0]
-    placed, at, rate = np.empty((n, 12)), np.empty(n), np.empty(n)
-    for i in range(n):
-        at[i] = io[Q_REF, i] + ahead * io[V_REF, i] + 0.5 * ahead * ahead * io[A_REF, i]
-        rate[i] = io[V_REF, i] + ahead * io[A_REF, i]
-    place(chain, at, placed)
+    n = io.shape[1]
+    placed, wanted = np.empty((n, 12)), np.empty((3, n))
+    if own[AHEAD, 0] > 0.0:
+        _taylor(io, own, wanted)
+    else:
+        wanted[0], wanted[1], wanted[2] = io[Q_REF], io[V_REF], io[A_REF]
+    place(chain, wanted[0], placed)
     if own[DIAGONAL, 0] == 0.0:
-        newton_euler(chain, placed, rate, io[A_REF], True, held)
+        newton_euler(chain, placed, wanted[1], wanted[2], True, held)
     else:
         rest, mass = np.zeros(n), np.empty((n, n))
         composite_inertia(chain, placed, mass)
         newton_euler(chain, placed, rest, rest, False, held)
         for i in range(n):
-            held[i] += mass[i, i] * io[A_REF, i]
+            held[i] += mass[i, i] * wanted[2, i]
     for i in range(n):
-        held[i] += own[REFLECTED, i] * io[A_REF, i]
-    friction_torque(own[2:6], rate, held)
+        held[i] += own[REFLECTED, i] * wanted[2, i]
+    friction_torque(own[2:6], wanted[1], held)
