@@ -7,7 +7,6 @@ import numpy as np
 from rigbench.arm.arm import Floats
 from rigbench.arm.kernel import kernel
 from rigbench.laws.feedback import InertiaLaw, inertia_and_bias, saturated, through_inertia
-from rigbench.laws.gains import positive_kd
 from rigbench.laws.law import A_REF, Q_REF, V_REF, Compiled, Q, Reference, V, option
 
 __all__ = ["RobustOuterLoop"]
@@ -32,7 +31,6 @@ class RobustOuterLoop(InertiaLaw):
     Source: Corless, Leitmann 1981; Spong, Vidyasagar 1989, ch. 8 (both from memory).
     """
 
-    kd: tuple[float, ...] | None = positive_kd()
     rho: float = option(
         10.0, "rad/s^2", "bound on the acceleration that the model misses, in each joint", at_least=0
     )

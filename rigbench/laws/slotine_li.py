@@ -59,7 +59,7 @@ class SlotineLi(PdLaw):
         choices=("all", "links", "masses", "payload", "friction"),
     )
     adaptation: float = option(
-        5.0, "1/J", "how fast: rate of x for each watt of power that the error takes", at_least=0
+        1.0, "1/J", "how fast: rate of x for each watt of power that the error takes", at_least=0
     )
     bound_percent: float = option(
         100.0, "%", "how far an adapted number may go from the believed one", at_least=0

@@ -123,7 +123,7 @@ def test_adaptation_needs_no_good_model(tmp_path, two_link_files):
     Kp = K_D L, the same for both. All ten parameters of both links are adapted, at the default rate.
     """
     two_link_files(tmp_path)
-    found = run(tmp_path, plant="nominal", model="light", hz=1000, adapts="links", adaptation=5)
+    found = run(tmp_path, plant="nominal", model="light", hz=1000, adapts="links", adaptation=1)
     late = {law: np.sqrt((e[t > 3.0] ** 2).sum(1).mean()) for law, (t, e) in found.items()}
     assert late["adaptive"] < late["pd"] / 5
     assert late["adaptive"] < late["pd+"] / 5
