@@ -2,83 +2,89 @@
 
 from __future__ import annotations
 
-from typing import ClassVar
-
 import numpy as np
 
 from rigbench.arm.arm import Floats
-from rigbench.arm.dynamics import composite_inertia, newton_euler, place
 from rigbench.arm.kernel import kernel
-from rigbench.laws.feedback import model_rate
-from rigbench.laws.gains import PdLaw
-from rigbench.laws.law import A_REF, Q_REF, TAU, V_REF, Compiled, Q, Reference, V, option
-from rigbench.laws.model import FrictionTerm, friction_torque
+from rigbench.laws.feedback import InertiaLaw, inertia_and_bias, through_inertia
+from rigbench.laws.law import A_REF, Q_REF, V_REF, Compiled, Q, Reference, Setup, V, option
 
 __all__ = ["ComputedTorque"]
 
+CORNER, PERIOD, LAG, LAG_RATE = range(7, 11)
+"""Rows of ``own`` after those of :meth:`InertiaLaw.inertia_rows`; the last two are the filter's state."""
 
-class ComputedTorque(PdLaw):
+
+class ComputedTorque(InertiaLaw):
     """tau = (M(q) + Jr) (a_ref + Kd (v_ref - v) + Kp (q_ref - q)) + h(q, v) + friction(v_ref).
 
     With an exact model each joint's error obeys e'' + Kd e' + Kp e = 0, so Kp [s^-2] and Kd [s^-1]
     pass through the inertia matrix. M and h are worked out at the sensed state, friction at the
     reference's velocity, at model_hz, and held in between. Jr = G^2 Jm [kg m^2].
     Source: Luh, Walker, Paul 1980 (from memory).
+
+    With filter_hz the reference passes a critically damped second-order filter first. What it lags by
+    obeys d'' + 2 w d' + w^2 d = a_ref with w = 2 pi filter_hz, from rest, and q_ref - d, v_ref - d' and
+    w^2 d + 2 w d' stand for q_ref, v_ref and a_ref: an acceleration that jumps reaches the motors rounded,
+    at the price of a_ref / w^2 in position. Solved exactly from tick to tick, a_ref held in between;
+    friction stays at the unfiltered velocity.
     """
 
-    through_inertia: ClassVar[bool] = True
-
-    model_hz: float | None = model_rate()
-    friction: FrictionTerm = option(
-        "full",
-        "",
-        "believed friction to add, at the reference's velocity",
-        choices=("none", "viscous", "full"),
+    filter_hz: float | None = option(
+        None, "Hz", "corner of a second-order filter on the reference; none if absent", above=0
     )
 
-    def model_term(self, t: float, q: Floats, v: Floats, ref: Reference) -> Floats:
-        """Return M + Jr row by row and then h + friction, (n n + n,)."""
-        del t
-        torque = self._model.bias_torque(q, v) + self._model.friction(ref.v, self.friction)
-        return np.concatenate([self._model.mass_matrix(q).ravel(), torque])
+    def start(self, setup: Setup) -> None:
+        """Take model and gains; the filter is at rest."""
+        super().start(setup)
+        self._corner = 2.0 * np.pi * (self.filter_hz or 0.0)
+        self._period = 1.0 / setup.control_hz
+        self._lag, self._lag_rate = np.zeros((2, setup.n))
 
     def torque(self, t: float, q: Floats, v: Floats, ref: Reference, held: Floats) -> Floats:
         """Return the torque (n,) [N m]."""
         del t
-        n = len(q)
-        wanted = ref.a + self._kd * (ref.v - v) + self._kp * (ref.q - q)
-        return held[: n * n].reshape(n, n) @ wanted + held[n * n :]
+        if self.filter_hz is not None:
+            ref = self._filtered(ref)
+        return self.through(ref.a + self._kd * (ref.v - v) + self._kp * (ref.q - q), held)
+
+    def _filtered(self, ref: Reference) -> Reference:
+        w, lag, rate = self._corner, self._lag, self._lag_rate
+        filtered = Reference(ref.q - lag, ref.v - rate, w**2 * lag + 2 * w * rate)
+        off = lag - ref.a / w**2
+        slope, decay = rate + w * off, np.exp(-w * self._period)
+        self._lag = ref.a / w**2 + (off + slope * self._period) * decay
+        self._lag_rate = (rate - w * slope * self._period) * decay
+        return filtered
 
     def compiled(self) -> Compiled:
-        """Return the kernels; ``own`` rows: kp, kd, believed friction (4), reflected rotor inertia."""
-        model, n = self._model, self._model.n
-        own = np.vstack([self.own_rows(), model.reflected])
-        return Compiled(torque=_torque, own=own, model_term=_model_term, held_size=n * n + n)
+        """Return the kernels; ``own`` rows: :meth:`inertia_rows`, and as the names at the top say."""
+        n = self._model.n
+        rest = np.zeros((4, n))
+        rest[0], rest[1] = self._corner, self._period
+        own = np.vstack([self.inertia_rows(), rest])
+        return Compiled(torque=_torque, own=own, model_term=inertia_and_bias, held_size=self.held_size)
 
 
 @kernel
 def _torque(io: Floats, held: Floats, chain: Floats, own: Floats) -> None:
-    n = io.shape[1]
+    n, w = io.shape[1], own[CORNER, 0]
     wanted = np.empty(n)
-    for i in range(n):
-        wanted[i] = (
-            io[A_REF, i] + own[1, i] * (io[V_REF, i] - io[V, i]) + own[0, i] * (io[Q_REF, i] - io[Q, i])
-        )
-    for i in range(n):
-        total = held[n * n + i]
-        for j in range(n):
-            total += held[i * n + j] * wanted[j]
-        io[TAU, i] = total
-
-
-@kernel
-def _model_term(io: Floats, held: Floats, chain: Floats, own: Floats) -> None:
-    n = io.shape[1]
-    placed = np.empty((n, 12))
-    place(chain, io[Q], placed)
-    mass = held[: n * n].reshape(n, n)
-    composite_inertia(chain, placed, mass)
-    for i in range(n):
-        mass[i, i] += own[6, i]
-    newton_euler(chain, placed, io[V], io[V], False, held[n * n :])
-    friction_torque(own[2:6], io[V_REF], held[n * n :])
+    if w == 0.0:
+        for i in range(n):
+            wanted[i] = (
+                io[A_REF, i] + own[1, i] * (io[V_REF, i] - io[V, i]) + own[0, i] * (io[Q_REF, i] - io[Q, i])
+            )
+    else:
+        period = own[PERIOD, 0]
+        decay = np.exp(-w * period)
+        for i in range(n):
+            lag, rate = own[LAG, i], own[LAG_RATE, i]
+            wanted[i] = w * w * lag + 2.0 * w * rate
+            wanted[i] += own[1, i] * (io[V_REF, i] - rate - io[V, i])
+            wanted[i] += own[0, i] * (io[Q_REF, i] - lag - io[Q, i])
+            settled = io[A_REF, i] / (w * w)
+            slope = rate + w * (lag - settled)
+            own[LAG, i] = settled + (lag - settled + slope * period) * decay
+            own[LAG_RATE, i] = (rate - w * slope * period) * decay
+    through_inertia(io, held, wanted)

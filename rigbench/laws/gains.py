@@ -10,7 +10,22 @@ from rigbench.arm.arm import Floats
 from rigbench.laws.law import Law, Setup, option
 from rigbench.laws.model import FrictionTerm
 
-__all__ = ["PdLaw"]
+__all__ = ["PdLaw", "positive_damping", "positive_kd"]
+
+KD_UNIT = "N m s/rad; s^-1 where feedback passes through the inertia matrix"
+KD_DOC = "derivative gains, one for each joint, in place of damping"
+
+
+def positive_damping() -> float:
+    """Declare the option ``damping`` of a law that divides by the derivative gain."""
+    ratio: float = option(1.0, "", "damping ratio of the closed loop", above=0)
+    return ratio
+
+
+def positive_kd() -> tuple[float, ...] | None:
+    """Declare the option ``kd`` of a law that divides by it."""
+    gains: tuple[float, ...] | None = option(None, KD_UNIT, KD_DOC, above=0, per_joint=True)
+    return gains
 
 
 class PdLaw(Law):
@@ -33,13 +48,7 @@ class PdLaw(Law):
         at_least=0,
         per_joint=True,
     )
-    kd: tuple[float, ...] | None = option(
-        None,
-        "N m s/rad; s^-1 where feedback passes through the inertia matrix",
-        "derivative gains, one for each joint, in place of damping",
-        at_least=0,
-        per_joint=True,
-    )
+    kd: tuple[float, ...] | None = option(None, KD_UNIT, KD_DOC, at_least=0, per_joint=True)
 
     friction: FrictionTerm = option(
         "none",

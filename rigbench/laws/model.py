@@ -7,8 +7,9 @@ from typing import Literal
 import numpy as np
 
 from rigbench.arm import dynamics
-from rigbench.arm.arm import Arm, Floats
+from rigbench.arm.arm import LINK, Arm, Floats
 from rigbench.arm.kernel import kernel
+from rigbench.laws.passive import passive_torque
 
 __all__ = ["FRICTION_ROWS", "FrictionTerm", "Model", "friction_torque"]
 
@@ -69,6 +70,13 @@ class Model:
     def inverse_dynamics(self, q: Floats, v: Floats, a: Floats) -> Floats:
         """Return (M(q) + G^2 Jm) a + h(q, v), (n,) [N m]."""
         return dynamics.inverse_dynamics(self.chain, q, v, a) + self.reflected * a
+
+    def passive_torque(self, q: Floats, v: Floats, v_r: Floats, a_r: Floats) -> Floats:
+        """Return (M(q) + G^2 Jm) a_r + C(q, v) v_r + g(q), (n,) [N m], with M' - 2 C skew-symmetric."""
+        placed, tau = np.empty((self.n, 12)), np.empty(self.n)
+        dynamics.place(self.chain, q, placed)
+        passive_torque(self.chain, placed, v, v_r, a_r, self.chain[:-1, LINK].copy(), tau)
+        return tau + self.reflected * a_r
 
     def friction_rows(self, term: FrictionTerm) -> Floats:
         """Return the believed friction as ``term`` goes, (4, n), for :func:`friction_torque`."""

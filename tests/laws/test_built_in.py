@@ -12,7 +12,24 @@ from rigbench.laws.model import Model
 from rigbench.laws.registry import registered
 
 GRAVITY = (0.0, 0.0, -9.81)
-LAWS = ("independent-joint", "gravity-compensated", "torque-feedforward", "computed-torque")
+VARIANTS = [
+    ("independent-joint", {}),
+    ("independent-joint-pid", {}),
+    ("joint-cascade", {}),
+    ("disturbance-observer", {}),
+    ("gravity-compensated", {}),
+    ("torque-feedforward", {}),
+    ("torque-feedforward", {"terms": "diagonal", "look_ahead": 0.5, "model_hz": 100.0}),
+    ("computed-torque", {}),
+    ("computed-torque", {"filter_hz": 20.0}),
+    ("robust-outer-loop", {}),
+    ("sliding-mode", {}),
+    ("sliding-mode", {"boundary": 2.0}),
+    ("pd-plus", {}),
+    *(("slotine-li", {"adapts": adapts}) for adapts in ("all", "links", "masses", "payload", "friction")),
+]
+LAWS = tuple(dict.fromkeys(name for name, _ in VARIANTS))
+TICKS = 6
 
 
 def setup_for(arm, pose=(0.3, -0.4)):
@@ -26,30 +43,61 @@ def started(name, arm, **options):
     return law
 
 
+def plain_torques(law, course):
+    """Torques and model terms of the Python methods along ``course``, tick by tick."""
+    torques, terms = [], []
+    for k, (q, v, *ref) in enumerate(course):
+        held = law.model_term(k / 1000, q, v, Reference(*ref))
+        torques.append(law.torque(k / 1000, q, v, Reference(*ref), held))
+        terms.append(held)
+    return np.array(torques), np.array(terms)
+
+
+def compiled_torques(law, course):
+    """The same of the kernels."""
+    kernels, chain = law.compiled(), law._model.chain
+    io, kept = np.zeros((CLOCK + 1, 2)), np.zeros(kernels.held_size)
+    torques, terms = [], []
+    for k, rows in enumerate(course):
+        io[[Q, V, Q_REF, V_REF, A_REF]], io[CLOCK, 0] = rows, k / 1000
+        if kernels.model_term is not None:
+            kernels.model_term(io, kept, chain, kernels.own)
+        kernels.torque(io, kept, chain, kernels.own)
+        torques.append(io[TAU].copy())
+        terms.append(kept.copy())
+    return np.array(torques), np.array(terms)
+
+
+def test_every_built_in_law_is_tested_here():
+    """No law of the package goes without the tests below."""
+    assert set(LAWS) == {name for name, law in registered().laws.items() if law.package == "rigbench"}
+
+
 @pytest.mark.parametrize("friction", ["none", "viscous", "full"])
-@pytest.mark.parametrize("name", LAWS)
-@settings(max_examples=25, deadline=None)
-@given(seed=st.integers(0, 2**32))
-def test_plain_and_compiled_paths_are_equal(name, friction, seed, request):
-    """A law's kernels give its Python methods' torque, to rounding."""
+@pytest.mark.parametrize(("name", "options"), VARIANTS, ids=lambda part: "-".join(map(str, part)) or "-")
+@settings(max_examples=15, deadline=None)
+@given(seed=st.integers(0, 2**32), size=st.sampled_from([0.01, 1.0]))
+def test_plain_and_compiled_paths_are_equal(name, options, friction, seed, size, request):
+    """A law's kernels give its Python methods' torque, to rounding, tick after tick, within limits and beyond.
+
+    And a law that is started again has nothing left of the run before.
+    """
     build = request.getfixturevalue("published_two_link")
     dry = {"coulomb": [3.0, 1.0], "static": [4.0, 1.0], "stribeck_speed": 0.1}
-    arm = build(**dry, viscous=[2.0, 0.5], rotor_inertia=1e-4, gear_ratio=40.0)
-    law = started(name, arm, friction=friction)
-    rng = np.random.default_rng(seed)
-    q, v, ref = rng.normal(size=2), rng.normal(size=2), Reference(*rng.normal(size=(3, 2)))
-    held = law.model_term(0.5, q, v, ref)
-    plain = law.torque(0.5, q, v, ref, held)
-    kernels = law.compiled()
-    io, kept = np.zeros((CLOCK + 1, 2)), np.zeros(kernels.held_size)
-    io[Q], io[V], io[Q_REF], io[V_REF], io[A_REF], io[CLOCK, 0] = q, v, *ref, 0.5
-    chain = law._model.chain
-    if kernels.model_term is not None:
-        kernels.model_term(io, kept, chain, kernels.own)
-    kernels.torque(io, kept, chain, kernels.own)
+    limits = {"torque_limit": [40.0, 25.0], "speed_limit": [1.0, 2.0]}
+    arm = build(**dry, **limits, viscous=[2.0, 0.5], rotor_inertia=1e-4, gear_ratio=40.0)
+    law = started(name, arm, friction=friction, **options)
+    course = size * np.random.default_rng(seed).normal(size=(TICKS, 5, 2))
+    torques, terms = compiled_torques(law, course)
+    plain, held = plain_torques(law, course)
     scale = np.abs(plain).max() + 1
-    np.testing.assert_allclose(io[TAU], plain, atol=1e-12 * scale)
-    np.testing.assert_allclose(kept, held, atol=1e-12 * scale)
+    np.testing.assert_allclose(torques, plain, atol=1e-11 * scale)
+    np.testing.assert_allclose(terms, held, atol=1e-11 * scale)
+    law.start(setup_for(arm))
+    np.testing.assert_array_equal(plain_torques(law, course)[0], plain)
+    np.testing.assert_array_equal(
+        compiled_torques(started(name, arm, friction=friction, **options), course)[0], torques
+    )
 
 
 def test_gains_from_frequency(published_two_link):

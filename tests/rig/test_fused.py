@@ -44,9 +44,7 @@ def run_of(name, files, late):
 
 
 @pytest.mark.parametrize("late", [False, True])
-@pytest.mark.parametrize(
-    "name", ["computed-torque", "gravity-compensated", "independent-joint", "torque-feedforward"]
-)
+@pytest.mark.parametrize("name", sorted(registered().laws))
 def test_one_kernel_gives_the_bits_of_its_parts(name, late, files, monkeypatch):
     """A run with the fused step and one that calls the parts in turn end in the same log, bit for bit."""
     run = run_of(name, files, late)
