@@ -391,7 +391,7 @@ def needs(
         tell_needs(store, law, output, as_json)
 
 
-@app.command(epilog="Example: rigbench worst results/worst-machines.sqlite -o worst.png")
+@app.command(epilog="Example: rigbench worst results/best-gains.sqlite -o worst.png")
 def worst(
     store: StoreFile,
     output: Annotated[
@@ -411,7 +411,7 @@ def worst(
         tell_worst(store, output, as_json)
 
 
-@app.command(epilog="Example: rigbench gains results/worst-machines.sqlite")
+@app.command(epilog="Example: rigbench gains results/best-gains.sqlite")
 def gains(store: StoreFile, as_json: Json = False) -> None:
     """Print the gains that were found for the laws, as YAML that can be pasted into an experiment.
 

@@ -35,7 +35,7 @@ from rigbench.errors import ClusterLost, InputFaults
 
 EntryMaker = Callable[..., list[Entry]]
 HERE = Path(__file__).parent
-START_S = 20.0
+START_S = 120.0
 PATIENCE_S = 15.0
 
 

@@ -205,6 +205,7 @@ def test_the_time_of_day_may_change(
 STAMPS = {
     "campaign/store.py": "when a run was stored, and a store put aside",
     "arm/kernel.py": "how old a cache of kernels is",
+    "calls.py": "the date on a picture or a page",
 }
 """Who may ask for the time of day, and for what; beside them cli/ and report/, which show it."""
 
