@@ -20,7 +20,7 @@ from rigbench.rig.run import Run
 
 __all__ = ["Estimate", "estimate_of"]
 
-QUICK_S = 2.0
+QUICK_S = 10.0  # what compiling a law takes at most, on a slow machine
 
 MOTION_S = 3.0
 """How much of the motion is enough to tell how long a step takes [s]."""
@@ -142,7 +142,7 @@ def _steps_by_law(experiment: Experiment) -> dict[str, float]:
 
 
 def _measured(run: Run) -> Outcome:
-    """Do a run; twice if it is quick, for the first of a process may have something to compile."""
+    """Do a run; twice if it is quick, for the first under a law may have its kernels to compile."""
     outcome = do(run)
     quick = outcome.outcome == "finished" and outcome.wall_s is not None and outcome.wall_s < QUICK_S
     return do(run) if quick else outcome

@@ -74,7 +74,7 @@ def test_every_built_in_law_is_tested_here():
 
 
 @pytest.mark.parametrize("friction", ["none", "viscous", "full"])
-@pytest.mark.parametrize(("name", "options"), VARIANTS, ids=lambda part: "-".join(map(str, part)) or "-")
+@pytest.mark.parametrize(("name", "options"), VARIANTS, ids=str)
 @settings(max_examples=15, deadline=None)
 @given(seed=st.integers(0, 2**32), size=st.sampled_from([0.01, 1.0]))
 def test_plain_and_compiled_paths_are_equal(name, options, friction, seed, size, request):
