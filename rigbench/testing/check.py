@@ -92,11 +92,11 @@ def check_law(cls: type[Law], /, **options: Any) -> CheckedLaw:
     def make() -> Law:
         return cls(**resolved)
 
-    shown = max((arm for arm in arms if arm.n <= SHOWN), key=lambda arm: arm.n, default=arms[0])
+    timed = max((arm for arm in arms if arm.n <= SHOWN), key=lambda arm: arm.n, default=arms[0])
     plain_us, compiled_us = 0.0, None
     for arm in arms:
         times = _check_on(arm, make, findings)
-        if times is not None and arm is shown:
+        if times is not None and arm is timed:
             plain_us, compiled_us = times
     broken = findings.broken()
     if broken:
