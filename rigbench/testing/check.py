@@ -11,18 +11,17 @@ from typing import Any
 import numpy as np
 import pydantic
 
-from rigbench.arm.arm import PRISMATIC, Arm
-from rigbench.errors import LawError, RulesBroken, counted
+from rigbench.arm.arm import Arm
+from rigbench.errors import RulesBroken, counted
 from rigbench.laws.form import check_class, notes_on
 from rigbench.laws.law import Law
 from rigbench.laws.options import describe_options, options_model, per_joint_options
-from rigbench.motion.via import ViaMotion
 from rigbench.rig.fused import fused
 from rigbench.testing.arms import make_arm
-from rigbench.testing.play import Played, Stage
+from rigbench.testing.on_arm import check_on
 from rigbench.testing.rules import Findings
-from rigbench.testing.simulated import run_law, setup_of
-from rigbench.testing.ticks import CONTROL_HZ, ticks_for
+from rigbench.testing.simulated import setup_of
+from rigbench.testing.ticks import CONTROL_HZ
 
 __all__ = ["CheckedLaw", "check_law"]
 
@@ -34,13 +33,6 @@ ARMS = (
 
 SHOWN = 6
 """Times are those of the largest arm of at most so many joints."""
-
-RARELY = 3
-"""How many ticks a model term is held, where it is not worked out at each."""
-
-CLOSE = 1e-9
-"""By how much kernels may differ from the plain methods, as a share of the largest number: sums in another
-order, and no more."""
 
 
 @dataclass(frozen=True)
@@ -95,14 +87,18 @@ def check_law(cls: type[Law], /, **options: Any) -> CheckedLaw:
     timed = max((arm for arm in arms if arm.n <= SHOWN), key=lambda arm: arm.n, default=arms[0])
     plain_us, compiled_us = 0.0, None
     for arm in arms:
-        times = _check_on(arm, make, findings)
+        times = check_on(arm, make, findings)
         if times is not None and arm is timed:
             plain_us, compiled_us = times
     broken = findings.broken()
     if broken:
         raise RulesBroken(cls.__name__, broken)
     return CheckedLaw(
-        cls.__name__, len(arms), plain_us, compiled_us, tuple(_notes(cls, make, arms[0], plain_us))
+        cls.__name__,
+        len(arms),
+        plain_us,
+        compiled_us,
+        tuple(_notes(cls, make, arms[0], compiled_us or plain_us)),
     )
 
 
@@ -142,91 +138,7 @@ def _problems(model: type[pydantic.BaseModel], given: dict[str, Any]) -> Iterato
             yield ".".join(map(str, error["loc"][:1])), error["msg"]
 
 
-def _check_on(arm: Arm, make: Callable[[], Law], findings: Findings) -> tuple[float, float | None] | None:
-    """Check the law on one arm; return its times a tick [us], None where it can't be called there."""
-    ticks = ticks_for(arm)
-    stage = Stage(_arm_words(arm), setup_of(arm, CONTROL_HZ, ticks[1][1]), ticks, findings)
-    law = make()
-    plain = stage.plain(law)
-    if plain is None:
-        return None
-    again, anew = stage.plain(make()), stage.plain(law)
-    if again is None or not plain.same(again):
-        stage.blame("determinism", "a second law of the same class and options gives other torques")
-    else:
-        if anew is None or not plain.same(anew):
-            stage.blame("start", "a law that is started once more gives other torques than at first")
-        spoilt = stage.plain(make(), spoil=True)
-        if spoilt is None or not plain.same(spoilt):
-            stage.blame("references", "torques change with what becomes of the arrays of earlier calls")
-    rare = stage.plain(make(), every=RARELY)
-    kernels = _check_kernels(stage, make, plain, rare)
-    _check_closed_loop(arm, stage, make())
-    return _us(plain), None if kernels is None else _us(kernels)
-
-
-def _check_kernels(
-    stage: Stage, make: Callable[[], Law], plain: Played, rare: Played | None
-) -> Played | None:
-    law = make()
-    kernels = stage.kernels(law)
-    if kernels is None:
-        return None
-    _compare(stage, plain, kernels)
-    anew = stage.kernels(law)
-    if anew is None or not kernels.same(anew):
-        stage.blame(
-            "start", "the kernels of a law that is started once more give other torques than at first"
-        )
-    held = stage.kernels(make(), every=RARELY)
-    if rare is not None and held is not None:
-        _compare(stage, rare, held)
-    return kernels
-
-
-def _compare(stage: Stage, plain: Played, kernels: Played) -> None:
-    pairs = (
-        ("compiled model term", plain.terms, kernels.terms),
-        ("compiled torque", plain.torques, kernels.torques),
-    )
-    for rule, one, other in pairs:
-        for (t, *_), expected, found in zip(stage.ticks, one, other, strict=True):
-            if expected.shape != found.shape:
-                stage.blame(rule, f"{found.size} numbers by the kernel, {expected.size} by the method")
-                return
-            scale = np.abs(expected).max(initial=1.0)
-            if not np.allclose(found, expected, rtol=0.0, atol=CLOSE * scale, equal_nan=True):
-                stage.blame(rule, f"{found} by the kernel, {expected} by the method at t = {t:g} s")
-                return  # what follows from a wrong term is not told as well
-
-
-def _check_closed_loop(arm: Arm, stage: Stage, law: Law) -> None:
-    if stage.findings.where.get("raises") and stage.arm in stage.findings.where["raises"]:
-        return
-    unit = np.where(arm.kinds == PRISMATIC, 0.1, 0.3)
-    motion = ViaMotion(points=(tuple(0.0 * unit), tuple(unit)), leg_s=0.4, rest_s=0.1)
-    try:
-        with np.errstate(all="ignore"):
-            log = run_law(law, arm, motion)
-    except LawError as problem:
-        stage.blame("closed loop", f"it raises {problem.summary} {problem.trace}".rstrip())
-        return
-    if log.outcome != "finished":
-        stage.blame("closed loop", log.reason)
-
-
-def _arm_words(arm: Arm) -> str:
-    slides = int((arm.kinds == PRISMATIC).sum())
-    parts = [(arm.n - slides, "turning"), (slides, "sliding")]
-    words = " and ".join(counted(number, f"{kind} joint") for number, kind in parts if number)
-    return words if np.isfinite(arm.drives.torque_limit).all() else f"{words} without limits"
-
-
-def _us(played: Played) -> float:
-    return float(np.median(played.times_ns)) / 1000.0
-
-
-def _notes(cls: type[Law], make: Callable[[], Law], arm: Arm, plain_us: float) -> Iterator[str]:
+def _notes(cls: type[Law], make: Callable[[], Law], arm: Arm, tick_us: float) -> Iterator[str]:
     yield from notes_on(cls)
     for about in describe_options(cls):
         if not about.doc:
@@ -237,8 +149,8 @@ def _notes(cls: type[Law], make: Callable[[], Law], arm: Arm, plain_us: float) -
     if compiled is not None and fused(compiled) is None:
         yield "compiled() makes kernels anew for each run, so they are called one by one, which takes longer"
     period_us = 1e6 / CONTROL_HZ
-    if compiled is None and plain_us > period_us:
+    if tick_us > period_us:
         yield (
-            f"{plain_us:.0f} us a tick on this machine is more than the control period of {period_us:.0f} us "
+            f"{tick_us:.0f} us a tick on this machine is more than the control period of {period_us:.0f} us "
             f"at {CONTROL_HZ:.0f} Hz: runs take long, and a real controller could not keep up"
         )

@@ -138,7 +138,10 @@ class Stage:
             played.terms.append(kept)
         return played
 
-    def _formed(self, compiled: Compiled) -> bool:
+    def _formed(self, compiled: Any) -> bool:
+        if not isinstance(compiled, Compiled):
+            self.blame("kernels", f"compiled returns {type(compiled).__name__}")
+            return False
         own: Any = compiled.own
         if not isinstance(own, np.ndarray) or own.dtype != np.float64 or own.ndim != 2:
             shown = f"{own.dtype} of shape {own.shape}" if isinstance(own, np.ndarray) else repr(own)

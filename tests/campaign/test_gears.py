@@ -166,15 +166,18 @@ def test_the_time_of_the_leg_leaves_half_of_the_speed(one):
 
 
 def test_the_torque_speed_line_counts_while_the_motor_drives(one):
-    """Level (no gravity), so torque is J a: the share is the largest of |J a| over stall (1 - |v|/v0) on the way
-    up to speed; braking down again is free of the line."""
-    files = one("motor_stall_torque: 2.0, motor_no_load_speed: 4.0", axis="0 0 1")
-    arm = files.arm()
-    _, torques = used(arm, (0, 0, -G), quarter_motion(arm, 1.0, 0.0))
-    x = np.linspace(0, 0.5, 20001)
-    _, speed, acceleration = quintic(x)
-    share = INERTIA * acceleration * 2.0 / (2.0 * (1 - speed * 2.0 / 4.0))
-    assert torques == pytest.approx([share.max()], rel=1e-5)
+    """Level (no gravity), so torque is J a + B v: of the line stall (1 - |v|/v0) it takes the largest share on the
+    way up to speed; where the same torque brakes, the line does not count."""
+    motion_s, span, stall, no_load, viscous = 1.0, 2.0, 2.0, 4.0, 0.1
+    arm = one(
+        f"motor_stall_torque: {stall}, motor_no_load_speed: {no_load}, viscous: {viscous}", axis="0 0 1"
+    ).arm()
+    _, (share,) = used(arm, (0, 0, -G), quarter_motion(arm, motion_s, 0.0))
+    _, speed, acceleration = quintic(np.linspace(0, 1, 20001))
+    torque = INERTIA * acceleration * span / motion_s**2 + viscous * speed * span / motion_s
+    line = stall * (1 - speed * span / motion_s / no_load)
+    assert share == pytest.approx((torque / line).max(), rel=1e-5)
+    assert (-torque / line).max() < 0.9 * share  # what it would be if braking counted instead
     _, (stuck,) = used(
         arm, (0, 0, -G), quarter_motion(arm, 0.5, 0.0)
     )  # its peak, 7.5 rad/s, is beyond the line

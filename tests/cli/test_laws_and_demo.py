@@ -100,6 +100,7 @@ def test_a_law_that_does_not_finish_is_noted(
     assert checked.exit_code == 0
     noted = "note: trial.yaml:9: laws.push: does not finish motion swing even in nominal (hit-stop)"
     assert noted in checked.stderr
+    assert "note: trial.yaml:9: laws.push.law: Bad has no docstring" in checked.stderr
     assert "can't be told" in checked.stdout
 
 

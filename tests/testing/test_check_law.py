@@ -220,6 +220,13 @@ class WholeNumbers(Kernels):
         return Compiled(whole.torque, whole.own.astype(int), whole.model_term, whole.held_size)
 
 
+class Pair(Kernels):
+    """It hands out its kernels bare."""
+
+    def compiled(self):
+        return self.kernels
+
+
 class GrowingTerm(Spring):
     """Its model term grows."""
 
@@ -281,6 +288,7 @@ BROKEN = {
     StrayKernel: {"kernels": "rows of io besides TAU"},
     NoKernelOfTheTerm: {"compiled model term": "0 numbers by the kernel"},
     WholeNumbers: {"kernels": "own is int64"},
+    Pair: {"kernels": "compiled returns tuple"},
     GrowingTerm: {"shape": "model_term returns 2 numbers"},
     WrongSign: {"closed loop": "ran away"},
     Raising: {"raises": "no rails, please"},
