@@ -380,8 +380,8 @@ def gears(
 ) -> None:
     """Show what each gear ratio does to inertia, disturbance, damping and tracking, and what it costs.
 
-    A ratio G divides what the links are to a motor: their inertia by G^2, their torque by G. It costs speed, and
-    brings in the rotor's inertia, times G^2.
+    A ratio G divides what the links are to a motor: their inertia by G^2, their torque by G. It costs
+    speed, and brings in the rotor's inertia, times G^2.
     """
     with telling(as_json):
         from rigbench.cli.gears import tell_gears
