@@ -7,6 +7,7 @@
     ├── PluginError               the user's own code raised an exception; ends as a row, not as an exit
     │   ├── LawError              a law did
     │   └── SceneError            a scene did, or did what a scene must not
+    ├── RulesBroken               check_law found rules broken; carries every one; an AssertionError too
     ├── EngineError               the physics engine refused or died; ends as a row
     ├── Stopped                3  a campaign stopped before its end and can be resumed
     ├── ClusterLost            3  the machines that did its runs went away, and it can be resumed
@@ -26,6 +27,7 @@ from difflib import get_close_matches
 from pathlib import Path
 
 __all__ = [
+    "BrokenRule",
     "ClusterLost",
     "EngineError",
     "Fault",
@@ -33,6 +35,7 @@ __all__ = [
     "LawError",
     "PluginError",
     "RigbenchError",
+    "RulesBroken",
     "SceneError",
     "Stopped",
     "StoreBusy",
@@ -126,6 +129,31 @@ class SceneError(PluginError):
 
     def __str__(self) -> str:
         return f"scene '{self.name}': {self.summary}\n{self.trace}".rstrip()
+
+
+@dataclass(frozen=True)
+class BrokenRule:
+    """A rule for laws that one of them breaks: its name, what was found, what is expected, what to do."""
+
+    rule: str
+    found: str
+    expected: str
+    remedy: str
+
+    def __str__(self) -> str:
+        return f"{self.rule}: {self.found}\n    expected: {self.expected}\n    to do: {self.remedy}"
+
+
+class RulesBroken(RigbenchError, AssertionError):
+    """A law breaks rules; ``broken`` holds every one. Test runners take it for a failed assertion."""
+
+    def __init__(self, law: str, broken: Iterable[BrokenRule]) -> None:
+        self.law, self.broken = law, tuple(broken)
+        super().__init__(law, self.broken)
+
+    def __str__(self) -> str:
+        rules = "".join(f"\n  {rule}" for rule in self.broken)
+        return f"law {self.law} breaks {counted(len(self.broken), 'rule')}:{rules}"
 
 
 class EngineError(RigbenchError):

@@ -15,6 +15,8 @@ from rigbench.arm.arm import Arm, Drives
 ROOT = Path(__file__).resolve().parent.parent
 GRAVITY = (0.0, 0.0, -9.81)
 
+collect_ignore = ["plugin_example"]  # a package of its own: test_own_law.py installs it and runs its tests
+
 
 def build_drives(n: int, **given: Any) -> Drives:
     """Drives of n joints, ideal unless said; static is coulomb unless given."""

@@ -63,19 +63,3 @@ def test_yaml_of_the_readme_parses():
     """Every YAML block is YAML."""
     for block in blocks(README, "yaml"):
         assert isinstance(yaml.safe_load(block), dict)
-
-
-def test_the_readmes_law_works(tmp_path):
-    """The law that the README shows loads from its file and runs."""
-    from rigbench.laws.options import options_model
-    from rigbench.laws.registry import choose, load_file_law
-    from rigbench.motion.via import ViaMotion
-    from rigbench.rig import Rates, Run, simulate
-    from rigbench.rig.run import ArmFiles
-
-    (tmp_path / "my_law.py").write_text(blocks(README, "python")[0])
-    cls, files = load_file_law(tmp_path / "my_law.py", "Spring")
-    choice = choose("my_law.py:Spring", options_model(cls)(stiffness=400.0), files)
-    motion = ViaMotion(points=((0.0, 0.0), (0.2, 0.1)), leg_s=0.3, rest_s=0.1)
-    arm = ArmFiles.read(ROOT / "robots_demo" / "planar2" / "arm.yaml")
-    assert simulate(Run(arm, choice, motion, Rates(), (0.0, 0.0), 0.5)).outcome == "finished"

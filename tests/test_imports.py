@@ -17,6 +17,7 @@ ROOMS = (
     "motion",
     "laws",
     "rig",
+    "testing",
     "scores",
     "campaign",
     "report",

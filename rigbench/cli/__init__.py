@@ -370,6 +370,40 @@ def audit(
         audit_arm(arm, output, as_json)
 
 
+@app.command(epilog="Example: rigbench gears robots_demo/tray6/arm.yaml --ratios 1,10,50,100 -o gears.png")
+def gears(
+    arm: Annotated[str, typer.Argument(metavar="ARM", help="the arm file (YAML)")],
+    ratios: Annotated[
+        str | None,
+        typer.Option(metavar="1,10,50", help="gear ratios, split by commas; from 1 to 200 if left out"),
+    ] = None,
+    joint: Annotated[
+        list[str] | None,
+        typer.Option(metavar="NAME", help="of this joint alone; may be given several times; all if left out"),
+    ] = None,
+    leg: Annotated[
+        float | None,
+        typer.Option(
+            metavar="SECONDS", help="time of the motion's leg; half of the speed limits is taken if left out"
+        ),
+    ] = None,
+    output: Annotated[
+        str | None,
+        typer.Option("--output", "-o", help="draw it too: a .png, .svg or .pdf file"),
+    ] = None,
+    as_json: Json = False,
+) -> None:
+    """Show what each gear ratio does to inertia, disturbance, damping and tracking, and what it costs.
+
+    A ratio G divides what the links are to a motor: their inertia by G^2, their torque by G. It costs
+    speed, and brings in the rotor's inertia, times G^2.
+    """
+    with telling(as_json):
+        from rigbench.cli.gears import tell_gears
+
+        tell_gears(arm, ratios, tuple(joint or ()), leg, output, as_json)
+
+
 @app.command(epilog="Example: rigbench needs results/needs-tray6.sqlite -o needs.png")
 def needs(
     store: StoreFile,

@@ -23,6 +23,8 @@ def print_laws(name: str | None, as_json: bool) -> None:
             print_json(_described(law))
         else:
             show(_sheet(law))
+            for noted in law.notes:
+                say(f"note: {noted}")
         return
     if as_json:
         broken = [{"name": name, "reason": reason} for name, reason in registry.broken]
@@ -32,6 +34,8 @@ def print_laws(name: str | None, as_json: bool) -> None:
     for law in registry.laws.values():
         first = _doc(law).partition("\n")[0]
         show(f"{law.name:<{widest}}  {first}  ({law.package} {law.version})")
+        for noted in law.notes:
+            say(f"note: {law.name} ({law.package}): {noted}")
     for broken_name, reason in registry.broken:
         say(f"{broken_name} is registered but can't be used: {reason}")
 
@@ -49,7 +53,7 @@ def _named(name: str, registry: Registry) -> Registered:
 
 
 def _doc(law: Registered) -> str:
-    return inspect.getdoc(law.cls) or ""
+    return inspect.cleandoc(law.cls.__doc__ or "")
 
 
 def _described(law: Registered) -> dict[str, Any]:
@@ -60,6 +64,7 @@ def _described(law: Registered) -> dict[str, Any]:
         "version": law.version,
         "doc": _doc(law),
         "options": options,
+        "notes": list(law.notes),
     }
 
 
@@ -76,5 +81,17 @@ def _sheet(law: Registered) -> str:
 def _option(about: OptionAbout) -> list[str]:
     kind = ", ".join(about.choices) if about.choices else about.type
     unit = f" [{about.unit}]" if about.unit else ""
+    bounds = [
+        words
+        for words in (
+            about.above is not None and f"above {about.above:g}",
+            about.at_least is not None and f"at least {about.at_least:g}",
+            about.per_joint and "one for each joint",
+        )
+        if words
+    ]
     default = "none" if about.default is None else str(about.default)
-    return [f"  {about.name}: {kind}{unit}, default {default}", f"      {about.doc}"]
+    return [
+        f"  {', '.join([f'{about.name}: {kind}{unit}', *bounds])}, default {default}",
+        f"      {about.doc}",
+    ]

@@ -9,6 +9,7 @@ from typing import Any
 from rigbench.errors import InputFaults, LawError, nearest
 from rigbench.experiment.findings import Findings, entries
 from rigbench.experiment.schema import LawKeys
+from rigbench.laws.form import notes_on
 from rigbench.laws.law import Law
 from rigbench.laws.options import options_model, per_joint_options
 from rigbench.laws.registry import LawChoice, choose, load_file_law, registered
@@ -33,6 +34,8 @@ def law_choices(
         if found is None:
             continue
         cls, files = found
+        for noted in notes_on(cls):
+            findings.note(("laws", name, "law"), noted)
         given = dict(keys.model_extra or {})
         model = options_model(cls)  # type: ignore[arg-type]  # mypy takes the instances' __hash__ for the class's
         options, faults = validate(findings.document, model, ("laws", name), given)

@@ -114,7 +114,9 @@ class Law:
         super().__init_subclass__(**kwargs)
         if "__init__" in cls.__dict__:
             raise TypeError(f"law {cls.__name__} must not define __init__: options are class attributes")
+        documented = cls.__doc__
         dataclass(kw_only=True, eq=False)(cls)
+        cls.__doc__ = documented  # a data class without a docstring is given its signature for one
 
     @classmethod
     def conflict(cls, given: frozenset[str]) -> str | None:

@@ -12,7 +12,7 @@ from pydantic import BaseModel, ConfigDict, Field
 
 from rigbench.laws.law import Law
 
-__all__ = ["OptionAbout", "describe_options", "options_model", "per_joint_options"]
+__all__ = ["OptionAbout", "describe_options", "option_fields", "options_model", "per_joint_options"]
 
 
 @dataclasses.dataclass(frozen=True)
@@ -25,6 +25,9 @@ class OptionAbout:
     unit: str
     doc: str
     choices: tuple[str, ...]
+    above: float | None
+    at_least: float | None
+    per_joint: bool
 
 
 def option_fields(cls: type[Law]) -> tuple[dataclasses.Field[Any], ...]:
@@ -105,6 +108,8 @@ def describe_options(cls: type[Law]) -> tuple[OptionAbout, ...]:
     found = []
     for field in option_fields(cls):
         default = None if field.default is dataclasses.MISSING else field.default
+        if field.default_factory is not dataclasses.MISSING:
+            default = field.default_factory()
         about = field.metadata
         found.append(
             OptionAbout(
@@ -114,6 +119,9 @@ def describe_options(cls: type[Law]) -> tuple[OptionAbout, ...]:
                 about.get("unit", ""),
                 about.get("doc", ""),
                 tuple(about.get("choices", ())),
+                about.get("above"),
+                about.get("at_least"),
+                bool(about.get("per_joint")),
             )
         )
     return tuple(found)

@@ -52,23 +52,28 @@ class Plugin(Generic[Found]):
 
 
 def load_points(
-    points: tuple[EntryPoint, ...], check: Callable[[object], Found]
+    points: tuple[EntryPoint, ...], check: Callable[[object], Found], own: str = ""
 ) -> tuple[dict[str, Plugin[Found]], tuple[tuple[str, str], ...]]:
     """Load entry points; return what ``check`` lets pass, by name, and names and reasons of the others.
 
     ``check`` raises TypeError, in words, for what is no such plug-in. Of two with one name, both are
-    refused.
+    refused, unless one is of the package ``own``, which keeps it.
     """
     loaded: dict[str, Plugin[Found]] = {}
     broken: list[tuple[str, str]] = []
     for name in sorted({point.name for point in points}):
         same = [point for point in points if point.name == name]
-        if len(same) > 1:
+        ours = [point for point in same if _package(point)[0] == own]
+        if len(same) > 1 and len(ours) != 1:
             who = " and ".join(sorted(_package(point)[0] for point in same))
             broken.append((name, f"the name is registered by more than one package: {who}"))
             continue
+        if len(same) > 1:
+            others = sorted(_package(point)[0] for point in same if point not in ours)
+            broken += [(f"{name} of {other}", f"the name is {own}'s own; take another") for other in others]
+        (point,) = ours if len(same) > 1 else same
         try:
-            loaded[name] = Plugin(check(same[0].load()), *_package(same[0]))
+            loaded[name] = Plugin(check(point.load()), *_package(point))
         except Exception as problem:  # a plugin may raise anything while it is imported
             broken.append((name, f"{type(problem).__name__}: {problem}"))
     return loaded, tuple(broken)
@@ -90,11 +95,20 @@ def digest_of(files: Files) -> str:
 
 @cache
 def package_digest(module_name: str) -> str:
-    """Digest all sources of the package (or the one module) that an imported module lives in."""
+    """Digest all sources that an imported module may be made of.
+
+    That is its whole package, or the one module if it stands alone; of this package's own, the room.
+    """
     module = sys.modules[module_name]
     path = Path(module.__file__ or "")
-    sources = sorted(path.parent.glob("**/*.py")) if module.__package__ else [path]
-    return digest_of(tuple((str(p.relative_to(path.parent)), p.read_text("utf-8")) for p in sources))
+    if not module.__package__:
+        return digest_of(((path.name, path.read_text("utf-8")),))
+    folder = path.parent
+    if not module_name.startswith("rigbench."):
+        folder = path.parents[module.__package__.count(".")]
+    return digest_of(
+        tuple((str(p.relative_to(folder)), p.read_text("utf-8")) for p in sorted(folder.glob("**/*.py")))
+    )
 
 
 def collect(path: Path) -> Files:

@@ -13,23 +13,28 @@ from typing import Any
 from pydantic import BaseModel
 
 from rigbench.errors import InputFaults, LawError
+from rigbench.laws.form import check_class, notes_on
 from rigbench.laws.law import Law
-from rigbench.laws.options import options_model
 from rigbench.laws.plugins import Files, collect, digest_of, import_files, load_points, package_digest
 
-__all__ = ["LawChoice", "Registered", "Registry", "check_class", "choose", "load_file_law", "registered"]
+__all__ = ["LawChoice", "Registered", "Registry", "choose", "load_file_law", "registered"]
 
 GROUP = "rigbench.laws"
 
 
+OWN = "rigbench"
+"""The package whose laws keep their names, whoever else registers them."""
+
+
 @dataclass(frozen=True)
 class Registered:
-    """A law as the registry knows it."""
+    """A law as the registry knows it; ``notes`` say what it would be the better for."""
 
     name: str
     cls: type[Law]
     package: str
     version: str
+    notes: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -40,29 +45,6 @@ class Registry:
     broken: tuple[tuple[str, str], ...]
 
 
-def check_class(cls: object) -> type[Law]:
-    """Return ``cls`` if it is a complete law; TypeError says what is missing.
-
-    Signatures are checked here, when a law is registered, not when it is first called in a run.
-    """
-    if not (inspect.isclass(cls) and issubclass(cls, Law)):
-        raise TypeError(f"{cls!r} is not a subclass of rigbench.laws.Law")
-    wanted = {"start": 2, "torque": 6, "model_term": 5, "compiled": 1}
-    for name, count in wanted.items():
-        given = inspect.signature(getattr(cls, name)).parameters
-        if len(given) != count:
-            theirs = ", ".join(inspect.signature(getattr(Law, name)).parameters)
-            raise TypeError(f"{cls.__name__}.{name} takes ({', '.join(given)}); expected ({theirs})")
-    for name in ("start", "torque"):
-        if getattr(cls, name) is getattr(Law, name):
-            raise TypeError(f"{cls.__name__} does not define '{name}'")
-    try:
-        options_model(cls)  # type: ignore[arg-type]  # mypy takes the instances' __hash__ for the class's
-    except Exception as problem:  # an annotation can be anything; what it is told in words
-        raise TypeError(f"{cls.__name__}: its options can't be read: {problem}") from None
-    return cls
-
-
 @cache
 def registered() -> Registry:
     """Load every law of the entry-point group ``rigbench.laws``; a broken one does not stop the others."""
@@ -70,9 +52,15 @@ def registered() -> Registry:
 
 
 def registry_of(points: tuple[EntryPoint, ...]) -> Registry:
-    """Build the registry of the given entry points; of two with one name, both are refused."""
-    loaded, broken = load_points(points, check_class)
-    laws = {name: Registered(name, p.found, p.package, p.version) for name, p in loaded.items()}
+    """Build the registry of the given entry points.
+
+    Of two with one name both are refused, for a run could be of either; a name of this package's own stays
+    its own.
+    """
+    loaded, broken = load_points(points, check_class, OWN)
+    laws = {
+        name: Registered(name, p.found, p.package, p.version, notes_on(p.found)) for name, p in loaded.items()
+    }
     return Registry(laws, broken)
 
 

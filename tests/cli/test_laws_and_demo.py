@@ -100,6 +100,7 @@ def test_a_law_that_does_not_finish_is_noted(
     assert checked.exit_code == 0
     noted = "note: trial.yaml:9: laws.push: does not finish motion swing even in nominal (hit-stop)"
     assert noted in checked.stderr
+    assert "note: trial.yaml:9: laws.push.law: Bad has no docstring" in checked.stderr
     assert "can't be told" in checked.stdout
 
 
@@ -111,11 +112,36 @@ def test_laws_lists_every_registered_law(call: Callable[..., Result]) -> None:
     assert {"independent-joint", "gravity-compensated", "torque-feedforward", "computed-torque"} <= set(names)
     sheet = call("laws", "computed-torque").stdout
     assert "tau = (M(q) + Jr)" in sheet
-    assert "natural_hz: number [Hz], default 5.0" in sheet
+    assert "natural_hz: number [Hz], above 0, default 5.0" in sheet
     assert "friction: none, viscous, full, default full" in sheet
     document = json.loads(call("laws", "--json").stdout)
     assert [law["name"] for law in document["laws"]] == names
     assert document["broken"] == []
+
+
+def test_a_law_without_a_docstring_is_listed_with_a_note(
+    call: Callable[..., Result], monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """It is listed and described; that it has no words of its own is said beside the result."""
+    from rigbench.laws import Law, option
+    from rigbench.laws.form import notes_on
+    from rigbench.laws.registry import Registered, Registry
+
+    class Bare(Law):
+        gain: float = option(1.0, "N m/rad", "of every joint", at_least=0.5)
+
+    bare = Registered("bare", Bare, "some-package", "2.1", notes_on(Bare))
+    monkeypatch.setattr(
+        import_module("rigbench.cli.laws"), "registered", lambda: Registry({"bare": bare}, ())
+    )
+    listed = call("laws")
+    assert listed.stdout == "bare    (some-package 2.1)\n"
+    assert "note: bare (some-package): Bare has no docstring" in listed.stderr
+    named = call("laws", "bare")
+    assert "gain: number [N m/rad], at least 0.5, default 1.0" in named.stdout
+    assert "note: Bare has no docstring" in named.stderr
+    (law,) = json.loads(call("laws", "--json").stdout)["laws"]
+    assert (law["version"], law["doc"], len(law["notes"])) == ("2.1", "", 1)
 
 
 def test_schema_prints_what_an_editor_reads(call: Callable[..., Result]) -> None:

@@ -67,6 +67,102 @@ def test_a_broken_plugin_is_named_and_stops_no_other():
     assert "more than one package" in reasons["twice"]
 
 
+def test_a_name_of_our_own_is_kept(monkeypatch):
+    """Another package that registers a built-in law's name is named and passed over; the law stays."""
+    from rigbench.laws import plugins
+
+    ours = EntryPoint("computed-torque", "rigbench.laws.computed_torque:ComputedTorque", "rigbench.laws")
+    theirs = EntryPoint(
+        "computed-torque", "rigbench.laws.independent_joint:IndependentJoint", "rigbench.laws"
+    )
+    packages = {ours.value: ("rigbench", "1"), theirs.value: ("elsewhere", "2")}
+    monkeypatch.setattr(plugins, "_package", lambda point: packages[point.value])
+    found = registry_of((theirs, ours))
+    assert found.laws["computed-torque"].cls.__name__ == "ComputedTorque"
+    assert found.broken == (("computed-torque of elsewhere", "the name is rigbench's own; take another"),)
+
+
+FORM = """
+from rigbench.laws import Law, option
+class A(Law):
+    def start(self, setup): pass
+    def torque(self, t, q, v, ref, held): return 0 * q
+"""
+
+
+@pytest.mark.parametrize(
+    ("old", "new", "words"),
+    [
+        ("self, setup", "self, arm", "A.start takes (self, arm); expected (self, setup)"),
+        ("t, q, v, ref, held", "q, t, v, ref, held", "A.torque takes (self, q, t, v, ref, held); expected (self, t, q, v, ref, held)"),
+        ("ref, held", "ref, *, held", "A.torque takes"),
+        ("ref, held", "ref, held, more=None", "A.torque takes"),
+        ("self, t, q, v, ref, held", "*args", "A.torque takes (*args)"),
+        ("    def start", "    model_term = 3\n    def start", "A.model_term is 3; expected a method (self, t, q, v, ref)"),
+        ("    def start", "    def model_term(self, t, q): pass\n    def start", "A.model_term takes (self, t, q); expected (self, t, q, v, ref)"),
+        ("    def start", "    @staticmethod\n    def compiled(): pass\n    def start", "A.compiled takes (); expected (self)"),
+        ("    def start", "    law: str = option('x')\n    def start", "an option 'law'"),
+    ],
+)  # fmt: skip
+def test_names_and_counts_are_checked_at_registration(tmp_path, old, new, words):
+    """A method that takes other things, in another order or number, is told before any run."""
+    path = tmp_path / "law.py"
+    path.write_text(FORM.replace(old, new, 1))
+    with pytest.raises(InputFaults) as caught:
+        load_file_law(path, "A")
+    assert words in str(caught.value)
+
+
+def test_all_that_is_wrong_with_the_form_comes_at_once(tmp_path):
+    """Three faults in one sentence; an underscore before an unused name is none."""
+    path = tmp_path / "law.py"
+    path.write_text(
+        "from rigbench.laws import Law\n"
+        "class A(Law):\n"
+        "    def start(self, arm): pass\n"
+        "    def model_term(self, _t, _q, v, ref): pass\n"
+        "    def compiled(self, more): pass\n"
+    )
+    with pytest.raises(InputFaults) as caught:
+        load_file_law(path, "A")
+    told = str(caught.value)
+    assert [name in told for name in ("A.start", "'torque'", "A.compiled", "model_term")] == [True] * 3 + [
+        False
+    ]
+
+
+def test_a_law_without_a_docstring_is_noted():
+    """It is registered, with a note; its signature is not taken for a docstring."""
+    from rigbench.laws import Law, option
+    from rigbench.laws.form import notes_on
+
+    class Bare(Law):
+        gain: float = option(1.0)
+
+    class Told(Bare):
+        """tau = 0."""
+
+    assert Bare.__doc__ is None
+    assert "Bare has no docstring" in notes_on(Bare)[0]
+    assert notes_on(Told) == ()
+
+
+def test_the_digest_of_a_package_covers_all_of_it(tmp_path, monkeypatch):
+    """A change in any file of the package that a law comes from changes the key of its runs."""
+    from rigbench.laws.plugins import package_digest
+
+    monkeypatch.syspath_prepend(tmp_path)
+    digests = set()
+    for number, texts in enumerate((("a = 1", "b = 1"), ("a = 1", "b = 2"), ("a = 2", "b = 1"))):
+        name = f"digested{number}"
+        (tmp_path / name / "laws").mkdir(parents=True)
+        for file, text in zip(("__init__.py", "laws/__init__.py", "laws/one.py"), ("", *texts), strict=True):
+            (tmp_path / name / file).write_text(text)
+        __import__(f"{name}.laws.one")
+        digests.add(package_digest(f"{name}.laws.one"))
+    assert len(digests) == 3
+
+
 def test_options_are_strict_and_bounded():
     """Unknown names, texts for numbers, wrong signs, nan and unknown choices are refused."""
     model = options_model(registered().laws["torque-feedforward"].cls)
@@ -87,6 +183,8 @@ def test_options_describe_themselves():
     assert about["natural_hz"].default == 5.0
     assert about["friction"].choices == ("none", "viscous", "full")
     assert about["kp"].type == "list of numbers"
+    assert about["kp"].per_joint
+    assert (about["natural_hz"].above, about["damping"].at_least) == (0, 0)
     assert all(option.doc for option in about.values())
     assert per_joint_options(cls) == ("kp", "kd")
 

@@ -1,0 +1,1 @@
+"""Control laws of a bakery."""
