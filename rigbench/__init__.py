@@ -14,6 +14,7 @@ __all__ = [
     "draw_matrix",
     "gains",
     "gate",
+    "gears",
     "load_experiment",
     "needs",
     "open_store",

@@ -3,6 +3,7 @@ from rigbench.calls import audit as audit
 from rigbench.calls import draw_matrix as draw_matrix
 from rigbench.calls import gains as gains
 from rigbench.calls import gate as gate
+from rigbench.calls import gears as gears
 from rigbench.calls import needs as needs
 from rigbench.calls import run as run
 from rigbench.calls import trace as trace
@@ -20,6 +21,7 @@ __all__ = [
     "draw_matrix",
     "gains",
     "gate",
+    "gears",
     "load_experiment",
     "needs",
     "open_store",

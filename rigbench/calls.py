@@ -15,6 +15,8 @@ from rigbench.campaign.audit import Audit
 from rigbench.campaign.audit import audit as audit_files
 from rigbench.campaign.campaign import run_campaign, run_first
 from rigbench.campaign.find import run_by_key
+from rigbench.campaign.gears import RATIOS, Gears
+from rigbench.campaign.gears import gears as gears_of
 from rigbench.campaign.part import Part
 from rigbench.campaign.progress import Progress
 from rigbench.campaign.reading import Reader
@@ -33,7 +35,18 @@ from rigbench.scores.needs import LawNeeds, needs_of
 from rigbench.scores.needs_design import NeedsDesign
 from rigbench.scores.results import Results, Tolerance
 
-__all__ = ["audit", "draw_matrix", "gains", "gate", "needs", "run", "trace", "worst_case", "write_report"]
+__all__ = [
+    "audit",
+    "draw_matrix",
+    "gains",
+    "gate",
+    "gears",
+    "needs",
+    "run",
+    "trace",
+    "worst_case",
+    "write_report",
+]
 
 File = str | Path
 
@@ -129,6 +142,16 @@ def trace(store: File, run: str) -> Replay:
 def audit(arm: File) -> Audit:
     """Measure whether the engine plays the arm of an arm file, and which physics_hz it needs."""
     return audit_files(ArmFiles.read(arm))
+
+
+def gears(arm: File, joints: Sequence[str] = (), ratios: Sequence[float] = RATIOS) -> Gears:
+    """Work out what each gear ratio does to the joints of an arm file (all where none is named)."""
+    files = ArmFiles.read(arm)
+    known = files.arm().joints
+    for joint in joints:
+        if joint not in known:
+            raise InputFaults.one(arm, "joints", f"there is no joint '{joint}'", f"one of {', '.join(known)}")
+    return gears_of(files, [joint for joint in known if joint in joints or not joints], ratios)
 
 
 def _studied(store: Reader, name: str) -> Studied:

@@ -92,6 +92,15 @@ def test_pictures_pages_gates_and_traces(campaign, tmp_path):
     assert len(replayed.log.t) == 251
 
 
+def test_gears_and_audit_take_an_arm_file():
+    """As their commands do; an unknown joint is a fault."""
+    arm = ROOT / "robots_demo/planar2/arm.yaml"
+    found = rigbench.gears(arm, ["elbow"], ratios=(1.0, 10.0))
+    assert [joint.joint for joint in found.joints] == ["elbow"]
+    with pytest.raises(InputFaults, match="no joint 'knee'"):
+        rigbench.gears(arm, ["knee"])
+
+
 def test_what_was_not_asked_is_said(campaign):
     """A study that the experiment doesn't have, and names that aren't there, are faults with their address."""
     _, store, _ = campaign

@@ -72,8 +72,8 @@ def find_worst(
     """Return the worst point found in [-1, 1]^N, rounded to 1e-4, and its badness.
 
     ``ask`` is given whole generations at once, and ``trials`` points at most. ``starts`` are looked at
-    first. It ends early where a point is infinitely bad, and when every corner next to a point of the evolution
-    was climbed from. The same arguments and answers give the same points again. ValueError below
+    first. It ends early where a point is infinitely bad, and when every corner next to a point of the
+    evolution was climbed from. The same arguments and answers give the same points again. ValueError below
     LEAST_TRIALS.
 
     Differential evolution: Storn and Price 1997, as scipy has it (best1bin), a generation a batch.

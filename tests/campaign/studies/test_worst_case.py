@@ -197,6 +197,19 @@ def test_a_law_that_holds_takes_no_halvings(tmp_path: Path, study: WorstCase) ->
         assert {one.level for one in worst_found(stored, TOLERANCE)} == {0.2, 0.4}
 
 
+def test_a_level_begins_with_what_was_worst_below(tmp_path: Path, study: WorstCase) -> None:
+    """The first machines run at a level are among them those that were found worst at the level before."""
+    with searched(replace(study, levels=(0.2, 0.4)), tmp_path / "s.sqlite", work_for(study)) as store:
+        stored = store.study("worst_case")
+        assert stored is not None
+        below, above = (
+            [record for record in stored.records if record.row.level == level] for level in (0.2, 0.4)
+        )
+        worst = max(below, key=lambda record: record.row.scores["tool_peak_mm"])
+        first = above[0]
+        assert store.kept(first.key).run.directions == store.kept(worst.key).run.directions
+
+
 def test_it_waits_for_all_draws(tmp_path: Path, study: WorstCase) -> None:
     """Nothing of it is run where the first draws alone are asked for."""
     with searched(study, tmp_path / "s.sqlite", work_for(study), part=Part(draws=1)) as store:
