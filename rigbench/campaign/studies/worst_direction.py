@@ -22,7 +22,7 @@ class Departure:
     """A parameter's u in the worst machine found, and the ``difference`` that it makes by itself.
 
     In shares of a limit, between two machines that were run and differ in its sign alone: of all such pairs
-    the one with the worst machine. It is inf where one of the two did not finish, None where there is no pair.
+    the one with the worst machine. inf where one of the two did not finish, None where there is no pair.
     """
 
     parameter: str
