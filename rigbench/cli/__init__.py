@@ -288,8 +288,8 @@ def report(
 ) -> None:
     """Write all that is stored as one HTML page: decision, matrix, details of each cell, curves, experiment.
 
-    The page needs no network, and asks for nothing. The worst and the median run of each cell are replayed for
-    the tool's error over time, law by law from the best: a law of your own runs as your code.
+    The page needs no network, and asks for nothing. The worst and the median run of each cell are replayed
+    for the tool's error over time, law by law from the best: a law of your own runs as your code.
     """
     with telling(as_json):
         from rigbench.cli.report import write_report
