@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import datetime
 import time
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from pathlib import Path
 
 from rigbench.arm.files import ArmFiles
@@ -25,11 +25,11 @@ from rigbench.campaign.store import Store
 from rigbench.campaign.studied import Studied
 from rigbench.campaign.studies.tune import GainsFound, gains_found
 from rigbench.campaign.studies.worst_case import WorstFound, worst_found
-from rigbench.errors import InputFaults
+from rigbench.errors import Fault, InputFaults, nearest
 from rigbench.experiment import Experiment
 from rigbench.report.matrix import matrix_picture
 from rigbench.report.page.page import gathered, write_page
-from rigbench.report.view import SHARE, View
+from rigbench.report.view import SHARE, SHOWS, View
 from rigbench.scores.gating import Check, judge
 from rigbench.scores.needs import LawNeeds, needs_of
 from rigbench.scores.needs_design import NeedsDesign
@@ -66,23 +66,53 @@ def run(
     As ``rigbench run``: ``store`` is results/<the file's stem>.sqlite in the current folder by default;
     ``jobs`` worker processes (None: one a core; 0: none, and no limits on time and memory); the first
     ``draws`` of every cell alone; ``seconds`` after which no run is begun; laws to be run ``again``. A
-    signal or the end of the time raises Stopped, with all that was done stored.
+    signal or the end of the time raises Stopped, with all that was done stored. InputFaults for what can't
+    be had of this.
     """
+    if faults := list(_wrong(experiment, jobs, draws, again)):
+        raise InputFaults(faults)
     path = Path("results") / f"{Path(experiment.path).stem}.sqlite" if store is None else Path(store)
     part = Part(draws, None if seconds is None else time.monotonic() + seconds)
     named = None if store is None else str(store)
     plan = experiment.plan(named)
     with Store.open_for_writing(path, plan) as opened:
+        for law in again:
+            opened.studies_anew(law)
         if experiment.tune is not None:
-            run_first(plan, opened, jobs, on_progress, part=part)
-            found = experiment.tune.found(opened.row_of)
+            if (found := experiment.tune.found(opened.row_of)) is None:
+                run_first(plan, opened, jobs, on_progress, part=part)
+                found = experiment.tune.found(opened.row_of)
             plan = plan if found is None else experiment.tuned(found).plan(named)
         run_campaign(plan, opened, jobs, on_progress, again=again, part=part)
         return opened.results()
 
 
+def _wrong(
+    experiment: Experiment, jobs: int | None, draws: int | None, again: Sequence[str]
+) -> Iterator[Fault]:
+    """Yield what of the wishes for a run can't be had."""
+    file, laws = experiment.path, tuple(experiment.laws)
+    for law in again:
+        if law not in laws:
+            known = f"one of {', '.join(laws)}"
+            yield Fault(file, None, "again", f"there is no law '{law}'", known, nearest(law, laws))
+    if draws is not None and not 1 <= draws <= experiment.draws:
+        most = f"1 to the {experiment.draws} declared"
+        yield Fault(file, None, "draws", f"{draws} are wished for", most)
+    if jobs is not None and jobs < 0:
+        yield Fault(file, None, "jobs", f"{jobs} are wished for", "0 or more")
+
+
 def draw_matrix(results: Results, picture: File, show: str = SHARE, score: str = "") -> None:
-    """Draw the results matrix as .png, .svg or .pdf; ``show`` share, median, p95 or ratio, of ``score``."""
+    """Draw the results matrix as .png, .svg or .pdf; ``show`` share, median, p95 or ratio, of ``score``.
+
+    InputFaults for another ``show``, and for a score that no cell of the results has.
+    """
+    scores = list(dict.fromkeys(name for cell in results.cells for name in cell.measures))
+    for what, name, known in (("show", show, SHOWS), ("score", score, scores)):
+        if name and known and name not in known:
+            expected, near = f"one of {', '.join(known)}", nearest(name, known)
+            raise InputFaults([Fault(str(picture), None, what, f"there is no '{name}'", expected, near)])
     matrix_picture(results, Path(picture), datetime.date.today(), View(show, score))
 
 

@@ -21,7 +21,7 @@ survives pickling on its way out of a worker.
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from difflib import get_close_matches
 from pathlib import Path
@@ -42,6 +42,7 @@ __all__ = [
     "StoreError",
     "StoreForeign",
     "counted",
+    "listed",
     "nearest",
 ]
 
@@ -55,6 +56,11 @@ def nearest(name: str, valid: Iterable[str]) -> str | None:
 def counted(number: int, noun: str) -> str:
     """Return '1 run', '2 runs'."""
     return f"{number} {noun}" if number == 1 else f"{number} {noun}s"
+
+
+def listed(names: Sequence[str]) -> str:
+    """Return 'a', 'a and b', 'a, b and c'."""
+    return " and ".join(filter(None, (", ".join(names[:-1]), *names[-1:])))
 
 
 @dataclass(frozen=True)
@@ -168,17 +174,25 @@ class EngineError(RigbenchError):
 
 
 class Stopped(RigbenchError):
-    """A campaign stopped before its end, and ``why``; what is done is stored."""
+    """A campaign stopped before its end, and ``why``; what is done is stored.
+
+    ``planned`` has the runs that its studies have asked for so far, of which those in ``unfinished`` will
+    ask for more.
+    """
 
     exit_code = 3
 
-    def __init__(self, done: int, planned: int, resume: str, why: str = "as asked") -> None:
+    def __init__(
+        self, done: int, planned: int, resume: str, why: str = "as asked", unfinished: tuple[str, ...] = ()
+    ) -> None:
         self.done, self.planned, self.resume, self.why = done, planned, resume, why
-        super().__init__(done, planned, resume, why)
+        self.unfinished = unfinished
+        super().__init__(done, planned, resume, why, unfinished)
 
     def __str__(self) -> str:
+        left = f" and {listed(self.unfinished)} not finished" if self.unfinished else ""
         return (
-            f"stopped {self.why}, with {self.done} of {self.planned} runs stored; "
+            f"stopped {self.why}, with {self.done} of {self.planned} runs stored{left}; "
             f"nothing is lost: '{self.resume}' goes on from here"
         )
 

@@ -117,6 +117,22 @@ def test_what_was_not_asked_is_said(campaign):
         rigbench.gate(store, ["pd"], condition="all at 7")
 
 
+def test_wishes_that_can_not_be_had_come_all_at_once(campaign, tmp_path):
+    """As the command tells them, before anything is run; a matrix of what is not there is none."""
+    experiment, _, results = campaign
+    with pytest.raises(InputFaults) as caught:
+        rigbench.run(experiment, tmp_path / "none.sqlite", jobs=-1, draws=5, again=["pdd"])
+    assert [(fault.key, fault.near) for fault in caught.value.faults] == [
+        ("again", "pd"),
+        ("draws", None),
+        ("jobs", None),
+    ]
+    assert not list(tmp_path.iterdir())
+    for wrong in ({"show": "meen"}, {"show": "p95", "score": "tool_peek_mm"}):
+        with pytest.raises(InputFaults, match="did you mean"):
+            rigbench.draw_matrix(results, tmp_path / "m.png", **wrong)
+
+
 def test_the_readmes_calls_run_as_they_stand(tmp_path, monkeypatch):
     """In a folder with the demo's experiments."""
     text = (ROOT / "README.md").read_text("utf-8")

@@ -44,7 +44,8 @@ def run_campaign(
 
     A study that comes first is put down with what is known of it, no more: see :func:`run_first`. The
     plan's studies follow, each with rounds of runs until it is finished; not where a part of the draws is
-    asked for, since what a study asks next depends on all of them.
+    asked for, since what a study asks next depends on all of them: then those that were begun before are
+    put down with what is known of them.
 
     The first SIGINT or SIGTERM lets the runs in hand end and stores them, the second drops them; ``on_stop``
     is called at the first, from within the signal's handler. When the part's time is up, the runs in
@@ -53,6 +54,7 @@ def run_campaign(
     runs of the host's trouble, and for draws that are all one and the same run). StoreError if the
     disk refuses.
     """
+    before = store.begun()
     store.record_plan(plan)
     if plan.first is not None:
         record_known(plan.first, store)
@@ -65,7 +67,7 @@ def run_campaign(
     tracker = Tracker(plan, part, missing, store.settled_troubles(part.draws), tally)
     tracker.settle(settling)
     report = on_progress or (lambda _: None)
-    studying = None
+    studying: list[Studying] = []
     with stop_signals(part.ends, on_stop) as stop:
         doing = Doing(store, stop, jobs, executor)
         report(tracker.progress())
@@ -77,14 +79,18 @@ def run_campaign(
             report(tracker.progress())
         for study in plan.studies if part.draws is None else ():
             if not stop.why:
-                studying = Studying(study, store, doing)
-                studying.go(report)
+                studying.append(Studying(study, store, doing))
+                studying[-1].go(report)
+    if part.draws is not None and not stop.why:
+        for study in plan.studies:
+            if study.name in before:
+                record_known(study, store)
     counts = store.counts()
-    done, planned = counts.done + counts.failed, counts.planned
-    if studying is not None:
-        done, planned = done + studying.done, planned + studying.asked
-    if stop.why and (tracker.left or (studying is not None and studying.done < studying.asked)):
-        raise Stopped(done, planned, part.resume(plan.resume), stop.why)
+    unfinished = store.unfinished() if part.draws is None else ()
+    if stop.why and (tracker.left or unfinished):
+        done = counts.done + counts.failed + sum(study.done for study in studying)
+        planned = counts.planned + sum(study.asked for study in studying)
+        raise Stopped(done, planned, part.resume(plan.resume), stop.why, unfinished)
     return counts
 
 
@@ -108,8 +114,9 @@ def run_first(
     with stop_signals(part.ends, on_stop) as stop:
         studying = Studying(plan.first, store, Doing(store, stop, jobs, executor))
         studying.go(on_progress or (lambda _: None))
-    if stop.why and studying.done < studying.asked:
-        raise Stopped(studying.done, studying.asked, part.resume(plan.resume), stop.why)
+    if stop.why:  # if only just finished too: the plan's own runs are to follow
+        resume = part.resume(plan.resume)
+        raise Stopped(studying.done, studying.asked, resume, stop.why, store.unfinished())
 
 
 def _matrix(doing: Doing, missing: Sequence[Entry], settling: Settling) -> Iterator[Outcome]:

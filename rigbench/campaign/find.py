@@ -59,7 +59,8 @@ def worst_run(
     """Return the worst of a law's runs under a condition, of one motion and sheet or of all.
 
     That is the first that did not finish, or else the one with the largest main score. Only draws that
-    count are looked at: those that have the machine's verdict in every motion (or in the given one).
+    count are looked at: those that have the machine's verdict in every motion (or in the given one), and
+    of a column that stopped early those after which it was settled.
     InputFaults if a name is none of the campaign's, or if no draw counts yet.
     """
     labels = store.labels
@@ -73,10 +74,13 @@ def worst_run(
     faults = [_unknown(store, what, name, known[what]) for what, name in names.items() if name is not None]
     if any(faults):
         raise InputFaults(fault for fault in faults if fault)
+    ends = {own: after for own, of, after in labels.settled if of == condition}
     records = [
         record
         for record in store.records_of(law, condition)
-        if motion in (None, record.row.motion) and sheet in (None, record.row.sheet)
+        if motion in (None, record.row.motion)
+        and sheet in (None, record.row.sheet)
+        and (record.row.draw or 0) < ends.get(record.row.sheet, math.inf)
     ]
     motions = labels.motions if motion is None else (motion,)
     counted = _counted(records, motions)

@@ -16,7 +16,8 @@ __all__ = ["Labels"]
 class Labels:
     """What a store says about its campaign; the fields are those of the :class:`Plan` it was given last.
 
-    But for ``settled``: each column that stopped early, as (sheet, condition, after how many draws).
+    But for ``settled``: each column that stopped early, as (sheet, condition, after how many draws); and for
+    ``studies``: the names of those that are declared, in the order in which they are done.
     """
 
     title: str
@@ -31,12 +32,15 @@ class Labels:
     absent: tuple[tuple[str, str, str], ...] = ()
     stop_early: bool = False
     settled: tuple[tuple[str, str, int], ...] = ()
+    studies: tuple[str, ...] = ()
 
     @classmethod
     def of(cls, plan: Plan) -> Labels:
         """Return the labels of a plan of which nothing is known yet."""
-        names = {field.name for field in dataclasses.fields(cls)} - {"settled"}
-        return cls(**{name: getattr(plan, name) for name in names})
+        names = {field.name for field in dataclasses.fields(cls)} - {"settled", "studies"}
+        studies = (*([] if plan.first is None else [plan.first]), *plan.studies)
+        same = {name: getattr(plan, name) for name in names}
+        return cls(**same, studies=tuple(study.name for study in studies))
 
     def to_json(self) -> str:
         """Return the labels as one JSON object."""
@@ -61,4 +65,5 @@ class Labels:
             found["tolerance"] = Tolerance(**found["tolerance"])
         for name in ("absent", "settled"):
             found[name] = tuple(tuple(place) for place in found.get(name, ()))
+        found["studies"] = tuple(found.get("studies", ()))
         return cls(**found)

@@ -199,8 +199,11 @@ class Reader:
         return self._records(within, law, condition)
 
     def records_with(self, outcomes: Sequence[str]) -> Iterator[Record]:
-        """Yield those that came to one of these outcomes."""
-        return self._records(f"WHERE outcome IN ({', '.join('?' * len(outcomes))})", *outcomes)
+        """Yield those that came to one of these outcomes, then the runs of studies that did, each once."""
+        within = f"outcome IN ({', '.join('?' * len(outcomes))})"
+        yield from self._records(f"WHERE {within}", *outcomes)
+        beside = f"WHERE {within} AND studied.id NOT IN (SELECT id FROM plan)"
+        yield from {r.key: r for r in self._records(beside, *outcomes, within=IN_STUDIES)}.values()
 
     def record(self, key: str) -> Record | None:
         """Return what is stored of a planned run, as the first of the entries that it stands for."""
@@ -224,10 +227,15 @@ class Reader:
             outcome, layout, scores, reason = found
             return Row(*place, outcome, layouts(self._connection)[layout].scores_of(scores), reason)
 
-    def studies(self) -> tuple[str, ...]:
-        """Return the names of the studies that the campaign has begun."""
+    def begun(self) -> dict[str, bool]:
+        """Return the names of the studies that the campaign has begun, and whether each is finished."""
         with speaking_plainly(self.path):
-            return tuple(stored_studies(self._connection))
+            return {name: whole for name, (_, whole) in stored_studies(self._connection).items()}
+
+    def unfinished(self) -> tuple[str, ...]:
+        """Return the names of the declared studies of which not every run is stored, in their order."""
+        begun = self.begun()
+        return tuple(name for name in self.labels.studies if not begun.get(name))
 
     def study(self, name: str) -> Studied | None:
         """Return a study and the runs of it that are stored, in its order; None if it has not begun."""

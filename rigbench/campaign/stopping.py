@@ -58,7 +58,10 @@ class Stop:
 
 @contextmanager
 def stop_signals(ends: float | None, on_asked: Callable[[], None]) -> Iterator[Stop]:
-    """Take SIGINT and SIGTERM in here, where signals can be taken: in a program's main thread."""
+    """Take SIGINT and SIGTERM in here, where signals can be taken: in a program's main thread.
+
+    What the second one interrupts is left there, wherever it was.
+    """
     stop = Stop(ends, on_asked)
     if threading.current_thread() is not threading.main_thread():
         yield stop
@@ -66,6 +69,9 @@ def stop_signals(ends: float | None, on_asked: Callable[[], None]) -> Iterator[S
     before = {number: signal.signal(number, stop.on_signal) for number in (signal.SIGINT, signal.SIGTERM)}
     try:
         yield stop
+    except KeyboardInterrupt:
+        if not stop.at_once:
+            raise
     finally:
         for number, handler in before.items():
             signal.signal(number, handler)

@@ -188,6 +188,16 @@ class Store(Reader):
                 (law,),
             ).rowcount
 
+    def studies_anew(self, law: str) -> int:
+        """Put down a law's stored runs of studies to be run anew, as :meth:`run_anew`; return how many.
+
+        To be called before the plan is recorded, which forgets what the studies asked for.
+        """
+        with self._transaction() as connection:
+            return connection.execute(
+                "UPDATE runs SET anew = 1 WHERE id IN (SELECT id FROM studied WHERE law = ?)", (law,)
+            ).rowcount
+
     def settled_troubles(self, draws: int | None = None) -> int:
         """Count the planned runs, of the first ``draws``, that came to nothing and would do so again."""
         marks = ", ".join("?" * len(SETTLED_TROUBLES))

@@ -15,7 +15,8 @@ def audit_arm(path: str, output: str | None, as_json: bool) -> None:
     files = ArmFiles.read(path)
     arm = files.arm()
     if output is not None:
-        from rigbench.report.audit_picture import audit_picture, check_format
+        from rigbench.report.audit_picture import audit_picture
+        from rigbench.report.picture import check_format
 
         check_format(Path(output))
     from rigbench.campaign.audit import audit

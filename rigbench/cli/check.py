@@ -95,6 +95,9 @@ def _lines(
         yield _tune_line(experiment.tune, found)
     for study in plan.studies:
         yield f"{study.name}: at most {counted(study.most_runs, 'run')} more, after those of the plan"
+    left = [study.name for study in plan.studies]
+    left += ["tune"] if experiment.tune is not None and not found else []
+    besides = "".join(f", without {name}" for name in left)
     if (stored.runs or 0) + stored.spared == len(plan.entries):
         yield f"time: none, all {'of the plan ' if plan.studies else ''}is stored"
     elif estimate.seconds is None:
@@ -102,13 +105,9 @@ def _lines(
     else:
         cores = counted(estimate.cores, "core")
         said = f"{duration_words(estimate.seconds)} on {cores}"
-        left = [study.name for study in plan.studies]
-        left += ["tune"] if experiment.tune is not None and not found else []
-        besides = "".join(f", without {name}" for name in left)
         most = "at most " if experiment.stop_early else ""
         yield f"time: {most}{said}{besides}; an estimate, from a short run of each law"
     if estimate.store_bytes is not None:
-        besides = "".join(f", without {study.name}" for study in plan.studies)
         done = f"{size_words(estimate.store_bytes)} when all is done{besides}"
         yield f"store: {done}; an estimate, from a small one"
 

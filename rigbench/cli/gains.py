@@ -15,7 +15,7 @@ from rigbench.cli.output import print_json, say, show
 from rigbench.errors import InputFaults, counted
 from rigbench.experiment import Experiment
 from rigbench.report import cautions
-from rigbench.scores.names import score_words
+from rigbench.report.gains_words import aim_words, declared_words, found_words, gains_words, law_words
 
 __all__ = ["gains_notes", "print_gains", "with_stored_gains"]
 
@@ -37,12 +37,12 @@ def gains_notes(store: Reader) -> Iterator[str]:
     found = [] if study is None else gains_found(study)
     if study is None or not study.finished or not found:
         return
-    told = [f"{_place(one)} {_gains(one)}" for one in found if one.within]
+    told = [f"{law_words(one)} {gains_words(one.gains)}" for one in found if one.within]
     if len(told) > MOST:
         told = [*told[:MOST], f"{len(told) - MOST} more"]
     if told:
         yield f"Gains found by tune on the nominal machine: {'; '.join(told)}."
-    kept = [f"'{_place(one)}'" for one in found if not one.within]
+    kept = [f"'{law_words(one)}'" for one in found if not one.within]
     if kept:
         yield f"Tune found no gains within its limits for {', '.join(kept)}: the declared ones stay."
 
@@ -67,27 +67,17 @@ def print_gains(path: str, as_json: bool) -> None:
 
 def _lines(found: Sequence[GainsFound], aim: Aim) -> Iterator[str]:
     """Yield YAML: one document a sheet, with what was found in comments."""
-    words, unit = score_words(aim.score)
-    limits = [
-        f"{score_words(name)[0]} at most {most:g} {score_words(name)[1]}".rstrip()
-        for name, most in aim.most.items()
-    ]
-    if aim.delay_margin_ms:
-        limits.append(f"{aim.delay_margin_ms:g} ms more delay borne")
-    yield f"# {'; '.join([f'Gains found by tune: least {words} on the nominal machine', *limits])}."
+    yield f"# Gains found by tune: {aim_words(aim)}."
     for sheet, own in groupby(found, key=lambda one: one.sheet):
         laws = list(own)
         if sheet:
             yield f"---  # sheet: {sheet}"
         yield "laws:"
         for one in laws:
-            before = "not run" if one.score_declared is None else f"{one.score_declared:.3g} {unit}".rstrip()
-            outside = "" if one.within_declared else ", outside the limits"
-            said = f"declared: {_values(one.declared)}, {before}{outside}; {counted(one.runs, 'run')}"
+            before = f"{gains_words(one.declared)}, {declared_words(one, aim)}"
+            said = f"declared: {before}; {counted(one.runs, 'run')}"
             if one.within:
-                found_score = f"{words} {one.score:.3g} {unit}".rstrip()
-                ends = [f"{name} at the end of its range" for name in one.at_ends]
-                yield f"  # {'; '.join([found_score, *ends, said])}"
+                yield f"  # {found_words(one, aim)}; {said}"
             else:
                 yield f"  # none found within the limits, so the declared ones stay; {said}"
             gains = one.gains if one.within else {}
@@ -115,15 +105,3 @@ def _document(one: GainsFound) -> dict[str, Any]:
         },
         "runs": one.runs,
     }
-
-
-def _place(one: GainsFound) -> str:
-    return f"{one.law} ({one.sheet})" if one.sheet else one.law
-
-
-def _gains(one: GainsFound) -> str:
-    return _values(one.gains)
-
-
-def _values(gains: Any) -> str:
-    return ", ".join(f"{name} {value:g}" for name, value in gains.items())

@@ -33,7 +33,7 @@ def tell_gears(
     if faults:
         raise InputFaults(faults)
     if output is not None:
-        from rigbench.report.audit_picture import check_format
+        from rigbench.report.picture import check_format
 
         check_format(Path(output))
     from rigbench.campaign.gears import RATIOS, gears

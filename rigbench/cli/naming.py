@@ -19,6 +19,8 @@ def name_fault(file: str, option: str, what: str, name: str, known: Sequence[str
         near = nearest(name, known)
         more = ", ..." if len(known) > SHOWN else ""
         expected = "" if near else f"one of {', '.join(repr(each) for each in known[:SHOWN])}{more}"
+        if list(known) == [""]:
+            expected = f"no {option}: there is one {what}, without a name"
         yield Fault(file, None, option, f"no {what} is called '{name}'", expected, near)
 
 

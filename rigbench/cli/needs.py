@@ -10,7 +10,7 @@ from rigbench.campaign.store import Store
 from rigbench.campaign.studied import Studied
 from rigbench.cli.output import print_json, say, show, width
 from rigbench.cli.stored import CAUTION, check_output
-from rigbench.errors import InputFaults, nearest
+from rigbench.errors import Fault, InputFaults, nearest
 from rigbench.scores.results import Tolerance
 from rigbench.yamlfile import load
 
@@ -36,8 +36,8 @@ def tell_needs(path: str, law: str | None, output: str | None, as_json: bool) ->
     laws = list(dict.fromkeys(subject.law for subject in design.subjects))
     if law is not None and law not in laws:
         near = nearest(law, laws)
-        problem = f"the study asked nothing of '{law}'" + (f" (did you mean '{near}'?)" if near else "")
-        raise InputFaults.one(path, "--law", problem, f"one of {', '.join(laws)}")
+        expected = "" if near else f"one of {', '.join(laws)}"
+        raise InputFaults([Fault(path, None, "--law", f"the study asked nothing of '{law}'", expected, near)])
     tolerance = labels.tolerance or Tolerance({}, design.required_share)
     rows = [record.row for record in studied.records]
     found = [needs for needs in needs_of(design, rows, tolerance) if law in (None, needs.law)]

@@ -6,7 +6,7 @@ import datetime
 import shlex
 import time
 from collections import Counter
-from collections.abc import Callable, Collection, Iterable, Iterator
+from collections.abc import Callable, Collection, Iterable, Iterator, Sequence
 from dataclasses import replace
 from pathlib import Path
 
@@ -26,7 +26,7 @@ from rigbench.cli.progress import OnProgress, progress_shown, tell_stopping
 from rigbench.cli.spans import duration_words
 from rigbench.cli.stored import CAUTION, picture_path, status_text
 from rigbench.cli.wishes import Wishes, part_of
-from rigbench.errors import ClusterLost, Stopped, counted
+from rigbench.errors import ClusterLost, Stopped, counted, listed
 from rigbench.experiment import load_experiment
 from rigbench.report.json_form import results_json
 from rigbench.report.matrix import matrix_picture
@@ -61,6 +61,8 @@ def run_experiment(file: str, wishes: Wishes, as_json: bool) -> None:
             make_room(path, plan, wishes.sure)
         with Store.open_for_writing(path, plan) as opened:
             _tell_move(opened, plan)
+            for law in wishes.again:
+                opened.studies_anew(law)
             stopped = _first(experiment.tune, plan, part, opened, wishes, executor)
             if stopped is None:
                 if experiment.tune is not None:
@@ -69,6 +71,7 @@ def run_experiment(file: str, wishes: Wishes, as_json: bool) -> None:
                 say(_intent(plan, part, opened, path, wishes.again))
                 stopped = _campaign(plan, part, opened, wishes, executor)
             results, notes = opened.results(brief=not as_json), list(gains_notes(opened))
+            unfinished = opened.unfinished()
             troubles = [*_troubles(opened), *_ways_out(opened, plan)]
         for trouble in troubles:
             say(trouble)
@@ -80,7 +83,7 @@ def run_experiment(file: str, wishes: Wishes, as_json: bool) -> None:
             say(str(stopped))
             raise SystemExit(Stopped.exit_code)
         _tell_results(results, notes, path, as_json)
-        _tell_part(part, results, plan)
+        _tell_part(part, results, plan, unfinished)
         if part.draws is None and any(study.name == "needs" for study in plan.studies):
             say(f"what must be known, and how well: {shlex.join(['rigbench', 'needs', str(path)])}")
 
@@ -134,7 +137,9 @@ def _done(plan: Plan, part: Part, store: Store, work: Callable[[OnProgress], obj
         return stopped
     except ClusterLost as lost:
         counts = store.counts()
-        return Stopped(counts.done + counts.failed, counts.planned, part.resume(plan.resume), f"as {lost}")
+        unfinished = store.unfinished() if part.draws is None else ()
+        done, resume = counts.done + counts.failed, part.resume(plan.resume)
+        return Stopped(done, counts.planned, resume, f"as {lost}", unfinished)
     return None
 
 
@@ -154,22 +159,26 @@ def _intent(plan: Plan, part: Part, store: Store, path: Path, again: Collection[
     keys |= {entry.key for entry in wanted if entry.law in again}
     missing = sum(entry.key in keys for entry in wanted)
     first = "" if part.draws is None else f" of the first {counted(part.draws, 'draw')}"
+    begun = store.begun()
+    studies = [study.name for study in plan.studies if missing or not begun.get(study.name)]
+    then = f"; then {listed(studies)}" if studies and part.draws is None else ""
     if missing == 0:
         all_of = "all runs that are wanted" if plan.stop_early else f"all {len(wanted)} runs"
-        return f"{all_of}{first} are stored in {path}: nothing to run"
+        return f"{all_of}{first} are stored in {path}{then or ': nothing to run'}"
     most = "at most " if plan.stop_early else ""
-    said = f"{most}{missing} of {counted(len(wanted), 'run')}{first} to do, stored in {path}"
+    said = f"{most}{missing} of {counted(len(wanted), 'run')}{first} to do, stored in {path}{then}"
     if part.ends is None:
         return said
     return f"{said}; none begins when {duration_words(part.ends - time.monotonic())} have passed"
 
 
-def _tell_part(part: Part, results: Results, plan: Plan) -> None:
-    """Say so where more is declared than was asked for."""
+def _tell_part(part: Part, results: Results, plan: Plan, unfinished: Sequence[str]) -> None:
+    """Say so where more is declared than was asked for: other draws, and studies that are not finished."""
     left = results.planned - results.done - results.failed
-    if part.draws is not None and left:
+    if part.draws is not None and (left or unfinished):
         said = f"the first {part.draws} of {plan.draws} draws are done, as asked"
-        say(f"{said}; '{plan.resume}' does the other {counted(left, 'run')}")
+        others = [f"the other {counted(left, 'run')}"] if left else []
+        say(f"{said}; '{plan.resume}' does {listed([*others, *unfinished])}")
 
 
 def _tell_results(results: Results, notes: Iterable[str], path: Path, as_json: bool) -> None:

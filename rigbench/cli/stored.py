@@ -14,12 +14,20 @@ from rigbench.campaign.store import Store
 from rigbench.campaign.work import Host
 from rigbench.cli.gains import gains_notes
 from rigbench.cli.output import paragraph, print_json, put, say, show, width
-from rigbench.errors import InputFaults
+from rigbench.errors import InputFaults, listed
 from rigbench.report import cautions
 from rigbench.report.output_file import write_whole
 from rigbench.scores.results import Results
 
-__all__ = ["CAUTION", "check_output", "export_runs", "picture_path", "print_status", "status_text"]
+__all__ = [
+    "CAUTION",
+    "check_output",
+    "export_runs",
+    "picture_path",
+    "print_status",
+    "status_text",
+    "store_notes",
+]
 
 CAUTION = f"{cautions.CAUTION.removesuffix('.')}; see the cautions in the README."
 
@@ -40,12 +48,19 @@ def print_status(path: str, as_json: bool) -> None:
 
     with Store.open_for_reading(path) as store:
         results = store.results(brief=not as_json)
-        notes = [*gains_notes(store), *_notes(store.hosts().values())]
+        notes = [*store_notes(store), *_notes(store.hosts().values())]
     if as_json:
         print_json(results_json(results, path) | {"notes": notes})
         return
     show(status_text(results, notes))
     say(CAUTION)
+
+
+def store_notes(store: Reader) -> Iterator[str]:
+    """Say beneath a matrix which gains were found, and which studies are not finished."""
+    yield from gains_notes(store)
+    if unfinished := store.unfinished():
+        yield f"Not finished: {listed(unfinished)}."
 
 
 def status_text(results: Results, notes: Iterable[str] = ()) -> str:
@@ -83,10 +98,13 @@ def export_runs(path: str, output: str | None, as_json: bool) -> None:
                 put(part)
         say(CAUTION)
         return
+    ending = Path(output).suffix.lower()
+    if ending not in (".csv", ".parquet"):
+        raise InputFaults.one(output, "-o", f"'{ending}' is no ending of a table", ".csv or .parquet")
     columns = Path(output).with_name(f"{Path(output).stem}-columns.csv")
     for file in (Path(output), columns):
         check_output(file, path)
-    write = _parquet if Path(output).suffix.lower() == ".parquet" else _csv
+    write = _parquet if ending == ".parquet" else _csv
     if write is _parquet:
         check_parquet(output)
     with Store.open_for_reading(path) as store:

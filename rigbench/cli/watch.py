@@ -4,19 +4,22 @@ from __future__ import annotations
 
 import contextlib
 import time
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterator, Sequence
 from datetime import datetime
 
 from rigbench.campaign.reading import Counts
 from rigbench.campaign.store import Store
 from rigbench.cli.output import height, interrupts_alike, put, say, show, to_terminal
-from rigbench.cli.stored import CAUTION, status_text
+from rigbench.cli.stored import CAUTION, status_text, store_notes
 from rigbench.errors import counted
 from rigbench.scores.results import Results
 
 __all__ = ["watch_status"]
 
 REDRAWN_EVERY_S, LINE_EVERY_S = 3.0, 10.0
+
+Draw = Callable[[Results, Sequence[str]], None]
+"""Shows results, and the notes beneath them."""
 
 SHARE = 0.05
 """The most of one core that looking may take from the campaign."""
@@ -26,35 +29,36 @@ OTHER_SCREEN, BACK, FROM_THE_TOP = "\x1b[?1049h", "\x1b[?1049l", "\x1b[H\x1b[J"
 
 
 def watch_status(path: str) -> None:
-    """Show the status until the campaign is complete, then print it whole.
+    """Show the status until the campaign is complete, its studies included, then print it whole.
 
     A terminal is redrawn in place, and left with the last status; elsewhere there is a line whenever runs
     were stored.
     """
     every_s = REDRAWN_EVERY_S if to_terminal() else LINE_EVERY_S
-    seen: Counts | None = None
+    seen: tuple[Counts, Sequence[str]] | None = None
     with interrupts_alike(), _screen() if to_terminal() else _lines() as draw:
         while True:
             began = time.monotonic()
             with Store.open_for_reading(path) as store:
-                counts = store.counts()
-                results = store.results(brief=True) if counts != seen else None
+                counts, unfinished = store.counts(), store.unfinished()
+                results = store.results(brief=True) if (counts, unfinished) != seen else None
+                notes = list(store_notes(store))
             if results is not None:
-                draw(results)
-            if counts.done + counts.failed >= counts.planned:
+                draw(results, notes)
+            if counts.done + counts.failed >= counts.planned and not unfinished:
                 break
-            seen = counts
+            seen = counts, unfinished
             time.sleep(max(every_s, (time.monotonic() - began) / SHARE))
     say(CAUTION)
 
 
 @contextlib.contextmanager
-def _screen() -> Iterator[Callable[[Results], None]]:
+def _screen() -> Iterator[Draw]:
     last = ""
 
-    def draw(results: Results) -> None:
+    def draw(results: Results, notes: Sequence[str]) -> None:
         nonlocal last
-        last = status_text(results)
+        last = status_text(results, notes)
         told = f"as of {datetime.now():%H:%M:%S}, Ctrl-C ends this"
         lines = last.splitlines()
         room = max(height() - 2, 2)
@@ -72,15 +76,15 @@ def _screen() -> Iterator[Callable[[Results], None]]:
 
 
 @contextlib.contextmanager
-def _lines() -> Iterator[Callable[[Results], None]]:
-    last: Results | None = None
+def _lines() -> Iterator[Draw]:
+    last = ""
 
-    def draw(results: Results) -> None:
+    def draw(results: Results, notes: Sequence[str]) -> None:
         nonlocal last
-        last = results
+        last = status_text(results, notes)
         runs = f"{results.done} of {counted(results.planned, 'run')} done, {results.failed} failed"
-        show(f"{runs}. {results.advice}")
+        show(" ".join([f"{runs}.", results.advice, *notes]))
 
     yield draw
-    if last is not None:
-        show(f"\n{status_text(last)}")
+    if last:
+        show(f"\n{last}")

@@ -4,19 +4,17 @@ from __future__ import annotations
 
 import datetime
 import math
-from collections.abc import Iterator
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from rigbench.campaign.reading import Reader
 from rigbench.campaign.store import Store
 from rigbench.campaign.studied import Studied
-from rigbench.campaign.studies.worst_case import NAME, WorstFound, worst_found
+from rigbench.campaign.studies.worst_case import NAME, WorstFound
 from rigbench.cli.output import print_json, say, show
 from rigbench.cli.stored import CAUTION, check_output
 from rigbench.errors import InputFaults
-from rigbench.scores.limit_share import limit_share
-from rigbench.scores.results import Tolerance, level_name
+from rigbench.scores.results import Tolerance
 from rigbench.yamlfile import load
 
 if TYPE_CHECKING:
@@ -29,13 +27,14 @@ HOW = "'worst_case: {}' in the experiment file, then 'rigbench run' again"
 
 def tell_worst(path: str, output: str | None, as_json: bool) -> None:
     """Print what the search found of each law; draw it where an ``output`` is named."""
+    from rigbench.report.worst_laws import worst_laws
     from rigbench.report.worst_words import worst_text
 
     if output is not None:
         check_output(Path(output), path)
     with Store.open_for_reading(path) as store, store.one_moment():
         study, labels = _studied(store, path), store.labels
-        laws = list(_laws(store, study, labels.tolerance or Tolerance({})))
+        laws = list(worst_laws(store, study, labels.tolerance or Tolerance({})))
     if output is not None:
         from rigbench.report.worst_picture import worst_picture
 
@@ -62,31 +61,6 @@ def _studied(store: Reader, path: str) -> Studied:
         problem = "its search for worst cases has not begun: the matrix comes first"
         raise InputFaults.one(path, "", problem, f"'{store.labels.resume}' done to its end")
     raise InputFaults.one(path, "", "its experiment does not search for worst cases", HOW)
-
-
-def _laws(store: Reader, study: Studied, tolerance: Tolerance) -> Iterator[LawWorst]:
-    from rigbench.campaign.studies.worst_direction import departures
-    from rigbench.report.worst_words import LawWorst, by_law
-
-    for levels, told in by_law(worst_found(study, tolerance)):
-        drawn = {
-            one.level: shares
-            for one in levels
-            if one.searched and (shares := _drawn(store, one, tolerance)) is not None
-        }
-        found = departures(store, study, told, tolerance)
-        yield LawWorst(told.sheet, told.law, levels, told, found, drawn)
-
-
-def _drawn(store: Reader, found: WorstFound, tolerance: Tolerance) -> tuple[float, int] | None:
-    """Return the largest share of a limit among the draws of the matrix at a level, and of how many."""
-    shares = {
-        (record.row.draw, record.row.motion): used.share
-        for record in store.records_of(found.law, level_name(found.level))
-        if record.row.sheet == found.sheet
-        and (used := limit_share(record.row, tolerance.limits_for(record.row.motion))) is not None
-    }
-    return (max(shares.values()), len({draw for draw, _ in shares})) if shares else None
 
 
 def _law(law: LawWorst) -> dict[str, Any]:

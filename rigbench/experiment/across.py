@@ -53,8 +53,8 @@ def faults_across(document: Document, sweep: Sweep, checked: Sequence[Checked]) 
     """
     where: dict[Fault, list[Checked]] = {}
     for each in checked:
-        for fault in each.findings.faults:
-            where.setdefault(each.combination.at_home(fault), []).append(each)
+        for fault in dict.fromkeys(map(each.combination.at_home, each.findings.faults)):
+            where.setdefault(fault, []).append(each)
     found: list[Fault] = []
     for fault, sheets in where.items():
         makes = _that_makes(sweep, checked, sheets)
@@ -169,8 +169,8 @@ def notes_across(document: Document, sweep: Sweep, checked: Sequence[Checked]) -
     sheets = _possible(checked)
     where: dict[Fault, list[Checked]] = {}
     for each in sheets:
-        for note in each.findings.notes:
-            where.setdefault(each.combination.at_home(note), []).append(each)
+        for note in dict.fromkeys(map(each.combination.at_home, each.findings.notes)):
+            where.setdefault(note, []).append(each)
     found = []
     for note, own in where.items():
         which = _where(sweep, sheets, own)

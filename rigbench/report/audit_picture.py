@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from io import BytesIO
 from pathlib import Path
 from typing import Any
 
@@ -14,13 +13,12 @@ from matplotlib.figure import Figure
 from matplotlib.ticker import MaxNLocator
 
 from rigbench.campaign.audit.result import Audit, Convergence
-from rigbench.errors import InputFaults, StoreError
 from rigbench.report.audit_text import number, rest_words
-from rigbench.report.matrix import FORMATS
 from rigbench.report.paper import INK, LINE, Paper, steady_settings
+from rigbench.report.picture import save_picture
 from rigbench.rig.log import RESIDUAL_LIMIT
 
-__all__ = ["audit_figure", "audit_picture", "check_format"]
+__all__ = ["audit_figure", "audit_picture"]
 
 WIDE, HIGH = 792.0, 612.0  # pt: a landscape page
 MARGIN = 36.0
@@ -38,33 +36,13 @@ LEAST = 1e-16
 """What is 0 stands here on axes of logarithms."""
 
 
-def check_format(path: Path) -> None:
-    """Raise InputFaults unless the file's suffix says a format that can be drawn."""
-    if path.suffix.lower().removeprefix(".") not in FORMATS:
-        raise InputFaults.one(path, "-o", f"'{path.suffix}' is no format of a picture", ".png, .svg or .pdf")
-
-
 def audit_picture(audit: Audit, path: Path) -> None:
     """Draw the audit into a file whose suffix says the format: .png, .svg or .pdf; missing folders are made.
 
     The same audit gives the same bytes. Raises InputFaults for another suffix and StoreError if the file
     can't be written.
     """
-    check_format(path)
-    kind = path.suffix.lower().removeprefix(".")
-    metadata: dict[str, dict[str, Any]] = {
-        "png": {"Software": "rigbench", "Title": audit.name},
-        "svg": {"Creator": "rigbench", "Title": audit.name, "Date": None},
-        "pdf": {"Creator": "rigbench", "Producer": None, "Title": audit.name, "CreationDate": None},
-    }
-    drawn = BytesIO()
-    with steady_settings():
-        audit_figure(audit).savefig(drawn, format=kind, dpi=180, metadata=metadata[kind])
-    try:
-        path.parent.mkdir(parents=True, exist_ok=True)
-        path.write_bytes(drawn.getvalue())
-    except OSError as error:
-        raise StoreError(str(path), f"the picture can't be written: {error.strerror}") from error
+    save_picture(path, audit.name, lambda: audit_figure(audit))
 
 
 def audit_figure(audit: Audit) -> Figure:

@@ -141,6 +141,8 @@ class _Page:
             said.append(
                 "Dark columns fail the tolerance, pale ones keep it; hollow ones did not finish or settle."
             )
+        if limits_of(self.results, self.strip.score):
+            said.append("Dashed line: the tolerance's limit.")
         said.append(
             "Bars: how strongly a source goes with the score, 0 to 1 (multiple correlation of ranks); hollow "
             "where that is not shown."

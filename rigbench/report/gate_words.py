@@ -58,7 +58,8 @@ def _change(check: Check, results: Results) -> str:
     plain = {
         "new": f"{where(cell)} is not in the baseline, so there is nothing to compare it with",
         "no result": f"{where(cell)} has no result in one of the two stores, so it can't be compared",
-        "not comparable": f"{where(cell)} can't be compared with the baseline: they have no draw in common",
+        "not comparable": f"{where(cell)} can't be compared with the baseline: nothing is random in one of "
+        "the two, or they have no draw in common",
     }
     if check.why in plain or change is None or change.before is None:
         return plain.get(check.why, plain["new"])

@@ -12,7 +12,7 @@ import numpy as np
 
 from rigbench.report.axis import LevelAxis
 from rigbench.report.cells import Grid
-from rigbench.report.marks import mark_of
+from rigbench.report.marks import band_opacity, mark_of
 from rigbench.report.paper import INK, LINE, QUIET, Paper
 from rigbench.report.spreading import lanes
 from rigbench.report.view import MEDIAN, P95, RATIO, Shown
@@ -27,7 +27,6 @@ HEIGHT = 250.0
 RAIL = "#c9d3dd"
 PAD = 10.0  # from the outermost values to the edges
 DECADES = 1.3  # of values beyond which the axis is logarithmic
-BAND = 0.13  # opacity
 KINDS = {P95: "95th percentile", RATIO: "median ratio to nominal"}
 
 
@@ -153,7 +152,10 @@ class LevelPlot:
         upper = [(self._x(x, p.level), self._y(top, p.high)) for p in points]
         lower = [(self._x(x, p.level), self._y(top, p.low)) for p in points]
         if len(points) > 1:
-            self.paper.shape([*upper, *reversed(lower)], mark_of(law).tone, opacity=BAND, name=f"band-{law}")
+            opacity = band_opacity(len(self.laws))
+            self.paper.shape(
+                [*upper, *reversed(lower)], mark_of(law).tone, opacity=opacity, name=f"band-{law}"
+            )
         elif points[0].high > points[0].low:
             self.paper.stroke(lower[0], upper[0], color=mark_of(law).tone, line=1.0, name=f"band-{law}")
 

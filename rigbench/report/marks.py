@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 from rigbench.report.paper import Paper, Point
 
-__all__ = ["Mark", "mark_of"]
+__all__ = ["Mark", "band_opacity", "mark_of"]
 
 SHAPES = ("o", "s", "^", "D", "v", "P", "X", "p", "<", ">", "d", "h")
 DASHES: tuple[tuple[float, ...], ...] = (
@@ -17,6 +17,8 @@ TONES = ("#1d4a75", "#9a5b13", "#4f5d68", "#6a4c93")
 SIZES = {"o": 7.0, "s": 6.2, "D": 5.6, "P": 7.4, "X": 7.2}
 LINE_WIDTH, BAR_WIDTH = 1.2, 1.1
 PALER = 0.45
+BAND, BANDS = 0.13, 0.5
+"""Opacity of one band, and of all bands on top of each other, at most."""
 
 
 @dataclass(frozen=True)
@@ -54,6 +56,11 @@ class Mark:
 def mark_of(number: int) -> Mark:
     """Return the mark of law number ``number``, from 0; the first 84 differ in shape or dashes."""
     return Mark(SHAPES[number % len(SHAPES)], DASHES[number % len(DASHES)], TONES[number % len(TONES)])
+
+
+def band_opacity(bands: int) -> float:
+    """Return how opaque each of so many bands is: so little that curves show where all lie on each other."""
+    return float(min(BAND, 1.0 - (1.0 - BANDS) ** (1.0 / max(bands, 1))))
 
 
 def _paler(tone: str) -> str:

@@ -12,13 +12,13 @@ from rigbench.report.cells import SHARES, Grid
 from rigbench.report.changes_words import changes_words
 from rigbench.report.legend import draw_legend
 from rigbench.report.paper import Paper, steady_settings, text_boxes
-from rigbench.report.picture import FORMATS, save_picture
+from rigbench.report.picture import save_picture
 from rigbench.report.view import View
 from rigbench.report.words import arm_words, runs_words, tolerance_words
 from rigbench.scores.changes import Changes
 from rigbench.scores.results import Results
 
-__all__ = ["FORMATS", "draw_head", "matrix_figure", "matrix_picture", "text_boxes"]
+__all__ = ["draw_head", "matrix_figure", "matrix_picture", "text_boxes"]
 
 NARROWEST = 470.0
 READING = 900.0  # the longest lines of text

@@ -6,18 +6,14 @@ import datetime
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass
-from io import BytesIO
 from pathlib import Path
-from typing import Any
 
 from matplotlib.figure import Figure
 
-from rigbench.errors import InputFaults
 from rigbench.report.cautions import CAUTION
-from rigbench.report.matrix import FORMATS
 from rigbench.report.needs_words import READING, advice, cut, kept_words, notes, own_unit, subject_words
-from rigbench.report.output_file import write_whole
 from rigbench.report.paper import INK, LINE, Paper, steady_settings
+from rigbench.report.picture import save_picture
 from rigbench.report.shades import GAUGE, shade
 from rigbench.report.words import level, percent, tolerated_words
 from rigbench.scores.limit_search import LADDER
@@ -47,20 +43,7 @@ def needs_picture(
 
     Raises InputFaults for another suffix and StoreError if the file can't be written.
     """
-    kind = path.suffix.lower().removeprefix(".")
-    if kind not in FORMATS:
-        raise InputFaults.one(path, "-o", f"'{path.suffix}' is no format of a picture", ".png, .svg or .pdf")
-    metadata: dict[str, dict[str, Any]] = {
-        "png": {"Software": "rigbench", "Title": title},
-        "svg": {"Creator": "rigbench", "Title": title, "Date": None},
-        "pdf": {"Creator": "rigbench", "Producer": None, "Title": title, "CreationDate": None},
-    }
-    drawn = BytesIO()
-    with steady_settings():
-        figure = needs_figure(found, design, title, date)
-        high = figure.get_size_inches()[1]
-        figure.savefig(drawn, format=kind, dpi=min(180, 60_000 / high), metadata=metadata[kind])
-    write_whole(path, lambda stream: stream.write(drawn.getvalue()))
+    save_picture(path, title, lambda: needs_figure(found, design, title, date))
 
 
 def needs_figure(found: Sequence[LawNeeds], design: NeedsDesign, title: str, date: datetime.date) -> Figure:

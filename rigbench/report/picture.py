@@ -10,10 +10,11 @@ from typing import Any
 
 from matplotlib.figure import Figure
 
-from rigbench.errors import InputFaults, StoreError
+from rigbench.errors import InputFaults
+from rigbench.report.output_file import write_whole
 from rigbench.report.paper import steady_settings
 
-__all__ = ["FORMATS", "save_picture"]
+__all__ = ["FORMATS", "check_format", "save_picture"]
 
 FORMATS = ("png", "svg", "pdf")
 DPI = 180
@@ -21,15 +22,20 @@ MOST_PIXELS = 60e6  # what a viewer opens without pain
 MOST_SIDE = 60_000  # the rasteriser takes less than 2^16
 
 
+def check_format(path: Path) -> None:
+    """Raise InputFaults unless the file's suffix says a format that can be drawn."""
+    if path.suffix.lower().removeprefix(".") not in FORMATS:
+        raise InputFaults.one(path, "-o", f"'{path.suffix}' is no format of a picture", ".png, .svg or .pdf")
+
+
 def save_picture(path: Path, title: str, make: Callable[[], Figure]) -> None:
     """Draw what ``make`` returns into a file whose suffix says the format: .png, .svg or .pdf.
 
-    The same figure gives the same bytes. Missing folders are made. InputFaults for another suffix, before
-    anything is drawn; StoreError if the file can't be written.
+    The same figure gives the same bytes, whole or not at all. Missing folders are made. InputFaults for
+    another suffix, before anything is drawn; StoreError if the file can't be written.
     """
+    check_format(path)
     suffix = path.suffix.lower().removeprefix(".")
-    if suffix not in FORMATS:
-        raise InputFaults.one(path, "", f"'{path.suffix}' is no format of a picture", ".png, .svg or .pdf")
     metadata: dict[str, dict[str, Any]] = {
         "png": {"Software": "rigbench", "Title": title},
         "svg": {"Creator": "rigbench", "Title": title, "Date": None},
@@ -39,11 +45,7 @@ def save_picture(path: Path, title: str, make: Callable[[], Figure]) -> None:
     with steady_settings():
         figure = make()
         figure.savefig(drawn, format=suffix, dpi=_resolution(figure), metadata=metadata[suffix])
-    try:
-        path.parent.mkdir(parents=True, exist_ok=True)
-        path.write_bytes(drawn.getvalue())
-    except OSError as error:
-        raise StoreError(str(path), f"the picture can't be written: {error.strerror}") from error
+    write_whole(path, lambda stream: stream.write(drawn.getvalue()))
 
 
 def _resolution(figure: Figure) -> float:

@@ -91,7 +91,8 @@ def _levels(paper: Paper, law: LawWorst, top: float, name: str) -> float:
         paper.text(left - 5, y - LINE * SIZE / 2, f"{100 * share:g}", SIZE, at="right")
     y = place(0.0, 1.0)[1]
     paper.stroke((left, y), (left + PLOT, y), color=INK, line=1.2, dashes=(5, 2), name=f"{name}-tolerance")
-    paper.text(left + 4, y - LINE * SMALL - 1, "tolerance", SMALL)
+    # beside the field: points may lie anywhere in it
+    paper.text(left + PLOT + 5, y - LINE * SMALL / 2, "limit", SMALL)
     ends = -math.inf
     for at in sorted({one.level for one in law.levels if one.searched} | {0.0}):
         x, said = place(at, 0.0)[0], level(at)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import shlex
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from itertools import groupby
@@ -11,7 +12,6 @@ from rigbench.campaign.studies.worst_case import WorstFound
 from rigbench.campaign.studies.worst_direction import Departure
 from rigbench.errors import counted
 from rigbench.report.words import level, quantity
-from rigbench.scores.limit_share import LimitShare
 from rigbench.scores.names import score_words
 
 __all__ = [
@@ -20,8 +20,15 @@ __all__ = [
     "LawWorst",
     "by_law",
     "difference_words",
+    "draws_words",
+    "found_words",
+    "more_words",
+    "replay_command",
+    "runs_words",
     "share_words",
     "smallest_words",
+    "told_words",
+    "used_words",
     "worst_text",
 ]
 
@@ -52,6 +59,11 @@ class LawWorst:
     drawn: Mapping[float, tuple[float, int]]
 
     @property
+    def shown(self) -> tuple[Departure, ...]:
+        """The departures that are told: those that make the most difference."""
+        return self.departures[:SHOWN]
+
+    @property
     def smallest(self) -> WorstFound | None:
         """The smallest level at which a machine was found that misses."""
         return next((found for found in self.levels if found.misses), None)
@@ -79,8 +91,11 @@ def _percent(share: float) -> str:
     return f"{float(text):g} %" if "e" in text else f"{text} %"
 
 
-def _used_words(found: WorstFound, used: LimitShare) -> str:
-    assert found.record is not None
+def used_words(found: WorstFound) -> str:
+    """Say what the worst run came to, against its limit and in which motion; '' where none has a verdict."""
+    used = found.used
+    if used is None or found.record is None:
+        return ""
     row = found.record.row
     if not used.score:
         return f"a run that {_outcome(row.outcome)} in '{row.motion}'"
@@ -111,33 +126,63 @@ def _law_lines(law: LawWorst, store: str) -> Iterator[str]:
     yield f"{law.law} ({law.sheet})" if law.sheet else law.law
     for found in law.levels:
         if found.searched:
-            yield f"  level {level(found.level)}: {_level_words(found)}{_drawn_words(law, found)}"
+            yield f"  level {level(found.level)}: {_level_words(law, found)}"
     yield f"  {smallest_words(law)}"
     if law.told.record is None:
         return
-    yield f"  the worst machine found at level {level(law.told.level)} departs so (u, from -1 to 1):"
-    for one in law.departures[:SHOWN]:
+    yield f"  {told_words(law)} (u, from -1 to 1):"
+    for one in law.shown:
         said = difference_words(one)
         yield f"    {one.parameter} {one.u:+g}{f'; {said}' if said else ''}"
-    if len(law.departures) > SHOWN:
-        yield f"    and {len(law.departures) - SHOWN} more"
-    yield f"  replay: rigbench trace {store} {law.told.record.key[:KEY_DIGITS]}"
+    if more := more_words(law):
+        yield f"    {more}"
+    yield f"  replay: {replay_command(law.told.record.key, store)}"
 
 
-def _level_words(found: WorstFound) -> str:
-    without = f" ({found.dropped} without verdict)" if found.dropped else ""
-    runs = f"{counted(found.runs, 'run')}{without}"
+def replay_command(key: str, store: str) -> str:
+    """Return the command that replays a stored run."""
+    return f"rigbench trace {shlex.quote(store)} {key[:KEY_DIGITS]}"
+
+
+def told_words(law: LawWorst) -> str:
+    """Say of which machine the departures are."""
+    return f"the worst machine found at level {level(law.told.level)} departs so"
+
+
+def more_words(law: LawWorst) -> str:
+    """Say how many departures are not told; '' where all are."""
+    more = len(law.departures) - len(law.shown)
+    return f"and {more} more" if more else ""
+
+
+def _level_words(law: LawWorst, found: WorstFound) -> str:
+    drawn = draws_words(law, found)
+    against = f"; the worst of {drawn}" if drawn else ""
     if found.used is None:
-        return f"nothing is known from {runs}"
-    said = "found to miss:" if found.misses else "none found that misses; the worst:"
-    return f"{said} {_used_words(found, found.used)}; {runs}"
+        return f"{found_words(found)} from {runs_words(found)}{against}"
+    worst = "" if found.misses else "; the worst"
+    return f"{found_words(found)}{worst}: {used_words(found)}; {runs_words(found)}{against}"
 
 
-def _drawn_words(law: LawWorst, found: WorstFound) -> str:
+def found_words(found: WorstFound) -> str:
+    """Say whether a machine that misses was found at a level."""
+    if found.used is None:
+        return "nothing is known"
+    return "found to miss" if found.misses else "none found that misses"
+
+
+def runs_words(found: WorstFound) -> str:
+    """Return how many runs were looked at: '60 runs (2 without verdict)'."""
+    without = f" ({found.dropped} without verdict)" if found.dropped else ""
+    return f"{counted(found.runs, 'run')}{without}"
+
+
+def draws_words(law: LawWorst, found: WorstFound) -> str:
+    """Return what the matrix has at the same level: '96 draws: 55 % of its limit'; '' where it has none."""
     if found.level not in law.drawn:
         return ""
     share, draws = law.drawn[found.level]
-    return f"; the worst of {counted(draws, 'draw')}: {share_words(share)}"
+    return f"{counted(draws, 'draw')}: {share_words(share)}"
 
 
 def smallest_words(law: LawWorst) -> str:

@@ -50,7 +50,7 @@ def _of_sheets(results: Results) -> str:
     """Return the advice of several sheets, of which those that agree are named together."""
     groups: dict[str, list[str]] = {}
     for sheet in results.sheets:
-        groups.setdefault(_of_sheet(SheetStanding(results, sheet))[0], []).append(sheet)
+        groups.setdefault(_in_brief(SheetStanding(results, sheet)), []).append(sheet)
     if len(groups) == 1:
         return f"in all {len(results.sheets)} sheets: {next(iter(groups))}"
     said = [f"in {_names(sheets)}: {head}" for head, sheets in list(groups.items())[:MOST]]
@@ -58,36 +58,65 @@ def _of_sheets(results: Results) -> str:
     return "; ".join([*said, *([f"{counted(rest, 'sheet')} more differ from these"] if rest else [])])
 
 
+def _in_brief(sheet: SheetStanding) -> str:
+    """Return the first clause of one sheet's advice, with what speaks against the law to take."""
+    said, front = _of_sheet(sheet)[0], _front(sheet)
+    if len(front) != 1:
+        return said
+    law = front[0]
+    against = [*_elsewhere(sheet, law)]
+    if _behind_by_score(sheet, law):
+        against.append(f"it is ahead of others by {score_words(sheet.main)[0]} alone")
+    close, _ = _not_behind(sheet, law)
+    if close:
+        against.append(f"against {_names(close)} it is too close to call")
+    return f"{said}, but {', and '.join(against)}" if against else said
+
+
+def _front(sheet: SheetStanding) -> list[str]:
+    """Return the laws that keep something and that no other such law is ahead of; [] without a tolerance."""
+    if sheet.tolerance is None:
+        return []
+    keepers = [law for law in sheet.laws if sheet.columns_that("keeps", law)]
+    return [a for a in keepers if not any(sheet.ahead(b, a) for b in keepers)] or keepers
+
+
+def _not_behind(sheet: SheetStanding, law: str) -> tuple[list[str], list[str]]:
+    """Return the laws that one is not ahead of: those with a result, and those without."""
+    others = [other for other in sheet.laws if other != law and not sheet.ahead(law, other)]
+    close = [other for other in others if sheet.has_result(other)]
+    return close, [other for other in others if other not in close]
+
+
 def _of_sheet(sheet: SheetStanding) -> list[str]:
     """Return the clauses of one sheet's advice, the first of which can stand alone."""
     if sheet.tolerance is None:
         return _without_tolerance(sheet)
-    keepers = [law for law in sheet.laws if sheet.columns_that("keeps", law)]
-    if not keepers:
+    front = _front(sheet)
+    if not front:
         return _nothing_kept(sheet)
-    front = [a for a in keepers if not any(sheet.ahead(b, a) for b in keepers)] or keepers
     if len(front) > 1:
         return [*_too_close(sheet, front), *_would_decide(sheet, front)]
     law = front[0]
     verb = f"'{law}'" if len(sheet.laws) == 1 else f"take '{law}', which"
     said = [f"{verb} {_shown(sheet, law)}", *_elsewhere(sheet, law), *_by_score(sheet, law)]
-    others = [other for other in sheet.laws if other != law and not sheet.ahead(law, other)]
-    close = [other for other in others if sheet.has_result(other)]
+    close, silent = _not_behind(sheet, law)
     if close:
         said.append(f"against {_names(close)} it is too close to call")
-    silent = [other for other in others if other not in close]
     if silent:
         said.append(f"{_names(silent)} {'has' if len(silent) == 1 else 'have'} no result")
     return [*said, *_would_decide(sheet, [law, *close])]
 
 
+def _behind_by_score(sheet: SheetStanding, law: str) -> list[str]:
+    """Return the laws that one is ahead of by the main score alone."""
+    behind = [other for other in sheet.laws if other != law and sheet.ahead(law, other)]
+    return [other for other in behind if not sheet.told_apart_by_tolerance(law, other)]
+
+
 def _by_score(sheet: SheetStanding, law: str) -> Iterator[str]:
     """Yield over which laws only the main score decides, and up to which level it is in their favour."""
-    rivals = [
-        other
-        for other in sheet.laws
-        if other != law and sheet.ahead(law, other) and not sheet.told_apart_by_tolerance(law, other)
-    ]
+    rivals = _behind_by_score(sheet, law)
     if not rivals:
         return
     levels = {rival: sheet.better_below(rival, law) for rival in rivals}

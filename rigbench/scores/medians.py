@@ -39,8 +39,9 @@ def median_bounds(values: Floats) -> tuple[Floats, Floats, Floats]:
     low = _between(ordered[rank - 1], ordered[rank], inward)
     high = _between(ordered[n - rank], ordered[n - rank - 1], inward)
     # With one of the two infinite there is nothing to interpolate.
-    low = np.where(np.isfinite(ordered[rank - 1] + ordered[rank]), low, ordered[rank - 1])
-    high = np.where(np.isfinite(ordered[n - rank] + ordered[n - rank - 1]), high, ordered[n - rank])
+    finite = np.isfinite(ordered)
+    low = np.where(finite[rank - 1] & finite[rank], low, ordered[rank - 1])
+    high = np.where(finite[n - rank] & finite[n - rank - 1], high, ordered[n - rank])
     return point, np.minimum(low, point), np.maximum(high, point)
 
 

@@ -22,9 +22,10 @@ Counted = tuple[Cell, CountedDraws, bool]
 def ratios_to_nominal(names: Sequence[str], of: Counted, nominal: Counted) -> Mapping[str, Comparison]:
     """Return the median ratio of each score that both cells have to nominal's, with its interval.
 
-    The numbers are those of :func:`rigbench.scores.comparison.degradation`: draw by draw where nominal is
-    random too, else over its one exact run, and none where that run has no finite value. Scores are those
-    of ``names``, in order.
+    Draw by draw where nominal is random too, by :func:`paired_ratio` with an order-statistic interval; else
+    the score's median and its interval over nominal's one exact run, and none where that run has no finite
+    value. Where nominal's score is 0 the ratio is inf, or 1 if both are 0. Scores are those of ``names``, in
+    order.
     """
     (cell, here, random), (foot, foot_here, foot_random) = of, nominal
     if not foot_random:

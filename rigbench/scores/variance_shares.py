@@ -56,13 +56,14 @@ def variance_shares(a: Floats, b: Floats, mixed: Floats, seed: int = 0) -> Varia
         from scipy.stats import rankdata
 
         table = rankdata(table, axis=None).reshape(table.shape)
-    n, groups = table.shape[1], len(mixed)
+    n, nothing = table.shape[1], np.full((len(mixed), 3), np.nan)
     if n == 0 or np.ptp(table[:2]) == 0.0:
-        nothing = np.full((groups, 3), np.nan)
         return VarianceShares(nothing, nothing, scale, n)
     # An output's unit and size say nothing, and squares of either could overflow.
     table = (table - np.mean(table[:2])) / np.ptp(table)
     value = _indices(np.full((1, n), 1.0), table)[0]
+    if np.all(np.isnan(value)):  # what a and b vary by is rounding beside what the groups make of it
+        return VarianceShares(nothing, nothing, scale, n)
     again = _indices(_resampled(n, seed), table)
     low, high = np.nanquantile(again, (0.025, 0.975), axis=0)
     found = np.stack((value, np.minimum(low, value), np.maximum(high, value)), axis=2)

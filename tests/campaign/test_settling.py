@@ -16,6 +16,7 @@ import pytest
 
 from rigbench.campaign.campaign import run_campaign
 from rigbench.campaign.executor import InProcess, Processes
+from rigbench.campaign.find import worst_run
 from rigbench.campaign.part import Part
 from rigbench.campaign.plan import Entry, Plan, fair_order
 from rigbench.campaign.progress import Progress
@@ -23,6 +24,7 @@ from rigbench.campaign.settling import Settling, to_do
 from rigbench.campaign.store import Store
 from rigbench.campaign.work import Outcome, failed
 from rigbench.errors import Stopped
+from rigbench.report.page.runs import read_runs
 from rigbench.scores.anytime import anytime_interval, settled
 from rigbench.scores.results import Column, Tolerance
 
@@ -231,6 +233,29 @@ def test_progress_never_tells_of_more_than_is_planned(tmp_path: Path, build: Pla
         held = store.held()
     assert all(progress.done <= progress.planned for progress in seen)
     assert seen[-1].done == seen[-1].planned == held > 2 + 2 * (EXPECTED or 0)
+
+
+def test_a_run_beyond_the_settled_draws_is_not_the_worst(tmp_path: Path, build: PlanMaker) -> None:
+    """Runs that were in hand count nowhere: not in the cell, not as its worst, not on the page."""
+    after, plan = EXPECTED or 0, build(60, columns=COLUMNS[:2])
+
+    def work(run: Any) -> Outcome:
+        _, _, draw, _ = run.name.split("/")
+        done = work_of({"all at 1": half})(run)
+        late = draw != "None" and int(draw) >= after
+        return replace(done, scores={"tool_peak_mm": 9.0}) if late else done
+
+    with Store.open_for_writing(tmp_path / "s.sqlite", plan) as store:
+        run_campaign(plan, store, executor=Ahead(work))
+        assert max(record.row.scores["tool_peak_mm"] for record in store.records_of("pd", "all at 1")) == 9.0
+        worst = worst_run(store, "pd", "all at 1").row
+        results = store.results()
+        shown = read_runs(store, results)["", "pd", "all at 1"]
+    assert worst.scores["tool_peak_mm"] == 2.0
+    assert (worst.draw or 0) < after
+    assert results.cell("", "pd", "all at 1").draws == after
+    assert len(shown.values["lift", "tool_peak_mm"]) == after
+    assert shown.named[0].draw == worst.draw
 
 
 def test_another_tolerance_or_law_opens_columns_again(tmp_path: Path, build: PlanMaker) -> None:

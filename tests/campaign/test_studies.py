@@ -12,7 +12,7 @@ from typing import Any
 
 import pytest
 
-from rigbench.campaign.campaign import run_campaign
+from rigbench.campaign.campaign import run_campaign, run_first
 from rigbench.campaign.executor import InProcess, Processes
 from rigbench.campaign.part import Part
 from rigbench.campaign.plan import Entry, Plan
@@ -73,7 +73,7 @@ def test_rounds_follow_one_another_and_are_stored(
             counts = run_campaign(plan, store, on_progress=seen.append, executor=executor)
             assert counts.planned == counts.done == len(plan.entries)
             assert len(store.rows()) == len(plan.entries)
-            assert store.studies() == ("growing",)
+            assert store.unfinished() == ()
             study = store.study("growing")
             assert study is not None
             assert study.finished
@@ -131,10 +131,93 @@ def test_a_run_that_comes_to_nothing_is_known_to_its_study(
 
 
 def test_a_study_waits_for_the_whole_campaign(tmp_path: Path, doing: ModuleType, plan: Plan) -> None:
-    """Where the first draws alone are asked for, nothing of a study is run."""
+    """Where the first draws alone are asked for, nothing of a study is run, and what it has found stays."""
+    executor = InProcess(doing.work)
     with Store.open_for_writing(tmp_path / "s.sqlite", plan) as store:
-        run_campaign(plan, store, part=Part(draws=1), executor=InProcess(doing.work))
-        assert store.studies() == ()
+        run_campaign(plan, store, part=Part(draws=1), executor=executor)
+        assert store.study("growing") is None
+        assert store.unfinished() == ("growing",)
+        run_campaign(plan, store, executor=executor)
+        whole = store.study("growing")
+        run_campaign(plan, store, part=Part(draws=1), executor=executor)
+        assert store.study("growing") == whole
+        assert store.unfinished() == ()
+
+
+def test_a_stop_before_a_study_has_begun_is_told(tmp_path: Path, doing: ModuleType, plan: Plan) -> None:
+    """A signal within the last run of the matrix: it is all done, its study is not, and so the campaign."""
+
+    def stop_at_last(progress: Progress) -> None:
+        if not progress.study and progress.done == len(plan.entries):
+            os.kill(os.getpid(), signal.SIGINT)
+
+    with Store.open_for_writing(tmp_path / "s.sqlite", plan) as store:
+        with pytest.raises(Stopped, match="as asked, with 6 of 6 runs stored and growing not finished;"):
+            run_campaign(plan, store, on_progress=stop_at_last, executor=InProcess(doing.work))
+        assert store.unfinished() == ("growing",)
+
+
+@pytest.mark.parametrize("in_study", [False, True])
+def test_a_second_signal_between_two_runs_is_a_stop_like_any(
+    tmp_path: Path, doing: ModuleType, plan: Plan, in_study: bool
+) -> None:
+    """It ends in Stopped, which says how to go on, where no run is being done as well."""
+
+    def stop_twice(progress: Progress) -> None:
+        if bool(progress.study) is in_study and progress.done == 3:
+            os.kill(os.getpid(), signal.SIGINT)
+            os.kill(os.getpid(), signal.SIGTERM)
+
+    with (
+        Store.open_for_writing(tmp_path / "s.sqlite", plan) as store,
+        pytest.raises(Stopped, match="growing not finished; nothing is lost: 'rigbench run"),
+    ):
+        run_campaign(plan, store, on_progress=stop_twice, executor=InProcess(doing.work))
+
+
+@pytest.mark.parametrize("at", [3, 6])
+def test_a_stop_within_what_comes_first_is_a_stop(
+    tmp_path: Path, doing: ModuleType, make_plan: PlanMaker, at: int
+) -> None:
+    """In its midst, or in its very last run: the matrix that was to follow it must not be begun."""
+    plan, asked = replace(make_plan(draws=1), first=Growing(doing.FakeRun)), []
+
+    def stop_within(progress: Progress) -> None:
+        if progress.done == at and not asked:
+            asked.append(progress)
+            os.kill(os.getpid(), signal.SIGINT)
+
+    with Store.open_for_writing(tmp_path / "s.sqlite", plan) as store:
+        with pytest.raises(Stopped) as stopped:
+            run_first(plan, store, on_progress=stop_within, executor=InProcess(doing.work))
+        assert stopped.value.done == at
+        assert stopped.value.unfinished == (() if at == 6 else ("growing",))
+        run_first(plan, store, executor=InProcess(doing.work))
+        assert store.unfinished() == ()
+
+
+def test_a_law_s_runs_of_a_study_are_done_anew(tmp_path: Path, doing: ModuleType, plan: Plan) -> None:
+    """As those of the matrix; the study is finished again when they are done, and no other law's are."""
+    with Store.open_for_writing(tmp_path / "s.sqlite", plan) as store:
+        run_campaign(plan, store, executor=InProcess(doing.work))
+        before = store.study("growing")
+        for law, new in (("nobody", 0), ("pd", 6)):
+            assert store.studies_anew(law) == new
+            seen: list[Progress] = []
+            run_campaign(plan, store, on_progress=seen.append, executor=InProcess(doing.work))
+            told = [progress for progress in seen if progress.study]
+            assert len(told) == new + (4 if new else 1)
+            assert store.study("growing") == before
+
+
+def test_troubles_of_studies_are_found_too(tmp_path: Path, doing: ModuleType, make_plan: PlanMaker) -> None:
+    """Each once, after those of the matrix, however many studies asked for the run."""
+    failing = Growing(doing.FakeRun, act="law-error")
+    plan = replace(make_plan(draws=1), studies=(failing, replace(failing, name="once more")))
+    with Store.open_for_writing(tmp_path / "s.sqlite", plan) as store:
+        run_campaign(plan, store, executor=InProcess(doing.work))
+        found = [record.key for record in store.records_with(["law-error"])]
+        assert found == [doing.FakeRun(name).key() for name in ("a", "b")]
 
 
 def test_a_study_s_run_is_found_by_its_key(tmp_path: Path, doing: ModuleType, plan: Plan) -> None:

@@ -254,6 +254,14 @@ def test_a_file_that_can_not_be_written(
     assert not list(Path().rglob("*.part"))
 
 
+def test_a_table_has_one_of_two_endings(call: Callable[..., Result], trial: Path) -> None:
+    """A slip in the ending is told, and no CSV is written under the name of something else."""
+    result = call("export", "results/trial.sqlite", "-o", "runs.parqet")
+    assert result.exit_code == 2
+    assert "runs.parqet: -o: '.parqet' is no ending of a table; expected .csv or .parquet" in result.stderr
+    assert not list(Path().glob("runs*"))
+
+
 def test_missing_folders_are_made(
     call: Callable[..., Result], run_here: Callable[..., Result], trial: Path
 ) -> None:

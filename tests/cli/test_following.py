@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 import signal
 import subprocess
 import sys
@@ -93,6 +94,41 @@ def test_watching_until_it_is_complete(
     assert "not a safety case" in watched.stderr
 
 
+def test_watching_until_its_studies_are_finished(
+    call: Callable[..., Result],
+    run_here: Callable[..., Result],
+    trial_text: str,
+    trial: Path,
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:
+    """A matrix that is whole is not the end where a study follows; the status says which is not finished."""
+    monkeypatch.setattr(watch, "LINE_EVERY_S", 0.1)
+    trial.write_text(trial_text + "find_level: {steps: 3}\n", encoding="utf-8")
+    done = run_here("trial.yaml", "--draws", "3")
+    assert (
+        "the first 3 of 3 draws are done, as asked; 'rigbench run trial.yaml' does find_level" in done.stderr
+    )
+    assert "Not finished: find_level." in call("status", "results/trial.sqlite").stdout
+    assert json.loads(call("status", "results/trial.sqlite", "--json").stdout)["notes"] == [
+        "Not finished: find_level."
+    ]
+    campaign = subprocess.Popen(
+        [sys.executable, "-m", "rigbench", "run", "trial.yaml", "--jobs", "0"],
+        stdout=subprocess.DEVNULL,
+        stderr=subprocess.DEVNULL,
+    )
+    try:
+        watched = call("status", "results/trial.sqlite", "--watch")
+        assert campaign.wait(timeout=60) == 0
+    finally:
+        campaign.kill()
+        campaign.wait(timeout=60)
+    first, *_, last = [line for line in watched.stdout.splitlines() if "8 of 8 runs done, 0 failed. " in line]
+    assert first.endswith("Not finished: find_level.")
+    assert "Not finished" not in last
+    assert watched.stdout.endswith(call("status", "results/trial.sqlite").stdout)
+
+
 @pytest.mark.parametrize("number", [signal.SIGINT, signal.SIGTERM])
 def test_watching_at_a_terminal(
     at_terminal: Callable[..., object],
@@ -126,7 +162,7 @@ def test_a_status_that_is_higher_than_the_terminal(
     monkeypatch.setattr(watch, "show", parts.append)
     monkeypatch.setattr(watch, "height", lambda: 8)
     with watch.Store.open_for_reading("results/trial.sqlite") as store, watch._screen() as draw:
-        draw(store.results())
+        draw(store.results(), [])
     _, drawn, _, whole = parts
     lines = drawn.removeprefix(watch.FROM_THE_TOP).splitlines()
     assert len(lines) == 7

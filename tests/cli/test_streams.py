@@ -52,7 +52,7 @@ def test_run_prints_one_json_document(run_here: Callable[..., Result], trial: Pa
 def test_check_prints_one_json_document(call: Callable[..., Result], trial: Path) -> None:
     """check --json holds the plan, the estimate and the notes."""
     document = json.loads(call("check", "trial.yaml", "--json").stdout)
-    assert document["runs"] == {"planned": 8, "stored": None}
+    assert document["runs"] == {"planned": 8, "stored": None, "not_wanted": 0}
     assert document["draws_needed"] == 73
     assert document["misses_allowed"] is None
     assert document["estimate"]["seconds"] > 0

@@ -20,7 +20,7 @@ rates: {{control_hz: 1000, physics_hz: 1000}}
 motions:
   load tray: {{via_deg: [[0, -60, 90, 0, 60, 0], [70, -20, 60, 0, 50, 0], [0, -60, 90, 0, 60, 0]], leg_s: 1.0, rest_s: 0.3}}
 mismatch:
-  link_mass_percent: 5
+  link_mass_percent: {{all: 5, wrist: 25}}
   link_cog_mm: 5
   link_inertia_percent: 15
   payload: {{believed_kg: 1.5, least_kg: 0, most_kg: 3, cog_mm: 30}}

@@ -15,6 +15,7 @@ from matplotlib.patches import Polygon
 
 from rigbench.report.level_curves import level_curves_figure
 from rigbench.report.level_plot import Point, Scale
+from rigbench.report.marks import band_opacity
 from rigbench.report.view import SHOWS, View
 from rigbench.scores.results import Results
 
@@ -190,3 +191,12 @@ def test_scales_by_hand(values: list[float], logarithmic: bool, ticks: list[str]
     parts = [scale.part(value) for value in values if math.isfinite(value)]
     assert all(0.0 <= part <= 1.0 for part in parts)
     assert parts == sorted(parts)
+
+
+def test_bands_on_top_of_each_other_hide_no_curve() -> None:
+    """However many laws there are, all bands together cover half; a few are as pale as one alone."""
+    for laws in (1, 4, 12, 40):
+        each = band_opacity(laws)
+        assert 0.0 < each <= 0.13
+        assert 1.0 - (1.0 - each) ** laws <= 0.5 + 1e-9
+    assert band_opacity(4) == band_opacity(1) == 0.13

@@ -218,9 +218,9 @@ def test_without_a_tolerance_nothing_is_kept_or_missed() -> None:
     )
 
 
-def sheets_of(*sheets: Mapping[str, Peaks]) -> Results:
+def sheets_of(*sheets: Mapping[str, Peaks], columns: Sequence[Column] = (NOMINAL, HALF, ONE)) -> Results:
     """One sheet for each set of laws, named by letters."""
-    parts = [results_of(laws) for laws in sheets]
+    parts = [results_of(laws, columns) for laws in sheets]
     names = tuple("abcdefgh"[: len(sheets)])
 
     def named(part: str) -> tuple[Any, ...]:
@@ -237,6 +237,20 @@ def test_sheets_that_agree_are_advised_at_once() -> None:
     advice = advise(sheets_of(laws, swapped, laws))
     assert advice.startswith("In 'a' and 'c': take 'robust'")
     assert "; in 'b': take 'frail'" in advice
+
+
+def test_what_speaks_against_the_law_to_take_is_said_of_sheets_too() -> None:
+    """Where it misses, and that only its score is lower; the sheets where neither is so stand apart."""
+    columns = (NOMINAL, HALF, ONE, TRAY)
+    robust, worse = {**ROBUST, "full tray": 5.0}, {"nominal": 2.5, "level 0.5": draws(100, peak=2.0)}
+    worse |= {"level 1": draws(100, peak=2.0), "full tray": 5.5}
+    fine, frail = {**ROBUST, "full tray": 1.0}, {**FRAIL, "full tray": 5.0}
+    advice = advise(sheets_of({"a": robust, "b": worse}, {"a": fine, "b": frail}, columns=columns))
+    taken = "take 'a', which is shown to keep the tolerance up to level 1, the highest run"
+    assert advice == (
+        f"In 'a': {taken}, but it misses under 'full tray', and it is ahead of others by tool peak alone; "
+        f"in 'b': {taken}."
+    )
 
 
 def test_many_names_are_counted() -> None:

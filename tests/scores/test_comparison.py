@@ -1,4 +1,4 @@
-"""Paired comparisons and degradation."""
+"""Paired comparisons."""
 
 from __future__ import annotations
 
@@ -6,17 +6,9 @@ from math import inf
 
 import numpy as np
 import pytest
-from scipy import stats
 
 from rigbench.scores.cell import CountedDraws
-from rigbench.scores.comparison import (
-    Comparison,
-    compare_by_difference,
-    compare_by_ratio,
-    degradation,
-    paired_ratio,
-)
-from rigbench.scores.intervals import P95
+from rigbench.scores.comparison import Comparison, compare_by_difference, paired_ratio
 from rigbench.scores.pairs import better
 
 
@@ -33,11 +25,10 @@ def test_a_tie_is_said_to_be_one() -> None:
     """Equal, equal to rounding, or with an interval that holds no difference; and five draws show nothing."""
     values = np.arange(1.0, 21.0)
     assert compare_by_difference(values, values) == Comparison(0.0, 0.0, 0.0, 20, tie=True)
-    assert compare_by_ratio(values * (1 + 1e-12), values) == Comparison(1.0, 1.0, 1.0, 20, tie=True)
+    assert compare_by_difference(values * (1 + 1e-12), values) == Comparison(0.0, 0.0, 0.0, 20, tie=True)
     found = compare_by_difference(values + np.tile([1.0, -1.0], 10), values)
     assert found == Comparison(-1.0, -1.0, 1.0, 20, tie=True)
     assert compare_by_difference(values[:5] + 1, values[:5]) == Comparison(1.0, -inf, inf, 5, tie=True)
-    assert compare_by_ratio(values[:5] * 2, values[:5]) == Comparison(2.0, 0.0, inf, 5, tie=True)
 
 
 def test_runs_that_did_not_finish_take_part() -> None:
@@ -45,7 +36,7 @@ def test_runs_that_did_not_finish_take_part() -> None:
     one, other = np.array([1.0] * 8 + [inf] * 2), np.array([2.0] * 7 + [inf] * 3)
     assert compare_by_difference(one, other) == Comparison(-1.0, -1.0, 0.0, 10, tie=True)
     assert compare_by_difference(one[:8], np.full(8, inf)) == Comparison(-inf, -inf, -inf, 8, tie=False)
-    assert compare_by_ratio(np.full(8, inf), one[:8]) == Comparison(inf, inf, inf, 8, tie=False)
+    assert compare_by_difference(np.full(8, inf), one[:8]) == Comparison(inf, inf, inf, 8, tie=False)
 
 
 def test_ratios_have_their_limits() -> None:
@@ -58,16 +49,13 @@ def test_no_draw_no_comparison() -> None:
     """None, not a number."""
     nothing = np.empty(0)
     assert compare_by_difference(nothing, nothing) is None
-    assert compare_by_ratio(nothing, nothing) is None
-    assert degradation(nothing, np.array([1.0])) is None
-    assert degradation(np.array([1.0]), nothing) is None
 
 
 @pytest.mark.parametrize(("other", "tie"), [(1.0, True), (1.005, True), (1.02, False), (inf, False)])
 def test_an_exact_pair_has_no_interval(other: float, tie: bool) -> None:
     """Within one percent it is a tie, either way."""
     for one, two in ((1.0, other), (other, 1.0)):
-        found = compare_by_ratio(np.array([one]), np.array([two]), random=False)
+        found = compare_by_difference(np.array([one]), np.array([two]), random=False)
         assert found is not None
         assert (found.low, found.high, found.draws, found.tie) == (found.value, found.value, 1, tie)
 
@@ -89,42 +77,13 @@ def test_what_is_no_tie_decides_between_laws() -> None:
     assert verdicts == {True, False}
 
 
-def test_degradation_from_an_exact_run_is_the_scores_quantile_over_it() -> None:
-    """Its interval is scipy's of the scores, over the same number."""
-    values = np.random.default_rng(5).uniform(1, 3, size=100)
-    for share in (0.5, P95):
-        found = degradation(values, np.array([0.5]), share)
-        ends = stats.quantile_test(values, q=0.0, p=share).confidence_interval(0.95)
-        assert found is not None
-        assert (found.low, found.high) == pytest.approx((ends.low / 0.5, ends.high / 0.5))
-        assert found.value == pytest.approx(np.quantile(values, share, method="inverted_cdf") / 0.5)
-        assert not found.tie
-
-
-def test_degradation_from_a_noisy_nominal_is_by_draw() -> None:
-    """Each draw is twice its own nominal, however far the draws lie apart; nominal over itself is a tie."""
-    nominal = np.exp(np.random.default_rng(6).normal(size=30))
-    assert degradation(2.0 * nominal, nominal) == Comparison(2.0, 2.0, 2.0, 30, tie=False)
-    found = degradation(nominal, nominal)
-    assert found is not None
-    assert found.tie
-
-
-def test_an_infinite_nominal_has_no_multiple() -> None:
-    """The nominal run did not finish; a score of 0 has no finite one, and a failed cell's is infinite."""
-    assert degradation(np.ones(20), np.array([inf])) is None
-    assert degradation(np.ones(20), np.zeros(1)) == Comparison(inf, inf, inf, 20, tie=False)
-    assert degradation(np.zeros(20), np.zeros(1)) == Comparison(1.0, 1.0, 1.0, 20, tie=True)
-    assert degradation(np.full(20, inf), np.ones(1)) == Comparison(inf, inf, inf, 20, tie=False)
-
-
 @pytest.mark.parametrize("draws", [8, 31, 128])
 def test_the_interval_covers_at_least_95_percent(draws: int) -> None:
     """An order-statistic interval: 2000 campaigns, three standard errors (1.5 %) below at most."""
     random, hits = np.random.default_rng(draws), 0
     for _ in range(2000):
         shared = np.exp(random.normal(size=draws))
-        found = compare_by_ratio(shared * np.exp(0.3 * random.normal(size=draws) + 0.1), shared)
+        found = compare_by_difference(shared + 0.3 * random.standard_t(2, size=draws) + 0.1, shared)
         assert found is not None
-        hits += found.low <= np.exp(0.1) <= found.high
+        hits += found.low <= 0.1 <= found.high
     assert hits / 2000 >= 0.95 - 0.015

@@ -76,6 +76,10 @@ def test_an_end_between_a_number_and_an_infinity_is_the_infinity() -> None:
     assert [float(end[0]) for end in median_bounds(most)] == [inf, 2.0, inf]
     assert [float(end[0]) for end in median_bounds(-most)] == [-inf, -inf, -2.0]
     assert [float(end[0]) for end in median_bounds(np.full((10, 1), inf))] == [inf, inf, inf]
+    # One law ran away on two draws, the other on eight: ranks 2 and 3 hold -inf and inf.
+    torn = np.array([*[-inf] * 2, *[inf] * 8])[:, None]
+    assert [float(end[0]) for end in median_bounds(torn)] == [inf, -inf, inf]
+    assert [float(end[0]) for end in median_bounds(-torn)] == [-inf, -inf, inf]
 
 
 @pytest.mark.parametrize("name", DISTRIBUTIONS)

@@ -1,4 +1,4 @@
-"""Each cell's ratio to nominal is the degradation of its draws."""
+"""Each cell's ratio to nominal, its degradation: draw by draw, or over one exact run."""
 
 from __future__ import annotations
 
@@ -6,9 +6,9 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
+from scipy import stats
 
 from rigbench.scores.cell import CountedDraws
-from rigbench.scores.comparison import degradation
 from rigbench.scores.intervals import quantiles
 from rigbench.scores.ratios import ratios_to_nominal
 from rigbench.scores.results import Cell, Measure
@@ -28,8 +28,11 @@ def cell_of(here: CountedDraws, random: bool = True) -> Cell:
 
 
 @pytest.mark.parametrize("nominal_random", [False, True])
-def test_the_numbers_are_those_of_degradation(nominal_random: bool) -> None:
-    """Over one exact run and over draws that only partly meet; infinite scores among them, an absent one."""
+def test_the_numbers_are_those_of_the_ratios(nominal_random: bool) -> None:
+    """numpy's median and scipy's interval of all ratios: over one exact run, and over draws that only partly
+
+    meet. Infinite scores are among them, and one that is absent.
+    """
     rng = np.random.default_rng(1)
     worst = rng.lognormal(size=(60, 3))
     worst[rng.random((60, 3)) < 0.1] = np.inf
@@ -43,12 +46,22 @@ def test_the_numbers_are_those_of_degradation(nominal_random: bool) -> None:
     assert set(found) == {"tool_peak_mm", "settle_ms"}
     rows = slice(5, 55) if nominal_random else slice(None)
     for place, name in enumerate(NAMES[:2]):
-        expected = degradation(here.worst[rows, place], foot.worst[:, place])
-        assert expected is not None
-        assert (found[name].value, found[name].low, found[name].high) == pytest.approx(
-            (expected.value, expected.low, expected.high)
-        )
-        assert (found[name].draws, found[name].tie) == (expected.draws, expected.tie)
+        ratios = worst[rows, place] / foot.worst[:, place]
+        ends = stats.quantile_test(ratios, p=0.5).confidence_interval(0.95)
+        middle = np.quantile(ratios, 0.5, method="inverted_cdf")
+        one = found[name]
+        assert (one.value, one.low, one.high) == pytest.approx((middle, ends.low, ends.high))
+        assert (one.draws, one.tie) == (len(ratios), ends.low <= 1.0 <= ends.high)
+
+
+def test_the_ratio_is_by_draw() -> None:
+    """Each draw is twice its own nominal, however far the draws lie apart; nominal over itself is a tie."""
+    foot = counted(np.arange(30), np.exp(np.random.default_rng(6).normal(size=(30, 3))))
+    twice = counted(foot.draws, 2.0 * foot.worst)
+    found = ratios_to_nominal(NAMES, (cell_of(twice), twice, True), (cell_of(foot), foot, True))
+    assert all((one.value, one.low, one.high, one.tie) == (2.0, 2.0, 2.0, False) for one in found.values())
+    found = ratios_to_nominal(NAMES, (cell_of(foot), foot, True), (cell_of(foot), foot, True))
+    assert [one.tie for one in found.values()] == [True] * 3
 
 
 def test_of_an_infinite_error_there_is_no_multiple() -> None:

@@ -174,6 +174,8 @@ def test_nothing_to_share() -> None:
         assert np.all(np.isnan(found.total))
         assert found.first.shape == (3, 3)
     assert variance_shares(np.arange(4.0), np.arange(4.0), np.empty((0, 4))).first.shape == (0, 3)
+    rounding = variance_shares(1.0 + 1e-12 * np.arange(4.0), np.ones(4), np.full((3, 4), 1e9))
+    assert np.all(np.isnan(rounding.total))
 
 
 def coverage(

@@ -9,9 +9,10 @@ from typing import Any
 
 from rigbench.report.axis import LevelAxis
 from rigbench.report.cells import Grid
-from rigbench.report.marks import TONES, mark_of
+from rigbench.report.marks import TONES, band_opacity, mark_of
 from rigbench.report.spreading import spread
 from rigbench.report.words import level
+from rigbench.report.wrapping import wrap_name
 from rigbench.scores.levels import ladder
 from rigbench.scores.names import score_words
 from rigbench.scores.results import Measure
@@ -19,11 +20,12 @@ from rigbench.scores.results import Measure
 __all__ = ["Chart", "Curve", "charts"]
 
 WIDTH, LEFT, RIGHT, TOP, FOOT = 820.0, 52.0, 212.0, 14.0, 48.0
-LEAST_HEIGHT, LABEL = 250.0, 17.0
+LEAST_HEIGHT, LABEL, LINE = 250.0, 17.0, 14.0
+"""A name of one line takes LABEL, each further line LINE."""
 SPAN = 30.0
 """A logarithmic axis stands where the largest value is so many times the smallest."""
 NAME = 27
-"""Characters of a law's name beside its curve."""
+"""Characters of a line of a law's name, beside its curve."""
 MARKED = 8
 """So many break-even levels are marked at most; more are in the table alone."""
 
@@ -49,7 +51,7 @@ class Curve:
     """One law: ``line`` and ``band`` are the points of polylines, broken where there is no value."""
 
     law: str
-    name: str
+    names: Sequence[str]  # the law's name, line by line
     tone: int
     dashes: str
     shape: str
@@ -57,8 +59,14 @@ class Curve:
     bands: Sequence[str]
     spots: Sequence[tuple[float, float]]
     beyond: Sequence[tuple[float, float]]  # where the median did not finish
-    label: float = 0.0
+    label: float = 0.0  # the middle of the name
     end: tuple[float, float] | None = None
+
+    @property
+    def labels(self) -> Sequence[tuple[float, str]]:
+        """The lines of the name, each with the height of its middle."""
+        top = self.label - LINE * (len(self.names) - 1) / 2.0
+        return [(top + LINE * place, line) for place, line in enumerate(self.names)]
 
 
 @dataclass(frozen=True)
@@ -76,6 +84,11 @@ class Chart:
     right: float = WIDTH - RIGHT
     top: float = TOP
     width: float = WIDTH
+
+    @property
+    def opacity(self) -> float:
+        """How opaque each band is."""
+        return round(band_opacity(len(self.curves)), 3)
 
     @property
     def endless(self) -> bool:
@@ -114,7 +127,9 @@ class _Drawing:
         self.numbers = {law: number for number, law in enumerate(laws)}
         every = (each for known in self.found.values() for _, m in known for each in _ends(m))
         self.finite = [value for value in every if math.isfinite(value)] + self._limits()
-        self.height = max(LEAST_HEIGHT, LABEL * len(self.found)) + TOP + FOOT
+        self.names = {law: wrap_name(law, NAME, len) for law in self.found}
+        self.heights = [LABEL + LINE * (len(lines) - 1) for lines in self.names.values()]
+        self.height = max(LEAST_HEIGHT, sum(self.heights)) + TOP + FOOT
 
     def _limits(self) -> list[float]:
         tolerance = self.grid.results.tolerance
@@ -137,7 +152,7 @@ class _Drawing:
         curves = [self._curve(law, known) for law, known in self.found.items()]
         labels = spread(
             [curve.end[1] if curve.end else TOP for curve in curves],
-            [LABEL] * len(curves),
+            self.heights,
             TOP - 6,
             self._bottom + 6,
         )
@@ -191,7 +206,7 @@ class _Drawing:
         ends = sorted([*spots, *lost])
         return Curve(
             law=law,
-            name=law if len(law) <= NAME else f"{law[: NAME - 1].rstrip()}\u2026",
+            names=self.names[law],
             tone=TONES.index(mark.tone),
             dashes=" ".join(f"{1.8 * part:.1f}" for part in mark.dashes),
             shape=PATHS[mark.shape],

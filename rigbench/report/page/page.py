@@ -20,17 +20,22 @@ from rigbench.campaign.reading import Reader
 from rigbench.campaign.work import Host
 from rigbench.report.cautions import BEFORE_A_REAL_ARM, CAUTION, NOT_MODELLED
 from rigbench.report.cells import Grid
+from rigbench.report.gains_words import aim_words
 from rigbench.report.limits_words import limits_words, tolerated_reading
 from rigbench.report.order import laws_in_order
 from rigbench.report.output_file import write_whole
 from rigbench.report.page.curve import charts
 from rigbench.report.page.data import NAMED, TRACE_LENGTH, cell_data, embedded, run_data
+from rigbench.report.page.gains import FoundGains, found_gains, gains_rows
 from rigbench.report.page.needs import KEY, READING, FoundNeeds, found_needs, needs_tables
+from rigbench.report.page.pairs import pairs_tables
 from rigbench.report.page.runs import CellRuns, NamedRun, read_runs, shown_scores
 from rigbench.report.page.sections import STEPS, break_even_rows, evidence, heads, matrix_rows, overview
 from rigbench.report.page.traces import Trace, chosen, traced
+from rigbench.report.page.worst import FoundWorst, found_worst, worst_laws_told
 from rigbench.report.shades import shade
 from rigbench.report.words import any_random, arm_words, has_levels, percent, runs_words, tolerance_words
+from rigbench.report.worst_words import READING as WORST_READING
 from rigbench.scores.gather import CellKey
 from rigbench.scores.results import Results
 
@@ -53,6 +58,7 @@ class Facts:
     store: str  # as the user names it
     experiment: tuple[str, str]  # path and text of the file
     seed: int | None
+    resume: str  # the command that goes on with it
     recorded: tuple[str, str]  # when its plan was first and last recorded, UTC
     hosts: tuple[Host, ...]
     date: datetime.date
@@ -67,6 +73,8 @@ class Findings:
     details: tuple[dict[str, Any], ...]
     tracebacks: tuple[str, ...]  # each once; the details have their numbers
     needs: FoundNeeds | None
+    worst: FoundWorst | None
+    gains: FoundGains | None
     named: int  # runs that the panels name
     replayed: int
 
@@ -86,7 +94,9 @@ def gathered(
     with store.one_moment():
         results = store.results()
         runs = read_runs(store, results)
-        facts, studied = _facts(store, path, date), store.study(KEY)
+        facts = _facts(store, path, date)
+        needs = found_needs(store.study(KEY), results.tolerance)
+        worst, gains = found_worst(store, results.tolerance), found_gains(store)
     named = list(_in_order(results, runs))
     wanted = chosen(named, most)
     tell(len(wanted), len(named))
@@ -96,8 +106,9 @@ def gathered(
     told = {run.key for run in named[:NAMED]}
     details = tuple(_details(store, path, results, runs, traces, told, numbers))
     replayed = sum(bool(one.error_mm) for one in traces.values())
-    needs = found_needs(studied, results.tolerance)
-    return Findings(facts, results, details, tuple(tracebacks.values()), needs, len(named), replayed)
+    return Findings(
+        facts, results, details, tuple(tracebacks.values()), needs, worst, gains, len(named), replayed
+    )
 
 
 def write_page(findings: Findings, path: Path) -> None:
@@ -141,8 +152,13 @@ def page_html(findings: Findings) -> str:
         evidence=deciding,
         charts={sheet: list(charts(grid, sheet, laws, scores)) for sheet in results.sheets},
         break_even=list(break_even_rows(grid)),
+        pairs=list(pairs_tables(grid, laws)),
         needs=list(needs_tables(findings.needs)),
         needs_reading=READING,
+        worst=None if findings.worst is None else list(worst_laws_told(findings.worst, facts.store)),
+        worst_reading=WORST_READING,
+        gains_aim="" if findings.gains is None else aim_words(findings.gains.aim),
+        gains=None if findings.gains is None else list(gains_rows(findings.gains)),
         cautions=(CAUTION, BEFORE_A_REAL_ARM, NOT_MODELLED),
         commands=commands,
         steps=[(step, shade(step / STEPS), _dark(step / STEPS)) for step in range(STEPS + 1)],
@@ -171,15 +187,19 @@ def _commands(facts: Facts) -> dict[str, str]:
         "status": f"rigbench status {store}",
         "json": f"rigbench status {store} --json",
         "matrix": f"rigbench matrix {store}",
+        "pairs": f"rigbench matrix {store} --text",
         "export": f"rigbench export {store}",
         "needs": f"rigbench needs {store}",
+        "worst": f"rigbench worst {store}",
+        "gains": f"rigbench gains {store}",
         "check": f"rigbench check {experiment}",
     }
 
 
 def _facts(store: Reader, path: str, date: datetime.date) -> Facts:
     seed, first, last = store.history
-    return Facts(path, store.experiment, seed, (first, last), tuple(store.hosts().values()), date)
+    hosts = tuple(store.hosts().values())
+    return Facts(path, store.experiment, seed, store.labels.resume, (first, last), hosts, date)
 
 
 def _in_order(results: Results, runs: dict[CellKey, CellRuns]) -> Iterator[NamedRun]:

@@ -90,6 +90,7 @@ class _Table:
         self.state = np.array([STATES[outcome] for outcome in OUTCOMES])[self.outcome]
         self._places = store.places()
         self._cells = {(cell.sheet, cell.law, cell.condition): n for n, cell in enumerate(results.cells)}
+        self._settled = {cell.key: cell.planned for cell in results.cells if cell.settled}
 
     def cells(self) -> Iterator[tuple[CellKey, NDArray[np.int64]]]:
         """Yield each cell with the numbers of its rows."""
@@ -106,7 +107,9 @@ class _Table:
             yield key, order[bounds[n] : bounds[n + 1]]
 
     def cell(self, key: CellKey, rows: NDArray[np.int64]) -> CellRuns:
-        """Return what one cell's rows show."""
+        """Return what one cell's rows show; of a settled column's the draws after which it was settled."""
+        if key in self._settled:
+            rows = rows[self.draw[rows] < self._settled[key]]
         motion = self.motion[self.place[rows]]
         values = {}
         for m, motion_name in enumerate(self.motions):

@@ -116,10 +116,18 @@ def _strip(grid: Grid, sheet: str, law: str) -> Strip | None:
 
 
 def evidence(grid: Grid, laws: Sequence[str], levels: bool) -> list[Evidence]:
-    """Return what the sentence of advice rests on: the cells up to which a law keeps, and where it misses."""
-    numbers, found = _numbers(grid), []
-    for sheet in grid.results.sheets[:SHEETS]:
-        for law in [law for law in laws if grid.possible(sheet, law)][:DECIDING]:
+    """Return what the sentence of advice rests on: the cells up to which a law keeps, and where it misses.
+
+    Laws and sheets that the sentence names come first.
+    """
+    numbers, found, advice = _numbers(grid), [], grid.results.advice
+
+    def unnamed(name: str) -> bool:
+        return f"'{name}'" not in advice
+
+    for sheet in sorted(grid.results.sheets, key=unnamed)[:SHEETS]:
+        possible = [law for law in laws if grid.possible(sheet, law)]
+        for law in sorted(possible, key=unnamed)[:DECIDING]:
             columns = _deciding(grid, sheet, law)
             cells = [
                 (numbers[sheet, law, column.name], _cell_words(grid, grid.cell(sheet, law, column), column))

@@ -18,6 +18,8 @@ from rigbench.campaign.campaign import run_campaign
 from rigbench.campaign.plan import Entry, Plan, fair_order
 from rigbench.campaign.reading import Reader
 from rigbench.campaign.store import Store
+from rigbench.campaign.studies import tune, worst_case
+from rigbench.campaign.study import Study
 from rigbench.campaign.work import Host, Outcome
 from rigbench.laws.options import options_model
 from rigbench.laws.registry import choose, registered
@@ -95,11 +97,52 @@ def outcome_of(entry: Entry, law: int, rng: np.random.Generator, end: str) -> Ou
     return Outcome(entry.key, end, reason=reason, trace=trace, wall_s=0.25, host=HOST)
 
 
+def searches_of(plan: Plan) -> tuple[Study, Study]:
+    """A search for gains and one for worst cases, of all laws and sheets of a plan."""
+    runs: dict[tuple[str, str], dict[str, Run]] = {}
+    for entry in plan.entries:
+        if entry.condition == "nominal":
+            runs.setdefault((entry.sheet, entry.law), {})[entry.motion] = entry.run
+    gains = (tune.Gain("damping", 0.5, 2.0),)
+    best = [tune.Subject(*of, own, (1.0,), {"law": "computed-torque"}) for of, own in runs.items()]
+    worst = []
+    for of, own in runs.items():
+        acting = {name: replace(run, sources=run.mismatch.sources) for name, run in own.items()}
+        names = tuple(replace(next(iter(acting.values())), level=1.0, draw=0).factors())
+        worst.append(worst_case.Subject(*of, acting, names))
+    aim = tune.Aim("tool_rms_mm", {"chatter": 0.5})
+    limits = plan.tolerance or Tolerance({})
+    motions = len(plan.motions)
+    return (
+        tune.Tune(tuple(best), gains, aim, tune.least_runs(aim, motions), 3),
+        worst_case.WorstCase(tuple(worst), (0.5, 2.0), worst_case.least_runs(2, motions), limits, 3),
+    )
+
+
+def searched_outcome(entry: Entry, law: int) -> Outcome:
+    """The better the nearer the damping is to 0.7, and worse the further a machine departs; law 1 chatters at all gains."""
+    damping = dict(entry.run.law.options)["damping"]
+    off = abs(sum(u / (k + 1) for k, (_, u) in enumerate(entry.run.directions or ())))
+    scores = {"tool_rms_mm": 0.5 + abs(damping - 0.7), "chatter": float(law == 1)}
+    scores["tool_peak_mm"] = 0.1 + (entry.level or 0.0) * off / (1 + law)
+    return Outcome(entry.key, "finished", scores=scores, residual=0.0, wall_s=0.01, host=HOST)
+
+
+def search(store: Store, plan: Plan, rounds: int) -> None:
+    """Go on with both searches for so many rounds; they are recorded as a campaign does it."""
+    for study in searches_of(plan):
+        for _ in range(rounds):
+            asked = [entry for batch in study.rounds(store.row_of) for entry in batch]
+            todo = {entry.key: entry for entry in asked if store.row_of(entry) is None}
+            store.record_study(study, asked, finished=not todo)
+            store.add([searched_outcome(entry, plan.laws.index(entry.law)) for entry in todo.values()], [])
+
+
 def build(
     path: Path, laws: int | Sequence[str] = 3, columns: int = 4, draws: int = 8, *,
-    done: float = 1.0, ends: Callable[[Entry], str] = lambda entry: "finished", **given: Any,
+    done: float = 1.0, ends: Callable[[Entry], str] = lambda entry: "finished", rounds: int = 0, **given: Any,
 ) -> Path:  # fmt: skip
-    """Fill a store with invented outcomes of a share ``done`` of the planned runs."""
+    """Fill a store with invented outcomes of a share ``done`` of the planned runs, then ``rounds`` of searches."""
     names = [f"law {k}" for k in range(laws)] if isinstance(laws, int) else list(laws)
     plan, rng = plan_of(names, columns, draws, **given), np.random.default_rng(1)
     outcomes = [
@@ -111,6 +154,7 @@ def build(
     with Store.open_for_writing(path, plan) as store:
         store.record_plan(plan)
         store.add(outcomes, values)
+        search(store, plan, rounds)
     return path
 
 

@@ -19,17 +19,21 @@ import pytest
 from rigbench.campaign.plan import Entry, Plan
 from rigbench.campaign.reading import Reader
 from rigbench.campaign.store import Store
+from rigbench.campaign.studies.tune import gains_found
+from rigbench.campaign.studies.worst_case import worst_found
 from rigbench.campaign.work import Outcome
+from rigbench.errors import StoreError
 from rigbench.report.cautions import BEFORE_A_REAL_ARM, CAUTION, NOT_MODELLED
 from rigbench.report.json_form import results_json
 from rigbench.report.needs_words import share_words
 from rigbench.report.page.data import embedded
 from rigbench.report.page.needs import FoundNeeds
 from rigbench.report.page.page import gathered, page_html
+from rigbench.report.words import signed
 from rigbench.scores.needs import Alone, LawNeeds, SourceNeed
 from rigbench.scores.needs_design import Group, NeedsDesign, Subject
 from rigbench.scores.own_limits import FoundLevel
-from rigbench.scores.results import Tolerated
+from rigbench.scores.results import Tolerance, Tolerated
 
 ROOT = Path(__file__).resolve().parents[3]
 EVIL = (
@@ -86,10 +90,19 @@ def test_nothing_that_users_name_is_markup(
         return "law-error" if entry.law == EVIL[0] and entry.draw == 1 else "finished"
 
     store = make_store(
-        EVIL, 3, 4, sheets=(EVIL[2], "two"), motions=(EVIL[3],), title=EVIL[1], text=EVIL[1] + "\n", ends=ends
+        EVIL,
+        3,
+        4,
+        sheets=(EVIL[2], "two"),
+        motions=(EVIL[3],),
+        title=EVIL[1],
+        text=EVIL[1] + "\n",
+        ends=ends,
+        rounds=1,
     )
     page = Reading(make_page(store))
     assert len(page.scripts) == 2
+    assert {"pairs", "worst", "gains"} <= page.ids()
     assert not [
         tag for tag, _ in page.tags if tag in {"img", "b", "iframe", "object", "embed", "link", "base"}
     ]
@@ -182,7 +195,8 @@ def test_sections_appear_when_there_is_something_in_them(
     always = {"decision", "matrix", "experiment", "cautions"}
     plain = Reading(make_page(make_store(2, 1, 1, name="plain.sqlite")))
     assert always <= plain.ids()
-    assert not {"curves", "break-even"} & plain.ids()
+    assert not {"curves", "break-even", "worst", "gains"} & plain.ids()
+    assert "pairs" not in Reading(make_page(make_store(1, 3, 4, name="alone.sqlite"))).ids()
     crossing = make_store(4, 4, 12, name="crossing.sqlite")
     with Reader.open_for_reading(crossing) as reader:
         found = reader.results().break_even
@@ -228,6 +242,113 @@ def test_what_must_be_known_is_told_where_it_was_asked(
     assert share_words((0.9, 0.8, 1.0)) in rows
     assert "Identify first" in page.said
     assert "<law>" in page.said
+
+
+def section(page: Reading, title: str, following: str) -> str:
+    """The words of a section; its title stands in the navigation first."""
+    return page.said.split(title, 2)[2].split(following, 1)[0]
+
+
+def test_worst_machines_are_those_of_the_study(
+    make_store: Callable[..., Path], make_page: Callable[[Path], Path]
+) -> None:
+    """A row a level and law with the share of the limit; the smallest level that misses; the replay of a run.
+
+    The invented peaks of law 1 are half of law 0's, but for 0.1 mm.
+    """
+    store = make_store(2, 3, 4, rounds=40)
+    page = Reading(make_page(store))
+    words = section(page, "Worst machines found", "Gains found")
+    with Reader.open_for_reading(store) as reader:
+        study = reader.study("worst_case")
+        assert study is not None
+        found = worst_found(study, Tolerance({"tool_peak_mm": 1.0}))
+    assert {one.law for one in found} == {"law 0", "law 1"}
+    for one in found:
+        assert one.used is not None
+        assert one.record is not None
+        if one.searched:
+            assert f"{100 * one.used.share:.3g} % of its limit, in 'load tray'" in words
+            assert f"{one.runs} runs" in words
+    for law in ("law 0", "law 1"):
+        missing = [one for one in found if one.law == law and one.misses]
+        assert (
+            f"Smallest level found to miss: {missing[0].level:.3g} (run {missing[0].record.key[:12]})"
+            in words
+        )
+        searched = next(one for one in missing if one.searched)
+        assert f"Replayed by rigbench trace trays.sqlite {searched.record.key[:12]}" in words
+    assert words.count("link_mass_percent.upper") == 2
+    assert "there may still be one" in words
+    assert "the worst case" not in words
+    assert "Printed by rigbench worst trays.sqlite" in words
+
+
+def test_gains_are_those_of_the_study(
+    make_store: Callable[..., Path], make_page: Callable[[Path], Path]
+) -> None:
+    """Found ones with their score beside the declared; where none keeps the limits, that and no score."""
+    store = make_store(2, 3, 4, rounds=40)
+    words = section(Reading(make_page(store)), "Gains found", "Experiment")
+    with Reader.open_for_reading(store) as reader:
+        study = reader.study("tune")
+        assert study is not None
+        found, none = gains_found(study)
+    assert (found.within, none.within) == (True, False)
+    assert f"law 0damping {found.gains['damping']:g}tool RMS {found.score:.3g} mmdamping 1" in words
+    assert "law 1none within the limits: the declared stay\u2013damping 1" in words
+    assert "least tool RMS on the nominal machine; chatter at most 0.5" in words
+    assert "The runs of the matrix have the gains found" in words
+    assert "Printed by rigbench gains trays.sqlite" in words
+
+
+def test_a_search_that_is_not_finished_is_said_to_be_so(
+    make_store: Callable[..., Path], make_page: Callable[[Path], Path]
+) -> None:
+    """With the command that goes on with it; and nothing is claimed of the matrix's gains."""
+    for rounds, times in ((1, 2), (40, 0)):
+        page = Reading(make_page(make_store(2, 3, 4, rounds=rounds, name=f"{rounds}.sqlite")))
+        assert page.said.count("not finished") == times
+        assert page.said.count("rigbench run trays.yaml goes on with it") == times
+        assert ("have the gains found" in page.said) is (times == 0)
+
+
+def test_a_search_that_cannot_be_told_here_says_why(
+    make_store: Callable[..., Path], make_page: Callable[[Path], Path], monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """A run that this rigbench does not know how to restore leaves the rest of the page as it is."""
+
+    def unknown(store: Reader, key: str) -> None:
+        raise StoreError("trays.sqlite", "run can't be replayed: unknown")
+
+    store = make_store(2, 3, 4, rounds=40)
+    monkeypatch.setattr(Reader, "kept", unknown)
+    page = Reading(make_page(store))
+    assert "It can't be told here: trays.sqlite: run can't be replayed: unknown" in page.said
+    assert {"matrix", "worst", "gains"} <= page.ids()
+
+
+@pytest.mark.parametrize("sheets", [("",), ("one", "two")])
+def test_laws_are_compared_draw_by_draw(
+    make_store: Callable[..., Path], make_page: Callable[[Path], Path], sheets: tuple[str, ...]
+) -> None:
+    """Against the first law of the matrix, as many ties as the comparisons have, and the command for it."""
+    store = make_store(3, 5, 12, sheets=sheets)
+    page = Reading(make_page(store))
+    with Reader.open_for_reading(store) as reader:
+        results = reader.results()
+    words = section(page, "Law against law", "Experiment")
+    first = words.split("Draw by draw against '")[1].split("'")[0]
+    own = [one for one in results.comparisons if first in one.laws]
+    assert len(own) == 2 * 5 * len(sheets)
+    ties = sum(one.difference.tie for one in own)
+    assert 0 < ties < len(own)
+    assert len(re.findall(r"\btie\b", words)) == ties + len(sheets)  # each reading says what a tie is
+    for one in own:
+        sign = 1 if one.laws[1] == first else -1
+        assert signed(sign * one.difference.value) in words
+    command = "matrix trays.sqlite --text" if sheets == ("",) else "status trays.sqlite --json"
+    assert f"Printed by rigbench {command}" in words
 
 
 def test_all_of_a_page_is_of_one_moment(

@@ -97,6 +97,45 @@ def test_no_rule_of_accessibility_is_broken(played: Path, opened: Open, scheme: 
     assert len(result.response["passes"]) > 20
 
 
+@pytest.fixture
+def with_searches(make_store: Callable[..., Path], make_page: Callable[[Path], Path]) -> Path:
+    """The page of a store with laws compared, worst machines and gains found, in two sheets."""
+    laws = ["soft", "stiff", "a law of many words (natural_hz 8, damping 0.7)"]
+    return make_page(make_store(laws, 4, 6, sheets=("control_hz 500", "control_hz 1000"), rounds=40))
+
+
+@pytest.mark.parametrize("scheme", ["light", "dark"])
+def test_what_searches_found_breaks_no_rule_either(with_searches: Path, opened: Open, scheme: str) -> None:
+    """By axe's rules with everything unfolded; each table has a caption and heads of rows and columns."""
+    axe = pytest.importorskip("axe_playwright_python.sync_playwright")
+    seen = opened(with_searches, scheme=scheme)
+    page = seen.page
+    page.evaluate("for (const one of document.querySelectorAll('details')) one.open = true")
+    for section, tables in (("pairs", 2), ("worst", 12), ("gains", 1)):
+        assert page.locator(f"nav a[href='#{section}']").is_visible()
+        own = page.locator(f"#{section} table")
+        assert own.count() == tables
+        for part in ("caption", "thead th[scope=col]", "tbody th[scope=row]"):
+            assert page.locator(f"#{section} table:has({part})").count() == tables
+    quiet(seen, with_searches)  # before axe's own script
+    result = axe.Axe().run(page)
+    assert result.violations_count == 0, result.generate_report()
+
+
+def test_what_searches_found_fits_a_phone_and_paper(with_searches: Path, opened: Open) -> None:
+    """No wider than the screen; on an upright A4 page, 182 mm within its margins, no table is cut off."""
+    page = opened(with_searches, width=390).page
+    assert page.evaluate("document.documentElement.scrollWidth") <= 390
+    page = opened(with_searches, width=688).page
+    page.emulate_media(media="print")
+    page.evaluate("for (const one of document.querySelectorAll('details')) one.open = true")
+    ends = page.locator("#pairs table, #worst table, #gains table").evaluate_all(
+        "all => all.map((one) => one.getBoundingClientRect().right)"
+    )
+    assert len(ends) == 15
+    assert max(ends) <= 688
+
+
 def brightness(picture: bytes) -> float:
     return float(np.asarray(Image.open(io.BytesIO(picture)).convert("L")).mean()) / 255
 

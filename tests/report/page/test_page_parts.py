@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable
+from dataclasses import replace
 from itertools import pairwise
 from pathlib import Path
 
@@ -15,8 +16,11 @@ from hypothesis import strategies as st
 from rigbench.campaign.find import worst_run
 from rigbench.campaign.plan import Entry
 from rigbench.campaign.reading import Reader
+from rigbench.report.cells import Grid
 from rigbench.report.page.bins import BINS, Bins, binned
+from rigbench.report.page.curve import LINE, charts
 from rigbench.report.page.runs import CellRuns, NamedRun, read_runs
+from rigbench.report.page.sections import DECIDING, SHEETS, evidence
 from rigbench.report.page.traces import POINTS, chosen, peaks, traced
 
 values = st.lists(st.floats(0.0, 1e6) | st.just(math.inf), min_size=1, max_size=60)
@@ -168,3 +172,29 @@ def test_replays_are_bounded_by_number_or_by_time() -> None:
     assert chosen(runs, 7) == runs[:7]
     assert chosen(runs, 0) == []
     assert chosen(runs, None) == runs[:80]
+
+
+def test_the_evidence_is_of_what_the_advice_names(make_store: Callable[..., Path]) -> None:
+    """However far down the matrix a law or a sheet stands; the others follow in the order given."""
+    sheets = tuple(f"sheet {k}" for k in range(SHEETS + 2))
+    with Reader.open_for_reading(make_store(DECIDING + 3, 3, 3, sheets=sheets)) as store:
+        results = store.results()
+    last, laws = results.laws[-1], results.laws
+    results = replace(results, advice=f"In '{sheets[-1]}': take '{last}'.")
+    found = evidence(Grid(results), laws, levels=True)
+    assert [(one.sheet, one.law) for one in found] == [
+        (sheet, law) for sheet in (sheets[-1], sheets[0]) for law in (last, *laws[: DECIDING - 1])
+    ]
+
+
+def test_names_beside_the_curves_are_whole_and_apart(make_store: Callable[..., Path]) -> None:
+    """A long name takes several lines, none of which lies on another's; all are within the picture."""
+    laws = [f"law {k} " + "of many words " * (k % 4) for k in range(12)]
+    with Reader.open_for_reading(make_store(laws, 4, 6)) as store:
+        results = store.results()
+    chart = next(charts(Grid(results), "", results.laws, ["tool_peak_mm"]))
+    assert [" ".join(curve.names) for curve in chart.curves] == [law.strip() for law in results.laws]
+    places = sorted(y for curve in chart.curves for y, _ in curve.labels)
+    assert len(places) > len(laws)
+    assert min(b - a for a, b in pairwise(places)) >= LINE - 1e-6
+    assert 0.0 < places[0] < places[-1] < chart.bottom + LINE
