@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import datetime
 import time
-from collections.abc import Callable, Iterator, Sequence
+from collections.abc import Callable, Iterable, Iterator, Sequence
 from pathlib import Path
 
 from rigbench.arm.files import ArmFiles
@@ -25,12 +25,17 @@ from rigbench.campaign.store import Store
 from rigbench.campaign.studied import Studied
 from rigbench.campaign.studies.tune import GainsFound, gains_found
 from rigbench.campaign.studies.worst_case import WorstFound, worst_found
+from rigbench.campaign.tally import telling_column
 from rigbench.errors import Fault, InputFaults, nearest
 from rigbench.experiment import Experiment
+from rigbench.report.level_curves import level_curves_picture
+from rigbench.report.limits import limits_picture
 from rigbench.report.matrix import matrix_picture
 from rigbench.report.page.page import gathered, write_page
-from rigbench.report.view import SHARE, SHOWS, View
+from rigbench.report.view import MEDIAN, SHARE, SHOWS, View
+from rigbench.scores.changes import changes_since
 from rigbench.scores.gating import Check, judge
+from rigbench.scores.levels import ladder
 from rigbench.scores.needs import LawNeeds, needs_of
 from rigbench.scores.needs_design import NeedsDesign
 from rigbench.scores.results import Results, Tolerance
@@ -103,17 +108,27 @@ def _wrong(
         yield Fault(file, None, "jobs", f"{jobs} are wished for", "0 or more")
 
 
-def draw_matrix(results: Results, picture: File, show: str = SHARE, score: str = "") -> None:
-    """Draw the results matrix as .png, .svg or .pdf; ``show`` share, median, p95 or ratio, of ``score``.
+def draw_matrix(
+    results: Results, picture: File, show: str = SHARE, score: str = "", against: Results | None = None
+) -> None:
+    """Draw what results show as .png, .svg or .pdf.
 
-    InputFaults for another ``show``, and for a score that no cell of the results has.
+    ``show``: share, median, p95 or ratio in the cells of the matrix, of ``score`` (the main one if left out),
+    or what changed ``against`` older results; 'curves': the share against the level, or the median of
+    ``score``; 'limits': the draws' own limits that find_level found. InputFaults for another ``show``, and
+    for a score that no cell of the results has.
     """
-    scores = list(dict.fromkeys(name for cell in results.cells for name in cell.measures))
-    for what, name, known in (("show", show, SHOWS), ("score", score, scores)):
-        if name and known and name not in known:
-            expected, near = f"one of {', '.join(known)}", nearest(name, known)
-            raise InputFaults([Fault(str(picture), None, what, f"there is no '{name}'", expected, near)])
-    matrix_picture(results, Path(picture), datetime.date.today(), View(show, score))
+    scores = tuple(dict.fromkeys(name for cell in results.cells for name in cell.measures))
+    _check(picture, "show", (show,), (*SHOWS, "curves", "limits"))
+    _check(picture, "score", filter(None, (score,)), scores)
+    path, today = Path(picture), datetime.date.today()
+    if show == "curves":
+        level_curves_picture(results, path, today, View(MEDIAN, score) if score else View(SHARE))
+    elif show == "limits":
+        limits_picture(results, path, today)
+    else:
+        changes = None if against is None else changes_since(against, results, score or None)
+        matrix_picture(results, path, today, View(show, score), changes, "older results" if changes else "")
 
 
 def write_report(store: File, page: File, traces: int | None = None) -> None:
@@ -122,20 +137,39 @@ def write_report(store: File, page: File, traces: int | None = None) -> None:
         write_page(gathered(opened, str(store), datetime.date.today(), traces), Path(page))
 
 
-def gate(store: File, laws: Sequence[str], condition: str, allow_open: bool = False) -> tuple[Check, ...]:
-    """Return whether laws keep the tolerance under a condition (its column's name), in every sheet.
+def gate(
+    store: File,
+    laws: Sequence[str],
+    *,
+    condition: str | None = None,
+    level: float | None = None,
+    sheets: Sequence[str] = (),
+    baseline: File | None = None,
+    allow_open: bool = False,
+) -> tuple[Check, ...]:
+    """Return whether laws keep the tolerance, and are no worse than in a ``baseline`` store.
 
-    InputFaults for a law or condition that the store doesn't have.
+    Under a ``condition`` (its column's name), or all sources together at a ``level``; by default together
+    nearest to level 1. In the ``sheets`` named, or all. InputFaults for what the store doesn't have.
     """
     with Store.open_for_reading(store) as opened:
         results = opened.results(brief=True)
-    known = {"law": results.laws, "condition": tuple(column.name for column in results.columns)}
-    for what, names in (("law", laws), ("condition", (condition,))):
-        for name in names:
-            if name not in known[what]:
-                problem = f"there is no {what} '{name}'"
-                raise InputFaults.one(store, what, problem, f"one of {', '.join(known[what])}")
-    return judge(results, laws, condition, results.sheets, allow_open)
+    names = tuple(column.name for column in results.columns)
+    levels = {column.level or 0.0: column.name for column in ladder(results.columns)}
+    if level is not None and level not in levels:
+        known = ", ".join(f"{one:g}" for one in levels)
+        raise InputFaults.one(store, "level", f"nothing was run at {level:g}", f"one of {known}")
+    _check(store, "law", laws, results.laws)
+    _check(store, "condition", () if condition is None else (condition,), names)
+    _check(store, "sheet", sheets, results.sheets)
+    changes = None
+    if baseline is not None:
+        with Store.open_for_reading(baseline) as older:
+            changes = changes_since(older.results(brief=True), results)
+    telling = telling_column(results.columns)
+    if condition is None:
+        condition = levels[level] if level is not None else telling.name if telling else ""
+    return judge(results, laws, condition, sheets or results.sheets, allow_open, changes)
 
 
 def needs(store: File) -> tuple[LawNeeds, ...]:
@@ -178,10 +212,20 @@ def gears(arm: File, joints: Sequence[str] = (), ratios: Sequence[float] = RATIO
     """Work out what each gear ratio does to the joints of an arm file (all where none is named)."""
     files = ArmFiles.read(arm)
     known = files.arm().joints
-    for joint in joints:
-        if joint not in known:
-            raise InputFaults.one(arm, "joints", f"there is no joint '{joint}'", f"one of {', '.join(known)}")
+    _check(arm, "joint", joints, known)
     return gears_of(files, [joint for joint in known if joint in joints or not joints], ratios)
+
+
+def _check(where: File, what: str, names: Iterable[str], known: Sequence[str]) -> None:
+    """Raise InputFaults for all names that are not among those known."""
+    expected = f"one of {', '.join(known)}"
+    faults = [
+        Fault(str(where), None, what, f"there is no {what} '{name}'", expected, nearest(name, known))
+        for name in names
+        if name not in known
+    ]
+    if faults:
+        raise InputFaults(faults)
 
 
 def _studied(store: Reader, name: str) -> Studied:

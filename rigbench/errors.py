@@ -190,7 +190,7 @@ class Stopped(RigbenchError):
         super().__init__(done, planned, resume, why, unfinished)
 
     def __str__(self) -> str:
-        left = f" and {listed(self.unfinished)} not finished" if self.unfinished else ""
+        left = f" ({listed(self.unfinished)} not finished)" if self.unfinished else ""
         return (
             f"stopped {self.why}, with {self.done} of {self.planned} runs stored{left}; "
             f"nothing is lost: '{self.resume}' goes on from here"

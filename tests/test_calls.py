@@ -82,6 +82,17 @@ def test_pictures_pages_gates_and_traces(campaign, tmp_path):
     assert (tmp_path / "m.png").read_bytes().startswith(b"\x89PNG")
     rigbench.write_report(store, tmp_path / "r.html", traces=0)
     assert "computed torque" in (tmp_path / "r.html").read_text()
+    for show in ("curves", "median"):
+        rigbench.draw_matrix(results, tmp_path / f"{show}.png", show=show, score="joint_rms_deg")
+    rigbench.draw_matrix(results, tmp_path / "against.svg", against=results)
+    assert (tmp_path / "against.svg").read_text().startswith("<?xml")
+    with pytest.raises(InputFaults, match="no score 'tool_peek_mm'"):
+        rigbench.draw_matrix(results, tmp_path / "none.png", score="tool_peek_mm")
+    level = rigbench.gate(store, ["pd"], level=1, baseline=store, allow_open=True)
+    assert [check.of for check in level] == ["tolerance", "baseline"]
+    assert {check.cell.condition for check in level} == {"all at 1"}
+    with pytest.raises(InputFaults, match="nothing was run at 3"):
+        rigbench.gate(store, ["pd"], level=3)
     checks = rigbench.gate(store, ["computed torque", "pd"], condition="nominal")
     assert [check.cell.law for check in checks] == ["computed torque", "pd"]
     assert checks[0].state == "passed"

@@ -10,7 +10,8 @@ from __future__ import annotations
 
 from typing import Annotated, Any
 
-from pydantic import ConfigDict, Field, create_model
+from pydantic import ConfigDict, Field, create_model, field_validator
+from pydantic_core import PydanticKnownError
 
 from rigbench.arm.declaration import DriveDeclaration
 from rigbench.experiment.condition_keys import ConditionsKeys
@@ -191,3 +192,11 @@ class ExperimentKeys(Declared):
         description="find the gains of each law that do best on the nominal machine, by runs before the "
         "matrix, which then has them; {} for the defaults; default: the gains as declared",
     )
+
+    @field_validator("tolerance", "vary", "find_level", "needs", "worst_case", "tune", mode="before")
+    @classmethod
+    def _given(cls, value: Any) -> Any:
+        """Refuse a key without a value: left out and ignored are not the same to whoever wrote it."""
+        if value is None:
+            raise PydanticKnownError("dict_type")
+        return value

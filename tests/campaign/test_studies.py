@@ -152,7 +152,7 @@ def test_a_stop_before_a_study_has_begun_is_told(tmp_path: Path, doing: ModuleTy
             os.kill(os.getpid(), signal.SIGINT)
 
     with Store.open_for_writing(tmp_path / "s.sqlite", plan) as store:
-        with pytest.raises(Stopped, match="as asked, with 6 of 6 runs stored and growing not finished;"):
+        with pytest.raises(Stopped, match=r"as asked, with 6 of 6 runs stored \(growing not finished\);"):
             run_campaign(plan, store, on_progress=stop_at_last, executor=InProcess(doing.work))
         assert store.unfinished() == ("growing",)
 
@@ -170,7 +170,7 @@ def test_a_second_signal_between_two_runs_is_a_stop_like_any(
 
     with (
         Store.open_for_writing(tmp_path / "s.sqlite", plan) as store,
-        pytest.raises(Stopped, match="growing not finished; nothing is lost: 'rigbench run"),
+        pytest.raises(Stopped, match=r"\(growing not finished\); nothing is lost: 'rigbench run"),
     ):
         run_campaign(plan, store, on_progress=stop_twice, executor=InProcess(doing.work))
 

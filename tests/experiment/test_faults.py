@@ -162,7 +162,7 @@ def test_rests_go_with_via_points(faults: Faults, folder: Path) -> None:
 
 def test_a_key_of_a_later_version_lists_the_valid_ones(faults: Faults) -> None:
     """An unknown key that resembles none says which there are."""
-    (fault,) = faults(worst_case={})
+    (fault,) = faults(quorum={})
     assert fault.problem == "unknown key"
     assert "mismatch" in fault.expected
 
@@ -314,3 +314,14 @@ def test_expectations_are_exact(faults: Faults, changes: dict[str, Any], expecte
     """A list of one length only says so; a bound is printed with all its digits."""
     (fault,) = faults(**changes)
     assert fault.expected == expected
+
+
+@pytest.mark.parametrize("key", ["tolerance", "vary", "find_level", "needs", "worst_case", "tune"])
+def test_a_key_without_a_value_is_a_fault(write: Callable[..., Path], key: str) -> None:
+    """As 'find_level:' with nothing behind it, which may not pass for one that was left out."""
+    path = write(**{key: None})
+    path.write_text(f"{path.read_text('utf-8')}{key}:\n", encoding="utf-8")
+    with pytest.raises(InputFaults) as caught:
+        load_experiment(path)
+    [fault] = caught.value.faults
+    assert (fault.key, fault.problem) == (key, "an empty value is not a mapping of keys")
