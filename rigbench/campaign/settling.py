@@ -4,7 +4,8 @@ A column is a condition in a sheet. Its laws are looked at after each draw of it
 every run of every law has come to something; it is settled after the first draw at which the interval that
 holds at any time (see scores/anytime.py) lies on one side of the required share for each law. So the laws of
 a column keep the same draws, and the number of them follows from the stored rows alone, in whichever order
-they came. A draw with a host's trouble does not count for its law, as in the cells.
+they came. A draw with a host's trouble does not count for its law, as in the cells; a law of which none of
+the first 20 counts holds nobody up any more, and opens the column again once a run of it comes to something.
 """
 
 from __future__ import annotations
@@ -31,6 +32,9 @@ ColumnKey = tuple[str, str]
 
 UNKNOWN, TROUBLE, MISSED, KEPT = range(4)
 """What came of a run: nothing yet, a host's trouble, the machine's verdicts."""
+
+PATIENCE = 20
+"""Draws in which a law may come to nothing before the others go on without it."""
 
 _settled = lru_cache(maxsize=65536)(settled)
 
@@ -161,7 +165,9 @@ class _Column:
                 if TROUBLE not in codes:
                     sums[0] += MISSED not in codes
                     sums[1] += 1
-            if all(_settled(passed, count, self._share) != "open" for passed, count in self._counted):
+            patient = self._seen < PATIENCE
+            counted = [(passed, count) for passed, count in self._counted if count or patient]
+            if counted and all(_settled(*sums, self._share) != "open" for sums in counted):
                 self.after = self._seen
 
 

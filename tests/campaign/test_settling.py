@@ -297,6 +297,21 @@ def test_a_crash_does_not_count_and_may_open_a_column_again(tmp_path: Path, buil
         assert all(cell.incomplete == 0 for cell in store.results().cells)
 
 
+def test_a_law_that_comes_to_nothing_holds_nobody_up(tmp_path: Path, build: PlanMaker) -> None:
+    """A law that raises in every run: after 20 draws the other, which fails them all, is settled without it."""
+    broken: dict[str, Keeps] = {"all at 1": lambda law, draw: None if law == "pd" else False}
+    plan = build(60, columns=COLUMNS[:2])
+    with Store.open_for_writing(tmp_path / "s.sqlite", plan) as store:
+        run_campaign(plan, store, executor=InProcess(work_of(broken)))
+        assert store.labels.settled == (("", "all at 1", 20),)
+        results = store.results()
+        assert results.cell("", "mine", "all at 1").verdict == "misses"
+        assert (results.cell("", "pd", "all at 1").draws, results.cell("", "pd", "all at 1").incomplete) == (
+            0,
+            20,
+        )
+
+
 def test_a_part_of_the_draws_and_laws_anew(tmp_path: Path, build: PlanMaker, doing: ModuleType) -> None:
     """A part settles what it can; a law done anew is looked at anew."""
     plan = build(60, columns=COLUMNS[:2])
