@@ -20,7 +20,8 @@ class ComputedTorque(InertiaLaw):
 
     With an exact model each joint's error obeys e'' + Kd e' + Kp e = 0, so Kp [s^-2] and Kd [s^-1]
     pass through the inertia matrix. M and h are worked out at the sensed state, friction at the
-    reference's velocity, at model_hz, and held in between. Jr = G^2 Jm [kg m^2].
+    reference's velocity, at model_hz, and held in between; the rest at every tick. No error is remembered,
+    so nothing winds up where the drive limits the torque. Jr = G^2 Jm [kg m^2].
     Source: Luh, Walker, Paul 1980 (from memory).
 
     With filter_hz the reference passes a critically damped second-order filter first. What it lags by

@@ -17,8 +17,11 @@ __all__ = ["GravityCompensated"]
 class GravityCompensated(HeldTermLaw):
     """tau = Kp (q_ref - q) + Kd (v_ref - v) + g(q) [+ friction(v_ref)].
 
-    g [N m] is the model's gravity torque with its believed payload, at the sensed position, worked out
-    at model_hz. At rest Kp e = g_true - g_model. Source: Takegaki, Arimoto 1981 (from memory).
+    g [N m] is the model's gravity torque with its believed payload, at the sensed position. At rest
+    Kp e = g_true - g_model.
+
+    g and friction are worked out at model_hz and held in between, the feedback at every tick; no state, so
+    nothing winds up where the drive limits the torque. Source: Takegaki, Arimoto 1981 (from memory).
     """
 
     def model_term(self, t: float, q: Floats, v: Floats, ref: Reference) -> Floats:

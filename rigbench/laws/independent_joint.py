@@ -17,7 +17,9 @@ class IndependentJoint(PdLaw):
     q, v [rad, rad/s] are sensed, q_ref, v_ref the motion's; tau [N m] at the joint. It knows nothing
     of the links beyond the inertia in its gains; what the rest of the arm does to a joint is a
     disturbance, which a gearbox of ratio G divides by G and the feedback has to fight.
-    Source: common practice; Craig, "Introduction to Robotics", ch. 9 (from memory).
+
+    Worked out at every tick and held in between; no state, so nothing winds up where the drive limits the
+    torque. Source: common practice; Craig, "Introduction to Robotics", ch. 9 (from memory).
     """
 
     def torque(self, t: float, q: Floats, v: Floats, ref: Reference, held: Floats) -> Floats:

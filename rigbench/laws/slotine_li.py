@@ -10,23 +10,23 @@ from rigbench.arm.arm import LINK, Floats
 from rigbench.arm.dynamics import place
 from rigbench.arm.kernel import kernel
 from rigbench.arm.physical import add_point_mass
-from rigbench.laws.feedback import believed_friction, saturated
-from rigbench.laws.gains import PdLaw, positive_damping, positive_kd
-from rigbench.laws.law import A_REF, Q_REF, TAU, V_REF, Compiled, Q, Reference, Setup, V, option
-from rigbench.laws.model import STANDSTILL, FrictionTerm, friction_torque
-from rigbench.laws.passive import joint_torques, link_forces, link_motion, parameter_power, regressor
+from rigbench.laws.feedback import saturated
+from rigbench.laws.law import TAU, V_REF, Compiled, Q, Reference, Setup, V, option
+from rigbench.laws.model import STANDSTILL, friction_torque
+from rigbench.laws.passive import joint_torques, link_forces, link_motion, parameter_power
+from rigbench.laws.shifted import REFLECTED, SLOPE, ShiftedLaw, link_sizes, shift
 
 __all__ = ["SlotineLi"]
 
 ADAPTED = 12
 """Rows of the adapted numbers: ten for each link, then viscous and Coulomb friction of each joint."""
 
-REFLECTED, SLOPE, LIMIT, GAIN, TOGETHER = range(6, 11)
+LIMIT, GAIN, TOGETHER = range(8, 11)
 SIZE, STATE = slice(11, 11 + ADAPTED), slice(11 + ADAPTED, 11 + 2 * ADAPTED)
-"""Rows of ``own`` after kp, kd and the believed friction. GAIN is that of a tick: adaptation times period."""
+"""Rows of ``own`` after those of :meth:`ShiftedLaw.shifted_rows`. GAIN: adaptation times control period."""
 
 
-class SlotineLi(PdLaw):
+class SlotineLi(ShiftedLaw):
     """tau = (M(q) + Jr) a_r + C(q, v) v_r + g(q) + friction(v_ref) + Kd s, with adapted M, C and g.
 
     e = q_ref - q; L = Kp / Kd [1/s]; v_r = v_ref + L e, a_r = a_ref + L e', s = v_r - v = e' + L e [rad/s],
@@ -49,9 +49,6 @@ class SlotineLi(PdLaw):
     Each run starts from p_0 again. Source: Slotine, Li 1987 (from memory).
     """
 
-    damping: float = positive_damping()
-    kd: tuple[float, ...] | None = positive_kd()
-    friction: FrictionTerm = believed_friction()
     adapts: Literal["all", "links", "masses", "payload", "friction"] = option(
         "all",
         "",
@@ -71,8 +68,7 @@ class SlotineLi(PdLaw):
     def start(self, setup: Setup) -> None:
         """Take model and gains; what is adapted is as believed."""
         super().start(setup)
-        self._slope, self._limit = self._kp / self._kd, setup.torque_limit
-        self._period = 1.0 / setup.control_hz
+        self._limit, self._period = setup.torque_limit, 1.0 / setup.control_hz
         self._size, self._x = self._sizes(), np.zeros((ADAPTED, setup.n))
 
     def _sizes(self) -> Floats:
@@ -85,9 +81,7 @@ class SlotineLi(PdLaw):
             unit = add_point_mass(np.zeros(10), 1.0, arm.tool_position)
             sizes[:10, -1] = self.payload_bound_kg * unit
         elif self.adapts != "friction":
-            second = 0.5 * (ten[:, 4] + ten[:, 6] + ten[:, 9])
-            first = np.sqrt(ten[:, 0] * second)
-            sizes[:10] = share * np.vstack([ten[:, 0], *[first] * 3, *[second] * 6])
+            sizes[:10] = link_sizes(ten, self.bound_percent)
         if self.adapts in ("all", "friction"):
             sizes[10:] = share * arm.drives.viscous, share * arm.drives.coulomb
         return sizes
@@ -100,14 +94,11 @@ class SlotineLi(PdLaw):
     def torque(self, t: float, q: Floats, v: Floats, ref: Reference, held: Floats) -> Floats:
         """Return the torque (n,) [N m]."""
         del t, held
-        model, n, slope = self._model, self._model.n, self._slope
-        e, rate = ref.q - q, ref.v - v
-        v_r, a_r, s = ref.v + slope * e, ref.a + slope * rate, rate + slope * e
-        placed = np.empty((n, 12))
-        place(model.chain, q, placed)
-        columns = regressor(model.chain, placed, v, v_r, a_r)
+        model = self._model
+        v_r, a_r, s = self.shifted(q, v, ref)
+        columns = self.columns(q, v, v_r, a_r)
         change, sign = self._size * self._x, np.where(np.abs(ref.v) < STANDSTILL, 0.0, np.sign(ref.v))
-        torque: Floats = np.einsum("jik,ik->j", columns, model.chain[:n, LINK] + change[:10].T)
+        torque: Floats = np.einsum("jik,ik->j", columns, model.chain[: model.n, LINK] + change[:10].T)
         torque += model.reflected * a_r + self._kd * s + model.friction(ref.v, self.friction)
         torque += change[10] * v_r + change[11] * sign
         if not (np.abs(torque) > self._limit).any():
@@ -118,11 +109,11 @@ class SlotineLi(PdLaw):
         return torque
 
     def compiled(self) -> Compiled:
-        """Return the kernel; ``own`` rows: kp, kd, friction (4), and as the names at the top say."""
+        """Return the kernel; ``own`` rows: :meth:`shifted_rows`, and as the names at the top say."""
         n = self._model.n
         flags = np.full((2, n), [[self.adaptation * self._period], [float(self._together)]])
-        rest = [self._model.reflected, self._slope, self._limit, flags, self._size, self._x]
-        return Compiled(torque=_torque, own=np.vstack([self.own_rows(), *rest]))
+        rest = [self._limit, flags, self._size, self._x]
+        return Compiled(torque=_torque, own=np.vstack([self.shifted_rows(), *rest]))
 
 
 @kernel
@@ -131,10 +122,8 @@ def _torque(io: Floats, held: Floats, chain: Floats, own: Floats) -> None:
     size, x = own[SIZE], own[STATE]
     placed, moved, force, ten = np.empty((n, 12)), np.empty((n, 12)), np.empty((n, 6)), np.empty((n, 10))
     v_r, a_r, s, sign = np.empty(n), np.empty(n), np.empty(n), np.zeros(n)
+    shift(io, own[SLOPE], v_r, a_r, s)
     for i in range(n):
-        e, rate = io[Q_REF, i] - io[Q, i], io[V_REF, i] - io[V, i]
-        v_r[i], a_r[i] = io[V_REF, i] + own[SLOPE, i] * e, io[A_REF, i] + own[SLOPE, i] * rate
-        s[i] = rate + own[SLOPE, i] * e
         if abs(io[V_REF, i]) >= STANDSTILL:
             sign[i] = 1.0 if io[V_REF, i] > 0.0 else -1.0
         for k in range(10):

@@ -23,8 +23,9 @@ class TorqueFeedforward(HeldTermLaw):
     """tau = Kp (q_ref - q) + Kd (v_ref - v) + (M(q_ref) + Jr) a_ref + h(q_ref, v_ref) + friction(v_ref).
 
     The model term depends on the motion alone, so it may run at model_hz, far below control_hz (50 or
-    100 Hz beside a 1 kHz loop is common practice); between its ticks it is held. Jr = G^2 Jm
-    [kg m^2]. Source: An, Atkeson, Hollerbach, "Model-Based Control of a Robot Manipulator", 1988
+    100 Hz beside a 1 kHz loop is common practice); between its ticks it is held, and the feedback between
+    those of control_hz. Neither remembers an error, so nothing winds up where the drive limits the torque.
+    Jr = G^2 Jm [kg m^2]. Source: An, Atkeson, Hollerbach, "Model-Based Control of a Robot Manipulator", 1988
     (from memory).
 
     With terms: diagonal it is (diag M(q_ref) + Jr) a_ref + g(q_ref) + friction(v_ref): gravity and each

@@ -27,6 +27,8 @@ VARIANTS = [
     ("sliding-mode", {"boundary": 2.0}),
     ("pd-plus", {}),
     *(("slotine-li", {"adapts": adapts}) for adapts in ("all", "links", "masses", "payload", "friction")),
+    ("robust-passivity", {}),
+    ("robust-passivity", {"bound_percent": 100.0, "boundary": 20.0}),
 ]
 LAWS = tuple(dict.fromkeys(name for name, _ in VARIANTS))
 TICKS = 6
@@ -71,6 +73,14 @@ def compiled_torques(law, course):
 def test_every_built_in_law_is_tested_here():
     """No law of the package goes without the tests below."""
     assert set(LAWS) == {name for name, law in registered().laws.items() if law.package == "rigbench"}
+
+
+@pytest.mark.parametrize("name", LAWS)
+def test_each_law_says_what_happens_between_ticks_and_at_the_limit(name):
+    """What `rigbench laws NAME` prints of a built-in law says what is held, and what the drive's limit does."""
+    text = registered().laws[name].cls.__doc__
+    assert "held" in text
+    assert "limit" in text
 
 
 @pytest.mark.parametrize("friction", ["none", "viscous", "full"])

@@ -18,6 +18,7 @@ MODEL_BASED = (
     "sliding-mode",
     "pd-plus",
     "slotine-li",
+    "robust-passivity",
 )
 CHECKED = settings(  # the fixtures are builders without a state
     max_examples=25, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture]
@@ -47,6 +48,16 @@ def mass_and_slope(arm, q, v, step=1e-5):
     chain = arm.chain((0.0, 0.0, -9.81))
     slope = (mass_matrix(chain, q + step * v) - mass_matrix(chain, q - step * v)) / (2 * step)
     return mass_matrix(chain, q) + np.diag(arm.drives.reflected), slope
+
+
+def change_of_s(law, plant, q, v, ref, acceleration):
+    """V' of V = s^T (M + Jr) s / 2 on the plant, -s^T Kd s, and how far rounding and differences may go."""
+    off = ref.a - acceleration(plant, q, v, asked(law, q, v, ref))
+    slope, rate = law._kp / law._kd, ref.v - v
+    s, s_rate = rate + slope * (ref.q - q), off + slope * rate
+    mass, mass_rate = mass_and_slope(plant, q, v)
+    power = s @ mass @ s_rate
+    return power + 0.5 * s @ mass_rate @ s, -s @ (law._kd * s), 1e-8 * (1 + abs(power))
 
 
 @pytest.mark.parametrize("name", MODEL_BASED)
@@ -128,6 +139,68 @@ def test_the_function_of_slotine_and_li_falls_by_its_damping(
     change = s @ mass @ s_rate + 0.5 * s @ mass_rate @ s - np.sum(x_true * x_rate) / 1e-3
     size = 1 + np.abs(s @ mass @ s_rate) + np.abs(np.sum(x_true * x_rate)) / 1e-3
     assert change == pytest.approx(-s @ np.diag([25.0, 11.0]) @ s, abs=1e-8 * size)
+
+
+def wrong_within(arm, sizes, rng):
+    """The arm with each parameter of its links off by at most its size, (10, n); half of them by all of it.
+
+    No body need have such parameters: what is promised follows from the torque being linear in them.
+    """
+    off = rng.uniform(-1.0, 1.0, sizes.shape)
+    off = np.where(rng.random(sizes.shape) < 0.5, np.sign(off), off)
+    return arm.replaced(parameters=arm.parameters + (sizes * off).T)
+
+
+@pytest.mark.parametrize("boundary", [1e-6, 0.3, 30.0])
+@CHECKED
+@given(seed=SEEDS, size=st.sampled_from([0.01, 0.1, 1.0]))
+def test_leaning_parameters_beat_those_that_are_off_within_their_bounds(
+    boundary, seed, size, two_link, start_law, acceleration
+):
+    """V = s^T (M + Jr) s / 2: V' <= -s^T Kd s + 20 boundary / 4 at every state, two links of ten parameters."""
+    q, v, ref = state(seed, size)
+    law = start_law(
+        "robust-passivity",
+        two_link(),
+        kp=(100.0, 60.0),
+        kd=(25.0, 11.0),
+        bound_percent=20.0,
+        boundary=boundary,
+    )
+    plant = wrong_within(two_link(), law._size, np.random.default_rng(seed))
+    change, damping, rounding = change_of_s(law, plant, q, v, ref, acceleration)
+    assert change <= damping + 20 * boundary / 4 + rounding
+
+
+@CHECKED
+@given(seed=SEEDS)
+def test_where_the_bound_is_zero_nothing_leans(seed, two_link, start_law, acceleration):
+    """(M + Jr) a_r + C v_r + g + Kd s of the believed arm, so on just that arm V' = -s^T Kd s."""
+    q, v, ref = state(seed)
+    gains = {"kp": (100.0, 60.0), "kd": (25.0, 11.0)}
+    law = start_law("robust-passivity", two_link(), bound_percent=0.0, **gains)
+    slope = np.array([100 / 25, 60 / 11])
+    v_r, a_r = ref.v + slope * (ref.q - q), ref.a + slope * (ref.v - v)
+    expected = law._model.passive_torque(q, v, v_r, a_r) + np.array(gains["kd"]) * (v_r - v)
+    expected += law._model.friction(ref.v)
+    np.testing.assert_allclose(asked(law, q, v, ref), expected, atol=1e-11 * (1 + np.abs(expected).max()))
+    change, damping, rounding = change_of_s(law, two_link(), q, v, ref, acceleration)
+    assert change == pytest.approx(damping, abs=rounding)
+
+
+def test_at_rest_leaning_parameters_leave_the_error_of_their_gain(
+    two_link, start_law, sampled_loop, standing
+):
+    """(Kd + Y size^2 Y^T / boundary) L e = g - g_model where the arm comes to rest and no sat is at 1."""
+    plant, believed, goal = two_link(1.3), two_link(), np.array([0.4, 0.3])
+    law = start_law("robust-passivity", believed, kp=(200.0, 80.0), kd=(30.0, 9.0), boundary=100.0)
+    _, e, rate, _ = sampled_loop(law, plant, standing(goal), 3.0)
+    assert np.abs(rate[-1]).max() < 1e-6
+    q, still, s = goal - e[-1], np.zeros(2), np.array([200 / 30, 80 / 9]) * e[-1]
+    columns = law.columns(q, still, s, still)
+    assert np.abs(law._size * np.einsum("jik,j->ki", columns, s)).max() < 100.0
+    gain = np.diag([30.0, 9.0]) + np.einsum("jik,ki,lik->jl", columns, law._size**2, columns) / 100.0
+    np.testing.assert_allclose(gain @ s, 0.3 * law._model.gravity_torque(q), rtol=1e-4)
 
 
 @CHECKED
