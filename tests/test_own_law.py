@@ -116,7 +116,7 @@ def installed(tmp_path_factory):
 def test_the_example_package_is_listed(installed):
     """Its law is listed beside the built-in ones, and described, with the package's name and version."""
     listed = installed("rigbench laws")
-    assert re.search(r"^steady-gravity +tau = J \(w^2", listed, re.MULTILINE)
+    assert re.search(r"^steady-gravity +tau = J \(w\^2", listed, re.MULTILINE)
     assert listed.count("(bakery-laws 0.3.1)") == 1
     assert listed.count("(rigbench ") >= 4
     sheet = installed("rigbench laws steady-gravity")
