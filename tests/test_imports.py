@@ -19,6 +19,7 @@ ROOMS = (
     "rig",
     "scores",
     "campaign",
+    "identify",
     "report",
     "experiment",
     "cli",
