@@ -91,7 +91,7 @@ def base_of(arm: Arm, gravity: tuple[float, float, float], terms: Terms) -> Base
     floor = diagonal[rank - 1] * 10 ** (-gap / 2)
     kept = _choose(y, _order(arm, terms), floor)
     dependent = np.setdiff1d(np.arange(len(labels)), kept)
-    shares: Floats = np.linalg.lstsq(y[:, kept], y[:, dependent], rcond=None)[0]
+    shares: Floats = scipy.linalg.lstsq(y[:, kept], y[:, dependent])[0]
     shares[np.abs(shares) < NIL] = 0.0
     return Base(labels, kept, dependent, shares, gap)
 
