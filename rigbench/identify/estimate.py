@@ -31,8 +31,8 @@ SOFT_ROUNDS = 10
 LEAST_NOISE = 1e-11
 """Floor of a joint's noise as a share of its torque: rounding, where data are without noise."""
 
-LAGS = 4
-"""Samples over which residuals may still hang together: filters leave a little, noise on positions more."""
+LAGS = 2
+"""Samples over which residuals may still hang together: noise on positions leaves a trace, torques' none."""
 
 MOST_CONDITION = 1e4
 """Beyond this condition number of the regressor, its columns brought to one length, an error of 1e-4 in
@@ -91,9 +91,9 @@ def estimate(base: Base, recordings: Sequence[Rows]) -> Estimate:
 
     Weighted least squares: each joint's equations are divided by the standard deviation of its own
     residuals, in turns with the fit until both stand. Outliers are weighed down as by Huber first, then
-    left out. The covariance is (Y'Y)^-1 S (Y'Y)^-1 with S the long-run covariance of Y' times the
-    residuals, by Bartlett weights over :data:`LAGS` samples (Newey, West 1987): it holds whatever the
-    noise's spectrum and however joints share it.
+    left out. The covariance is (Y'Y)^-1 Y' R Y (Y'Y)^-1 with R that of the residuals, which may hang
+    together over :data:`LAGS` samples (Bartlett weights; Newey, West 1987) and from joint to joint, alike
+    all along. The fit takes its b degrees of freedom out of that band, so R grows by N / (N - b (LAGS + 1)).
 
     Raises InputFaults where the recordings are too short, or excite some parameters too little.
     """
@@ -109,11 +109,10 @@ def estimate(base: Base, recordings: Sequence[Rows]) -> Estimate:
     weighted = y / noise[:, None] * used[:, :, None]
     condition = _condition(name, base, weighted.reshape(-1, base.count))
     residual = np.where(used, torque - y @ values, 0.0) / noise
-    scores = np.einsum("sjb,sj->sb", weighted, residual)
     bread = np.linalg.inv(np.einsum("sja,sjb->ab", weighted, weighted))
     ends = np.cumsum([len(rows.y) for rows in recordings])[:-1]
-    meat = sum(_long_run(part) for part in np.split(scores, ends))
-    factor = used.sum() / max(1, used.sum() - base.count)
+    meat = _long_run(np.split(weighted, ends), np.split(residual, ends))
+    factor = used.sum() / max(1, used.sum() - base.count * (LAGS + 1))
     return Estimate(
         base=base,
         values=values,
@@ -167,12 +166,18 @@ def _spread(residual: Floats, usable: NDArray[bool_]) -> Floats:
     return np.array([1.4826 * np.median(size) if size.size else 0.0 for size in sizes])
 
 
-def _long_run(scores: Floats) -> Floats:
-    """Return the sum of covariances of scores (S, b) over neighbouring samples, by Bartlett weights."""
-    total: Floats = scores.T @ scores
-    for lag in range(1, min(LAGS, len(scores) - 1) + 1):
-        cross = scores[lag:].T @ scores[:-lag]
-        total += (1 - lag / (LAGS + 1)) * (cross + cross.T)
+def _long_run(weighted: list[Floats], residual: list[Floats]) -> Floats:
+    """Return Y' R Y (b, b) of recordings' regressors (S, n, b) and residuals (S, n), both over the noise."""
+    total = np.zeros((weighted[0].shape[2],) * 2)
+    count = sum(len(part) for part in residual)
+    for lag in range(LAGS + 1):
+        pairs = [
+            (y[lag:], r[lag:], y[: len(y) - lag], r[: len(r) - lag])
+            for y, r in zip(weighted, residual, strict=True)
+        ]
+        shared = sum((later.T @ sooner for _, later, _, sooner in pairs), np.zeros((1, 1))) / count
+        cross = sum(np.einsum("sja,jk,skb->ab", late, shared, soon) for late, _, soon, _ in pairs)
+        total += cross if lag == 0 else (1 - lag / (LAGS + 1)) * (cross + cross.T)
     return total
 
 

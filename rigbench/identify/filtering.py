@@ -27,6 +27,10 @@ STATE_FACTOR = 4.0
 passes theirs unharmed."""
 
 ORDER = 4
+KEPT = 1.79
+"""Samples kept each second over the corner: half of that is where this filter lets half of the power
+through, so that white noise, folded there, is white again and samples hang together no more."""
+
 TRIM = 4.0
 """Periods of the corner dropped at either end, where the filters swing in."""
 
@@ -41,8 +45,8 @@ STENCIL = np.array([-1.0, 8.0, 0.0, -8.0, 1.0]) / 12.0
 class Rows:
     """The equations of a recording: torque = y x + noise, for S samples of n joints and b parameters.
 
-    Samples are so far apart that white noise is nearly independent from one to the next. ``usable``
-    is False where a joint stands: its dry friction can be anything there.
+    Samples are so far apart that white noise is independent from one to the next. ``usable`` is False
+    where a joint stands: its dry friction can be anything there.
     """
 
     y: Floats  # (S, n, b)
@@ -82,8 +86,8 @@ def rows_of(
 
     Positions (and velocities, where recorded) are low-passed at four times the corner and
     differentiated; the regressor is worked out at every sample; then regressor and torque
-    pass the same filter at the corner, which biases nothing (Gautier 1997), and every (rate / 2
-    corner)-th sample is kept.
+    pass the same filter at the corner, which biases nothing (Gautier 1997), and samples are kept
+    at :data:`KEPT` times the corner.
 
     Raises InputFaults if the rate is below eight times the corner, or nothing is left between the ends.
     """
@@ -91,7 +95,7 @@ def rows_of(
     if rate < 2 * STATE_FACTOR * corner_hz:
         problem = f"{rate:.4g} samples a second are too few for a filter at {corner_hz:g} Hz"
         raise InputFaults.one(recording.name, "t_s", problem, f"{2 * STATE_FACTOR * corner_hz:g} or more")
-    trim, step = int(TRIM * rate / corner_hz), max(1, int(rate / (2 * corner_hz)))
+    trim, step = int(TRIM * rate / corner_hz), round(rate / (KEPT * corner_hz))
     if len(recording.t) <= 2 * trim + step:
         least = 2 * TRIM / corner_hz
         problem = f"{recording.t[-1] - recording.t[0]:.3g} s are too short for a filter at {corner_hz:g} Hz"
