@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -62,15 +63,22 @@ def link_regressor(chain: Floats, q: Floats, v: Floats, a: Floats) -> Floats:
 
 
 def regressor(
-    arm: Arm, gravity: tuple[float, float, float], q: Floats, v: Floats, a: Floats, terms: Terms
+    arm: Arm,
+    gravity: tuple[float, float, float],
+    q: Floats,
+    v: Floats,
+    a: Floats,
+    terms: Terms,
+    sign: Callable[[Floats], Floats] = np.sign,
 ) -> Floats:
     """Return Y (N, n, p) for q, v, a (N, n): joint torques [N m] are Y times the p parameters.
 
     The parameters are those of :func:`parameter_labels`: the links' 10 n, then n for each of ``terms``.
+    ``sign`` is what Coulomb friction goes with.
     """
     n = arm.n
     links = link_regressor(arm.chain(gravity), *(np.ascontiguousarray(x, float) for x in (q, v, a)))
-    factor = {"rotor": a, "viscous": v, "coulomb": np.sign(v), "offset": np.ones_like(q)}
+    factor = {"rotor": a, "viscous": v, "coulomb": sign(v), "offset": np.ones_like(q)}
     drives = [factor[name][:, :, None] * np.eye(n) for name in terms.names]
     return np.concatenate([links, *drives], axis=2)
 
