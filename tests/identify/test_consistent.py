@@ -161,3 +161,15 @@ def test_friction_is_never_below_zero(rubbing):
     assert 0 <= drives.coulomb[1] < 1e-6
     assert drives.static[1] == pytest.approx(drives.coulomb[1])
     assert drives.coulomb[0] == pytest.approx(1.5, rel=1e-3)
+
+
+def test_none_is_the_least_friction_of_a_joint_declared_without(planar2):
+    """Declared without friction and estimated below: exactly none or above, not a rounding below."""
+    base = base_of(planar2, GRAVITY, Terms())
+    values = base.combination @ parameter_values(planar2, Terms())
+    values[[base.names.index("coulomb.elbow"), base.names.index("viscous.shoulder")]] = -1.0
+    found = Estimate(base, values, 1e-6 * np.eye(base.count), np.ones(2), np.zeros(2, int), 100, 10.0)
+    drives = consistent(planar2, Terms(), found).arm.drives
+    for friction in (drives.coulomb, drives.viscous):
+        assert (friction >= 0).all()
+        assert friction.max() < 1e-3
