@@ -85,6 +85,10 @@ class Search:
         sine, cosine = (tuple(map(tuple, wave)) for wave in waves)
         return FourierMotion(tuple(centre), sine, cosine, self.space.period_s, periods, rest_s)
 
+    def random_motion(self, seed: int, periods: int = 1) -> FourierMotion:
+        """Return a random motion that keeps the limits; InputFaults if none of 200 does."""
+        return self.motion(self.random_point(np.random.default_rng(seed)), periods)
+
     def condition(self, motion: FourierMotion) -> float:
         """Return the condition number of the base regressor along a period of a motion.
 

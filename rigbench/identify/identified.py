@@ -13,7 +13,7 @@ import yaml
 from rigbench.arm.arm import Arm, Floats
 from rigbench.arm.files import ArmFiles
 from rigbench.arm.physical import inertia
-from rigbench.errors import InputFaults
+from rigbench.errors import StoreError
 from rigbench.identify.consistent import Consistent
 from rigbench.identify.estimate import Estimate
 from rigbench.identify.regressor import Terms
@@ -24,7 +24,11 @@ __all__ = ["covariance_document", "write_identified"]
 COORDINATES = ("alpha", "d1", "d2", "d3", "s12", "s23", "s13", "t1", "t2", "t3")
 """Names of a link's log-Cholesky coordinates (Rucker, Wensing 2022)."""
 
-HEADING = "# Identified from recorded motions: inertials, rotor inertia, friction. All else is as declared.\n"
+HEADING = """\
+# Identified from recorded motions: inertials, rotor inertia, friction. All else is as declared.
+# Before this model meets a real arm: a risk assessment under the local machinery rules and ISO 10218, people
+# outside the reach, reduced speed first, an emergency stop in hand, torque and speed limits in the drive.
+"""
 
 
 def write_identified(
@@ -37,7 +41,7 @@ def write_identified(
     fixed to it none; names, limits, paths of meshes and what was not identified stay. Constant torques have
     no place in an arm file: they are in the covariance's.
 
-    Raises InputFaults where the files can't be written, ValueError if the drives are not the arm file's.
+    Raises StoreError where the files can't be written, ValueError if the drives are not the arm file's.
     """
     if files.drive_changes:
         raise ValueError("drives that were changed by an experiment have no arm file to write to")
@@ -53,9 +57,7 @@ def write_identified(
         for path, text in zip(paths, texts, strict=True):
             path.write_text(text, encoding="utf-8")
     except OSError as error:
-        raise InputFaults.one(
-            folder, "", f"can't be written ({error.strerror})", "a folder to write to"
-        ) from None
+        raise StoreError(str(folder), f"the arm can't be written: {error.strerror}") from error
     return paths
 
 

@@ -11,7 +11,7 @@ import pytest
 
 from rigbench.arm.dynamics import tool_path
 from rigbench.arm.files import ArmFiles
-from rigbench.errors import InputFaults
+from rigbench.errors import StoreError
 from rigbench.identify.base import base_of
 from rigbench.identify.bounds import bounds_of
 from rigbench.identify.consistent import Consistent, consistent
@@ -111,7 +111,7 @@ def test_the_covariance_file_says_what_it_holds(tmp_path):
 def test_a_folder_that_is_a_file_is_a_fault(tmp_path):
     """No traceback where nothing can be written; drives changed elsewhere are refused."""
     (tmp_path / "file").write_text("")
-    with pytest.raises(InputFaults, match="can't be written"):
+    with pytest.raises(StoreError, match="can't be written"):
         written(tmp_path / "file", "a", FILES, FILES.arm())
     with pytest.raises(ValueError, match="no arm file"):
         written(tmp_path, "a", FILES.with_drives([("all", "viscous", 1.0)]), FILES.arm())
