@@ -34,6 +34,9 @@ through, so that white noise, folded there, is white again and samples hang toge
 TRIM = 4.0
 """Periods of the corner dropped at either end, where the filters swing in."""
 
+CHUNK = 4096
+"""Samples whose whole regressor is in memory at once."""
+
 STANDING = 0.01
 """Share of its greatest speed below which a joint counts as standing."""
 
@@ -105,11 +108,13 @@ def rows_of(
     if recording.v is not None:
         v = low_pass(recording.v, rate, STATE_FACTOR * corner_hz)
     a = derivative(v, rate)
-    y = low_pass(regressor(arm, gravity, q, v, a, terms)[:, :, base.kept], rate, corner_hz)
+    parts = [slice(start, start + CHUNK) for start in range(0, len(q), CHUNK)]
+    y = np.concatenate([regressor(arm, gravity, q[k], v[k], a[k], terms)[:, :, base.kept] for k in parts])
     torque = low_pass(recording.torque, rate, corner_hz)
     standing = _standing(v, int(rate / corner_hz)) if terms.coulomb else np.zeros(v.shape, bool)
     kept = slice(trim, len(q) - trim, step)
-    return Rows(y[kept], torque[kept], ~standing[kept], recording.name)
+    filtered = [low_pass(y[:, i], rate, corner_hz)[kept] for i in range(arm.n)]
+    return Rows(np.stack(filtered, axis=1), torque[kept], ~standing[kept], recording.name)
 
 
 def _standing(v: Floats, window: int) -> NDArray[bool_]:

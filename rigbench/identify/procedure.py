@@ -10,6 +10,7 @@ import numpy as np
 from rigbench.arm.arm import Arm, Floats
 from rigbench.arm.files import ArmFiles
 from rigbench.arm.mismatch import Mismatch
+from rigbench.errors import InputFaults
 from rigbench.identify.base import base_of
 from rigbench.identify.consistent import SPREAD, Consistent, consistent
 from rigbench.identify.estimate import Estimate, TorqueError, estimate, torque_error
@@ -117,7 +118,7 @@ def record(
     """Run a motion on the hidden machine and return what its sensors recorded, and the machine.
 
     Computed torque with the declared arm as its model, natural frequency 5 Hz, at 1 kHz. ``draw`` numbers
-    the noise on torques; the machine is the same for all.
+    the noise on torques; the machine is the same for all. Raises InputFaults if the run does not finish.
     """
     options = options_model(registered().laws[LAW].cls)  # type: ignore[arg-type]  # classes are hashable
     law = choose(LAW, options(natural_hz=5.0))
@@ -128,6 +129,9 @@ def record(
         sources=simulated.sources, draw=0, gravity=settings.gravity, sensing=sensing,
     )  # fmt: skip
     log = simulate(run)
+    if log.outcome != "finished":
+        problem = f"the hidden machine did not follow {name}: {log.reason or log.outcome}"
+        raise InputFaults.one(files.path, "", problem, "a lower limit_percent, or less mismatch")
     seen = noise_of(sensing, len(log.t), files.arm(), simulated.seed, 0)
     rng = np.random.default_rng([simulated.seed, draw])
     return of_run(log, name, seen, simulated.torque_noise_nm * rng.normal(size=log.torque.shape)), log.plant
