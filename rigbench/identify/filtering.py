@@ -49,7 +49,7 @@ class Rows:
     """The equations of a recording: torque = y x + noise, for S samples of n joints and b parameters.
 
     Samples are so far apart that white noise is independent from one to the next. ``usable`` is False
-    where a joint stands: its dry friction can be anything there.
+    where a joint stands or turns back: its dry friction can be anything there.
     """
 
     y: Floats  # (S, n, b)
@@ -118,8 +118,10 @@ def rows_of(
 
 
 def _standing(v: Floats, window: int) -> NDArray[bool_]:
-    """Tell (N, n) where a joint is at rest for more than half of the ``window`` samples around."""
+    """Tell (N, n) where a joint stands or turns back at any of the ``window`` samples around.
+
+    There the sign of its speed is the noise's, and the filter carries that as far as its window.
+    """
     slow = np.abs(v) < STANDING * np.abs(v).max(axis=0)
-    share = scipy.ndimage.uniform_filter1d(slow.astype(float), max(1, window), axis=0)
-    standing: NDArray[bool_] = share > 0.5
+    standing: NDArray[bool_] = scipy.ndimage.maximum_filter1d(slow, max(1, window), axis=0)
     return standing

@@ -9,13 +9,18 @@ import pytest
 
 from rigbench.arm.dynamics import inverse_dynamics
 from rigbench.arm.files import ArmFiles
+from rigbench.arm.mismatch import Mismatch
 from rigbench.errors import InputFaults
 from rigbench.identify.base import base_of
+from rigbench.identify.bounds import bounds_of
 from rigbench.identify.estimate import estimate, torque_error
+from rigbench.identify.excitation import Search
 from rigbench.identify.filtering import Rows, derivative, low_pass, rows_of
 from rigbench.identify.fourier import FourierMotion
+from rigbench.identify.procedure import Settings, Simulated, identify, record
 from rigbench.identify.recording import Recording, of_run
 from rigbench.identify.regressor import Terms, parameter_values, regressor
+from rigbench.identify.series import SeriesSpace
 from rigbench.laws.options import options_model
 from rigbench.laws.registry import choose, registered
 from rigbench.rig import Rates, Run, simulate
@@ -224,6 +229,22 @@ def test_intervals_cover_the_truth_on_the_rig():
 def test_intervals_cover_the_truth_as_often_as_they_say():
     """200 repetitions with noise of 0.001 deg and 0.2 N m: 93 to 97 % of 1200 intervals."""
     assert 0.93 <= coverage(200) <= 0.97
+
+
+@pytest.mark.evidence
+def test_intervals_cover_the_truth_with_dry_friction_too(tray6):
+    """tray6, 52 parameters, 8 random motions of 40 s under noise of 0.001 deg and 0.5 N m: 91 to 98 % of 416
+    intervals (a standard deviation of 1.1 % if they were independent; reversals left in, it is 88 %)."""
+    settings, bounds = Settings(), bounds_of(tray6)
+    search = Search(tray6, GRAVITY, Terms(), bounds, SeriesSpace(bounds, 5, 4.0))
+    files, hits = ArmFiles.read(FILES.path.replace("planar2", "tray6")), []
+    for seed in range(8):
+        machine = Simulated(Mismatch(), (), seed=seed, noise_deg=0.001, torque_noise_nm=0.5)
+        recording, plant = record(files, settings, machine, search.random_motion(seed, 10), "random", 0)
+        done = identify(files, settings, [recording], truth=plant)
+        low, high = done.found.interval()
+        hits.append((low <= done.true_values) & (done.true_values <= high))
+    assert 0.91 <= float(np.mean(hits)) <= 0.98
 
 
 def test_counts_and_zero_of_the_encoder_are_recorded(planar2):
