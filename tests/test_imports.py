@@ -20,6 +20,7 @@ ROOMS = (
     "testing",
     "scores",
     "campaign",
+    "identify",
     "report",
     "experiment",
     "calls",

@@ -34,7 +34,7 @@ def kernel_cache() -> Path:
     """
     package = Path(__file__).resolve().parent.parent
     digest = hashlib.blake2b(numba.__version__.encode(), digest_size=8)
-    for room in ("arm", "laws", "motion", "rig", "scores"):
+    for room in ("arm", "laws", "motion", "rig", "scores", "identify"):
         for source in sorted((package / room).glob("*.py")):
             text = source.read_bytes()
             if room in ("arm", "laws", "rig") or b"rigbench.arm.kernel" in text:

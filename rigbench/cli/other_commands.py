@@ -13,7 +13,7 @@ import typer
 from rigbench.cli.app import Json, app
 from rigbench.cli.output import telling
 
-__all__ = ["audit", "demo", "gears", "laws", "schema"]
+__all__ = ["audit", "demo", "gears", "identify", "laws", "schema"]
 
 
 @app.command(epilog="Example: rigbench audit robots_demo/tray6/arm.yaml -o audit.png")
@@ -69,13 +69,32 @@ def gears(
         tell_gears(arm, ratios, tuple(joint or ()), leg, output, as_json)
 
 
+@app.command(epilog="Example: rigbench identify identify.yaml -o results")
+def identify(
+    file: Annotated[str, typer.Argument(metavar="FILE", help="the identification file (YAML)")],
+    output: Annotated[
+        str | None, typer.Option("--output", "-o", help="the folder to write to; results if left out")
+    ] = None,
+    as_json: Json = False,
+) -> None:
+    """Find an arm's parameters from recorded motions, or practise it on a machine with a hidden mismatch.
+
+    Writes an arm file with its URDF, a file of what is known how well, and a picture; prints how well torques
+    are predicted before and after, and every parameter with its interval.
+    """
+    with telling(as_json):
+        from rigbench.cli.identify import identify_arm
+
+        identify_arm(file, output, as_json)
+
+
 @app.command(epilog="Example: rigbench schema > rigbench.schema.json")
 def schema(
     of: Annotated[
-        str, typer.Argument(metavar="[experiment|arm]", help="which file's schema; experiment if left out")
+        str, typer.Argument(metavar="[experiment|arm|identify]", help="which file's; experiment if left out")
     ] = "experiment",
 ) -> None:
-    """Print the JSON Schema of the experiment file or of the arm file, for editors.
+    """Print the JSON Schema of an experiment, arm or identification file, for editors.
 
     Keys, types, ranges, units and defaults, with the options of the laws registered here.
     """

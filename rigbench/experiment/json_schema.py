@@ -1,4 +1,4 @@
-"""The JSON Schema of the experiment file and of the arm file, for editors.
+"""The JSON Schema of experiment, arm and identification files, for editors.
 
 It says what can be said without the arm: keys, types, ranges, units, defaults, and each registered law's
 options. ``rigbench check`` says the rest.
@@ -10,6 +10,7 @@ from collections.abc import Mapping
 from typing import Any
 
 from rigbench.arm.declaration import ArmDeclaration
+from rigbench.experiment.identification_keys import IdentificationKeys
 from rigbench.experiment.read_vary import FIXED
 from rigbench.experiment.schema import ExperimentKeys
 from rigbench.experiment.tolerance import BAND, SETTLE_BAND_MM
@@ -17,7 +18,7 @@ from rigbench.laws.options import OptionAbout, describe_options, options_model
 from rigbench.laws.registry import Registered, registered
 from rigbench.scores.names import SCORES
 
-__all__ = ["arm_schema", "experiment_schema"]
+__all__ = ["arm_schema", "experiment_schema", "identification_schema"]
 
 DIALECT = "https://json-schema.org/draft/2020-12/schema"
 
@@ -27,6 +28,11 @@ Schema = dict[str, Any]
 def arm_schema() -> Schema:
     """Return the JSON Schema of an arm file."""
     return {"$schema": DIALECT, **_plain(ArmDeclaration.model_json_schema())}
+
+
+def identification_schema() -> Schema:
+    """Return the JSON Schema of an identification file."""
+    return {"$schema": DIALECT, **_plain(IdentificationKeys.model_json_schema())}
 
 
 def experiment_schema() -> Schema:

@@ -1,0 +1,41 @@
+"""``rigbench identify``: from unknown parameters to an identified arm file."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+from rigbench.cli.output import print_json, say, show
+
+__all__ = ["identify_arm"]
+
+
+def identify_arm(path: str, output: str | None, as_json: bool) -> None:
+    """Do what an identification file declares, write the arm into the folder ``output``, print the report."""
+    from rigbench.experiment.identification import load_identification
+    from rigbench.identify.identified import covariance_document, write_identified
+    from rigbench.report.identify_picture import identify_picture
+    from rigbench.report.identify_text import identify_text
+
+    declared = load_identification(path)
+    done = declared.carry_out(say)
+    folder, name = Path(output or "results"), f"{Path(path).stem}-identified"
+    terms = declared.settings.terms
+    written = write_identified(folder, name, declared.files, terms, done.found, done.result)
+    picture = folder / f"{name}.png"
+    identify_picture(done, picture)
+    files = dict(zip(("arm", "urdf", "covariance"), map(str, written), strict=True)) | {
+        "picture": str(picture)
+    }
+    if as_json:
+        errors = {
+            whose: dict(zip(done.files.arm().joints, error.rms_nm.tolist(), strict=True))
+            for whose, error in done.torque_errors.items()
+        }
+        known = covariance_document(done.result, terms, done.found)
+        condition, checked = done.found.condition, done.checked
+        base = {"base": known["base"], "noise_nm": known["noise_nm"], "condition": condition}
+        print_json({"files": files, "torque_error_nm": errors, "checked": checked} | base)
+    else:
+        show(identify_text(done))
+        for what, file in files.items():
+            say(f"{what}: {file}")

@@ -1,0 +1,142 @@
+"""The identification file, read and checked, and the doing of it."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from pathlib import Path
+
+from rigbench.arm.files import ArmFiles
+from rigbench.errors import InputFaults
+from rigbench.experiment.expand import spreading
+from rigbench.experiment.findings import Findings
+from rigbench.experiment.identification_keys import ExcitationKeys, IdentificationKeys
+from rigbench.experiment.mismatch import mismatch_of
+from rigbench.identify.bounds import bounds_of
+from rigbench.identify.excitation import Search, excite
+from rigbench.identify.plausible import implausible
+from rigbench.identify.procedure import Identification, Settings, Simulated, identify, record
+from rigbench.identify.recording import Recording
+from rigbench.identify.recording_file import read_recording
+from rigbench.identify.regressor import Terms
+from rigbench.identify.series import SeriesSpace
+from rigbench.yamlfile import load, partial, read_text
+
+__all__ = ["DeclaredIdentification", "load_identification"]
+
+CHECK_SEED = 1
+"""Added to the search's seed for the random motion on which a simulated identification is checked."""
+
+Tell = Callable[[str], None]
+
+
+@dataclass(frozen=True, eq=False)
+class DeclaredIdentification:
+    """An identification file that was found in order; ``simulated`` is None where there are recordings."""
+
+    path: str
+    files: ArmFiles
+    settings: Settings
+    recordings: tuple[Recording, ...]
+    check: Recording | None
+    simulated: Simulated | None
+    excitation: ExcitationKeys
+
+    def carry_out(self, tell: Tell) -> Identification:
+        """Do what is declared; ``tell`` is told, in a line each, what takes its time."""
+        if self.simulated is None:
+            return identify(self.files, self.settings, self.recordings, self.check)
+        search = self._search()
+        keys = self.excitation
+
+        def after(done: int, _: float) -> None:
+            if done % 10 == 0:
+                tell(f"excitation: {done} of at most {keys.rounds} rounds")
+
+        best = excite(
+            search,
+            criterion=keys.criterion,
+            seed=keys.seed,
+            rounds=keys.rounds,
+            periods=keys.periods,
+            tell=after,
+        )
+        tell(f"excitation: condition number {best.condition:.4g}, random motions {best.random_condition:.4g}")
+        fitted, truth = record(self.files, self.settings, self.simulated, best.motion, "excitation", 0)
+        other = search.random_motion(keys.seed + CHECK_SEED, keys.periods)
+        check, _ = record(self.files, self.settings, self.simulated, other, "a random motion", 1)
+        return identify(self.files, self.settings, [fitted], check, truth)
+
+    def _search(self) -> Search:
+        keys, arm = self.excitation, self.files.arm()
+        least, most = (
+            None if corner is None else tuple(corner) for corner in (keys.tool_least_m, keys.tool_most_m)
+        )
+        bounds = bounds_of(arm, keys.limit_percent / 100, least, most)  # type: ignore[arg-type]  # three numbers
+        space = SeriesSpace(bounds, keys.harmonics, keys.period_s)
+        return Search(arm, self.settings.gravity, self.settings.terms, bounds, space)
+
+
+def load_identification(path: str | Path) -> DeclaredIdentification:
+    """Read and check an identification file, its arm file and recordings; InputFaults with every fault."""
+    file, folder = str(path), Path(path).parent
+    document = load(file, read_text(Path(path), file, "the identification file"))
+    keys, faults = partial(document, IdentificationKeys)
+    if keys is None:
+        raise InputFaults(faults)
+    findings = Findings(document, faults)
+    if findings.clean("recordings") and findings.clean("simulate"):
+        if (keys.recordings is None) == (keys.simulate is None):
+            findings.fault((), "needs recordings or simulate", "one of the two")
+        if keys.check is not None and keys.simulate is not None:
+            findings.fault(("check",), "simulate makes its own check", "no check beside simulate")
+    if keys.excitation is not None and keys.simulate is None and findings.clean("excitation"):
+        findings.fault(("excitation",), "has no effect beside recordings", "simulate")
+    if findings.faults and not findings.clean("arm"):
+        raise InputFaults(findings.faults)
+    files = _arm(folder / keys.arm, findings)
+    if files is None:
+        raise InputFaults(findings.faults)
+    settings = Settings(
+        Terms(**{name: name in keys.terms for name in ("rotor", "viscous", "coulomb", "offset")}),
+        (keys.gravity_m_s2[0], keys.gravity_m_s2[1], keys.gravity_m_s2[2]),
+        keys.corner_hz,
+        keys.declared_percent / 100,
+    )
+    recordings = [_recording(folder / name, files, settings, findings) for name in keys.recordings or ()]
+    check = None if keys.check is None else _recording(folder / keys.check, files, settings, findings)
+    simulated = None
+    if keys.simulate is not None:
+        given = keys.simulate
+        mismatch = mismatch_of(given.mismatch, files.arm(), findings)
+        simulated = Simulated(
+            mismatch, spreading(mismatch), given.seed, given.noise_deg, given.torque_noise_nm
+        )
+    if findings.faults:
+        raise InputFaults(findings.faults)
+    kept = tuple(each for each in recordings if each is not None)
+    return DeclaredIdentification(
+        file, files, settings, kept, check, simulated, keys.excitation or ExcitationKeys()
+    )
+
+
+def _arm(path: Path, findings: Findings) -> ArmFiles | None:
+    """Return the arm's files, or None with their faults among the findings."""
+    try:
+        files = ArmFiles.read(path)
+        files.arm()
+    except InputFaults as error:
+        findings.take(error.faults)
+        return None
+    return files
+
+
+def _recording(path: Path, files: ArmFiles, settings: Settings, findings: Findings) -> Recording | None:
+    """Return a recording that is plausible, or None with its faults among the findings."""
+    try:
+        recording, table = read_recording(path, files.arm())
+    except InputFaults as error:
+        findings.take(error.faults)
+        return None
+    findings.take(implausible(files.arm(), settings.gravity, recording, table))
+    return recording

@@ -1,0 +1,135 @@
+"""Identified arms as files: an arm file, its URDF, and how well their numbers are known."""
+
+from __future__ import annotations
+
+import json
+import xml.etree.ElementTree as ET
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+import yaml
+
+from rigbench.arm.arm import Arm, Floats
+from rigbench.arm.files import ArmFiles
+from rigbench.arm.physical import inertia
+from rigbench.errors import StoreError
+from rigbench.identify.consistent import Consistent
+from rigbench.identify.estimate import Estimate
+from rigbench.identify.regressor import Terms
+from rigbench.yamlfile import load
+
+__all__ = ["covariance_document", "write_identified"]
+
+COORDINATES = ("alpha", "d1", "d2", "d3", "s12", "s23", "s13", "t1", "t2", "t3")
+"""Names of a link's log-Cholesky coordinates (Rucker, Wensing 2022)."""
+
+HEADING = """\
+# Identified from recorded motions: inertials, rotor inertia, friction. All else is as declared.
+# Before this model meets a real arm: a risk assessment under the local machinery rules and ISO 10218, people
+# outside the reach, reduced speed first, an emergency stop in hand, torque and speed limits in the drive.
+"""
+
+
+def write_identified(
+    folder: Path | str, name: str, files: ArmFiles, terms: Terms, found: Estimate, result: Consistent
+) -> tuple[Path, Path, Path]:
+    """Write <name>.yaml, <name>.urdf and <name>-covariance.json into a folder, and return their paths.
+
+    ``files`` are those of the declared arm that ``result`` was found about. The arm file reads back as
+    ``result.arm`` to rounding: every moving link carries the inertial of its whole body, and links that are
+    fixed to it none; names, limits, paths of meshes and what was not identified stay. Constant torques have
+    no place in an arm file: they are in the covariance's.
+
+    Raises StoreError where the files can't be written, ValueError if the drives are not the arm file's.
+    """
+    if files.drive_changes:
+        raise ValueError("drives that were changed by an experiment have no arm file to write to")
+    folder = Path(folder)
+    paths = folder / f"{name}.yaml", folder / f"{name}.urdf", folder / f"{name}-covariance.json"
+    texts = (
+        HEADING + _arm_text(files, terms, result.arm, paths[1].name),
+        _urdf_text(files, result.arm),
+        json.dumps(covariance_document(result, terms, found), indent=1, allow_nan=False) + "\n",
+    )
+    try:
+        folder.mkdir(parents=True, exist_ok=True)
+        for path, text in zip(paths, texts, strict=True):
+            path.write_text(text, encoding="utf-8")
+    except OSError as error:
+        raise StoreError(str(folder), f"the arm can't be written: {error.strerror}") from error
+    return paths
+
+
+def covariance_document(result: Consistent, terms: Terms, found: Estimate) -> dict[str, Any]:
+    """Return all that is known of how well an identified arm is known, as JSON-able lists and numbers.
+
+    ``coordinates`` and ``covariance`` are of the z of :class:`rigbench.identify.consistent.Coordinates`
+    about the identified arm, so that draws from them can exist; ``base`` is the estimate of the base
+    parameters that all of it came from.
+    """
+    arm = result.arm
+    links = [f"{name}.{link}" for link in arm.links for name in COORDINATES]
+    drives = [f"{name}.{joint}" for name in terms.names for joint in arm.joints]
+    low, high = found.interval()
+    return {
+        "rigbench": 1,
+        "kind": "covariance",
+        "arm": arm.name,
+        "coordinates": links + drives,
+        "scales": [1.0] * len(links) + result.scales.tolist(),
+        "covariance": result.covariance.tolist(),
+        "offset": dict(zip(arm.joints, result.offset.tolist(), strict=True)),
+        "base": [
+            {"name": said, "value": value, "low": least, "high": most}
+            for said, value, least, most in zip(
+                found.base.names, found.values.tolist(), low.tolist(), high.tolist(), strict=True
+            )
+        ],
+        "noise_nm": dict(zip(arm.joints, found.noise.tolist(), strict=True)),
+    }
+
+
+def _arm_text(files: ArmFiles, terms: Terms, arm: Arm, urdf: str) -> str:
+    """Return the arm file's text with the drives' identified numbers."""
+    declared: Any = load(files.path, files.text).data
+    drives: dict[str, dict[str, Any]] = {}
+    for i, joint in enumerate(arm.joints):
+        drive = dict(declared["drives"][joint] or {})
+        if terms.rotor:
+            drive["rotor_inertia"] = float(arm.drives.rotor_inertia[i])
+        if terms.viscous:
+            drive["viscous"] = float(arm.drives.viscous[i])
+            drive.pop("motor_viscous", None)
+        if terms.coulomb:
+            drive["coulomb"] = float(arm.drives.coulomb[i])
+            drive.pop("motor_coulomb", None)
+            if "static" in drive:
+                drive["static"] = float(arm.drives.static[i])
+        drives[joint] = drive
+    return str(yaml.safe_dump(declared | {"urdf": urdf, "drives": drives}, sort_keys=False))
+
+
+def _urdf_text(files: ArmFiles, arm: Arm) -> str:
+    """Return the URDF with the identified inertials, each at the centre of gravity of a whole body."""
+    robot = ET.fromstring(files.urdf_text)
+    bodies = dict(zip(arm.links, arm.parameters, strict=True))
+    for link in robot.findall("link"):
+        for old in link.findall("inertial"):
+            link.remove(old)
+        if (name := link.get("name", "")) in bodies:
+            link.insert(0, _inertial(bodies[name]))
+    return ET.tostring(robot, encoding="unicode", xml_declaration=True) + "\n"
+
+
+def _inertial(parameters: Floats) -> ET.Element:
+    mass, cog, tensor = inertia(parameters)
+    element = ET.Element("inertial")
+    ET.SubElement(element, "origin", xyz=" ".join(repr(x) for x in cog.tolist()), rpy="0 0 0")
+    ET.SubElement(element, "mass", value=repr(float(mass)))
+    rows, columns = np.triu_indices(3)
+    entries = {
+        f"i{'xyz'[r]}{'xyz'[c]}": repr(float(tensor[r, c])) for r, c in zip(rows, columns, strict=True)
+    }
+    ET.SubElement(element, "inertia", entries)
+    return element

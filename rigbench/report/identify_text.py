@@ -1,0 +1,70 @@
+"""An identification as one page of text."""
+
+from __future__ import annotations
+
+import textwrap
+
+from rigbench.identify.procedure import Identification
+from rigbench.report.cautions import BEFORE_A_REAL_ARM
+
+__all__ = ["identify_text"]
+
+NUMBER = 11
+
+
+def identify_text(done: Identification) -> str:
+    """Return torques predicted before and after, and every base parameter with its 95 % interval."""
+    parts = [_head(done), _torques(done), _parameters(done), textwrap.wrap(BEFORE_A_REAL_ARM, 100)]
+    return "\n\n".join("\n".join(part) for part in parts)
+
+
+def _head(done: Identification) -> list[str]:
+    found = done.found
+    lines = [
+        f"{done.files.arm().name}: {found.base.count} parameters from {found.rows} samples, "
+        f"condition number {found.condition:.3g}"
+    ]
+    if outliers := int(found.outliers.sum()):
+        lines.append(f"{outliers} samples of a joint's torque were left out as outliers")
+    return lines
+
+
+def _torques(done: Identification) -> list[str]:
+    """One line a joint: how much its torque varies, and what is left of it."""
+    errors = done.torque_errors
+    of = "a motion that was not fitted" if done.checked else "the motion that was fitted"
+    lines = [f"Error of predicted torques, rms [N m; N], on {of} ({done.rows.name})", ""]
+    lines.append(
+        f"  {'joint':<16}" + "".join(f"{word:>{NUMBER}}" for word in ("varies by", "declared", "identified"))
+    )
+    arm = done.files.arm()
+    for i, joint in enumerate(arm.joints):
+        numbers = (
+            errors["declared"].measured_nm[i],
+            errors["declared"].rms_nm[i],
+            errors["identified"].rms_nm[i],
+        )
+        lines.append(f"  {joint[:16]:<16}" + "".join(f"{number:>{NUMBER}.3g}" for number in numbers))
+    return lines
+
+
+def _parameters(done: Identification) -> list[str]:
+    """One line a base parameter: declared, estimated with its interval, identified and, if known, true."""
+    low, high = done.found.interval()
+    words = ["declared", "estimate", "+-", "identified", *(["true"] if done.true_values is not None else [])]
+    lines = [
+        "Base parameters [SI units], estimate with its 95 % interval; identified: of the arm that can exist",
+        "",
+    ]
+    lines.append("  " + "".join(f"{word:>{NUMBER}}" for word in words))
+    for i, name in enumerate(done.found.base.names):
+        numbers = [
+            done.declared_values[i],
+            done.found.values[i],
+            (high[i] - low[i]) / 2,
+            done.identified_values[i],
+        ]
+        if done.true_values is not None:
+            numbers.append(done.true_values[i])
+        lines.append("  " + "".join(f"{number:>{NUMBER}.4g}" for number in numbers) + f"  {name}")
+    return lines
