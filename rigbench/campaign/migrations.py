@@ -106,17 +106,20 @@ def schema_of(connection: sqlite3.Connection) -> int:
 def migrate(connection: sqlite3.Connection, steps: Sequence[Step] = MIGRATIONS) -> None:
     """Bring the file to the newest schema, each step and its record in one transaction.
 
-    ``connection`` is in autocommit mode. If a step fails, the file stays at the schema before it.
+    ``connection`` is in autocommit mode. If a step fails, the file stays at the schema before it. A new file
+    takes all steps in one transaction: whenever its making is cut short, nobody finds it half made.
     """
-    for number in range(schema_of(connection), len(steps)):
+    begin = schema_of(connection)
+    for end in range(begin + 1, len(steps) + 1) if begin else (len(steps),):
         connection.execute("BEGIN IMMEDIATE")
         try:
-            for statement in steps[number]:
-                if callable(statement):
-                    statement(connection)
-                else:
-                    connection.execute(statement)
-            connection.execute(f"PRAGMA user_version = {number + 1}")
+            for step in steps[schema_of(connection) : end]:
+                for statement in step:
+                    if callable(statement):
+                        statement(connection)
+                    else:
+                        connection.execute(statement)
+            connection.execute(f"PRAGMA user_version = {end}")
             connection.execute("COMMIT")
         except BaseException:
             if connection.in_transaction:

@@ -150,10 +150,21 @@ def test_a_store_of_an_older_schema_is_brought_up_to_date(path: Path, make_plan:
         assert store.owner == Owner.of(plan)
 
 
+def test_a_new_file_is_made_whole_or_not_at_all(tmp_path: Path) -> None:
+    """Its steps are one transaction: if one of them fails there is nothing, not even the first."""
+    connection = sqlite3.connect(tmp_path / "store.sqlite", isolation_level=None)
+    with pytest.raises(sqlite3.OperationalError):
+        migrate(connection, [["CREATE TABLE a (x)"], ["no such statement"]])
+    assert schema_of(connection) == 0
+    assert connection.execute("SELECT name FROM sqlite_master").fetchall() == []
+    connection.close()
+
+
 def test_a_migration_that_fails_leaves_the_schema_before_it(tmp_path: Path) -> None:
     """A step and its record are one transaction: both are undone, and the steps before it stay."""
     connection = sqlite3.connect(tmp_path / "store.sqlite", isolation_level=None)
     good, bad = ["CREATE TABLE a (x)"], ["CREATE TABLE b (x)", "no such statement"]
+    migrate(connection, [good])
     with pytest.raises(sqlite3.OperationalError):
         migrate(connection, [good, bad])
     assert schema_of(connection) == 1
