@@ -19,21 +19,20 @@ from rigbench.campaign.gears import RATIOS, Gears
 from rigbench.campaign.gears import gears as gears_of
 from rigbench.campaign.part import Part
 from rigbench.campaign.progress import Progress
-from rigbench.campaign.reading import Reader
 from rigbench.campaign.replay import Replay, replay
 from rigbench.campaign.store import Store
-from rigbench.campaign.studied import Studied
+from rigbench.campaign.studied import asked_study
 from rigbench.campaign.studies.tune import GainsFound, gains_found
 from rigbench.campaign.studies.worst_case import WorstFound, worst_found
-from rigbench.campaign.tally import telling_column
 from rigbench.errors import Fault, InputFaults, nearest
-from rigbench.experiment import Experiment
+from rigbench.experiment import Experiment, store_path
 from rigbench.report.level_curves import level_curves_picture
 from rigbench.report.limits import limits_picture
 from rigbench.report.matrix import matrix_picture
 from rigbench.report.page.page import gathered, write_page
 from rigbench.report.view import MEDIAN, SHARE, SHOWS, View
 from rigbench.scores.changes import changes_since
+from rigbench.scores.columns import condition_of
 from rigbench.scores.gating import Check, judge
 from rigbench.scores.levels import ladder
 from rigbench.scores.needs import LawNeeds, needs_of
@@ -76,7 +75,7 @@ def run(
     """
     if faults := list(_wrong(experiment, jobs, draws, again)):
         raise InputFaults(faults)
-    path = Path("results") / f"{Path(experiment.path).stem}.sqlite" if store is None else Path(store)
+    path = store_path(experiment.path, store)
     part = Part(draws, None if seconds is None else time.monotonic() + seconds)
     named = None if store is None else str(store)
     plan = experiment.plan(named)
@@ -84,10 +83,9 @@ def run(
         for law in again:
             opened.studies_anew(law)
         if experiment.tune is not None:
-            if (found := experiment.tune.found(opened.row_of)) is None:
+            if experiment.tune.found(opened.row_of) is None:
                 run_first(plan, opened, jobs, on_progress, part=part)
-                found = experiment.tune.found(opened.row_of)
-            plan = plan if found is None else experiment.tuned(found).plan(named)
+            plan = experiment.with_stored_gains(opened).plan(named)
         run_campaign(plan, opened, jobs, on_progress, again=again, part=part)
         return opened.results()
 
@@ -166,16 +164,14 @@ def gate(
     if baseline is not None:
         with Store.open_for_reading(baseline) as older:
             changes = changes_since(older.results(brief=True), results)
-    telling = telling_column(results.columns)
-    if condition is None:
-        condition = levels[level] if level is not None else telling.name if telling else ""
+    condition = condition_of(results.columns, condition, level)
     return judge(results, laws, condition, sheets or results.sheets, allow_open, changes)
 
 
 def needs(store: File) -> tuple[LawNeeds, ...]:
     """Return what must be known, and how well, law by law; InputFaults where ``needs`` was not asked."""
     with Store.open_for_reading(store) as opened, opened.one_moment():
-        studied, tolerance = _studied(opened, "needs"), opened.labels.tolerance
+        studied, tolerance = asked_study(opened, "needs"), opened.labels.tolerance
     design = NeedsDesign.of(studied.declared)
     rows = [record.row for record in studied.records]
     return needs_of(design, rows, tolerance or Tolerance({}, design.required_share))
@@ -184,13 +180,13 @@ def needs(store: File) -> tuple[LawNeeds, ...]:
 def worst_case(store: File) -> list[WorstFound]:
     """Return the worst machines found; InputFaults where ``worst_case`` was not asked."""
     with Store.open_for_reading(store) as opened, opened.one_moment():
-        return worst_found(_studied(opened, "worst_case"), opened.labels.tolerance or Tolerance({}))
+        return worst_found(asked_study(opened, "worst_case"), opened.labels.tolerance or Tolerance({}))
 
 
 def gains(store: File) -> list[GainsFound]:
     """Return the gains found, by law and sheet; InputFaults where ``tune`` was not asked."""
     with Store.open_for_reading(store) as opened, opened.one_moment():
-        return gains_found(_studied(opened, "tune"))
+        return gains_found(asked_study(opened, "tune"))
 
 
 def trace(store: File, run: str) -> Replay:
@@ -226,12 +222,3 @@ def _check(where: File, what: str, names: Iterable[str], known: Sequence[str]) -
     ]
     if faults:
         raise InputFaults(faults)
-
-
-def _studied(store: Reader, name: str) -> Studied:
-    studied = store.study(name)
-    if studied is None:
-        problem = "the campaign has not asked this, or has not come to it yet"
-        expected = f"'{name}:' in the experiment file, and a run to its end"
-        raise InputFaults.one(store.path, name, problem, expected)
-    return studied

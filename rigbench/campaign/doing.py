@@ -53,6 +53,7 @@ class Studying:
     def __init__(self, study: Study, store: Store, doing: Doing) -> None:
         self._study, self._store, self._doing = study, store, doing
         self._tried: set[str] = set()
+        self._rows: dict[tuple[object, ...], Row] = {}  # by run and place: what is known stays so
         self.asked = self.done = 0
 
     def go(self, report: Callable[[Progress], None]) -> None:
@@ -75,9 +76,15 @@ class Studying:
 
     def _known(self, entry: Entry) -> Row | None:
         """Return what came of a run, in this campaign if that is the host's and may pass."""
+        place = entry.sheet, entry.law, entry.motion, entry.condition, entry.level, entry.draw
+        mark = entry.key, *place
+        if mark in self._rows:
+            return self._rows[mark]
         row = self._store.row_of(entry)
         if row is not None and row.outcome not in SETTLED and entry.key not in self._tried:
             return None
+        if row is not None:
+            self._rows[mark] = row
         return row
 
 

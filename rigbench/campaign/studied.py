@@ -11,11 +11,12 @@ from typing import TYPE_CHECKING, Any
 
 from rigbench.campaign.kept import Keeper
 from rigbench.campaign.plan import Entry
+from rigbench.errors import InputFaults
 
 if TYPE_CHECKING:
-    from rigbench.campaign.reading import Record
+    from rigbench.campaign.reading import Reader, Record
 
-__all__ = ["STUDIED", "Studied", "forget", "record_study", "stored_studies"]
+__all__ = ["STUDIED", "Studied", "asked_study", "forget", "record_study", "stored_studies"]
 
 STUDIED = (
     # declared: JSON; finished: 1 once every run of the study is stored.
@@ -48,6 +49,30 @@ class Studied:
     declared: Mapping[str, Any]
     records: tuple[Record, ...]
     finished: bool
+
+
+QUESTIONS = {
+    "needs": "ask what must be known",
+    "worst_case": "search for worst cases",
+    "tune": "look for gains",
+}
+"""What an experiment does that declares a study, by the study's name."""
+
+
+def asked_study(store: Reader, name: str, form: str = "") -> Studied:
+    """Return a study of a store; InputFaults, with what to do, where it is not declared or has not begun.
+
+    ``form``: how it is declared, if that takes more than its key.
+    """
+    studied = store.study(name)
+    if studied is not None:
+        return studied
+    labels = store.labels
+    if name in labels.studies:
+        problem, expected = f"its study '{name}' has not begun", f"'{labels.resume}' done to its end"
+        raise InputFaults.one(store.path, "", problem, expected)
+    expected = f"'{name}:{form}' in the experiment file, then 'rigbench run' again"
+    raise InputFaults.one(store.path, "", f"its experiment does not {QUESTIONS[name]}", expected)
 
 
 def forget(connection: sqlite3.Connection) -> None:

@@ -8,10 +8,10 @@ from dataclasses import dataclass
 from rigbench.campaign.plan import Entry, Plan
 from rigbench.campaign.reading import Reader
 from rigbench.campaign.work import Outcome
-from rigbench.scores.results import Column
+from rigbench.scores.columns import telling_column
 from rigbench.scores.row import MACHINE_OUTCOMES
 
-__all__ = ["SoFar", "Standing", "Tally", "telling_column"]
+__all__ = ["SoFar", "Standing", "Tally"]
 
 
 @dataclass(frozen=True)
@@ -30,19 +30,6 @@ class Standing:
     condition: str
     laws: tuple[SoFar, ...]
     sheets: int = 1
-
-
-def telling_column(columns: Iterable[Column]) -> Column | None:
-    """Return the condition that tells most of laws at a glance: all sources together, nearest to level 1.
-
-    Else any that is random, else any at all.
-    """
-
-    def distance(column: Column) -> tuple[bool, bool, float]:
-        level = 0.0 if column.level is None else column.level
-        return not column.random, not column.ladder, abs(level - 1.0)
-
-    return min(columns, key=distance, default=None)
 
 
 class Tally:

@@ -15,12 +15,10 @@ from rigbench.campaign.settling import to_do
 from rigbench.campaign.store import Store
 from rigbench.campaign.studies.tune import Tune
 from rigbench.cli.estimate import Estimate, estimate_of
-from rigbench.cli.gains import with_stored_gains
 from rigbench.cli.output import print_json, show, tell_notes
-from rigbench.cli.run import store_path
 from rigbench.cli.spans import duration_words, size_words
 from rigbench.errors import Fault, StoreError, counted
-from rigbench.experiment import Experiment, load_experiment
+from rigbench.experiment import Experiment, load_experiment, store_path
 from rigbench.scores.anytime import draws_to_settle
 from rigbench.scores.intervals import draws_needed, misses_allowed
 
@@ -40,7 +38,7 @@ class Stored:
 def check_experiment(file: str, as_json: bool) -> None:
     """Print the plan of an experiment that is in order."""
     experiment = load_experiment(file)
-    path = store_path(file, None)
+    path = store_path(file)
     experiment, found = _with_gains(experiment, path)
     plan = experiment.plan()
     stored = _stored(plan, path)
@@ -56,7 +54,7 @@ def _with_gains(experiment: Experiment, path: Path) -> tuple[Experiment, bool]:
     """Return the experiment with the gains that its store holds, and whether that holds them."""
     if experiment.tune is not None and path.exists():
         with contextlib.suppress(StoreError), Store.open_for_reading(path) as store:
-            tuned = with_stored_gains(experiment, store)
+            tuned = experiment.with_stored_gains(store)
             return tuned, tuned is not experiment
     return experiment, False
 

@@ -10,25 +10,17 @@ import yaml
 
 from rigbench.campaign.reading import Reader
 from rigbench.campaign.store import Store
+from rigbench.campaign.studied import asked_study
 from rigbench.campaign.studies.tune import NAME, Aim, GainsFound, gains_found
 from rigbench.cli.output import print_json, say, show
-from rigbench.errors import InputFaults, counted
-from rigbench.experiment import Experiment
+from rigbench.errors import counted
 from rigbench.report import cautions
 from rigbench.report.gains_words import aim_words, declared_words, found_words, gains_words, law_words
 
-__all__ = ["gains_notes", "print_gains", "with_stored_gains"]
+__all__ = ["gains_notes", "print_gains"]
 
 MOST = 6
 """Laws whose gains are named beneath the matrix; of the others the number is given."""
-
-HOW = "'tune: {}' in the experiment file, then 'rigbench run' again"
-
-
-def with_stored_gains(experiment: Experiment, store: Reader) -> Experiment:
-    """Return the experiment with the gains that were found; itself where that is not, or not yet, so."""
-    gains = None if experiment.tune is None else experiment.tune.found(store.row_of)
-    return experiment if gains is None else experiment.tuned(gains)
 
 
 def gains_notes(store: Reader) -> Iterator[str]:
@@ -50,9 +42,7 @@ def gains_notes(store: Reader) -> Iterator[str]:
 def print_gains(path: str, as_json: bool) -> None:
     """Print the gains found, law by law and sheet by sheet; those of all laws that were looked at."""
     with Store.open_for_reading(path) as store, store.one_moment():
-        study, resume = store.study(NAME), store.labels.resume
-    if study is None:
-        raise InputFaults.one(path, "", "its experiment looks for no gains, or has not begun to", HOW)
+        study, resume = asked_study(store, NAME, " {}"), store.labels.resume
     found, aim = gains_found(study), Aim(**study.declared["aim"])
     if as_json:
         aimed = {"score": aim.score, "most": aim.most, "delay_margin_ms": aim.delay_margin_ms}

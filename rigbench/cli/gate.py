@@ -8,14 +8,13 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from rigbench.campaign.store import Store
-from rigbench.campaign.tally import telling_column
 from rigbench.cli.matrix import changes_against
 from rigbench.cli.naming import level_fault, name_fault
 from rigbench.cli.output import print_json, show
 from rigbench.cli.stored import check_output
 from rigbench.errors import Fault, InputFaults
+from rigbench.scores.columns import condition_of
 from rigbench.scores.gating import judge
-from rigbench.scores.levels import ladder
 from rigbench.scores.results import Results
 
 __all__ = ["REFUSED", "Asked", "gate_store"]
@@ -49,7 +48,7 @@ def gate_store(path: str, asked: Asked, as_json: bool) -> None:
     baseline = None
     if asked.baseline is not None:
         baseline = changes_against(path, asked.baseline, results, None, "--baseline")
-    condition = _condition(results, asked)
+    condition = condition_of(results.columns, asked.condition, asked.level)
     laws, sheets = tuple(dict.fromkeys(asked.laws)), asked.sheets or results.sheets
     checks = judge(results, laws, condition, sheets, asked.allow_open, baseline)
     failed = any(check.state == "failed" for check in checks)
@@ -90,13 +89,3 @@ def _faults(path: str, results: Results, asked: Asked) -> Iterator[Fault]:
 
 def _names(results: Results) -> Sequence[str]:
     return [column.name for column in results.columns]
-
-
-def _condition(results: Results, asked: Asked) -> str:
-    """Return the condition that is asked for: by default all sources together, nearest to level 1."""
-    if asked.condition is not None:
-        return asked.condition
-    if asked.level is not None:
-        return next(c.name for c in ladder(results.columns) if (c.level or 0.0) == asked.level)
-    column = telling_column(results.columns)
-    return results.columns[0].name if column is None else column.name

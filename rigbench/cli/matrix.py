@@ -10,13 +10,13 @@ from typing import Any
 
 from rigbench.campaign.reading import Reader
 from rigbench.campaign.store import Store
-from rigbench.campaign.tally import telling_column
 from rigbench.cli.naming import conditions_of, name_fault
 from rigbench.cli.output import paragraph, print_json, show, width
 from rigbench.cli.stored import check_output, picture_path
 from rigbench.errors import Fault, InputFaults
 from rigbench.report.view import SHARE, SHOWS, View, check_score
 from rigbench.scores.changes import Changes, changes_since
+from rigbench.scores.columns import telling_column
 from rigbench.scores.results import CellKey, Results
 
 __all__ = ["Wanted", "changes_against", "draw_matrix"]

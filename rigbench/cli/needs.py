@@ -5,20 +5,14 @@ from __future__ import annotations
 import datetime
 from pathlib import Path
 
-from rigbench.campaign.reading import Reader
 from rigbench.campaign.store import Store
-from rigbench.campaign.studied import Studied
+from rigbench.campaign.studied import asked_study
 from rigbench.cli.output import print_json, say, show, width
 from rigbench.cli.stored import CAUTION, check_output
 from rigbench.errors import Fault, InputFaults, nearest
 from rigbench.scores.results import Tolerance
-from rigbench.yamlfile import load
 
 __all__ = ["tell_needs"]
-
-KEY = "needs"
-
-HOW = "'needs: {law: LAW}' in the experiment file, then 'rigbench run' again"
 
 
 def tell_needs(path: str, law: str | None, output: str | None, as_json: bool) -> None:
@@ -26,7 +20,7 @@ def tell_needs(path: str, law: str | None, output: str | None, as_json: bool) ->
     if output is not None:
         check_output(Path(output), path)
     with Store.open_for_reading(path) as store, store.one_moment():
-        studied, labels = _studied(store, path), store.labels
+        studied, labels = asked_study(store, "needs", " {law: LAW}"), store.labels
     from rigbench.report.needs_json import needs_json
     from rigbench.report.needs_text import needs_text
     from rigbench.scores.needs import needs_of
@@ -57,15 +51,3 @@ def tell_needs(path: str, law: str | None, output: str | None, as_json: bool) ->
     if output is not None and not as_json:
         say(f"picture: {output}")
     say(CAUTION)
-
-
-def _studied(store: Reader, path: str) -> Studied:
-    """Return the study; InputFaults, with what to do, where the store has none."""
-    studied = store.study(KEY)
-    if studied is not None:
-        return studied
-    name, text = store.experiment
-    if KEY in load(name, text).data:
-        problem = "its study 'needs' has not begun: the matrix comes first"
-        raise InputFaults.one(path, "", problem, f"'{store.labels.resume}' done to its end")
-    raise InputFaults.one(path, "", "its experiment does not ask what must be known", HOW)

@@ -20,25 +20,20 @@ from rigbench.campaign.settling import to_do
 from rigbench.campaign.store import Store
 from rigbench.campaign.studies.tune import Tune
 from rigbench.cli.fresh import make_room
-from rigbench.cli.gains import gains_notes, with_stored_gains
+from rigbench.cli.gains import gains_notes
 from rigbench.cli.output import interrupts_alike, print_json, say, show, tell_notes
 from rigbench.cli.progress import OnProgress, progress_shown, tell_stopping
 from rigbench.cli.spans import duration_words
 from rigbench.cli.stored import CAUTION, picture_path, status_text
 from rigbench.cli.wishes import Wishes, part_of
 from rigbench.errors import ClusterLost, Stopped, counted, listed
-from rigbench.experiment import load_experiment
+from rigbench.experiment import load_experiment, store_path
 from rigbench.report.json_form import results_json
 from rigbench.report.matrix import matrix_picture
 from rigbench.scores.results import Results
 from rigbench.scores.row import HOST_OUTCOMES
 
-__all__ = ["run_experiment", "store_path"]
-
-
-def store_path(file: str, store: str | None) -> Path:
-    """Return where the runs of an experiment file are stored."""
-    return Path("results") / f"{Path(file).stem}.sqlite" if store is None else Path(store)
+__all__ = ["run_experiment"]
 
 
 def run_experiment(file: str, wishes: Wishes, as_json: bool) -> None:
@@ -66,7 +61,7 @@ def run_experiment(file: str, wishes: Wishes, as_json: bool) -> None:
             stopped = _first(experiment.tune, plan, part, opened, wishes, executor)
             if stopped is None:
                 if experiment.tune is not None:
-                    tuned = with_stored_gains(experiment, opened)
+                    tuned = experiment.with_stored_gains(opened)
                     plan = replace(tuned.plan(wishes.store), resume=plan.resume)
                 say(_intent(plan, part, opened, path, wishes.again))
                 stopped = _campaign(plan, part, opened, wishes, executor)

@@ -7,22 +7,17 @@ import math
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
-from rigbench.campaign.reading import Reader
 from rigbench.campaign.store import Store
-from rigbench.campaign.studied import Studied
+from rigbench.campaign.studied import asked_study
 from rigbench.campaign.studies.worst_case import NAME, WorstFound
 from rigbench.cli.output import print_json, say, show
 from rigbench.cli.stored import CAUTION, check_output
-from rigbench.errors import InputFaults
 from rigbench.scores.results import Tolerance
-from rigbench.yamlfile import load
 
 if TYPE_CHECKING:
     from rigbench.report.worst_words import LawWorst
 
 __all__ = ["tell_worst"]
-
-HOW = "'worst_case: {}' in the experiment file, then 'rigbench run' again"
 
 
 def tell_worst(path: str, output: str | None, as_json: bool) -> None:
@@ -33,7 +28,7 @@ def tell_worst(path: str, output: str | None, as_json: bool) -> None:
     if output is not None:
         check_output(Path(output), path)
     with Store.open_for_reading(path) as store, store.one_moment():
-        study, labels = _studied(store, path), store.labels
+        study, labels = asked_study(store, NAME, " {}"), store.labels
         laws = list(worst_laws(store, study, labels.tolerance or Tolerance({})))
     if output is not None:
         from rigbench.report.worst_picture import worst_picture
@@ -49,18 +44,6 @@ def tell_worst(path: str, output: str | None, as_json: bool) -> None:
     if output is not None and not as_json:
         say(f"picture: {output}")
     say(CAUTION)
-
-
-def _studied(store: Reader, path: str) -> Studied:
-    """Return the study; InputFaults, with what to do, where the store has none."""
-    study = store.study(NAME)
-    if study is not None:
-        return study
-    name, text = store.experiment
-    if NAME in load(name, text).data:
-        problem = "its search for worst cases has not begun: the matrix comes first"
-        raise InputFaults.one(path, "", problem, f"'{store.labels.resume}' done to its end")
-    raise InputFaults.one(path, "", "its experiment does not search for worst cases", HOW)
 
 
 def _law(law: LawWorst) -> dict[str, Any]:

@@ -4,6 +4,6 @@
 against each other; ``expand`` makes columns and runs; ``experiment`` puts it together.
 """
 
-from rigbench.experiment.experiment import Experiment, load_experiment
+from rigbench.experiment.experiment import Experiment, load_experiment, store_path
 
-__all__ = ["Experiment", "load_experiment"]
+__all__ = ["Experiment", "load_experiment", "store_path"]

@@ -9,6 +9,7 @@ from itertools import chain
 from pathlib import Path
 
 from rigbench.campaign.plan import Plan, fair_order
+from rigbench.campaign.reading import Reader
 from rigbench.campaign.studies.tune import Tune, with_gains
 from rigbench.campaign.study import Study
 from rigbench.errors import Fault, InputFaults
@@ -25,7 +26,7 @@ from rigbench.scores.intervals import draws_needed, misses_allowed
 from rigbench.scores.results import Column, Tolerance
 from rigbench.yamlfile import Document, load, partial, read_text
 
-__all__ = ["Experiment", "load_experiment"]
+__all__ = ["Experiment", "load_experiment", "store_path"]
 
 MOST_RUNS = 1_000_000
 """Runs that an experiment may declare; each of them has to be held in memory."""
@@ -101,6 +102,11 @@ class Experiment:
         )
         return replace(self, sheets=sheets, studies=self.studies_of(sheets))
 
+    def with_stored_gains(self, store: Reader) -> Experiment:
+        """Return the experiment with the gains that a store holds; itself where none are, or not all yet."""
+        gains = None if self.tune is None else self.tune.found(store.row_of)
+        return self if gains is None else self.tuned(gains)
+
     def plan(self, store: str | None = None) -> Plan:
         """Return every run, in order; ``store`` is the store's path if the user named one."""
         resume = ["rigbench", "run", self.path, *(() if store is None else ("--store", store))]
@@ -122,6 +128,11 @@ class Experiment:
             stop_early=self.stop_early,
             first=self.tune,
         )
+
+
+def store_path(file: str, store: str | Path | None = None) -> Path:
+    """Return where the runs of an experiment file are stored, unless the user names a ``store``."""
+    return Path("results") / f"{Path(file).stem}.sqlite" if store is None else Path(store)
 
 
 def load_experiment(path: str | Path) -> Experiment:

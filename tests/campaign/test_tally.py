@@ -16,8 +16,9 @@ from rigbench.campaign.executor import InProcess
 from rigbench.campaign.plan import Plan, fair_order
 from rigbench.campaign.progress import Progress
 from rigbench.campaign.store import Store
-from rigbench.campaign.tally import SoFar, Standing, Tally, telling_column
+from rigbench.campaign.tally import SoFar, Standing, Tally
 from rigbench.campaign.work import Outcome
+from rigbench.scores.columns import telling_column
 from rigbench.scores.results import Column, Tolerance
 
 PlanMaker = Callable[..., Plan]
