@@ -9,7 +9,7 @@ from rigbench.campaign.plan import Entry, Plan
 from rigbench.campaign.reading import Reader
 from rigbench.campaign.work import Outcome
 from rigbench.scores.columns import telling_column
-from rigbench.scores.row import MACHINE_OUTCOMES
+from rigbench.scores.verdict import run_keeps
 
 __all__ = ["SoFar", "Standing", "Tally"]
 
@@ -84,16 +84,9 @@ class Tally:
         sums = self._sums[place[1]]
         for sign in (-1, 1):
             if sign > 0:
-                runs[motion] = self._keeps(motion, outcome, scores)
+                runs[motion] = run_keeps(outcome, scores, self._limits[motion])
             verdicts = runs.values()
             if len(runs) == len(self._limits) and None not in verdicts:
                 sums[0] += sign * all(verdicts)
                 sums[1] += sign
         self._standing = None
-
-    def _keeps(self, motion: str, outcome: str, scores: Mapping[str, float]) -> bool | None:
-        """Return whether a run keeps its limits, on the scores that it has; None if it has no verdict."""
-        if outcome not in MACHINE_OUTCOMES:
-            return None
-        limits = self._limits[motion]
-        return outcome == "finished" and all(scores.get(name, 0.0) <= limits[name] for name in limits)

@@ -12,6 +12,7 @@ from rigbench.campaign.studies.needs import NeedsStudy
 from rigbench.errors import Fault, nearest
 from rigbench.experiment.expand import NAMES, Sheet, bare_run, spreading
 from rigbench.experiment.findings import Findings
+from rigbench.experiment.law_names import check_law_names, is_named
 from rigbench.experiment.needs_keys import POINTS, NeedsKeys
 from rigbench.experiment.tolerance import check_applies
 from rigbench.motion.motion import Motion
@@ -21,7 +22,7 @@ from rigbench.scores.names import SCORES, main_score, score_info
 from rigbench.scores.needs_design import Group, NeedsDesign, Subject
 from rigbench.scores.results import Tolerance
 from rigbench.scores.spread_at import FACTOR, LOAD, SHIFT
-from rigbench.yamlfile import Document, KeyPath
+from rigbench.yamlfile import Document
 
 __all__ = ["check_needs", "check_needs_score", "needs_size_faults", "needs_study"]
 
@@ -47,14 +48,7 @@ def check_needs(
     """Check that there are such laws, a mismatch to ask about, and a tolerance to be kept."""
     if needs is None:
         return
-    names = tuple(dict.fromkeys([*variants.values(), *rows]))
-    listed = isinstance(needs.law, list)
-    for number, law in enumerate(_laws(needs)):
-        if names and law not in names and findings.clean("laws"):
-            near = nearest(law, names)
-            expected = "" if near else f"one of {', '.join(names)}"
-            place: KeyPath = ("needs", "law", number) if listed else ("needs", "law")
-            findings.fault(place, f"there is no law '{law}'", expected, near)
+    check_law_names(("needs", "law"), needs.law, rows, variants, findings)
     if not spreading(mismatch) and findings.clean("mismatch"):
         findings.fault(("needs",), "needs a mismatch", "a source with a spread under mismatch")
     if tolerance is None and findings.clean("tolerance") and findings.clean("motions"):
@@ -98,7 +92,7 @@ def needs_study(
     for sheet in sheets:
         groups = tuple(_groups(sheet, needs.per_link))
         for law in sheet.laws:
-            if law in _laws(needs) or variants.get(law) in _laws(needs):
+            if is_named(needs.law, law, variants):
                 subjects.append(Subject(sheet.name, law, tuple(sheet.motions), groups))
                 base |= {(sheet.name, law, motion): bare_run(sheet, law, motion) for motion in sheet.motions}
     design = NeedsDesign(
@@ -130,10 +124,6 @@ def _sized(design: NeedsDesign, runs: int | None) -> NeedsDesign:
             break
         design = larger
     return design
-
-
-def _laws(needs: NeedsKeys) -> tuple[str, ...]:
-    return (needs.law,) if isinstance(needs.law, str) else tuple(dict.fromkeys(needs.law))
 
 
 def _groups(sheet: Sheet, per_link: bool) -> Iterator[Group]:

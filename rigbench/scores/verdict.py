@@ -2,26 +2,28 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable
+from collections.abc import Iterable, Mapping
 
 from rigbench.scores.results import Tolerance
 from rigbench.scores.row import MACHINE_OUTCOMES, Row
 
-__all__ = ["keeps"]
+__all__ = ["keeps", "run_keeps"]
+
+
+def run_keeps(outcome: str, scores: Mapping[str, float], limits: Mapping[str, float]) -> bool | None:
+    """Return whether a run finished within its ``limits`` ('at most'), on the scores that it has.
+
+    None where the host's trouble leaves it without a verdict.
+    """
+    if outcome not in MACHINE_OUTCOMES:
+        return None
+    return outcome == "finished" and all(scores.get(name, 0.0) <= most for name, most in limits.items())
 
 
 def keeps(rows: Iterable[Row], tolerance: Tolerance) -> bool | None:
     """Return whether a draw whose runs, one a motion, came to ``rows`` keeps the tolerance in all of them.
 
-    Each finished, and each limit of its motion holds ('at most') on the scores that it has. None where the
-    host's trouble leaves any of them without a verdict.
+    None where any of them is without a verdict; see :func:`run_keeps`.
     """
-    kept = True
-    for row in rows:
-        if row.outcome not in MACHINE_OUTCOMES:
-            return None
-        limits = tolerance.limits_for(row.motion)
-        kept &= row.outcome == "finished" and all(
-            row.scores.get(s, 0.0) <= most for s, most in limits.items()
-        )
-    return kept
+    verdicts = [run_keeps(row.outcome, row.scores, tolerance.limits_for(row.motion)) for row in rows]
+    return None if None in verdicts else all(verdicts)
