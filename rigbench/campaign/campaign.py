@@ -68,8 +68,7 @@ def run_campaign(
     tracker.settle(settling)
     report = on_progress or (lambda _: None)
     studying: list[Studying] = []
-    with stop_signals(part.ends, on_stop) as stop:
-        doing = Doing(store, stop, jobs, executor)
+    with stop_signals(part.ends, on_stop) as stop, Doing(store, stop, jobs, executor) as doing:
         report(tracker.progress())
         for outcome in _matrix(doing, missing, settling):
             if settling.count(outcome):
@@ -111,8 +110,8 @@ def run_first(
     if plan.first is None:
         return
     store.record_plan(plan)
-    with stop_signals(part.ends, on_stop) as stop:
-        studying = Studying(plan.first, store, Doing(store, stop, jobs, executor))
+    with stop_signals(part.ends, on_stop) as stop, Doing(store, stop, jobs, executor) as doing:
+        studying = Studying(plan.first, store, doing)
         studying.go(on_progress or (lambda _: None))
     if stop.why:  # if only just finished too: the plan's own runs are to follow
         resume = part.resume(plan.resume)

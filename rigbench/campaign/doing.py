@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Sequence
-from contextlib import closing
+from contextlib import ExitStack, closing
+from types import TracebackType
 
 from rigbench.arm.mismatch import draw_values
-from rigbench.campaign.executor import Executor, executor_for
+from rigbench.campaign.executor import Executor, InProcess, Standing, executor_for
 from rigbench.campaign.plan import Entry
 from rigbench.campaign.progress import Progress
 from rigbench.campaign.reading import SETTLED
@@ -20,12 +21,25 @@ __all__ = ["Doing", "Draws", "Studying", "record_known"]
 
 
 class Doing:
-    """Does runs until told to stop, by the given ``executor`` or else by ``jobs`` workers."""
+    """Does runs until told to stop, by the given ``executor`` or else by ``jobs`` workers.
+
+    Use it in a ``with``. The workers stand by from one list of runs to the next; a longer one may bring more.
+    """
 
     def __init__(self, store: Store, stop: Stop, jobs: int | None, executor: Executor | None) -> None:
         self.stop = stop
         self._store, self._jobs, self._executor = store, jobs, executor
         self._draws = Draws()
+        self._standing: Standing | None = None
+        self._crew = ExitStack()
+
+    def __enter__(self) -> Doing:
+        return self
+
+    def __exit__(
+        self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
+    ) -> None:
+        self._crew.close()
 
     def outcomes(
         self, entries: Sequence[Entry], wanted: Callable[[Entry], bool] = lambda _: True
@@ -34,9 +48,9 @@ class Doing:
 
         Each outcome is yielded once it is stored.
         """
-        executor = self._executor or executor_for(self._jobs, len(entries))
         by_key = {entry.key: entry for entry in entries}
         try:
+            executor = self._executor or self._workers(len(entries))
             with closing(executor.run_all(filter(wanted, self.stop.until(entries)))) as outcomes:
                 for outcome in outcomes:
                     if self.stop.at_once:  # a law may have swallowed the interrupt: its run is dropped too
@@ -45,6 +59,16 @@ class Doing:
                     yield outcome
         except KeyboardInterrupt:
             self.stop.asked = True
+
+    def _workers(self, runs: int) -> Executor:
+        """Return the crew that stands by if it is large enough for so many runs, else a larger one."""
+        wanted = executor_for(self._jobs, runs)
+        if isinstance(wanted, InProcess):
+            return wanted
+        if self._standing is None or self._standing.how.jobs < wanted.jobs:
+            self._crew.close()
+            self._standing = self._crew.enter_context(wanted.standing())
+        return self._standing
 
 
 class Studying:

@@ -26,6 +26,7 @@ import traceback
 from collections import deque
 from collections.abc import Callable, Generator, Iterable, Iterator
 from concurrent.futures import FIRST_COMPLETED, Future, wait
+from contextlib import contextmanager
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Protocol
 
@@ -39,7 +40,16 @@ from rigbench.errors import RigbenchError
 if TYPE_CHECKING:
     from rigbench.rig.run import Run  # not at run time: it brings the engine and the compiler
 
-__all__ = ["Executor", "InProcess", "Processes", "Work", "cause_of_death", "executor_for", "time_limit_s"]
+__all__ = [
+    "Executor",
+    "InProcess",
+    "Processes",
+    "Standing",
+    "Work",
+    "cause_of_death",
+    "executor_for",
+    "time_limit_s",
+]
 
 Work = Callable[["Run"], Outcome]
 
@@ -63,7 +73,7 @@ class Executor(Protocol):
         ...
 
 
-def executor_for(jobs: int | None, runs: int) -> Executor:
+def executor_for(jobs: int | None, runs: int) -> InProcess | Processes:
     """Return an executor for so many runs: ``jobs`` worker processes, None for one a core, 0 for none.
 
     There are never more workers than runs; without workers the runs are done in this process.
@@ -118,14 +128,38 @@ class Processes:
 
     def run_all(self, entries: Iterable[Entry]) -> Generator[Outcome]:
         """See :class:`Executor`. RigbenchError if worker processes can't be had."""
-        try:
-            with Crew(self.jobs) as crew:
-                yield from _Shift(self, crew, iter(entries)).outcomes()
-        except BrokenCrew as error:
-            raise RigbenchError(
-                f"worker processes can't be started or don't stay alive ({error}); "
-                "'--jobs 0' does without them"
-            ) from error
+        with self.standing() as crew:
+            yield from crew.run_all(entries)
+
+    @contextmanager
+    def standing(self) -> Iterator[Standing]:
+        """Yield an executor that does list after list by one crew, which ends with the context."""
+        with _told(), Crew(self.jobs) as crew:
+            yield Standing(self, crew)
+
+
+@dataclass(frozen=True, eq=False)
+class Standing:
+    """Does lists of runs, one after the other, by a crew that is there already."""
+
+    how: Processes
+    crew: Crew
+
+    def run_all(self, entries: Iterable[Entry]) -> Generator[Outcome]:
+        """See :class:`Executor`; what is in hand when the iterator is closed is dropped with the crew."""
+        with _told():
+            yield from _Shift(self.how, self.crew, iter(entries)).outcomes()
+
+
+@contextmanager
+def _told() -> Iterator[None]:
+    """Say what to do where worker processes can't be had."""
+    try:
+        yield
+    except BrokenCrew as error:
+        raise RigbenchError(
+            f"worker processes can't be started or don't stay alive ({error}); '--jobs 0' does without them"
+        ) from error
 
 
 class _Shift:

@@ -6,6 +6,7 @@ import os
 import signal
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, replace
+from functools import partial
 from pathlib import Path
 from types import ModuleType
 from typing import Any
@@ -128,6 +129,26 @@ def test_a_run_that_comes_to_nothing_is_known_to_its_study(
             told = [progress for progress in seen if progress.study]
             assert (told[-1].planned, told[-1].done, told[-1].failed) == (6, 0, 6)
             assert len(told) == 4
+
+
+def test_workers_stand_by_between_rounds(
+    tmp_path: Path, doing: ModuleType, make_plan: PlanMaker, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """Two workers do the matrix and all rounds of the study: starting new ones would cost as much as runs."""
+    folder = tmp_path / "began"
+    folder.mkdir()
+    monkeypatch.setattr(
+        "rigbench.campaign.doing.executor_for", lambda jobs, runs: Processes(min(runs, 2), doing.work)
+    )
+    plan = make_plan(draws=1)
+    entries = [replace(e, run=replace(e.run, folder=str(folder))) for e in plan.entries]
+    study = Growing(partial(doing.FakeRun, folder=str(folder)))
+    plan = replace(plan, entries=tuple(entries), studies=(study,))
+    with Store.open_for_writing(tmp_path / "s.sqlite", plan) as store:
+        run_campaign(plan, store)
+    pids = [path.read_text() for path in folder.iterdir()]
+    assert len(pids) == len(plan.entries) + 6
+    assert len(set(pids)) <= 2
 
 
 def test_a_study_waits_for_the_whole_campaign(tmp_path: Path, doing: ModuleType, plan: Plan) -> None:
