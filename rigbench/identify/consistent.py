@@ -3,19 +3,19 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import dataclass, replace
-from functools import cached_property
+from dataclasses import dataclass
 
 import numpy as np
 import scipy.linalg
 from scipy.optimize import least_squares
 
 from rigbench.arm.arm import Arm, Floats
-from rigbench.arm.physical import from_pseudo_inertia, pseudo_inertia
+from rigbench.arm.log_cholesky import Coordinates
+from rigbench.arm.vector import LINK, with_vector
 from rigbench.identify.estimate import Estimate
 from rigbench.identify.regressor import Terms, parameter_values
 
-__all__ = ["SPREAD", "Consistent", "Coordinates", "consistent", "from_log_cholesky"]
+__all__ = ["SPREAD", "Consistent", "consistent"]
 
 SPREAD = 0.3
 """Default spread of the declared values in log-Cholesky coordinates: a mass is believed to 60 %, a
@@ -27,8 +27,6 @@ one would leave the solver no digits for the declared values."""
 
 LEAST_SCALE, NIL = 1e-9, 1e-12
 """Scale of a drive's term that is nowhere seen, and how far below 0 the solver may start from one at 0."""
-
-LINK = 10
 
 
 @dataclass(frozen=True, eq=False)
@@ -43,66 +41,6 @@ class Consistent:
     offset: Floats
     covariance: Floats
     scales: Floats  # (k - 10 n,), of the drives' coordinates
-
-
-@dataclass(frozen=True, eq=False)
-class Coordinates:
-    """Coordinates z about parameters: ten for each link, then one for each term of the drives.
-
-    A link's pseudo-inertia is U0 U(z) U(z)' U0', with U0 U0' that at z = 0 and U(z) as in
-    :func:`from_log_cholesky`, so that the same z is the same change whatever the link's size, units or
-    frame. A drive's term is its value at z = 0 plus z times its ``scale``.
-    """
-
-    origin: Floats  # (p,), parameters at z = 0
-    links: int
-    scales: Floats
-
-    @cached_property
-    def _roots(self) -> Floats:
-        """U0 of each link (n, 4, 4), upper triangular."""
-        pseudo = pseudo_inertia(self.origin[: LINK * self.links].reshape(-1, LINK))
-        flipped = np.linalg.cholesky(pseudo[:, ::-1, ::-1])
-        return np.ascontiguousarray(flipped[:, ::-1, ::-1])
-
-    def values(self, z: Floats) -> Floats:
-        """Return the parameters (p,) at z (p,)."""
-        split = LINK * self.links
-        root = self._roots @ from_log_cholesky(z[:split].reshape(-1, LINK))
-        bodies = from_pseudo_inertia(root @ np.swapaxes(root, 1, 2))
-        return np.concatenate([bodies.ravel(), self.origin[split:] + self.scales * z[split:]])
-
-    def slope(self, z: Floats) -> Floats:
-        """Return d values / d z at z, (p, p): dJ = U0 (dU U' + U dU') U0' for a link."""
-        split = LINK * self.links
-        upper = from_log_cholesky(z[:split].reshape(-1, LINK))
-        change = np.zeros((self.links, LINK, 4, 4))  # dU for each coordinate
-        change[:, 0] = upper
-        for k in range(3):
-            change[:, 1 + k, k, k] = upper[:, k, k]
-        for coordinate, (row, column) in enumerate(((0, 1), (1, 2), (0, 2), (0, 3), (1, 3), (2, 3)), 4):
-            change[:, coordinate, row, column] = upper[:, 3, 3]
-        half = self._roots[:, None] @ change @ np.swapaxes(self._roots @ upper, 1, 2)[:, None]
-        bodies = from_pseudo_inertia(half + np.swapaxes(half, 2, 3))
-        slope: Floats = scipy.linalg.block_diag(*np.swapaxes(bodies, 1, 2), np.diag(self.scales))
-        return slope
-
-
-def from_log_cholesky(theta: Floats) -> Floats:
-    """Return the upper triangular U (..., 4, 4) of coordinates (..., 10); U U^T is a body's pseudo-inertia.
-
-    theta = (alpha, d1, d2, d3, s12, s23, s13, t1, t2, t3), U = e^alpha [[e^d1, s12, s13, t1], [0, e^d2,
-    s23, t2], [0, 0, e^d3, t3], [0, 0, 0, 1]]. Every theta is a body that can exist, and every such
-    body is one theta. Source: Rucker, Wensing 2022, "Smooth parameterization of rigid-body inertia".
-    """
-    upper = np.zeros((*theta.shape[:-1], 4, 4))
-    for k in range(3):
-        upper[..., k, k] = np.exp(theta[..., 1 + k])
-        upper[..., k, 3] = theta[..., 7 + k]
-    upper[..., 0, 1], upper[..., 1, 2], upper[..., 0, 2] = theta[..., 4], theta[..., 5], theta[..., 6]
-    upper[..., 3, 3] = 1.0
-    scaled: Floats = upper * np.exp(theta[..., :1, None])
-    return scaled
 
 
 def consistent(arm: Arm, terms: Terms, found: Estimate, spread: float = SPREAD) -> Consistent:
@@ -135,7 +73,7 @@ def consistent(arm: Arm, terms: Terms, found: Estimate, spread: float = SPREAD) 
     values[links:end] = np.maximum(values[links:end], 0.0)
     seen = whitened(combination @ Coordinates(values, arm.n, scales).slope(start))
     return Consistent(
-        arm=_with(arm, values, drive_terms),
+        arm=with_vector(arm, values, drive_terms),
         offset=values[end:] if terms.offset else np.zeros(arm.n),
         covariance=_left_over(seen, spread),
         scales=scales,
@@ -164,21 +102,3 @@ def _whitened(found: Estimate, made_of: Floats) -> Callable[[Floats], Floats]:
         return result
 
     return whitened
-
-
-def _with(arm: Arm, values: Floats, drive_terms: list[str]) -> Arm:
-    """Return the arm with these parameters; breakaway keeps its ratio to Coulomb friction."""
-    n, drives = arm.n, arm.drives
-    of = {
-        name: values[LINK * n + n * k : LINK * n + n * (k + 1)].copy() for k, name in enumerate(drive_terms)
-    }
-    changes: dict[str, Floats] = {}
-    if "rotor" in of:
-        changes["rotor_inertia"] = of["rotor"] / drives.gear_ratio**2
-    if "viscous" in of:
-        changes["viscous"] = of["viscous"]
-    if "coulomb" in of:
-        dry = drives.coulomb > 0
-        ratio = np.where(dry, drives.static / np.where(dry, drives.coulomb, 1.0), 1.0)
-        changes |= {"coulomb": of["coulomb"], "static": of["coulomb"] * ratio}
-    return arm.replaced(values[: LINK * n].reshape(n, LINK).copy(), replace(drives, **changes))

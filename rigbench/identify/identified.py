@@ -64,7 +64,7 @@ def write_identified(
 def covariance_document(result: Consistent, terms: Terms, found: Estimate) -> dict[str, Any]:
     """Return all that is known of how well an identified arm is known, as JSON-able lists and numbers.
 
-    ``coordinates`` and ``covariance`` are of the z of :class:`rigbench.identify.consistent.Coordinates`
+    ``coordinates`` and ``covariance`` are of the z of :class:`rigbench.arm.log_cholesky.Coordinates`
     about the identified arm, so that draws from them can exist; ``base`` is the estimate of the base
     parameters that all of it came from.
     """

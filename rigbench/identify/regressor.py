@@ -10,6 +10,7 @@ import numpy as np
 from rigbench.arm.arm import PARAMETERS, Arm, Floats
 from rigbench.arm.dynamics import newton_euler, place
 from rigbench.arm.kernel import kernel
+from rigbench.arm.vector import vector_of
 
 __all__ = ["Terms", "link_regressor", "parameter_labels", "parameter_values", "regressor"]
 
@@ -91,11 +92,4 @@ def parameter_labels(arm: Arm, terms: Terms) -> tuple[str, ...]:
 
 def parameter_values(arm: Arm, terms: Terms) -> Floats:
     """Return the arm's own values of the parameters, shape (p,)."""
-    drives = arm.drives
-    own = {
-        "rotor": drives.reflected,
-        "viscous": drives.viscous,
-        "coulomb": drives.coulomb,
-        "offset": np.zeros(arm.n),
-    }
-    return np.concatenate([arm.parameters.ravel(), *(own[name] for name in terms.names)])
+    return vector_of(arm, terms.names)

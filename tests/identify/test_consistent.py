@@ -10,9 +10,10 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from rigbench.arm.dynamics import inverse_dynamics
+from rigbench.arm.log_cholesky import Coordinates, from_log_cholesky
 from rigbench.arm.physical import from_pseudo_inertia, possible
 from rigbench.identify.base import base_of
-from rigbench.identify.consistent import Coordinates, consistent, from_log_cholesky
+from rigbench.identify.consistent import consistent
 from rigbench.identify.estimate import Estimate, estimate
 from rigbench.identify.filtering import Rows
 from rigbench.identify.regressor import Terms, parameter_values, regressor
