@@ -12,10 +12,11 @@ from collections.abc import Callable, Iterable, Mapping
 import numpy as np
 
 from rigbench.arm.arm import Arm, Floats
+from rigbench.arm.knowledge import deviations
 from rigbench.arm.sources import Mismatch
 from rigbench.arm.spread import Spread, carriers
 
-__all__ = ["Factors", "draw_values", "exponents_of", "factors_of", "parameter_names", "uniform"]
+__all__ = ["Factors", "draw_values", "exponents_of", "factors_of", "names_of", "parameter_names", "uniform"]
 
 Factors = Callable[[str], float]
 """Gives the factor u of a parameter by its name."""
@@ -86,8 +87,15 @@ def draw_values(
     return {
         name: uniform(seed, name, draw)
         for source in mismatch.active(sources)
-        for name in parameter_names(arm, source, shared=_is_shared(mismatch, source))
+        for name in names_of(arm, mismatch, source)
     }
+
+
+def names_of(arm: Arm, mismatch: Mismatch, source: str) -> tuple[str, ...]:
+    """Name the parameters of a source as declared: those of :func:`parameter_names`, or identified.<sum>."""
+    if mismatch.identified is not None and source == "identified":
+        return tuple(f"identified.{name}" for name in mismatch.identified.names)
+    return parameter_names(arm, source, shared=_is_shared(mismatch, source))
 
 
 def _is_shared(mismatch: Mismatch, source: str) -> bool:
@@ -101,12 +109,15 @@ def exponents_of(
 ) -> dict[str, Floats]:
     """Return level times u of every parameter of the ``active`` sources, one for each link or joint.
 
-    Shape (parameters,) in the order of their names; what is shared is repeated.
+    Shape (parameters,) in the order of their names; what is shared is repeated. Of what was identified, level
+    times the standard deviations that u means.
     """
     exponents = {}
     for source in active:
-        shared = _is_shared(mismatch, source)
-        names = parameter_names(arm, source, shared)
-        u = np.array([factor(name) for name in names])
-        exponents[source] = level * (np.tile(u, len(carriers(arm, source))) if shared else u)
+        u = np.array([factor(name) for name in names_of(arm, mismatch, source)])
+        if source == "identified":
+            u = deviations(u)
+        elif _is_shared(mismatch, source):
+            u = np.tile(u, len(carriers(arm, source)))
+        exponents[source] = level * u
     return exponents

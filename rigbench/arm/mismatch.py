@@ -4,8 +4,9 @@ Each source names its parameters, and each parameter of each link and joint has 
 uniform in [-1, 1), from its own stream (see ``draws``). At a level L a percent source multiplies by
 (1 + spread)^(L u): positive whatever L, and symmetric in the logarithm. A case comes on top of the draw.
 
-Links change in this order: mass, centre of gravity, principal second moments of mass, payload. Two
-sources are no part of the arm: the delay between law and torque, and the tilt of the base.
+What an identification left unknown goes first; all else is on top of that. Links change in this order:
+mass, centre of gravity, principal second moments of mass, payload. Two sources are no part of the arm: the
+delay between law and torque, and the tilt of the base.
 """
 
 from __future__ import annotations
@@ -19,7 +20,8 @@ import numpy as np
 from rigbench.arm.arm import Arm, Floats
 from rigbench.arm.case import Case
 from rigbench.arm.departures import drives, links, loaded, with_payload
-from rigbench.arm.draws import draw_values, exponents_of, factors_of, parameter_names, uniform
+from rigbench.arm.draws import draw_values, exponents_of, factors_of, names_of, parameter_names, uniform
+from rigbench.arm.knowledge import Knowledge, known_arm
 from rigbench.arm.physical import impossible, possible
 from rigbench.arm.sources import Mismatch, Payload
 from rigbench.arm.spread import Spread, carriers, unknown_names
@@ -27,6 +29,7 @@ from rigbench.errors import InputFaults
 
 __all__ = [
     "Case",
+    "Knowledge",
     "Mismatch",
     "Payload",
     "Spread",
@@ -34,6 +37,7 @@ __all__ = [
     "carriers",
     "delay_of",
     "draw_values",
+    "names_of",
     "parameter_names",
     "plant",
     "tilt_of",
@@ -141,6 +145,8 @@ def _built(arm: Arm, mismatch: Mismatch, exponents: Mapping[str, Floats], case: 
     """Build the plant from level times u of every parameter, by source, and the case."""
     if not exponents and not case.keys:
         return believed(arm, mismatch)
+    if mismatch.identified is not None and "identified" in exponents:
+        arm = known_arm(arm, mismatch.identified, exponents["identified"])
     with np.errstate(over="ignore", invalid="ignore"):
         changed = links(arm, mismatch, exponents, case)
         parameters = with_payload(arm, mismatch, exponents, case, changed)
@@ -169,7 +175,8 @@ def _fault(arm: Arm, mismatch: Mismatch, exponents: Mapping[str, Floats], case: 
         drawn[source] = exponent
         flaw = _flaw(_built(arm, mismatch, drawn, NOTHING))
         if flaw is not None:
-            return InputFaults.one(arm.name, f"mismatch.{source}", flaw, "less spread or level")
+            key = "from" if source == "identified" else source
+            return InputFaults.one(arm.name, f"mismatch.{key}", flaw, "less spread or level")
     stated = NOTHING
     for key in case.keys:
         stated = replace(stated, **{key: getattr(case, key)})

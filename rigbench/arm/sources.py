@@ -9,6 +9,7 @@ from typing import Any
 
 import numpy as np
 
+from rigbench.arm.knowledge import Knowledge
 from rigbench.arm.spread import WHOLE_SOURCES, Spread
 
 __all__ = ["Mismatch", "Payload"]
@@ -49,7 +50,8 @@ class Mismatch:
     drive's torque limit (nothing where it has none); ``encoder_offset_deg`` to the sensed position [deg;
     mm for a prismatic joint]. Of the machine as a whole, plain numbers: ``delay_ms`` comes on top of the
     declared delay, which never falls below 0, ``base_tilt_deg`` on top of the declared tilt about each
-    of the base's x and y axes. ValueError for what is no spread.
+    of the base's x and y axes. ``identified`` is what an identification left unknown; other sources come on
+    top of it. ValueError for what is no spread.
     """
 
     link_mass_percent: Spread | None = None
@@ -65,12 +67,13 @@ class Mismatch:
     stiffness_percent: Spread | None = None
     delay_ms: float | None = None
     base_tilt_deg: float | None = None
+    identified: Knowledge | None = None
 
     def __post_init__(self) -> None:
         for name in self.sources:
             given = getattr(self, name)
             if name in WHOLE_SOURCES:
-                if name != "payload" and not 0 <= given < math.inf:
+                if not isinstance(given, Payload | Knowledge) and not 0 <= given < math.inf:
                     raise ValueError(f"{name} of {given} is no spread")
                 continue
             spread = given if isinstance(given, Spread) else Spread(given)
@@ -101,7 +104,9 @@ class Mismatch:
         acting: dict[str, Any] = {"believed_kg": self.believed_kg}
         for name in self.active(active):
             spread = getattr(self, name)
-            if isinstance(spread, Payload):
+            if isinstance(spread, Knowledge):
+                acting[name] = spread.digest
+            elif isinstance(spread, Payload):
                 acting[name] = [float(spread.least_kg), float(spread.most_kg), float(spread.cog_mm)]
             else:
                 acting[name] = spread.inputs() if isinstance(spread, Spread) else float(spread)

@@ -158,7 +158,7 @@ def _made(cls: type[Any], fields: Mapping[str, Any]) -> Any:
 def _types() -> Mapping[str, type[Any]]:
     """The classes whose values a run may hold, by name."""
     from rigbench.arm.files import ArmFiles
-    from rigbench.arm.mismatch import Case, Mismatch, Payload, Spread
+    from rigbench.arm.mismatch import Case, Knowledge, Mismatch, Payload, Spread
     from rigbench.laws.registry import LawChoice
     from rigbench.motion.chained import ChainMotion
     from rigbench.motion.curve import Circle, Line
@@ -171,6 +171,6 @@ def _types() -> Mapping[str, type[Any]]:
     from rigbench.rig.sampled import Sensing, Timing
     from rigbench.rig.scene import SceneChoice
 
-    machine = ArmFiles, Case, Mismatch, Payload, Spread, LawChoice, Rates, SceneChoice, Sensing, Timing
+    machine = ArmFiles, Case, Knowledge, Mismatch, Payload, Spread, LawChoice, Rates, SceneChoice, Sensing
     motions = ChainMotion, Circle, Line, PathMotion, Reach, TableMotion, Task, ViaMotion
-    return {cls.__name__: cls for cls in (*machine, *motions)}
+    return {cls.__name__: cls for cls in (*machine, Timing, *motions)}

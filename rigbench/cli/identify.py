@@ -12,7 +12,8 @@ __all__ = ["identify_arm"]
 def identify_arm(path: str, output: str | None, as_json: bool) -> None:
     """Do what an identification file declares, write the arm into the folder ``output``, print the report."""
     from rigbench.experiment.identification import load_identification
-    from rigbench.identify.identified import covariance_document, write_identified
+    from rigbench.identify.covariance_file import covariance_document
+    from rigbench.identify.identified import write_identified
     from rigbench.report.identify_picture import identify_picture
     from rigbench.report.identify_text import identify_text
 

@@ -108,7 +108,7 @@ def load_identification(path: str | Path) -> DeclaredIdentification:
     simulated = None
     if keys.simulate is not None:
         given = keys.simulate
-        mismatch = mismatch_of(given.mismatch, files.arm(), findings)
+        mismatch = mismatch_of(given.mismatch, files.arm(), findings, folder)
         simulated = Simulated(
             mismatch, spreading(mismatch), given.seed, given.noise_deg, given.torque_noise_nm
         )

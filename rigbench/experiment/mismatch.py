@@ -3,14 +3,16 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
+from pathlib import Path
 
 import numpy as np
 
 from rigbench.arm.arm import Arm
-from rigbench.arm.mismatch import Case, Mismatch, Payload, Spread, carriers, unknown_names
+from rigbench.arm.mismatch import Case, Knowledge, Mismatch, Payload, Spread, carriers, unknown_names
+from rigbench.errors import InputFaults
 from rigbench.experiment.condition_keys import CaseKeys, ConditionsKeys, StatedKeys
 from rigbench.experiment.expand import NAMES, nominal_and_levels, spreading
-from rigbench.experiment.findings import Findings
+from rigbench.experiment.findings import Findings, unreadable
 from rigbench.experiment.mismatch_keys import MismatchKeys, SpreadKeys
 from rigbench.yamlfile import KeyPath
 
@@ -28,12 +30,14 @@ IDLE = {
 """Sources without effect where an array of the drives has this value for all joints, and what that means."""
 
 
-def mismatch_of(keys: MismatchKeys, arm: Arm | None, findings: Findings) -> Mismatch:
-    """Return the mismatch; what of it is at fault is left out."""
-    given: dict[str, Spread | Payload | float | None] = {"payload": _payload(keys, findings)}
+def mismatch_of(keys: MismatchKeys, arm: Arm | None, findings: Findings, folder: Path) -> Mismatch:
+    """Return the mismatch; what of it is at fault is left out. Paths are relative to ``folder``."""
+    given: dict[str, Spread | Payload | Knowledge | float | None] = {"payload": _payload(keys, findings)}
+    if keys.identified is not None and arm is not None and findings.clean("mismatch", "from"):
+        given["identified"] = _identified(folder, keys.identified, arm, findings)
     for source in MismatchKeys.model_fields:
         value = getattr(keys, source)
-        if source == "payload" or value is None:
+        if source in given or value is None or source == "identified":
             continue
         path: KeyPath = ("mismatch", source)
         if isinstance(value, SpreadKeys):
@@ -59,6 +63,24 @@ def _payload(keys: MismatchKeys, findings: Findings) -> Payload | None:
     else:
         return Payload(given.believed_kg, given.least_kg, given.most_kg, given.cog_mm)
     return None
+
+
+def _identified(folder: Path, name: str, arm: Arm, findings: Findings) -> Knowledge | None:
+    """Return what an identification left unknown; faults of its file go to ``findings``."""
+    from rigbench.identify.covariance_file import read_knowledge  # slow to import
+
+    path: KeyPath = ("mismatch", "from")
+    if (problem := unreadable(folder / name)) is not None:
+        findings.fault(path, f"'{name}' {problem}", f"a covariance file, relative to {folder}")
+        return None
+    try:
+        knowledge, same = read_knowledge(folder / name, arm)
+    except InputFaults as error:
+        findings.take(error.faults)
+        return None
+    if not same:
+        findings.note(path, "is of other parameters than the arm's: its errors are put about the arm's own")
+    return knowledge
 
 
 def _check_names(

@@ -143,3 +143,9 @@ class MismatchKeys(Declared):
         description="tilt of the base on top of base_tilt_deg, about its x and y axes, each either way, at "
         "level 1 [deg]; typical: 0.2 (our choice)",
     )
+    identified: Annotated[str, Field(min_length=1)] | None = Field(
+        default=None,
+        alias="from",
+        description="the covariance file of the identified arm: at level 1 the plant departs from it as "
+        "far as was left open, at level 2 by twice as many standard deviations",
+    )

@@ -7,7 +7,7 @@ from dataclasses import replace
 from typing import Any
 
 from rigbench.arm.arm import Arm
-from rigbench.arm.mismatch import Mismatch, Payload, Spread, parameter_names
+from rigbench.arm.mismatch import Knowledge, Mismatch, Payload, Spread, names_of
 from rigbench.campaign.studies.needs import NeedsStudy
 from rigbench.errors import Fault, nearest
 from rigbench.experiment.expand import NAMES, Sheet, bare_run, spreading
@@ -32,7 +32,7 @@ MOST_POINTS = 2**16
 
 UNITS = {
     "link_cog_mm": "mm", "torque_bias_percent": "% of the torque limit", "encoder_offset_deg": "deg",
-    "delay_ms": "ms", "base_tilt_deg": "deg",
+    "delay_ms": "ms", "base_tilt_deg": "deg", "identified": "times its standard deviations",
 }  # fmt: skip
 """The units of spreads that shift; those of the other sources but the payload are factors, in %."""
 
@@ -132,7 +132,7 @@ def _groups(sheet: Sheet, per_link: bool) -> Iterator[Group]:
     for source in spreading(mismatch):
         spread = getattr(mismatch, source)
         shared = isinstance(spread, Spread) and spread.shared
-        names = parameter_names(arm, source, shared)
+        names = names_of(arm, mismatch, source)
         if not per_link or shared or not isinstance(spread, Spread):
             yield Group(NAMES[source], source, "", names, _declared(source, spread))
             continue
@@ -152,13 +152,14 @@ def _grows(source: str) -> str:
     return SHIFT if source in UNITS else FACTOR
 
 
-def _declared(source: str, spread: Spread | Payload | float) -> dict[str, Any]:
+def _declared(source: str, spread: Spread | Payload | Knowledge | float) -> dict[str, Any]:
     """Return what is declared of a source, see spread_at."""
     if isinstance(spread, Payload):
         values = {name: getattr(spread, name) for name in ("believed_kg", "least_kg", "most_kg", "cog_mm")}
         return {"grows": LOAD, "unit": "kg", "values": values}
-    values = (
-        {"all": spread.all, **dict(spread.each)} if isinstance(spread, Spread) else {"all": float(spread)}
-    )
+    if isinstance(spread, Spread):
+        values = {"all": spread.all, **dict(spread.each)}
+    else:
+        values = {"all": 1.0 if isinstance(spread, Knowledge) else float(spread)}
     values = {name: value for name, value in values.items() if value}
     return {"grows": _grows(source), "unit": UNITS.get(source, "%"), "values": values}

@@ -7,6 +7,7 @@ from dataclasses import replace
 from typing import Any, get_args, get_origin
 
 from pydantic import BaseModel
+from pydantic.fields import FieldInfo
 
 from rigbench.errors import Fault, nearest
 from rigbench.experiment.schema import ExperimentKeys
@@ -116,7 +117,7 @@ class _Reader:
         models = [kind for kind in kinds if _is_model(kind)]
         if not models or any(model.model_config.get("extra") == "allow" for model in models):
             return None
-        return [name for model in models for name in model.model_fields]
+        return [name for model in models for name in _fields(model)]
 
     def _take(self, values: list[Any], path: KeyPath) -> None:
         """Make an axis of a list of values."""
@@ -163,12 +164,17 @@ def _label(path: KeyPath) -> str:
 def _inside(kind: Any, key: str) -> Iterator[Any]:
     """Yield the types that a value of type ``kind`` may have at ``key``."""
     if _is_model(kind):
-        if key in kind.model_fields:
-            yield from branches(kind.model_fields[key].annotation)
+        if key in (fields := _fields(kind)):
+            yield from branches(fields[key].annotation)
         else:
             yield Any
     elif get_origin(kind) is dict:
         yield from branches(get_args(kind)[1])
+
+
+def _fields(model: type[BaseModel]) -> dict[str, FieldInfo]:
+    """Return what a model declares, by the keys of the file."""
+    return {info.alias or name: info for name, info in model.model_fields.items()}
 
 
 def _is_model(kind: Any) -> bool:

@@ -68,7 +68,7 @@ def check_sheet(combination: Combination, axes: tuple[Axis, ...], folder: Path) 
     timing = None if rates is None else timing_of(keys.timing, rates, findings)
     control_hz = keys.rates.control_hz if findings.clean("rates", "control_hz") else None
     laws = law_choices(keys.laws or {}, findings, folder, None if arm is None else arm.n, control_hz)
-    mismatch = mismatch_of(keys.mismatch, arm, findings)
+    mismatch = mismatch_of(keys.mismatch, arm, findings, folder)
     check_conditions(keys.conditions, spreading(mismatch), findings)
     cases = cases_of(keys.conditions, mismatch, arm, findings)
     tolerance, bands = tolerance_of(keys, arm, findings)

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -12,6 +11,7 @@ from scipy.optimize import least_squares
 from rigbench.arm.arm import Arm, Floats
 from rigbench.arm.log_cholesky import Coordinates
 from rigbench.arm.vector import LINK, with_vector
+from rigbench.arm.whitening import floored, whitening
 from rigbench.identify.estimate import Estimate
 from rigbench.identify.regressor import Terms, parameter_values
 
@@ -20,10 +20,6 @@ __all__ = ["SPREAD", "Consistent", "consistent"]
 SPREAD = 0.3
 """Default spread of the declared values in log-Cholesky coordinates: a mass is believed to 60 %, a
 friction to 30 % (our choice: wide beside what excitation shows, narrow beside nothing)."""
-
-FINEST = 1e-6
-"""Least standard deviation of a base parameter that counts, as a share of what it is made of: a finer
-one would leave the solver no digits for the declared values."""
 
 LEAST_SCALE, NIL = 1e-9, 1e-12
 """Scale of a drive's term that is nowhere seen, and how far below 0 the solver may start from one at 0."""
@@ -55,7 +51,8 @@ def consistent(arm: Arm, terms: Terms, found: Estimate, spread: float = SPREAD) 
     shown = np.abs(scipy.linalg.lstsq(combination, found.values)[0])[links:]
     scales = np.maximum(np.maximum(declared[links:], shown), LEAST_SCALE)
     about = Coordinates(declared, arm.n, scales)
-    whitened = _whitened(found, np.abs(combination) @ np.abs(declared))
+    size = np.abs(combination) @ np.abs(declared) + np.abs(found.values)
+    whitened = whitening(floored(found.covariance, size))
 
     def misfit(z: Floats) -> Floats:
         return np.concatenate([whitened(combination @ about.values(z) - found.values), z / spread])
@@ -87,18 +84,3 @@ def _left_over(seen: Floats, spread: float) -> Floats:
     known[: len(size)] = size**2
     covariance: Floats = (directions.T / (known + spread**-2)) @ directions
     return covariance
-
-
-def _whitened(found: Estimate, made_of: Floats) -> Callable[[Floats], Floats]:
-    """Return what turns errors of the base parameters (b, ...) into ones of covariance 1."""
-    size = made_of + np.abs(found.values)
-    covariance = found.covariance + np.diag((FINEST * np.maximum(size, size.max() * FINEST)) ** 2)
-    deviation = np.sqrt(np.diag(covariance))
-    root = scipy.linalg.cholesky(covariance / np.outer(deviation, deviation), lower=True)
-
-    def whitened(error: Floats) -> Floats:
-        scaled = (error.T / deviation).T
-        result: Floats = scipy.linalg.solve_triangular(root, scaled, lower=True)
-        return result
-
-    return whitened

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import json
 import xml.etree.ElementTree as ET
 from pathlib import Path
 from typing import Any
@@ -15,14 +14,12 @@ from rigbench.arm.files import ArmFiles
 from rigbench.arm.physical import inertia
 from rigbench.errors import StoreError
 from rigbench.identify.consistent import Consistent
+from rigbench.identify.covariance_file import covariance_document, covariance_text
 from rigbench.identify.estimate import Estimate
 from rigbench.identify.regressor import Terms
 from rigbench.yamlfile import load
 
-__all__ = ["covariance_document", "write_identified"]
-
-COORDINATES = ("alpha", "d1", "d2", "d3", "s12", "s23", "s13", "t1", "t2", "t3")
-"""Names of a link's log-Cholesky coordinates (Rucker, Wensing 2022)."""
+__all__ = ["write_identified"]
 
 HEADING = """\
 # Identified from recorded motions: inertials, rotor inertia, friction. All else is as declared.
@@ -50,7 +47,7 @@ def write_identified(
     texts = (
         HEADING + _arm_text(files, terms, result.arm, paths[1].name),
         _urdf_text(files, result.arm),
-        json.dumps(covariance_document(result, terms, found), indent=1, allow_nan=False) + "\n",
+        covariance_text(covariance_document(result, terms, found)),
     )
     try:
         folder.mkdir(parents=True, exist_ok=True)
@@ -59,35 +56,6 @@ def write_identified(
     except OSError as error:
         raise StoreError(str(folder), f"the arm can't be written: {error.strerror}") from error
     return paths
-
-
-def covariance_document(result: Consistent, terms: Terms, found: Estimate) -> dict[str, Any]:
-    """Return all that is known of how well an identified arm is known, as JSON-able lists and numbers.
-
-    ``coordinates`` and ``covariance`` are of the z of :class:`rigbench.arm.log_cholesky.Coordinates`
-    about the identified arm, so that draws from them can exist; ``base`` is the estimate of the base
-    parameters that all of it came from.
-    """
-    arm = result.arm
-    links = [f"{name}.{link}" for link in arm.links for name in COORDINATES]
-    drives = [f"{name}.{joint}" for name in terms.names for joint in arm.joints]
-    low, high = found.interval()
-    return {
-        "rigbench": 1,
-        "kind": "covariance",
-        "arm": arm.name,
-        "coordinates": links + drives,
-        "scales": [1.0] * len(links) + result.scales.tolist(),
-        "covariance": result.covariance.tolist(),
-        "offset": dict(zip(arm.joints, result.offset.tolist(), strict=True)),
-        "base": [
-            {"name": said, "value": value, "low": least, "high": most}
-            for said, value, least, most in zip(
-                found.base.names, found.values.tolist(), low.tolist(), high.tolist(), strict=True
-            )
-        ],
-        "noise_nm": dict(zip(arm.joints, found.noise.tolist(), strict=True)),
-    }
 
 
 def _arm_text(files: ArmFiles, terms: Terms, arm: Arm, urdf: str) -> str:

@@ -8,7 +8,8 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from rigbench.arm.arm import PRISMATIC, Arm
-from rigbench.arm.mismatch import Mismatch, Payload, Spread, carriers
+from rigbench.arm.knowledge import deviations
+from rigbench.arm.mismatch import Knowledge, Mismatch, Payload, Spread, carriers
 from rigbench.arm.spread import WHOLE_SOURCES
 from rigbench.rig.run import Run
 
@@ -100,6 +101,8 @@ def _amount(run: Run, arm: Arm, name: str, u: float) -> str | None:
     """Say what u makes of a parameter at the run's level; None if its spread is 0."""
     source, _, rest = name.partition(".")
     declared, unit = getattr(run.mismatch, source), _unit(source)
+    if isinstance(declared, Knowledge):
+        return f"{run.level * deviations(np.array(u)):+.2g} sd"
     if isinstance(declared, Payload):
         return _payload(run, arm, declared, rest, u)
     if not isinstance(declared, Spread):

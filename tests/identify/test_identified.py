@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import json
 from dataclasses import replace
 from pathlib import Path
 
@@ -95,17 +94,6 @@ def test_what_was_not_identified_stays(tmp_path):
         assert np.array_equal(getattr(back.drives, name), value), name
     whole = ArmFiles.read(written(tmp_path, "all", files, off(files.arm(), 0.2))[0]).arm()
     assert whole.drives.static[0] / whole.drives.coulomb[0] == pytest.approx(7.0 / 5.5)
-
-
-def test_the_covariance_file_says_what_it_holds(tmp_path):
-    """As many names and scales as rows, base parameters with their intervals, plain JSON."""
-    document = json.loads(written(tmp_path, "a", FILES, FILES.arm())[2].read_text())
-    assert len(document["coordinates"]) == len(document["covariance"]) == len(document["scales"]) == 78
-    assert document["coordinates"][10] == "alpha.upper_arm"
-    assert document["coordinates"][-1] == "coulomb.j6"
-    assert len(document["base"]) == 52
-    for entry in document["base"]:
-        assert entry["low"] <= entry["value"] <= entry["high"]
 
 
 def test_a_folder_that_is_a_file_is_a_fault(tmp_path):

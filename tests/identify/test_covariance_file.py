@@ -1,0 +1,146 @@
+"""The covariance file: what it holds, how it reads back, and what is said of bad ones."""
+
+from __future__ import annotations
+
+import json
+from pathlib import Path
+
+import numpy as np
+import pytest
+
+from rigbench.arm.files import ArmFiles
+from rigbench.arm.log_cholesky import Coordinates
+from rigbench.errors import InputFaults
+from rigbench.identify.base import base_of
+from rigbench.identify.consistent import Consistent
+from rigbench.identify.covariance_file import covariance_document, covariance_text, read_knowledge
+from rigbench.identify.estimate import Estimate
+from rigbench.identify.regressor import Terms, parameter_labels, parameter_values
+
+GRAVITY = (0.0, 0.0, -9.81)
+ROBOTS = Path(__file__).resolve().parents[2] / "robots_demo"
+TRAY6 = ArmFiles.read(ROBOTS / "tray6" / "arm.yaml").arm()
+PLANAR2 = ArmFiles.read(ROBOTS / "planar2" / "arm.yaml").arm()
+
+
+def document(arm, terms=None, offset=0.0):
+    """An arm taken as found, its coordinates known to 10 % each, torques showing 1 %."""
+    terms = terms or Terms()
+    base, count = base_of(arm, GRAVITY, terms), len(parameter_labels(arm, terms))
+    values = base.combination @ parameter_values(arm, terms)
+    found = Estimate(
+        base, values, np.diag((0.01 * values) ** 2), np.ones(arm.n), np.zeros(arm.n, int), 100, 10.0
+    )
+    result = Consistent(arm, np.full(arm.n, offset), 0.01 * np.eye(count), np.ones(count - 10 * arm.n))
+    return covariance_document(result, terms, found)
+
+
+def written(folder, data):
+    path = folder / "known.json"
+    path.write_text(covariance_text(data) if isinstance(data, dict) else data)
+    return path
+
+
+def test_it_says_what_it_holds(tmp_path):
+    """As many rows as sums; each sum is that of its parts; the covariance is K S C S' K' of the coordinates'."""
+    data = json.loads(written(tmp_path, document(TRAY6)).read_text())
+    assert len(data["base"]) == len(data["covariance"]) == 52
+    assert len(data["values"]) == 78
+    assert len(data["scales"]) == 18
+    labels = parameter_labels(TRAY6, Terms())
+    values = dict(zip(labels, data["values"], strict=True))
+    for entry in data["base"]:
+        assert entry["low"] <= entry["value"] <= entry["high"]
+        assert sum(share * values[label] for label, share in entry["of"].items()) == pytest.approx(
+            entry["value"]
+        )
+        assert next(iter(entry["of"])) == entry["name"].split(" ")[0]
+    base = base_of(TRAY6, GRAVITY, Terms())
+    slope = Coordinates(np.array(data["values"]), 6, np.ones(18)).slope(np.zeros(78))
+    expected = 0.01 * (base.combination @ slope) @ (base.combination @ slope).T
+    assert np.allclose(data["covariance"], expected, rtol=1e-9, atol=1e-12 * expected.max())
+    assert np.allclose([entry["deviation"] ** 2 for entry in data["base"]], np.diag(expected))
+
+
+def test_it_reads_back(tmp_path):
+    """Sums, covariance and scales are those written; it knows its own arm, and another by its numbers."""
+    data = document(TRAY6)
+    known, same = read_knowledge(written(tmp_path, data), TRAY6)
+    assert same
+    assert np.array_equal(known.covariance, data["covariance"])
+    assert np.allclose(known.combination, base_of(TRAY6, GRAVITY, Terms()).combination, rtol=1e-15, atol=0)
+    assert known.names[0] == "Izz.turret"
+    assert known.terms == ("rotor", "viscous", "coulomb")
+    heavier = TRAY6.replaced(TRAY6.parameters * 1.001)
+    assert read_knowledge(written(tmp_path, data), heavier) == (known, False)
+
+
+def test_offsets_are_no_part_of_an_arm(tmp_path):
+    """With offsets identified too, their sums are left out, all others have the covariance that they had."""
+    terms = Terms(rotor=False, viscous=False, coulomb=False, offset=True)
+    data = document(PLANAR2, terms, offset=0.7)
+    assert data["offset"]["elbow"] == 0.7
+    assert [entry["value"] for entry in data["base"] if entry["name"].startswith("offset.")] == [0.7, 0.7]
+    known, same = read_knowledge(written(tmp_path, data), PLANAR2)
+    assert same
+    assert known.terms == ()
+    assert known.scales == ()
+    kept = [i for i, entry in enumerate(data["base"]) if not entry["name"].startswith("offset.")]
+    assert np.array_equal(known.covariance, np.array(data["covariance"])[np.ix_(kept, kept)])
+    assert len(known.combination[0]) == 20
+
+
+def changed(**changes):
+    return document(PLANAR2) | changes
+
+
+def asymmetric():
+    covariance = np.array(document(PLANAR2)["covariance"])
+    covariance[0, 1] += np.sqrt(covariance[0, 0] * covariance[1, 1])
+    return covariance.tolist()
+
+
+def indefinite():
+    covariance = np.array(document(PLANAR2)["covariance"])
+    covariance[0, 1] = covariance[1, 0] = 2 * np.sqrt(covariance[0, 0] * covariance[1, 1])
+    return covariance.tolist()
+
+
+BAD = {
+    "no JSON": (lambda: "a: {b\n", "no JSON", ""),
+    "empty": (lambda: "", "no JSON", ""),
+    "another document": (lambda: '{"rigbench": 1}\n', "missing", "kind"),
+    "an unknown key": (lambda: changed(colour="blue"), "unknown key", "colour"),
+    "another version": (lambda: changed(rigbench=2), "2", "rigbench"),
+    "another arm": (lambda: document(TRAY6), "are turret, upper_arm", "links"),
+    "too few values": (lambda: changed(values=[1.0, 2.0]), "2 entries", "values"),
+    "no square": (lambda: changed(covariance=[[1.0], [2.0]]), "2 entries", "covariance"),
+    "asymmetric": (lambda: changed(covariance=asymmetric()), "is none", "covariance"),
+    "indefinite": (lambda: changed(covariance=indefinite()), "variance below 0", "covariance"),
+    "a negative scale": (lambda: changed(scales=[-1.0] * 6), "-1", "scales[0]"),
+    "an unknown part": (
+        lambda: changed(base=[entry | {"of": {"Iab.fore": 1.0}} for entry in document(PLANAR2)["base"]]),
+        "'Iab.fore' is no parameter",
+        "base[0].of",
+    ),
+    "not a number": (lambda: changed(values=["x"] * 26), "'x'", "values[0]"),
+}
+
+
+@pytest.mark.parametrize("bad", BAD)
+def test_a_bad_file_is_told_with_its_place(tmp_path, bad):
+    """File, key, and what is wrong; never another error."""
+    make, said, key = BAD[bad]
+    path = written(tmp_path, make())
+    with pytest.raises(InputFaults) as caught:
+        read_knowledge(path, PLANAR2)
+    assert any(
+        fault.file == str(path) and fault.key == key and said in fault.problem
+        for fault in caught.value.faults
+    ), [str(fault) for fault in caught.value.faults]
+
+
+def test_a_file_that_is_not_there(tmp_path):
+    """Named with its path."""
+    with pytest.raises(InputFaults, match="does not exist"):
+        read_knowledge(tmp_path / "none.json", PLANAR2)
