@@ -13,8 +13,8 @@ from numpy.typing import NDArray
 from rigbench.arm.arm import Floats
 from rigbench.report.identify_numbers import Shown
 from rigbench.report.paper import INK, LINE, QUIET, Paper
+from rigbench.report.shortening import fitted
 from rigbench.report.time_axes import NUMBERS, REST, Panel, plain_axes, zero_line
-from rigbench.report.trace_words import shortened
 from rigbench.report.words import figure
 
 __all__ = ["BAND", "DECLARED", "IDENTIFIED", "MEASURED", "JointRows"]
@@ -22,12 +22,8 @@ __all__ = ["BAND", "DECLARED", "IDENTIFIED", "MEASURED", "JointRows"]
 MEASURED, DECLARED, IDENTIFIED, BAND = "#b4bec8", "#c8761a", "#1d4a75", "#d5e3f2"
 DASHES = (3.0, 1.2)
 SIZE, SMALL = 8.0, 7.0
-WORDS, SHARE, SIDE = (
-    128.0,
-    40.0,
-    36.0,
-)  # widths of the numbers, of their last column, and of those beside an axis
-WIDTHS = (192.0, 202.0, 102.0)  # of a joint's panels
+WORDS, SHARE, SIDE = 136.0, 46.0, 36.0  # widths: of the numbers, of their last column, beside an axis
+WIDTHS = (186.0, 200.0, 102.0)  # of a joint's panels
 ALL_ROWS, LEAST_ROW, MOST_ROW, BELOW = 400.0, 60.0, 120.0, 10.0  # heights
 TITLE, FEET = 13.0, 26.0
 NOISE_BAND = 2.0  # times the noise
@@ -46,10 +42,9 @@ class JointRows:
         self.height = min(max(ALL_ROWS / n, LEAST_ROW), MOST_ROW)
         self.columns = [left + WORDS + sum(WIDTHS[:k]) + (k + 1) * SIDE for k in range(len(WIDTHS))]
         top = self._key(left, top) + 8
-        titles = ("Torque", "Measured less predicted", "What is left, by speed")
+        titles = ("Torque", "Measured less predicted", "What is left")
         for x, title in zip(self.columns, titles, strict=True):
-            said = title if x == self.columns[-1] else f"{title} [{shown.unit}]"
-            paper.text(x - SIDE + 8, top, said, SIZE, bold=True, name="title")
+            paper.text(x - SIDE + 8, top, f"{title} [{shown.unit}]", SIZE, bold=True, name="title")
         self.tops = [top + TITLE + i * (self.height + BELOW) for i in range(n)]
         for i, at in enumerate(self.tops):
             self._numbers(left, at, i)
@@ -78,7 +73,7 @@ class JointRows:
     def _numbers(self, left: float, top: float, i: int) -> None:
         """Write a joint's name and its numbers, in its unit and in percent of how much the torque varies."""
         paper, shown = self.paper, self.shown
-        name = shortened(shown.joints[i], WORDS, lambda line: paper.width(line, SIZE, bold=True))
+        name = fitted(shown.joints[i], WORDS, lambda line: paper.width(line, SIZE, bold=True))
         paper.text(left, top, name, SIZE, bold=True, name=f"joint-{i}")
         lines: list[tuple[str, float, float | None]] = [
             ("varies by", float(shown.varied[i]), None),
@@ -125,10 +120,18 @@ class JointRows:
     # --- panels
 
     def _draw_torque(self, axes: Axes, i: int) -> None:
-        rows = self.shown.rows
-        axes.plot(rows.t, rows.torque[:, i], color=MEASURED, linewidth=2.6, gid="measured", zorder=2)
-        self._draw_both(axes, {whose: values[:, i] for whose, values in self.shown.predicted.items()})
+        t, measured = self.shown.rows.t, self.shown.rows.torque[:, i]
+        predicted = {whose: values[:, i] for whose, values in self.shown.predicted.items()}
+        axes.plot(t, measured, color=MEASURED, linewidth=2.6, gid="measured", zorder=2)
+        self._draw_both(axes, predicted)
         self._over_time(axes, i)
+        ends = np.concatenate([*predicted.values(), np.quantile(measured, [0.01, 0.99])])
+        low, high = float(ends.min()), float(ends.max())
+        room = 0.5 * (high - low) or 1.0
+        near = measured[(measured > low - room) & (measured < high + room)]
+        low, high = float(near.min(initial=low)), float(near.max(initial=high))
+        axes.set_ylim(low - 0.1 * room, high + 0.1 * room)
+        _draw_beyond(axes, t, measured, MEASURED)
 
     def _draw_error(self, axes: Axes, i: int) -> None:
         rests = {whose: self.shown.residual(whose, i) for whose in self.shown.predicted}
@@ -165,15 +168,16 @@ class JointRows:
         axes.plot(
             speed[some], rest[some], "o", color=IDENTIFIED, markersize=1.5, markeredgewidth=0, gid="left"
         )
-        _draw_means(axes, speed, rest)
-        _scale(axes, rest, 1.6 * NOISE_BAND * noise)
+        low, high = _scale(axes, rest, 1.6 * NOISE_BAND * noise)
+        inside = (rest >= low) & (rest <= high)
+        _draw_means(axes, speed[inside], rest[inside])
         _draw_beyond(axes, speed, rest, IDENTIFIED)
         axes.set_xlim(-1.05, 1.05)
         axes.set_xticks([-1, 0, 1])
 
 
-def _scale(axes: Axes, values: Floats, least: float = 0.0) -> None:
-    """Scale an axis to 0, +-least and the values, of which some are nan, but for those that lie far out."""
+def _scale(axes: Axes, values: Floats, least: float = 0.0) -> tuple[float, float]:
+    """Scale an axis to 0, +-least and values, some nan, but for those that lie far out; return its ends."""
     there = values[np.isfinite(values)]
     common = float(np.quantile(np.abs(there), 0.99)) if there.size else 0.0
     if common > 0:
@@ -181,6 +185,7 @@ def _scale(axes: Axes, values: Floats, least: float = 0.0) -> None:
     low, high = float(there.min(initial=-least)), float(there.max(initial=least))
     room = 0.1 * (high - low) or 1.0
     axes.set_ylim(low - room, high + room)
+    return low - room, high + room
 
 
 def _draw_beyond(axes: Axes, x: Floats, values: Floats, color: str) -> None:

@@ -3,17 +3,15 @@
 from __future__ import annotations
 
 import math
-import re
-from collections.abc import Callable
 
 import numpy as np
 
 from rigbench.report.identify_joints import DECLARED, IDENTIFIED
 from rigbench.report.identify_numbers import Shown
 from rigbench.report.paper import INK, LINE, QUIET, Paper
-from rigbench.report.trace_words import shortened
+from rigbench.report.shortening import fitted
 
-__all__ = ["draw_parameters", "fitted"]
+__all__ = ["draw_parameters"]
 
 SIZE, SMALL, HEAD = 8.0, 7.0, 9.5
 ROW, APART = 11.0, 24.0
@@ -38,27 +36,10 @@ def draw_parameters(paper: Paper, left: float, top: float, width: float, shown: 
     top += each * ROW + LINE * SMALL + 6
     said = (
         "rms of the torque along the shown motion, in % of how much it varies, at the joint for which that "
-        "is most (named beside the parameter); what is nearer than the axis shows stands at its left end"
+        "is most (named beside the parameter); what is nearer than "
+        "the axis shows stands at its left end. A mark beyond its bar is outside of the interval."
     )
     return paper.lines(left, top, paper.wrap(said, width, SMALL), SMALL, name="axis", ink=QUIET)
-
-
-def fitted(name: str, width: float, measure: Callable[[str], float]) -> str:
-    """Return as many of a sum's terms as fit, and an ellipsis for the rest; a long one loses its middle."""
-    if measure(name) <= width:
-        return name
-    terms = re.split(r" (?=[+-] )", name)
-    more = " \u2026" if len(terms) > 1 else ""
-    kept = terms[0]
-    for term in terms[1:]:
-        if measure(f"{kept} {term}{more}") > width:
-            break
-        kept += f" {term}"
-    cut = len(terms[0])
-    while measure(kept + more) > width and cut > 2:
-        cut -= 1
-        kept = f"{terms[0][: cut - cut // 2]}\u2026{terms[0][len(terms[0]) - cut // 2 :]}"
-    return kept + more
 
 
 class _Column:
@@ -66,7 +47,7 @@ class _Column:
 
     def __init__(self, paper: Paper, left: float, wide: float, shown: Shown) -> None:
         self.paper, self.shown, self.left = paper, shown, left
-        self.joints = [shortened(name, MOST_JOINT, self._measure) for name in shown.joints]
+        self.joints = [fitted(name, MOST_JOINT, self._measure) for name in shown.joints]
         self.name = 0.45 * wide
         self.joint = left + self.name + GAP
         self.start = self.joint + paper.widest(self.joints, SMALL) + GAP

@@ -19,6 +19,7 @@ alone is within a quarter of it from a hundred samples on)."""
 
 KNOWN_PERCENT = 1.0
 MOST_NAMES = 4
+LONGEST = 60  # characters of a recording's name, from its end
 
 
 def torque_words(shown: Shown) -> str:
@@ -35,6 +36,7 @@ def torque_words(shown: Shown) -> str:
 def left_words(shown: Shown) -> str:
     """Say on which motion that was, and whether what is left is noise."""
     name = shown.rows.name
+    name = name if len(name) <= LONGEST else f"\u2026{name[-LONGEST:]}"
     if not shown.done.checked:
         return f"On the motion that was fitted ({name}), so it is no test; a check would be."
     times = shown.errors["identified"].rms_nm / shown.done.found.noise
