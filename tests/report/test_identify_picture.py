@@ -146,7 +146,8 @@ def test_nothing_overlaps(tmp_path: Path, joints: int, name: str, practised: boo
 @pytest.mark.parametrize("noise", [0.0, 1e-7, 30.0])
 def test_any_noise_is_readable(done: Identification, noise: float) -> None:
     """From none, where numbers have exponents, to one that drowns the torques."""
-    assert_clear(identify_figure(identified(done.files, noise=noise)))
+    for terms in (LINKS, ALL):  # one column of parameters, and two
+        assert_clear(identify_figure(identified(done.files, terms, noise=noise)))
 
 
 def test_curves_and_numbers_are_those_of_the_rows(done: Identification) -> None:
