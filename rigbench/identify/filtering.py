@@ -49,13 +49,16 @@ class Rows:
     """The equations of a recording: torque = y x + noise, for S samples of n joints and b parameters.
 
     Samples are so far apart that white noise is independent from one to the next. ``usable`` is False
-    where a joint stands or turns back: its dry friction can be anything there.
+    where a joint stands or turns back: its dry friction can be anything there. ``t`` and ``v`` say when
+    a sample was, and how fast the joints moved.
     """
 
     y: Floats  # (S, n, b)
     torque: Floats  # (S, n) [N m]
     usable: NDArray[bool_]  # (S, n)
     name: str  # of the recording
+    t: Floats  # (S,) [s], from where the recording began
+    v: Floats  # (S, n) [rad/s or m/s]
 
 
 def low_pass(x: Floats, rate_hz: float, corner_hz: float) -> Floats:
@@ -114,7 +117,10 @@ def rows_of(
     standing = _standing(v, int(rate / corner_hz)) if terms.coulomb else np.zeros(v.shape, bool)
     kept = slice(trim, len(q) - trim, step)
     filtered = [low_pass(y[:, i], rate, corner_hz)[kept] for i in range(arm.n)]
-    return Rows(np.stack(filtered, axis=1), torque[kept], ~standing[kept], recording.name)
+    return Rows(
+        y=np.stack(filtered, axis=1), torque=torque[kept], usable=~standing[kept], name=recording.name,
+        t=recording.t[kept] - recording.t[0], v=v[kept],
+    )  # fmt: skip
 
 
 def _standing(v: Floats, window: int) -> NDArray[bool_]:

@@ -33,9 +33,8 @@ def rows_of_formula(arm, terms, base, count, noise, seed=4):
     drives = arm.drives
     torque = links + drives.reflected * a + drives.viscous * v + drives.coulomb * np.sign(v)
     torque += noise * rng.normal(size=torque.shape)
-    return Rows(
-        regressor(arm, GRAVITY, q, v, a, terms)[:, :, base.kept], torque, np.ones(q.shape, bool), "formulas"
-    )
+    y, t = regressor(arm, GRAVITY, q, v, a, terms)[:, :, base.kept], np.arange(float(count))
+    return Rows(y, torque, np.ones(q.shape, bool), "formulas", t, v)
 
 
 def test_log_cholesky_is_the_published_map():

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -59,7 +60,8 @@ def formula_rows(arm, terms, base, count=400, seed=5):
         rng.normal(size=(count, arm.n)),
     )
     y = regressor(arm, GRAVITY, q, v, 5 * a, terms)[:, :, base.kept]
-    return Rows(y, formula_torque(arm, q, v, 5 * a), np.ones(q.shape, bool), "formulas")
+    t = np.arange(float(count))
+    return Rows(y, formula_torque(arm, q, v, 5 * a), np.ones(q.shape, bool), "formulas", t, v)
 
 
 def formula_recording(arm, motion=MOTION, rate=1000, v=True):
@@ -111,7 +113,7 @@ def test_differences_are_exact_for_quartics():
 
 def noisy(rows, noise, seed=1):
     rng = np.random.default_rng(seed)
-    return Rows(rows.y, rows.torque + rng.normal(size=rows.torque.shape) * noise, rows.usable, rows.name)
+    return replace(rows, torque=rows.torque + rng.normal(size=rows.torque.shape) * noise)
 
 
 def test_each_joint_weighs_by_its_own_noise(planar2):
@@ -130,9 +132,18 @@ def test_outliers_are_left_out_and_counted(planar2):
     rows = noisy(formula_rows(planar2, LINKS, base), 0.1)
     spoiled = rows.torque.copy()
     spoiled[5:400:40, 0] += 200.0
-    clean, found = estimate(base, [rows]), estimate(base, [Rows(rows.y, spoiled, rows.usable, "spoiled")])
+    clean, found = estimate(base, [rows]), estimate(base, [replace(rows, torque=spoiled)])
     assert found.outliers.tolist() == [10, 0]
     assert (np.abs(found.values - clean.values) < clean.deviation).all()
+
+
+def test_rows_say_when_they_were_and_how_fast(rubbing):
+    """Times count from where the recording began, not from its clock; speeds are those of the motion, to 1e-3."""
+    base, given = base_of(rubbing, GRAVITY, Terms()), formula_recording(rubbing, v=False)
+    rows = rows_of(rubbing, GRAVITY, Terms(), base, replace(given, t=given.t + 1e6))
+    assert np.allclose(rows.t, rows_of(rubbing, GRAVITY, Terms(), base, given).t, atol=1e-6)
+    speed = MOTION.reference(rows.t)[1]
+    assert np.abs(rows.v - speed).max() < 1e-3 * np.abs(speed).max()
 
 
 def test_a_standing_joint_says_nothing_of_friction(rubbing):
