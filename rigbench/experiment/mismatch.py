@@ -76,7 +76,8 @@ def _identified(folder: Path, name: str, arm: Arm, findings: Findings) -> Knowle
     try:
         knowledge, same = read_knowledge(folder / name, arm)
     except InputFaults as error:
-        findings.take(error.faults)
+        findings.take(error.faults)  # and one here, so that nothing else misses a mismatch
+        findings.fault(path, f"'{name}' is at fault", "a covariance file in order")
         return None
     if not same:
         findings.note(path, "is of other parameters than the arm's: its errors are put about the arm's own")
