@@ -15,7 +15,7 @@ from rigbench.yamlfile import KeyPath
 __all__ = ["Axis", "Sweep", "value_text"]
 
 LONGEST = 32
-"""Characters of a value in a name; of longer ones the number stands there."""
+"""Characters of a value in a name; of longer ones the number stands there, of longer paths the file's name."""
 
 
 @dataclass(frozen=True)
@@ -38,7 +38,11 @@ class Axis:
     def named(self, index: int) -> str:
         """Return a value with the axis's label, as names show it: 'control_hz 500'."""
         text = value_text(self.values[index])
-        return f"{self.label} {text if len(text) <= LONGEST else f'no. {index + 1}'}"
+        if len(text) > LONGEST:
+            files = [value_text(value).rpartition("/")[2] for value in self.values]
+            tells = isinstance(self.values[index], str) and files.count(files[index]) == 1
+            text = files[index] if tells and len(files[index]) <= LONGEST else f"no. {index + 1}"
+        return f"{self.label} {text}"
 
 
 @dataclass(frozen=True)

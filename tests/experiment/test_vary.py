@@ -129,6 +129,25 @@ def test_names_are_short_unless_two_are_alike(load: Load) -> None:
     assert names(swept(load, vary))[0] == ["via_deg [[0, 0], [30, 40], [0, 0]]", "via_deg no. 2"]
 
 
+def test_long_paths_are_called_by_their_files(load: Load, folder: Path) -> None:
+    """Unless two files of different folders have one name: then their numbers stand there."""
+    places = [folder / "some-long-way-down" / "a-folder", folder / "some-long-way-down" / "another-folder"]
+    for place in places:
+        place.mkdir(parents=True)
+        for name in ("arm.yaml", "arm.urdf"):
+            (place / name).write_bytes((folder / name).read_bytes())
+    (places[0] / "identified.yaml").write_bytes((folder / "arm.yaml").read_bytes())
+    paths = [str(place.relative_to(folder) / "arm.yaml") for place in places]
+    identified = str(places[0].relative_to(folder) / "identified.yaml")
+    models = ["arm.yaml", paths[0], identified]
+    assert names(swept(load, {"model": models}))[0] == [
+        "model arm.yaml",
+        "model no. 2",
+        "model identified.yaml",
+    ]
+    assert names(swept(load, {"model": paths}))[0] == ["model no. 1", "model no. 2"]
+
+
 def test_a_spread_by_name_is_swept_by_name(load: Load) -> None:
     """The link or joint stands behind the source."""
     mismatch = {"coulomb_percent": {"all": 10, "j1": 20}, "link_mass_percent": 10}
