@@ -11,7 +11,7 @@ from rigbench.arm.arm import PARAMETERS, Arm, Floats
 from rigbench.arm.dynamics import newton_euler, place
 from rigbench.arm.kernel import kernel
 
-__all__ = ["Terms", "link_regressor", "parameter_labels", "parameter_values", "regressor"]
+__all__ = ["LINKS_ALONE", "Terms", "link_regressor", "parameter_labels", "parameter_values", "regressor"]
 
 
 @dataclass(frozen=True)
