@@ -109,7 +109,9 @@ def _base(name: str, labels: tuple[str, ...], y: Floats, order: Floats) -> Base:
     floor = diagonal[rank - 1] * 10 ** (-gap / 2)
     kept = _choose(y, order, floor)
     dependent = np.setdiff1d(np.arange(len(labels)), kept)
-    shares: Floats = scipy.linalg.lstsq(y[:, kept], y[:, dependent])[0]
+    shares: Floats = np.zeros((rank, 0))
+    if dependent.size:
+        shares = scipy.linalg.lstsq(y[:, kept], y[:, dependent])[0]
     shares[np.abs(shares) < NIL] = 0.0
     return Base(labels, kept, dependent, shares, gap)
 

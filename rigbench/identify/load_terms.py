@@ -17,6 +17,9 @@ ROUGH = 0.25
 """Share of the mass that half its interval may be for an inertia about the centre of gravity, whose interval
 is of the first order only (our choice: what is left out is then 2 % of m c^2)."""
 
+NONE = 1e-15
+"""Less inertia [kg m^2] is the rounding of what was taken away from it."""
+
 ENTRIES = ((0, 0), (0, 1), (1, 1), (0, 2), (1, 2), (2, 2))
 """Rows and columns of an inertia tensor in the order of a link's parameters."""
 
@@ -83,7 +86,7 @@ def _term(
     k: int, told: bool, ends: tuple[float, float, float] | None, of_body: Floats, of_truth: Floats | None
 ) -> LoadTerm:
     """Return the k-th term, centres of gravity in mm."""
-    names = ("mass", "x", "y", "z", *(f"I{'xyz'[r]}{'xyz'[c]}" for r, c in ENTRIES))
+    names = ("mass", "cog x", "cog y", "cog z", *(f"I{'xyz'[r]}{'xyz'[c]}" for r, c in ENTRIES))
     unit, scale = ("kg", 1.0) if k == 0 else ("mm", 1e3) if k < 4 else ("kg m^2", 1.0)
     value, low, high = (None, None, None) if ends is None else (float(scale * end) for end in ends)
     truth = None if of_truth is None else float(scale * of_truth[k])
@@ -101,6 +104,7 @@ def _to_tool(arm: Arm) -> Floats:
 def _values(x: Floats) -> Floats:
     """Return mass, centre of gravity and the six entries of the inertia about it of parameters (10,)."""
     mass, cog, tensor = inertia(x)
+    tensor[np.abs(tensor) < NONE] = 0.0
     return np.array([mass, *cog, *(tensor[entry] for entry in ENTRIES)])
 
 

@@ -66,8 +66,8 @@ def implausible(
     not move; velocities that are not the positions' own. Against the declared arm's torques: columns of
     positions or torques that are 57.3 or 1000 times too large or small, or swapped, told where the arm
     leaves more than half of a joint's torque unexplained, and less than half of that once the slip is set
-    right. A model that is merely wrong is no fault, nor is a load where the arm is ``loaded``: then it is held
-    against the arm with whatever load no heavier than itself explains the torques best.
+    right. A model that is merely wrong is no fault, nor is a load where the arm is ``loaded``: then the
+    recording is held against the arm with whatever load, no heavier than it, explains the torques best.
     """
     rate = recording.rate_hz
     if rate < SLOWEST_HZ:
@@ -184,9 +184,7 @@ def _slips(arm: Arm, recording: Recording) -> Iterator[_Slip]:
             yield _Slip(pair, said, recording.q[:, left], recording.torque[:, right])
 
 
-def _unexplained(
-    arm: Arm, gravity: tuple[float, float, float], recording: Recording, loaded: bool
-) -> Floats:
+def _unexplained(arm: Arm, gravity: tuple[float, float, float], recording: Recording, loaded: bool) -> Floats:
     """Return the share of each joint's torque (n,) that the declared arm, with a load, leaves unexplained."""
     rate = recording.rate_hz
     corner = min(CORNER_HZ, rate / (2 * STATE_FACTOR))
@@ -212,7 +210,7 @@ def _best_load(arm: Arm, y: Floats, torque: Floats) -> Floats:
     be a load as well.
     """
     mass, length = arm.parameters[:, 0].sum(), np.linalg.norm(arm.position, axis=1).sum()
-    length += np.linalg.norm(arm.tool_position)
+    length = length + np.linalg.norm(arm.tool_position) or 1.0
     most = mass * np.array([1.0, *[length] * 3, *[length**2] * 6])
     least = np.where(np.isin(np.arange(LINK), (0, 4, 6, 9)), 0.0, -most)  # mass and principal entries
     solved = lsq_linear((y * most).reshape(-1, LINK), torque.ravel(), (least / most, np.ones(LINK)))
