@@ -125,18 +125,21 @@ def _check_not_below_none(arm: Arm, found: Estimate, name: str) -> None:
 def _first_guess(arm: Arm, found: Estimate) -> Floats:
     """Return a ball of water (10,): of the estimated mass, at the estimated centre of gravity.
 
-    A centre of gravity that is not told is taken to be the tool point, a mass that is not told as that which
-    there comes nearest to the base parameters; and no mass as less than its standard deviation, or than a
-    share of the arm's.
+    A centre of gravity that is not told is taken to be the tool point, and a mass that is not told as that
+    which there comes nearest to the base parameters, though not above the arm's. No mass is less than its
+    standard deviation, or than a share of the arm's.
     """
     point = from_central_moments(np.array(1.0), arm.tool_position, np.zeros((3, 3)))
     terms = load_terms(arm, found, point)
-    seen = found.base.combination @ point
-    if terms[0].told:
-        seen = (np.array(found.base.names) == "m.load").astype(float)
-    mass = seen @ found.values / (seen @ seen)
-    deviation = np.sqrt(seen @ found.covariance @ seen) / (seen @ seen)
-    mass = max(mass, deviation, LEAST_SHARE * arm.parameters[:, 0].sum())
+    most = float(arm.parameters[:, 0].sum())
+    least = LEAST_SHARE * most
+    mass = terms[0].value
+    if mass is not None:
+        least = max(least, float(found.deviation[found.base.names.index("m.load")]))
+    else:
+        seen = found.base.combination @ point
+        mass = min(float(seen @ found.values) / max(float(seen @ seen), np.finfo(float).tiny), most)
+    mass = max(mass, least)
     cog = np.array([1e-3 * (term.value or 0.0) for term in terms[1:4]])
     sigma = mass / 5 * (3 * mass / (4 * np.pi * DENSITY)) ** (2 / 3) * np.eye(3)
-    return from_central_moments(mass, arm.tool_position + arm.tool_rotation @ cog, sigma)
+    return from_central_moments(np.array(mass), arm.tool_position + arm.tool_rotation @ cog, sigma)

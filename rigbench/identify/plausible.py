@@ -213,6 +213,7 @@ def _best_load(arm: Arm, y: Floats, torque: Floats) -> Floats:
     length = length + np.linalg.norm(arm.tool_position) or 1.0
     most = mass * np.array([1.0, *[length] * 3, *[length**2] * 6])
     least = np.where(np.isin(np.arange(LINK), (0, 4, 6, 9)), 0.0, -most)  # mass and principal entries
-    solved = lsq_linear((y * most).reshape(-1, LINK), torque.ravel(), (least / most, np.ones(LINK)))
+    q, r = np.linalg.qr((y * most).reshape(-1, LINK))  # ten equations are solved sooner than thousands
+    solved = lsq_linear(r, q.T @ torque.ravel(), (least / most, np.ones(LINK)))
     best: Floats = most * solved.x
     return best
