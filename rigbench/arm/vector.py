@@ -7,11 +7,11 @@ from dataclasses import replace
 
 import numpy as np
 
-from rigbench.arm.arm import Arm, Floats
+from rigbench.arm.arm import PARAMETERS, Arm, Floats
 
 __all__ = ["LINK", "vector_of", "with_vector"]
 
-LINK = 10
+LINK = len(PARAMETERS)
 """Parameters of a link."""
 
 

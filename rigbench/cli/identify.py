@@ -13,20 +13,25 @@ def identify_arm(path: str, output: str | None, as_json: bool) -> None:
     """Do what an identification file declares, write the arm into the folder ``output``, print the report."""
     from rigbench.experiment.identification import load_identification
     from rigbench.identify.covariance_file import covariance_document
-    from rigbench.identify.identified import write_identified
+    from rigbench.identify.identified import write_identified, write_loaded
     from rigbench.report.identify_picture import identify_picture
     from rigbench.report.identify_text import identify_text
+    from rigbench.report.load_text import load_document
 
     declared = load_identification(path)
     done = declared.carry_out(say)
-    folder, name = Path(output or "results"), f"{Path(path).stem}-identified"
+    folder, stem = Path(output or "results"), Path(path).stem
+    name = f"{stem}-identified"
     terms = declared.settings.terms
     written = write_identified(folder, name, declared.files, terms, done.found, done.result)
+    loaded: tuple[Path, ...] = ()
+    if done.loaded_arm is not None:
+        loaded = write_loaded(folder, f"{stem}-loaded", declared.files, terms, done.loaded_arm)
     picture = folder / f"{name}.png"
     identify_picture(done, picture)
-    files = dict(zip(("arm", "urdf", "covariance"), map(str, written), strict=True)) | {
-        "picture": str(picture)
-    }
+    files = dict(zip(("arm", "urdf", "covariance"), map(str, written), strict=True))
+    files |= dict(zip(("loaded arm", "loaded urdf"), map(str, loaded), strict=False))
+    files["picture"] = str(picture)
     if as_json:
         errors = {
             whose: dict(zip(done.files.arm().joints, error.rms_nm.tolist(), strict=True))
@@ -35,7 +40,8 @@ def identify_arm(path: str, output: str | None, as_json: bool) -> None:
         known = covariance_document(done.result, terms, done.found)
         condition, checked = done.found.condition, done.checked
         base = {"base": known["base"], "noise_nm": known["noise_nm"], "condition": condition}
-        print_json({"files": files, "torque_error_nm": errors, "checked": checked} | base)
+        load = {} if done.load is None else {"load": load_document(done.load)}
+        print_json({"files": files, "torque_error_nm": errors, "checked": checked} | base | load)
     else:
         show(identify_text(done))
         for what, file in files.items():

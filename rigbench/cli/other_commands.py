@@ -80,7 +80,8 @@ def identify(
     """Find an arm's parameters from recorded motions, or practise it on a machine with a hidden mismatch.
 
     Writes an arm file with its URDF, a file of what is known how well, and a picture; prints how well torques
-    are predicted before and after, and every parameter with its interval.
+    are predicted before and after, and every parameter with its interval. From further motions with a load
+    also what that weighs and where, and an arm file that carries it.
     """
     with telling(as_json):
         from rigbench.cli.identify import identify_arm

@@ -6,11 +6,12 @@ from collections.abc import Callable
 from dataclasses import dataclass
 from pathlib import Path
 
+from rigbench.arm.case import Case
 from rigbench.arm.files import ArmFiles
 from rigbench.errors import InputFaults
 from rigbench.experiment.expand import spreading
 from rigbench.experiment.findings import Findings
-from rigbench.experiment.identification_keys import ExcitationKeys, IdentificationKeys
+from rigbench.experiment.identification_keys import ExcitationKeys, IdentificationKeys, SimulateKeys
 from rigbench.experiment.mismatch import mismatch_of
 from rigbench.identify.bounds import bounds_of
 from rigbench.identify.excitation import Search, excite
@@ -38,6 +39,7 @@ class DeclaredIdentification:
     files: ArmFiles
     settings: Settings
     recordings: tuple[Recording, ...]
+    loaded: tuple[Recording, ...]
     check: Recording | None
     simulated: Simulated | None
     excitation: ExcitationKeys
@@ -45,7 +47,7 @@ class DeclaredIdentification:
     def carry_out(self, tell: Tell) -> Identification:
         """Do what is declared; ``tell`` is told, in a line each, what takes its time."""
         if self.simulated is None:
-            return identify(self.files, self.settings, self.recordings, self.check)
+            return identify(self.files, self.settings, self.recordings, self.check, loaded=self.loaded)
         search = self._search()
         keys = self.excitation
 
@@ -65,7 +67,11 @@ class DeclaredIdentification:
         fitted, truth = record(self.files, self.settings, self.simulated, best.motion, "excitation", 0)
         other = search.random_motion(keys.seed + CHECK_SEED, keys.periods)
         check, _ = record(self.files, self.settings, self.simulated, other, "a random motion", 1)
-        return identify(self.files, self.settings, [fitted], check, truth)
+        if self.simulated.loaded is None:
+            return identify(self.files, self.settings, [fitted], check, truth)
+        name = "excitation with the load"
+        loaded, laden = record(self.files, self.settings, self.simulated, best.motion, name, 2, loaded=True)
+        return identify(self.files, self.settings, [fitted], check, truth, [loaded], laden)
 
     def _search(self) -> Search:
         keys, arm = self.excitation, self.files.arm()
@@ -92,6 +98,7 @@ def load_identification(path: str | Path) -> DeclaredIdentification:
             findings.fault(("check",), "simulate makes its own check", "no check beside simulate")
     if keys.excitation is not None and keys.simulate is None and findings.clean("excitation"):
         findings.fault(("excitation",), "has no effect beside recordings", "simulate")
+    _check_loaded(keys, findings)
     if findings.faults and not findings.clean("arm"):
         raise InputFaults(findings.faults)
     files = _arm(folder / keys.arm, findings)
@@ -103,21 +110,50 @@ def load_identification(path: str | Path) -> DeclaredIdentification:
         keys.corner_hz,
         keys.declared_percent / 100,
     )
-    recordings = [_recording(folder / name, files, settings, findings) for name in keys.recordings or ()]
+    recordings, loaded = (
+        [_recording(folder / name, files, settings, findings, carrying) for name in names or ()]
+        for names, carrying in ((keys.recordings, False), (keys.loaded, True))
+    )
     check = None if keys.check is None else _recording(folder / keys.check, files, settings, findings)
     simulated = None
     if keys.simulate is not None:
         given = keys.simulate
         mismatch = mismatch_of(given.mismatch, files.arm(), findings, folder)
         simulated = Simulated(
-            mismatch, spreading(mismatch), given.seed, given.noise_deg, given.torque_noise_nm
+            mismatch, spreading(mismatch), given.seed, given.noise_deg, given.torque_noise_nm, _case(given)
         )
     if findings.faults:
         raise InputFaults(findings.faults)
-    kept = tuple(each for each in recordings if each is not None)
+    kept, carrying = (tuple(each for each in read if each is not None) for read in (recordings, loaded))
     return DeclaredIdentification(
-        file, files, settings, kept, check, simulated, keys.excitation or ExcitationKeys()
+        file, files, settings, kept, carrying, check, simulated, keys.excitation or ExcitationKeys()
     )
+
+
+def _check_loaded(keys: IdentificationKeys, findings: Findings) -> None:
+    """Check that what is recorded with a load stands beside what is recorded without, and is not the same."""
+    if keys.loaded is not None and findings.clean("loaded"):
+        if keys.simulate is not None:
+            problem = "simulate makes its own recordings with a load"
+            findings.fault(("loaded",), problem, "simulate.loaded: {payload_kg: ...}")
+        elif keys.recordings is None and findings.clean("recordings"):
+            problem = "tells nothing without motions of the arm alone"
+            findings.fault(("loaded",), problem, "recordings too, of the arm without the load")
+        for i, name in enumerate(keys.loaded):
+            if name in (keys.recordings or ()):
+                findings.fault(("loaded", i), f"'{name}' is among recordings too", "one of the two")
+    simulate = keys.simulate
+    if simulate is not None and simulate.loaded is not None and simulate.mismatch.payload is not None:
+        problem = "the hidden machine carries the mismatch's payload already"
+        findings.fault(("simulate", "loaded"), problem, "no payload under mismatch")
+
+
+def _case(keys: SimulateKeys) -> Case | None:
+    """Return what the hidden machine carries when it moves a second time; None where it does not."""
+    if (given := keys.loaded) is None:
+        return None
+    x, y, z = given.payload_cog_mm or (0.0, 0.0, 0.0)
+    return Case(payload_kg=given.payload_kg, payload_cog_mm=(x, y, z))
 
 
 def _arm(path: Path, findings: Findings) -> ArmFiles | None:
@@ -131,12 +167,14 @@ def _arm(path: Path, findings: Findings) -> ArmFiles | None:
     return files
 
 
-def _recording(path: Path, files: ArmFiles, settings: Settings, findings: Findings) -> Recording | None:
+def _recording(
+    path: Path, files: ArmFiles, settings: Settings, findings: Findings, loaded: bool = False
+) -> Recording | None:
     """Return a recording that is plausible, or None with its faults among the findings."""
     try:
         recording, table = read_recording(path, files.arm())
     except InputFaults as error:
         findings.take(error.faults)
         return None
-    findings.take(implausible(files.arm(), settings.gravity, recording, table))
+    findings.take(implausible(files.arm(), settings.gravity, recording, table, loaded))
     return recording

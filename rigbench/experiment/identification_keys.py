@@ -6,13 +6,15 @@ from typing import Annotated, Literal
 
 from pydantic import Field
 
-from rigbench.experiment.mismatch_keys import MismatchKeys
+from rigbench.experiment.mismatch_keys import MOST_MM, MismatchKeys
 from rigbench.yamlfile import Declared
 
-__all__ = ["ExcitationKeys", "IdentificationKeys", "SimulateKeys"]
+__all__ = ["ExcitationKeys", "IdentificationKeys", "LoadedKeys", "SimulateKeys"]
 
 Term = Literal["rotor", "viscous", "coulomb", "offset"]
 Name = Annotated[str, Field(min_length=1)]
+Offset = Annotated[float, Field(ge=-MOST_MM, le=MOST_MM)]
+Offsets = Annotated[list[Offset], Field(min_length=3, max_length=3)]
 Point = Annotated[list[float], Field(min_length=3, max_length=3)]
 
 
@@ -40,6 +42,17 @@ class ExcitationKeys(Declared):
     tool_most_m: Point | None = Field(default=None, description="the opposite corner [m]; default: no box")
 
 
+class LoadedKeys(Declared):
+    """What the hidden machine carries when it is moved a second time."""
+
+    payload_kg: float = Field(
+        ge=0, le=1e6, description="mass of the load, a point, in the last link's hold [kg]; 0 for none"
+    )
+    payload_cog_mm: Offsets | None = Field(
+        default=None, description="its offset from the tool point, in the tool frame [mm]; default: none"
+    )
+
+
 class SimulateKeys(Declared):
     """A machine to practise on: the arm with a hidden mismatch, and noisy sensors."""
 
@@ -57,6 +70,11 @@ class SimulateKeys(Declared):
         le=1e6,
         description="noise on recorded torques, standard deviation [N m]; default 0",
     )
+    loaded: LoadedKeys | None = Field(
+        default=None,
+        description="a hidden load, with which the same motion is recorded once more; names as in an "
+        "experiment's cases",
+    )
 
 
 class IdentificationKeys(Declared):
@@ -67,8 +85,14 @@ class IdentificationKeys(Declared):
     recordings: list[Name] | None = Field(
         default=None, min_length=1, description="recorded motions, CSV or Parquet; instead of simulate"
     )
+    loaded: list[Name] | None = Field(
+        default=None,
+        min_length=1,
+        description="recorded motions of the same arm with a load, beside recordings: what it carries there",
+    )
     check: Name | None = Field(
-        default=None, description="a recorded motion that is not fitted, to check the result on"
+        default=None,
+        description="a recorded motion, without a load, that is not fitted, to check the result on",
     )
     simulate: SimulateKeys | None = Field(default=None, description="practise on a hidden machine instead")
     excitation: ExcitationKeys | None = Field(

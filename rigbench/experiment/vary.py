@@ -15,7 +15,7 @@ from rigbench.yamlfile import KeyPath
 __all__ = ["Axis", "Sweep", "value_text"]
 
 LONGEST = 32
-"""Characters of a value in a name; of longer ones the number stands there, of longer paths the file's name."""
+"""Characters of a value in a name; of longer ones the number stands there, of paths the file's name."""
 
 
 @dataclass(frozen=True)

@@ -9,11 +9,12 @@ import numpy as np
 import scipy.linalg
 from numpy.typing import NDArray
 
-from rigbench.arm.arm import PRISMATIC, Arm, Floats
+from rigbench.arm.arm import PARAMETERS, PRISMATIC, Arm, Floats
+from rigbench.arm.vector import LINK
 from rigbench.errors import InputFaults
-from rigbench.identify.regressor import Terms, parameter_labels, regressor
+from rigbench.identify.regressor import LINKS_ALONE, Terms, parameter_labels, regressor
 
-__all__ = ["GAP_DECADES", "Base", "base_of"]
+__all__ = ["GAP_DECADES", "Base", "Indices", "base_of", "base_of_load"]
 
 GAP_DECADES = 6.0
 """Least gap [powers of ten] between what counts as independent and what as rounding."""
@@ -78,8 +79,23 @@ def base_of(arm: Arm, gravity: tuple[float, float, float], terms: Terms) -> Base
     :data:`GAP_DECADES`: then some combination of parameters is all but invisible, because joint axes are
     all but parallel or crossing, and there is no saying how many parameters there are.
     """
-    labels = parameter_labels(arm, terms)
     y = _random_states(arm, gravity, terms)
+    return _base(arm.name, parameter_labels(arm, terms), y, _order(arm, terms))
+
+
+def base_of_load(arm: Arm, gravity: tuple[float, float, float]) -> Base:
+    """Return the base parameters of a body that the last link holds, alone: 'm.load' and so on.
+
+    What torques tell of it with the arm known. Its parameters are in the last link's frame, so its columns
+    of the regressor are those of the last link. The rest as in :func:`base_of`.
+    """
+    labels = tuple(f"{name}.load" for name in PARAMETERS)
+    y = _random_states(arm, gravity, LINKS_ALONE)[:, -LINK:]
+    return _base(arm.name, labels, y, _order(arm, LINKS_ALONE)[-LINK:])
+
+
+def _base(name: str, labels: tuple[str, ...], y: Floats, order: Floats) -> Base:
+    """Return the base of labelled columns y (N, p), with the rank 0 to 3 by which each is kept."""
     diagonal = np.abs(np.diag(scipy.linalg.qr(y, mode="r", pivoting=True)[0]))
     rank, gap = _rank(diagonal)
     if gap < GAP_DECADES:
@@ -87,11 +103,13 @@ def base_of(arm: Arm, gravity: tuple[float, float, float], terms: Terms) -> Base
             f"{rank} parameters can be told apart by a gap of {gap:.1f} decades only: two of its joint axes "
             "are almost, but not quite, parallel or crossing"
         )
-        raise InputFaults.one(arm.name, "", problem, f"a gap of {GAP_DECADES:g} decades or more")
+        raise InputFaults.one(name, "", problem, f"a gap of {GAP_DECADES:g} decades or more")
     floor = diagonal[rank - 1] * 10 ** (-gap / 2)
-    kept = _choose(y, _order(arm, terms), floor)
+    kept = _choose(y, order, floor)
     dependent = np.setdiff1d(np.arange(len(labels)), kept)
-    shares: Floats = scipy.linalg.lstsq(y[:, kept], y[:, dependent])[0]
+    shares: Floats = np.zeros((rank, 0))
+    if dependent.size:
+        shares = scipy.linalg.lstsq(y[:, kept], y[:, dependent])[0]
     shares[np.abs(shares) < NIL] = 0.0
     return Base(labels, kept, dependent, shares, gap)
 
@@ -99,7 +117,7 @@ def base_of(arm: Arm, gravity: tuple[float, float, float], terms: Terms) -> Base
 def _random_states(arm: Arm, gravity: tuple[float, float, float], terms: Terms) -> Floats:
     """Return the regressor (N n, p) in random states, four times as many rows as columns at least."""
     rng = np.random.default_rng(20260)
-    shape = (4 * (10 + len(terms.names)) + 20, arm.n)
+    shape = (4 * (LINK + len(terms.names)) + 20, arm.n)
     turn = np.where(arm.kinds == PRISMATIC, 1.0, np.pi)
     q, v, a = rng.uniform(-1, 1, shape) * turn, 3 * rng.normal(size=shape), 10 * rng.normal(size=shape)
     y = regressor(arm, gravity, q, v, a, terms)

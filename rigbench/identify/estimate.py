@@ -16,7 +16,7 @@ from rigbench.errors import Fault, InputFaults
 from rigbench.identify.base import Base
 from rigbench.identify.filtering import Rows
 
-__all__ = ["Estimate", "TorqueError", "estimate", "torque_error"]
+__all__ = ["Estimate", "TorqueError", "check_length", "estimate", "torque_error"]
 
 OUTLIER = 5.0
 """Residuals beyond so many robust standard deviations of their joint are left out."""
@@ -64,12 +64,17 @@ class Estimate:
         """Standard deviation of each value, (b,)."""
         return np.sqrt(np.diag(self.covariance))
 
-    def interval(self) -> tuple[Floats, Floats]:
-        """Return the ends of the 95 % interval of each value, each (b,).
+    @property
+    def quantile(self) -> float:
+        """Half a 95 % interval in standard deviations.
 
-        By Student's t with as many degrees of freedom as a variance smoothed over these lags has.
+        Student's t with as many degrees of freedom as a variance smoothed over these lags has.
         """
-        half = float(scipy.stats.t.ppf(0.975, 1.5 * self.rows / (LAGS + 1))) * self.deviation
+        return float(scipy.stats.t.ppf(0.975, 1.5 * self.rows / (LAGS + 1)))
+
+    def interval(self) -> tuple[Floats, Floats]:
+        """Return the ends of the 95 % interval of each value, each (b,)."""
+        half = self.quantile * self.deviation
         return self.values - half, self.values + half
 
 
@@ -100,11 +105,8 @@ def estimate(base: Base, recordings: Sequence[Rows]) -> Estimate:
     y = np.concatenate([rows.y for rows in recordings])
     torque = np.concatenate([rows.torque for rows in recordings])
     usable = np.concatenate([rows.usable for rows in recordings])
-    name = recordings[0].name
-    least = math.ceil(LEAST_ROWS * base.count / y.shape[1])
-    if len(y) < least:
-        problem = f"too short: {len(y)} samples after filtering for {base.count} parameters"
-        raise InputFaults.one(name, "t_s", problem, f"{least} or more, so a longer recording")
+    name = ", ".join(dict.fromkeys(rows.name for rows in recordings))
+    check_length(recordings, base.count)
     values, noise, used = _fit(y, torque, usable)
     weighted = y / noise[:, None] * used[:, :, None]
     condition = _condition(name, base, weighted.reshape(-1, base.count))
@@ -122,6 +124,15 @@ def estimate(base: Base, recordings: Sequence[Rows]) -> Estimate:
         rows=len(y),
         condition=condition,
     )
+
+
+def check_length(recordings: Sequence[Rows], parameters: int) -> None:
+    """Raise InputFaults if recordings have too few samples for so many parameters."""
+    samples = sum(len(rows.y) for rows in recordings)
+    least = math.ceil(LEAST_ROWS * parameters / recordings[0].y.shape[1])
+    if samples < least:
+        problem = f"too short: {samples} samples after filtering for {parameters} parameters"
+        raise InputFaults.one(recordings[0].name, "t_s", problem, f"{least} or more, so a longer recording")
 
 
 def torque_error(values: Floats, rows: Rows) -> TorqueError:

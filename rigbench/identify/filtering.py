@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from rigbench.arm.arm import Arm, Floats
 from rigbench.errors import InputFaults
-from rigbench.identify.base import Base
+from rigbench.identify.base import Base, Indices
 from rigbench.identify.recording import Recording
 from rigbench.identify.regressor import Terms, regressor
 
@@ -30,6 +30,9 @@ ORDER = 4
 KEPT = 1.79
 """Samples kept each second over the corner: half of that is where this filter lets half of the power
 through, so that white noise, folded there, is white again and samples hang together no more."""
+
+NONE = np.empty(0, np.intp)
+"""No columns."""
 
 TRIM = 4.0
 """Periods of the corner dropped at either end, where the filters swing in."""
@@ -87,8 +90,9 @@ def rows_of(
     base: Base,
     recording: Recording,
     corner_hz: float = CORNER_HZ,
+    further: Indices = NONE,
 ) -> Rows:
-    """Return the equations of a recording.
+    """Return the equations of a recording: the base's columns, then ``further`` ones of the regressor.
 
     Positions (and velocities, where recorded) are low-passed at four times the corner and
     differentiated; the regressor is worked out at every sample; then regressor and torque
@@ -112,7 +116,8 @@ def rows_of(
         v = low_pass(recording.v, rate, STATE_FACTOR * corner_hz)
     a = derivative(v, rate)
     parts = [slice(start, start + CHUNK) for start in range(0, len(q), CHUNK)]
-    y = np.concatenate([regressor(arm, gravity, q[k], v[k], a[k], terms)[:, :, base.kept] for k in parts])
+    columns = np.append(base.kept, further)
+    y = np.concatenate([regressor(arm, gravity, q[k], v[k], a[k], terms)[:, :, columns] for k in parts])
     torque = low_pass(recording.torque, rate, corner_hz)
     standing = _standing(v, int(rate / corner_hz)) if terms.coulomb else np.zeros(v.shape, bool)
     kept = slice(trim, len(q) - trim, step)

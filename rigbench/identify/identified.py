@@ -19,13 +19,15 @@ from rigbench.identify.estimate import Estimate
 from rigbench.identify.regressor import Terms
 from rigbench.yamlfile import load
 
-__all__ = ["write_identified"]
+__all__ = ["write_identified", "write_loaded"]
 
 HEADING = """\
 # Identified from recorded motions: inertials, rotor inertia, friction. All else is as declared.
 # Before this model meets a real arm: a risk assessment under the local machinery rules and ISO 10218, people
 # outside the reach, reduced speed first, an emergency stop in hand, torque and speed limits in the drive.
 """
+
+LOADED = "# The last link carries the identified load: its inertial is of both.\n"
 
 
 def write_identified(
@@ -40,22 +42,42 @@ def write_identified(
 
     Raises StoreError where the files can't be written, ValueError if the drives are not the arm file's.
     """
+    covariance = Path(folder) / f"{name}-covariance.json"
+    known = covariance_text(covariance_document(result, terms, found))
+    (path, text), (urdf, body) = _texts(Path(folder), name, files, terms, result.arm, HEADING)
+    _write({path: text, urdf: body, covariance: known})
+    return path, urdf, covariance
+
+
+def write_loaded(folder: Path | str, name: str, files: ArmFiles, terms: Terms, arm: Arm) -> tuple[Path, Path]:
+    """Write <name>.yaml and <name>.urdf of an identified arm that carries a load, and return their paths.
+
+    As :func:`write_identified`; the load is part of the last link's inertial.
+    """
+    (path, text), (urdf, body) = _texts(Path(folder), name, files, terms, arm, HEADING + LOADED)
+    _write({path: text, urdf: body})
+    return path, urdf
+
+
+def _texts(
+    folder: Path, name: str, files: ArmFiles, terms: Terms, arm: Arm, heading: str
+) -> tuple[tuple[Path, str], tuple[Path, str]]:
+    """Return path and text of the arm file, and of the URDF."""
     if files.drive_changes:
         raise ValueError("drives that were changed by an experiment have no arm file to write to")
-    folder = Path(folder)
-    paths = folder / f"{name}.yaml", folder / f"{name}.urdf", folder / f"{name}-covariance.json"
-    texts = (
-        HEADING + _arm_text(files, terms, result.arm, paths[1].name),
-        _urdf_text(files, result.arm),
-        covariance_text(covariance_document(result, terms, found)),
-    )
+    path, urdf = folder / f"{name}.yaml", folder / f"{name}.urdf"
+    return (path, heading + _arm_text(files, terms, arm, urdf.name)), (urdf, _urdf_text(files, arm))
+
+
+def _write(texts: dict[Path, str]) -> None:
+    """Write texts, all into one folder, which is made if it is missing; StoreError where that can't be."""
+    folder = next(iter(texts)).parent
     try:
         folder.mkdir(parents=True, exist_ok=True)
-        for path, text in zip(paths, texts, strict=True):
+        for path, text in texts.items():
             path.write_text(text, encoding="utf-8")
     except OSError as error:
         raise StoreError(str(folder), f"the arm can't be written: {error.strerror}") from error
-    return paths
 
 
 def _arm_text(files: ArmFiles, terms: Terms, arm: Arm, urdf: str) -> str:

@@ -7,8 +7,10 @@ from dataclasses import dataclass, replace
 from itertools import combinations
 
 import numpy as np
+from scipy.optimize import lsq_linear
 
 from rigbench.arm.arm import PRISMATIC, Arm, Floats
+from rigbench.arm.vector import LINK
 from rigbench.errors import Fault
 from rigbench.identify.filtering import CORNER_HZ, STATE_FACTOR, derivative, low_pass
 from rigbench.identify.recording import Recording
@@ -56,7 +58,7 @@ class _Slip:
 
 
 def implausible(
-    arm: Arm, gravity: tuple[float, float, float], recording: Recording, table: Table
+    arm: Arm, gravity: tuple[float, float, float], recording: Recording, table: Table, loaded: bool = False
 ) -> list[Fault]:
     """Return what makes a recording, read without faults, not one of this arm in these units.
 
@@ -64,7 +66,8 @@ def implausible(
     not move; velocities that are not the positions' own. Against the declared arm's torques: columns of
     positions or torques that are 57.3 or 1000 times too large or small, or swapped, told where the arm
     leaves more than half of a joint's torque unexplained, and less than half of that once the slip is set
-    right. A model that is merely wrong is no fault.
+    right. A model that is merely wrong is no fault, nor is a load where the arm is ``loaded``: then the
+    recording is held against the arm with whatever load, no heavier than it, explains the torques best.
     """
     rate = recording.rate_hz
     if rate < SLOWEST_HZ:
@@ -73,7 +76,7 @@ def implausible(
     faults = [*_range_faults(arm, recording, table), *_still_faults(arm, recording, table)]
     if recording.v is not None:
         faults += _velocity_faults(arm, recording, recording.v, table)
-    return faults or list(_slip_faults(arm, gravity, recording, table))
+    return faults or list(_slip_faults(arm, gravity, recording, table, loaded))
 
 
 def _range_faults(arm: Arm, recording: Recording, table: Table) -> Iterator[Fault]:
@@ -137,15 +140,16 @@ def _factor(ratio: float) -> str | None:
 
 
 def _slip_faults(
-    arm: Arm, gravity: tuple[float, float, float], recording: Recording, table: Table
+    arm: Arm, gravity: tuple[float, float, float], recording: Recording, table: Table, loaded: bool
 ) -> Iterator[Fault]:
     """Yield the slip without which the arm explains the torques, if there is one."""
-    before = _unexplained(arm, gravity, recording)
+    before = _unexplained(arm, gravity, recording, loaded)
     if (before <= EXPLAINED).all():
         return
     slips = list(_slips(arm, recording))
     after = [
-        _unexplained(arm, gravity, replace(recording, q=slip.q, v=None, torque=slip.torque)) for slip in slips
+        _unexplained(arm, gravity, replace(recording, q=slip.q, v=None, torque=slip.torque), loaded)
+        for slip in slips
     ]
     worst = [float(share.max()) for share in after]
     best = int(np.argmin(worst))
@@ -180,8 +184,8 @@ def _slips(arm: Arm, recording: Recording) -> Iterator[_Slip]:
             yield _Slip(pair, said, recording.q[:, left], recording.torque[:, right])
 
 
-def _unexplained(arm: Arm, gravity: tuple[float, float, float], recording: Recording) -> Floats:
-    """Return the share of each joint's torque (n,) that the declared arm leaves unexplained."""
+def _unexplained(arm: Arm, gravity: tuple[float, float, float], recording: Recording, loaded: bool) -> Floats:
+    """Return the share of each joint's torque (n,) that the declared arm, with a load, leaves unexplained."""
     rate = recording.rate_hz
     corner = min(CORNER_HZ, rate / (2 * STATE_FACTOR))
     q = low_pass(recording.q, rate, corner)
@@ -191,5 +195,25 @@ def _unexplained(arm: Arm, gravity: tuple[float, float, float], recording: Recor
     y = regressor(arm, gravity, q[some], v[some], a[some], Terms())
     torque = low_pass(recording.torque, rate, corner)[some]
     error = torque - y @ parameter_values(arm, Terms())
-    share: Floats = np.sqrt((error**2).mean(axis=0) / np.maximum((torque**2).mean(axis=0), 1e-12))
+    size = np.sqrt(np.maximum((torque**2).mean(axis=0), 1e-12))
+    if loaded:
+        last = y[:, :, LINK * (arm.n - 1) : LINK * arm.n]
+        error = error - last @ _best_load(arm, last / size[:, None], error / size)
+    share: Floats = np.sqrt((error**2).mean(axis=0)) / size
     return share
+
+
+def _best_load(arm: Arm, y: Floats, torque: Floats) -> Floats:
+    """Return the parameters (10,) of a load that explain torques (S, n) best by y (S, n, 10).
+
+    It weighs no more than the arm and lies within its length of the last joint: else a slip of a unit would
+    be a load as well.
+    """
+    mass, length = arm.parameters[:, 0].sum(), np.linalg.norm(arm.position, axis=1).sum()
+    length = length + np.linalg.norm(arm.tool_position) or 1.0
+    most = mass * np.array([1.0, *[length] * 3, *[length**2] * 6])
+    least = np.where(np.isin(np.arange(LINK), (0, 4, 6, 9)), 0.0, -most)  # mass and principal entries
+    q, r = np.linalg.qr((y * most).reshape(-1, LINK))  # ten equations are solved sooner than thousands
+    solved = lsq_linear(r, q.T @ torque.ravel(), (least / most, np.ones(LINK)))
+    best: Floats = most * solved.x
+    return best

@@ -3,18 +3,20 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
 from rigbench.arm.arm import Arm, Floats
+from rigbench.arm.case import Case
 from rigbench.arm.files import ArmFiles
-from rigbench.arm.mismatch import Mismatch
+from rigbench.arm.mismatch import Mismatch, draw_values
 from rigbench.errors import InputFaults
-from rigbench.identify.base import base_of
+from rigbench.identify.base import Indices, base_of, base_of_load
 from rigbench.identify.consistent import SPREAD, Consistent, consistent
 from rigbench.identify.estimate import Estimate, TorqueError, estimate, torque_error
-from rigbench.identify.filtering import CORNER_HZ, Rows, rows_of
+from rigbench.identify.filtering import CORNER_HZ, NONE, Rows, rows_of
+from rigbench.identify.load import Load, carried_columns, identify_with_load
 from rigbench.identify.recording import Recording, of_run
 from rigbench.identify.regressor import Terms, parameter_values
 from rigbench.laws.options import options_model
@@ -50,6 +52,16 @@ class Identification:
     rows: Rows
     checked: bool  # whether ``rows`` were not fitted
     truth: Arm | None = None  # the hidden machine, where it was simulated
+    load: Load | None = None  # what the last link carried in further recordings
+
+    @property
+    def loaded_arm(self) -> Arm | None:
+        """The identified arm whose last link carries the identified load; None where there is no load."""
+        if self.load is None:
+            return None
+        parameters = self.result.arm.parameters.copy()
+        parameters[-1] += self.load.parameters
+        return self.result.arm.replaced(parameters)
 
     @property
     def declared_values(self) -> Floats:
@@ -82,13 +94,17 @@ class Identification:
 
 @dataclass(frozen=True)
 class Simulated:
-    """A machine to practise on: the declared arm with a hidden mismatch at level 1, and noisy sensors."""
+    """A machine to practise on: the declared arm with a hidden mismatch at level 1, and noisy sensors.
+
+    ``loaded`` states what it carries when it moves a second time; None where it does not.
+    """
 
     mismatch: Mismatch
     sources: tuple[str, ...]
     seed: int = 0
     noise_deg: float = 0.0
     torque_noise_nm: float = 0.0
+    loaded: Case | None = None
 
 
 def identify(
@@ -97,41 +113,65 @@ def identify(
     recordings: Sequence[Recording],
     check: Recording | None = None,
     truth: Arm | None = None,
+    loaded: Sequence[Recording] = (),
+    loaded_truth: Arm | None = None,
 ) -> Identification:
-    """Return the arm that recordings of it show, near the declared one; InputFaults where they can't."""
-    arm = files.arm()
-    base = base_of(arm, settings.gravity, settings.terms)
+    """Return the arm that recordings of it show, near the declared one; InputFaults where they can't.
 
-    def rows(recording: Recording) -> Rows:
-        return rows_of(arm, settings.gravity, settings.terms, base, recording, settings.corner_hz)
+    ``loaded`` are recordings of the same arm with a load: then also what that is. ``truth`` and
+    ``loaded_truth`` are the hidden machine without and with it.
+    """
+    arm, terms = files.arm(), settings.terms
+    base = base_of(arm, settings.gravity, terms)
 
-    fitted = [rows(recording) for recording in recordings]
-    found = estimate(base, fitted)
-    result = consistent(arm, settings.terms, found, settings.spread)
+    def rows(recording: Recording, further: Indices = NONE) -> Rows:
+        return rows_of(arm, settings.gravity, terms, base, recording, settings.corner_hz, further)
+
+    fitted, load = [rows(recording) for recording in recordings], None
+    if loaded:
+        load_base = base_of_load(arm, settings.gravity)
+        carrying = [rows(recording, carried_columns(arm, load_base)) for recording in loaded]
+        bases = base, load_base
+        found, result, load = identify_with_load(arm, terms, bases, fitted, carrying, settings.spread)
+        if truth is not None and loaded_truth is not None:
+            load = replace(load, truth=loaded_truth.parameters[-1] - truth.parameters[-1])
+    else:
+        found = estimate(base, fitted)
+        result = consistent(arm, terms, found, settings.spread)
     shown = fitted[0] if check is None else rows(check)
-    return Identification(files, settings, found, result, shown, check is not None, truth)
+    return Identification(files, settings, found, result, shown, check is not None, truth, load)
 
 
 def record(
-    files: ArmFiles, settings: Settings, simulated: Simulated, motion: Motion, name: str, draw: int
+    files: ArmFiles,
+    settings: Settings,
+    simulated: Simulated,
+    motion: Motion,
+    name: str,
+    draw: int,
+    loaded: bool = False,
 ) -> tuple[Recording, Arm]:
     """Run a motion on the hidden machine and return what its sensors recorded, and the machine.
 
     Computed torque with the declared arm as its model, natural frequency 5 Hz, at 1 kHz. ``draw`` numbers
-    the noise on torques; the machine is the same for all. Raises InputFaults if the run does not finish.
+    the noise of the sensors; the machine is the same for all. ``loaded``: it carries what is stated, of which
+    the model knows nothing. Raises InputFaults if the run does not finish.
     """
     options = options_model(registered().laws[LAW].cls)  # type: ignore[arg-type]  # classes are hashable
     law = choose(LAW, options(natural_hz=5.0))
     start = tuple(motion.reference(np.zeros(1))[0][0].tolist())
     sensing = Sensing(noise_deg=simulated.noise_deg)
+    machine = draw_values(files.arm(), simulated.mismatch, simulated.sources, simulated.seed, 0)
     run = Run(
         files, law, motion, Rates(), start, 0.5, simulated.seed, mismatch=simulated.mismatch, level=1.0,
-        sources=simulated.sources, draw=0, gravity=settings.gravity, sensing=sensing,
+        sources=simulated.sources, draw=draw, directions=tuple(machine.items()), gravity=settings.gravity,
+        sensing=sensing, case=simulated.loaded if loaded else None,
     )  # fmt: skip
     log = simulate(run)
     if log.outcome != "finished":
         problem = f"the hidden machine did not follow {name}: {log.reason or log.outcome}"
-        raise InputFaults.one(files.path, "", problem, "a lower limit_percent, or less mismatch")
-    seen = noise_of(sensing, len(log.t), files.arm(), simulated.seed, 0)
+        less = "load" if loaded else "mismatch"
+        raise InputFaults.one(files.path, "", problem, f"a lower limit_percent, or less {less}")
+    seen = noise_of(sensing, len(log.t), files.arm(), simulated.seed, draw)
     rng = np.random.default_rng([simulated.seed, draw])
     return of_run(log, name, seen, simulated.torque_noise_nm * rng.normal(size=log.torque.shape)), log.plant

@@ -12,7 +12,7 @@ from rigbench.arm.dynamics import newton_euler, place
 from rigbench.arm.kernel import kernel
 from rigbench.arm.vector import vector_of
 
-__all__ = ["Terms", "link_regressor", "parameter_labels", "parameter_values", "regressor"]
+__all__ = ["LINKS_ALONE", "Terms", "link_regressor", "parameter_labels", "parameter_values", "regressor"]
 
 
 @dataclass(frozen=True)

@@ -6,6 +6,7 @@ import textwrap
 
 from rigbench.identify.procedure import Identification
 from rigbench.report.cautions import BEFORE_A_REAL_ARM
+from rigbench.report.load_text import load_text
 
 __all__ = ["identify_text"]
 
@@ -13,15 +14,19 @@ NUMBER = 11
 
 
 def identify_text(done: Identification) -> str:
-    """Return torques predicted before and after, and every base parameter with its 95 % interval."""
-    parts = [_head(done), _torques(done), _parameters(done), textwrap.wrap(BEFORE_A_REAL_ARM, 100)]
+    """Return torques predicted before and after, every base parameter with its interval, and the load."""
+    parts = [_head(done), _torques(done), _parameters(done)]
+    if done.load is not None:
+        parts.append(load_text(done.load))
+    parts.append(textwrap.wrap(BEFORE_A_REAL_ARM, 100))
     return "\n\n".join("\n".join(part) for part in parts)
 
 
 def _head(done: Identification) -> list[str]:
     found = done.found
+    load = "" if done.load is None else f" and {done.load.found.base.count} of a load"
     lines = [
-        f"{done.files.arm().name}: {found.base.count} parameters from {found.rows} samples, "
+        f"{done.files.arm().name}: {found.base.count} parameters{load} from {found.rows} samples, "
         f"condition number {found.condition:.3g}"
     ]
     if outliers := int(found.outliers.sum()):

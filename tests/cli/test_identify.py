@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import shutil
 from collections.abc import Callable
 from pathlib import Path
 
@@ -11,7 +12,7 @@ import pytest
 from typer.testing import Result
 
 from rigbench.arm.files import ArmFiles, load_arm
-from rigbench.arm.mismatch import Mismatch
+from rigbench.arm.mismatch import Case, Mismatch
 from rigbench.identify.fourier import FourierMotion
 from rigbench.identify.procedure import Settings, Simulated, record
 from rigbench.identify.recording_file import write_recording
@@ -33,17 +34,36 @@ MOTION = FourierMotion((0.2, -0.3), ((0.9, -0.45), (-0.7, 0.35)), ((0.4, -0.1), 
 OTHER = FourierMotion((0.0, 0.4), ((0.6, -0.3), (0.9, -0.45)), ((0.8, -0.2), (-0.8, 0.2)), 3.0, 3)
 
 
-@pytest.fixture
-def logs(tmp_path) -> Path:
-    """A folder with two recordings of planar2 under noise of 0.1 N m, and a file that names them."""
+@pytest.fixture(scope="module")
+def recorded(tmp_path_factory: pytest.TempPathFactory) -> Path:
+    """A folder with recordings of planar2 under noise of 0.1 N m: two alone, one with 2.3 kg at the tool."""
+    folder = tmp_path_factory.mktemp("recorded")
     files, settings = ArmFiles.read(ARM), Settings(Terms(False, False, False))
-    hidden = Simulated(Mismatch(), (), seed=2, torque_noise_nm=0.1)
-    for draw, (name, motion) in enumerate((("a.csv", MOTION), ("b.csv", OTHER))):
-        recording, _ = record(files, settings, hidden, motion, name, draw)
-        write_recording(tmp_path / name, files.arm(), recording)
+    load = Case(payload_kg=2.3, payload_cog_mm=(10, 0, 40))
+    hidden = Simulated(Mismatch(), (), seed=2, torque_noise_nm=0.1, loaded=load)
+    for draw, (name, motion) in enumerate((("a.csv", MOTION), ("b.csv", OTHER), ("full.csv", MOTION))):
+        recording, _ = record(files, settings, hidden, motion, name, draw, loaded=name == "full.csv")
+        write_recording(folder / name, files.arm(), recording)
+    return folder
+
+
+@pytest.fixture
+def logs(recorded: Path, tmp_path: Path) -> Path:
+    """A folder with two recordings, and a file that names them."""
+    for name in ("a.csv", "b.csv"):
+        shutil.copy(recorded / name, tmp_path)
     text = f"rigbench: 1\narm: {ARM}\nterms: []\nrecordings: [a.csv]\ncheck: b.csv\n"
     (tmp_path / "logs.yaml").write_text(text)
     return tmp_path
+
+
+@pytest.fixture
+def loaded_logs(recorded: Path, logs: Path) -> Path:
+    """The same with the recording of a load."""
+    shutil.copy(recorded / "full.csv", logs)
+    with (logs / "logs.yaml").open("a") as stream:
+        stream.write("loaded: [full.csv]\n")
+    return logs
 
 
 def test_practice_finds_the_hidden_machine(call: Callable[..., Result], tmp_path: Path) -> None:
@@ -70,6 +90,71 @@ def test_recordings_are_taken_and_the_report_names_all(call: Callable[..., Resul
         assert said in result.stdout
     assert "true" not in result.stdout
     assert (logs / "out" / "logs-identified.png").exists()
+
+
+def test_practice_with_a_load(call: Callable[..., Result], tmp_path: Path) -> None:
+    """The load's true mass and place are in their intervals, the sums are there, and both arms read back."""
+    loaded = "  loaded: {payload_kg: 1.2, payload_cog_mm: [10, 0, 40]}\nexcitation:"
+    (tmp_path / "practise.yaml").write_text(PRACTISE.replace("excitation:", loaded))
+    result = call("identify", str(tmp_path / "practise.yaml"), "-o", str(tmp_path / "out"), "--json")
+    assert result.exit_code == 0, result.stderr
+    done = json.loads(result.stdout)
+    terms = {term["name"]: term for term in done["load"]["terms"]}
+    for name, true in (("mass", 1.2), ("cog x", 10.0), ("cog z", 40.0)):
+        assert terms[name]["true"] == pytest.approx(true, abs=1e-9)
+        assert terms[name]["low"] <= true <= terms[name]["high"]
+    assert terms["cog y"]["value"] is None
+    assert [row["name"] for row in done["load"]["base"]] == ["m.load", "mcx.load", "mcz.load", "Iyy.load"]
+    assert Path(done["files"]["loaded arm"]).name == "practise-loaded.yaml"
+    alone, full = (load_arm(done["files"][name]) for name in ("arm", "loaded arm"))
+    assert np.allclose(full.parameters[0], alone.parameters[0], rtol=1e-12)
+    added = full.parameters[1, 0] - alone.parameters[1, 0]
+    assert added == pytest.approx(terms["mass"]["identified"], rel=1e-9)
+
+
+def test_recordings_with_a_load(call: Callable[..., Result], loaded_logs: Path) -> None:
+    """The report has a section on the load, with what this arm can't tell, and without a true column."""
+    result = call("identify", str(loaded_logs / "logs.yaml"), "-o", str(loaded_logs / "out"))
+    assert result.exit_code == 0, result.stderr
+    for said in (
+        "6 parameters and 4 of a load",
+        "mass [kg]",
+        "cog x [mm], from the tool point",
+        "Torques of this arm don't tell cog y, Ixx, Ixy, Ixz, Iyz, Izz",
+        "Iyy.load",
+    ):
+        assert said in result.stdout
+    assert "true" not in result.stdout
+    assert "loaded arm: " in result.stderr
+    mass = next(line.split() for line in result.stdout.splitlines() if "mass [kg]" in line)
+    assert float(mass[1]) <= 2.3 <= float(mass[2])
+    assert (loaded_logs / "out" / "logs-loaded.urdf").exists()
+
+
+LOADED_FAULTS = {
+    "no arm alone": ("recordings: [a.csv]\ncheck: b.csv\n", "", "loaded: tells nothing without motions of the arm"),
+    "beside simulate": ("recordings: [a.csv]\ncheck: b.csv\n", "simulate: {}\n", "simulate.loaded: {payload_kg"),
+    "the same recording": ("loaded: [full.csv]", "loaded: [a.csv]", "loaded[0]: 'a.csv' is among recordings too"),
+    "no such recording": ("loaded: [full.csv]", "loaded: [none.csv]", "none.csv: the recording does not exist"),
+    "none": ("loaded: [full.csv]", "loaded: []", "loaded"),
+    "the wrong way round": ("recordings: [a.csv]\ncheck: b.csv\nloaded: [full.csv]", "recordings: [full.csv]\nloaded: [a.csv]", "a.csv: the mass of the load comes out as -"),
+    "no mass": ("recordings: [a.csv]\ncheck: b.csv\nloaded: [full.csv]", "simulate: {loaded: {}}", "simulate.loaded.payload_kg"),
+    "a mass below none": ("recordings: [a.csv]\ncheck: b.csv\nloaded: [full.csv]", "simulate: {loaded: {payload_kg: -1}}", "simulate.loaded.payload_kg"),
+    "two payloads": ("recordings: [a.csv]\ncheck: b.csv\nloaded: [full.csv]", "simulate: {mismatch: {payload: {believed_kg: 1, least_kg: 0, most_kg: 2}}, loaded: {payload_kg: 1}}", "carries the mismatch's payload already"),
+}  # fmt: skip
+
+
+@pytest.mark.parametrize("fault", LOADED_FAULTS)
+def test_faults_about_loads(call: Callable[..., Result], loaded_logs: Path, fault: str) -> None:
+    """Each is told with its place, and ends with exit code 2."""
+    old, new, said = LOADED_FAULTS[fault]
+    path = loaded_logs / "logs.yaml"
+    assert old in path.read_text()
+    path.write_text(path.read_text().replace(old, new))
+    result = call("identify", str(path), "-o", str(loaded_logs / "out"))
+    assert result.exit_code == 2
+    assert said in result.stderr
+    assert "Traceback" not in result.stderr
 
 
 FAULTS = {
@@ -125,5 +210,7 @@ def test_a_folder_that_cannot_be_is_the_disks_fault(call: Callable[..., Result],
 def test_the_schema_of_the_file(call: Callable[..., Result]) -> None:
     """`rigbench schema identify` names every key with its unit or default."""
     schema = json.loads(call("schema", "identify").stdout)
-    assert {"arm", "recordings", "simulate", "excitation", "terms", "corner_hz"} <= set(schema["properties"])
+    assert {"arm", "recordings", "loaded", "simulate", "excitation", "terms", "corner_hz"} <= set(
+        schema["properties"]
+    )
     assert all("description" in part for name, part in schema["properties"].items())

@@ -8,7 +8,7 @@ import numpy as np
 import pytest
 
 from rigbench.arm.files import ArmFiles
-from rigbench.arm.mismatch import Mismatch
+from rigbench.arm.mismatch import Mismatch, Spread
 from rigbench.errors import InputFaults
 from rigbench.identify.fourier import FourierMotion
 from rigbench.identify.procedure import Settings, Simulated, identify, record
@@ -24,14 +24,21 @@ MOTION = FourierMotion((0.2, -0.3), ((0.9, -0.45), (-0.7, 0.35)), ((0.4, -0.1), 
 
 
 def test_the_same_machine_for_every_recording_with_its_own_noise():
-    """Two draws of the noise: the same positions and machine, other torques."""
-    noisy = Simulated(Mismatch(), (), seed=1, noise_deg=0.01, torque_noise_nm=0.3)
-    (one, plant), (two, other) = (
-        record(PLANAR2, Settings(LINKS), noisy, MOTION, "a", draw) for draw in (0, 1)
-    )
-    assert np.array_equal(one.q, two.q)
-    assert np.array_equal(plant.parameters, other.parameters)
-    assert (one.torque - two.torque).std() == pytest.approx(0.3 * np.sqrt(2), rel=0.03)
+    """Two draws of the noise: the same machine, other noise on torques, and on positions, each of its size."""
+    for noise_deg, torque_noise_nm in ((0.0, 0.3), (0.01, 0.0)):
+        noisy = Simulated(
+            Mismatch(link_mass_percent=Spread(20)), ("link_mass_percent",), 1, noise_deg, torque_noise_nm
+        )
+        (one, plant), (two, other) = (
+            record(PLANAR2, Settings(LINKS), noisy, MOTION, "a", draw) for draw in (0, 1)
+        )
+        assert np.array_equal(plant.parameters, other.parameters)
+        assert not np.allclose(plant.parameters, PLANAR2.arm().parameters, rtol=0.01)
+        q_noise = np.degrees(one.q - two.q).std() / np.sqrt(2)
+        assert q_noise == pytest.approx(noise_deg, rel=0.03)  # 24000 samples: 0.5 %, and what the arm follows
+        if noise_deg == 0:
+            torque_noise = (one.torque - two.torque).std() / np.sqrt(2)
+            assert torque_noise == pytest.approx(torque_noise_nm, rel=0.03)
 
 
 def test_a_motion_that_the_machine_does_not_follow_is_a_fault():
