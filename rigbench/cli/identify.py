@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import asdict
 from pathlib import Path
 
 from rigbench.cli.output import print_json, say, show
@@ -41,7 +42,9 @@ def identify_arm(path: str, output: str | None, as_json: bool) -> None:
         condition, checked = done.found.condition, done.checked
         base = {"base": known["base"], "noise_nm": known["noise_nm"], "condition": condition}
         load = {} if done.load is None else {"load": load_document(done.load)}
-        print_json({"files": files, "torque_error_nm": errors, "checked": checked} | base | load)
+        tracks = [asdict(one) for one in done.tracked]
+        told = {"files": files, "torque_error_nm": errors, "checked": checked, "tool_peak": tracks}
+        print_json(told | base | load)
     else:
         show(identify_text(done))
         for what, file in files.items():

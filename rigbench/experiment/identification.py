@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
-from dataclasses import dataclass
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, replace
 from pathlib import Path
 
 from rigbench.arm.case import Case
@@ -13,6 +13,7 @@ from rigbench.experiment.expand import spreading
 from rigbench.experiment.findings import Findings
 from rigbench.experiment.identification_keys import ExcitationKeys, IdentificationKeys, SimulateKeys
 from rigbench.experiment.mismatch import mismatch_of
+from rigbench.experiment.motions import motions_of
 from rigbench.identify.bounds import bounds_of
 from rigbench.identify.excitation import Search, excite
 from rigbench.identify.plausible import implausible
@@ -21,6 +22,9 @@ from rigbench.identify.recording import Recording
 from rigbench.identify.recording_file import read_recording
 from rigbench.identify.regressor import Terms
 from rigbench.identify.series import SeriesSpace
+from rigbench.identify.tracking import tracked
+from rigbench.motion.motion import Motion
+from rigbench.rig.run import Rates
 from rigbench.yamlfile import load, partial, read_text
 
 __all__ = ["DeclaredIdentification", "load_identification"]
@@ -43,6 +47,7 @@ class DeclaredIdentification:
     check: Recording | None
     simulated: Simulated | None
     excitation: ExcitationKeys
+    motions: Mapping[str, Motion]
 
     def carry_out(self, tell: Tell) -> Identification:
         """Do what is declared; ``tell`` is told, in a line each, what takes its time."""
@@ -67,11 +72,15 @@ class DeclaredIdentification:
         fitted, truth = record(self.files, self.settings, self.simulated, best.motion, "excitation", 0)
         other = search.random_motion(keys.seed + CHECK_SEED, keys.periods)
         check, _ = record(self.files, self.settings, self.simulated, other, "a random motion", 1)
-        if self.simulated.loaded is None:
-            return identify(self.files, self.settings, [fitted], check, truth)
-        name = "excitation with the load"
-        loaded, laden = record(self.files, self.settings, self.simulated, best.motion, name, 2, loaded=True)
-        return identify(self.files, self.settings, [fitted], check, truth, [loaded], laden)
+        carrying, laden = [], None
+        if self.simulated.loaded is not None:
+            name = "excitation with the load"
+            loaded, laden = record(
+                self.files, self.settings, self.simulated, best.motion, name, 2, loaded=True
+            )
+            carrying = [loaded]
+        done = identify(self.files, self.settings, [fitted], check, truth, carrying, laden)
+        return replace(done, tracked=tracked(done, self.simulated, self.motions))
 
     def _search(self) -> Search:
         keys, arm = self.excitation, self.files.arm()
@@ -99,6 +108,7 @@ def load_identification(path: str | Path) -> DeclaredIdentification:
     if keys.excitation is not None and keys.simulate is None and findings.clean("excitation"):
         findings.fault(("excitation",), "has no effect beside recordings", "simulate")
     _check_loaded(keys, findings)
+    _check_motions(keys, findings)
     if findings.faults and not findings.clean("arm"):
         raise InputFaults(findings.faults)
     files = _arm(folder / keys.arm, findings)
@@ -122,12 +132,29 @@ def load_identification(path: str | Path) -> DeclaredIdentification:
         simulated = Simulated(
             mismatch, spreading(mismatch), given.seed, given.noise_deg, given.torque_noise_nm, _case(given)
         )
+    motions = motions_of(keys.motions or {}, findings, folder, files.arm(), Rates().control_hz)
     if findings.faults:
         raise InputFaults(findings.faults)
     kept, carrying = (tuple(each for each in read if each is not None) for read in (recordings, loaded))
     return DeclaredIdentification(
-        file, files, settings, kept, carrying, check, simulated, keys.excitation or ExcitationKeys()
+        file, files, settings, kept, carrying, check, simulated, keys.excitation or ExcitationKeys(), motions
     )
+
+
+def _check_motions(keys: IdentificationKeys, findings: Findings) -> None:
+    """Check that there is a hidden machine for the motions, and nothing that they can't have here."""
+    if keys.motions is None:
+        return
+    if keys.simulate is None and findings.clean("simulate"):
+        findings.fault(("motions",), "have no effect beside recordings", "simulate")
+    for name, motion in keys.motions.items():
+        if motion.tolerance is not None:
+            problem = "is not judged in an identification"
+            findings.fault(("motions", name, "tolerance"), problem, "no tolerance here")
+    payload = None if keys.simulate is None else keys.simulate.mismatch.payload
+    if payload is not None and payload.believed_kg > 0:
+        place = ("simulate", "mismatch", "payload", "believed_kg")
+        findings.fault(place, "an identified model has the payload in it and would carry it twice", "0")
 
 
 def _check_loaded(keys: IdentificationKeys, findings: Findings) -> None:

@@ -7,6 +7,7 @@ from typing import Annotated, Literal
 from pydantic import Field
 
 from rigbench.experiment.mismatch_keys import MOST_MM, MismatchKeys
+from rigbench.experiment.motion_keys import MotionKeys
 from rigbench.yamlfile import Declared
 
 __all__ = ["ExcitationKeys", "IdentificationKeys", "LoadedKeys", "SimulateKeys"]
@@ -95,6 +96,12 @@ class IdentificationKeys(Declared):
         description="a recorded motion, without a load, that is not fitted, to check the result on",
     )
     simulate: SimulateKeys | None = Field(default=None, description="practise on a hidden machine instead")
+    motions: dict[str, MotionKeys] | None = Field(
+        default=None,
+        min_length=1,
+        description="beside simulate: motions that the hidden machine tracks under computed torque, with the "
+        "declared and with the identified model; as in an experiment",
+    )
     excitation: ExcitationKeys | None = Field(
         default=None, description="the motion of simulate; {} or left out for the defaults"
     )

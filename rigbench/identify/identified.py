@@ -3,7 +3,9 @@
 from __future__ import annotations
 
 import xml.etree.ElementTree as ET
+from collections.abc import Mapping
 from pathlib import Path
+from types import MappingProxyType
 from typing import Any
 
 import numpy as np
@@ -19,7 +21,7 @@ from rigbench.identify.estimate import Estimate
 from rigbench.identify.regressor import Terms
 from rigbench.yamlfile import load
 
-__all__ = ["write_identified", "write_loaded"]
+__all__ = ["identified_files", "write_identified", "write_loaded"]
 
 HEADING = """\
 # Identified from recorded motions: inertials, rotor inertia, friction. All else is as declared.
@@ -44,9 +46,8 @@ def write_identified(
     """
     covariance = Path(folder) / f"{name}-covariance.json"
     known = covariance_text(covariance_document(result, terms, found))
-    (path, text), (urdf, body) = _texts(Path(folder), name, files, terms, result.arm, HEADING)
-    _write({path: text, urdf: body, covariance: known})
-    return path, urdf, covariance
+    written = identified_files(files, terms, result.arm, Path(folder), name)
+    return *_write(written, {covariance: known}), covariance
 
 
 def write_loaded(folder: Path | str, name: str, files: ArmFiles, terms: Terms, arm: Arm) -> tuple[Path, Path]:
@@ -54,30 +55,33 @@ def write_loaded(folder: Path | str, name: str, files: ArmFiles, terms: Terms, a
 
     As :func:`write_identified`; the load is part of the last link's inertial.
     """
-    (path, text), (urdf, body) = _texts(Path(folder), name, files, terms, arm, HEADING + LOADED)
-    _write({path: text, urdf: body})
-    return path, urdf
+    return _write(identified_files(files, terms, arm, Path(folder), name, HEADING + LOADED))
 
 
-def _texts(
-    folder: Path, name: str, files: ArmFiles, terms: Terms, arm: Arm, heading: str
-) -> tuple[tuple[Path, str], tuple[Path, str]]:
-    """Return path and text of the arm file, and of the URDF."""
+def identified_files(
+    files: ArmFiles, terms: Terms, arm: Arm, folder: Path, name: str, heading: str = HEADING
+) -> ArmFiles:
+    """Return the files of an identified arm, of which nothing is written yet.
+
+    ``files`` are those of the declared arm; ValueError if the drives are not the arm file's.
+    """
     if files.drive_changes:
         raise ValueError("drives that were changed by an experiment have no arm file to write to")
     path, urdf = folder / f"{name}.yaml", folder / f"{name}.urdf"
-    return (path, heading + _arm_text(files, terms, arm, urdf.name)), (urdf, _urdf_text(files, arm))
+    text = heading + _arm_text(files, terms, arm, urdf.name)
+    return ArmFiles(str(path), text, str(urdf), _urdf_text(files, arm))
 
 
-def _write(texts: dict[Path, str]) -> None:
-    """Write texts, all into one folder, which is made if it is missing; StoreError where that can't be."""
-    folder = next(iter(texts)).parent
+def _write(files: ArmFiles, others: Mapping[Path, str] = MappingProxyType({})) -> tuple[Path, Path]:
+    """Write an arm's files, and others, into its folder, made if missing; StoreError where that can't be."""
+    path, urdf = Path(files.path), Path(files.urdf_path)
     try:
-        folder.mkdir(parents=True, exist_ok=True)
-        for path, text in texts.items():
-            path.write_text(text, encoding="utf-8")
+        path.parent.mkdir(parents=True, exist_ok=True)
+        for each, text in {path: files.text, urdf: files.urdf_text, **others}.items():
+            each.write_text(text, encoding="utf-8")
     except OSError as error:
-        raise StoreError(str(folder), f"the arm can't be written: {error.strerror}") from error
+        raise StoreError(str(path.parent), f"the arm can't be written: {error.strerror}") from error
+    return path, urdf
 
 
 def _arm_text(files: ArmFiles, terms: Terms, arm: Arm, urdf: str) -> str:

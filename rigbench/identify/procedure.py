@@ -25,7 +25,7 @@ from rigbench.motion.motion import Motion
 from rigbench.rig import Rates, Run, simulate
 from rigbench.rig.sampled import Sensing, noise_of
 
-__all__ = ["Identification", "Settings", "Simulated", "identify", "record"]
+__all__ = ["Identification", "Settings", "Simulated", "identify", "practice_run", "record"]
 
 
 LAW = "computed-torque"
@@ -41,6 +41,19 @@ class Settings:
     spread: float = SPREAD
 
 
+@dataclass(frozen=True)
+class Tracked:
+    """The largest tool error [mm] along a motion of the hidden machine, by model; None: it did not finish.
+
+    ``exact_mm`` is that of a model equal to the machine: what the law's sampling leaves.
+    """
+
+    motion: str
+    declared_mm: float | None
+    identified_mm: float | None
+    exact_mm: float | None
+
+
 @dataclass(frozen=True, eq=False)
 class Identification:
     """What came out. ``rows`` are those of the check where there is one, else of the first recording."""
@@ -53,6 +66,7 @@ class Identification:
     checked: bool  # whether ``rows`` were not fitted
     truth: Arm | None = None  # the hidden machine, where it was simulated
     load: Load | None = None  # what the last link carried in further recordings
+    tracked: tuple[Tracked, ...] = ()  # what the identified model is worth, where that was asked
 
     @property
     def loaded_arm(self) -> Arm | None:
@@ -153,25 +167,40 @@ def record(
 ) -> tuple[Recording, Arm]:
     """Run a motion on the hidden machine and return what its sensors recorded, and the machine.
 
-    Computed torque with the declared arm as its model, natural frequency 5 Hz, at 1 kHz. ``draw`` numbers
-    the noise of the sensors; the machine is the same for all. ``loaded``: it carries what is stated, of which
-    the model knows nothing. Raises InputFaults if the run does not finish.
+    As :func:`practice_run`, with the declared arm as the model. ``loaded``: it carries what is stated, of
+    which the model knows nothing. Raises InputFaults if the run does not finish.
     """
-    options = options_model(registered().laws[LAW].cls)  # type: ignore[arg-type]  # classes are hashable
-    law = choose(LAW, options(natural_hz=5.0))
-    start = tuple(motion.reference(np.zeros(1))[0][0].tolist())
-    sensing = Sensing(noise_deg=simulated.noise_deg)
-    machine = draw_values(files.arm(), simulated.mismatch, simulated.sources, simulated.seed, 0)
-    run = Run(
-        files, law, motion, Rates(), start, 0.5, simulated.seed, mismatch=simulated.mismatch, level=1.0,
-        sources=simulated.sources, draw=draw, directions=tuple(machine.items()), gravity=settings.gravity,
-        sensing=sensing, case=simulated.loaded if loaded else None,
-    )  # fmt: skip
+    run = practice_run(files, settings, simulated, motion, draw)
+    run = replace(run, case=simulated.loaded if loaded else None)
     log = simulate(run)
     if log.outcome != "finished":
         problem = f"the hidden machine did not follow {name}: {log.reason or log.outcome}"
         less = "load" if loaded else "mismatch"
         raise InputFaults.one(files.path, "", problem, f"a lower limit_percent, or less {less}")
-    seen = noise_of(sensing, len(log.t), files.arm(), simulated.seed, draw)
+    seen = noise_of(run.sensing, len(log.t), files.arm(), simulated.seed, draw)
     rng = np.random.default_rng([simulated.seed, draw])
     return of_run(log, name, seen, simulated.torque_noise_nm * rng.normal(size=log.torque.shape)), log.plant
+
+
+def practice_run(
+    files: ArmFiles,
+    settings: Settings,
+    simulated: Simulated,
+    motion: Motion,
+    draw: int,
+    model: ArmFiles | None = None,
+) -> Run:
+    """Return the run of a motion on the hidden machine under computed torque, 5 Hz, at 1 kHz.
+
+    ``model`` is what the law believes, None: the declared arm. ``draw`` numbers the noise of the sensors; the
+    machine is the same for all.
+    """
+    options = options_model(registered().laws[LAW].cls)  # type: ignore[arg-type]  # classes are hashable
+    law = choose(LAW, options(natural_hz=5.0))
+    start = tuple(motion.reference(np.zeros(1))[0][0].tolist())
+    machine = draw_values(files.arm(), simulated.mismatch, simulated.sources, simulated.seed, 0)
+    return Run(
+        files, law, motion, Rates(), start, 0.5, simulated.seed, model, simulated.mismatch, 1.0,
+        simulated.sources, draw, gravity=settings.gravity, sensing=Sensing(noise_deg=simulated.noise_deg),
+        directions=tuple(machine.items()),
+    )  # fmt: skip

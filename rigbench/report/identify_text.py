@@ -14,10 +14,12 @@ NUMBER = 11
 
 
 def identify_text(done: Identification) -> str:
-    """Return torques predicted before and after, every base parameter with its interval, and the load."""
+    """Return torques before and after, every base parameter with its interval, the load, and tracking."""
     parts = [_head(done), _torques(done), _parameters(done)]
     if done.load is not None:
         parts.append(load_text(done.load))
+    if done.tracked:
+        parts.append(_tracked(done))
     parts.append(textwrap.wrap(BEFORE_A_REAL_ARM, 100))
     return "\n\n".join("\n".join(part) for part in parts)
 
@@ -72,4 +74,20 @@ def _parameters(done: Identification) -> list[str]:
         if done.true_values is not None:
             numbers.append(done.true_values[i])
         lines.append("  " + "".join(f"{number:>{NUMBER}.4g}" for number in numbers) + f"  {name}")
+    return lines
+
+
+def _tracked(done: Identification) -> list[str]:
+    """One line a motion: the tool's error under computed torque, by the model that it believes."""
+    words = ("declared", "identified", "itself")
+    lines = [
+        "Largest tool error of computed torque on the hidden machine, its sensors exact [mm], by what the law",
+        "believes: the declared arm, the identified one, the machine itself",
+        "",
+        "  " + "".join(f"{word:>{NUMBER}}" for word in words),
+    ]
+    for one in done.tracked:
+        errors = (one.declared_mm, one.identified_mm, one.exact_mm)
+        told = ("did not end" if error is None else f"{error:.3g}" for error in errors)
+        lines.append("  " + "".join(f"{text:>{NUMBER}}" for text in told) + f"  {one.motion}")
     return lines
