@@ -83,13 +83,21 @@ def by_name(load: Load):
 
 @pytest.mark.parametrize("name", ["tray6", "rubbing"])
 def test_data_from_the_formulas_give_the_load_back(request, name):
-    """Without noise: all ten parameters of tray6's, the four of planar2's that show, and the arm's to 1e-8."""
+    """Without noise: all ten parameters of tray6's, the four of planar2's that show, and the arm's to 1e-8; and
+    the bodies that can exist have them to 1e-4 of what they are made of."""
     arm = request.getfixturevalue(name)
-    found, _, load = found_with(arm, BODY, Terms())
+    found, result, load = found_with(arm, BODY, Terms())
     assert load.found.base.count == {"tray6": 10, "rubbing": 4}[name]
     assert np.abs(load.found.values - load.found.base.combination @ BODY).max() < 1e-8
     own = found.base.combination @ parameter_values(arm, Terms())
     assert np.abs(found.values - own).max() < 1e-8
+    for base, body, values in (
+        (load.found.base, load.parameters, load.found.values),
+        (found.base, parameter_values(result.arm, Terms()), found.values),
+    ):
+        made_of = np.abs(base.combination) @ np.abs(body)
+        error = np.abs(base.combination @ body - values)
+        assert (error < 1e-4 * np.maximum(made_of, 1e-3 * made_of.max())).all()
 
 
 def test_offsets_stand_behind_the_load(rubbing):
@@ -237,6 +245,18 @@ def test_a_mass_that_is_none_by_chance_has_no_centre_of_gravity(rubbing):
         said = "\n".join(load_text(load))
         assert "can't be told from none" in said
         assert "too roughly to tell cog x, cog z, Iyy" in said
+
+
+def test_a_mass_known_roughly_has_a_place_but_no_inertia(rubbing):
+    """0.1 kg known to about 40 %: its centre of gravity has an interval, its inertia none, and that is said."""
+    body = from_inertia(0.1, np.array([0.4, 0.0, 0.0]), np.zeros((3, 3)))
+    load = found_with(rubbing, body, Terms(), 1.0, seed=20)[2]
+    terms = by_name(load)
+    half = (terms["mass"].high - terms["mass"].low) / 2
+    assert 0.25 * terms["mass"].value < half < terms["mass"].value
+    assert terms["cog x"].low <= 0 <= terms["cog x"].high
+    assert terms["Iyy"].value is None
+    assert "too roughly to tell Iyy." in "\n".join(load_text(load))
 
 
 @pytest.mark.parametrize("name", ["two in a plane", "one that turns", "one that slides"])

@@ -36,7 +36,9 @@ def test_the_same_machine_for_every_recording_with_its_own_noise():
         assert not np.allclose(plant.parameters, PLANAR2.arm().parameters, rtol=0.01)
         q_noise = np.degrees(one.q - two.q).std() / np.sqrt(2)
         assert q_noise == pytest.approx(noise_deg, rel=0.03)  # 24000 samples: 0.5 %, and what the arm follows
-        if noise_deg == 0:
+        if noise_deg > 0:
+            assert not np.allclose(one.torque, two.torque, atol=0.1)  # the law saw each its own
+        else:
             torque_noise = (one.torque - two.torque).std() / np.sqrt(2)
             assert torque_noise == pytest.approx(torque_noise_nm, rel=0.03)
 
