@@ -144,6 +144,9 @@ def load_experiment(path: str | Path) -> Experiment:
     file = str(path)
     text = read_text(Path(path), file, "the experiment file")
     document = load(file, text)
+    if not {"recordings", "simulate"}.isdisjoint(document.data) and "laws" not in document.data:
+        expected = "an experiment (see `rigbench identify`)"
+        raise InputFaults.one(file, "", "declares an identification", expected)
     keys, faults = partial(document, ExperimentKeys)
     if keys is None:
         raise InputFaults(faults)

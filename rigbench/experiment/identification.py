@@ -96,6 +96,8 @@ def load_identification(path: str | Path) -> DeclaredIdentification:
     """Read and check an identification file, its arm file and recordings; InputFaults with every fault."""
     file, folder = str(path), Path(path).parent
     document = load(file, read_text(Path(path), file, "the identification file"))
+    if "laws" in document.data and {"recordings", "simulate"}.isdisjoint(document.data):
+        raise InputFaults.one(file, "", "declares an experiment", "an identification (see `rigbench run`)")
     keys, faults = partial(document, IdentificationKeys)
     if keys is None:
         raise InputFaults(faults)

@@ -81,8 +81,8 @@ def _tracked(done: Identification) -> list[str]:
     """One line a motion: the tool's error under computed torque, by the model that it believes."""
     words = ("declared", "identified", "itself")
     lines = [
-        "Largest tool error of computed torque on the hidden machine, its sensors exact [mm], by what the law",
-        "believes: the declared arm, the identified one, the machine itself",
+        "Largest tool error of computed torque on the hidden machine, its sensors exact [mm], by what the",
+        "law believes: the declared arm, the identified one, the machine itself",
         "",
         "  " + "".join(f"{word:>{NUMBER}}" for word in words),
     ]

@@ -207,6 +207,22 @@ def test_a_folder_that_cannot_be_is_the_disks_fault(call: Callable[..., Result],
     assert "can't be written" in result.stderr
 
 
+def test_files_of_another_kind_are_told_as_such(call: Callable[..., Result], logs: Path) -> None:
+    """One fault that says what the file is and which command takes it; empty files too."""
+    experiments = ARM.parents[2] / "experiments"
+    for command, file, said in (
+        ("identify", experiments / "first-look.yaml", "declares an experiment; expected an identification"),
+        ("check", logs / "logs.yaml", "declares an identification; expected an experiment"),
+    ):
+        result = call(command, str(file))
+        assert result.exit_code == 2
+        assert said in result.stderr
+        assert len(result.stderr.strip().splitlines()) == 1
+    (logs / "list.yaml").write_text("[simulate, laws]\n")
+    assert call("identify", str(logs / "list.yaml")).exit_code == 2
+    assert call("check", str(logs / "list.yaml")).exit_code == 2
+
+
 def test_the_schema_of_the_file(call: Callable[..., Result]) -> None:
     """`rigbench schema identify` names every key with its unit or default."""
     schema = json.loads(call("schema", "identify").stdout)
@@ -214,3 +230,38 @@ def test_the_schema_of_the_file(call: Callable[..., Result]) -> None:
         schema["properties"]
     )
     assert all("description" in part for name, part in schema["properties"].items())
+
+
+TRACKED = PRACTISE + "motions: {reach: {via_deg: [[0, 0], [40, -50]], leg_s: 0.8}}\n"
+
+
+def test_practice_tells_what_the_model_is_worth(call: Callable[..., Result], tmp_path: Path) -> None:
+    """The identified model's tool error lies near that of the machine itself, the declared one's far from it."""
+    (tmp_path / "practise.yaml").write_text(TRACKED)
+    result = call("identify", str(tmp_path / "practise.yaml"), "-o", str(tmp_path / "out"), "--json")
+    assert result.exit_code == 0, result.stderr
+    (reach,) = json.loads(result.stdout)["tool_peak"]
+    assert reach["motion"] == "reach"
+    assert reach["declared_mm"] > 5 * reach["identified_mm"]
+    assert reach["identified_mm"] < 2 * reach["exact_mm"]
+    told = call("identify", str(tmp_path / "practise.yaml"), "-o", str(tmp_path / "out")).stdout
+    assert f"{reach['declared_mm']:.3g}" in next(
+        line for line in told.splitlines() if line.endswith("  reach")
+    )
+
+
+def test_motions_that_can_not_be_tracked(call: Callable[..., Result], tmp_path: Path, logs: Path) -> None:
+    """Without a hidden machine, with a tolerance, out of reach, with a payload that the model has in it already."""
+    file = tmp_path / "practise.yaml"
+    motions = "motions: {reach: {via_deg: [[0, 0], [40, -50]], leg_s: 0.8}}\n"
+    payload = "{link_mass_percent: 20, payload: {believed_kg: 1, least_kg: 1, most_kg: 2}}"
+    for text, said in (
+        ((logs / "logs.yaml").read_text() + motions, "motions: have no effect beside recordings"),
+        (TRACKED.replace("leg_s: 0.8", "leg_s: 0.8, tolerance: {tool_peak_mm: 1}"), "is not judged"),
+        (TRACKED.replace("40, -50", "40, 900"), "motions.reach"),
+        (TRACKED.replace("{link_mass_percent: 20}", payload), "would carry it twice"),
+    ):
+        file.write_text(text.replace("a.csv", str(logs / "a.csv")).replace("b.csv", str(logs / "b.csv")))
+        result = call("identify", str(file), "-o", str(tmp_path / "out"))
+        assert result.exit_code == 2
+        assert said in result.stderr

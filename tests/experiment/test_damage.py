@@ -81,7 +81,7 @@ required_share: 0.9
 def valid_files() -> list[tuple[str, str]]:
     """Name and text: every experiment that comes with the package, with few draws, and one with every key."""
     found = [("everything", EVERYTHING.format(root=ROOT))]
-    for path in sorted((ROOT / "experiments").glob("*.yaml")):
+    for path in sorted((ROOT / "experiments").glob("[!p]*.yaml")):  # those named practise- are no experiments
         text = path.read_text("utf-8").replace("../robots_demo", f"{ROOT}/robots_demo")
         found.append((path.stem, re.sub(r"(?m)^draws: \d+", "draws: 2", text)))
     return found
@@ -139,7 +139,9 @@ def plain(node: yaml.Node) -> Any:
 
 
 def text_of(value: Any) -> str:
-    """A swept number or word, as a name shows it."""
+    """A swept number or word, as a name shows it; of a path that is too long the file's name."""
+    if isinstance(value, str) and len(value) > 32:
+        return value.rpartition("/")[2]
     return value if isinstance(value, str) else re.sub(r"\.0$", "", repr(value))
 
 

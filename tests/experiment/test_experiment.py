@@ -15,7 +15,8 @@ from rigbench.experiment import Experiment, load_experiment
 
 Load = Callable[..., Experiment]
 
-DEMOS = sorted((Path(__file__).resolve().parents[2] / "experiments").glob("*.yaml"))
+DEMOS = sorted((Path(__file__).resolve().parents[2] / "experiments").glob("[!p]*.yaml"))
+"""All but those named practise-, which are identifications."""
 
 
 @pytest.mark.parametrize("path", DEMOS, ids=lambda path: path.stem)

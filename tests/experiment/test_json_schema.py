@@ -15,7 +15,7 @@ from hypothesis import strategies as st
 from rigbench.arm.declaration import DriveDeclaration
 from rigbench.errors import InputFaults
 from rigbench.experiment import load_experiment
-from rigbench.experiment.json_schema import arm_schema, experiment_schema
+from rigbench.experiment.json_schema import arm_schema, experiment_schema, identification_schema
 from rigbench.experiment.schema import ExperimentKeys
 from rigbench.laws.options import describe_options
 from rigbench.laws.registry import registered
@@ -88,15 +88,17 @@ def test_vary_mirrors_the_file() -> None:
 
 
 def test_valid_files_follow_the_schema() -> None:
-    """Every experiment and arm that comes with the package; some slips that it catches in an editor."""
+    """Every experiment, identification and arm of the package; some slips that an editor then catches."""
     jsonschema = pytest.importorskip("jsonschema")
     of_experiment = jsonschema.Draft202012Validator(EXPERIMENT)
+    of_identification = jsonschema.Draft202012Validator(identification_schema())
     of_arm = jsonschema.Draft202012Validator(ARM)
-    for validator in (of_experiment, of_arm):
+    for validator in (of_experiment, of_identification, of_arm):
         validator.check_schema(validator.schema)
     for path in (ROOT / "experiments").glob("*.yaml"):
-        of_experiment.validate(yaml.safe_load(path.read_text("utf-8")))
-    for path in (ROOT / "robots_demo").glob("*/arm.yaml"):
+        validator = of_identification if path.name.startswith("practise-") else of_experiment
+        validator.validate(yaml.safe_load(path.read_text("utf-8")))
+    for path in (ROOT / "robots_demo").glob("*/*.yaml"):
         of_arm.validate(yaml.safe_load(path.read_text("utf-8")))
     good = yaml.safe_load((ROOT / "experiments" / "gear-and-rate.yaml").read_text("utf-8"))
     for section, slip in (
