@@ -92,9 +92,9 @@ def draw_values(
 
 
 def names_of(arm: Arm, mismatch: Mismatch, source: str) -> tuple[str, ...]:
-    """Name the parameters of a source as declared: those of :func:`parameter_names`, or identified.<sum>."""
-    if mismatch.identified is not None and source == "identified":
-        return tuple(f"identified.{name}" for name in mismatch.identified.names)
+    """Name the parameters of a declared source: as :func:`parameter_names`, or identification.<sum>."""
+    if mismatch.identification is not None and source == "identification":
+        return tuple(f"identification.{name}" for name in mismatch.identification.names)
     return parameter_names(arm, source, shared=_is_shared(mismatch, source))
 
 
@@ -115,7 +115,7 @@ def exponents_of(
     exponents = {}
     for source in active:
         u = np.array([factor(name) for name in names_of(arm, mismatch, source)])
-        if source == "identified":
+        if source == "identification":
             u = deviations(u)
         elif _is_shared(mismatch, source):
             u = np.tile(u, len(carriers(arm, source)))

@@ -145,8 +145,8 @@ def _built(arm: Arm, mismatch: Mismatch, exponents: Mapping[str, Floats], case: 
     """Build the plant from level times u of every parameter, by source, and the case."""
     if not exponents and not case.keys:
         return believed(arm, mismatch)
-    if mismatch.identified is not None and "identified" in exponents:
-        arm = known_arm(arm, mismatch.identified, exponents["identified"])
+    if mismatch.identification is not None and "identification" in exponents:
+        arm = known_arm(arm, mismatch.identification, exponents["identification"])
     with np.errstate(over="ignore", invalid="ignore"):
         changed = links(arm, mismatch, exponents, case)
         parameters = with_payload(arm, mismatch, exponents, case, changed)
@@ -175,7 +175,7 @@ def _fault(arm: Arm, mismatch: Mismatch, exponents: Mapping[str, Floats], case: 
         drawn[source] = exponent
         flaw = _flaw(_built(arm, mismatch, drawn, NOTHING))
         if flaw is not None:
-            key = "from" if source == "identified" else source
+            key = "from" if source == "identification" else source
             return InputFaults.one(arm.name, f"mismatch.{key}", flaw, "less spread or level")
     stated = NOTHING
     for key in case.keys:

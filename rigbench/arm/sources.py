@@ -50,8 +50,8 @@ class Mismatch:
     drive's torque limit (nothing where it has none); ``encoder_offset_deg`` to the sensed position [deg;
     mm for a prismatic joint]. Of the machine as a whole, plain numbers: ``delay_ms`` comes on top of the
     declared delay, which never falls below 0, ``base_tilt_deg`` on top of the declared tilt about each
-    of the base's x and y axes. ``identified`` is what an identification left unknown; other sources come on
-    top of it. ValueError for what is no spread.
+    of the base's x and y axes. ``identification`` is what one left unknown; other sources come on top of it.
+    ValueError for what is no spread.
     """
 
     link_mass_percent: Spread | None = None
@@ -67,7 +67,7 @@ class Mismatch:
     stiffness_percent: Spread | None = None
     delay_ms: float | None = None
     base_tilt_deg: float | None = None
-    identified: Knowledge | None = None
+    identification: Knowledge | None = None
 
     def __post_init__(self) -> None:
         for name in self.sources:

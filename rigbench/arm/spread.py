@@ -19,7 +19,7 @@ RESERVED = ("all", "shared")
 LINK_SOURCES = ("link_mass_percent", "link_cog_mm", "link_inertia_percent")
 """Sources whose parameters belong to links; those of others that have a spread by name, to joints."""
 
-WHOLE_SOURCES = ("payload", "delay_ms", "base_tilt_deg", "identified")
+WHOLE_SOURCES = ("payload", "delay_ms", "base_tilt_deg", "identification")
 """Sources whose parameters belong to the machine as a whole."""
 
 

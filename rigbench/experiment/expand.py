@@ -38,7 +38,7 @@ NAMES = {
     "stiffness_percent": "stiffness",
     "delay_ms": "delay",
     "base_tilt_deg": "base tilt",
-    "identified": "identification",
+    "identification": "identification",
 }
 """The sources as the columns of the matrix are headed."""
 

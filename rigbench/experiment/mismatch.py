@@ -33,11 +33,11 @@ IDLE = {
 def mismatch_of(keys: MismatchKeys, arm: Arm | None, findings: Findings, folder: Path) -> Mismatch:
     """Return the mismatch; what of it is at fault is left out. Paths are relative to ``folder``."""
     given: dict[str, Spread | Payload | Knowledge | float | None] = {"payload": _payload(keys, findings)}
-    if keys.identified is not None and arm is not None and findings.clean("mismatch", "from"):
-        given["identified"] = _identified(folder, keys.identified, arm, findings)
+    if keys.identification is not None and arm is not None and findings.clean("mismatch", "from"):
+        given["identification"] = _identification(folder, keys.identification, arm, findings)
     for source in MismatchKeys.model_fields:
         value = getattr(keys, source)
-        if source in given or value is None or source == "identified":
+        if source in given or value is None or source == "identification":
             continue
         path: KeyPath = ("mismatch", source)
         if isinstance(value, SpreadKeys):
@@ -65,7 +65,7 @@ def _payload(keys: MismatchKeys, findings: Findings) -> Payload | None:
     return None
 
 
-def _identified(folder: Path, name: str, arm: Arm, findings: Findings) -> Knowledge | None:
+def _identification(folder: Path, name: str, arm: Arm, findings: Findings) -> Knowledge | None:
     """Return what an identification left unknown; faults of its file go to ``findings``."""
     from rigbench.identify.covariance_file import read_knowledge  # slow to import
 

@@ -143,7 +143,7 @@ class MismatchKeys(Declared):
         description="tilt of the base on top of base_tilt_deg, about its x and y axes, each either way, at "
         "level 1 [deg]; typical: 0.2 (our choice)",
     )
-    identified: Annotated[str, Field(min_length=1)] | None = Field(
+    identification: Annotated[str, Field(min_length=1)] | None = Field(
         default=None,
         alias="from",
         description="the covariance file of the identified arm: at level 1 the plant departs from it as "

@@ -32,7 +32,7 @@ MOST_POINTS = 2**16
 
 UNITS = {
     "link_cog_mm": "mm", "torque_bias_percent": "% of the torque limit", "encoder_offset_deg": "deg",
-    "delay_ms": "ms", "base_tilt_deg": "deg", "identified": "times its standard deviations",
+    "delay_ms": "ms", "base_tilt_deg": "deg", "identification": "times its standard deviations",
 }  # fmt: skip
 """The units of spreads that shift; those of the other sources but the payload are factors, in %."""
 

@@ -288,5 +288,5 @@ def test_every_source_that_is_drawn_can_be_stated():
     What an identification left unknown is sums of parameters: a case states parameters, not these.
     """
     stated = set(inspect.signature(Case).parameters)
-    drawn_too = {field.name for field in dataclasses.fields(Mismatch)} - {"payload", "identified"}
+    drawn_too = {field.name for field in dataclasses.fields(Mismatch)} - {"payload", "identification"}
     assert stated == drawn_too | {"payload_kg", "payload_cog_mm"}

@@ -86,8 +86,8 @@ def test_draws_have_the_covariance(files, count):
     if files is PLANAR2:  # its drives have nothing that could be unknown, so their sums never move
         covariance = np.array(knowledge.covariance)
         assert covariance.diagonal().min() == 0
-    mismatch = Mismatch(identified=knowledge)
-    machines = [plant(arm, mismatch, 1.0, ("identified",), 3, draw) for draw in range(count)]
+    mismatch = Mismatch(identification=knowledge)
+    machines = [plant(arm, mismatch, 1.0, ("identification",), 3, draw) for draw in range(count)]
     assert all(possible(machine.parameters) for machine in machines)
     covariance = np.array(knowledge.covariance)
     moving = covariance.diagonal() > 0
@@ -103,9 +103,9 @@ def test_draws_have_the_covariance(files, count):
 def test_level_scales_the_departure():
     """Half the level, half the departure of the sums, where it is small."""
     arm, knowledge = RUBBING.arm(), knowledge_of(RUBBING, 0.002)
-    mismatch = Mismatch(identified=knowledge)
+    mismatch = Mismatch(identification=knowledge)
     off = [
-        sums_of(knowledge, plant(arm, mismatch, level, ("identified",), 3, 5)) - sums_of(knowledge, arm)
+        sums_of(knowledge, plant(arm, mismatch, level, ("identification",), 3, 5)) - sums_of(knowledge, arm)
         for level in (0.5, 1.0)
     ]
     assert np.allclose(2 * off[0], off[1], rtol=0.02, atol=1e-6 * np.abs(off[1]).max())
@@ -115,9 +115,9 @@ def test_level_scales_the_departure():
 def test_what_is_hardly_known_still_can_exist(share):
     """Sums drawn far beyond what any body has: each machine can exist, no friction or rotor below 0."""
     arm = RUBBING.arm()
-    mismatch = Mismatch(identified=knowledge_of(RUBBING, share))
+    mismatch = Mismatch(identification=knowledge_of(RUBBING, share))
     for draw in range(20):
-        machine = plant(arm, mismatch, 1.0, ("identified",), 1, draw)
+        machine = plant(arm, mismatch, 1.0, ("identification",), 1, draw)
         assert possible(machine.parameters)
         for name in ("viscous", "coulomb", "static", "rotor_inertia"):
             assert (getattr(machine.drives, name) >= 0).all()
@@ -126,9 +126,9 @@ def test_what_is_hardly_known_still_can_exist(share):
 def test_other_sources_come_on_top():
     """A link's mass scales what the identification left, and nothing else changes with it."""
     arm = RUBBING.arm()
-    mismatch = Mismatch(identified=knowledge_of(RUBBING, 0.05), link_mass_percent=50)
-    alone = plant(arm, mismatch, 1.0, ("identified",), 1, 2)
-    both = plant(arm, mismatch, 1.0, ("identified", "link_mass_percent"), 1, 2)
+    mismatch = Mismatch(identification=knowledge_of(RUBBING, 0.05), link_mass_percent=50)
+    alone = plant(arm, mismatch, 1.0, ("identification",), 1, 2)
+    both = plant(arm, mismatch, 1.0, ("identification", "link_mass_percent"), 1, 2)
     factor = both.parameters[:, :1] / alone.parameters[:, :1]
     assert np.abs(np.log(factor)).max() > 0.01
     assert np.allclose(both.parameters, factor * alone.parameters, rtol=1e-12)
@@ -138,12 +138,12 @@ def test_other_sources_come_on_top():
 def test_directions_take_the_place_of_a_draw():
     """u of each sum, stated: 0 is the arm, the same u as a draw's is that draw's machine."""
     arm = RUBBING.arm()
-    mismatch = Mismatch(identified=knowledge_of(RUBBING, 0.05))
-    u = draw_values(arm, mismatch, ("identified",), 1, 2)
-    assert set(u) == {f"identified.{name}" for name in mismatch.identified.names}
-    stated = plant(arm, mismatch, 1.0, ("identified",), 9, None, directions=u)
-    assert np.array_equal(stated.parameters, plant(arm, mismatch, 1.0, ("identified",), 1, 2).parameters)
-    still = plant(arm, mismatch, 1.0, ("identified",), 9, None, directions=dict.fromkeys(u, 0.0))
+    mismatch = Mismatch(identification=knowledge_of(RUBBING, 0.05))
+    u = draw_values(arm, mismatch, ("identification",), 1, 2)
+    assert set(u) == {f"identification.{name}" for name in mismatch.identification.names}
+    stated = plant(arm, mismatch, 1.0, ("identification",), 9, None, directions=u)
+    assert np.array_equal(stated.parameters, plant(arm, mismatch, 1.0, ("identification",), 1, 2).parameters)
+    still = plant(arm, mismatch, 1.0, ("identification",), 9, None, directions=dict.fromkeys(u, 0.0))
     assert np.allclose(still.parameters, arm.parameters, rtol=1e-9, atol=1e-12)
 
 
@@ -157,7 +157,7 @@ def run_of(mismatch: Mismatch) -> Run:
 def test_a_run_knows_it_by_its_numbers():
     """Another covariance is another key; the same one read twice is the same; kept and pickled it is itself."""
     run, same, other = (
-        run_of(Mismatch(identified=knowledge_of(RUBBING, share))) for share in (0.1, 0.1, 0.2)
+        run_of(Mismatch(identification=knowledge_of(RUBBING, share))) for share in (0.1, 0.1, 0.2)
     )
     assert run.key() == same.key() != other.key()
     assert pickle.loads(pickle.dumps(run)) == run
@@ -172,8 +172,8 @@ BITS = """
 import sys; sys.path.insert(0, {folder!r})
 import hashlib, test_knowledge as t
 files = t.ArmFiles.read(t.ROBOTS / "tray6" / "arm.yaml")
-mismatch = t.Mismatch(identified=t.knowledge_of(files, 0.03))
-machines = [t.plant(files.arm(), mismatch, 2.0, ("identified",), 1, draw) for draw in range(4)]
+mismatch = t.Mismatch(identification=t.knowledge_of(files, 0.03))
+machines = [t.plant(files.arm(), mismatch, 2.0, ("identification",), 1, draw) for draw in range(4)]
 print(hashlib.blake2b(b"".join(m.parameters.tobytes() for m in machines)).hexdigest())
 """
 

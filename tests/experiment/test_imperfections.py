@@ -243,7 +243,7 @@ def test_each_source_has_a_column_and_a_draw(load: Load) -> None:
 def test_every_source_has_a_name_and_a_key_of_a_case() -> None:
     """The schema's sources are the columns' heads, and each but what was identified can be stated."""
     assert list(MismatchKeys.model_fields) == list(NAMES)
-    assert {"payload", "identified", *CaseKeys.model_fields} >= set(NAMES)
+    assert {"payload", "identification", *CaseKeys.model_fields} >= set(NAMES)
     assert len(set(NAMES.values())) == len(NAMES)
 
 

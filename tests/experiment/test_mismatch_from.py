@@ -46,9 +46,9 @@ def test_it_is_a_source_like_others(load: Load) -> None:
     assert [one.column.name for one in sheet.conditions] == [
         "nominal", "coulomb", "identification", "all at 0.5", "all at 1",
     ]  # fmt: skip
-    assert [one.sources for one in sheet.conditions][2] == ("identified",)
+    assert [one.sources for one in sheet.conditions][2] == ("identification",)
     entry = next(entry for entry in experiment.plan().entries if entry.condition == "identification")
-    assert "identified.coulomb.j2" in entry.run.factors()
+    assert "identification.coulomb.j2" in entry.run.factors()
     machine, arm = entry.run.plant(), entry.run.arm.arm()
     assert not np.allclose(machine.drives.viscous, arm.drives.viscous, rtol=1e-3)
 
