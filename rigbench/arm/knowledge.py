@@ -15,6 +15,7 @@ from functools import lru_cache
 import numpy as np
 
 from rigbench.arm.arm import Arm, Floats
+from rigbench.arm.bounded_fit import bounded_fit
 from rigbench.arm.log_cholesky import Coordinates
 from rigbench.arm.vector import LINK, vector_of, with_vector
 from rigbench.arm.whitening import floored, whitening
@@ -23,9 +24,6 @@ __all__ = ["FARTHEST", "Knowledge", "deviations", "known_arm"]
 
 FARTHEST = 4.0
 """Standard deviations that a draw departs at most, in each direction; one in 16,000 would go beyond."""
-
-NIL = 1e-12
-"""How far below 0 the solver may start from a drive's term that is 0."""
 
 Row = tuple[float, ...]
 
@@ -77,8 +75,6 @@ def known_arm(arm: Arm, knowledge: Knowledge, departure: Floats) -> Arm:
 
 @lru_cache(maxsize=64)  # laws and motions share the machines of a draw
 def _known_arm(arm: Arm, knowledge: Knowledge, departure: Row) -> Arm:
-    from scipy.optimize import least_squares  # slow to import
-
     origin, scales = vector_of(arm, knowledge.terms), np.array(knowledge.scales)
     about, combination = Coordinates(origin, arm.n, scales), np.array(knowledge.combination)
     covariance = floored(np.array(knowledge.covariance), np.abs(combination) @ np.abs(origin))
@@ -95,9 +91,7 @@ def _known_arm(arm: Arm, knowledge: Knowledge, departure: Row) -> Arm:
 
     links = LINK * arm.n
     least = np.full(len(origin), -np.inf)
-    least[links:] = np.minimum(-origin[links:] / scales, -NIL)
-    start = np.zeros(len(origin))
-    found = least_squares(misfit, start, slope, bounds=(least, np.inf), xtol=1e-9, ftol=1e-9)
-    values = about.values(found.x)
+    least[links:] = -origin[links:] / scales
+    values = about.values(bounded_fit(misfit, slope, least, 1e-9))
     values[links:] = np.maximum(values[links:], 0.0)
     return with_vector(arm, values, knowledge.terms)

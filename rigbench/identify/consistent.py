@@ -6,9 +6,9 @@ from dataclasses import dataclass
 
 import numpy as np
 import scipy.linalg
-from scipy.optimize import least_squares
 
 from rigbench.arm.arm import Arm, Floats
+from rigbench.arm.bounded_fit import bounded_fit
 from rigbench.arm.log_cholesky import Coordinates
 from rigbench.arm.vector import LINK, with_vector
 from rigbench.arm.whitening import floored, whitening
@@ -21,9 +21,8 @@ SPREAD = 0.3
 """Default spread of the declared values in log-Cholesky coordinates: a mass is believed to 60 %, a
 friction to 30 % (our choice: wide beside what excitation shows, narrow beside nothing)."""
 
-LEAST_SCALE, NIL = 1e-9, 1e-12
-"""Scale of a drive's term that is nowhere seen, and how far below 0 the solver may start from one at 0."""
-
+LEAST_SCALE = 1e-9
+"""Scale of a drive's term that is nowhere seen."""
 
 MOST_STEPS = 200
 """Steps of the fit at most. Where torques without noise show a body that is a point, which is at the end of
@@ -85,14 +84,10 @@ def consistent(
     drive_terms = [name for name in terms.names if name != "offset"]
     end = links + arm.n * len(drive_terms)
     least = np.full(len(declared), -np.inf)
-    least[links:end] = np.minimum(-declared[links:end] / scales[: end - links], -NIL)
-    start = np.zeros(len(declared))
-    solved = least_squares(
-        misfit, start, slope, bounds=(least, np.inf), xtol=1e-12, ftol=1e-12, max_nfev=MOST_STEPS
-    )
-    values = about.values(solved.x)
+    least[links:end] = -declared[links:end] / scales[: end - links]
+    values = about.values(bounded_fit(misfit, slope, least, 1e-12, MOST_STEPS))
     values[links:end] = np.maximum(values[links:end], 0.0)
-    seen = whitened(combination @ Coordinates(values, links // LINK, scales).slope(start))
+    seen = whitened(combination @ Coordinates(values, links // LINK, scales).slope(np.zeros(len(values))))
     kept = np.delete(np.arange(len(values)), np.s_[own:links])
     return Consistent(
         arm=with_vector(arm, values[kept], drive_terms),
