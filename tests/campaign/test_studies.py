@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import os
 import signal
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from functools import partial
 from pathlib import Path
@@ -33,6 +33,9 @@ class Growing:
     act: str = "finish"
     name: str = "growing"
     most_runs: int = 6
+
+    def examples(self) -> Sequence[tuple[int, Iterable[Entry]]]:
+        return [(self.most_runs, [self.entry("a"), self.entry("b")])]
 
     def declared(self) -> Mapping[str, Any]:
         return {"rounds": 3}

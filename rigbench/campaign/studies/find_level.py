@@ -89,6 +89,17 @@ class FindLevel:
             counts[-1] += 1
         return max(counts) + (sum(rung.random for rung in one.rungs) if self.rungs_missing else 0)
 
+    def examples(self) -> Sequence[tuple[int, Iterable[Entry]]]:
+        """See :class:`rigbench.campaign.study.Study`: all draws, level by level of the finest grid."""
+        runs = (
+            entry
+            for part in range(2**self.steps, 0, -1)
+            for draw in range(self.draws)
+            for one in self.searching
+            for entry in self._at(_Path(one, draw), part * self.finest)
+        )
+        return [(self.most_runs, runs)]
+
     def declared(self) -> Mapping[str, Any]:
         """See :class:`rigbench.campaign.study.Study`."""
         return {"most": self.most, "steps": self.steps, "draws": self.draws}

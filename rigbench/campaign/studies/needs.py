@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator, Mapping, Sequence
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
 from functools import cached_property
 from typing import TYPE_CHECKING, Any
@@ -47,6 +47,17 @@ class NeedsStudy:
         """How many runs it takes at most: all of the design, and searches in which every draw is in doubt."""
         return self.design.share_runs + self.design.most_search_runs
 
+    def examples(self) -> Sequence[tuple[int, Iterable[Entry]]]:
+        """See :class:`rigbench.campaign.study.Study`: the design; all draws at a rung, at the next ..."""
+        searched = (
+            entry
+            for rung in range(len(LADDER))
+            for draw in range(self.design.draws)
+            for search in self._searches()
+            for entry in self._probe(search, (draw, rung))
+        )
+        return [(self.design.share_runs, self._points), (self.design.most_search_runs, searched)]
+
     def declared(self) -> Mapping[str, Any]:
         """Return the design, from which the rows of the runs can be read."""
         return self.design.declared()
@@ -54,11 +65,7 @@ class NeedsStudy:
     def rounds(self, known: Known) -> Sequence[Sequence[Entry]]:
         """Return the design, then what all searches ask for next, again and again."""
         found: list[Sequence[Entry]] = [self._points]
-        searches = [
-            _Search(subject, group, {})
-            for subject in self.design.subjects
-            for group in (None, *subject.groups)
-        ]
+        searches = list(self._searches())
         while all(known(entry) is not None for entry in found[-1]):
             asked = []
             for search in searches:
@@ -72,6 +79,11 @@ class NeedsStudy:
                 if len(rows) == len(entries):
                     search.known.setdefault(draw, {})[rung] = keeps(rows, self.tolerance)
         return found
+
+    def _searches(self) -> Iterator[_Search]:
+        for subject in self.design.subjects:
+            for group in (None, *subject.groups):
+                yield _Search(subject, group, {})
 
     @cached_property
     def _made(self) -> dict[tuple[Any, ...], tuple[Entry, ...]]:

@@ -6,10 +6,12 @@ It comes before the matrix, whose runs then have the gains that were found. See 
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Iterable, Iterator, Mapping, Sequence
 from dataclasses import asdict, dataclass, field, replace
 from functools import partial
 from typing import TYPE_CHECKING, Any
+
+import numpy as np
 
 from rigbench.campaign.plan import Entry
 from rigbench.campaign.studies.asking import Ask, in_step, replayed
@@ -126,6 +128,17 @@ class Tune:
     def most_runs(self) -> int:
         """How many runs it takes at most."""
         return len(self.subjects) * self.runs
+
+    def examples(self) -> Sequence[tuple[int, Iterable[Entry]]]:
+        """See :class:`rigbench.campaign.study.Study`: trials of gains anywhere within their bounds."""
+        return [(self.most_runs, self._anywhere())]
+
+    def _anywhere(self) -> Iterator[Entry]:
+        rng = np.random.default_rng(self.seed)
+        low, high = [gain.low for gain in self.gains], [gain.high for gain in self.gains]
+        while True:
+            for subject in self.subjects:
+                yield from self._trial(subject, tuple(rng.uniform(low, high).tolist()))
 
     def declared(self) -> Mapping[str, Any]:
         """See :class:`rigbench.campaign.study.Study`."""

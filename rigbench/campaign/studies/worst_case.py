@@ -5,7 +5,7 @@ What it finds is a machine that was run, so it shows that a law misses; that it 
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from functools import partial
 from itertools import groupby
@@ -71,6 +71,18 @@ class WorstCase:
     def most_runs(self) -> int:
         """How many runs it takes at most."""
         return len(self.subjects) * self.runs
+
+    def examples(self) -> Sequence[tuple[int, Iterable[Entry]]]:
+        """See :class:`rigbench.campaign.study.Study`: machines anywhere in the box."""
+        return [(self.most_runs, self._anywhere())]
+
+    def _anywhere(self) -> Iterator[Entry]:
+        rng = np.random.default_rng(self.seed)
+        while True:
+            for subject in self.subjects:
+                direction = tuple(rng.uniform(-1.0, 1.0, len(subject.parameters)).round(4).tolist())
+                for motion in subject.runs:
+                    yield self._entry(subject, motion, self.levels[-1], direction)
 
     def declared(self) -> Mapping[str, Any]:
         """See :class:`rigbench.campaign.study.Study`."""
