@@ -15,10 +15,11 @@ from rigbench.campaign.plan import Plan
 from rigbench.campaign.settling import to_do
 from rigbench.campaign.store import Store
 from rigbench.cli.estimate import Estimate, estimate_of
+from rigbench.cli.loading import loaded
 from rigbench.cli.output import print_json, show, tell_notes
 from rigbench.cli.spans import duration_words, size_words
 from rigbench.errors import Fault, StoreError, counted
-from rigbench.experiment import Experiment, load_experiment, store_path
+from rigbench.experiment import Experiment, store_path
 from rigbench.scores.anytime import draws_to_settle
 from rigbench.scores.intervals import draws_needed, misses_allowed
 
@@ -41,7 +42,7 @@ class Stored:
 
 def check_experiment(file: str, as_json: bool) -> None:
     """Print the plan of an experiment that is in order."""
-    experiment = load_experiment(file)
+    experiment = loaded(file)
     path = store_path(file)
     experiment = _with_gains(experiment, path)
     plan = experiment.plan()

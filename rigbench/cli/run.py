@@ -21,13 +21,14 @@ from rigbench.campaign.store import Store
 from rigbench.campaign.studies.tune import Tune
 from rigbench.cli.fresh import make_room
 from rigbench.cli.gains import gains_notes
+from rigbench.cli.loading import loaded
 from rigbench.cli.output import interrupts_alike, print_json, say, show, tell_notes
 from rigbench.cli.progress import OnProgress, progress_shown, tell_stopping
 from rigbench.cli.spans import duration_words
 from rigbench.cli.stored import CAUTION, picture_path, status_text
 from rigbench.cli.wishes import Wishes, part_of
 from rigbench.errors import ClusterLost, Stopped, counted, listed
-from rigbench.experiment import load_experiment, store_path
+from rigbench.experiment import store_path
 from rigbench.report.json_form import results_json
 from rigbench.report.matrix import matrix_picture
 from rigbench.scores.results import Results
@@ -43,7 +44,7 @@ def run_experiment(file: str, wishes: Wishes, as_json: bool) -> None:
     """
     began = time.monotonic(), time.time()
     with interrupts_alike():
-        experiment = load_experiment(file)
+        experiment = loaded(file)
         part = part_of(experiment, wishes, began)
         tell_notes(experiment.notes)
         plan = experiment.plan(wishes.store)
