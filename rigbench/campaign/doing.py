@@ -21,14 +21,21 @@ __all__ = ["Doing", "Draws", "Studying", "record_known"]
 
 
 class Doing:
-    """Does runs until told to stop, by the given ``executor`` or else by ``jobs`` workers.
+    """Does runs until told to stop, by the given ``executor`` or else by ``jobs`` workers within ``limit_s``.
 
     Use it in a ``with``. The workers stand by from one list of runs to the next; a longer one may bring more.
     """
 
-    def __init__(self, store: Store, stop: Stop, jobs: int | None, executor: Executor | None) -> None:
+    def __init__(
+        self,
+        store: Store,
+        stop: Stop,
+        jobs: int | None,
+        executor: Executor | None,
+        limit_s: float | None = None,
+    ) -> None:
         self.stop = stop
-        self._store, self._jobs, self._executor = store, jobs, executor
+        self._store, self._jobs, self._executor, self._limit_s = store, jobs, executor, limit_s
         self._draws = Draws()
         self._standing: Standing | None = None
         self._crew = ExitStack()
@@ -62,7 +69,7 @@ class Doing:
 
     def _workers(self, runs: int) -> Executor:
         """Return the crew that stands by if it is large enough for so many runs, else a larger one."""
-        wanted = executor_for(self._jobs, runs)
+        wanted = executor_for(self._jobs, runs, self._limit_s)
         if isinstance(wanted, InProcess):
             return wanted
         if self._standing is None or self._standing.how.jobs < wanted.jobs:

@@ -48,6 +48,7 @@ __all__ = [
     "Work",
     "cause_of_death",
     "executor_for",
+    "given_up_after",
     "time_limit_s",
 ]
 
@@ -73,14 +74,16 @@ class Executor(Protocol):
         ...
 
 
-def executor_for(jobs: int | None, runs: int) -> InProcess | Processes:
+def executor_for(jobs: int | None, runs: int, limit_s: float | None = None) -> InProcess | Processes:
     """Return an executor for so many runs: ``jobs`` worker processes, None for one a core, 0 for none.
 
-    There are never more workers than runs; without workers the runs are done in this process.
+    There are never more workers than runs; without workers the runs are done in this process. With workers a
+    run is given up after ``limit_s``, see :func:`given_up_after`.
     """
     if jobs == 0 or runs == 0:
         return InProcess()
-    return Processes(min(runs, usable_cores() if jobs is None else jobs))
+    workers = min(runs, usable_cores() if jobs is None else jobs)
+    return Processes(workers, limit_s=given_up_after(limit_s))
 
 
 def time_limit_s(run: Run) -> float:
@@ -90,6 +93,11 @@ def time_limit_s(run: Run) -> float:
     a law that solves an optimisation at each tick has its time, a law that hangs costs minutes.
     """
     return LEAST_LIMIT_S + TICK_LIMIT_S * run.motion.duration_s * run.rates.control_hz
+
+
+def given_up_after(limit_s: float | None) -> Callable[[Run], float]:
+    """Return what tells when a run is given up: after so long [s], whichever it is; None: time_limit_s."""
+    return time_limit_s if limit_s is None else lambda _: limit_s
 
 
 @dataclass(frozen=True)

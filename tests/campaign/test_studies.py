@@ -141,7 +141,7 @@ def test_workers_stand_by_between_rounds(
     folder = tmp_path / "began"
     folder.mkdir()
     monkeypatch.setattr(
-        "rigbench.campaign.doing.executor_for", lambda jobs, runs: Processes(min(runs, 2), doing.work)
+        "rigbench.campaign.doing.executor_for", lambda jobs, runs, _: Processes(min(runs, 2), doing.work)
     )
     plan = make_plan(draws=1)
     entries = [replace(e, run=replace(e.run, folder=str(folder))) for e in plan.entries]
