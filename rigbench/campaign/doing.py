@@ -4,9 +4,9 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Sequence
 from contextlib import ExitStack, closing
-from types import TracebackType
 
 from rigbench.arm.mismatch import draw_values
+from rigbench.campaign.closable import Closable
 from rigbench.campaign.executor import Executor, InProcess, Standing, executor_for
 from rigbench.campaign.plan import Entry
 from rigbench.campaign.progress import Progress
@@ -20,7 +20,7 @@ from rigbench.scores.row import MACHINE_OUTCOMES, Row
 __all__ = ["Doing", "Draws", "Studying", "record_known"]
 
 
-class Doing:
+class Doing(Closable):
     """Does runs until told to stop, by the given ``executor`` or else by ``jobs`` workers within ``limit_s``.
 
     Use it in a ``with``. The workers stand by from one list of runs to the next; a longer one may bring more.
@@ -40,12 +40,8 @@ class Doing:
         self._standing: Standing | None = None
         self._crew = ExitStack()
 
-    def __enter__(self) -> Doing:
-        return self
-
-    def __exit__(
-        self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
-    ) -> None:
+    def close(self) -> None:
+        """End what does the runs."""
         self._crew.close()
 
     def outcomes(

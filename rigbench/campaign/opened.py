@@ -5,12 +5,12 @@ from __future__ import annotations
 from collections.abc import Callable, Mapping
 from dataclasses import fields
 from pathlib import Path
-from types import TracebackType
-from typing import TYPE_CHECKING, Any, Self
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import NDArray
 
+from rigbench.campaign.closable import Closable
 from rigbench.campaign.columns import NUMBER, WHOLE, Columns, TableColumn
 from rigbench.campaign.reading import Reader
 from rigbench.errors import Fault, InputFaults, nearest
@@ -37,7 +37,7 @@ def open_store(path: str | Path) -> OpenedStore:
     return OpenedStore(Reader.open_for_reading(path))
 
 
-class OpenedStore:
+class OpenedStore(Closable):
     """What is stored of a campaign. Use it in a ``with``, or close it. Nothing is written to the file."""
 
     def __init__(self, reader: Reader) -> None:
@@ -124,14 +124,6 @@ class OpenedStore:
     def close(self) -> None:
         """Close the file."""
         self._reader.close()
-
-    def __enter__(self) -> Self:
-        return self
-
-    def __exit__(
-        self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
-    ) -> None:
-        self.close()
 
     def _check(self, names: tuple[str, ...], known: list[str]) -> None:
         faults = [

@@ -8,10 +8,10 @@ import sqlite3
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from pathlib import Path
-from types import TracebackType
-from typing import TYPE_CHECKING, Self
+from typing import TYPE_CHECKING
 
 from rigbench.campaign.blocks import SIZE, Block, blocks, layouts, stored_scores
+from rigbench.campaign.closable import Closable
 from rigbench.campaign.connection import connect, owner, speaking_plainly
 from rigbench.campaign.counts import IN_PLAY, Counts, counts_of, ends_of
 from rigbench.campaign.kept import Kept, NotKept, restored
@@ -52,7 +52,7 @@ class Record:
     wall_s: float | None
 
 
-class Reader:
+class Reader(Closable):
     """An open store, to be read. Use it in a ``with``."""
 
     def __init__(self, path: Path, connection: sqlite3.Connection) -> None:
@@ -76,14 +76,6 @@ class Reader:
     def close(self) -> None:
         """Close the file."""
         self._connection.close()
-
-    def __enter__(self) -> Self:
-        return self
-
-    def __exit__(
-        self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
-    ) -> None:
-        self.close()
 
     @contextlib.contextmanager
     def one_moment(self) -> Iterator[None]:

@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Any
 
 from rigbench.arm.draws import draw_values
 from rigbench.campaign.plan import Entry
+from rigbench.campaign.studies.asking import MakesOnce
 from rigbench.campaign.study import Known
 from rigbench.scores.limit_search import LADDER, next_probes
 from rigbench.scores.needs_design import TOGETHER, A, B, Group, NeedsDesign, Subject, alone, swapped
@@ -26,7 +27,7 @@ Probe = tuple[int, int]
 
 
 @dataclass(frozen=True)
-class NeedsStudy:
+class NeedsStudy(MakesOnce):
     """First all runs of a pick-freeze design, then searches on a ladder of levels, all side by side.
 
     The design's runs stand under the number of their row in place of a draw, at the design's level, in
@@ -86,11 +87,6 @@ class NeedsStudy:
                 yield _Search(subject, group, {})
 
     @cached_property
-    def _made(self) -> dict[tuple[Any, ...], tuple[Entry, ...]]:
-        """The runs of the searches so far, so that their keys are worked out once."""
-        return {}
-
-    @cached_property
     def _points(self) -> tuple[Entry, ...]:
         """The runs of the design: row by row, and within a row law by law."""
         pages = [list(self._pages(subject)) for subject in self.design.subjects]
@@ -114,16 +110,15 @@ class NeedsStudy:
             yield swapped(group), _rows(points.parameters, page)
 
     def _probe(self, search: _Search, probe: Probe) -> tuple[Entry, ...]:
-        """Return the runs of one draw at one rung, made once."""
-        mark = (search.subject.sheet, search.subject.law, search.group and search.group.name, probe)
-        if mark not in self._made:
-            draw, rung = probe
-            subject, group = search.subject, search.group
-            level = self.design.level * LADDER[rung]
-            condition = TOGETHER if group is None else alone(group.name)
-            change = _as_it_is if group is None else _alone(group)
-            self._made[mark] = tuple(self._entries(subject, condition, level, draw, change))
-        return self._made[mark]
+        """Return the runs of one draw at one rung."""
+        (draw, rung), subject, group = probe, search.subject, search.group
+        condition = TOGETHER if group is None else alone(group.name)
+        change = _as_it_is if group is None else _alone(group)
+        level = self.design.level * LADDER[rung]
+        return self._once(
+            (subject.sheet, subject.law, condition, probe),
+            lambda: tuple(self._entries(subject, condition, level, draw, change)),
+        )
 
     def _entries(
         self, subject: Subject, condition: str, level: float, draw: int, change: Callable[[Run], Run]
