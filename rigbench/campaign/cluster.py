@@ -19,8 +19,9 @@ the scheduler goes away                ClusterLost at once; what came back is st
 from __future__ import annotations
 
 import time
-from collections.abc import Callable, Generator, Iterable
+from collections.abc import Callable, Generator, Iterable, Iterator
 from concurrent.futures import Future, wait
+from contextlib import contextmanager
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
@@ -108,6 +109,12 @@ class Cluster:
     patience_s: float = 300.0
 
     def run_all(self, entries: Iterable[Entry]) -> Generator[Outcome]:
-        """See :class:`rigbench.campaign.executor.Executor`. ClusterLost if scheduler or workers go away."""
+        """See :class:`rigbench.campaign.executor.Standing`. ClusterLost if scheduler or workers go away."""
+        with self.standing() as shift:
+            yield from shift.run_all(entries)
+
+    @contextmanager
+    def standing(self) -> Iterator[Shift]:
+        """See :class:`rigbench.campaign.executor.Executor`: the link stays, and so do the crews."""
         with Link(self.address) as link:
-            yield from Shift(self, link, iter(entries)).outcomes()
+            yield Shift(self, link)

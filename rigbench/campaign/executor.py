@@ -26,7 +26,7 @@ import traceback
 from collections import deque
 from collections.abc import Callable, Generator, Iterable, Iterator
 from concurrent.futures import FIRST_COMPLETED, Future, wait
-from contextlib import contextmanager
+from contextlib import AbstractContextManager, contextmanager, nullcontext
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Protocol
 
@@ -62,8 +62,8 @@ TICK_LIMIT_S = 0.05
 """A run's limit: so long, and so much for each control tick."""
 
 
-class Executor(Protocol):
-    """Whoever can do runs."""
+class Standing(Protocol):
+    """Whoever can do runs, and stands by for more."""
 
     def run_all(self, entries: Iterable[Entry]) -> Generator[Outcome]:
         """Do the entries' runs and yield an outcome for each, under its key, in the order they end.
@@ -71,6 +71,14 @@ class Executor(Protocol):
         Entries are drawn only as they can be done, so when ``entries`` ends early, what is in hand is
         finished and no more. Closing the iterator drops what is in hand at once.
         """
+        ...
+
+
+class Executor(Standing, Protocol):
+    """Whoever can do runs: one list of them, or with those who stand by for one after the other."""
+
+    def standing(self) -> AbstractContextManager[Standing]:
+        """Return a context that yields whoever does list after list, and ends them."""
         ...
 
 
@@ -107,13 +115,17 @@ class InProcess:
     work: Work = do
 
     def run_all(self, entries: Iterable[Entry]) -> Generator[Outcome]:
-        """See :class:`Executor`."""
+        """See :class:`Standing`."""
         for entry in entries:
             try:
                 outcome = self.work(entry.run)
             except Exception as error:
                 outcome = failed(entry.key, "crashed", summary(error), traceback.format_exc())
             yield checked(entry, outcome)
+
+    def standing(self) -> AbstractContextManager[InProcess]:
+        """See :class:`Executor`."""
+        return nullcontext(self)
 
 
 @dataclass(eq=False)
@@ -135,26 +147,26 @@ class Processes:
     limit_s: Callable[[Run], float] = field(default=time_limit_s)
 
     def run_all(self, entries: Iterable[Entry]) -> Generator[Outcome]:
-        """See :class:`Executor`. RigbenchError if worker processes can't be had."""
+        """See :class:`Standing`. RigbenchError if worker processes can't be had."""
         with self.standing() as crew:
             yield from crew.run_all(entries)
 
     @contextmanager
-    def standing(self) -> Iterator[Standing]:
-        """Yield an executor that does list after list by one crew, which ends with the context."""
+    def standing(self) -> Iterator[StandingCrew]:
+        """See :class:`Executor`."""
         with _told(), Crew(self.jobs) as crew:
-            yield Standing(self, crew)
+            yield StandingCrew(self, crew)
 
 
 @dataclass(frozen=True, eq=False)
-class Standing:
+class StandingCrew:
     """Does lists of runs, one after the other, by a crew that is there already."""
 
     how: Processes
     crew: Crew
 
     def run_all(self, entries: Iterable[Entry]) -> Generator[Outcome]:
-        """See :class:`Executor`; what is in hand when the iterator is closed is dropped with the crew."""
+        """See :class:`Standing`; what is in hand when the iterator is closed is dropped with the crew."""
         with _told():
             yield from _Shift(self.how, self.crew, iter(entries)).outcomes()
 

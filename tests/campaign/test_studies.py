@@ -134,8 +134,9 @@ def test_a_run_that_comes_to_nothing_is_known_to_its_study(
             assert len(told) == 4
 
 
+@pytest.mark.parametrize("given", [False, True])
 def test_workers_stand_by_between_rounds(
-    tmp_path: Path, doing: ModuleType, make_plan: PlanMaker, monkeypatch: pytest.MonkeyPatch
+    tmp_path: Path, doing: ModuleType, make_plan: PlanMaker, monkeypatch: pytest.MonkeyPatch, given: bool
 ) -> None:
     """Two workers do the matrix and all rounds of the study: starting new ones would cost as much as runs."""
     folder = tmp_path / "began"
@@ -148,7 +149,7 @@ def test_workers_stand_by_between_rounds(
     study = Growing(partial(doing.FakeRun, folder=str(folder)))
     plan = replace(plan, entries=tuple(entries), studies=(study,))
     with Store.open_for_writing(tmp_path / "s.sqlite", plan) as store:
-        run_campaign(plan, store)
+        run_campaign(plan, store, executor=Processes(2, doing.work) if given else None)
     pids = [path.read_text() for path in folder.iterdir()]
     assert len(pids) == len(plan.entries) + 6
     assert len(set(pids)) <= 2
