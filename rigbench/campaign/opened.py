@@ -43,20 +43,22 @@ class OpenedStore(Closable):
     def __init__(self, reader: Reader) -> None:
         self._reader = reader
 
-    def columns(self) -> tuple[TableColumn, ...]:
+    def columns(self, studies: bool = False) -> tuple[TableColumn, ...]:
         """Return the columns of :meth:`runs`, each with its name, kind, unit and meaning."""
         with self._reader.one_moment():
-            return Columns(self._reader).all
+            return Columns(self._reader, studies).all
 
-    def runs(self, *names: str) -> Mapping[str, NDArray[Any]]:
+    def runs(self, *names: str, studies: bool = False) -> Mapping[str, NDArray[Any]]:
         """Return the stored runs as columns by name, (R,) each, in the order of the plan.
 
-        All columns, or those of ``names`` alone. Text is an array of str objects; numbers are float64, NaN
+        All columns, or those of ``names`` alone. With ``studies`` their runs follow those of the matrix, and
+        the column study says which is which: they were chosen by how others came out, so no share or median
+        of theirs is that of a cell. Text is an array of str objects; numbers are float64, NaN
         where there is none, inf where it is infinite; ``draw`` is int64, -1 where nothing is random.
         InputFaults, all at once, if there are no columns of these names.
         """
         with self._reader.one_moment():
-            columns = Columns(self._reader)
+            columns = Columns(self._reader, studies)
             kinds = {column.name: column.kind for column in columns.all}
             self._check(names, list(kinds))
             wanted = tuple(dict.fromkeys(names)) or tuple(kinds)
@@ -70,12 +72,12 @@ class OpenedStore(Closable):
             for name in wanted
         }
 
-    def frame(self, *names: str) -> pandas.DataFrame:
+    def frame(self, *names: str, studies: bool = False) -> pandas.DataFrame:
         """Return what :meth:`runs` does as a pandas DataFrame; ``draw`` is missing where nothing is random.
 
         InputFaults if pandas is not installed.
         """
-        frame = self._framed("frame()", "runs()", lambda: self.runs(*names))
+        frame = self._framed("frame()", "runs()", lambda: self.runs(*names, studies=studies))
         if "draw" in frame:
             frame["draw"] = frame["draw"].astype("Int64").mask(frame["draw"] == NO_DRAW)
         return frame

@@ -20,6 +20,7 @@ from rigbench.campaign.owner import Owner
 from rigbench.campaign.places import Place, places_of
 from rigbench.campaign.plan import Entry, Plan
 from rigbench.campaign.studied import Studied, stored_studies
+from rigbench.campaign.study_runs import StudyRuns
 from rigbench.campaign.tabling import tabled
 from rigbench.campaign.work import Host
 from rigbench.errors import StoreError
@@ -332,6 +333,10 @@ class Reader(Closable):
         """Yield the stored runs of the plan as columns, a block at a time; see :func:`blocks`."""
         with speaking_plainly(self.path):
             yield from blocks(self._connection, names, more, size)
+
+    def study_runs(self) -> StudyRuns:
+        """Return the runs of all studies, to be read as columns."""
+        return StudyRuns(self.path, self._connection)
 
     def rows(self) -> list[Row]:
         """Return the rows of the planned runs that are stored, in the order of the plan."""

@@ -8,10 +8,12 @@ from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
+import pandas
 import pytest
 import yaml
 from typer.testing import Result
 
+import rigbench
 from rigbench.campaign.executor import InProcess
 from rigbench.campaign.plan import Entry
 from rigbench.campaign.store import Store
@@ -153,6 +155,49 @@ def test_check_says_how_large_the_store_with_studies_will_be(
     assert after["estimate"]["seconds"] == 0
     assert after["estimate"]["store_bytes"] == pytest.approx(size, rel=0.2)
     assert before["estimate"]["store_bytes"] > 0.8 * size
+
+
+@pytest.mark.parametrize(("more", "name"), [(WORST, "worst_case"), (TUNE, "tune"), (NEEDS, "needs")])
+def test_the_runs_of_studies_are_exported_beside_the_matrix(
+    trial: Path, trial_text: str, call: Call, run_here: Call, more: str, name: str
+) -> None:
+    """Every one, as it is stored, with the u that its own machine has; the matrix's rows stay as they are."""
+    trial.write_text(trial_text + more)
+    assert run_here("trial.yaml").exit_code == 0
+    for options in (
+        ["-o", "plain.parquet"],
+        ["-o", "all.parquet", "--studies"],
+        ["-o", "all.csv", "--studies"],
+    ):
+        assert call("export", STORE, *options).exit_code == 0
+    plain, whole = (pandas.read_parquet(f"{file}.parquet") for file in ("plain", "all"))
+    assert whole.columns[0] == "study"
+    assert "study" not in plain
+    for names in (pandas.read_csv("all-columns.csv").name, pandas.read_csv("all.csv").columns):
+        assert list(names) == list(whole)
+    pandas.testing.assert_frame_equal(whole[whole.study == ""][list(plain)], plain)
+    own = whole[whole.study == name]
+    assert len(own) == len(whole) - len(plain)
+    with Store.open_for_reading(STORE) as store:
+        study = store.study(name)
+        assert study is not None
+        runs = {record.key: store.kept(record.key).run for record in study.records}
+    assert list(own.key) == [record.key for record in study.records]
+    parameters = [column for column in whole if column.startswith("draw.")]
+    for (_, row), record in zip(own.iterrows(), study.records, strict=True):
+        assert (row.law, row.condition, row.level) == (record.row.law, record.row.condition, record.row.level)
+        assert row.tool_peak_mm == record.row.scores["tool_peak_mm"]
+        drawn = {
+            column.removeprefix("draw."): row[column] for column in parameters if not np.isnan(row[column])
+        }
+        assert drawn == runs[record.key].factors()
+    with rigbench.open_store(STORE) as opened:
+        columns = opened.runs("study", "key", studies=True)
+        assert list(columns["key"]) == list(whole.key)
+        assert list(columns["study"]) == list(whole.study)
+        assert set(opened.runs("key")["key"]) == set(plain.key)
+        assert [column.name for column in opened.columns(studies=True)] == list(whole)
+        assert list(opened.frame("study", studies=True).study) == list(whole.study)
 
 
 def test_gains_outside_the_limits_are_not_taken(
