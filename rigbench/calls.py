@@ -62,6 +62,7 @@ def run(
     jobs: int | None = None,
     draws: int | None = None,
     seconds: float | None = None,
+    limit_s: float | None = None,
     again: Sequence[str] = (),
     on_progress: Callable[[Progress], None] | None = None,
 ) -> Results:
@@ -69,11 +70,11 @@ def run(
 
     As ``rigbench run``: ``store`` is results/<the file's stem>.sqlite in the current folder by default;
     ``jobs`` worker processes (None: one a core; 0: none, and no limits on time and memory); the first
-    ``draws`` of every cell alone; ``seconds`` after which no run is begun; laws to be run ``again``. A
-    signal or the end of the time raises Stopped, with all that was done stored. InputFaults for what can't
-    be had of this.
+    ``draws`` of every cell alone; ``seconds`` after which no run is begun; ``limit_s`` after which a run is
+    given up (None: 60 s and 50 ms for each control tick); laws to be run ``again``. A signal or the end of
+    the time raises Stopped, with all that was done stored. InputFaults for what can't be had of this.
     """
-    if faults := list(_wrong(experiment, jobs, draws, again)):
+    if faults := list(_wrong(experiment, jobs, draws, limit_s, again)):
         raise InputFaults(faults)
     path = store_path(experiment.path, store)
     part = Part(draws, None if seconds is None else time.monotonic() + seconds)
@@ -84,14 +85,18 @@ def run(
             opened.studies_anew(law)
         if experiment.tune is not None:
             if experiment.tune.found(opened.row_of) is None:
-                run_first(plan, opened, jobs, on_progress, part=part)
+                run_first(plan, opened, jobs, on_progress, part=part, limit_s=limit_s)
             plan = experiment.with_stored_gains(opened).plan(named)
-        run_campaign(plan, opened, jobs, on_progress, again=again, part=part)
+        run_campaign(plan, opened, jobs, on_progress, again=again, part=part, limit_s=limit_s)
         return opened.results()
 
 
 def _wrong(
-    experiment: Experiment, jobs: int | None, draws: int | None, again: Sequence[str]
+    experiment: Experiment,
+    jobs: int | None,
+    draws: int | None,
+    limit_s: float | None,
+    again: Sequence[str],
 ) -> Iterator[Fault]:
     """Yield what of the wishes for a run can't be had."""
     file, laws = experiment.path, tuple(experiment.laws)
@@ -104,6 +109,11 @@ def _wrong(
         yield Fault(file, None, "draws", f"{draws} are wished for", most)
     if jobs is not None and jobs < 0:
         yield Fault(file, None, "jobs", f"{jobs} are wished for", "0 or more")
+    if limit_s is not None and not limit_s > 0:
+        yield Fault(file, None, "limit_s", f"{limit_s:g} s are wished for", "more than 0 s")
+    if limit_s is not None and jobs == 0:
+        problem = "is kept by worker processes, and jobs=0 does without them"
+        yield Fault(file, None, "limit_s", problem, "one of the two")
 
 
 def draw_matrix(

@@ -132,12 +132,15 @@ def test_wishes_that_can_not_be_had_come_all_at_once(campaign, tmp_path):
     """As the command tells them, before anything is run; a matrix of what is not there is none."""
     experiment, _, results = campaign
     with pytest.raises(InputFaults) as caught:
-        rigbench.run(experiment, tmp_path / "none.sqlite", jobs=-1, draws=5, again=["pdd"])
+        rigbench.run(experiment, tmp_path / "none.sqlite", jobs=-1, draws=5, limit_s=0, again=["pdd"])
     assert [(fault.key, fault.near) for fault in caught.value.faults] == [
         ("again", "pd"),
         ("draws", None),
         ("jobs", None),
+        ("limit_s", None),
     ]
+    with pytest.raises(InputFaults, match="limit_s: is kept by worker processes"):
+        rigbench.run(experiment, tmp_path / "none.sqlite", jobs=0, limit_s=60)
     assert not list(tmp_path.iterdir())
     for wrong in ({"show": "meen"}, {"show": "p95", "score": "tool_peek_mm"}):
         with pytest.raises(InputFaults, match="did you mean"):

@@ -15,7 +15,7 @@ from rigbench.campaign.packing import VALUE, Layout
 from rigbench.scores.names import in_display_order
 from rigbench.scores.run_table import NO_DRAW
 
-__all__ = ["SIZE", "Block", "blocks", "layouts", "stored_scores"]
+__all__ = ["SIZE", "Block", "block_of", "blocks", "layouts", "stored_scores"]
 
 SIZE = 2048
 """Rows read at once: about a megabyte, which is faster than more."""
@@ -23,7 +23,7 @@ SIZE = 2048
 
 @dataclass(frozen=True, eq=False)
 class Block:
-    """B stored runs, in the order of the plan, with S scores; ``more`` holds further columns by name."""
+    """B stored runs, in their order, with S scores; ``more`` holds further columns by name."""
 
     place: NDArray[np.int64]  # (B,), numbers of the store's places
     draw: NDArray[np.int64]  # (B,), NO_DRAW where nothing is random
@@ -66,13 +66,28 @@ def blocks(
     )
     while rows := query.fetchmany(size):
         place, draw, outcome, layout, scores, *others = zip(*rows, strict=True)
-        yield Block(
-            np.array(place, dtype=np.int64),
-            np.array(draw, dtype=np.int64),
-            outcome,
-            _unpacked(np.array(layout, dtype=np.int64), scores, known, names),
-            dict(zip(more, others, strict=True)),
-        )
+        found = dict(zip(more, others, strict=True))
+        yield block_of(known, names, place, draw, outcome, layout, scores, found)
+
+
+def block_of(
+    known: dict[int, Layout],
+    names: Sequence[str],
+    place: Sequence[int],
+    draw: Sequence[int],
+    outcome: tuple[str, ...],
+    layout: Sequence[int],
+    scores: Sequence[bytes],
+    more: dict[str, tuple[Any, ...]],
+) -> Block:
+    """Return a block of columns as the store has them; of the scores those of ``names``."""
+    return Block(
+        np.array(place, dtype=np.int64),
+        np.array(draw, dtype=np.int64),
+        outcome,
+        _unpacked(np.array(layout, dtype=np.int64), scores, known, names),
+        more,
+    )
 
 
 def _unpacked(

@@ -31,12 +31,14 @@ def run_campaign(
     again: Sequence[str] = (),
     part: Part = ALL,
     executor: Executor | None = None,
+    limit_s: float | None = None,
     on_stop: Callable[[], None] = lambda: None,
 ) -> Counts:
     """Do every run of the plan's ``part`` that the store does not hold; return how far the plan is then.
 
-    ``jobs`` worker processes (None: one a core; 0: in this process) or the given ``executor``; ``again``
-    names laws to be run anew, see :meth:`Store.run_anew`. An outcome is stored as it comes, in a
+    ``jobs`` worker processes (None: one a core; 0: in this process) or the given ``executor``; workers give a
+    run up after ``limit_s`` [s], see :func:`given_up_after`; ``again`` names laws to be run anew, see
+    :meth:`Store.run_anew`. An outcome is stored as it comes, in a
     transaction of its own. ``on_progress`` is called at the start and after each.
 
     Where the plan is to stop early, a column's runs are no longer begun once it is settled; what is in hand
@@ -68,7 +70,7 @@ def run_campaign(
     tracker.settle(settling)
     report = on_progress or (lambda _: None)
     studying: list[Studying] = []
-    with stop_signals(part.ends, on_stop) as stop, Doing(store, stop, jobs, executor) as doing:
+    with stop_signals(part.ends, on_stop) as stop, Doing(store, stop, jobs, executor, limit_s) as doing:
         report(tracker.progress())
         for outcome in _matrix(doing, missing, settling):
             if settling.count(outcome):
@@ -101,6 +103,7 @@ def run_first(
     *,
     part: Part = ALL,
     executor: Executor | None = None,
+    limit_s: float | None = None,
     on_stop: Callable[[], None] = lambda: None,
 ) -> None:
     """Do the study on which the plan's entries depend, whole, and none of these; the rest as in run_campaign.
@@ -110,7 +113,7 @@ def run_first(
     if plan.first is None:
         return
     store.record_plan(plan)
-    with stop_signals(part.ends, on_stop) as stop, Doing(store, stop, jobs, executor) as doing:
+    with stop_signals(part.ends, on_stop) as stop, Doing(store, stop, jobs, executor, limit_s) as doing:
         studying = Studying(plan.first, store, doing)
         studying.go(on_progress or (lambda _: None))
     if stop.why:  # if only just finished too: the plan's own runs are to follow

@@ -19,15 +19,16 @@ the scheduler goes away                ClusterLost at once; what came back is st
 from __future__ import annotations
 
 import time
-from collections.abc import Callable, Generator, Iterable
+from collections.abc import Callable, Generator, Iterable, Iterator
 from concurrent.futures import Future, wait
+from contextlib import contextmanager
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING
 
 from rigbench.campaign.alike import Plugins, differences, host_for, plugins_of
 from rigbench.campaign.cluster_link import Link
 from rigbench.campaign.cluster_shift import Shift, host_or_problem
-from rigbench.campaign.executor import Work, time_limit_s
+from rigbench.campaign.executor import Work, given_up_after, time_limit_s
 from rigbench.campaign.plan import Entry
 from rigbench.campaign.work import Host, Outcome, do
 from rigbench.errors import Fault, InputFaults
@@ -45,12 +46,16 @@ ANSWER_S = 60.0
 
 
 def cluster_executor(
-    address: str, entries: Iterable[Entry], tell: Callable[[str], None] = lambda _: None
+    address: str,
+    entries: Iterable[Entry],
+    tell: Callable[[str], None] = lambda _: None,
+    limit_s: float | None = None,
 ) -> Cluster:
     """Return an executor on the cluster of a dask scheduler at ``tcp://HOST:PORT``, for these entries.
 
     Every worker that is there is compared with this machine first. ``tell`` takes notes, now and while the
-    campaign runs: another type of CPU, a worker that joins, is lost or is refused. InputFaults if the
+    campaign runs: another type of CPU, a worker that joins, is lost or is refused. ``limit_s``: see
+    :func:`given_up_after`. InputFaults if the
     address is none, if dask is missing or no scheduler answers, if there is no worker, and with every
     difference of versions that decides bits.
     """
@@ -66,7 +71,7 @@ def cluster_executor(
     faults += differences(host_for(plugins), known)
     if faults:
         raise InputFaults(faults)
-    return Cluster(address, plugins, tell=tell)
+    return Cluster(address, plugins, limit_s=given_up_after(limit_s), tell=tell)
 
 
 def _asked(link: Link, plugins: Plugins) -> dict[str, Host | str]:
@@ -104,6 +109,12 @@ class Cluster:
     patience_s: float = 300.0
 
     def run_all(self, entries: Iterable[Entry]) -> Generator[Outcome]:
-        """See :class:`rigbench.campaign.executor.Executor`. ClusterLost if scheduler or workers go away."""
+        """See :class:`rigbench.campaign.executor.Standing`. ClusterLost if scheduler or workers go away."""
+        with self.standing() as shift:
+            yield from shift.run_all(entries)
+
+    @contextmanager
+    def standing(self) -> Iterator[Shift]:
+        """See :class:`rigbench.campaign.executor.Executor`: the link stays, and so do the crews."""
         with Link(self.address) as link:
-            yield from Shift(self, link, iter(entries)).outcomes()
+            yield Shift(self, link)

@@ -12,11 +12,11 @@ import logging
 import socket
 from collections.abc import Callable, Coroutine, Iterator, Mapping
 from concurrent.futures import Future
-from types import TracebackType
 from typing import Any, TypeVar
 from urllib.parse import urlsplit
 
 from rigbench.campaign.alike import Plugins, host_for
+from rigbench.campaign.closable import Closable
 from rigbench.campaign.cluster_worker import Reply, do_chunk, open_hand, stop_hand
 from rigbench.campaign.work import Host
 from rigbench.errors import ClusterLost, InputFaults
@@ -52,7 +52,7 @@ def check_address(address: str) -> None:
         raise InputFaults.one("--cluster", "", f"{address!r} is no address of a scheduler", expected)
 
 
-class Link:
+class Link(Closable):
     """A connection to a scheduler; use it in a ``with``.
 
     ``sizes`` maps the address of each worker to its number of threads, as of half a second ago. InputFaults
@@ -70,12 +70,8 @@ class Link:
         self.sizes: Mapping[str, int] = {}
         self._watching = self._start(self._watch())
 
-    def __enter__(self) -> Link:
-        return self
-
-    def __exit__(
-        self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
-    ) -> None:
+    def close(self) -> None:
+        """End the crews that were opened, and the connection."""
         self._watching.cancel()
         with contextlib.suppress(Exception):  # there is nobody left to tidy up for
             self._start(self._close()).result(2 * CLOSE_S)

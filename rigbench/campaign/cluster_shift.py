@@ -1,11 +1,11 @@
-"""What the workers of a cluster do, until all is done: chunks given out, taken back, and done again."""
+"""What the workers of a cluster do, list after list: chunks given out, taken back, and done again."""
 
 from __future__ import annotations
 
 import pickle
 import time
 from collections import deque
-from collections.abc import Iterator
+from collections.abc import Generator, Iterable, Iterator
 from concurrent.futures import CancelledError, Future
 from dataclasses import dataclass, field
 from functools import partial
@@ -88,23 +88,30 @@ class _Worker:
 
 
 class Shift:
-    """Gives a source's runs to whoever is at the other end of the link, and takes back what they came to."""
+    """Gives runs to whoever is at the other end of the link, and takes back what they came to.
 
-    def __init__(self, how: Cluster, link: Link, source: Iterator[Entry]) -> None:
-        self._how, self._link, self._source = how, link, source
+    From one list to the next it knows its workers, who keep their crews, and how long a run takes.
+    """
+
+    def __init__(self, how: Cluster, link: Link) -> None:
+        self._how, self._link = how, link
         self._here = host_for(how.plugins)
         self._cpus = {self._here.cpu}
         self._asked: dict[str, Future[Host]] = {}
         self._refused: set[str] = set()
         self._workers: dict[str, _Worker] = {}
+        self._run_s, self._size = CHUNK_S, 1
+        self._begin(())
+
+    def _begin(self, entries: Iterable[Entry]) -> None:
+        self._source, self._exhausted = iter(entries), False
         self._again: deque[_Task] = deque()
         self._ended: SimpleQueue[_Chunk] = SimpleQueue()
-        self._run_s, self._size = CHUNK_S, 1
-        self._exhausted = False
         self._seen_anybody = time.monotonic()
 
-    def outcomes(self) -> Iterator[Outcome]:
-        """Yield outcomes until nothing is left to do; ClusterLost if there is nobody to do it."""
+    def run_all(self, entries: Iterable[Entry]) -> Generator[Outcome]:
+        """See :class:`rigbench.campaign.executor.Standing`. ClusterLost if there is nobody to do them."""
+        self._begin(entries)
         try:
             while True:
                 yield from self._look_who_is_there()
@@ -122,6 +129,7 @@ class Shift:
             for worker in self._workers.values():
                 for chunk in worker.chunks:
                     chunk.future.cancel()
+                worker.chunks.clear()
 
     def _look_who_is_there(self) -> Iterator[Outcome]:
         there = self._link.sizes
@@ -166,8 +174,9 @@ class Shift:
     def _lost(self, worker: _Worker) -> Iterator[Outcome]:
         """Have done again what a lost worker had in hand."""
         chunks = self._given_up(worker)
-        runs = counted(sum(len(chunk.tasks) for chunk in chunks), "run")
-        self._how.tell(f"note: worker {worker.address} is lost; {runs} in its hands are done again")
+        runs = sum(len(chunk.tasks) for chunk in chunks)
+        hands = f"; {counted(runs, 'run')} in its hands are done again" if runs else ""
+        self._how.tell(f"note: worker {worker.address} is lost{hands}")
         for chunk in chunks:
             yield from self._suspected(chunk)
 

@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from rigbench.campaign.blocks import Block
 from rigbench.campaign.places import Place
 from rigbench.campaign.reading import Reader
-from rigbench.scores.names import score_info
+from rigbench.scores.names import in_display_order, score_info
 
 __all__ = ["NUMBER", "TEXT", "WHOLE", "Columns", "TableColumn", "Values"]
 
@@ -32,6 +32,13 @@ class TableColumn:
     meaning: str
 
 
+STUDY = TableColumn(
+    "study",
+    TEXT,
+    "",
+    "study that the run is of, such as worst_case; empty for a run of the matrix. A run of several has a row "
+    "in each. Under the conditions 'shares ...' of needs, draw is the number of a row of its design",
+)
 PLACE = (
     TableColumn("sheet", TEXT, "", "sheet of the sweep; empty where nothing is swept"),
     TableColumn("law", TEXT, "", "name of the law, as the experiment has it"),
@@ -74,7 +81,7 @@ def _score(name: str) -> TableColumn:
 
 
 def _draw(parameter: str) -> TableColumn:
-    meaning = f"the draw's factor u of {parameter}, in [-1, 1); empty where it did not act"
+    meaning = f"the factor u of {parameter}, drawn in [-1, 1) or set by a study; empty where it did not act"
     return TableColumn(f"draw.{parameter}", NUMBER, "", meaning)
 
 
@@ -85,16 +92,25 @@ def _version(package: str) -> TableColumn:
 class Columns:
     """The columns of a reader's stored runs. Make and use it within one moment of the reader.
 
-    In this order: sheet, law, motion, condition, level, draw, outcome, reason, key; every score;
+    With ``studies`` the runs of the studies come as well, after those of the plan, and a first column, study.
+    The others in this order: sheet, law, motion, condition, level, draw, outcome, reason, key; every score;
     residual_rad_s; draw.<parameter>; wall_s; cpu; version.<package>.
     """
 
-    def __init__(self, reader: Reader) -> None:
-        self._reader = reader
+    def __init__(self, reader: Reader, studies: bool = False) -> None:
+        self._reader, self._studies = reader, reader.study_runs() if studies else None
         self._places, self._hosts = reader.places(), reader.hosts()
         self._scores = reader.scores()
         values = reader.draw_values()
-        self._parameters = tuple(sorted({name for own in values.values() for name in own}))
+        parameters = {name for own in values.values() for name in own}
+        self._study_places: Mapping[int, Place] = {}
+        if self._studies is not None:
+            self._study_places = self._studies.places(max(self._places, default=-1) + 1)
+            self._places = self._places | self._study_places
+            self._hosts = self._hosts | self._studies.hosts()
+            self._scores = in_display_order([*self._scores, *self._studies.scores()])
+            parameters |= set(self._studies.parameters())
+        self._parameters = tuple(sorted(parameters))
         column = {name: k for k, name in enumerate(self._parameters)}
         self._drawn = np.array(sorted(values), dtype=np.int64)
         self._u = np.full((len(values) + 1, len(column)), np.nan)  # the last row is of no draw
@@ -105,6 +121,7 @@ class Columns:
             dict.fromkeys(name for host in self._hosts.values() for name, _ in host.versions)
         )
         self.all: tuple[TableColumn, ...] = (
+            *([STUDY] if studies else []),
             *PLACE,
             *OUTCOME,
             *map(_score, self._scores),
@@ -125,6 +142,10 @@ class Columns:
         makers = {name: self._maker(name, scores) for name in wanted}
         for block in self._reader.blocks(scores, more, size):
             yield {name: make(block) for name, make in makers.items()}
+        if self._studies is not None:
+            more += ["directions"] if any(name.startswith("draw.") for name in wanted) else []
+            for block in self._studies.blocks(self._study_places, scores, more, size):
+                yield {name: make(block) for name, make in makers.items()}
 
     def _maker(self, name: str, scores: Sequence[str]) -> Callable[[Block], Values]:  # noqa: PLR0911 - one a kind
         """Return what makes the column of a name out of a block."""
@@ -132,6 +153,8 @@ class Columns:
             return _looked_up(
                 self._places, lambda place: getattr(place, name), NUMBER if name == "level" else TEXT
             )
+        if name == "study":
+            return lambda block: _texts(block.more.get("study", ("",) * len(block)))
         if name == "draw":
             return lambda block: block.draw
         if name == "outcome":
@@ -159,7 +182,11 @@ class Columns:
         def make(block: Block) -> Values:
             row = np.searchsorted(self._drawn, block.draw)
             known = np.append(self._drawn, -2)[row] == block.draw
-            return np.where(acts(block) > 0.0, u[np.where(known, row, -1)], np.nan)
+            values = u[np.where(known, row, -1)]
+            for k, directions in enumerate(block.more.get("directions", ())):
+                if directions is not None:
+                    values[k] = directions.get(parameter, np.nan)
+            return np.where(acts(block) > 0.0, values, np.nan)
 
         return make
 

@@ -4,10 +4,10 @@ from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Sequence
 from contextlib import ExitStack, closing
-from types import TracebackType
 
 from rigbench.arm.mismatch import draw_values
-from rigbench.campaign.executor import Executor, InProcess, Standing, executor_for
+from rigbench.campaign.closable import Closable
+from rigbench.campaign.executor import Executor, Processes, Standing, executor_for
 from rigbench.campaign.plan import Entry
 from rigbench.campaign.progress import Progress
 from rigbench.campaign.reading import SETTLED
@@ -20,25 +20,30 @@ from rigbench.scores.row import MACHINE_OUTCOMES, Row
 __all__ = ["Doing", "Draws", "Studying", "record_known"]
 
 
-class Doing:
-    """Does runs until told to stop, by the given ``executor`` or else by ``jobs`` workers.
+class Doing(Closable):
+    """Does runs until told to stop, by the given ``executor`` or else by ``jobs`` workers within ``limit_s``.
 
-    Use it in a ``with``. The workers stand by from one list of runs to the next; a longer one may bring more.
+    Use it in a ``with``. Who does them stands by from one list of runs to the next; a longer one may bring
+    more workers.
     """
 
-    def __init__(self, store: Store, stop: Stop, jobs: int | None, executor: Executor | None) -> None:
+    def __init__(
+        self,
+        store: Store,
+        stop: Stop,
+        jobs: int | None,
+        executor: Executor | None,
+        limit_s: float | None = None,
+    ) -> None:
         self.stop = stop
-        self._store, self._jobs, self._executor = store, jobs, executor
+        self._store, self._jobs, self._executor, self._limit_s = store, jobs, executor, limit_s
         self._draws = Draws()
         self._standing: Standing | None = None
+        self._workers = 0
         self._crew = ExitStack()
 
-    def __enter__(self) -> Doing:
-        return self
-
-    def __exit__(
-        self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
-    ) -> None:
+    def close(self) -> None:
+        """End what does the runs."""
         self._crew.close()
 
     def outcomes(
@@ -50,8 +55,9 @@ class Doing:
         """
         by_key = {entry.key: entry for entry in entries}
         try:
-            executor = self._executor or self._workers(len(entries))
-            with closing(executor.run_all(filter(wanted, self.stop.until(entries)))) as outcomes:
+            with closing(
+                self._whoever_does(len(entries)).run_all(filter(wanted, self.stop.until(entries)))
+            ) as outcomes:
                 for outcome in outcomes:
                     if self.stop.at_once:  # a law may have swallowed the interrupt: its run is dropped too
                         break
@@ -60,14 +66,13 @@ class Doing:
         except KeyboardInterrupt:
             self.stop.asked = True
 
-    def _workers(self, runs: int) -> Executor:
-        """Return the crew that stands by if it is large enough for so many runs, else a larger one."""
-        wanted = executor_for(self._jobs, runs)
-        if isinstance(wanted, InProcess):
-            return wanted
-        if self._standing is None or self._standing.how.jobs < wanted.jobs:
+    def _whoever_does(self, runs: int) -> Standing:
+        """Return who stands by, if there are workers enough for so many runs, else more of them."""
+        wanted = self._executor or executor_for(self._jobs, runs, self._limit_s)
+        workers = wanted.jobs if isinstance(wanted, Processes) else 0
+        if self._standing is None or self._workers < workers:
             self._crew.close()
-            self._standing = self._crew.enter_context(wanted.standing())
+            self._standing, self._workers = self._crew.enter_context(wanted.standing()), workers
         return self._standing
 
 

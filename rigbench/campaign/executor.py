@@ -26,7 +26,7 @@ import traceback
 from collections import deque
 from collections.abc import Callable, Generator, Iterable, Iterator
 from concurrent.futures import FIRST_COMPLETED, Future, wait
-from contextlib import contextmanager
+from contextlib import AbstractContextManager, contextmanager, nullcontext
 from dataclasses import dataclass, field
 from typing import TYPE_CHECKING, Protocol
 
@@ -48,6 +48,7 @@ __all__ = [
     "Work",
     "cause_of_death",
     "executor_for",
+    "given_up_after",
     "time_limit_s",
 ]
 
@@ -61,8 +62,8 @@ TICK_LIMIT_S = 0.05
 """A run's limit: so long, and so much for each control tick."""
 
 
-class Executor(Protocol):
-    """Whoever can do runs."""
+class Standing(Protocol):
+    """Whoever can do runs, and stands by for more."""
 
     def run_all(self, entries: Iterable[Entry]) -> Generator[Outcome]:
         """Do the entries' runs and yield an outcome for each, under its key, in the order they end.
@@ -73,14 +74,24 @@ class Executor(Protocol):
         ...
 
 
-def executor_for(jobs: int | None, runs: int) -> InProcess | Processes:
+class Executor(Standing, Protocol):
+    """Whoever can do runs: one list of them, or with those who stand by for one after the other."""
+
+    def standing(self) -> AbstractContextManager[Standing]:
+        """Return a context that yields whoever does list after list, and ends them."""
+        ...
+
+
+def executor_for(jobs: int | None, runs: int, limit_s: float | None = None) -> InProcess | Processes:
     """Return an executor for so many runs: ``jobs`` worker processes, None for one a core, 0 for none.
 
-    There are never more workers than runs; without workers the runs are done in this process.
+    There are never more workers than runs; without workers the runs are done in this process. With workers a
+    run is given up after ``limit_s``, see :func:`given_up_after`.
     """
     if jobs == 0 or runs == 0:
         return InProcess()
-    return Processes(min(runs, usable_cores() if jobs is None else jobs))
+    workers = min(runs, usable_cores() if jobs is None else jobs)
+    return Processes(workers, limit_s=given_up_after(limit_s))
 
 
 def time_limit_s(run: Run) -> float:
@@ -92,6 +103,11 @@ def time_limit_s(run: Run) -> float:
     return LEAST_LIMIT_S + TICK_LIMIT_S * run.motion.duration_s * run.rates.control_hz
 
 
+def given_up_after(limit_s: float | None) -> Callable[[Run], float]:
+    """Return what tells when a run is given up: after so long [s], whichever it is; None: time_limit_s."""
+    return time_limit_s if limit_s is None else lambda _: limit_s
+
+
 @dataclass(frozen=True)
 class InProcess:
     """Does the runs here, one by one, without limits of time or memory; if the engine dies, so does all."""
@@ -99,13 +115,17 @@ class InProcess:
     work: Work = do
 
     def run_all(self, entries: Iterable[Entry]) -> Generator[Outcome]:
-        """See :class:`Executor`."""
+        """See :class:`Standing`."""
         for entry in entries:
             try:
                 outcome = self.work(entry.run)
             except Exception as error:
                 outcome = failed(entry.key, "crashed", summary(error), traceback.format_exc())
             yield checked(entry, outcome)
+
+    def standing(self) -> AbstractContextManager[InProcess]:
+        """See :class:`Executor`."""
+        return nullcontext(self)
 
 
 @dataclass(eq=False)
@@ -127,26 +147,26 @@ class Processes:
     limit_s: Callable[[Run], float] = field(default=time_limit_s)
 
     def run_all(self, entries: Iterable[Entry]) -> Generator[Outcome]:
-        """See :class:`Executor`. RigbenchError if worker processes can't be had."""
+        """See :class:`Standing`. RigbenchError if worker processes can't be had."""
         with self.standing() as crew:
             yield from crew.run_all(entries)
 
     @contextmanager
-    def standing(self) -> Iterator[Standing]:
-        """Yield an executor that does list after list by one crew, which ends with the context."""
+    def standing(self) -> Iterator[StandingCrew]:
+        """See :class:`Executor`."""
         with _told(), Crew(self.jobs) as crew:
-            yield Standing(self, crew)
+            yield StandingCrew(self, crew)
 
 
 @dataclass(frozen=True, eq=False)
-class Standing:
+class StandingCrew:
     """Does lists of runs, one after the other, by a crew that is there already."""
 
     how: Processes
     crew: Crew
 
     def run_all(self, entries: Iterable[Entry]) -> Generator[Outcome]:
-        """See :class:`Executor`; what is in hand when the iterator is closed is dropped with the crew."""
+        """See :class:`Standing`; what is in hand when the iterator is closed is dropped with the crew."""
         with _told():
             yield from _Shift(self.how, self.crew, iter(entries)).outcomes()
 

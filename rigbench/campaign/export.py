@@ -23,16 +23,16 @@ GROUP = 2**15
 """Rows of a row group of Parquet: what is in memory at once."""
 
 
-def export_csv(store: Reader, stream: TextIO) -> int:
+def export_csv(store: Reader, stream: TextIO, studies: bool = False) -> int:
     """Write the stored runs as CSV in the order of the plan, and return how many there are.
 
-    The columns are those of :class:`Columns`. Infinite is 'inf', what there is not is empty, and numbers read
-    back as exactly what they were.
+    With ``studies`` their runs follow. The columns are those of :class:`Columns`. Infinite is 'inf', what
+    there is not is empty, and numbers read back as exactly what they were.
     """
     out = csv.writer(stream, lineterminator="\n")
     written = 0
     with store.one_moment():
-        columns = Columns(store)
+        columns = Columns(store, studies)
         out.writerow([column.name for column in columns.all])
         for block in columns.blocks(size=SIZE):
             lists = [_plain(column, block[column.name]) for column in columns.all]
@@ -41,12 +41,12 @@ def export_csv(store: Reader, stream: TextIO) -> int:
     return written
 
 
-def export_columns(store: Reader, stream: TextIO) -> None:
+def export_columns(store: Reader, stream: TextIO, studies: bool = False) -> None:
     """Write the name, unit and meaning of each column of the table as CSV."""
     out = csv.writer(stream, lineterminator="\n")
     out.writerow(["name", "unit", "meaning"])
     with store.one_moment():
-        out.writerows([column.name, column.unit, column.meaning] for column in Columns(store).all)
+        out.writerows([column.name, column.unit, column.meaning] for column in Columns(store, studies).all)
 
 
 def check_parquet(file: str) -> None:
@@ -60,7 +60,7 @@ def check_parquet(file: str) -> None:
         ) from None
 
 
-def export_parquet(store: Reader, stream: BinaryIO) -> int:
+def export_parquet(store: Reader, stream: BinaryIO, studies: bool = False) -> int:
     """Write the stored runs as Parquet in the order of the plan, and return how many there are.
 
     As :func:`export_csv`, but what there is not is null. The metadata of a field have its unit and meaning.
@@ -71,7 +71,7 @@ def export_parquet(store: Reader, stream: BinaryIO) -> int:
 
     written = 0
     with store.one_moment():
-        columns = Columns(store)
+        columns = Columns(store, studies)
         schema = pyarrow.schema([_field(pyarrow, column) for column in columns.all])
         with ParquetWriter(stream, schema) as out:
             for block in columns.blocks(size=GROUP):

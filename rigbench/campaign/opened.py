@@ -5,12 +5,12 @@ from __future__ import annotations
 from collections.abc import Callable, Mapping
 from dataclasses import fields
 from pathlib import Path
-from types import TracebackType
-from typing import TYPE_CHECKING, Any, Self
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import NDArray
 
+from rigbench.campaign.closable import Closable
 from rigbench.campaign.columns import NUMBER, WHOLE, Columns, TableColumn
 from rigbench.campaign.reading import Reader
 from rigbench.errors import Fault, InputFaults, nearest
@@ -37,26 +37,28 @@ def open_store(path: str | Path) -> OpenedStore:
     return OpenedStore(Reader.open_for_reading(path))
 
 
-class OpenedStore:
+class OpenedStore(Closable):
     """What is stored of a campaign. Use it in a ``with``, or close it. Nothing is written to the file."""
 
     def __init__(self, reader: Reader) -> None:
         self._reader = reader
 
-    def columns(self) -> tuple[TableColumn, ...]:
+    def columns(self, studies: bool = False) -> tuple[TableColumn, ...]:
         """Return the columns of :meth:`runs`, each with its name, kind, unit and meaning."""
         with self._reader.one_moment():
-            return Columns(self._reader).all
+            return Columns(self._reader, studies).all
 
-    def runs(self, *names: str) -> Mapping[str, NDArray[Any]]:
+    def runs(self, *names: str, studies: bool = False) -> Mapping[str, NDArray[Any]]:
         """Return the stored runs as columns by name, (R,) each, in the order of the plan.
 
-        All columns, or those of ``names`` alone. Text is an array of str objects; numbers are float64, NaN
+        All columns, or those of ``names`` alone. With ``studies`` their runs follow those of the matrix, and
+        the column study says which is which: they were chosen by how others came out, so no share or median
+        of theirs is that of a cell. Text is an array of str objects; numbers are float64, NaN
         where there is none, inf where it is infinite; ``draw`` is int64, -1 where nothing is random.
         InputFaults, all at once, if there are no columns of these names.
         """
         with self._reader.one_moment():
-            columns = Columns(self._reader)
+            columns = Columns(self._reader, studies)
             kinds = {column.name: column.kind for column in columns.all}
             self._check(names, list(kinds))
             wanted = tuple(dict.fromkeys(names)) or tuple(kinds)
@@ -70,12 +72,12 @@ class OpenedStore:
             for name in wanted
         }
 
-    def frame(self, *names: str) -> pandas.DataFrame:
+    def frame(self, *names: str, studies: bool = False) -> pandas.DataFrame:
         """Return what :meth:`runs` does as a pandas DataFrame; ``draw`` is missing where nothing is random.
 
         InputFaults if pandas is not installed.
         """
-        frame = self._framed("frame()", "runs()", lambda: self.runs(*names))
+        frame = self._framed("frame()", "runs()", lambda: self.runs(*names, studies=studies))
         if "draw" in frame:
             frame["draw"] = frame["draw"].astype("Int64").mask(frame["draw"] == NO_DRAW)
         return frame
@@ -124,14 +126,6 @@ class OpenedStore:
     def close(self) -> None:
         """Close the file."""
         self._reader.close()
-
-    def __enter__(self) -> Self:
-        return self
-
-    def __exit__(
-        self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
-    ) -> None:
-        self.close()
 
     def _check(self, names: tuple[str, ...], known: list[str]) -> None:
         faults = [

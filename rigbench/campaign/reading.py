@@ -8,10 +8,10 @@ import sqlite3
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from pathlib import Path
-from types import TracebackType
-from typing import TYPE_CHECKING, Self
+from typing import TYPE_CHECKING
 
 from rigbench.campaign.blocks import SIZE, Block, blocks, layouts, stored_scores
+from rigbench.campaign.closable import Closable
 from rigbench.campaign.connection import connect, owner, speaking_plainly
 from rigbench.campaign.counts import IN_PLAY, Counts, counts_of, ends_of
 from rigbench.campaign.kept import Kept, NotKept, restored
@@ -20,6 +20,7 @@ from rigbench.campaign.owner import Owner
 from rigbench.campaign.places import Place, places_of
 from rigbench.campaign.plan import Entry, Plan
 from rigbench.campaign.studied import Studied, stored_studies
+from rigbench.campaign.study_runs import StudyRuns
 from rigbench.campaign.tabling import tabled
 from rigbench.campaign.work import Host
 from rigbench.errors import StoreError
@@ -52,7 +53,7 @@ class Record:
     wall_s: float | None
 
 
-class Reader:
+class Reader(Closable):
     """An open store, to be read. Use it in a ``with``."""
 
     def __init__(self, path: Path, connection: sqlite3.Connection) -> None:
@@ -76,14 +77,6 @@ class Reader:
     def close(self) -> None:
         """Close the file."""
         self._connection.close()
-
-    def __enter__(self) -> Self:
-        return self
-
-    def __exit__(
-        self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
-    ) -> None:
-        self.close()
 
     @contextlib.contextmanager
     def one_moment(self) -> Iterator[None]:
@@ -340,6 +333,10 @@ class Reader:
         """Yield the stored runs of the plan as columns, a block at a time; see :func:`blocks`."""
         with speaking_plainly(self.path):
             yield from blocks(self._connection, names, more, size)
+
+    def study_runs(self) -> StudyRuns:
+        """Return the runs of all studies, to be read as columns."""
+        return StudyRuns(self.path, self._connection)
 
     def rows(self) -> list[Row]:
         """Return the rows of the planned runs that are stored, in the order of the plan."""

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from typing import Any, Protocol
 
 from rigbench.campaign.plan import Entry
@@ -27,6 +27,15 @@ class Study(Protocol):
     @property
     def most_runs(self) -> int:
         """How many runs it takes at most."""
+        ...
+
+    def examples(self) -> Sequence[tuple[int, Iterable[Entry]]]:
+        """Return its kinds of runs: how many of each it takes at most, and runs of that kind.
+
+        Kinds stand in the order in which they are taken. There may be fewer examples, or no end to them;
+        sheets, laws and motions have their parts in the first of them already, for whoever asks what time and
+        room all take.
+        """
         ...
 
     def declared(self) -> Mapping[str, Any]:

@@ -64,6 +64,14 @@ def run(
         int | None,
         typer.Option(min=1, help="only the first so many draws of every cell; the next command may do more"),
     ] = None,
+    limit: Annotated[
+        str | None,
+        typer.Option(
+            metavar="SPAN",
+            help="give up a run that takes longer than this, as in 10m or 45s, what compiling its law takes "
+            "included; a minute and 50 ms for each control tick if left out",
+        ),
+    ] = None,
     fresh: Annotated[
         bool,
         typer.Option(
@@ -89,7 +97,7 @@ def run(
         from rigbench.cli.run import run_experiment
         from rigbench.cli.wishes import Wishes
 
-        wishes = Wishes(jobs, store, tuple(again or ()), span, clock, draws, fresh, yes, cluster)
+        wishes = Wishes(jobs, store, tuple(again or ()), span, clock, draws, fresh, yes, cluster, limit)
         run_experiment(file, wishes, as_json)
 
 

@@ -9,16 +9,17 @@ from dataclasses import asdict, dataclass
 from pathlib import Path
 from typing import Any
 
+from rigbench.campaign.ahead import StudyAhead, studies_ahead
 from rigbench.campaign.owner import Owner
 from rigbench.campaign.plan import Plan
 from rigbench.campaign.settling import to_do
 from rigbench.campaign.store import Store
-from rigbench.campaign.studies.tune import Tune
 from rigbench.cli.estimate import Estimate, estimate_of
+from rigbench.cli.loading import loaded
 from rigbench.cli.output import print_json, show, tell_notes
 from rigbench.cli.spans import duration_words, size_words
 from rigbench.errors import Fault, StoreError, counted
-from rigbench.experiment import Experiment, load_experiment, store_path
+from rigbench.experiment import Experiment, store_path
 from rigbench.scores.anytime import draws_to_settle
 from rigbench.scores.intervals import draws_needed, misses_allowed
 
@@ -27,58 +28,61 @@ __all__ = ["check_experiment"]
 
 @dataclass(frozen=True)
 class Stored:
-    """How many of the planned runs the store at ``path`` holds; None where there is no such store."""
+    """How many of the planned runs the store at ``path`` holds; None where there is no such store.
+
+    ``ahead``: what the studies have ahead of them, the one that comes first included.
+    """
 
     path: Path
     runs: int | None
+    ahead: tuple[StudyAhead, ...]
     notes: tuple[Fault, ...] = ()
     spared: int = 0  # neither stored nor wanted: their columns were settled before
 
 
 def check_experiment(file: str, as_json: bool) -> None:
     """Print the plan of an experiment that is in order."""
-    experiment = load_experiment(file)
+    experiment = loaded(file)
     path = store_path(file)
-    experiment, found = _with_gains(experiment, path)
+    experiment = _with_gains(experiment, path)
     plan = experiment.plan()
     stored = _stored(plan, path)
-    estimate = estimate_of(experiment, plan, (stored.runs or 0) + stored.spared)
+    estimate = estimate_of(experiment, plan, (stored.runs or 0) + stored.spared, stored.ahead)
     tell_notes([*experiment.notes, *stored.notes, *estimate.notes])
     if as_json:
-        print_json(_document(experiment, plan, stored, estimate, found))
+        print_json(_document(experiment, plan, stored, estimate))
     else:
-        show("\n".join(_lines(experiment, plan, stored, estimate, found)))
+        show("\n".join(_lines(experiment, plan, stored, estimate)))
 
 
-def _with_gains(experiment: Experiment, path: Path) -> tuple[Experiment, bool]:
-    """Return the experiment with the gains that its store holds, and whether that holds them."""
+def _with_gains(experiment: Experiment, path: Path) -> Experiment:
+    """Return the experiment with the gains that its store holds."""
     if experiment.tune is not None and path.exists():
         with contextlib.suppress(StoreError), Store.open_for_reading(path) as store:
-            tuned = experiment.with_stored_gains(store)
-            return tuned, tuned is not experiment
-    return experiment, False
+            return experiment.with_stored_gains(store)
+    return experiment
 
 
 def _stored(plan: Plan, path: Path) -> Stored:
+    nothing = tuple(studies_ahead(plan, None))
     if not path.exists():
-        return Stored(path, None)
+        return Stored(path, None, nothing)
     try:
         with Store.open_for_reading(path) as store:
             owner = store.owner
+            ahead = tuple(studies_ahead(plan, store))
             missing = {entry.key for entry in store.missing(plan)}
             wanted = {entry.key for entry in to_do(plan, store)}
     except StoreError as error:
-        return Stored(path, None, (Fault(error.path, None, "", error.problem),))
+        return Stored(path, None, nothing, (Fault(error.path, None, "", error.problem),))
     if owner is not None and not owner.is_same(Owner.of(plan)):
         problem = f"belongs to {owner}: 'run' will want another one, named with --store"
-        return Stored(path, None, (Fault(str(path), None, "", problem),))
+        return Stored(path, None, nothing, (Fault(str(path), None, "", problem),))
     counts = Counter((entry.key in missing, entry.key in wanted) for entry in plan.entries)
-    return Stored(path, counts[False, False], spared=counts[True, False])
+    return Stored(path, counts[False, False], ahead, spared=counts[True, False])
 
 
-def _lines(
-    experiment: Experiment, plan: Plan, stored: Stored, estimate: Estimate, found: bool
-) -> Iterator[str]:
+def _lines(experiment: Experiment, plan: Plan, stored: Stored, estimate: Estimate) -> Iterator[str]:
     yield f"{plan.title}: in order"
     yield f"plan: {_product(plan)} = {counted(len(plan.entries), 'run')}"
     if plan.sheets != ("",):
@@ -89,32 +93,40 @@ def _lines(
         spared = f"; {stored.spared} more are not wanted, as their columns are settled"
         yield f"stored: {stored.runs} of them, in {stored.path}{spared if stored.spared else ''}"
     yield from _draws_lines(experiment)
-    if experiment.tune is not None:
-        yield _tune_line(experiment.tune, found)
-    for study in plan.studies:
-        yield f"{study.name}: at most {counted(study.most_runs, 'run')} more, after those of the plan"
-    left = [study.name for study in plan.studies]
-    left += ["tune"] if experiment.tune is not None and not found else []
-    besides = "".join(f", without {name}" for name in left)
-    if (stored.runs or 0) + stored.spared == len(plan.entries):
-        yield f"time: none, all {'of the plan ' if plan.studies else ''}is stored"
+    for ahead in stored.ahead:
+        yield _study_line(experiment, ahead, estimate)
+    left = any(ahead.left for ahead in stored.ahead)
+    if stored.ahead:
+        runs = len(plan.entries) + sum(ahead.study.most_runs for ahead in stored.ahead)
+        yield f"in all: at most {counted(runs, 'run')}"
+    if (stored.runs or 0) + stored.spared == len(plan.entries) and not left:
+        yield "time: none, all is stored"
     elif estimate.seconds is None:
         yield "time: can't be told, for not every law finishes its nominal run"
     else:
         cores = counted(estimate.cores, "core")
         said = f"{duration_words(estimate.seconds)} on {cores}"
-        most = "at most " if experiment.stop_early else ""
-        yield f"time: {most}{said}{besides}; an estimate, from a short run of each law"
+        most = "at most " if experiment.stop_early or left else ""
+        yield f"time: {most}{said}; an estimate, from a short run of each law"
     if estimate.store_bytes is not None:
-        done = f"{size_words(estimate.store_bytes)} when all is done{besides}"
+        most = "at most " if left else ""
+        done = f"{most}{size_words(estimate.store_bytes)} when all is done"
         yield f"store: {done}; an estimate, from a small one"
 
 
-def _tune_line(tune: Tune, found: bool) -> str:
-    """Say what the search for gains takes."""
-    each = f"{tune.runs} for each law in each sheet"
-    done = "; done, and the gains are stored" if found else ""
-    return f"tune: at most {counted(tune.most_runs, 'run')}, {each}, before those of the plan{done}"
+def _study_line(experiment: Experiment, ahead: StudyAhead, estimate: Estimate) -> str:
+    """Say what a study takes, and how far it is."""
+    study, runs = ahead.study, counted(ahead.study.most_runs, "run")
+    said = f"{study.name}: at most {runs} more, after those of the plan"
+    if experiment.tune is not None and study.name == experiment.tune.name:
+        each = f"{experiment.tune.runs} for each law in each sheet"
+        said = f"{study.name}: at most {runs}, {each}, before those of the plan"
+    if ahead.finished:
+        return f"{said}; done, with {ahead.stored}"
+    if ahead.stored:
+        said += f"; {ahead.stored} of them stored"
+    seconds = estimate.studies.get(study.name)
+    return said if seconds is None else f"{said}; {duration_words(seconds)}"
 
 
 def _product(plan: Plan) -> str:
@@ -152,9 +164,7 @@ def _draws_lines(experiment: Experiment) -> Iterator[str]:
         yield f"{said}; of {experiment.draws}, {allowed or 'none'} may miss it"
 
 
-def _document(
-    experiment: Experiment, plan: Plan, stored: Stored, estimate: Estimate, found: bool
-) -> dict[str, Any]:
+def _document(experiment: Experiment, plan: Plan, stored: Stored, estimate: Estimate) -> dict[str, Any]:
     share = (
         None if experiment.tolerance is None or not experiment.random else experiment.tolerance.required_share
     )
@@ -176,8 +186,17 @@ def _document(
         "draws_needed": None if share is None else needed(share),
         "misses_allowed": None if share is None or plan.stop_early else misses_allowed(share, plan.draws),
         "runs": {"planned": len(plan.entries), "stored": stored.runs, "not_wanted": stored.spared},
-        "studies": [{"name": study.name, "most_runs": study.most_runs} for study in plan.studies],
-        "tune": None if plan.first is None else {"most_runs": plan.first.most_runs, "done": found},
+        "studies": [
+            {
+                "name": ahead.study.name,
+                "before_the_plan": ahead.study is plan.first,
+                "most_runs": ahead.study.most_runs,
+                "stored": ahead.stored,
+                "done": ahead.finished,
+                "seconds": estimate.studies.get(ahead.study.name),
+            }
+            for ahead in stored.ahead
+        ],
         "estimate": {
             "seconds": estimate.seconds,
             "cores": estimate.cores,

@@ -3,14 +3,18 @@
 from __future__ import annotations
 
 import contextlib
-from collections.abc import Iterable
-from dataclasses import dataclass, replace
+from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import dataclass, field, replace
+from itertools import islice
+from statistics import fmean
 from typing import Any
 
 from rigbench.arm.arm import Floats
+from rigbench.campaign.ahead import StudyAhead
 from rigbench.campaign.executor import InProcess, Processes
 from rigbench.campaign.plan import Entry, Plan
 from rigbench.campaign.size import store_bytes
+from rigbench.campaign.study import Study
 from rigbench.campaign.work import Outcome, do
 from rigbench.campaign.workers import usable_cores
 from rigbench.errors import Fault, InputFaults, RigbenchError, StoreError
@@ -25,6 +29,9 @@ QUICK_S = 10.0  # what compiling a law takes at most, on a slow machine
 MOTION_S = 3.0
 """How much of the motion is enough to tell how long a step takes [s]."""
 
+EXAMPLES = 300
+"""Runs of a study whose steps are counted."""
+
 LIMIT_S = 60.0
 """When a law's run is given up [s]: a law that hangs must not hang its check."""
 
@@ -33,6 +40,7 @@ LIMIT_S = 60.0
 class Estimate:
     """What a campaign will take, judged by one short run of each law: ``seconds`` on so many ``cores``.
 
+    ``studies`` holds the seconds that each study takes at most, which are in ``seconds`` as well;
     ``store_bytes`` is the size of the store when all is done. None is what can't be told: both, if not every
     law finishes its run.
     """
@@ -41,10 +49,13 @@ class Estimate:
     cores: int
     notes: tuple[Fault, ...]
     store_bytes: float | None = None
+    studies: Mapping[str, float] = field(default_factory=dict)
 
 
-def estimate_of(experiment: Experiment, plan: Plan, stored: int) -> Estimate:
+def estimate_of(experiment: Experiment, plan: Plan, stored: int, ahead: Sequence[StudyAhead]) -> Estimate:
     """Do the nominal run of each law along the shortest motion, and scale its time to all that is missing.
+
+    Of the plan all but the ``stored`` runs are; of a study at most what is ``ahead`` of it.
 
     It is done in the first sheet that has the law, in a worker process as in a campaign, for MOTION_S of
     the motion at most and no longer than LIMIT_S. A run takes a time in proportion to its steps.
@@ -67,15 +78,29 @@ def estimate_of(experiment: Experiment, plan: Plan, stored: int) -> Estimate:
     if faults:
         raise InputFaults(faults)
     seconds = size = None
+    studies: dict[str, float] = {}
     times = {law: outcomes[first.key].wall_s for law, first in firsts.items()}
     if not notes and None not in times.values():  # a run that broke off says nothing about a whole one
         per_step = {law: wall_s / _steps(firsts[law].run) for law, wall_s in times.items() if wall_s}
         left = 1 - stored / experiment.runs
         steps = _steps_by_law(experiment)
         seconds = sum(steps[law] * time for law, time in per_step.items()) * left / usable_cores()
+        for one in ahead:
+            share = one.left / one.study.most_runs if one.left else 0.0
+            studies[one.study.name] = _seconds_of(one.study, per_step) * share / usable_cores()
+        seconds += sum(studies.values())
         with contextlib.suppress(OSError, StoreError):  # no room for a temporary file
-            size = store_bytes(plan, {law: outcomes[first.key] for law, first in firsts.items()})
-    return Estimate(seconds, usable_cores(), tuple(notes), size)
+            size = store_bytes(plan, {law: outcomes[first.key] for law, first in firsts.items()}, ahead)
+    return Estimate(seconds, usable_cores(), tuple(notes), size, studies)
+
+
+def _seconds_of(study: Study, per_step: Mapping[str, float]) -> float:
+    """Return how long all runs of a study take one after the other, at most."""
+    seconds = 0.0
+    for most, examples in study.examples():
+        times = [_steps(entry.run) * per_step.get(entry.law, 0.0) for entry in islice(examples, EXAMPLES)]
+        seconds += most * fmean(times) if times else 0.0
+    return seconds
 
 
 def _shortest(experiment: Experiment, law: str) -> Entry:

@@ -21,13 +21,14 @@ from rigbench.campaign.store import Store
 from rigbench.campaign.studies.tune import Tune
 from rigbench.cli.fresh import make_room
 from rigbench.cli.gains import gains_notes
+from rigbench.cli.loading import loaded
 from rigbench.cli.output import interrupts_alike, print_json, say, show, tell_notes
 from rigbench.cli.progress import OnProgress, progress_shown, tell_stopping
 from rigbench.cli.spans import duration_words
 from rigbench.cli.stored import CAUTION, picture_path, status_text
-from rigbench.cli.wishes import Wishes, part_of
+from rigbench.cli.wishes import Wishes, limit_of, part_of
 from rigbench.errors import ClusterLost, Stopped, counted, listed
-from rigbench.experiment import load_experiment, store_path
+from rigbench.experiment import store_path
 from rigbench.report.json_form import results_json
 from rigbench.report.matrix import matrix_picture
 from rigbench.scores.results import Results
@@ -43,15 +44,17 @@ def run_experiment(file: str, wishes: Wishes, as_json: bool) -> None:
     """
     began = time.monotonic(), time.time()
     with interrupts_alike():
-        experiment = load_experiment(file)
+        experiment = loaded(file)
         part = part_of(experiment, wishes, began)
         tell_notes(experiment.notes)
         plan = experiment.plan(wishes.store)
         path = store_path(file, wishes.store)
         executor = None
+        if wishes.limit is not None:
+            plan = replace(plan, resume=f"{plan.resume} --limit {wishes.limit}")
         if wishes.cluster is not None:  # before anything is set aside or stored
             plan = replace(plan, resume=f"{plan.resume} --cluster {shlex.quote(wishes.cluster)}")
-            executor = cluster_executor(wishes.cluster, plan.entries, say)
+            executor = cluster_executor(wishes.cluster, plan.entries, say, limit_of(wishes))
         if wishes.fresh:
             make_room(path, plan, wishes.sure)
         with Store.open_for_writing(path, plan) as opened:
@@ -97,7 +100,14 @@ def _first(
         part,
         store,
         lambda on_progress: run_first(
-            plan, store, wishes.jobs, on_progress, part=part, executor=executor, on_stop=tell_stopping
+            plan,
+            store,
+            wishes.jobs,
+            on_progress,
+            part=part,
+            executor=executor,
+            limit_s=limit_of(wishes),
+            on_stop=tell_stopping,
         ),
     )
 
@@ -118,6 +128,7 @@ def _campaign(
             again=wishes.again,
             part=part,
             executor=executor,
+            limit_s=limit_of(wishes),
             on_stop=tell_stopping,
         ),
     )

@@ -14,13 +14,13 @@ SPAN = re.compile(r"(?=\d)(?:(\d{1,6})h)?(?:(\d{1,6})m)?(?:(\d{1,6})s)?")
 CLOCK = re.compile(r"([01]?\d|2[0-3]):([0-5]\d)")
 
 
-def read_span(file: str, text: str) -> float | Fault:
+def read_span(file: str, text: str, option: str) -> float | Fault:
     """Return what a span such as '8h', '90m', '1h30m' or '45s' is in seconds."""
     found = SPAN.fullmatch(text)
     hours, minutes, seconds = (int(part or 0) for part in found.groups()) if found else (0, 0, 0)
     if not hours + minutes + seconds:
         expected = "hours, minutes and seconds in whole numbers, as in 8h, 90m, 1h30m or 45s"
-        return Fault(file, None, "--for", f"'{text}' is no span of time", expected)
+        return Fault(file, None, option, f"'{text}' is no span of time", expected)
     return 3600.0 * hours + 60.0 * minutes + seconds
 
 

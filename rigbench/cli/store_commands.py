@@ -171,6 +171,13 @@ def export(
         str | None,
         typer.Option("--output", "-o", help="a .csv or .parquet file; CSV to standard output if left out"),
     ] = None,
+    studies: Annotated[
+        bool,
+        typer.Option(
+            "--studies",
+            help="the runs of the studies as well, after the matrix's; column study says of which",
+        ),
+    ] = False,
     as_json: Annotated[bool, typer.Option("--json", help="say as JSON what was written; needs -o")] = False,
 ) -> None:
     """Write what is stored as CSV or Parquet, one row a run, with its scores and the values of its draw.
@@ -182,7 +189,7 @@ def export(
     with telling(as_json):
         from rigbench.cli.stored import export_runs
 
-        export_runs(store, output, as_json)
+        export_runs(store, output, studies, as_json)
 
 
 @app.command(epilog="Example: rigbench trace results/first-look.sqlite --worst 'pd + gravity' 'all at 1'")

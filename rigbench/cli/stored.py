@@ -83,7 +83,7 @@ def _notes(hosts: Iterable[Host]) -> Iterator[str]:
         yield f"Note: the stored runs were done with different {said}, so last digits may differ."
 
 
-def export_runs(path: str, output: str | None, as_json: bool) -> None:
+def export_runs(path: str, output: str | None, studies: bool, as_json: bool) -> None:
     """Write the stored runs to a file, whole or not at all, or as CSV to standard output.
 
     What the columns mean is written beside a file. For standard output the table is made in a temporary file
@@ -92,7 +92,7 @@ def export_runs(path: str, output: str | None, as_json: bool) -> None:
     if output is None:
         with tempfile.TemporaryFile("w+", encoding="utf-8", newline="") as table:
             with Store.open_for_reading(path) as store:
-                export_csv(store, table)
+                export_csv(store, table, studies)
             table.seek(0)
             for part in iter(lambda: table.read(PART), ""):
                 put(part)
@@ -108,8 +108,8 @@ def export_runs(path: str, output: str | None, as_json: bool) -> None:
     if write is _parquet:
         check_parquet(output)
     with Store.open_for_reading(path) as store:
-        rows = _written(Path(output), lambda stream: write(store, stream))
-        _written(columns, lambda stream: _as_text(stream, lambda text: export_columns(store, text)))
+        rows = _written(Path(output), lambda stream: write(store, stream, studies))
+        _written(columns, lambda stream: _as_text(stream, lambda text: export_columns(store, text, studies)))
     if as_json:
         print_json({"store": path, "file": output, "columns": str(columns), "rows": rows})
     else:
@@ -124,12 +124,12 @@ def _written(path: Path, write: Callable[[BinaryIO], T]) -> T:
     return returned[0]
 
 
-def _csv(store: Reader, stream: BinaryIO) -> int:
-    return _as_text(stream, lambda text: export_csv(store, text))
+def _csv(store: Reader, stream: BinaryIO, studies: bool) -> int:
+    return _as_text(stream, lambda text: export_csv(store, text, studies))
 
 
-def _parquet(store: Reader, stream: BinaryIO) -> int:
-    return export_parquet(store, stream)
+def _parquet(store: Reader, stream: BinaryIO, studies: bool) -> int:
+    return export_parquet(store, stream, studies)
 
 
 def _as_text(stream: BinaryIO, write: Callable[[TextIO], T]) -> T:

@@ -10,7 +10,7 @@ from rigbench.cli.spans import read_clock, read_span
 from rigbench.errors import Fault, InputFaults, nearest
 from rigbench.experiment import Experiment
 
-__all__ = ["Wishes", "part_of"]
+__all__ = ["Wishes", "limit_of", "part_of"]
 
 
 @dataclass(frozen=True)
@@ -19,7 +19,8 @@ class Wishes:
 
     ``span`` and ``clock`` are what --for and --until said; ``draws`` how many of every cell are wanted now;
     ``again`` the laws to be done anew; ``fresh`` whether all is to be done anew, and ``sure`` whether that
-    was confirmed beforehand; ``cluster`` the address of a scheduler whose workers are to do the runs.
+    was confirmed beforehand; ``cluster`` the address of a scheduler whose workers are to do the runs;
+    ``limit`` after how long a run is to be given up.
     """
 
     jobs: int | None = None
@@ -31,6 +32,7 @@ class Wishes:
     fresh: bool = False
     sure: bool = False
     cluster: str | None = None
+    limit: str | None = None
 
 
 def part_of(experiment: Experiment, wishes: Wishes, began: tuple[float, float]) -> Part:
@@ -40,7 +42,7 @@ def part_of(experiment: Experiment, wishes: Wishes, began: tuple[float, float]) 
     """
     file, faults = experiment.path, list(_law_faults(experiment, wishes.again))
     monotonic, now = began
-    spans = [] if wishes.span is None else [read_span(file, wishes.span)]
+    spans = [] if wishes.span is None else [read_span(file, wishes.span, "--for")]
     spans += [] if wishes.clock is None else [read_clock(file, wishes.clock, now)]
     faults += [span for span in spans if isinstance(span, Fault)]
     if wishes.draws is not None and not experiment.random:
@@ -53,10 +55,22 @@ def part_of(experiment: Experiment, wishes: Wishes, began: tuple[float, float]) 
     if wishes.cluster is not None and wishes.jobs is not None:
         problem = "counts worker processes of this machine, and --cluster has the runs done elsewhere"
         faults.append(Fault(file, None, "--jobs", problem, "one of the two"))
+    limit = None if wishes.limit is None else read_span(file, wishes.limit, "--limit")
+    if isinstance(limit, Fault):
+        faults.append(limit)
+    elif limit is not None and wishes.jobs == 0:
+        problem = "is kept by worker processes, and --jobs 0 does without them"
+        faults.append(Fault(file, None, "--limit", problem, "one of the two"))
     if faults:
         raise InputFaults(faults)
     shortest = min((span for span in spans if not isinstance(span, Fault)), default=None)
     return Part(wishes.draws, None if shortest is None else monotonic + shortest)
+
+
+def limit_of(wishes: Wishes) -> float | None:
+    """Return after how long [s] a run is to be given up, of wishes that can be had; None if none is said."""
+    limit = None if wishes.limit is None else read_span("", wishes.limit, "--limit")
+    return None if isinstance(limit, Fault) else limit
 
 
 def _law_faults(experiment: Experiment, again: Iterable[str]) -> Iterator[Fault]:

@@ -59,7 +59,12 @@ def _law(law: LawWorst) -> dict[str, Any]:
             "level": law.told.level,
             "run": None if law.told.record is None else law.told.record.key,
             "parameters": [
-                {"name": one.parameter, "u": one.u, "difference_by_itself": _finite(one.difference)}
+                {
+                    "name": one.drawn.name,
+                    "u": one.drawn.u,
+                    "amount": one.drawn.amount,
+                    "difference_by_itself": _finite(one.difference),
+                }
                 for one in law.departures
             ],
         },

@@ -6,13 +6,13 @@ import numpy as np
 
 from rigbench.arm.arm import Floats
 from rigbench.arm.kernel import kernel
-from rigbench.laws.feedback import InertiaLaw, inertia_and_bias, through_inertia
+from rigbench.laws.feedback import InertiaLaw, through_inertia
 from rigbench.laws.law import A_REF, Q_REF, V_REF, Compiled, Q, Reference, Setup, V, option
 
 __all__ = ["ComputedTorque"]
 
 CORNER, PERIOD, LAG, LAG_RATE = range(7, 11)
-"""Rows of ``own`` after those of :meth:`InertiaLaw.inertia_rows`; the last two are the filter's state."""
+"""Rows of ``own`` after those of :meth:`InertiaLaw.compiled_with`; the last two are the filter's state."""
 
 
 class ComputedTorque(InertiaLaw):
@@ -59,12 +59,10 @@ class ComputedTorque(InertiaLaw):
         return filtered
 
     def compiled(self) -> Compiled:
-        """Return the kernels; ``own`` rows: :meth:`inertia_rows`, and as the names at the top say."""
-        n = self._model.n
-        rest = np.zeros((4, n))
+        """Return the kernels; the law's own rows are as the names at the top say."""
+        rest = np.zeros((4, self._model.n))
         rest[0], rest[1] = self._corner, self._period
-        own = np.vstack([self.inertia_rows(), rest])
-        return Compiled(torque=_torque, own=own, model_term=inertia_and_bias, held_size=self.held_size)
+        return self.compiled_with(_torque, *rest)
 
 
 @kernel

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from typing import ClassVar
 
 import numpy as np
@@ -10,7 +11,7 @@ from rigbench.arm.arm import Floats
 from rigbench.arm.dynamics import composite_inertia, newton_euler, place
 from rigbench.arm.kernel import kernel
 from rigbench.laws.gains import PdLaw
-from rigbench.laws.law import Q_REF, TAU, V_REF, Q, Reference, V, option
+from rigbench.laws.law import Q_REF, TAU, V_REF, Compiled, Q, Reference, V, option
 from rigbench.laws.model import FrictionTerm, friction_torque
 
 __all__ = [
@@ -77,14 +78,16 @@ class InertiaLaw(PdLaw):
         torque: Floats = held[: n * n].reshape(n, n) @ wanted + held[n * n :]
         return torque
 
-    def inertia_rows(self) -> Floats:
-        """Return the first rows of ``own``, (7, n): kp, kd, friction (4), reflected rotor inertia."""
-        return np.vstack([self.own_rows(), self._model.reflected])
+    def compiled_with(
+        self, torque: Callable[[Floats, Floats, Floats, Floats], None], *rows: Floats
+    ) -> Compiled:
+        """Return the law's kernels: its own ``torque``, and the model term.
 
-    @property
-    def held_size(self) -> int:
-        """How long the model term is."""
-        return self._model.n * (self._model.n + 1)
+        ``own`` holds kp, kd, friction (4), reflected rotor inertia, and then the law's own ``rows`` (n,).
+        """
+        n = self._model.n
+        own = np.vstack([self.own_rows(), self._model.reflected, *rows])
+        return Compiled(torque=torque, own=own, model_term=inertia_and_bias, held_size=n * (n + 1))
 
 
 @kernel

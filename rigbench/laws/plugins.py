@@ -23,6 +23,7 @@ from rigbench.errors import PluginError
 __all__ = [
     "Files",
     "Plugin",
+    "being_imported",
     "collect",
     "digest_of",
     "import_files",
@@ -220,6 +221,17 @@ def _importer(folder: Path, files: Files) -> Callable[..., Any]:
             sys.modules.update(outside)
 
     return load
+
+
+def being_imported(thread: int) -> str | None:
+    """Return the user's file, as the user knows it, that a thread is about to import; None if it does not."""
+    frame = sys._current_frames().get(thread)
+    while frame is not None:
+        path = frame.f_code.co_filename
+        if frame.f_code.co_name == "<module>" and path in KNOWN_AS:
+            return KNOWN_AS[path]
+        frame = frame.f_back
+    return None
 
 
 def own_trace(problem: BaseException, ours: Path) -> str:

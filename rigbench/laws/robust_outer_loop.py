@@ -6,13 +6,13 @@ import numpy as np
 
 from rigbench.arm.arm import Floats
 from rigbench.arm.kernel import kernel
-from rigbench.laws.feedback import InertiaLaw, inertia_and_bias, saturated, through_inertia
+from rigbench.laws.feedback import InertiaLaw, saturated, through_inertia
 from rigbench.laws.law import A_REF, Q_REF, V_REF, Compiled, Q, Reference, V, option
 
 __all__ = ["RobustOuterLoop"]
 
 RHO, BOUNDARY = 7, 8
-"""Rows of ``own`` after those of :meth:`InertiaLaw.inertia_rows`."""
+"""Rows of ``own`` after those of :meth:`InertiaLaw.compiled_with`."""
 
 
 class RobustOuterLoop(InertiaLaw):
@@ -44,10 +44,9 @@ class RobustOuterLoop(InertiaLaw):
         return self.through(ref.a + self._kd * rate + self._kp * e + extra, held)
 
     def compiled(self) -> Compiled:
-        """Return the kernels; ``own`` rows: :meth:`inertia_rows`, rho, boundary."""
+        """Return the kernels; the law's own rows: rho, boundary."""
         n = self._model.n
-        own = np.vstack([self.inertia_rows(), np.full(n, self.rho), np.full(n, self.boundary)])
-        return Compiled(torque=_torque, own=own, model_term=inertia_and_bias, held_size=self.held_size)
+        return self.compiled_with(_torque, np.full(n, self.rho), np.full(n, self.boundary))
 
 
 @kernel

@@ -6,14 +6,14 @@ import numpy as np
 
 from rigbench.arm.arm import Floats
 from rigbench.arm.kernel import kernel
-from rigbench.laws.feedback import InertiaLaw, inertia_and_bias, saturated, through_inertia
+from rigbench.laws.feedback import InertiaLaw, saturated, through_inertia
 from rigbench.laws.gains import positive_damping, positive_kd
 from rigbench.laws.law import A_REF, Q_REF, V_REF, Compiled, Q, Reference, Setup, V, option
 
 __all__ = ["SlidingMode"]
 
 SLOPE, RHO, BOUNDARY = 7, 8, 9
-"""Rows of ``own`` after those of :meth:`InertiaLaw.inertia_rows`."""
+"""Rows of ``own`` after those of :meth:`InertiaLaw.compiled_with`."""
 
 
 class SlidingMode(InertiaLaw):
@@ -50,10 +50,8 @@ class SlidingMode(InertiaLaw):
         return self.through(ref.a + self._slope * rate + self.rho * np.clip(s / self._layer, -1.0, 1.0), held)
 
     def compiled(self) -> Compiled:
-        """Return the kernels; ``own`` rows: :meth:`inertia_rows`, slope, rho, boundary."""
-        rest = [self._slope, np.full(self._model.n, self.rho), self._layer]
-        own = np.vstack([self.inertia_rows(), *rest])
-        return Compiled(torque=_torque, own=own, model_term=inertia_and_bias, held_size=self.held_size)
+        """Return the kernels; the law's own rows: slope, rho, boundary."""
+        return self.compiled_with(_torque, self._slope, np.full(self._model.n, self.rho), self._layer)
 
 
 @kernel

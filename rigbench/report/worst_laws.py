@@ -8,7 +8,8 @@ from rigbench.campaign.reading import Reader
 from rigbench.campaign.studied import Studied
 from rigbench.campaign.studies.worst_case import WorstFound, worst_found
 from rigbench.campaign.studies.worst_direction import departures
-from rigbench.report.worst_words import LawWorst, by_law
+from rigbench.report.drawn import drawn_of
+from rigbench.report.worst_words import Departing, LawWorst, by_law
 from rigbench.scores.limit_share import limit_share
 from rigbench.scores.results import Tolerance, level_name
 
@@ -23,8 +24,18 @@ def worst_laws(store: Reader, study: Studied, tolerance: Tolerance) -> Iterator[
             for one in levels
             if one.searched and (shares := _drawn(store, one, tolerance)) is not None
         }
-        found = departures(store, study, told, tolerance)
-        yield LawWorst(told.sheet, told.law, levels, told, found, drawn)
+        departing = tuple(_departing(store, study, told, tolerance))
+        yield LawWorst(told.sheet, told.law, levels, told, departing, drawn)
+
+
+def _departing(store: Reader, study: Studied, told: WorstFound, tolerance: Tolerance) -> Iterator[Departing]:
+    """Yield the parameters that depart in the worst machine, those first that make the most difference."""
+    if told.record is None:
+        return
+    amounts = {one.name: one for one in drawn_of(store.kept(told.record.key).run)}
+    for one in departures(store, study, told, tolerance):
+        if one.parameter in amounts:  # one whose spread is 0 departs by nothing
+            yield Departing(amounts[one.parameter], one.difference)
 
 
 def _drawn(store: Reader, found: WorstFound, tolerance: Tolerance) -> tuple[float, int] | None:

@@ -21,7 +21,8 @@ MARGIN = 24.0
 SIZE, SMALL, HEAD, TITLE = 8.5, 7.5, 11.0, 16.0
 AXIS, PLOT, HIGH = 40.0, 260.0, 150.0  # room of the left axis; the plot's width and height
 APART = 34.0
-NAME, BAR, TURNED = 150.0, 100.0, 110.0  # least width of the names; those of bars and shares
+NAME, BAR, TURNED = 150.0, 100.0, 90.0  # least width of the names; those of bars and shares
+BESIDE = 10.0  # between bars, amounts and shares
 ROW = 17.0
 SHOWN = 8
 """Parameters of a direction that are drawn."""
@@ -46,28 +47,31 @@ def worst_figure(laws: Sequence[LawWorst], title: str, date: datetime.date) -> F
     """Return a page just as high as what is on it."""
     with steady_settings():
         paper = Paper()
-        names = [one.parameter for law in laws for one in law.departures[:SHOWN]]
-        name = max(NAME, paper.widest(names, SMALL) + 10)
-        width = AXIS + PLOT + APART + name + BAR + TURNED
+        shown = [one.drawn for law in laws for one in law.departures[:SHOWN]]
+        name = max(NAME, paper.widest([one.words for one in shown], SMALL) + 10)
+        amount = paper.widest([one.amount for one in shown], SMALL)
+        width = AXIS + PLOT + APART + name + BAR + 2 * BESIDE + amount + TURNED
         y = paper.lines(MARGIN, MARGIN, paper.wrap(title, width, TITLE, bold=True), TITLE, bold=True)
         said = f"The worst cases found, by level of the mismatch. {date.isoformat()}."
         y = paper.lines(MARGIN, y + 4, paper.wrap(said, width, SIZE), SIZE)
         for number, law in enumerate(laws):
-            y = _block(paper, law, y + 16, width, name, f"law-{number}")
+            y = _block(paper, law, y + 16, width, (name, amount), f"law-{number}")
         y += 12
         for text in (f"{MARKERS} {READING}", CAUTION):
             y = paper.lines(MARGIN, y + 4, paper.wrap(text, width, SMALL), SMALL, ink=QUIET)
         return paper.figure(width + 2 * MARGIN, y + MARGIN)
 
 
-def _block(paper: Paper, law: LawWorst, top: float, width: float, names: float, name: str) -> float:
-    """Draw a law's block, the names of its parameters ``names`` wide; return where it ends."""
+def _block(
+    paper: Paper, law: LawWorst, top: float, width: float, words: tuple[float, float], name: str
+) -> float:
+    """Draw a law's block, its parameters' names and amounts as wide as ``words``; return where it ends."""
     heading = f"{law.law} ({law.sheet})" if law.sheet else law.law
     y = paper.lines(MARGIN, top, paper.wrap(heading, width, HEAD, bold=True), HEAD, bold=True, name=name)
-    words = smallest_words(law)
-    y = paper.lines(MARGIN, y + 1, paper.wrap(f"{words[0].upper()}{words[1:]}.", width, SIZE), SIZE)
+    found = smallest_words(law)
+    y = paper.lines(MARGIN, y + 1, paper.wrap(f"{found[0].upper()}{found[1:]}.", width, SIZE), SIZE)
     below = _levels(paper, law, y + 18, name)
-    beside = _direction(paper, law, MARGIN + AXIS + PLOT + APART, y + 4, names)
+    beside = _direction(paper, law, MARGIN + AXIS + PLOT + APART, y + 4, *words)
     return max(below, beside)
 
 
@@ -109,20 +113,27 @@ def _levels(paper: Paper, law: LawWorst, top: float, name: str) -> float:
     return base + 3 + LINE * (SIZE + SMALL)
 
 
-def _direction(paper: Paper, law: LawWorst, left: float, top: float, names: float) -> float:
+def _direction(paper: Paper, law: LawWorst, left: float, top: float, names: float, amounts: float) -> float:
     """Draw in what the worst machine departs most, from -1 to 1."""
     if not law.departures:
         return top
-    said = f"worst found at level {level(law.told.level)}: u, and what each by itself makes of the limit"
-    y = paper.lines(left, top, paper.wrap(said, names + BAR + TURNED, SMALL), SMALL, ink=QUIET) + 4
+    width = names + BAR + 2 * BESIDE + amounts + TURNED
+    said = (
+        f"worst found at level {level(law.told.level)}: u, what that comes to, and what each by itself "
+        "makes of the limit"
+    )
+    y = paper.lines(left, top, paper.wrap(said, width, SMALL), SMALL, ink=QUIET) + 4
     middle = left + names + BAR / 2
     shown = law.departures[:SHOWN]
     for number, one in enumerate(shown):
         at = y + number * ROW
-        paper.text(left, at + (ROW - LINE * SMALL) / 2, one.parameter, SMALL)
-        start, end = sorted((middle, middle + one.u * BAR / 2))
+        line = at + (ROW - LINE * SMALL) / 2
+        paper.text(left, line, one.drawn.words, SMALL)
+        start, end = sorted((middle, middle + one.drawn.u * BAR / 2))
         paper.box(start, at + 3, max(end - start, 0.5), ROW - 6, fill=PALE)
-        paper.text(left + names + BAR + 8, at + (ROW - LINE * SMALL) / 2, _difference(one.difference), SMALL)
+        right = left + names + BAR + BESIDE + amounts
+        paper.text(right, line, one.drawn.amount, SMALL, at="right")
+        paper.text(right + BESIDE, line, _difference(one.difference), SMALL)
     bottom = y + len(shown) * ROW
     for x, tick in ((middle - BAR / 2, "-1"), (middle, "0"), (middle + BAR / 2, "1")):
         paper.stroke((x, y), (x, bottom), color=RAIL, line=0.8)

@@ -9,14 +9,15 @@ from dataclasses import dataclass
 from itertools import groupby
 
 from rigbench.campaign.studies.worst_case import WorstFound
-from rigbench.campaign.studies.worst_direction import Departure
 from rigbench.errors import counted
+from rigbench.report.drawn import Drawn
 from rigbench.report.words import level, quantity
 from rigbench.scores.names import score_words
 
 __all__ = [
     "KEY_DIGITS",
     "READING",
+    "Departing",
     "LawWorst",
     "by_law",
     "difference_words",
@@ -44,6 +45,14 @@ READING = (
 
 
 @dataclass(frozen=True)
+class Departing:
+    """A parameter of the worst machine, and the ``difference`` that it makes by itself: see Departure."""
+
+    drawn: Drawn
+    difference: float | None
+
+
+@dataclass(frozen=True)
 class LawWorst:
     """What was found of a law in a sheet, levels rising, and the direction of the worst machine to be told.
 
@@ -55,11 +64,11 @@ class LawWorst:
     law: str
     levels: tuple[WorstFound, ...]
     told: WorstFound
-    departures: tuple[Departure, ...]
+    departures: tuple[Departing, ...]
     drawn: Mapping[float, tuple[float, int]]
 
     @property
-    def shown(self) -> tuple[Departure, ...]:
+    def shown(self) -> tuple[Departing, ...]:
         """The departures that are told: those that make the most difference."""
         return self.departures[:SHOWN]
 
@@ -107,7 +116,7 @@ def _outcome(outcome: str) -> str:
     return {"diverged": "diverged", "hit-stop": "hit a stop"}.get(outcome, f"ended as {outcome}")
 
 
-def difference_words(one: Departure) -> str:
+def difference_words(one: Departing) -> str:
     """Say what a parameter makes by itself, between one sign of its u and the other."""
     if one.difference is None:
         return ""
@@ -133,7 +142,7 @@ def _law_lines(law: LawWorst, store: str) -> Iterator[str]:
     yield f"  {told_words(law)} (u, from -1 to 1):"
     for one in law.shown:
         said = difference_words(one)
-        yield f"    {one.parameter} {one.u:+g}{f'; {said}' if said else ''}"
+        yield f"    {one.drawn.words} {one.drawn.u:+g} ({one.drawn.amount}){f'; {said}' if said else ''}"
     if more := more_words(law):
         yield f"    {more}"
     yield f"  replay: {replay_command(law.told.record.key, store)}"

@@ -61,6 +61,11 @@ class Machines:
         """How many workers have joined so far, whatever became of them."""
         return (self._folder / "log").read_bytes().count(b"Register worker addr")
 
+    @property
+    def connections(self) -> int:
+        """How many campaigns have connected so far."""
+        return (self._folder / "log").read_bytes().count(b"Receive client connection: Client-rigbench")
+
     def _start(self, *command: str) -> subprocess.Popen[bytes]:
         program = [sys.executable, "-W", "ignore", "-m", "dask", *command, "--no-dashboard"]
         with (self._folder / "log").open("ab") as log:
@@ -137,7 +142,9 @@ def test_the_same_rows_with_a_worker_killed_half_way(
         for law, choice in laws.items()
     ]
     first, notes = machines.worker(), list[str]()
-    executor = replace(cluster_executor(machines.address, entries, notes.append), patience_s=PATIENCE_S)
+    executor = cluster_executor(machines.address, entries, notes.append, limit_s=120.0)
+    assert executor.limit_s(entries[0].run) == 120.0
+    executor = replace(executor, patience_s=PATIENCE_S)
     outcomes = []
     with closing(executor.run_all(iter(entries))) as coming:
         for outcome in coming:
@@ -187,6 +194,36 @@ def test_trouble_costs_its_own_run_alone(
         assert trace in outcomes[act].trace, act
     assert all(outcomes[name].outcome == "finished" for name in acts if name.startswith("good"))
     assert sum("is lost" in note for note in notes) == 2
+
+
+def test_crews_stand_by_from_list_to_list(
+    machines: Machines, far: ModuleType, make_entries: EntryMaker, tmp_path: Path
+) -> None:
+    """Three lists are done over one connection, by two processes in all, and so is one after a list given up."""
+    machines.worker(2)
+    executor = Cluster(machines.address, work=far.work, patience_s=PATIENCE_S)
+
+    def lists(*names: str) -> list[list[Entry]]:
+        act = "finish", {"folder": str(tmp_path)}
+        return [make_entries(**{f"{name} {i}": act for i in range(12)}) for name in names]
+
+    def began() -> list[str]:
+        return [path.read_text() for path in tmp_path.glob("began-*")]
+
+    with executor.standing() as standing:
+        for entries in lists("first", "second", "third"):
+            outcomes = by_name(list(standing.run_all(entries)), entries)
+            assert {outcome.outcome for outcome in outcomes.values()} == {"finished"}
+        assert len(began()) == 3 * 12
+        assert len(set(began())) <= 2
+        slow = make_entries(**{f"slow {i}": ("finish", {"seconds": 0.2}) for i in range(40)})
+        with closing(standing.run_all(slow)) as outcomes:
+            next(outcomes)
+        (entries,) = lists("fourth")
+        by_name(list(standing.run_all(entries)), entries)
+        assert len(began()) == 4 * 12
+        assert len(set(began())) <= 2
+    assert machines.connections == 1
 
 
 def test_work_in_hand_is_bounded_and_closing_drops_it(

@@ -318,3 +318,6 @@ def test_the_time_limit_grows_with_motion_and_rate(doing: ModuleType) -> None:
     """60 s and 50 ms a tick: 4 s at 1 kHz have 260 s, 4 s at 100 Hz have 80 s."""
     assert time_limit_s(doing.FakeRun("one")) == pytest.approx(260.0)
     assert time_limit_s(doing.FakeRun("one", rates=doing.FakeRates(100.0))) == pytest.approx(80.0)
+    stated = executor_for(4, 3, 7.0)
+    assert isinstance(stated, Processes)
+    assert stated.limit_s(doing.FakeRun("one")) == 7.0

@@ -5,6 +5,7 @@ from __future__ import annotations
 import os
 import signal
 from collections.abc import Callable, Generator, Iterable, Iterator
+from contextlib import AbstractContextManager, nullcontext
 from dataclasses import dataclass, replace
 from itertools import islice
 from pathlib import Path
@@ -216,6 +217,9 @@ class Ahead:
     def run_all(self, entries: Iterable[Entry]) -> Generator[Outcome]:
         for group in batched(entries, 8):
             yield from InProcess(self.work).run_all(group)
+
+    def standing(self) -> AbstractContextManager[Ahead]:
+        return nullcontext(self)
 
 
 def batched(entries: Iterable[Entry], number: int) -> Iterator[list[Entry]]:

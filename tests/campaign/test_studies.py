@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import os
 import signal
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from functools import partial
 from pathlib import Path
@@ -33,6 +33,9 @@ class Growing:
     act: str = "finish"
     name: str = "growing"
     most_runs: int = 6
+
+    def examples(self) -> Sequence[tuple[int, Iterable[Entry]]]:
+        return [(self.most_runs, [self.entry("a"), self.entry("b")])]
 
     def declared(self) -> Mapping[str, Any]:
         return {"rounds": 3}
@@ -131,21 +134,22 @@ def test_a_run_that_comes_to_nothing_is_known_to_its_study(
             assert len(told) == 4
 
 
+@pytest.mark.parametrize("given", [False, True])
 def test_workers_stand_by_between_rounds(
-    tmp_path: Path, doing: ModuleType, make_plan: PlanMaker, monkeypatch: pytest.MonkeyPatch
+    tmp_path: Path, doing: ModuleType, make_plan: PlanMaker, monkeypatch: pytest.MonkeyPatch, given: bool
 ) -> None:
     """Two workers do the matrix and all rounds of the study: starting new ones would cost as much as runs."""
     folder = tmp_path / "began"
     folder.mkdir()
     monkeypatch.setattr(
-        "rigbench.campaign.doing.executor_for", lambda jobs, runs: Processes(min(runs, 2), doing.work)
+        "rigbench.campaign.doing.executor_for", lambda jobs, runs, _: Processes(min(runs, 2), doing.work)
     )
     plan = make_plan(draws=1)
     entries = [replace(e, run=replace(e.run, folder=str(folder))) for e in plan.entries]
     study = Growing(partial(doing.FakeRun, folder=str(folder)))
     plan = replace(plan, entries=tuple(entries), studies=(study,))
     with Store.open_for_writing(tmp_path / "s.sqlite", plan) as store:
-        run_campaign(plan, store)
+        run_campaign(plan, store, executor=Processes(2, doing.work) if given else None)
     pids = [path.read_text() for path in folder.iterdir()]
     assert len(pids) == len(plan.entries) + 6
     assert len(set(pids)) <= 2

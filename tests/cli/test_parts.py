@@ -67,7 +67,8 @@ def test_the_first_draws(run_here: Callable[..., Result], trial: Path) -> None:
 def test_wishes_that_can_not_be_had(run_here: Callable[..., Result], trial: Path) -> None:
     """All at once, exit code 2, and nothing is made."""
     result = run_here(
-        "trial.yaml", "--for", "soon", "--until", "7", "--draws", "4", "--again", "joint pid", "--yes"
+        *("trial.yaml", "--for", "soon", "--until", "7", "--draws", "4", "--again", "joint pid", "--yes"),
+        *("--limit", "5"),
     )
     assert result.exit_code == 2
     for words in (
@@ -76,10 +77,24 @@ def test_wishes_that_can_not_be_had(run_here: Callable[..., Result], trial: Path
         "trial.yaml: --draws: 4 draws are wished for; expected at most the 3 declared",
         "trial.yaml: --again: there is no law 'joint pid'; expected one of joint pd, computed torque (did you",
         "trial.yaml: --yes: confirms --fresh, which is not given",
-        "5 faults",
+        "trial.yaml: --limit: '5' is no span of time; expected hours, minutes and seconds",
+        "6 faults",
     ):
         assert words in result.stderr
     assert not Path("results").exists()
+
+
+def test_the_limit_of_a_run_is_the_workers(
+    run_here: Callable[..., Result], in_process_of_its_own: Callable[..., Process], trial: Path
+) -> None:
+    """Without workers there is none, which is a fault; with them the command that goes on has it too."""
+    result = run_here("trial.yaml", "--limit", "5m")
+    assert result.exit_code == 2
+    assert "trial.yaml: --limit: is kept by worker processes, and --jobs 0 does without them" in result.stderr
+    part = ("run", "trial.yaml", "--limit", "5m", "--jobs", "1", "--draws", "1")
+    done = in_process_of_its_own(*part)
+    assert done.returncode == 0, done.stderr
+    assert "'rigbench run trial.yaml --limit 5m' does the other 4 runs" in " ".join(done.stderr.split())
 
 
 def test_draws_of_what_is_not_random(run_here: Callable[..., Result], trial_text: str, trial: Path) -> None:

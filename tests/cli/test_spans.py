@@ -18,7 +18,7 @@ from rigbench.errors import Fault
 )
 def test_a_span_is_read(text: str, seconds: float) -> None:
     """Whole hours, minutes and seconds, in this order, each of which may be left out."""
-    assert read_span("a.yaml", text) == seconds
+    assert read_span("a.yaml", text, "--for") == seconds
 
 
 @pytest.mark.parametrize(
@@ -26,9 +26,9 @@ def test_a_span_is_read(text: str, seconds: float) -> None:
 )
 def test_what_is_no_span_is_a_fault(text: str) -> None:
     """No unit, nothing at all, another order, a fraction, or no time at all."""
-    fault = read_span("a.yaml", text)
+    fault = read_span("a.yaml", text, "--limit")
     assert isinstance(fault, Fault)
-    assert (fault.file, fault.key) == ("a.yaml", "--for")
+    assert (fault.file, fault.key) == ("a.yaml", "--limit")
     assert f"'{text}'" in fault.problem
     assert "1h30m" in fault.expected
 

@@ -8,10 +8,12 @@ from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
+import pandas
 import pytest
 import yaml
 from typer.testing import Result
 
+import rigbench
 from rigbench.campaign.executor import InProcess
 from rigbench.campaign.plan import Entry
 from rigbench.campaign.store import Store
@@ -27,6 +29,10 @@ tune: {runs: 32, score: tool_rms_mm, most: {torque_peak_percent: 60, chatter: 0.
 """
 WORST = """\
 worst_case: {law: computed torque, levels: [0.5, 2], runs: 90}
+"""
+NEEDS = """\
+required_share: 0.5
+needs: {law: computed torque, runs: 130, level: 2}
 """
 
 
@@ -108,17 +114,90 @@ def test_the_matrix_has_the_gains_that_were_found(tuned: Result, call: Call, run
 def test_check_tells_what_tuning_takes(tuned: Result, trial: Path, trial_text: str, call: Call) -> None:
     """Its budget, whether it is done, and how many of the runs with the gains found are stored."""
     said = call("check", "trial.yaml").stdout
-    assert "tune: at most 64 runs, 32 for each law in each sheet, before those of the plan; done" in said
+    assert (
+        "tune: at most 64 runs, 32 for each law in each sheet, before those of the plan; done, with " in said
+    )
     assert "stored: 8 of them" in said
     trial.write_text(trial_text + TUNE.replace("32", "40") + WORST)
     said = call("check", "trial.yaml").stdout
-    assert "tune: at most 80 runs, 40 for each law in each sheet, before those of the plan\n" in said
+    assert "tune: at most 80 runs, 40 for each law in each sheet, before those of the plan; " in said
     assert "worst_case: at most 90 runs more, after those of the plan" in said
-    assert "without worst_case, without tune" in said
-    assert json.loads(call("check", "trial.yaml", "--json").stdout)["tune"] == {
-        "most_runs": 80,
-        "done": False,
-    }
+    assert "in all: at most 178 runs" in said
+    document = json.loads(call("check", "trial.yaml", "--json").stdout)
+    tune, worst_case = document["studies"]
+    assert (tune["name"], tune["before_the_plan"], tune["most_runs"], tune["done"]) == (
+        "tune",
+        True,
+        80,
+        False,
+    )
+    assert 0 < tune["stored"] <= 64  # its beginning is that of the smaller search
+    assert (worst_case["stored"], worst_case["done"]) == (0, False)
+    assert 0 < tune["seconds"] < worst_case["seconds"] < document["estimate"]["seconds"]
+
+
+@pytest.mark.parametrize("more", [WORST, TUNE, "find_level: {most: 2}\n", NEEDS])
+def test_check_says_how_large_the_store_with_studies_will_be(
+    trial: Path, trial_text: str, call: Call, run_here: Call, more: str
+) -> None:
+    """At most, and once all is done within a fifth of what it is: then a study has taken what it has taken."""
+    trial.write_text(trial_text.replace("draws: 3", "draws: 40") + more)
+    plan = load_experiment("trial.yaml").plan()
+    (asked,) = filter(None, (plan.first, *plan.studies))
+    assert sum(number for number, _ in asked.examples()) == asked.most_runs
+    before = json.loads(call("check", "trial.yaml", "--json").stdout)
+    assert run_here("trial.yaml").exit_code == 0
+    size = Path(STORE).stat().st_size
+    after = json.loads(call("check", "trial.yaml", "--json").stdout)
+    [study] = after["studies"]
+    assert study["done"]
+    assert 0 < study["stored"] <= study["most_runs"]
+    assert after["estimate"]["seconds"] == 0
+    assert after["estimate"]["store_bytes"] == pytest.approx(size, rel=0.2)
+    assert before["estimate"]["store_bytes"] > 0.8 * size
+
+
+@pytest.mark.parametrize(("more", "name"), [(WORST, "worst_case"), (TUNE, "tune"), (NEEDS, "needs")])
+def test_the_runs_of_studies_are_exported_beside_the_matrix(
+    trial: Path, trial_text: str, call: Call, run_here: Call, more: str, name: str
+) -> None:
+    """Every one, as it is stored, with the u that its own machine has; the matrix's rows stay as they are."""
+    trial.write_text(trial_text + more)
+    assert run_here("trial.yaml").exit_code == 0
+    for options in (
+        ["-o", "plain.parquet"],
+        ["-o", "all.parquet", "--studies"],
+        ["-o", "all.csv", "--studies"],
+    ):
+        assert call("export", STORE, *options).exit_code == 0
+    plain, whole = (pandas.read_parquet(f"{file}.parquet") for file in ("plain", "all"))
+    assert whole.columns[0] == "study"
+    assert "study" not in plain
+    for names in (pandas.read_csv("all-columns.csv").name, pandas.read_csv("all.csv").columns):
+        assert list(names) == list(whole)
+    pandas.testing.assert_frame_equal(whole[whole.study == ""][list(plain)], plain)
+    own = whole[whole.study == name]
+    assert len(own) == len(whole) - len(plain)
+    with Store.open_for_reading(STORE) as store:
+        study = store.study(name)
+        assert study is not None
+        runs = {record.key: store.kept(record.key).run for record in study.records}
+    assert list(own.key) == [record.key for record in study.records]
+    parameters = [column for column in whole if column.startswith("draw.")]
+    for (_, row), record in zip(own.iterrows(), study.records, strict=True):
+        assert (row.law, row.condition, row.level) == (record.row.law, record.row.condition, record.row.level)
+        assert row.tool_peak_mm == record.row.scores["tool_peak_mm"]
+        drawn = {
+            column.removeprefix("draw."): row[column] for column in parameters if not np.isnan(row[column])
+        }
+        assert drawn == runs[record.key].factors()
+    with rigbench.open_store(STORE) as opened:
+        columns = opened.runs("study", "key", studies=True)
+        assert list(columns["key"]) == list(whole.key)
+        assert list(columns["study"]) == list(whole.study)
+        assert set(opened.runs("key")["key"]) == set(plain.key)
+        assert [column.name for column in opened.columns(studies=True)] == list(whole)
+        assert list(opened.frame("study", studies=True).study) == list(whole.study)
 
 
 def test_gains_outside_the_limits_are_not_taken(

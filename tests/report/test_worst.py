@@ -11,10 +11,10 @@ import pytest
 
 from rigbench.campaign.reading import Record
 from rigbench.campaign.studies.worst_case import WorstFound
-from rigbench.campaign.studies.worst_direction import Departure
+from rigbench.report.drawn import Drawn, parameter_words
 from rigbench.report.paper import steady_settings, text_boxes
 from rigbench.report.worst_picture import worst_figure
-from rigbench.report.worst_words import LawWorst, by_law, share_words, worst_text
+from rigbench.report.worst_words import Departing, LawWorst, by_law, share_words, worst_text
 from rigbench.scores.limit_share import LimitShare
 from rigbench.scores.row import Row
 
@@ -37,7 +37,10 @@ def found(
 def law_of(levels: list[WorstFound], parameters: int = 12, **given: Any) -> LawWorst:
     ((own, told),) = by_law(levels)
     names = [f"link_inertia_percent.a_link_with_quite_a_long_name_{k}.{k % 3 + 1}" for k in range(parameters)]
-    departures = tuple(Departure(name, (-1.0) ** k, 0.5 if k < 4 else None) for k, name in enumerate(names))
+    departures = tuple(
+        Departing(Drawn(name, parameter_words(name), (-1.0) ** k, f"{-k} %"), 0.5 if k < 4 else None)
+        for k, name in enumerate(names)
+    )
     return LawWorst(
         told.sheet, told.law, own, told, departures if told.record else (), given.get("drawn", {})
     )
@@ -77,7 +80,8 @@ def test_the_words_claim_no_more_than_was_found() -> None:
     assert "nothing is known from 7 runs" in text
     assert f"replay: rigbench trace results/x.sqlite {KEY[:12]}" in text
     assert "the worst machine found at level 0.5 departs so" in text
-    assert "by itself makes 50 % of the limit" in text
+    named = "link inertia 2, a_link_with_quite_a_long_name_1"
+    assert f"{named} -1 (-1 %); by itself makes 50 % of the limit" in text
     assert "and 6 more" in text
     assert "the worst case" not in text
 

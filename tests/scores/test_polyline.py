@@ -37,6 +37,29 @@ def test_equals_every_point_against_every_segment(count: int, vertices: int, see
     assert farthest(points, path) == pytest.approx(by_every_segment(points, path), rel=1e-9, abs=1e-15)
 
 
+@pytest.mark.parametrize("seed", range(5))
+def test_a_path_that_comes_by_again_is_looked_at_whole(seed: int) -> None:
+    """Laps side by side and a walk at random: as every segment has it, though a point's own lap is not the nearest."""
+    random = np.random.default_rng(seed)
+    turn = np.linspace(0.0, 7.0 * 2.0 * np.pi, 900)
+    laps = np.column_stack((np.cos(turn), np.sin(turn), 0.05 * np.sin(0.5 * turn)))
+    wandering = np.cumsum(random.normal(size=(700, 3)), axis=0)
+    for path in (laps, wandering):
+        points = path + random.normal(scale=0.3, size=(1, 3)) + random.normal(scale=0.05, size=path.shape)
+        spans = path[1:] - path[:-1]
+        along = np.einsum("psk,sk->ps", points[:, None] - path[None, :-1], spans) / np.sum(spans**2, axis=1)
+        feet = path[None, :-1] + np.clip(along, 0.0, 1.0)[..., None] * spans
+        gaps = np.linalg.norm(points[:, None] - feet, axis=2).min(axis=1)
+        assert farthest(points, path) == pytest.approx(gaps.max(), rel=1e-9)
+
+
+def test_points_on_a_long_path_far_away_have_no_distance() -> None:
+    """What is left is rounding, 1e-13 of coordinates of size 1000, wherever the boxes around segments end."""
+    path = np.linspace([1000.0, -2000.0, 500.0], [1001.0, -2003.0, 507.0], 1000)
+    points = path[:-1] + np.linspace(0.0, 1.0, 999)[:, None] * (path[1:] - path[:-1])
+    assert farthest(points, path) <= 1e-12
+
+
 def test_the_nearest_vertex_may_belong_to_another_segment() -> None:
     """A point beside the middle of a long segment, with a vertex of another one close by."""
     path = np.array([[0, 0, 0], [10, 0, 0], [10, 5, 0], [5, 5, 0], [5, 0.3, 0]], float)

@@ -1,21 +1,40 @@
-"""Searches within a study: plain code that asks for runs, replayed from the known ones each time."""
+"""Searches within a study: plain code that asks for runs, replayed from the known ones each time.
+
+As the same runs are asked for again and again, their entries are made once: :class:`MakesOnce`.
+"""
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Sequence
+from collections.abc import Callable, Hashable, Iterable, Sequence
+from functools import cached_property
 from itertools import zip_longest
-from typing import TypeVar
+from typing import Any, TypeVar
 
 from rigbench.campaign.plan import Entry
 from rigbench.campaign.study import Known
 from rigbench.scores.row import Row
 
-__all__ = ["Ask", "in_step", "replayed"]
+__all__ = ["Ask", "MakesOnce", "in_step", "replayed"]
 
 Ask = Callable[[Sequence[Entry]], list[Row]]
 """Gives what came of a batch of runs. It does not return where one of them is to be done."""
 
 T = TypeVar("T")
+
+
+class MakesOnce:
+    """A study that makes its entries once, so that their keys are worked out once."""
+
+    @cached_property
+    def _made(self) -> dict[Hashable, Any]:
+        return {}
+
+    def _once(self, mark: Hashable, make: Callable[[], T]) -> T:
+        """Return what was made under a ``mark``, as it is or made now."""
+        if mark not in self._made:
+            self._made[mark] = make()
+        found: T = self._made[mark]
+        return found
 
 
 class _ToDoError(Exception):

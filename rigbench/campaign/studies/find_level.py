@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Iterator, Mapping, Sequence
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, replace
 from itertools import pairwise
 from math import ceil, inf, log2
 from typing import TYPE_CHECKING, Any
@@ -11,6 +11,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from rigbench.campaign.plan import Entry
+from rigbench.campaign.studies.asking import MakesOnce
 from rigbench.campaign.study import Known
 from rigbench.scores.results import Tolerance, level_name
 from rigbench.scores.row import Row
@@ -49,7 +50,7 @@ class Searching:
 
 
 @dataclass(frozen=True)
-class FindLevel:
+class FindLevel(MakesOnce):
     """The study: for each draw, law and sheet, the level from which the draw no longer keeps the tolerance.
 
     The rungs of the matrix's ladder come first, from below, up to the first that misses: these runs are the
@@ -67,9 +68,6 @@ class FindLevel:
     steps: int
     rungs_missing: bool = False
     name: str = NAME
-    _entries: dict[tuple[Any, ...], list[Entry]] = field(
-        default_factory=dict, init=False, repr=False, compare=False
-    )
 
     @property
     def finest(self) -> float:
@@ -88,6 +86,17 @@ class FindLevel:
         if all(rung.level != self.most for rung in one.rungs):
             counts[-1] += 1
         return max(counts) + (sum(rung.random for rung in one.rungs) if self.rungs_missing else 0)
+
+    def examples(self) -> Sequence[tuple[int, Iterable[Entry]]]:
+        """See :class:`rigbench.campaign.study.Study`: all draws, level by level of the finest grid."""
+        runs = (
+            entry
+            for part in range(2**self.steps, 0, -1)
+            for draw in range(self.draws)
+            for one in self.searching
+            for entry in self._at(_Path(one, draw), part * self.finest)
+        )
+        return [(self.most_runs, runs)]
 
     def declared(self) -> Mapping[str, Any]:
         """See :class:`rigbench.campaign.study.Study`."""
@@ -118,14 +127,14 @@ class FindLevel:
         one = path.of
         rung = next((rung for rung in one.rungs if rung.level == level), None)
         draw = path.draw if rung is None or rung.random else None
-        place = one.sheet, one.law, level, draw
-        if place not in self._entries:
-            name = level_name(level) if rung is None else rung.condition
-            self._entries[place] = [
+        name = level_name(level) if rung is None else rung.condition
+        return self._once(
+            (one.sheet, one.law, level, draw),
+            lambda: [
                 Entry(one.sheet, one.law, motion, name, level, draw, _at_level(run, level, draw))
                 for motion, run in one.runs.items()
-            ]
-        return self._entries[place]
+            ],
+        )
 
 
 def _at_level(run: Run, level: float, draw: int | None) -> Run:

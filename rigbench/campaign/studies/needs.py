@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterator, Mapping, Sequence
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
 from functools import cached_property
 from typing import TYPE_CHECKING, Any
 
 from rigbench.arm.draws import draw_values
 from rigbench.campaign.plan import Entry
+from rigbench.campaign.studies.asking import MakesOnce
 from rigbench.campaign.study import Known
 from rigbench.scores.limit_search import LADDER, next_probes
 from rigbench.scores.needs_design import TOGETHER, A, B, Group, NeedsDesign, Subject, alone, swapped
@@ -26,7 +27,7 @@ Probe = tuple[int, int]
 
 
 @dataclass(frozen=True)
-class NeedsStudy:
+class NeedsStudy(MakesOnce):
     """First all runs of a pick-freeze design, then searches on a ladder of levels, all side by side.
 
     The design's runs stand under the number of their row in place of a draw, at the design's level, in
@@ -47,6 +48,17 @@ class NeedsStudy:
         """How many runs it takes at most: all of the design, and searches in which every draw is in doubt."""
         return self.design.share_runs + self.design.most_search_runs
 
+    def examples(self) -> Sequence[tuple[int, Iterable[Entry]]]:
+        """See :class:`rigbench.campaign.study.Study`: the design; all draws at a rung, at the next ..."""
+        searched = (
+            entry
+            for rung in range(len(LADDER))
+            for draw in range(self.design.draws)
+            for search in self._searches()
+            for entry in self._probe(search, (draw, rung))
+        )
+        return [(self.design.share_runs, self._points), (self.design.most_search_runs, searched)]
+
     def declared(self) -> Mapping[str, Any]:
         """Return the design, from which the rows of the runs can be read."""
         return self.design.declared()
@@ -54,11 +66,7 @@ class NeedsStudy:
     def rounds(self, known: Known) -> Sequence[Sequence[Entry]]:
         """Return the design, then what all searches ask for next, again and again."""
         found: list[Sequence[Entry]] = [self._points]
-        searches = [
-            _Search(subject, group, {})
-            for subject in self.design.subjects
-            for group in (None, *subject.groups)
-        ]
+        searches = list(self._searches())
         while all(known(entry) is not None for entry in found[-1]):
             asked = []
             for search in searches:
@@ -73,10 +81,10 @@ class NeedsStudy:
                     search.known.setdefault(draw, {})[rung] = keeps(rows, self.tolerance)
         return found
 
-    @cached_property
-    def _made(self) -> dict[tuple[Any, ...], tuple[Entry, ...]]:
-        """The runs of the searches so far, so that their keys are worked out once."""
-        return {}
+    def _searches(self) -> Iterator[_Search]:
+        for subject in self.design.subjects:
+            for group in (None, *subject.groups):
+                yield _Search(subject, group, {})
 
     @cached_property
     def _points(self) -> tuple[Entry, ...]:
@@ -102,16 +110,15 @@ class NeedsStudy:
             yield swapped(group), _rows(points.parameters, page)
 
     def _probe(self, search: _Search, probe: Probe) -> tuple[Entry, ...]:
-        """Return the runs of one draw at one rung, made once."""
-        mark = (search.subject.sheet, search.subject.law, search.group and search.group.name, probe)
-        if mark not in self._made:
-            draw, rung = probe
-            subject, group = search.subject, search.group
-            level = self.design.level * LADDER[rung]
-            condition = TOGETHER if group is None else alone(group.name)
-            change = _as_it_is if group is None else _alone(group)
-            self._made[mark] = tuple(self._entries(subject, condition, level, draw, change))
-        return self._made[mark]
+        """Return the runs of one draw at one rung."""
+        (draw, rung), subject, group = probe, search.subject, search.group
+        condition = TOGETHER if group is None else alone(group.name)
+        change = _as_it_is if group is None else _alone(group)
+        level = self.design.level * LADDER[rung]
+        return self._once(
+            (subject.sheet, subject.law, condition, probe),
+            lambda: tuple(self._entries(subject, condition, level, draw, change)),
+        )
 
     def _entries(
         self, subject: Subject, condition: str, level: float, draw: int, change: Callable[[Run], Run]

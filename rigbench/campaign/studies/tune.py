@@ -6,13 +6,15 @@ It comes before the matrix, whose runs then have the gains that were found. See 
 from __future__ import annotations
 
 import math
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Iterable, Iterator, Mapping, Sequence
 from dataclasses import asdict, dataclass, field, replace
 from functools import partial
 from typing import TYPE_CHECKING, Any
 
+import numpy as np
+
 from rigbench.campaign.plan import Entry
-from rigbench.campaign.studies.asking import Ask, in_step, replayed
+from rigbench.campaign.studies.asking import Ask, MakesOnce, in_step, replayed
 from rigbench.campaign.study import Known
 from rigbench.scores.gain_search import LEAST_TRIALS, Merit, Point, find_gains
 from rigbench.scores.row import Row
@@ -109,7 +111,7 @@ class Subject:
 
 
 @dataclass(frozen=True)
-class Tune:
+class Tune(MakesOnce):
     """The study: for each law and sheet, a search for the best gains; ``runs`` is the budget of each."""
 
     subjects: tuple[Subject, ...]
@@ -118,14 +120,22 @@ class Tune:
     runs: int
     seed: int
     name: str = NAME
-    _entries: dict[tuple[Any, ...], Entry] = field(
-        default_factory=dict, init=False, repr=False, compare=False
-    )
 
     @property
     def most_runs(self) -> int:
         """How many runs it takes at most."""
         return len(self.subjects) * self.runs
+
+    def examples(self) -> Sequence[tuple[int, Iterable[Entry]]]:
+        """See :class:`rigbench.campaign.study.Study`: trials of gains anywhere within their bounds."""
+        return [(self.most_runs, self._anywhere())]
+
+    def _anywhere(self) -> Iterator[Entry]:
+        rng = np.random.default_rng(self.seed)
+        low, high = [gain.low for gain in self.gains], [gain.high for gain in self.gains]
+        while True:
+            for subject in self.subjects:
+                yield from self._trial(subject, tuple(rng.uniform(low, high).tolist()))
 
     def declared(self) -> Mapping[str, Any]:
         """See :class:`rigbench.campaign.study.Study`."""
@@ -169,16 +179,16 @@ class Tune:
         return [self._entry(subject, motion, point, more) for motion in subject.runs for more in margins]
 
     def _entry(self, subject: Subject, motion: str, point: Point, more_ms: float) -> Entry:
-        """Return a run, made once, so that its key is worked out once."""
-        mark = subject.sheet, subject.law, motion, point, more_ms
-        if mark not in self._entries:
+
+        def make() -> Entry:
             run = subject.runs[motion]
             gains = dict(zip((gain.name for gain in self.gains), point, strict=True))
             timing = replace(run.timing, delay_ms=run.timing.delay_ms + more_ms)
             run = replace(run, law=with_gains(run.law, gains), timing=timing)
             name = _condition(gains, more_ms)
-            self._entries[mark] = Entry(subject.sheet, subject.law, motion, name, 0.0, run.draw, run)
-        return self._entries[mark]
+            return Entry(subject.sheet, subject.law, motion, name, 0.0, run.draw, run)
+
+        return self._once((subject.sheet, subject.law, motion, point, more_ms), make)
 
 
 def with_gains(law: LawChoice, gains: Mapping[str, float]) -> LawChoice:

@@ -5,8 +5,8 @@ What it finds is a machine that was run, so it shows that a law misses; that it 
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, field, replace
+from collections.abc import Iterable, Iterator, Mapping, Sequence
+from dataclasses import dataclass, replace
 from functools import partial
 from itertools import groupby
 from typing import TYPE_CHECKING, Any
@@ -14,7 +14,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from rigbench.campaign.plan import Entry
-from rigbench.campaign.studies.asking import Ask, in_step
+from rigbench.campaign.studies.asking import Ask, MakesOnce, in_step
 from rigbench.campaign.study import Known
 from rigbench.scores.limit_share import LimitShare, limit_share
 from rigbench.scores.results import Tolerance
@@ -48,7 +48,7 @@ class Subject:
 
 
 @dataclass(frozen=True)
-class WorstCase:
+class WorstCase(MakesOnce):
     """The study: for each law and sheet, at each level, the direction with the largest share of a limit.
 
     All u of the mismatch in [-1, 1] are searched, see :func:`find_worst`; each level begins with the worst
@@ -63,14 +63,23 @@ class WorstCase:
     tolerance: Tolerance
     seed: int
     name: str = NAME
-    _entries: dict[tuple[Any, ...], Entry] = field(
-        default_factory=dict, init=False, repr=False, compare=False
-    )
 
     @property
     def most_runs(self) -> int:
         """How many runs it takes at most."""
         return len(self.subjects) * self.runs
+
+    def examples(self) -> Sequence[tuple[int, Iterable[Entry]]]:
+        """See :class:`rigbench.campaign.study.Study`: machines anywhere in the box."""
+        return [(self.most_runs, self._anywhere())]
+
+    def _anywhere(self) -> Iterator[Entry]:
+        rng = np.random.default_rng(self.seed)
+        while True:
+            for subject in self.subjects:
+                direction = tuple(rng.uniform(-1.0, 1.0, len(subject.parameters)).round(4).tolist())
+                for motion in subject.runs:
+                    yield self._entry(subject, motion, self.levels[-1], direction)
 
     def declared(self) -> Mapping[str, Any]:
         """See :class:`rigbench.campaign.study.Study`."""
@@ -116,16 +125,16 @@ class WorstCase:
         return worst
 
     def _entry(self, subject: Subject, motion: str, level: float, direction: Direction) -> Entry:
-        """Return a run, made once, so that its key is worked out once."""
-        mark = subject.sheet, subject.law, motion, level, direction
-        if mark not in self._entries:
+
+        def make() -> Entry:
             run = subject.runs[motion]
             draw = 0 if run.noisy else None
             directions = tuple(zip(subject.parameters, direction, strict=True))
             run = replace(run, level=level, draw=draw, directions=directions)
             name = f"worst case at {str(level).removesuffix('.0')}"
-            self._entries[mark] = Entry(subject.sheet, subject.law, motion, name, level, draw, run)
-        return self._entries[mark]
+            return Entry(subject.sheet, subject.law, motion, name, level, draw, run)
+
+        return self._once((subject.sheet, subject.law, motion, level, direction), make)
 
 
 def _trials(runs: int, levels: int, motions: int) -> int:

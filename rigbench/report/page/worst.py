@@ -61,7 +61,10 @@ def worst_laws_told(found: FoundWorst, store: str) -> Iterator[dict[str, Any]]:
                 if one.searched
             ],
             "told": _sentence(told_words(law)),
-            "departures": [(one.parameter, f"{one.u:+g}", difference_words(one)) for one in law.shown],
+            "departures": [
+                (one.drawn.words, f"{one.drawn.u:+g}", one.drawn.amount, difference_words(one))
+                for one in law.shown
+            ],
             "more": more_words(law),
             "replay": "" if record is None else replay_command(record.key, store),
         }

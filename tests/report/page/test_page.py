@@ -278,7 +278,7 @@ def test_worst_machines_are_those_of_the_study(
         )
         searched = next(one for one in missing if one.searched)
         assert f"Replayed by rigbench trace trays.sqlite {searched.record.key[:12]}" in words
-    assert words.count("link_mass_percent.upper") == 2
+    assert words.count("link mass, upper") == 2
     assert "there may still be one" in words
     assert "the worst case" not in words
     assert "Printed by rigbench worst trays.sqlite" in words
