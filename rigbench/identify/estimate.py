@@ -31,6 +31,9 @@ SOFT_ROUNDS = 10
 LEAST_NOISE = 1e-11
 """Floor of a joint's noise as a share of its torque: rounding, where data are without noise."""
 
+NIL = 1e-9
+"""Least share of a joint's samples that is divided by: one without any has no weight anyway."""
+
 LAGS = 2
 """Samples over which residuals may still hang together: noise on positions leaves a trace, torques' none."""
 
@@ -108,7 +111,7 @@ def estimate(base: Base, recordings: Sequence[Rows]) -> Estimate:
     values, noise, used = _fit(y, torque, usable)
     weighted = y / noise[:, None] * used[:, :, None]
     condition = _condition(name, base, weighted.reshape(-1, base.count))
-    residual = np.where(used, torque - y @ values, 0.0) / noise
+    residual = np.where(used, torque - y @ values, 0.0) / (noise * np.sqrt(used.mean(axis=0).clip(NIL)))
     bread = np.linalg.inv(np.einsum("sja,sjb->ab", weighted, weighted))
     ends = np.cumsum([len(rows.y) for rows in recordings])[:-1]
     meat = _long_run(np.split(weighted, ends), np.split(residual, ends))
@@ -167,7 +170,11 @@ def _spread(residual: Floats, usable: NDArray[bool_]) -> Floats:
 
 
 def _long_run(weighted: list[Floats], residual: list[Floats]) -> Floats:
-    """Return Y' R Y (b, b) of recordings' regressors (S, n, b) and residuals (S, n), both over the noise."""
+    """Return Y' R Y (b, b) of recordings' regressors (S, n, b) and residuals (S, n), both over the noise.
+
+    Where a sample is not used both are 0; residuals are larger by one over the root of the share that is,
+    so that their products' mean over all samples is a covariance, and Bartlett's weights keep R positive.
+    """
     total = np.zeros((weighted[0].shape[2],) * 2)
     count = sum(len(part) for part in residual)
     for lag in range(LAGS + 1):
