@@ -12,7 +12,8 @@ from rigbench.arm.arm import PRISMATIC, Arm, Floats
 from rigbench.errors import Fault
 from rigbench.identify.filtering import CORNER_HZ, STATE_FACTOR, derivative, low_pass
 from rigbench.identify.recording import Recording
-from rigbench.identify.recording_file import TIME, Table, column_names
+from rigbench.identify.recording_file import TIME, column_names
+from rigbench.identify.recording_table import Table
 from rigbench.identify.regressor import Terms, parameter_values, regressor
 
 __all__ = ["implausible"]
