@@ -26,6 +26,9 @@ STATE_FACTOR = 4.0
 """Positions are filtered at so many times the corner, so that what the regressor's filter lets through
 passes theirs unharmed."""
 
+LEAST_RATE = 10.0
+"""Samples a second over the corner that the filter of positions needs: more than twice their corner."""
+
 ORDER = 4
 KEPT = 1.79
 """Samples kept each second over the corner: half of that is where this filter lets half of the power
@@ -43,7 +46,7 @@ distances, ten standard deviations of noise, and by more than this share of the 
 the turns of a smooth curve stay below."""
 
 DENSE = 100.0
-"""Samples a second over the corner beyond which samples are thinned out before the regressor: more show no more."""
+"""Samples a second over the corner beyond which they are thinned out before the regressor."""
 
 CHUNK = 4096
 """Samples whose whole regressor is in memory at once."""
@@ -124,12 +127,14 @@ def rows_of(
     regressor is worked out at every sample left; then regressor and torque pass the same filter at the
     corner, which biases nothing (Gautier 1997), and samples are kept at :data:`KEPT` times the corner.
 
-    Raises InputFaults if the rate is below eight times the corner, or nothing is left between the ends.
+    Raises InputFaults if the rate is below ten times the corner, or nothing is left between the ends.
     """
     rate = recording.rate_hz
-    if rate < 2 * STATE_FACTOR * corner_hz:
+    if rate < LEAST_RATE * corner_hz:
         problem = f"{rate:.4g} samples a second are too few for a filter at {corner_hz:g} Hz"
-        raise InputFaults.one(recording.name, "t_s", problem, f"{2 * STATE_FACTOR * corner_hz:g} or more")
+        raise InputFaults.one(
+            recording.name, "t_s", problem, f"{LEAST_RATE * corner_hz:g} or more, or a lower corner_hz"
+        )
     least = 2 * TRIM / corner_hz + 1 / (KEPT * corner_hz)
     if len(recording.t) <= least * rate + 1:
         problem = f"{recording.t[-1] - recording.t[0]:.3g} s are too short for a filter at {corner_hz:g} Hz"
@@ -157,7 +162,7 @@ def rows_of(
 
 
 def _standing(v: Floats, rate_hz: float, corner_hz: float) -> NDArray[bool_]:
-    """Tell (N, n) where a joint stands or turns back at any of the samples within half a period of the corner.
+    """Tell (N, n) where a joint stands or turns back within half a period of the corner.
 
     There the sign of its speed is the noise's, and the filter carries that as far as its window. The noise
     is what speeds hold above the corner.

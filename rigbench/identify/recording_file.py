@@ -92,10 +92,11 @@ def write_recording(path: Path | str, arm: Arm, recording: Recording) -> None:
 def _no_header(table: Table, needed: list[str]) -> Fault:
     """Return the fault of a first line that names no column of the arm."""
     said = ",".join(table.names)
-    problem = f"the first line names no column of the arm: '{said[:60]}'" if said else "no columns"
+    problem = f"the header names no column of the arm: '{said[:60]}'"
     if other := next((sign for sign in (";", "\t") if sign in said), None):
         problem += "; its cells are parted by " + {";": "semicolons", "\t": "tabs"}[other]
-    return table.column_fault("", problem, f"{','.join(needed)}, parted by commas, with decimal points")
+    text = "" if table.lines is None else ", parted by commas, with decimal points"
+    return table.column_fault("", problem, f"columns {','.join(needed)}{text}")
 
 
 def _header_faults(table: Table, names: dict[str, tuple[str, ...]], known: list[str]) -> list[Fault]:

@@ -81,7 +81,8 @@ def _csv(file: str, known: Set[str]) -> tuple[Table, list[Fault]]:
     if not rows:
         raise InputFaults.one(file, "", "no table in it", "a header and rows of numbers")
     names = tuple(cell.strip() for cell in rows[0][1])
-    numbers, faults = np.full((len(rows) - 1, len(names)), np.nan), []
+    numbers = np.full((len(rows) - 1, len(names)), np.nan)
+    faults: list[Fault] = []
     for row, (line, cells) in enumerate(rows[1:]):
         if len(cells) == len(names):
             numbers[row] = [_number(cell) for cell in cells]
