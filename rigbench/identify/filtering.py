@@ -54,6 +54,9 @@ CHUNK = 4096
 STANDING = 0.01
 """Share of its greatest speed below which a joint counts as standing."""
 
+AROUND = 1.5
+"""Periods of the corner, half before and half after, over which a joint's turn is felt."""
+
 NOISY = 3.0
 """A speed below so many standard deviations of its noise has no sign that counts."""
 
@@ -162,13 +165,12 @@ def rows_of(
 
 
 def _standing(v: Floats, rate_hz: float, corner_hz: float) -> NDArray[bool_]:
-    """Tell (N, n) where a joint stands or turns back within half a period of the corner.
+    """Tell (N, n) where a joint stands or turns back within :data:`AROUND` periods of the corner.
 
-    There the sign of its speed is the noise's, and the filter carries that as far as its window. The noise
-    is what speeds hold above the corner.
+    There the sign of its speed is the noise's. The noise is what speeds hold above the corner.
     """
     noise = 1.4826 * np.median(np.abs(v - low_pass(v, rate_hz, corner_hz)), axis=0)
     slow = np.abs(v) < np.maximum(STANDING * np.abs(v).max(axis=0), NOISY * noise)
-    window = max(1, int(rate_hz / corner_hz))
+    window = max(1, int(AROUND * rate_hz / corner_hz))
     standing: NDArray[bool_] = scipy.ndimage.maximum_filter1d(slow, window, axis=0)
     return standing
