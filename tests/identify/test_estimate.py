@@ -12,6 +12,7 @@ from rigbench.arm.dynamics import inverse_dynamics
 from rigbench.arm.files import ArmFiles
 from rigbench.arm.mismatch import Mismatch
 from rigbench.errors import InputFaults
+from rigbench.identify import filtering
 from rigbench.identify.base import base_of
 from rigbench.identify.bounds import bounds_of
 from rigbench.identify.estimate import estimate, torque_error
@@ -329,14 +330,29 @@ def test_steps_and_turns_are_no_spikes():
 
 
 @pytest.mark.parametrize("rate", [100, 20_000])
-def test_slow_and_fast_recordings(rubbing, rate):
+def test_slow_and_fast_recordings(rubbing, rate, monkeypatch):
     """At ten times the corner and at two thousand times the parameters come back to 1e-3 of what they are made of; the
-    fast one leaves no more rows than one at 1 kHz."""
-    base = base_of(rubbing, GRAVITY, Terms())
-    rows = rows_of(rubbing, GRAVITY, Terms(), base, formula_recording(rubbing, rate=rate, v=False))
+    regressor is worked out at 1000 samples a second at most."""
+    asked = []
+
+    def counting(arm, gravity, q, *rest):
+        asked.append(len(q))
+        return regressor(arm, gravity, q, *rest)
+
+    monkeypatch.setattr(filtering, "regressor", counting)
+    base, given = base_of(rubbing, GRAVITY, Terms()), formula_recording(rubbing, rate=rate, v=False)
+    rows = rows_of(rubbing, GRAVITY, Terms(), base, given)
+    assert sum(asked) == min(len(given.t), 1000 * given.t[-1] + 1) // 1
     error = estimate(base, [rows]).values - truth(rubbing, Terms(), base)
     assert np.abs(error / np.maximum(scale(rubbing, Terms(), base), 0.01)).max() < 1e-3
-    assert len(rows.y) == pytest.approx(15.2 * 17.9, rel=0.15)
+
+
+def test_the_slowest_rate_is_ten_times_the_corner(rubbing):
+    """80 Hz is twice the corner of the positions' filter at 10 Hz, which nothing filters: a fault, and the way out."""
+    base = base_of(rubbing, GRAVITY, Terms())
+    with pytest.raises(InputFaults, match="expected 100 or more, or a lower corner_hz"):
+        rows_of(rubbing, GRAVITY, Terms(), base, formula_recording(rubbing, rate=80))
+    assert len(rows_of(rubbing, GRAVITY, Terms(), base, formula_recording(rubbing, rate=80), 8.0).y) > 100
 
 
 def test_a_speed_below_its_noise_counts_as_standing(rubbing):
