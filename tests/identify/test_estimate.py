@@ -214,6 +214,24 @@ def held(done, right):
     return (low <= right) & (right <= high)
 
 
+def test_ten_samples_a_parameter_and_joint_are_the_least(rubbing):
+    """11 parameters of two joints take 55 samples: 54 are a fault, 55 and 56 give finite intervals that hold most."""
+    base = base_of(rubbing, GRAVITY, Terms())
+    rows = noisy(formula_rows(rubbing, Terms(), base, count=56), 1.0)
+
+    def first(count):
+        return Rows(rows.y[:count], rows.torque[:count], rows.usable[:count], "short.csv")
+
+    with pytest.raises(
+        InputFaults, match="54 samples after filtering for 11 parameters; expected 55 or more"
+    ):
+        estimate(base, [first(54)])
+    for count in (55, 56):
+        found = estimate(base, [first(count)])
+        assert np.isfinite(found.deviation).all()
+        assert held(found, truth(rubbing, Terms(), base)).sum() >= 8
+
+
 def coverage(repetitions):
     """Share of 95 % intervals that hold the truth, pooled; planar2 on the rig with noisy sensors."""
     arm, base = FILES.arm(), base_of(FILES.arm(), GRAVITY, LINKS)
@@ -320,10 +338,13 @@ def test_spikes_do_not_count(rubbing):
 
 
 def test_steps_and_turns_are_no_spikes():
-    """A square wave, a sine of 5 Hz at 100 Hz, a standing column and counts of an encoder come back as they were."""
+    """At 100 Hz a square wave, sines of 5 and 0.2 Hz, a standing column and counts of an encoder come back as they
+    were."""
     t = np.arange(2000) / 100
     wave = np.sin(2 * np.pi * 5 * t)
-    columns = np.column_stack([np.sign(np.sin(t)), wave, np.zeros(2000), np.round(wave / 0.05) * 0.05])
+    columns = np.column_stack(
+        [np.sign(np.sin(t)), wave, np.sin(0.4 * np.pi * t), np.zeros(2000), np.round(wave / 0.05) * 0.05]
+    )
     cleaned, count = without_spikes(columns)
     assert count == 0
     assert np.array_equal(cleaned, columns)

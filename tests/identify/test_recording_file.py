@@ -440,3 +440,16 @@ def test_both_columns_of_two_joints_swapped(tmp_path, rubbing):
         said = said_of(tmp_path, rubbing, rubbing, change)
         assert all(expected in line for line in said)
         assert {"q_deg.elbow", "tau_nm.elbow"} <= {line.split(": ")[1] for line in said}
+
+
+def test_a_slip_stands_out_from_friction_that_the_model_lacks(tmp_path, tray6):
+    """Three quarters of joint 6's torque is friction, of which the model knows nothing; a wrong sign is named."""
+    bare = replace(tray6.drives, viscous=np.zeros(6), coulomb=np.zeros(6), static=np.zeros(6))
+    (said,) = said_of(
+        tmp_path,
+        tray6,
+        tray6.replaced(drives=bare),
+        lambda r: replace(r, torque=column(r.torque, 5, -1)),
+        motion=TRAY6_MOTION,
+    )
+    assert "tau_nm.j6: looks of the wrong sign" in said
