@@ -314,6 +314,21 @@ def test_samples_left_out_count_neither_as_known_nor_as_exact(rubbing):
     assert told == pytest.approx(right, rel=0.15)
 
 
+def test_noise_that_hangs_together_widens_intervals(planar2):
+    """Each sample's noise shared half with the next: the mean of N such has twice the variance of white noise, of which
+    Bartlett's weights over two lags see 1 + 2 (2/3) / 2 = 1.67, on the mean of 20 draws."""
+    terms = Terms(rotor=False, viscous=False, coulomb=False, offset=True)
+    base, told = base_of(planar2, GRAVITY, terms), []
+    rows = formula_rows(planar2, terms, base)
+    offsets = [i for i, name in enumerate(base.names) if name.startswith("offset")]
+    for seed in range(20):
+        white = np.random.default_rng(seed).normal(size=(401, 2))
+        for noise in (white[1:], (white[1:] + white[:-1]) / np.sqrt(2)):
+            found = estimate(base, [replace(rows, torque=rows.torque + noise)])
+            told.append((found.deviation[offsets] ** 2).mean())
+    assert np.mean(told[1::2]) / np.mean(told[::2]) == pytest.approx(1.67, rel=0.1)
+
+
 def test_spikes_do_not_count(rubbing):
     """50 N m more or less in 1 % of the torques and 2 degrees in 0.2 % of the positions move no value by its own
     standard deviation, and are counted: filters would smear them into noise of 1 N m."""
