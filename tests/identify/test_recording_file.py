@@ -443,11 +443,13 @@ def test_both_columns_of_two_joints_swapped(tmp_path, rubbing):
 
 
 def test_a_slip_stands_out_from_friction_that_the_model_lacks(tmp_path, tray6):
-    """Three quarters of joint 6's torque is friction, of which the model knows nothing; a wrong sign is named."""
+    """Nearly all of joint 6's torque is friction, of which the model knows nothing; which never drives, so a
+    wrong sign is named."""
+    rough = replace(tray6.drives, viscous=5 * tray6.drives.viscous, coulomb=5 * tray6.drives.coulomb)
     bare = replace(tray6.drives, viscous=np.zeros(6), coulomb=np.zeros(6), static=np.zeros(6))
     (said,) = said_of(
         tmp_path,
-        tray6,
+        tray6.replaced(drives=rough),
         tray6.replaced(drives=bare),
         lambda r: replace(r, torque=column(r.torque, 5, -1)),
         motion=TRAY6_MOTION,
