@@ -51,7 +51,7 @@ class Estimate:
 
     ``noise`` (n,) [N m] is the standard deviation of each joint's residual after the filter; ``outliers``
     (n,) how many of the ``rows`` samples were left out; ``condition`` the condition number of the weighted
-    regressor with columns of unit length.
+    regressor with columns of unit length; ``spikes`` how many recorded samples were replaced before.
     """
 
     base: Base
@@ -61,6 +61,7 @@ class Estimate:
     outliers: NDArray[np.int64]
     rows: int
     condition: float
+    spikes: int = 0
 
     @property
     def deviation(self) -> Floats:
@@ -124,6 +125,7 @@ def estimate(base: Base, recordings: Sequence[Rows]) -> Estimate:
         outliers=(usable & ~used).sum(axis=0),
         rows=len(y),
         condition=condition,
+        spikes=sum(rows.spikes for rows in recordings),
     )
 
 

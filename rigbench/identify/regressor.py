@@ -33,10 +33,6 @@ class Terms:
         return tuple(name for name in ("rotor", "viscous", "coulomb", "offset") if getattr(self, name))
 
 
-LINKS_ALONE = Terms(rotor=False, viscous=False, coulomb=False)
-"""No drives: links alone."""
-
-
 @kernel
 def link_regressor(chain: Floats, q: Floats, v: Floats, a: Floats) -> Floats:
     """Return Y (N, n, 10 n) of the links for q, v, a (N, n): torques [N m] are Y times their parameters.

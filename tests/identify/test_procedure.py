@@ -70,6 +70,19 @@ def test_an_offset_is_found_and_predicted_with():
     assert "offset.elbow" in identify_text(done)
 
 
+def test_the_report_counts_spikes():
+    """Three torques of 500 N m among the recorded ones: said; none: not a word."""
+    recording, _ = record(PLANAR2, Settings(LINKS), EXACT, MOTION, "a", 0)
+    torque = recording.torque.copy()
+    torque[[1000, 2000, 3000], 0] = 500.0
+    spoiled, clean = (
+        identify_text(identify(PLANAR2, Settings(LINKS), [replace(recording, torque=each)]))
+        for each in (torque, recording.torque)
+    )
+    assert "3 recorded samples taken for spikes and left out" in spoiled
+    assert "spikes" not in clean
+
+
 def test_the_spread_says_how_far_declared_values_hold_on():
     """Torques 1.5 times the declared under noise of 20 N m: held within 0.1 % the arm moves less than half way,
     with 100 % to the estimate."""
