@@ -16,7 +16,7 @@ from rigbench.identify.base import Base
 from rigbench.identify.recording import Recording
 from rigbench.identify.regressor import Terms, regressor
 
-__all__ = ["CORNER_HZ", "Rows", "derivative", "low_pass", "rows_of", "without_spikes"]
+__all__ = ["CORNER_HZ", "Rows", "derivative", "inner", "low_pass", "rows_of", "without_spikes"]
 
 CORNER_HZ = 10.0
 """Default corner of the low-pass on torques and regressor [Hz] (our choice: five times and more what
@@ -89,6 +89,12 @@ def low_pass(x: Floats, rate_hz: float, corner_hz: float) -> Floats:
     return filtered
 
 
+def inner(count: int, rate_hz: float, corner_hz: float) -> slice:
+    """Return which of so many filtered samples are far enough from both ends; none where they are few."""
+    trim = int(TRIM * rate_hz / corner_hz)
+    return slice(trim, max(trim, count - trim))
+
+
 def derivative(x: Floats, rate_hz: float) -> Floats:
     """Return dx/dt of x (N, n) by five-point central differences; the two rows at each end are copies."""
     slope = np.empty_like(x)
@@ -158,8 +164,8 @@ def rows_of(
     y = np.concatenate([regressor(arm, gravity, q[k], v[k], a[k], terms)[:, :, base.kept] for k in parts])
     torque = low_pass(torque, rate, corner_hz)
     standing = _standing(v, rate, corner_hz) if terms.coulomb else np.zeros(v.shape, bool)
-    trim, step = int(TRIM * rate / corner_hz), round(rate / (KEPT * corner_hz))
-    kept = slice(trim, len(q) - trim, step)
+    within = inner(len(q), rate, corner_hz)
+    kept = slice(within.start, within.stop, round(rate / (KEPT * corner_hz)))
     filtered = [low_pass(y[:, i], rate, corner_hz)[kept] for i in range(arm.n)]
     return Rows(np.stack(filtered, axis=1), torque[kept], ~standing[kept], recording.name, sum(counts))
 

@@ -8,11 +8,11 @@ import numpy as np
 
 from rigbench.arm.arm import PRISMATIC, Arm, Floats
 from rigbench.errors import Fault, counted
-from rigbench.identify.filtering import CORNER_HZ, derivative, low_pass, without_spikes
+from rigbench.identify.filtering import derivative, low_pass, without_spikes
 from rigbench.identify.recording import Recording
 from rigbench.identify.recording_file import TIME, column_names
 from rigbench.identify.recording_table import Table
-from rigbench.identify.slips import FACTORS, TURN, slip_faults, slip_of
+from rigbench.identify.slips import FACTORS, TURN, corner_of, slip_faults, slip_of
 from rigbench.motion.limits import unit_of
 
 __all__ = ["implausible"]
@@ -31,6 +31,9 @@ FAR = 3.0
 
 FAST = 1.3
 """Share of its speed limit beyond which a joint was not moved by its drive."""
+
+WINDOW_S = 0.05
+"""Time over which a speed is taken for that [s]: noise of 0.1 deg is 3 deg/s then."""
 
 LEAST_JUMP, TURNED = 5.0, 180.0
 """A position that changes from row to row by less than this [deg, or cm] beside what speed allows is noisy or
@@ -116,7 +119,9 @@ def _jump_faults(arm: Arm, recording: Recording, table: Table) -> Iterator[Fault
 
 def _speed_faults(arm: Arm, recording: Recording, table: Table) -> Iterator[Fault]:
     """Yield the joints that outrun their drives, as they do when times are too short."""
-    v = np.abs(_speeds(recording))
+    window = min(max(1, round(WINDOW_S * recording.rate_hz)), len(recording.t) - 1)
+    q = without_spikes(recording.q)[0]
+    v = np.abs(q[window:] - q[:-window]) * recording.rate_hz / window
     for i, name in enumerate(column_names(arm)["q"]):
         unit, scale = unit_of(arm, i)
         limit = arm.drives.speed_limit[i]
@@ -131,14 +136,14 @@ def _speed_faults(arm: Arm, recording: Recording, table: Table) -> Iterator[Faul
 def _speeds(recording: Recording) -> Floats:
     """Return the low-passed speeds (N, n) that the positions say."""
     rate = recording.rate_hz
-    return derivative(low_pass(without_spikes(recording.q)[0], rate, min(CORNER_HZ, rate / 8)), rate)
+    return derivative(low_pass(without_spikes(recording.q)[0], rate, corner_of(recording)), rate)
 
 
 def _velocity_faults(arm: Arm, recording: Recording, v: Floats, table: Table) -> Iterator[Fault]:
     """Yield the columns of velocity that do not go with the positions' change."""
     names = column_names(arm)
     rate, own = recording.rate_hz, _speeds(recording)
-    seen = low_pass(without_spikes(v)[0], rate, min(CORNER_HZ, rate / 8))
+    seen = low_pass(without_spikes(v)[0], rate, corner_of(recording))
     alike = _alike(seen, own)
     for i, name in enumerate(names["v"]):
         best = int(alike[i].argmax())

@@ -13,13 +13,13 @@ import scipy.linalg
 from rigbench.arm.arm import PRISMATIC, Arm, Floats
 from rigbench.arm.dynamics import inverse_dynamics
 from rigbench.errors import Fault
-from rigbench.identify.filtering import CORNER_HZ, STATE_FACTOR, derivative, low_pass, without_spikes
+from rigbench.identify.filtering import CORNER_HZ, STATE_FACTOR, derivative, inner, low_pass, without_spikes
 from rigbench.identify.recording import Recording
 from rigbench.identify.recording_file import column_names
 from rigbench.identify.recording_table import Table
 from rigbench.identify.regressor import Terms, regressor
 
-__all__ = ["FACTORS", "TURN", "slip_faults", "slip_of"]
+__all__ = ["FACTORS", "TURN", "corner_of", "slip_faults", "slip_of"]
 
 TURN = float(np.degrees(1.0))
 FACTORS = {
@@ -46,6 +46,9 @@ TINY = 1e-12
 
 SAMPLES = 400
 """States at which torques are compared."""
+
+LEAST_SAMPLES = 50
+"""A recording with fewer samples between the filters' ends says nothing of slips."""
 
 MOST_JOINTS = 8
 """Up to so many joints, every set of positions in radians is tried."""
@@ -103,6 +106,9 @@ def slip_faults(
     Where there is no slip, what no masses, inertias and friction explain of a joint's torque, beyond noise,
     is told if it is more than half.
     """
+    kept = inner(len(recording.t), recording.rate_hz, corner_of(recording))
+    if kept.stop - kept.start < LEAST_SAMPLES:
+        return []
     seen = _seen(recording)
     before = _shares(seen.torque, _modelled(arm, gravity, seen.q, seen.v, seen.a), seen.v)
     if (before <= EXPLAINED).all():
@@ -121,16 +127,21 @@ def slip_faults(
     return faults
 
 
+def corner_of(recording: Recording) -> float:
+    """Return the corner of the filters through which a recording is judged [Hz]."""
+    return min(CORNER_HZ, recording.rate_hz / (2 * STATE_FACTOR))
+
+
 def _seen(recording: Recording) -> _Seen:
-    rate = recording.rate_hz
-    corner = min(CORNER_HZ, rate / (2 * STATE_FACTOR))
+    rate, corner = recording.rate_hz, corner_of(recording)
     q = low_pass(without_spikes(recording.q)[0], rate, corner)
     v = derivative(q, rate)
     a = derivative(v, rate)
     raw = without_spikes(recording.torque)[0]
     torque = low_pass(raw, rate, corner)
     noise = (raw - torque).std(axis=0) * np.sqrt(2 * corner / rate)
-    some = np.unique(np.linspace(0.05 * len(q), 0.95 * len(q) - 1, SAMPLES).astype(int))
+    kept = inner(len(q), rate, corner)
+    some = np.unique(np.linspace(kept.start, kept.stop - 1, SAMPLES).astype(int))
     return _Seen(q[some], v[some], a[some], torque[some], noise)
 
 

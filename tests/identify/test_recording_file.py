@@ -455,3 +455,18 @@ def test_a_slip_stands_out_from_friction_that_the_model_lacks(tmp_path, tray6):
         motion=TRAY6_MOTION,
     )
     assert "tau_nm.j6: looks of the wrong sign" in said
+
+
+@pytest.mark.parametrize("rows", [50, 100, 200, 400])
+def test_a_short_recording_is_no_slip(tmp_path, tray6, rows):
+    """Filters that are longer than what they filter say nothing of units: what is too short is told as that later."""
+    for start in (300, 900):
+        part = slice(start, start + rows)
+        said = said_of(
+            tmp_path,
+            tray6,
+            tray6,
+            lambda r, part=part: replace(r, t=r.t[part], q=r.q[part], torque=r.torque[part]),
+            motion=TRAY6_MOTION,
+        )
+        assert [line for line in said if "no excitation" not in line] == []
