@@ -42,6 +42,9 @@ GAIN = math.log(2.0)
 LEAST, MOST = 0.1, 10.0
 """Unexplained shares below and above count as these."""
 
+MUTE = 0.02
+"""A model whose torque is below this share of the recorded says nothing of it."""
+
 TINY = 1e-12
 
 SAMPLES = 400
@@ -156,7 +159,8 @@ def _modelled(arm: Arm, gravity: tuple[float, float, float], q: Floats, v: Float
 def _shares(torque: Floats, model: Floats, v: Floats) -> Floats:
     """Return the rms of what is unexplained of each joint's torque (S, n) as a share of it, (n,).
 
-    What the ``model`` leaves may be friction, of any size: viscous and Coulomb's, neither below 0.
+    What the ``model`` leaves may be friction, of any size: viscous and Coulomb's, neither below 0. Where that
+    is all but everything, so that the model might as well say nothing, nothing counts as explained.
     """
     error, dry = torque - model, np.sign(v)
     vv, vd, dd, ve, de, ee = (
@@ -167,8 +171,9 @@ def _shares(torque: Floats, model: Floats, v: Floats) -> Floats:
     across = np.maximum(vv * dd - vd**2, TINY)
     viscous, coulomb = (dd * ve - vd * de) / across, (vv * de - vd * ve) / across
     both = np.where((viscous > 0) & (coulomb > 0), viscous * ve + coulomb * de, 0.0)
-    left = ee - np.maximum.reduce([*alone, both])
-    share: Floats = np.sqrt(np.maximum(left, 0) / np.maximum((torque**2).sum(axis=0), TINY))
+    left, whole = ee - np.maximum.reduce([*alone, both]), np.maximum((torque**2).sum(axis=0), TINY)
+    mute = (model**2).sum(axis=0) < MUTE**2 * whole
+    share: Floats = np.where(mute, 1.0, np.sqrt(np.maximum(left, 0) / whole))
     return share
 
 

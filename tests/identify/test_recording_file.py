@@ -349,6 +349,7 @@ SLIPS = {
     "q of one joint turned twice": (lambda r: replace(r, q=column(r.q, 1, 57.29578)), ["q_deg.j2", "it looks 57.3 times too large"]),
     "torques in N mm": (lambda r: replace(r, torque=r.torque * 1e3), ["tau_nm.j1: looks 1000 times too large", "tau_nm.j6"]),
     "one torque in kN m": (lambda r: replace(r, torque=column(r.torque, 2, 1e-3)), ["tau_nm.j3: looks 1000 times too small"]),
+    "one torque in N mm": (lambda r: replace(r, torque=column(r.torque, 5, 1e3)), ["tau_nm.j6: looks 1000 times too large"]),
     "times in ms": (lambda r: replace(r, t=r.t * 1e3), ["bad.csv:1: t_s: 0.5 samples a second, so times may be in ms"]),
     "torques swapped": (lambda r: replace(r, torque=r.torque[:, [0, 2, 1, 3, 4, 5]]), ["tau_nm.j2 and tau_nm.j3 look swapped"]),
     "positions swapped": (lambda r: replace(r, q=r.q[:, [0, 1, 2, 4, 3, 5]]), ["q_deg.j4 and q_deg.j5 look swapped"]),
@@ -428,6 +429,19 @@ def test_a_badly_known_arm_is_no_fault(tmp_path, tray6, seed):
     for believed in (tray6, tray6.replaced(drives=bare)):
         true = tray6.replaced(parameters, drives)
         assert said_of(tmp_path, true, believed, lambda r: r, motion=TRAY6_MOTION) == []
+
+
+def test_friction_does_not_explain_any_scale(tmp_path, tray6):
+    """A wrist that its model makes four times too heavy: a thousand times the torque would be friction to the last
+    percent, which is no slip."""
+    parameters = tray6.parameters.copy()
+    parameters[-1] *= 4.0
+    rotors = tray6.drives.rotor_inertia * np.array([1, 1, 1, 1, 1, 4.0])
+    bare = replace(
+        tray6.drives, rotor_inertia=rotors, viscous=np.zeros(6), coulomb=np.zeros(6), static=np.zeros(6)
+    )
+    believed = tray6.replaced(parameters, bare)
+    assert said_of(tmp_path, tray6, believed, lambda r: r, motion=TRAY6_MOTION) == []
 
 
 def test_both_columns_of_two_joints_swapped(tmp_path, rubbing):
