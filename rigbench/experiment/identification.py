@@ -123,8 +123,8 @@ def load_identification(path: str | Path) -> DeclaredIdentification:
         keys.declared_percent / 100,
     )
     recordings, loaded = (
-        [_recording(folder / name, files, settings, findings, carrying) for name in names or ()]
-        for names, carrying in ((keys.recordings, False), (keys.loaded, True))
+        [_recording(folder / name, files, settings, findings) for name in names or ()]
+        for names in (keys.recordings, keys.loaded)
     )
     check = None if keys.check is None else _recording(folder / keys.check, files, settings, findings)
     simulated = None
@@ -196,14 +196,12 @@ def _arm(path: Path, findings: Findings) -> ArmFiles | None:
     return files
 
 
-def _recording(
-    path: Path, files: ArmFiles, settings: Settings, findings: Findings, loaded: bool = False
-) -> Recording | None:
+def _recording(path: Path, files: ArmFiles, settings: Settings, findings: Findings) -> Recording | None:
     """Return a recording that is plausible, or None with its faults among the findings."""
     try:
         recording, table = read_recording(path, files.arm())
     except InputFaults as error:
         findings.take(error.faults)
         return None
-    findings.take(implausible(files.arm(), settings.gravity, recording, table, loaded))
+    findings.take(implausible(files.arm(), settings.gravity, recording, table))
     return recording

@@ -31,6 +31,9 @@ SOFT_ROUNDS = 10
 LEAST_NOISE = 1e-11
 """Floor of a joint's noise as a share of its torque: rounding, where data are without noise."""
 
+NIL = 1e-9
+"""Least share of a joint's samples that is divided by: one without any has no weight anyway."""
+
 LAGS = 2
 """Samples over which residuals may still hang together: noise on positions leaves a trace, torques' none."""
 
@@ -48,7 +51,7 @@ class Estimate:
 
     ``noise`` (n,) [N m] is the standard deviation of each joint's residual after the filter; ``outliers``
     (n,) how many of the ``rows`` samples were left out; ``condition`` the condition number of the weighted
-    regressor with columns of unit length.
+    regressor with columns of unit length; ``spikes`` how many recorded samples were replaced before.
     """
 
     base: Base
@@ -58,6 +61,7 @@ class Estimate:
     outliers: NDArray[np.int64]
     rows: int
     condition: float
+    spikes: int = 0
 
     @property
     def deviation(self) -> Floats:
@@ -110,7 +114,7 @@ def estimate(base: Base, recordings: Sequence[Rows]) -> Estimate:
     values, noise, used = _fit(y, torque, usable)
     weighted = y / noise[:, None] * used[:, :, None]
     condition = _condition(name, base, weighted.reshape(-1, base.count))
-    residual = np.where(used, torque - y @ values, 0.0) / noise
+    residual = np.where(used, torque - y @ values, 0.0) / (noise * np.sqrt(used.mean(axis=0).clip(NIL)))
     bread = np.linalg.inv(np.einsum("sja,sjb->ab", weighted, weighted))
     ends = np.cumsum([len(rows.y) for rows in recordings])[:-1]
     meat = _long_run(np.split(weighted, ends), np.split(residual, ends))
@@ -123,6 +127,7 @@ def estimate(base: Base, recordings: Sequence[Rows]) -> Estimate:
         outliers=(usable & ~used).sum(axis=0),
         rows=len(y),
         condition=condition,
+        spikes=sum(rows.spikes for rows in recordings),
     )
 
 
@@ -178,7 +183,11 @@ def _spread(residual: Floats, usable: NDArray[bool_]) -> Floats:
 
 
 def _long_run(weighted: list[Floats], residual: list[Floats]) -> Floats:
-    """Return Y' R Y (b, b) of recordings' regressors (S, n, b) and residuals (S, n), both over the noise."""
+    """Return Y' R Y (b, b) of recordings' regressors (S, n, b) and residuals (S, n), both over the noise.
+
+    Where a sample is not used both are 0; residuals are larger by one over the root of the share that is,
+    so that their products' mean over all samples is a covariance, and Bartlett's weights keep R positive.
+    """
     total = np.zeros((weighted[0].shape[2],) * 2)
     count = sum(len(part) for part in residual)
     for lag in range(LAGS + 1):

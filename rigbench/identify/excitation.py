@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import contextlib
 from collections.abc import Callable
 from dataclasses import dataclass
 from functools import cached_property
@@ -199,7 +200,9 @@ def excite(
             tell(done, cost(flat))
 
     found = minimize(cost, best.ravel(), method="L-BFGS-B", options={"maxiter": rounds}, callback=after)
-    motions = [search.motion(point, periods) for point in (found.x.reshape(best.shape), best)]
+    motions = [search.motion(best, periods)]
+    with contextlib.suppress(InputFaults):  # where the last step left the limits for good, the start is left
+        motions.insert(0, search.motion(found.x.reshape(best.shape), periods))
     reached = [search.condition(motion) for motion in motions]
     chosen = int(np.argmin(reached)) if criterion == "condition" else 0
     return Excitation(motions[chosen], reached[chosen], float(np.median(conditions)))

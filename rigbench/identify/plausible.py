@@ -1,25 +1,23 @@
-"""Whether a recording can be of this arm: units, order of columns, motion."""
+"""Whether a recording can be of this arm: rate, limits, motion, velocities, and then what its torques say."""
 
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass, replace
-from itertools import combinations
 
 import numpy as np
-from scipy.optimize import lsq_linear
 
 from rigbench.arm.arm import PRISMATIC, Arm, Floats
-from rigbench.arm.vector import LINK
-from rigbench.errors import Fault
-from rigbench.identify.filtering import CORNER_HZ, STATE_FACTOR, derivative, low_pass
+from rigbench.errors import Fault, counted
+from rigbench.identify.filtering import derivative, low_pass, without_spikes
 from rigbench.identify.recording import Recording
-from rigbench.identify.recording_file import TIME, Table, column_names
-from rigbench.identify.regressor import Terms, parameter_values, regressor
+from rigbench.identify.recording_file import TIME, column_names
+from rigbench.identify.recording_table import Table
+from rigbench.identify.slips import FACTORS, TURN, corner_of, slip_faults, slip_of
+from rigbench.motion.limits import unit_of
 
 __all__ = ["implausible"]
 
-SLOWEST_HZ = 20.0
+SLOWEST_HZ = 19.5
 """Fewer samples a second can't show a controlled motion."""
 
 LEAST_MOVE = {"deg": 1.0, "mm": 5.0}
@@ -28,103 +26,133 @@ LEAST_MOVE = {"deg": 1.0, "mm": 5.0}
 PAST = 1.05
 """Share of its range that a joint may be recorded beyond its limits by: zero offsets."""
 
-EXPLAINED = 0.5
-"""Share of a joint's torque that even a poor model leaves unexplained at most."""
+FAR = 3.0
+"""A position beyond its limit by so many times looks like one in another unit."""
 
-BETTER = 2.0
-"""A slip is told where the model leaves so many times less of the worst joint unexplained without it."""
+FAST = 1.3
+"""Share of its speed limit beyond which a joint was not moved by its drive."""
 
-SAMPLES = 400
-"""States at which torques are compared."""
+WINDOW_S = 0.05
+"""Time over which a speed is taken for that [s]: noise of 0.1 deg is 3 deg/s then."""
 
-TURN = float(np.degrees(1.0))
-FACTORS = {
-    TURN: "57.3 times too large",
-    1 / TURN: "57.3 times too small",
-    1e3: "1000 times too large",
-    1e-3: "1000 times too small",
-}
-"""Slips of a unit: degrees for radians, thousandths for wholes."""
-
-
-@dataclass(frozen=True)
-class _Slip:
-    """One way in which columns may be wrong; ``q`` and ``torque`` are they set right."""
-
-    columns: tuple[str, ...]
-    said: str
-    q: Floats
-    torque: Floats
+LEAST_JUMP, TURNED = 5.0, 180.0
+"""A position that changes from row to row by less than this [deg, or cm] beside what speed allows is noisy or
+counted; one that changes by half a turn was wrapped."""
 
 
 def implausible(
-    arm: Arm, gravity: tuple[float, float, float], recording: Recording, table: Table, loaded: bool = False
+    arm: Arm, gravity: tuple[float, float, float], recording: Recording, table: Table
 ) -> list[Fault]:
     """Return what makes a recording, read without faults, not one of this arm in these units.
 
     By itself: too few samples a second, as when times are in ms; joints beyond their limits; joints that do
-    not move; velocities that are not the positions' own. Against the declared arm's torques: columns of
-    positions or torques that are 57.3 or 1000 times too large or small, or swapped, told where the arm
-    leaves more than half of a joint's torque unexplained, and less than half of that once the slip is set
-    right. A model that is merely wrong is no fault, nor is a load where the arm is ``loaded``: then the
-    recording is held against the arm with whatever load, no heavier than it, explains the torques best.
+    not move, jump, or outrun their drives; torques that are the same all along; velocities that are not the
+    positions' own. If there is none of these, what :func:`rigbench.identify.slips.slip_faults` finds. A model
+    that is merely wrong is no fault.
     """
     rate = recording.rate_hz
     if rate < SLOWEST_HZ:
         problem = f"{rate:.4g} samples a second, so times may be in ms"
-        return [table.column_fault(TIME, problem, f"seconds, and {SLOWEST_HZ:g} samples or more in each")]
+        return [table.column_fault(TIME, problem, "seconds, and 20 samples or more in each")]
     faults = [*_range_faults(arm, recording, table), *_still_faults(arm, recording, table)]
+    faults = faults or [*_jump_faults(arm, recording, table)]
+    faults = faults or [*_speed_faults(arm, recording, table)]
     if recording.v is not None:
         faults += _velocity_faults(arm, recording, recording.v, table)
-    return faults or list(_slip_faults(arm, gravity, recording, table, loaded))
+    return faults or slip_faults(arm, gravity, recording, table)
 
 
 def _range_faults(arm: Arm, recording: Recording, table: Table) -> Iterator[Fault]:
     """Yield the joints that were recorded beyond their limits."""
-    slides = arm.kinds == PRISMATIC
     for i, name in enumerate(column_names(arm)["q"]):
-        room = (PAST - 1) * (arm.upper[i] - arm.lower[i]) if np.isfinite(arm.upper[i] - arm.lower[i]) else 0.0
-        q, scale = recording.q[:, i], 1e3 if slides[i] else TURN
-        far = np.flatnonzero((q < arm.lower[i] - room) | (q > arm.upper[i] + room))
+        q, scale, low, high = recording.q[:, i], unit_of(arm, i)[1], arm.lower[i], arm.upper[i]
+        room = (PAST - 1) * (high - low) if np.isfinite(high - low) else 0.0
+        far = np.flatnonzero((q < low - room) | (q > high + room))
         if far.size:
-            factor = 1e3 if slides[i] else TURN
-            fits = (q / factor >= arm.lower[i]).all() and (q / factor <= arm.upper[i]).all()
-            why = f"; it looks {FACTORS[factor]}" if fits else ""
+            why = _why_beyond(q, low, high, 1e3 if arm.kinds[i] == PRISMATIC else TURN)
             problem = (
-                f"{q[far[0]] * scale:.5g} at {recording.t[far[0]]:.4g} s is beyond the joint's limits{why}"
+                f"{q[far[0]] * scale:.5g} at {recording.t[far[0]]:.4f} s is beyond the joint's limits, "
+                f"as {counted(far.size, 'row')} of {len(q)}{why}"
             )
-            low, high = arm.lower[i] * scale, arm.upper[i] * scale
-            yield table.fault(int(far[0]), name, problem, f"{low:.4g} to {high:.4g}")
+            yield table.fault(int(far[0]), name, problem, f"{low * scale:.4g} to {high * scale:.4g}")
+
+
+def _why_beyond(q: Floats, low: float, high: float, factor: float) -> str:
+    """Say which slip would bring all of a joint's positions within its limits, if one would."""
+    least, most = float(q.min()), float(q.max())
+    if max(-least, most) > FAR * max(-low, high) and low <= least / factor and most / factor <= high:
+        return f"; it looks {FACTORS[factor]}"
+    return "; it looks of the wrong sign" if low <= -most and -least <= high else ""
 
 
 def _still_faults(arm: Arm, recording: Recording, table: Table) -> Iterator[Fault]:
-    """Yield the joints that hardly move."""
-    for i, name in enumerate(column_names(arm)["q"]):
-        unit, scale = ("mm", 1e3) if arm.kinds[i] == PRISMATIC else ("deg", TURN)
+    """Yield the joints that hardly move, and the torques that never change."""
+    names = column_names(arm)
+    for i, (name, torque) in enumerate(zip(names["q"], names["tau"], strict=True)):
+        unit, scale = unit_of(arm, i)
         moved = float(np.ptp(recording.q[:, i])) * scale
         if moved < LEAST_MOVE[unit]:
             problem = f"no excitation: joint {arm.joints[i]} moves by {moved:.3g} {unit} in all"
-            yield table.column_fault(
-                name,
-                problem,
-                f"{LEAST_MOVE[unit]:g} {unit} or more, better all of its range",
-            )
+            expected = f"{LEAST_MOVE[unit]:g} {unit} or more, better all of its range"
+            yield table.column_fault(name, problem, expected)
+        if np.ptp(recording.torque[:, i]) == 0:
+            problem = f"the same all along: {recording.torque[0, i] + 0.0:.5g}"
+            yield table.column_fault(torque, problem, "a torque that changes along the motion")
+
+
+def _jump_faults(arm: Arm, recording: Recording, table: Table) -> Iterator[Fault]:
+    """Yield the joints whose position is suddenly another."""
+    for i, name in enumerate(column_names(arm)["q"]):
+        unit, scale = unit_of(arm, i)
+        step = np.abs(np.diff(recording.q[:, i])) * scale
+        own = 10 * LEAST_JUMP if unit == "mm" else LEAST_JUMP
+        most = min(
+            own + FAR * arm.drives.speed_limit[i] * scale / recording.rate_hz, own / LEAST_JUMP * TURNED
+        )
+        if (jumps := np.flatnonzero(step > most)).size:
+            wrapped = unit == "deg" and (step[jumps] > TURNED).all()
+            problem = f"jumps by {step[jumps[0]]:.4g} {unit} from the row before"
+            problem += f", as at {len(jumps) - 1} other rows" if len(jumps) > 1 else ""
+            problem += "; it looks wrapped at half a turn" if wrapped else ""
+            yield table.fault(int(jumps[0]) + 1, name, problem, "positions that go on from row to row")
+
+
+def _speed_faults(arm: Arm, recording: Recording, table: Table) -> Iterator[Fault]:
+    """Yield the joints that outrun their drives, as they do when times are too short."""
+    window = min(max(1, round(WINDOW_S * recording.rate_hz)), len(recording.t) - 1)
+    q = without_spikes(recording.q)[0]
+    v = np.abs(q[window:] - q[:-window]) * recording.rate_hz / window
+    for i, name in enumerate(column_names(arm)["q"]):
+        unit, scale = unit_of(arm, i)
+        limit = arm.drives.speed_limit[i]
+        fast = np.flatnonzero(v[:, i] > FAST * limit)
+        if fast.size:
+            at = int(v[:, i].argmax())
+            problem = f"moves at {v[at, i] * scale:.4g} {unit}/s, beyond the drive's speed limit"
+            problem += f"; or times in {TIME} are too short"
+            yield table.fault(at, name, problem, f"{limit * scale:.4g} {unit}/s at most")
+
+
+def _speeds(recording: Recording) -> Floats:
+    """Return the low-passed speeds (N, n) that the positions say."""
+    rate = recording.rate_hz
+    return derivative(low_pass(without_spikes(recording.q)[0], rate, corner_of(recording)), rate)
 
 
 def _velocity_faults(arm: Arm, recording: Recording, v: Floats, table: Table) -> Iterator[Fault]:
     """Yield the columns of velocity that do not go with the positions' change."""
     names = column_names(arm)
-    rate = recording.rate_hz
-    corner = min(CORNER_HZ, rate / 8)
-    own = derivative(low_pass(recording.q, rate, corner), rate)
-    seen = low_pass(v, rate, corner)
-    alike = np.corrcoef(seen.T, own.T)[: arm.n, arm.n :]
+    rate, own = recording.rate_hz, _speeds(recording)
+    seen = low_pass(without_spikes(v)[0], rate, corner_of(recording))
+    alike = _alike(seen, own)
     for i, name in enumerate(names["v"]):
-        best = int(np.nanargmax(alike[i]))
-        ratio = float((seen[:, i] @ own[:, i]) / (own[:, i] @ own[:, i]))
-        if best != i and alike[i, best] > 0.9 > 2 * alike[i, i]:
+        best = int(alike[i].argmax())
+        ratio = float(seen[:, i] @ own[:, i]) / max(float(own[:, i] @ own[:, i]), 1e-12)
+        if np.ptp(v[:, i]) == 0:
+            problem = f"the same all along: {v[0, i] * unit_of(arm, i)[1] + 0.0:.5g}"
+        elif best != i and alike[i, best] > 0.9 > 2 * alike[i, i]:
             problem = f"looks like the velocity of joint {arm.joints[best]}: swapped columns"
-        elif (slip := _factor(ratio)) is not None:
+        elif (slip := slip_of(ratio)) is not None:
             problem = f"{slip}, beside the change of {names['q'][i]}"
         elif not alike[i, i] > 0.5:
             problem = f"does not go with the change of {names['q'][i]}"
@@ -133,87 +161,9 @@ def _velocity_faults(arm: Arm, recording: Recording, v: Floats, table: Table) ->
         yield table.column_fault(name, problem, f"the velocity of joint {arm.joints[i]}")
 
 
-def _factor(ratio: float) -> str | None:
-    """Say which slip of a unit makes a ratio that should be 1, within a factor of 2."""
-    near = [said for factor, said in FACTORS.items() if 0.5 < ratio / factor < 2.0]
-    return near[0] if near else None
-
-
-def _slip_faults(
-    arm: Arm, gravity: tuple[float, float, float], recording: Recording, table: Table, loaded: bool
-) -> Iterator[Fault]:
-    """Yield the slip without which the arm explains the torques, if there is one."""
-    before = _unexplained(arm, gravity, recording, loaded)
-    if (before <= EXPLAINED).all():
-        return
-    slips = list(_slips(arm, recording))
-    after = [
-        _unexplained(arm, gravity, replace(recording, q=slip.q, v=None, torque=slip.torque), loaded)
-        for slip in slips
-    ]
-    worst = [float(share.max()) for share in after]
-    best = int(np.argmin(worst))
-    if worst[best] * BETTER < before.max() and worst[best] < EXPLAINED:
-        slip = slips[best]
-        left = (
-            f"the model misses the torques by {before.max():.0%} as they stand, by {worst[best]:.0%} without"
-        )
-        for name in slip.columns:
-            yield table.column_fault(name, f"{slip.said}: {left}", "units and joints as the header says")
-
-
-def _slips(arm: Arm, recording: Recording) -> Iterator[_Slip]:
-    """Yield every slip that is looked for: of all columns of a kind, of one, and of two that are swapped."""
-    names = column_names(arm)
-    whole = list(range(arm.n))
-    for which in [whole, *([i] for i in whole if arm.n > 1)]:
-        for factor, said in FACTORS.items():
-            for what in ("q", "tau"):
-                columns = tuple(names[what][i] for i in which)
-                scale = np.ones(arm.n)
-                scale[which] = 1 / factor
-                q, torque = (scale, np.ones(arm.n)) if what == "q" else (np.ones(arm.n), scale)
-                yield _Slip(columns, f"looks {said}", recording.q * q, recording.torque * torque)
-    for i, j in combinations(whole, 2):
-        order = list(whole)
-        order[i], order[j] = j, i
-        for what in ("q", "tau"):
-            pair = names[what][i], names[what][j]
-            left, right = (order, whole) if what == "q" else (whole, order)
-            said = f"{pair[0]} and {pair[1]} look swapped"
-            yield _Slip(pair, said, recording.q[:, left], recording.torque[:, right])
-
-
-def _unexplained(arm: Arm, gravity: tuple[float, float, float], recording: Recording, loaded: bool) -> Floats:
-    """Return the share of each joint's torque (n,) that the declared arm, with a load, leaves unexplained."""
-    rate = recording.rate_hz
-    corner = min(CORNER_HZ, rate / (2 * STATE_FACTOR))
-    q = low_pass(recording.q, rate, corner)
-    v = derivative(q, rate)
-    a = derivative(v, rate)
-    some = np.unique(np.linspace(0.05 * len(q), 0.95 * len(q) - 1, SAMPLES).astype(int))
-    y = regressor(arm, gravity, q[some], v[some], a[some], Terms())
-    torque = low_pass(recording.torque, rate, corner)[some]
-    error = torque - y @ parameter_values(arm, Terms())
-    size = np.sqrt(np.maximum((torque**2).mean(axis=0), 1e-12))
-    if loaded:
-        last = y[:, :, LINK * (arm.n - 1) : LINK * arm.n]
-        error = error - last @ _best_load(arm, last / size[:, None], error / size)
-    share: Floats = np.sqrt((error**2).mean(axis=0)) / size
-    return share
-
-
-def _best_load(arm: Arm, y: Floats, torque: Floats) -> Floats:
-    """Return the parameters (10,) of a load that explain torques (S, n) best by y (S, n, 10).
-
-    It weighs no more than the arm and lies within its length of the last joint: else a slip of a unit would
-    be a load as well.
-    """
-    mass, length = arm.parameters[:, 0].sum(), np.linalg.norm(arm.position, axis=1).sum()
-    length = length + np.linalg.norm(arm.tool_position) or 1.0
-    most = mass * np.array([1.0, *[length] * 3, *[length**2] * 6])
-    least = np.where(np.isin(np.arange(LINK), (0, 4, 6, 9)), 0.0, -most)  # mass and principal entries
-    q, r = np.linalg.qr((y * most).reshape(-1, LINK))  # ten equations are solved sooner than thousands
-    solved = lsq_linear(r, q.T @ torque.ravel(), (least / most, np.ones(LINK)))
-    best: Floats = most * solved.x
-    return best
+def _alike(one: Floats, other: Floats) -> Floats:
+    """Return the correlations (n, n) of one's columns (N, n) with the other's; 0 of a constant."""
+    parts = [x - x.mean(axis=0) for x in (one, other)]
+    parts = [x / np.maximum(np.linalg.norm(x, axis=0), 1e-12) for x in parts]
+    alike: Floats = parts[0].T @ parts[1]
+    return alike

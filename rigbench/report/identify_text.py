@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import textwrap
 
+from rigbench.errors import counted
 from rigbench.identify.procedure import Identification
 from rigbench.report.cautions import BEFORE_A_REAL_ARM
 from rigbench.report.load_text import load_text
@@ -31,6 +32,8 @@ def _head(done: Identification) -> list[str]:
         f"{done.files.arm().name}: {found.base.count} parameters{load} from {found.rows} samples, "
         f"condition number {found.condition:.3g}"
     ]
+    if found.spikes:
+        lines.append(f"{counted(found.spikes, 'recorded sample')} taken for spikes and left out")
     if outliers := int(found.outliers.sum()):
         lines.append(f"{outliers} samples of a joint's torque were left out as outliers")
     return lines

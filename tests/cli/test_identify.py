@@ -6,6 +6,7 @@ import json
 import shutil
 from collections.abc import Callable
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 import pytest
@@ -13,6 +14,7 @@ from typer.testing import Result
 
 from rigbench.arm.files import ArmFiles, load_arm
 from rigbench.arm.mismatch import Case, Mismatch
+from rigbench.identify.excitation import Search
 from rigbench.identify.fourier import FourierMotion
 from rigbench.identify.procedure import Settings, Simulated, record
 from rigbench.identify.recording_file import write_recording
@@ -80,6 +82,29 @@ def test_practice_finds_the_hidden_machine(call: Callable[..., Result], tmp_path
     assert identified.joints == load_arm(ARM).joints
     assert not np.allclose(identified.parameters, load_arm(ARM).parameters, rtol=0.01)
     assert "condition number" in result.stderr
+
+
+def test_ctrl_c_ends_the_search_cleanly(
+    call: Callable[..., Result], tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """Progress until then, exit code 3, no traceback, nothing written."""
+    cost, asked = Search.cost, 0
+
+    def counted(*given: Any) -> float:
+        nonlocal asked
+        asked += 1
+        if asked > 700:  # of a search in 18 dimensions, some 19 for each step
+            raise KeyboardInterrupt
+        return cost(*given)
+
+    monkeypatch.setattr(Search, "cost", counted)
+    (tmp_path / "practise.yaml").write_text(PRACTISE.replace("rounds: 10", "rounds: 1000"))
+    result = call("identify", str(tmp_path / "practise.yaml"), "-o", str(tmp_path / "out"))
+    assert result.exit_code == 3
+    assert "excitation: 10 of at most 1000 rounds" in result.stderr
+    assert result.stderr.endswith("stopped\n")
+    assert "Traceback" not in result.stderr
+    assert not (tmp_path / "out").exists()
 
 
 def test_recordings_are_taken_and_the_report_names_all(call: Callable[..., Result], logs: Path) -> None:

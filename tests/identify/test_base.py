@@ -61,6 +61,26 @@ def test_count_of_planar_chains(chain, n):
     assert count(flat, LINKS, gravity=(0.0, -9.81, 0.0)) == 3 * n
 
 
+@pytest.mark.parametrize("n", [1, 2, 3, 4])
+def test_rotors_and_friction_add_as_much_on_planar_chains(chain, n):
+    """n - 1 for rotors, joint 1's being its link's, and 2n for friction (derived: each acts in its own row alone)."""
+    position = np.zeros((n, 3))
+    position[1:, 0] = 0.4
+    for gravity, links in ((GRAVITY, 3 * n - 2), ((0.0, -9.81, 0.0), 3 * n)):
+        flat = chain(np.tile([0, 0, 1], (n, 1)), position)
+        assert count(flat, ROTORS, gravity) == links + n - 1
+        assert count(flat, Terms(), gravity) == links + n - 1 + 2 * n
+
+
+@pytest.mark.parametrize("size", [0.01, 100.0])
+def test_count_does_not_hang_on_size(chain, size):
+    """Arms of a centimetre and of a hundred metres have as many parameters; and without gravity, as along it."""
+    arm = generic(chain, 5)
+    scaled = chain(arm.axis, size * arm.position)
+    assert count(scaled, LINKS) == 7 * 5 - 6
+    assert count(generic(chain, 5, first=(0.3, 1, 0.2)), LINKS, gravity=(0.0, 0.0, 0.0)) == 7 * 5 - 6
+
+
 def test_count_of_the_demo_arms(tray6, planar2):
     """tray6 (z-y-y-x-y-x): 36, with rotors 40, with friction 52; planar2: 6, 7, 11."""
     for arm, counts in ((tray6, (36, 40, 52)), (planar2, (6, 7, 11))):

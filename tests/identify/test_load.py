@@ -355,7 +355,7 @@ def said_of(path, true, believed, change=lambda recording: recording):
     torque = formula_torque(true, q, v, a) + 0.1 * np.random.default_rng(0).normal(size=q.shape)
     write_recording(path / "full.csv", believed, change(Recording("made", t, q, None, torque)))
     recording, table = read_recording(path / "full.csv", believed)
-    return [str(fault) for fault in implausible(believed, GRAVITY, recording, table, loaded=True)]
+    return [str(fault) for fault in implausible(believed, GRAVITY, recording, table)]
 
 
 def test_a_load_makes_no_good_log_implausible(tmp_path, planar2, tray6):

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -9,14 +10,19 @@ import pytest
 
 from rigbench.arm.files import ArmFiles
 from rigbench.arm.mismatch import Mismatch, Spread
+from rigbench.arm.physical import possible
 from rigbench.errors import InputFaults
+from rigbench.identify.bounds import bounds_of
+from rigbench.identify.excitation import Search
 from rigbench.identify.fourier import FourierMotion
 from rigbench.identify.procedure import Settings, Simulated, identify, record
 from rigbench.identify.regressor import Terms
+from rigbench.identify.series import SeriesSpace
 from rigbench.report.identify_text import identify_text
 
 ROBOTS = Path(__file__).resolve().parents[2] / "robots_demo"
 PLANAR2 = ArmFiles.read(ROBOTS / "planar2" / "arm.yaml")
+GANTRY = Path(__file__).resolve().parents[1] / "arm" / "gantry" / "arm.yaml"
 TRAY6 = ArmFiles.read(ROBOTS / "tray6" / "arm.yaml")
 LINKS = Terms(rotor=False, viscous=False, coulomb=False)
 EXACT = Simulated(Mismatch(), ())
@@ -73,6 +79,19 @@ def test_an_offset_is_found_and_predicted_with():
     assert "offset.elbow" in identify_text(done)
 
 
+def test_the_report_counts_spikes():
+    """Three torques of 500 N m among the recorded ones: said; none: not a word."""
+    recording, _ = record(PLANAR2, Settings(LINKS), EXACT, MOTION, "a", 0)
+    torque = recording.torque.copy()
+    torque[[1000, 2000, 3000], 0] = 500.0
+    spoiled, clean = (
+        identify_text(identify(PLANAR2, Settings(LINKS), [replace(recording, torque=each)]))
+        for each in (torque, recording.torque)
+    )
+    assert "3 recorded samples taken for spikes and left out" in spoiled
+    assert "spikes" not in clean
+
+
 def test_the_spread_says_how_far_declared_values_hold_on():
     """Torques 1.5 times the declared under noise of 20 N m: held within 0.1 % the arm moves less than half way,
     with 100 % to the estimate."""
@@ -104,3 +123,42 @@ def test_joints_without_friction_do_not_stop_the_fit_short():
         return error @ np.linalg.solve(done.found.covariance, error)
 
     assert distance(done.identified_values) < distance(done.true_values) + 10
+
+
+ARMS = {"tray6": TRAY6, "planar2": PLANAR2, "gantry": ArmFiles.read(GANTRY)}
+GRAVITIES = {"down": (0.0, 0.0, -9.81), "none": (0.0, 0.0, 0.0), "tilted": (2.0, -3.0, -9.0)}
+EVERY = {
+    "links": LINKS,
+    "drives": Terms(),
+    "all four": Terms(offset=True),
+}
+
+
+@pytest.mark.parametrize(
+    ("arm", "gravity", "terms"),
+    [
+        ("gantry", "down", "drives"),
+        ("gantry", "none", "links"),
+        ("gantry", "tilted", "all four"),
+        ("planar2", "none", "all four"),
+        ("planar2", "tilted", "links"),
+        ("tray6", "none", "drives"),
+        ("tray6", "tilted", "all four"),
+    ],
+)
+def test_every_identified_arm_can_exist(arm, gravity, terms):
+    """From no noise to a million N m: bodies that are possible, friction and rotors not below 0, a covariance that is
+    positive definite; with slides, without gravity, on a slope, and without friction in the terms where there is some."""
+    files, settings = ARMS[arm], Settings(EVERY[terms], gravity=GRAVITIES[gravity])
+    bounds = bounds_of(files.arm())
+    search = Search(files.arm(), settings.gravity, settings.terms, bounds, SeriesSpace(bounds, 4, 4.0))
+    recording, _ = record(files, settings, EXACT, search.random_motion(1, 3), "rig", 0)
+    rng = np.random.default_rng(0)
+    for noise in (0.0, 1e-6, 1.0, 1e6):
+        torque = recording.torque + noise * rng.normal(size=recording.torque.shape)
+        result = identify(files, settings, [replace(recording, torque=torque)]).result
+        drives = result.arm.drives
+        assert possible(result.arm.parameters)
+        for name in ("viscous", "coulomb", "static", "rotor_inertia"):
+            assert (getattr(drives, name) >= 0).all()
+        assert np.linalg.eigvalsh(result.covariance).min() > 0
