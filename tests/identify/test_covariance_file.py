@@ -10,11 +10,14 @@ import pytest
 
 from rigbench.arm.files import ArmFiles
 from rigbench.arm.log_cholesky import Coordinates
+from rigbench.arm.mismatch import Mismatch
 from rigbench.errors import InputFaults
 from rigbench.identify.base import base_of
 from rigbench.identify.consistent import Consistent
 from rigbench.identify.covariance_file import covariance_document, covariance_text, read_knowledge
 from rigbench.identify.estimate import Estimate
+from rigbench.identify.fourier import FourierMotion
+from rigbench.identify.procedure import Settings, Simulated, identify, record
 from rigbench.identify.regressor import Terms, parameter_labels, parameter_values
 
 GRAVITY = (0.0, 0.0, -9.81)
@@ -144,3 +147,31 @@ def test_a_file_that_is_not_there(tmp_path):
     """Named with its path."""
     with pytest.raises(InputFaults, match="does not exist"):
         read_knowledge(tmp_path / "none.json", PLANAR2)
+
+
+MOTION = FourierMotion((0.2, -0.3), ((0.9, -0.45), (-0.7, 0.35)), ((0.4, -0.1), (0.8, -0.2)), 4.0, 3)
+
+
+@pytest.mark.evidence
+def test_the_hidden_machine_is_like_a_draw():
+    """40 practices of a rubbing planar2: distances of the truth from the identified arm are those of draws.
+
+    In its own covariance the squared distance of a draw is chi-squared with as many degrees of freedom as there
+    are sums; their total over 40 machines lies within four of its standard deviations.
+    """
+    files = ArmFiles.read(ROBOTS / "planar2" / "arm.yaml").with_drives(
+        [("all", "viscous", 0.8), ("all", "coulomb", 0.6)]
+    )
+    settings = Settings(Terms(rotor=False))
+    mismatch = Mismatch(link_mass_percent=20, link_cog_mm=20, viscous_percent=20, coulomb_percent=20)
+    total = 0.0
+    for seed in range(40):
+        hidden = Simulated(mismatch, mismatch.sources, seed, noise_deg=0.001, torque_noise_nm=0.2)
+        recording, truth = record(files, settings, hidden, MOTION, "practice", 0)
+        done = identify(files, settings, [recording], truth=truth)
+        data = covariance_document(done.result, settings.terms, done.found)
+        off = done.true_values - np.array([entry["value"] for entry in data["base"]])
+        total += off @ np.linalg.solve(np.array(data["covariance"]), off)
+    degrees = 40 * len(off)
+    print(f"{total:.0f} of {degrees}")
+    assert abs(total - degrees) < 4 * np.sqrt(2 * degrees)
