@@ -9,8 +9,8 @@ from __future__ import annotations
 
 import hashlib
 import json
-from dataclasses import astuple, dataclass
-from functools import lru_cache
+from dataclasses import dataclass, fields
+from functools import cached_property, lru_cache
 
 import numpy as np
 
@@ -44,10 +44,11 @@ class Knowledge:
     covariance: tuple[Row, ...]
     scales: Row
 
-    @property
+    @cached_property  # every run's key has it
     def digest(self) -> str:
         """A digest (hex, 40 digits) of all of it."""
-        return hashlib.blake2b(json.dumps(astuple(self)).encode(), digest_size=20).hexdigest()
+        whole = [getattr(self, field.name) for field in fields(self)]
+        return hashlib.blake2b(json.dumps(whole).encode(), digest_size=20).hexdigest()
 
 
 def deviations(u: Floats) -> Floats:

@@ -144,7 +144,7 @@ def load_experiment(path: str | Path) -> Experiment:
     file = str(path)
     text = read_text(Path(path), file, "the experiment file")
     document = load(file, text)
-    if not {"recordings", "simulate"}.isdisjoint(document.data) and "laws" not in document.data:
+    if (document.holds("recordings") or document.holds("simulate")) and not document.holds("laws"):
         expected = "an experiment (see `rigbench identify`)"
         raise InputFaults.one(file, "", "declares an identification", expected)
     keys, faults = partial(document, ExperimentKeys)

@@ -96,7 +96,7 @@ def load_identification(path: str | Path) -> DeclaredIdentification:
     """Read and check an identification file, its arm file and recordings; InputFaults with every fault."""
     file, folder = str(path), Path(path).parent
     document = load(file, read_text(Path(path), file, "the identification file"))
-    if "laws" in document.data and {"recordings", "simulate"}.isdisjoint(document.data):
+    if document.holds("laws") and not (document.holds("recordings") or document.holds("simulate")):
         raise InputFaults.one(file, "", "declares an experiment", "an identification (see `rigbench run`)")
     keys, faults = partial(document, IdentificationKeys)
     if keys is None:
@@ -130,7 +130,8 @@ def load_identification(path: str | Path) -> DeclaredIdentification:
     simulated = None
     if keys.simulate is not None:
         given = keys.simulate
-        mismatch = mismatch_of(given.mismatch, files.arm(), findings, folder)
+        place = ("simulate", "mismatch")
+        mismatch = mismatch_of(given.mismatch, files.arm(), findings, folder, place)
         simulated = Simulated(
             mismatch, spreading(mismatch), given.seed, given.noise_deg, given.torque_noise_nm, _case(given)
         )

@@ -30,16 +30,29 @@ IDLE = {
 """Sources without effect where an array of the drives has this value for all joints, and what that means."""
 
 
-def mismatch_of(keys: MismatchKeys, arm: Arm | None, findings: Findings, folder: Path) -> Mismatch:
-    """Return the mismatch; what of it is at fault is left out. Paths are relative to ``folder``."""
-    given: dict[str, Spread | Payload | Knowledge | float | None] = {"payload": _payload(keys, findings)}
-    if keys.identification is not None and arm is not None and findings.clean("mismatch", "from"):
-        given["identification"] = _identification(folder, keys.identification, arm, findings)
+def mismatch_of(
+    keys: MismatchKeys,
+    arm: Arm | None,
+    findings: Findings,
+    folder: Path,
+    place: KeyPath = ("mismatch",),
+) -> Mismatch:
+    """Return the mismatch that stands at ``place`` of the file; what of it is at fault is left out.
+
+    Paths are relative to ``folder``.
+    """
+    given: dict[str, Spread | Payload | Knowledge | float | None] = {
+        "payload": _payload(keys, findings, (*place, "payload"))
+    }
+    if keys.identification is not None and arm is not None and findings.clean(*place, "from"):
+        given["identification"] = _identification(
+            folder, keys.identification, arm, findings, (*place, "from")
+        )
     for source in MismatchKeys.model_fields:
         value = getattr(keys, source)
         if source in given or value is None or source == "identification":
             continue
-        path: KeyPath = ("mismatch", source)
+        path: KeyPath = (*place, source)
         if isinstance(value, SpreadKeys):
             _check_names(path, source, value.__pydantic_extra__ or {}, arm, findings)
             if not any((value.all, *(value.__pydantic_extra__ or {}).values())) and findings.clean(*path):
@@ -50,10 +63,10 @@ def mismatch_of(keys: MismatchKeys, arm: Arm | None, findings: Findings, folder:
     return Mismatch(**given)  # type: ignore[arg-type]  # each by its own name
 
 
-def _payload(keys: MismatchKeys, findings: Findings) -> Payload | None:
-    if keys.payload is None or not findings.clean("mismatch", "payload"):
+def _payload(keys: MismatchKeys, findings: Findings, path: KeyPath) -> Payload | None:
+    if keys.payload is None or not findings.clean(*path):
         return None
-    given, path = keys.payload, ("mismatch", "payload")
+    given = keys.payload
     if given.least_kg > given.most_kg:
         problem = f"{given.least_kg:g} is above most_kg"
         findings.fault((*path, "least_kg"), problem, f"at most {given.most_kg:g}")
@@ -65,11 +78,10 @@ def _payload(keys: MismatchKeys, findings: Findings) -> Payload | None:
     return None
 
 
-def _identification(folder: Path, name: str, arm: Arm, findings: Findings) -> Knowledge | None:
+def _identification(folder: Path, name: str, arm: Arm, findings: Findings, path: KeyPath) -> Knowledge | None:
     """Return what an identification left unknown; faults of its file go to ``findings``."""
     from rigbench.identify.covariance_file import read_knowledge  # slow to import
 
-    path: KeyPath = ("mismatch", "from")
     if (problem := unreadable(folder / name)) is not None:
         findings.fault(path, f"'{name}' {problem}", f"a covariance file, relative to {folder}")
         return None

@@ -135,9 +135,10 @@ def read_knowledge(path: Path | str, arm: Arm) -> tuple[Knowledge, bool]:
     text = read_text(Path(path), file, "the covariance file")
     try:
         data = json.loads(text)
-    except json.JSONDecodeError as error:
-        problem, expected = f"no JSON: {error.msg}", "a file that `rigbench identify` wrote"
-        raise InputFaults([Fault(file, error.lineno, "", problem, expected)]) from None
+    except (ValueError, RecursionError) as error:  # ValueError: no JSON, or a number of too many digits
+        line, said = getattr(error, "lineno", None), getattr(error, "msg", str(error))
+        expected = "a file that `rigbench identify` wrote"
+        raise InputFaults([Fault(file, line, "", f"no JSON: {said}", expected)]) from None
     keys, faults = validate(Document(file, data, {}), CovarianceKeys)
     if keys is None:
         raise InputFaults(faults)
@@ -165,13 +166,19 @@ def _misfits(file: str, keys: CovarianceKeys) -> Iterator[Fault]:
             yield Fault(
                 file, None, f"base[{i}].of", f"'{label}' is no parameter of the arm", "as in `values`"
             )
+    firsts = _firsts(keys)
+    for i, first in enumerate(firsts):
+        if first in firsts[:i]:
+            problem = f"begins with '{first}' as base[{firsts.index(first)}].of does"
+            yield Fault(file, None, f"base[{i}].of", problem, "a first parameter of its own")
     if len(keys.covariance) != b or any(len(row) != b for row in keys.covariance):
         yield Fault(file, None, "covariance", "is not square", f"{b} rows of {b} numbers")
         return
     covariance = np.array(keys.covariance)
     deviation = np.sqrt(np.maximum(np.diag(covariance), np.finfo(float).tiny))
-    unit = covariance / np.outer(deviation, deviation)
-    if np.diag(covariance).min() < 0 or np.abs(unit - unit.T).max() > ROUNDING:
+    with np.errstate(over="ignore"):  # a covariance with what has no variance
+        unit = covariance / np.outer(deviation, deviation)
+    if np.diag(covariance).min() < 0 or not np.isfinite(unit).all() or np.abs(unit - unit.T).max() > ROUNDING:
         yield Fault(file, None, "covariance", "is none", "symmetric, with no variance below 0")
     elif np.linalg.eigvalsh(unit)[0] < -ROUNDING:
         problem = "is none: some combination would have a variance below 0"
@@ -184,11 +191,16 @@ def _labels(keys: CovarianceKeys) -> tuple[str, ...]:
     return (*links, *(f"{term}.{joint}" for term in keys.terms for joint in keys.joints))
 
 
+def _firsts(keys: CovarianceKeys) -> list[str]:
+    """Return the parameter that each sum is called by."""
+    return [next(iter(base.of)) for base in keys.base]
+
+
 def _knowledge(keys: CovarianceKeys) -> Knowledge:
     """Return what is known of all but offsets."""
     labels = [label for label in _labels(keys) if not label.startswith("offset.")]
     terms = tuple(term for term in keys.terms if term != "offset")
-    firsts = [next(iter(base.of)) for base in keys.base]
+    firsts = _firsts(keys)
     kept = [i for i, first in enumerate(firsts) if not first.startswith("offset.")]
     return Knowledge(
         terms=terms,

@@ -51,6 +51,10 @@ class Document:
     data: Any
     lines: Mapping[KeyPath, int] = field(repr=False)
 
+    def holds(self, key: str) -> bool:
+        """Tell whether it is a mapping with this key, whatever is wrong with it."""
+        return isinstance(self.data, dict) and key in self.data
+
     def line(self, path: Sequence[str | int]) -> int | None:
         """Return the line of ``path`` or of the nearest thing around it."""
         steps = tuple(path)

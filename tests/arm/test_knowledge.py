@@ -168,6 +168,14 @@ def test_a_run_knows_it_by_its_numbers():
     assert run.key() == replace(run, mismatch=replace(run.mismatch, viscous_percent=30)).key()  # not active
 
 
+def test_a_digest_is_worked_out_once():
+    """A campaign has thousands of keys with it: the second is the first one's; equality goes by numbers."""
+    known, same = knowledge_of(RUBBING, 0.1), knowledge_of(RUBBING, 0.1)
+    assert known.digest is known.digest
+    assert known == same
+    assert known.digest == same.digest
+
+
 BITS = """
 import sys; sys.path.insert(0, {folder!r})
 import hashlib, test_knowledge as t

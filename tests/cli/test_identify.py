@@ -243,9 +243,11 @@ def test_files_of_another_kind_are_told_as_such(call: Callable[..., Result], log
         assert result.exit_code == 2
         assert said in result.stderr
         assert len(result.stderr.strip().splitlines()) == 1
-    (logs / "list.yaml").write_text("[simulate, laws]\n")
-    assert call("identify", str(logs / "list.yaml")).exit_code == 2
-    assert call("check", str(logs / "list.yaml")).exit_code == 2
+    for text in ("[simulate, laws]\n", "- simulate: 1\n", "5\n"):
+        (logs / "odd.yaml").write_text(text)
+        for command in ("identify", "check"):
+            result = call(command, str(logs / "odd.yaml"))
+            assert (result.exit_code, "is not a mapping" in result.stderr) == (2, True), (text, command)
 
 
 def test_the_schema_of_the_file(call: Callable[..., Result]) -> None:

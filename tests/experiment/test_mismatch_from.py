@@ -11,8 +11,9 @@ import numpy as np
 import pytest
 
 from rigbench.arm.files import load_arm
-from rigbench.errors import Fault
+from rigbench.errors import Fault, InputFaults
 from rigbench.experiment import Experiment, load_experiment
+from rigbench.experiment.identification import load_identification
 from rigbench.identify.base import base_of
 from rigbench.identify.consistent import Consistent
 from rigbench.identify.covariance_file import covariance_document, covariance_text
@@ -92,6 +93,22 @@ def test_faults(faults: Faults, folder: Path) -> None:
     assert [(Path(fault.file).name, fault.key) for fault in faults(mismatch=FROM)] == [
         ("trial.yaml", "mismatch.from"),
         ("known.json", "terms[1]"),
+    ]
+
+
+def test_faults_of_a_hidden_machine_have_their_own_place(folder: Path) -> None:
+    """Under `simulate` of an identification file the addresses begin there."""
+    path = folder / "practise.yaml"
+    mismatch = (
+        "{link_mass_percent: {l3: 5}, from: nix.json, payload: {believed_kg: 3, least_kg: 0, most_kg: 2}}"
+    )
+    path.write_text(f"rigbench: 1\narm: arm.yaml\nsimulate:\n  mismatch:\n    {mismatch}\n", encoding="utf-8")
+    with pytest.raises(InputFaults) as caught:
+        load_identification(path)
+    assert sorted((fault.key, fault.line) for fault in caught.value.faults) == [
+        ("simulate.mismatch.from", 5),
+        ("simulate.mismatch.link_mass_percent.l3", 5),
+        ("simulate.mismatch.payload.believed_kg", 5),
     ]
 
 

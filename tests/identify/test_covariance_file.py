@@ -109,6 +109,19 @@ def indefinite():
     return covariance.tolist()
 
 
+def of_nothing():
+    """A covariance of two sums that have no variance."""
+    covariance = np.array(document(PLANAR2)["covariance"])
+    covariance[:2], covariance[:, :2] = 0.0, 0.0
+    covariance[0, 1] = covariance[1, 0] = 10.0
+    return covariance.tolist()
+
+
+def of_the_same_first():
+    base = document(PLANAR2)["base"]
+    return [base[0], base[1] | {"of": base[0]["of"]}, *base[2:]]
+
+
 BAD = {
     "no JSON": (lambda: "a: {b\n", "no JSON", ""),
     "empty": (lambda: "", "no JSON", ""),
@@ -126,6 +139,18 @@ BAD = {
         "'Iab.fore' is no parameter",
         "base[0].of",
     ),
+    "a covariance without variances": (
+        lambda: changed(covariance=of_nothing()),
+        "is none",
+        "covariance",
+    ),
+    "two sums of one name": (
+        lambda: changed(base=of_the_same_first()),
+        "as base[0].of does",
+        "base[1].of",
+    ),
+    "too deep": (lambda: "[" * 100_000, "no JSON", ""),
+    "too many digits": (lambda: f'{{"rigbench": {"9" * 5000}}}', "no JSON", ""),
     "not a number": (lambda: changed(values=["x"] * 26), "'x'", "values[0]"),
 }
 
