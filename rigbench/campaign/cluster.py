@@ -55,9 +55,8 @@ def cluster_executor(
 
     Every worker that is there is compared with this machine first. ``tell`` takes notes, now and while the
     campaign runs: another type of CPU, a worker that joins, is lost or is refused. ``limit_s``: see
-    :func:`given_up_after`. InputFaults if the
-    address is none, if dask is missing or no scheduler answers, if there is no worker, and with every
-    difference of versions that decides bits.
+    :func:`given_up_after`. InputFaults if the address is none, if dask is missing or no scheduler answers,
+    if there is no worker, and with every difference of versions that decides bits.
     """
     plugins = plugins_of(entries)
     with Link(address) as link:

@@ -243,7 +243,7 @@ class Shift:
             case Done(result):
                 yield from self._done(chunk.tasks, result)
             case Late(words):
-                problem = f"took longer than its limit of {chunk.tasks[0].limit_s:.0f} s"
+                problem = f"took longer than its limit of {chunk.tasks[0].limit_s:.6g} s"
                 yield from self._one_by_one(chunk.tasks, "timed-out", problem, words)
             case Died(exitcode, words, share):
                 alone = chunk.tasks[0] if len(chunk.tasks) == 1 else None

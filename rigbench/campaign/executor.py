@@ -221,7 +221,7 @@ class _Shift:
         try:
             yield unpacked(task.entry, future.result())
         except Overdue as error:
-            reason = f"took longer than its limit of {task.limit_s:.0f} s"
+            reason = f"took longer than its limit of {task.limit_s:.6g} s"
             yield failed(key, "timed-out", reason, error.words)
         except WorkerDied as error:
             task.deaths += 1

@@ -31,6 +31,9 @@ PAUSES_S = (0.0, 0.1, 0.5, 2.0)
 START_S = 60.0
 """How long a worker may take to be ready once it is forked, and to be gone once it is killed."""
 
+LONGEST_WAIT_S = 2e6
+"""A longer limit is one of 23 days: the system counts what it waits for in milliseconds, of 31 bits."""
+
 WORDS_S = 2.0
 """How long a worker that is told to end may take to leave its traceback."""
 
@@ -222,7 +225,7 @@ class _Worker:
 
     def _signs(self, timeout: float) -> list[object]:
         """Return what has happened within so many seconds: an answer, its end, or nothing."""
-        return list(wait([self._runs, self._process.sentinel], timeout))
+        return list(wait([self._runs, self._process.sentinel], min(timeout, LONGEST_WAIT_S)))
 
     def _exitcode(self) -> int:
         with self._lock:

@@ -321,3 +321,12 @@ def test_the_time_limit_grows_with_motion_and_rate(doing: ModuleType) -> None:
     stated = executor_for(4, 3, 7.0)
     assert isinstance(stated, Processes)
     assert stated.limit_s(doing.FakeRun("one")) == 7.0
+
+
+def test_a_limit_of_months_is_one(doing: ModuleType, make_entries: EntryMaker) -> None:
+    """More milliseconds than 31 bits hold, or no end at all: the run is done, and nothing else happens."""
+    for limit_s in (1e10, float("inf")):
+        (outcome,) = Processes(1, doing.work, lambda run, limit_s=limit_s: limit_s).run_all(
+            make_entries(good=("finish", {}))
+        )
+        assert outcome.outcome == "finished"
