@@ -13,7 +13,7 @@ from rigbench.errors import Fault, InputFaults, StoreError
 __all__ = ["copy_demo"]
 
 PARTS = ("robots_demo", "experiments")
-ENDINGS = (".yaml", ".urdf", ".csv", ".py", ".stl")
+ENDINGS = (".yaml", ".urdf", ".json", ".csv", ".py", ".stl")
 
 FIRST = "experiments/first-look.yaml"
 

@@ -12,6 +12,11 @@ from pathlib import Path
 import pytest
 from typer.testing import Result
 
+from rigbench.experiment import load_experiment
+from rigbench.experiment.identification import load_identification
+
+ROOT = Path(__file__).resolve().parents[2]
+
 BAD_LAW = """\
 from rigbench.laws import Law
 
@@ -174,6 +179,19 @@ def test_the_demo_can_be_copied_and_run(
     assert set(listed["files"]) == files
     monkeypatch.chdir(tmp_path / "my demo")
     assert call("check", "experiments/first-look.yaml").exit_code == 0
+
+
+def test_each_file_of_the_demo_has_what_it_names(
+    call: Callable[..., Result], tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """Every experiment and identification of the copy is in order: no arm, table or covariance was left behind."""
+    monkeypatch.chdir(tmp_path)
+    assert call("demo", "copy").exit_code == 0
+    files = sorted(Path("copy/experiments").glob("*.yaml"))
+    assert len(files) == len(list((ROOT / "experiments").glob("*.yaml"))) > 5
+    for file in files:
+        load = load_experiment if "\nlaws:" in file.read_text(encoding="utf-8") else load_identification
+        load(file)
 
 
 def test_the_demo_overwrites_nothing(
