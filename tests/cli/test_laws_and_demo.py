@@ -176,6 +176,20 @@ def test_the_demo_can_be_copied_and_run(
     assert call("check", "experiments/first-look.yaml").exit_code == 0
 
 
+def test_the_copied_demo_is_whole(
+    call: Callable[..., Result], tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """Each copied file finds all files that it names among the copies; copied here, there is no folder to go to."""
+    from rigbench.experiment.experiment import load_experiment
+    from rigbench.experiment.identification import load_identification
+
+    monkeypatch.chdir(tmp_path)
+    copied = call("demo", ".")
+    assert "experiments copied here. Try them:\n  rigbench check" in copied.stdout
+    for path in sorted(Path("experiments").glob("*.yaml")):
+        (load_identification if path.stem.startswith("practise") else load_experiment)(path)
+
+
 def test_the_demo_overwrites_nothing(
     call: Callable[..., Result], tmp_path: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
