@@ -68,7 +68,8 @@ class DeclaredIdentification:
             periods=keys.periods,
             tell=after,
         )
-        tell(f"excitation: condition number {best.condition:.4g}, random motions {best.random_condition:.4g}")
+        random = f"{best.random_condition:.4g} along random ones"
+        tell(f"excitation: condition number {best.condition:.4g} along the motion found, {random}")
         fitted, truth = record(self.files, self.settings, self.simulated, best.motion, "excitation", 0)
         other = search.random_motion(keys.seed + CHECK_SEED, keys.periods)
         check, _ = record(self.files, self.settings, self.simulated, other, "a random motion", 1)

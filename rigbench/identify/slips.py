@@ -120,7 +120,10 @@ def slip_faults(
     found, after = _likeliest(arm, gravity, seen, before)
     if not found:
         return _foreign_faults(arm, gravity, seen, table)
-    left = f"the model misses the torques by {before.max():.0%} as they stand, by {after.max():.0%} without"
+    left = (
+        f"the model misses the torques by {100 * before.max():.3g} % as they stand, by "
+        f"{100 * after.max():.3g} % without this"
+    )
     faults = []
     for slip in found:
         for what in slip.what:
@@ -274,10 +277,10 @@ def _foreign_faults(arm: Arm, gravity: tuple[float, float, float], seen: _Seen, 
     shares = np.sqrt((error**2).mean(axis=0)) / size
     noisy = np.sqrt((error**2).mean(axis=0)) < 3 * seen.noise
     problem = (
-        "no masses, inertias and friction explain this torque along these positions: {:.0%} of it is left"
+        "no masses, inertias and friction explain this torque along these positions: {:.3g} % of it is left"
     )
     return [
-        table.column_fault(name, problem.format(share), "torques of this arm, at the rows' instants")
+        table.column_fault(name, problem.format(100 * share), "torques of this arm, at the rows' instants")
         for name, share, excused in zip(column_names(arm)["tau"], shares, noisy, strict=True)
         if share > EXPLAINED and not excused
     ]
