@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+import shutil
 from dataclasses import replace
 from pathlib import Path
 
@@ -327,6 +328,20 @@ def said_of(tmp_path, true, believed, change, v=False, motion=MOTION):
     write_recording(path, true, change(recorded(true, motion, v=v)))
     recording, table = read_recording(path, believed)
     return [str(fault) for fault in implausible(believed, GRAVITY, recording, table)]
+
+
+@pytest.mark.parametrize("what", ["q", "torque"])
+def test_both_columns_are_named_where_either_may_be_of_the_wrong_sign(tmp_path, what):
+    """The mirror image of an arm with a plane of symmetry about a vertical axis turns the other way, no more."""
+    folder = ROOT / "robots_demo" / "planar2"
+    text = (folder / "planar2.urdf").read_text().replace('<axis xyz="0 -1 0"/>', '<axis xyz="0 0 1"/>', 1)
+    (tmp_path / "planar2.urdf").write_text(text)
+    shutil.copy(folder / "arm.yaml", tmp_path)
+    arm = load_arm(tmp_path / "arm.yaml")
+    (said,) = said_of(tmp_path, arm, arm, lambda r: replace(r, **{what: column(getattr(r, what), 0, -1)}))
+    assert "looks of the wrong sign, or else " in said
+    assert "q_deg.shoulder" in said
+    assert "tau_nm.shoulder" in said
 
 
 def column(array, i, factor):
