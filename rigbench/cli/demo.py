@@ -48,8 +48,10 @@ def copy_demo(folder: str, as_json: bool) -> None:
     arms, experiments = (
         sum(file.parts[0] == part and file.suffix == ".yaml" for file in files) for part in PARTS
     )
-    show(f"{arms} arms and {experiments} experiments copied to {folder}. Try them:")
-    show(f"  cd {shlex.quote(folder)}\n  rigbench check {FIRST}\n  rigbench run {FIRST}")
+    here = target.resolve() == Path.cwd()
+    where, first_step = ("here", "") if here else (f"to {folder}", f"  cd {shlex.quote(folder)}\n")
+    show(f"{arms} arm files and {experiments} experiments copied {where}. Try them:")
+    show(f"{first_step}  rigbench check {FIRST}\n  rigbench run {FIRST}")
     show("Each experiment opens with its question and how to read the answer.")
 
 

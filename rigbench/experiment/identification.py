@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, replace
+from os.path import normpath
 from pathlib import Path
 
 from rigbench.arm.case import Case
@@ -68,7 +69,8 @@ class DeclaredIdentification:
             periods=keys.periods,
             tell=after,
         )
-        tell(f"excitation: condition number {best.condition:.4g}, random motions {best.random_condition:.4g}")
+        random = f"{best.random_condition:.4g} along random ones"
+        tell(f"excitation: condition number {best.condition:.4g} along the motion found, {random}")
         fitted, truth = record(self.files, self.settings, self.simulated, best.motion, "excitation", 0)
         other = search.random_motion(keys.seed + CHECK_SEED, keys.periods)
         check, _ = record(self.files, self.settings, self.simulated, other, "a random motion", 1)
@@ -104,12 +106,15 @@ def load_identification(path: str | Path) -> DeclaredIdentification:
     findings = Findings(document, faults)
     if findings.clean("recordings") and findings.clean("simulate"):
         if (keys.recordings is None) == (keys.simulate is None):
-            findings.fault((), "needs recordings or simulate", "one of the two")
+            missing = keys.simulate is None
+            problem = "needs recordings or simulate" if missing else "has no effect beside recordings"
+            findings.fault(() if missing else ("simulate",), problem, "one of the two")
         if keys.check is not None and keys.simulate is not None:
             findings.fault(("check",), "simulate makes its own check", "no check beside simulate")
     if keys.excitation is not None and keys.simulate is None and findings.clean("excitation"):
         findings.fault(("excitation",), "has no effect beside recordings", "simulate")
     _check_loaded(keys, findings)
+    _check_once(keys, findings)
     _check_motions(keys, findings)
     if findings.faults and not findings.clean("arm"):
         raise InputFaults(findings.faults)
@@ -161,7 +166,7 @@ def _check_motions(keys: IdentificationKeys, findings: Findings) -> None:
 
 
 def _check_loaded(keys: IdentificationKeys, findings: Findings) -> None:
-    """Check that what is recorded with a load stands beside what is recorded without, and is not the same."""
+    """Check that what is recorded with a load stands beside what is recorded without."""
     if keys.loaded is not None and findings.clean("loaded"):
         if keys.simulate is not None:
             problem = "simulate makes its own recordings with a load"
@@ -169,13 +174,22 @@ def _check_loaded(keys: IdentificationKeys, findings: Findings) -> None:
         elif keys.recordings is None and findings.clean("recordings"):
             problem = "tells nothing without motions of the arm alone"
             findings.fault(("loaded",), problem, "recordings too, of the arm without the load")
-        for i, name in enumerate(keys.loaded):
-            if name in (keys.recordings or ()):
-                findings.fault(("loaded", i), f"'{name}' is among recordings too", "one of the two")
     simulate = keys.simulate
     if simulate is not None and simulate.loaded is not None and simulate.mismatch.payload is not None:
         problem = "the hidden machine carries the mismatch's payload already"
         findings.fault(("simulate", "loaded"), problem, "no payload under mismatch")
+
+
+def _check_once(keys: IdentificationKeys, findings: Findings) -> None:
+    """Check that no recording is named twice: it would count twice, or be its own check."""
+    seen = dict[str, str]()
+    for key, names in (("recordings", keys.recordings), ("loaded", keys.loaded), ("check", keys.check)):
+        listed = [names] if isinstance(names, str) else names or ()
+        for i, name in enumerate(listed):
+            if (path := normpath(name)) in seen:
+                place = (key, i) if listed is names else (key,)
+                findings.fault(place, f"'{name}' is among {seen[path]} already", "each recording once")
+            seen.setdefault(path, key)
 
 
 def _case(keys: SimulateKeys) -> Case | None:

@@ -65,14 +65,15 @@ def implausible(
 def _range_faults(arm: Arm, recording: Recording, table: Table) -> Iterator[Fault]:
     """Yield the joints that were recorded beyond their limits."""
     for i, name in enumerate(column_names(arm)["q"]):
-        q, scale, low, high = recording.q[:, i], unit_of(arm, i)[1], arm.lower[i], arm.upper[i]
+        (unit, scale), q, low, high = unit_of(arm, i), recording.q[:, i], arm.lower[i], arm.upper[i]
         room = (PAST - 1) * (high - low) if np.isfinite(high - low) else 0.0
         far = np.flatnonzero((q < low - room) | (q > high + room))
         if far.size:
             why = _why_beyond(q, low, high, 1e3 if arm.kinds[i] == PRISMATIC else TURN)
+            also = f" (and in {counted(far.size - 1, 'more row')})" if far.size > 1 else ""
             problem = (
-                f"{q[far[0]] * scale:.5g} at {recording.t[far[0]]:.4f} s is beyond the joint's limits, "
-                f"as {counted(far.size, 'row')} of {len(q)}{why}"
+                f"{q[far[0]] * scale:.5g} {unit} at {recording.t[far[0]]:.4f} s is beyond the joint's limits"
+                f"{also}{why}"
             )
             yield table.fault(int(far[0]), name, problem, f"{low * scale:.4g} to {high * scale:.4g}")
 
@@ -93,6 +94,8 @@ def _still_faults(arm: Arm, recording: Recording, table: Table) -> Iterator[Faul
         moved = float(np.ptp(recording.q[:, i])) * scale
         if moved < LEAST_MOVE[unit]:
             problem = f"no excitation: joint {arm.joints[i]} moves by {moved:.3g} {unit} in all"
+            if moved:
+                problem += f", unless these are in {'m' if unit == 'mm' else 'rad'}"
             expected = f"{LEAST_MOVE[unit]:g} {unit} or more, better all of its range"
             yield table.column_fault(name, problem, expected)
         if np.ptp(recording.torque[:, i]) == 0:

@@ -175,7 +175,7 @@ def record(
     log = simulate(run)
     if log.outcome != "finished":
         problem = f"the hidden machine did not follow {name}: {log.reason or log.outcome}"
-        less = "load" if loaded else "mismatch"
+        less = "load" if loaded else "mismatch or noise_deg"
         raise InputFaults.one(files.path, "", problem, f"a lower limit_percent, or less {less}")
     seen = noise_of(run.sensing, len(log.t), files.arm(), simulated.seed, draw)
     rng = np.random.default_rng([simulated.seed, draw])

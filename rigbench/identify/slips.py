@@ -30,6 +30,8 @@ FACTORS = {
 }
 """Slips of a unit: degrees for radians, thousandths for wholes."""
 
+WRONG_SIGN = "looks of the wrong sign"
+
 EXPLAINED = 0.5
 """Share of a joint's torque that even a poor model leaves unexplained at most."""
 
@@ -120,14 +122,39 @@ def slip_faults(
     found, after = _likeliest(arm, gravity, seen, before)
     if not found:
         return _foreign_faults(arm, gravity, seen, table)
-    left = f"the model misses the torques by {before.max():.0%} as they stand, by {after.max():.0%} without"
+    left = (
+        f"the model misses the torques by {100 * before.max():.3g} % as they stand, by "
+        f"{100 * after.max():.3g} % without this"
+    )
     faults = []
     for slip in found:
         for what in slip.what:
             columns = [names[what][i] for i in slip.joints]
-            said = f"{slip.said.format(*columns)}: {left}"
+            other = "" if len(found) > 1 else _other_sign(arm, gravity, seen, slip, after)
+            said = f"{slip.said.format(*columns)}{other}: {left}"
             faults += [table.column_fault(name, said, "what the header says") for name in columns]
     return faults
+
+
+def _other_sign(
+    arm: Arm, gravity: tuple[float, float, float], seen: _Seen, slip: _Slip, after: Floats
+) -> str:
+    """Name the column that may be of the wrong sign instead: one joint's torques for its positions, or they.
+
+    Where gravity does not act on a joint and its axis is one of symmetry, all but the same torques follow.
+    """
+    if slip.said != WRONG_SIGN or slip.what not in (("q",), ("tau",)) or len(slip.joints) > 1:
+        return ""
+    i, sign = slip.joints[0], np.ones(arm.n)
+    sign[i] = -1.0
+    if slip.what == ("q",):
+        model, v, torque = _modelled(arm, gravity, seen.q, seen.v, seen.a), seen.v, sign * seen.torque
+    else:
+        q, v, a = (sign * x for x in (seen.q, seen.v, seen.a))
+        model, torque = _modelled(arm, gravity, q, v, a), seen.torque
+    if _size(_shares(torque, model, v)) > _size(after) + GAIN:
+        return ""
+    return f", or else {column_names(arm)['tau' if slip.what == ('q',) else 'q'][i]} does"
 
 
 def corner_of(recording: Recording) -> float:
@@ -214,7 +241,7 @@ def _positions(arm: Arm) -> Iterator[_Positions]:
             yield _Positions(_Slip(("q",), which, f"looks {said}"), whole, scale)
         scale = ones.copy()
         scale[list(which)] = -1.0
-        yield _Positions(_Slip(("q",), which, "looks of the wrong sign"), whole, scale)
+        yield _Positions(_Slip(("q",), which, WRONG_SIGN), whole, scale)
         yield _Positions(
             _Slip(("q", "tau"), which, "looks of a joint that turns the other way"), whole, scale, True
         )
@@ -243,7 +270,7 @@ def _torques(arm: Arm, model: Floats, torque: Floats, v: Floats) -> Iterator[tup
     kinds = {
         "looks 1000 times too large": np.full(n, 1e-3),
         "looks 1000 times too small": np.full(n, 1e3),
-        "looks of the wrong sign": np.full(n, -1.0),
+        WRONG_SIGN: np.full(n, -1.0),
         "looks like the motor's own, before its gear": arm.drives.gear_ratio,
     }
     for said, factor in kinds.items():
@@ -274,10 +301,10 @@ def _foreign_faults(arm: Arm, gravity: tuple[float, float, float], seen: _Seen, 
     shares = np.sqrt((error**2).mean(axis=0)) / size
     noisy = np.sqrt((error**2).mean(axis=0)) < 3 * seen.noise
     problem = (
-        "no masses, inertias and friction explain this torque along these positions: {:.0%} of it is left"
+        "no masses, inertias and friction explain this torque along these positions: {:.3g} % of it is left"
     )
     return [
-        table.column_fault(name, problem.format(share), "torques of this arm, at the rows' instants")
+        table.column_fault(name, problem.format(100 * share), "torques of this arm, at the rows' instants")
         for name, share, excused in zip(column_names(arm)["tau"], shares, noisy, strict=True)
         if share > EXPLAINED and not excused
     ]

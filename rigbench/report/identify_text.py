@@ -7,6 +7,8 @@ import textwrap
 from rigbench.errors import counted
 from rigbench.identify.procedure import Identification
 from rigbench.report.cautions import BEFORE_A_REAL_ARM
+from rigbench.report.identify_numbers import Shown
+from rigbench.report.identify_verdict import noise_words, torque_words
 from rigbench.report.load_text import load_text
 
 __all__ = ["identify_text"]
@@ -30,7 +32,7 @@ def _head(done: Identification) -> list[str]:
     load = "" if done.load is None else f" and {done.load.found.base.count} of a load"
     lines = [
         f"{done.files.arm().name}: {found.base.count} parameters{load} from {found.rows} samples, "
-        f"condition number {found.condition:.3g}"
+        f"condition number of the fit {found.condition:.3g}"
     ]
     if found.spikes:
         lines.append(f"{counted(found.spikes, 'recorded sample')} taken for spikes and left out")
@@ -40,7 +42,7 @@ def _head(done: Identification) -> list[str]:
 
 
 def _torques(done: Identification) -> list[str]:
-    """One line a joint: how much its torque varies, and what is left of it."""
+    """One line a joint: how much its torque varies, and what is left of it; then what to make of that."""
     errors = done.torque_errors
     of = "a motion that was not fitted" if done.checked else "the motion that was fitted"
     lines = [f"Error of predicted torques, rms [N m; N], on {of} ({done.rows.name})", ""]
@@ -55,7 +57,9 @@ def _torques(done: Identification) -> list[str]:
             errors["identified"].rms_nm[i],
         )
         lines.append(f"  {joint[:16]:<16}" + "".join(f"{number:>{NUMBER}.3g}" for number in numbers))
-    return lines
+    shown = Shown(done)
+    left = noise_words(shown) if done.checked else "That is no test; a check would be."
+    return [*lines, "", *textwrap.wrap(f"{torque_words(shown)} {left}", 100)]
 
 
 def _parameters(done: Identification) -> list[str]:

@@ -11,7 +11,7 @@ from rigbench.report.cautions import BEFORE_A_REAL_ARM, CAUTION
 from rigbench.report.identify_numbers import Shown
 from rigbench.report.words import figure
 
-__all__ = ["caution_words", "known_words", "left_words", "torque_words"]
+__all__ = ["caution_words", "known_words", "left_words", "noise_words", "torque_words"]
 
 MUCH_LEFT = 1.5
 """Times the noise from which on what is left on another motion is more than noise (our choice: chance
@@ -30,7 +30,9 @@ def torque_words(shown: Shown) -> str:
         f"is {_range(after)} %"
     )
     worse = shown.errors["identified"].rms_nm > shown.errors["declared"].rms_nm
-    return said + (f", but more than before at {_names(shown, worse)}." if worse.any() else ".")
+    if not worse.any():
+        return f"{said}."
+    return f"{said}, but more than before at {_names(shown, worse)}: don't use this arm before you know why."
 
 
 def left_words(shown: Shown) -> str:
@@ -39,9 +41,13 @@ def left_words(shown: Shown) -> str:
     name = name if len(name) <= LONGEST else f"\u2026{name[-LONGEST:]}"
     if not shown.done.checked:
         return f"On the motion that was fitted ({name}), so it is no test; a check would be."
+    return f"On a motion that was not fitted ({name}). {noise_words(shown)}"
+
+
+def noise_words(shown: Shown) -> str:
+    """Say whether what is left on a motion that was not fitted is noise."""
     times = shown.errors["identified"].rms_nm / shown.done.found.noise
-    left = f"What is left is {_range(times)} times the noise of the fit"
-    said = f"On a motion that was not fitted ({name}). {left}"
+    said = f"What is left is {_range(times)} times the noise of the fit"
     much = times > MUCH_LEFT
     if not much.any():
         return f"{said}."

@@ -13,7 +13,7 @@ import numpy as np
 import pytest
 
 from rigbench.arm.files import ArmFiles
-from rigbench.arm.mismatch import Case, Mismatch, Spread
+from rigbench.arm.mismatch import Case, Knowledge, Mismatch, Spread
 from rigbench.campaign import kept as kept_module
 from rigbench.campaign.find import run_by_key
 from rigbench.campaign.kept import Keeper, NotKept, restored
@@ -67,6 +67,7 @@ def variants(
     round_ = circle(arm.arm(), near, centre_m=[0.5, 0, 0.5], radius_m=0.1, normal=[0, 0, 1], turn_s=2)
     straight = line(arm.arm(), near, to_m=[0.5, 0.1, 0.5], tool_rpy_deg=[180, 0, 0])
     spread = Spread(5.0, (("fore", 25.0),), shared=True)
+    known = Knowledge((), ("m.fore",), ((0.0,) * 10 + (1.0,) + (0.0,) * 9,), ((1 / 300,),), ())
     case = Case(payload_kg=3, link_cog_mm=(("fore", (1, 2, 3)),), viscous_percent=Spread(60, (("elbow", 1),)))
     return {
         "registered law, via points": run_of(folder, pd, motion=via),
@@ -81,6 +82,7 @@ def variants(
             folder, pd, arm=run_of(folder, pd).arm.with_drives([("all", "viscous", 0.1), ("elbow", "coulomb", 1)])
         ),
         "draw": drawn(run_of(folder, pd, mismatch=Mismatch(link_mass_percent=spread)), 2**62),
+        "identification": drawn(run_of(folder, pd, mismatch=Mismatch(identification=known)), 1),
         "case": run_of(folder, pd, case=case, start_offset=(0.01, 0.0), base_tilt=(0.1, -0.0)),
         "scene": run_of(
             folder, pd, scene=SceneChoice("bakery.py:table", load_file_scene(folder / "bakery.py", "table")[1])

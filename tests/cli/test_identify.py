@@ -159,7 +159,7 @@ def test_recordings_with_a_load(call: Callable[..., Result], loaded_logs: Path) 
 LOADED_FAULTS = {
     "no arm alone": ("recordings: [a.csv]\ncheck: b.csv\n", "", "loaded: tells nothing without motions of the arm"),
     "beside simulate": ("recordings: [a.csv]\ncheck: b.csv\n", "simulate: {}\n", "simulate.loaded: {payload_kg"),
-    "the same recording": ("loaded: [full.csv]", "loaded: [a.csv]", "loaded[0]: 'a.csv' is among recordings too"),
+    "the same recording": ("loaded: [full.csv]", "loaded: [a.csv]", "loaded[0]: 'a.csv' is among recordings already"),
     "no such recording": ("loaded: [full.csv]", "loaded: [none.csv]", "none.csv: the recording does not exist"),
     "none": ("loaded: [full.csv]", "loaded: []", "loaded"),
     "the wrong way round": ("recordings: [a.csv]\ncheck: b.csv\nloaded: [full.csv]", "recordings: [full.csv]\nloaded: [a.csv]", "a.csv: the mass of the load comes out as -"),
@@ -184,7 +184,17 @@ def test_faults_about_loads(call: Callable[..., Result], loaded_logs: Path, faul
 
 FAULTS = {
     "neither": ("recordings: [a.csv]\ncheck: b.csv\n", "", "needs recordings or simulate"),
-    "both": ("check: b.csv\n", "simulate: {}\n", "needs recordings or simulate"),
+    "both": ("check: b.csv\n", "simulate: {}\n", "logs.yaml:5: simulate: has no effect beside recordings"),
+    "checked by itself": (
+        "check: b.csv",
+        "check: ./a.csv",
+        "logs.yaml:5: check: './a.csv' is among recordings already",
+    ),
+    "counted twice": (
+        "[a.csv]",
+        "[a.csv, b.csv, a.csv]",
+        "logs.yaml:4: recordings[2]: 'a.csv' is among recordings already",
+    ),
     "unknown key": ("check:", "chek:", "did you mean 'check'"),
     "no such recording": ("a.csv", "none.csv", "none.csv: the recording does not exist"),
     "no such arm": ("arm.yaml", "leg.yaml", "leg.yaml"),

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+import shutil
 from dataclasses import replace
 from pathlib import Path
 
@@ -329,6 +330,20 @@ def said_of(tmp_path, true, believed, change, v=False, motion=MOTION):
     return [str(fault) for fault in implausible(believed, GRAVITY, recording, table)]
 
 
+@pytest.mark.parametrize("what", ["q", "torque"])
+def test_both_columns_are_named_where_either_may_be_of_the_wrong_sign(tmp_path, what):
+    """The mirror image of an arm with a plane of symmetry about a vertical axis turns the other way, no more."""
+    folder = ROOT / "robots_demo" / "planar2"
+    text = (folder / "planar2.urdf").read_text().replace('<axis xyz="0 -1 0"/>', '<axis xyz="0 0 1"/>', 1)
+    (tmp_path / "planar2.urdf").write_text(text)
+    shutil.copy(folder / "arm.yaml", tmp_path)
+    arm = load_arm(tmp_path / "arm.yaml")
+    (said,) = said_of(tmp_path, arm, arm, lambda r: replace(r, **{what: column(getattr(r, what), 0, -1)}))
+    assert "looks of the wrong sign, or else " in said
+    assert "q_deg.shoulder" in said
+    assert "tau_nm.shoulder" in said
+
+
 def column(array, i, factor):
     changed = array.copy()
     changed[:, i] *= factor
@@ -361,12 +376,12 @@ SLIPS = {
     "q of two joints in rad": (lambda r: replace(r, q=column(column(r.q, 1, 1 / 57.29578), 4, 1 / 57.29578)), ["q_deg.j2: looks 57.3 times too small", "q_deg.j5: looks 57.3 times too small"]),
     "q in rad and torques in N mm": (lambda r: replace(r, q=r.q / 57.29578, torque=r.torque * 1e3), ["q_deg.j1: looks 57.3 times too small", "tau_nm.j1: looks 1000 times too large"]),
     "q of the wrong sign": (lambda r: replace(r, q=column(r.q, 4, -1)), ["q_deg.j5: looks of the wrong sign"]),
-    "q of the wrong sign beyond its range": (lambda r: replace(r, q=column(r.q, 2, -1)), ["q_deg.j3", "rows of 4000; it looks of the wrong sign"]),
+    "q of the wrong sign beyond its range": (lambda r: replace(r, q=column(r.q, 2, -1)), ["q_deg.j3", " deg at ", "more rows); it looks of the wrong sign"]),
     "a joint wrapped": (lambda r: replace(r, q=wrapped(r.q, 0)), ["q_deg.j1: jumps by 359.9 deg from the row before", "it looks wrapped at half a turn"]),
     "a torque that never changes": (lambda r: replace(r, torque=column(r.torque, 2, 0.0)), ["tau_nm.j3: the same all along: 0"]),
     "torques of another arm": (lambda r: replace(r, torque=np.cumsum(np.random.default_rng(0).normal(size=r.torque.shape), axis=0)), ["tau_nm.j1: no masses, inertias and friction explain this torque"]),
-    "a joint within 0.1 deg": (lambda r: replace(r, q=column(r.q, 3, np.radians(0.1) / np.ptp(r.q[:, 3]))), ["q_deg.j4: no excitation: joint j4 moves by 0.1 deg"]),
-    "a joint at rest": (lambda r: replace(r, q=column(r.q, 3, 0.0)), ["q_deg.j4: no excitation: joint j4 moves by 0 deg"]),
+    "a joint within 0.1 deg": (lambda r: replace(r, q=column(r.q, 3, np.radians(0.1) / np.ptp(r.q[:, 3]))), ["q_deg.j4: no excitation: joint j4 moves by 0.1 deg in all, unless these are in rad; expected 1 deg"]),
+    "a joint at rest": (lambda r: replace(r, q=column(r.q, 3, 0.0)), ["q_deg.j4: no excitation: joint j4 moves by 0 deg in all; expected 1 deg"]),
 }  # fmt: skip
 
 

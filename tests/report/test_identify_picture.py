@@ -27,6 +27,7 @@ from rigbench.identify.procedure import Identification, Settings
 from rigbench.identify.regressor import Terms, parameter_values, regressor
 from rigbench.report.cautions import BEFORE_A_REAL_ARM, CAUTION
 from rigbench.report.identify_picture import identify_figure, identify_picture
+from rigbench.report.identify_text import identify_text
 from rigbench.report.paper import text_boxes
 from rigbench.report.shortening import fitted
 
@@ -267,6 +268,14 @@ def test_more_than_noise_is_told(done: Identification) -> None:
     arm: Arm = done.files.arm()
     worse = replace(done.result, arm=arm.replaced(0.5 * arm.parameters))
     assert "more than before at shoulder, elbow" in words(identify_figure(replace(done, result=worse)))
+    printed = " ".join(
+        identify_text(replace(checked, rows=replace(done.rows, torque=wave), result=worse)).split()
+    )
+    assert (
+        "more than before at shoulder, elbow: don't use this arm before you know why. What is left" in printed
+    )
+    assert "there is more in it, which these parameters don't explain." in printed
+    assert "more than before" not in " ".join(identify_text(done).split())
 
 
 @pytest.mark.parametrize("width", [8, 20, 31, 200])
