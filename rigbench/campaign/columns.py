@@ -9,6 +9,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from rigbench.campaign.acting import Acting
 from rigbench.campaign.blocks import Block
 from rigbench.campaign.places import Place
 from rigbench.campaign.reading import Reader
@@ -100,7 +101,7 @@ class Columns:
     def __init__(self, reader: Reader, studies: bool = False) -> None:
         self._reader, self._studies = reader, reader.study_runs() if studies else None
         self._places, self._hosts = reader.places(), reader.hosts()
-        self._scores = reader.scores()
+        self._scores, self._acting = reader.scores(), Acting(reader.text)
         values = reader.draw_values()
         parameters = {name for own in values.values() for name in own}
         self._study_places: Mapping[int, Place] = {}
@@ -176,8 +177,7 @@ class Columns:
 
     def _draw_maker(self, parameter: str) -> Callable[[Block], Values]:
         u = self._u[:, self._parameters.index(parameter)]
-        source = parameter.partition(".")[0]
-        acts = _looked_up(self._places, lambda place: float(source in place.sources.split(",")), NUMBER)
+        acts = _looked_up(self._places, lambda place: float(self._acting.of(place, parameter)), NUMBER)
 
         def make(block: Block) -> Values:
             row = np.searchsorted(self._drawn, block.draw)

@@ -135,7 +135,7 @@ class Draws:
         if run.draw is None or run.directions is not None:
             return
         for source in run.sources:
-            mark = (run.arm, run.seed, run.draw, source)
+            mark = (run.arm, run.seed, run.draw, source, getattr(run.mismatch, source))  # sheets may differ
             if mark not in self._told:
                 self._told.add(mark)
                 values = draw_values(run.arm.arm(), run.mismatch, (source,), run.seed, run.draw)

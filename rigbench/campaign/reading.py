@@ -284,11 +284,12 @@ class Reader(Closable):
                 problem = "was filled by an older rigbench, which did not keep what a replay needs"
                 raise StoreError(str(self.path), f"{problem}; 'rigbench run' adds it, and runs nothing anew")
             try:
-                return restored(self._text(digest), self._text, draw)
+                return restored(self.text(digest), self.text, draw)
             except NotKept as reason:
                 raise StoreError(str(self.path), f"run {key} can't be replayed: {reason}") from None
 
-    def _text(self, digest: str) -> str:
+    def text(self, digest: str) -> str:
+        """Return the text of a run or of a part of one; NotKept if it is missing."""
         found = self._connection.execute("SELECT text FROM parts WHERE digest = ?", (digest,)).fetchone()
         if found is None:
             raise NotKept("a part of it is missing from the store")

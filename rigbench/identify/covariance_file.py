@@ -14,7 +14,7 @@ from rigbench.arm.arm import PARAMETERS, PRISMATIC, Arm, Floats
 from rigbench.arm.knowledge import Knowledge
 from rigbench.arm.log_cholesky import Coordinates
 from rigbench.arm.vector import LINK, vector_of
-from rigbench.errors import Fault, InputFaults
+from rigbench.errors import Fault, InputFaults, nearest
 from rigbench.identify.consistent import Consistent
 from rigbench.identify.estimate import Estimate
 from rigbench.identify.regressor import Terms, parameter_labels, parameter_values
@@ -163,9 +163,9 @@ def _misfits(file: str, keys: CovarianceKeys) -> Iterator[Fault]:
             yield Fault(file, None, name, f"{len(getattr(keys, name))} entries", str(count))
     for i, base in enumerate(keys.base):
         for label in sorted(set(base.of) - set(labels)):
-            yield Fault(
-                file, None, f"base[{i}].of", f"'{label}' is no parameter of the arm", "as in `values`"
-            )
+            problem, near = f"'{label}' is no parameter of the arm", nearest(label, labels)
+            expected = "" if near else "parameters such as m.LINK and coulomb.JOINT"
+            yield Fault(file, None, f"base[{i}].of", problem, expected, near)
     firsts = _firsts(keys)
     for i, first in enumerate(firsts):
         if first in firsts[:i]:

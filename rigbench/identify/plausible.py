@@ -32,6 +32,9 @@ FAR = 3.0
 FAST = 1.3
 """Share of its speed limit beyond which a joint was not moved by its drive."""
 
+LARGEST = 1e12
+"""Torques [N m or N] that are larger, or smaller than one over this, are no drive's (our choice)."""
+
 WINDOW_S = 0.05
 """Time over which a speed is taken for that [s]: noise of 0.1 deg is 3 deg/s then."""
 
@@ -46,9 +49,9 @@ def implausible(
     """Return what makes a recording, read without faults, not one of this arm in these units.
 
     By itself: too few samples a second, as when times are in ms; joints beyond their limits; joints that do
-    not move, jump, or outrun their drives; torques that are the same all along; velocities that are not the
-    positions' own. If there is none of these, what :func:`rigbench.identify.slips.slip_faults` finds. A model
-    that is merely wrong is no fault.
+    not move, jump, or outrun their drives; torques that are the same all along or of no drive's size;
+    velocities that are not the positions' own. If there is none of these, what
+    :func:`rigbench.identify.slips.slip_faults` finds. A model that is merely wrong is no fault.
     """
     rate = recording.rate_hz
     if rate < SLOWEST_HZ:
@@ -87,7 +90,7 @@ def _why_beyond(q: Floats, low: float, high: float, factor: float) -> str:
 
 
 def _still_faults(arm: Arm, recording: Recording, table: Table) -> Iterator[Fault]:
-    """Yield the joints that hardly move, and the torques that never change."""
+    """Yield the joints that hardly move, and the torques that never change or are no drive's."""
     names = column_names(arm)
     for i, (name, torque) in enumerate(zip(names["q"], names["tau"], strict=True)):
         unit, scale = unit_of(arm, i)
@@ -101,6 +104,10 @@ def _still_faults(arm: Arm, recording: Recording, table: Table) -> Iterator[Faul
         if np.ptp(recording.torque[:, i]) == 0:
             problem = f"the same all along: {recording.torque[0, i] + 0.0:.5g}"
             yield table.column_fault(torque, problem, "a torque that changes along the motion")
+        usual = float(np.percentile(np.abs(recording.torque[:, i]), 95))
+        if usual > LARGEST or 0 < usual < 1 / LARGEST:
+            problem = f"is of {usual:.3g} for the most part, which no drive gives"
+            yield table.column_fault(torque, problem, "a torque in the unit that the header says")
 
 
 def _jump_faults(arm: Arm, recording: Recording, table: Table) -> Iterator[Fault]:

@@ -9,6 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from rigbench.arm.arm import Floats
+from rigbench.campaign.acting import Acting
 from rigbench.campaign.reading import Reader
 from rigbench.scores.drivers import Driver, drivers
 from rigbench.scores.results import CellKey, Results
@@ -75,17 +76,12 @@ def driver_strip(store: Reader, results: Results, key: CellKey, score: str) -> D
 
 def _parameters(store: Reader, key: CellKey) -> Mapping[str, Sequence[str]]:
     """Return the drawn parameters of each source that acts in a cell."""
-    acting = {
-        source
-        for place in store.places().values()
-        if (place.sheet, place.law, place.condition) == key
-        for source in place.sources.split(",")
-        if source
-    }
-    names = sorted({name for own in store.draw_values().values() for name in own})
+    acting, here = (
+        Acting(store.text),
+        [place for place in store.places().values() if (place.sheet, place.law, place.condition) == key],
+    )
     found: dict[str, list[str]] = {}
-    for name in names:
-        source = name.partition(".")[0]
-        if source in acting:
-            found.setdefault(source, []).append(name)
+    for name in sorted({name for own in store.draw_values().values() for name in own}):
+        if any(acting.of(place, name) for place in here):
+            found.setdefault(name.partition(".")[0], []).append(name)
     return found

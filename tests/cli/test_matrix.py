@@ -6,8 +6,11 @@ import json
 from collections.abc import Callable
 from pathlib import Path
 
+import numpy as np
 import pytest
 from typer.testing import Result
+
+from rigbench.campaign.opened import open_store
 
 STORE = "results/trial.sqlite"
 
@@ -60,6 +63,39 @@ def test_changes_are_told_with_what_only_one_has(stored: Path, call: Callable[..
     kinds = {(c["law"], c["condition"]): c["change"] for c in document["changes"]["cells"]}
     assert kinds["computed torque", "nominal"] == "better"
     assert kinds["pd", "nominal"] == "new"
+
+
+def test_sheets_have_the_values_of_their_own_parameters(
+    trial: Path, run_here: Callable[..., Result], call: Callable[..., Result]
+) -> None:
+    """One factor for all links in one sheet, one for each in the other: the export and the drivers keep them apart."""
+    own = {True: {"link_mass_percent.all"}, False: {"link_mass_percent.upper", "link_mass_percent.fore"}}
+    text = trial.read_text("utf-8").replace("link_mass_percent: 10", "link_mass_percent: {all: 10}")
+    text += "vary: {mismatch: {link_mass_percent: {shared: [true, false]}}}\n"
+    trial.write_text(text.replace("draws: 3", "draws: 24"), "utf-8")
+    assert run_here(str(trial)).exit_code == 0
+    with open_store(STORE) as store:
+        runs, names = store.runs(), [column.name for column in store.columns()]
+        for shared, parameters in own.items():
+            here = (runs["sheet"] == f"link_mass_percent.shared {str(shared).lower()}") & (runs["draw"] >= 0)
+            filled = {
+                name for name in names if name.startswith("draw.") and np.isfinite(runs[name][here]).all()
+            }
+            empty = {name for name in names if name.startswith("draw.") and np.isnan(runs[name][here]).all()}
+            assert filled == {f"draw.{name}" for name in parameters}
+            assert len(filled | empty) == 3
+    for shared, parameters in own.items():
+        arguments = (
+            "--drivers",
+            "joint pd",
+            "--sheet",
+            f"link_mass_percent.shared {str(shared).lower()}",
+            "--json",
+        )
+        document = json.loads(call("matrix", STORE, *arguments).stdout)["drivers"]
+        assert document["draws"] == 24
+        (source,) = document["sources"]
+        assert source["with_score"]["parameter"] in parameters
 
 
 def test_drivers_print_and_draw(stored: Path, call: Callable[..., Result]) -> None:

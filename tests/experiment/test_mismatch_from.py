@@ -11,6 +11,7 @@ import numpy as np
 import pytest
 
 from rigbench.arm.files import load_arm
+from rigbench.campaign.doing import Draws
 from rigbench.errors import Fault, InputFaults
 from rigbench.experiment import Experiment, load_experiment
 from rigbench.experiment.identification import load_identification
@@ -28,11 +29,15 @@ SHEETS = {"vary": {"mismatch": {"from": ["known.json", "better.json"]}}}
 
 @pytest.fixture(autouse=True)
 def _known(folder: Path) -> None:
-    """known.json and better.json: the arm of arm.yaml, known to 10 % and to 1 %."""
-    arm, terms = load_arm(folder / "arm.yaml"), Terms()
-    base, count = base_of(arm, (0.0, 0.0, -9.81), terms), len(parameter_labels(arm, terms))
-    values = base.combination @ parameter_values(arm, terms)
-    for name, deviation in (("known", 0.1), ("better", 0.01)):
+    """known.json and better.json: the arm of arm.yaml, known to 10 % and to 1 %; links.json: its links alone."""
+    arm = load_arm(folder / "arm.yaml")
+    for name, deviation, terms in (
+        ("known", 0.1, Terms()),
+        ("better", 0.01, Terms()),
+        ("links", 0.1, Terms(rotor=False, viscous=False, coulomb=False)),
+    ):
+        base, count = base_of(arm, (0.0, 0.0, -9.81), terms), len(parameter_labels(arm, terms))
+        values = base.combination @ parameter_values(arm, terms)
         found = Estimate(base, values, np.diag(values**2), np.ones(2), np.zeros(2, int), 100, 10.0)
         scales = parameter_values(arm, terms)[20:]
         result = Consistent(arm, np.zeros(2), deviation**2 * np.eye(count), scales)
@@ -64,6 +69,30 @@ def test_better_knowledge_makes_a_sheet_of_its_own(load: Load) -> None:
         for name in ("from known.json", "from better.json")
     ]
     assert np.abs(off[0]).max() > 5 * np.abs(off[1]).max() > 0
+
+
+@pytest.mark.parametrize(
+    "sweep",
+    [
+        {"mismatch": {"from": ["links.json", "known.json"]}},
+        {"mismatch": {"coulomb_percent": {"shared": [True, False]}}},
+    ],
+    ids=["other sums", "other factors"],
+)
+def test_draws_of_every_sheet_are_told(load: Load, sweep: dict[str, Any]) -> None:
+    """Where sheets have parameters of their own, the values of all of them are put down, those alike once."""
+    mismatch = FROM | {"coulomb_percent": {"all": 20, "shared": False}}
+    draws, told = Draws(), dict[tuple[int, str], float]()
+    entries = load(mismatch=mismatch, vary=sweep, draws=3).plan().entries
+    for entry in entries:
+        for _, draw, values in draws.of(entry):
+            told |= {(draw, name): u for name, u in values.items()}
+    assert told == {
+        (entry.draw, name): u
+        for entry in entries
+        for name, u in entry.run.factors().items()
+        if entry.draw is not None
+    }
 
 
 def test_another_arm_than_the_identified_is_noted(load: Load) -> None:

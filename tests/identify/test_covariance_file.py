@@ -168,6 +168,15 @@ def test_a_bad_file_is_told_with_its_place(tmp_path, bad):
     ), [str(fault) for fault in caught.value.faults]
 
 
+def test_a_misspelt_part_has_its_nearest_name(tmp_path):
+    """Of the arm's own parameters."""
+    data = document(PLANAR2)
+    data["base"][0]["of"]["mcx.for"] = 0.5
+    with pytest.raises(InputFaults) as caught:
+        read_knowledge(written(tmp_path, data), PLANAR2)
+    assert [(fault.key, fault.near) for fault in caught.value.faults] == [("base[0].of", "mcx.fore")]
+
+
 def test_a_file_that_is_not_there(tmp_path):
     """Named with its path."""
     with pytest.raises(InputFaults, match="does not exist"):

@@ -385,3 +385,12 @@ def test_slips_are_still_named_with_a_load(request, tmp_path, arm, slip):
     """A load is no excuse for a wrong unit: no load that the arm might carry explains it."""
     believed, (change, expected) = request.getfixturevalue(arm), SLIPS[slip]
     assert re.search(expected, "\n".join(said_of(tmp_path, carrying(believed, BODY), believed, change)))
+
+
+def test_a_load_is_hardly_held_to_its_first_guess(tray6):
+    """A slab, no ball of water, in 0.2 N m of noise: each entry of its inertia is as measured, to its deviation."""
+    slab = from_inertia(2.3, np.array([0.12, -0.03, 0.05]), np.diag([0.05, 0.15, 0.19]))
+    terms = by_name(found_with(tray6, slab, Terms(), noise=0.2)[2])
+    for name in ("mass", "cog x", "cog y", "cog z", "Ixx", "Iyy", "Izz"):
+        deviation = (terms[name].high - terms[name].value) / 2
+        assert abs(terms[name].identified - terms[name].value) < deviation, name

@@ -379,6 +379,8 @@ SLIPS = {
     "q of the wrong sign beyond its range": (lambda r: replace(r, q=column(r.q, 2, -1)), ["q_deg.j3", " deg at ", "more rows); it looks of the wrong sign"]),
     "a joint wrapped": (lambda r: replace(r, q=wrapped(r.q, 0)), ["q_deg.j1: jumps by 359.9 deg from the row before", "it looks wrapped at half a turn"]),
     "a torque that never changes": (lambda r: replace(r, torque=column(r.torque, 2, 0.0)), ["tau_nm.j3: the same all along: 0"]),
+    "a torque of 1e300": (lambda r: replace(r, torque=column(r.torque, 2, 1e300)), ["tau_nm.j3: is of", "which no drive gives"]),
+    "a torque of 1e-300": (lambda r: replace(r, torque=column(r.torque, 2, 1e-300)), ["tau_nm.j3: is of", "which no drive gives"]),
     "torques of another arm": (lambda r: replace(r, torque=np.cumsum(np.random.default_rng(0).normal(size=r.torque.shape), axis=0)), ["tau_nm.j1: no masses, inertias and friction explain this torque"]),
     "a joint within 0.1 deg": (lambda r: replace(r, q=column(r.q, 3, np.radians(0.1) / np.ptp(r.q[:, 3]))), ["q_deg.j4: no excitation: joint j4 moves by 0.1 deg in all, unless these are in rad; expected 1 deg"]),
     "a joint at rest": (lambda r: replace(r, q=column(r.q, 3, 0.0)), ["q_deg.j4: no excitation: joint j4 moves by 0 deg in all; expected 1 deg"]),

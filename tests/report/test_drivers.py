@@ -7,13 +7,13 @@ import json
 import math
 from collections.abc import Callable
 from dataclasses import replace
-from types import SimpleNamespace
 from typing import Any
 
 import numpy as np
 import pytest
 from matplotlib.colors import to_rgb
 
+from rigbench.campaign.places import Place
 from rigbench.report.driver_data import DriverStrip, driver_strip
 from rigbench.report.driver_picture import driver_figure
 from rigbench.report.driver_text import driver_json, driver_text, driver_words
@@ -42,9 +42,11 @@ class Stored:
         self._acting = [name for name in sources if name != "torque_bias_percent"]
 
     def places(self) -> dict[int, Any]:
-        here = SimpleNamespace(sheet="", law=KEY[1], condition=KEY[2], sources=",".join(self._acting))
-        there = SimpleNamespace(sheet="", law=KEY[1], condition="other", sources="torque_bias_percent")
-        return {0: here, 1: there}
+        here = Place("", KEY[1], "swing", KEY[2], 0.25, ",".join(self._acting), None)
+        return {0: here, 1: replace(here, condition="other", sources="torque_bias_percent")}
+
+    def text(self, digest: str) -> str:
+        raise AssertionError(digest)
 
     def draw_values(self) -> dict[int, dict[str, float]]:
         return self._values
