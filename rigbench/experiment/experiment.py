@@ -40,7 +40,8 @@ class Experiment:
     any sheet; ``draws`` the machines drawn in each random condition; ``skipped`` the
     combinations that can't be; ``law_lines`` where the laws stand in the file; ``notes`` what the user
     should know but need not change; ``studies`` what is asked after the matrix; ``tune`` the search for gains
-    before it, if one is declared; ``studies_of`` gives the studies of changed sheets.
+    before it, if one is declared; ``model`` the file of another arm that the laws of all sheets believe, ''
+    where it is the arm itself or swept; ``studies_of`` gives the studies of changed sheets.
     """
 
     path: str
@@ -59,6 +60,7 @@ class Experiment:
     studies: tuple[Study, ...] = ()
     stop_early: bool = False
     tune: Tune | None = None
+    model: str = ""
     studies_of: Callable[[Sequence[Sheet]], tuple[Study, ...]] = field(
         default=lambda _: (), repr=False, compare=False
     )
@@ -127,6 +129,7 @@ class Experiment:
             studies=self.studies,
             stop_early=self.stop_early,
             first=self.tune,
+            model=self.model,
         )
 
 
@@ -180,6 +183,7 @@ def _assembled(document: Document, text: str, keys: ExperimentKeys, checked: lis
     sheets = _drawn_alike([each.sheet for each in whole if each.sheet is not None])
     rows = dict.fromkeys(row for each in whole for row in (each.keys and each.keys.laws) or ())
     lines = whole[0].combination.document
+    models = {each.keys.model for each in whole if each.keys is not None}
     return Experiment(
         path=document.file,
         text=text,
@@ -194,6 +198,7 @@ def _assembled(document: Document, text: str, keys: ExperimentKeys, checked: lis
         law_lines={row: lines.line(("laws", row)) for row in rows},
         skipped=tuple(skipped_of(checked)),
         stop_early=keys.stop_early,
+        model=(models.pop() or "") if len(models) == 1 else "",
     )
 
 
