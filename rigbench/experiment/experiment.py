@@ -16,6 +16,7 @@ from rigbench.errors import Fault, InputFaults
 from rigbench.experiment.across import Skipped, faults_across, notes_across, skipped_of
 from rigbench.experiment.combinations import combinations
 from rigbench.experiment.expand import Sheet, entries_of, spreading
+from rigbench.experiment.file_kind import EXPERIMENT, check_kind
 from rigbench.experiment.find_level import stop_early_notes
 from rigbench.experiment.read_vary import read_sweep
 from rigbench.experiment.schema import ExperimentKeys
@@ -147,9 +148,7 @@ def load_experiment(path: str | Path) -> Experiment:
     file = str(path)
     text = read_text(Path(path), file, "the experiment file")
     document = load(file, text)
-    if not {"recordings", "simulate"}.isdisjoint(document.data) and "laws" not in document.data:
-        expected = "an experiment (see `rigbench identify`)"
-        raise InputFaults.one(file, "", "declares an identification", expected)
+    check_kind(document, EXPERIMENT)
     keys, faults = partial(document, ExperimentKeys)
     if keys is None:
         raise InputFaults(faults)
