@@ -83,6 +83,11 @@ def _score(name: str) -> TableColumn:
 
 def _draw(parameter: str) -> TableColumn:
     meaning = f"the factor u of {parameter}, drawn in [-1, 1) or set by a study; empty where it did not act"
+    source, _, sum_of = parameter.partition(".")
+    if source == "identification":
+        meaning += (
+            f"; as u is uniform, its normal quantile departs the base parameter that begins with {sum_of}"
+        )
     return TableColumn(f"draw.{parameter}", NUMBER, "", meaning)
 
 

@@ -33,6 +33,7 @@ class Labels:
     stop_early: bool = False
     settled: tuple[tuple[str, str, int], ...] = ()
     studies: tuple[str, ...] = ()
+    model: str = ""
 
     @classmethod
     def of(cls, plan: Plan) -> Labels:

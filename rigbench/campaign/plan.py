@@ -67,6 +67,7 @@ class Plan:
     studies: tuple[Study, ...] = ()  # done after the entries, in order
     first: Study | None = None  # on which the entries depend; see run_first
     stop_early: bool = False  # a column gets no more draws once it is settled for all its laws
+    model: str = ""  # the file of another arm that the laws of all sheets believe
 
     @property
     def seed(self) -> int | None:

@@ -374,6 +374,7 @@ class Reader(Closable):
             table,
             title=labels.title,
             arm=labels.arm,
+            model=labels.model,
             motions=labels.motions,
             tolerance=labels.tolerance,
             draws=labels.draws,

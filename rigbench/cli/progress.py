@@ -50,7 +50,8 @@ def standing_words(standing: Standing | None) -> str:
     told = [f"{law.law} {law.passed} of {law.draws}" for law in laws[:MOST]]
     if len(laws) > MOST:
         told.append(f"{len(laws) - MOST} more")
-    where = f", all {standing.sheets} sheets" if standing.sheets > 1 else ""
+    sheets = "both" if standing.sheets == 2 else f"all {standing.sheets}"
+    where = f", {sheets} sheets" if standing.sheets > 1 else ""
     return f"draws that keep under '{standing.condition}'{where}: {', '.join(told)}"
 
 

@@ -16,6 +16,7 @@ from rigbench.errors import Fault, InputFaults
 from rigbench.experiment.across import Skipped, faults_across, notes_across, skipped_of
 from rigbench.experiment.combinations import combinations
 from rigbench.experiment.expand import Sheet, entries_of, spreading
+from rigbench.experiment.file_kind import EXPERIMENT, check_kind
 from rigbench.experiment.find_level import stop_early_notes
 from rigbench.experiment.read_vary import read_sweep
 from rigbench.experiment.schema import ExperimentKeys
@@ -40,7 +41,8 @@ class Experiment:
     any sheet; ``draws`` the machines drawn in each random condition; ``skipped`` the
     combinations that can't be; ``law_lines`` where the laws stand in the file; ``notes`` what the user
     should know but need not change; ``studies`` what is asked after the matrix; ``tune`` the search for gains
-    before it, if one is declared; ``studies_of`` gives the studies of changed sheets.
+    before it, if one is declared; ``model`` the file of another arm that the laws of all sheets believe, ''
+    where it is the arm itself or swept; ``studies_of`` gives the studies of changed sheets.
     """
 
     path: str
@@ -59,6 +61,7 @@ class Experiment:
     studies: tuple[Study, ...] = ()
     stop_early: bool = False
     tune: Tune | None = None
+    model: str = ""
     studies_of: Callable[[Sequence[Sheet]], tuple[Study, ...]] = field(
         default=lambda _: (), repr=False, compare=False
     )
@@ -127,6 +130,7 @@ class Experiment:
             studies=self.studies,
             stop_early=self.stop_early,
             first=self.tune,
+            model=self.model,
         )
 
 
@@ -144,9 +148,7 @@ def load_experiment(path: str | Path) -> Experiment:
     file = str(path)
     text = read_text(Path(path), file, "the experiment file")
     document = load(file, text)
-    if (document.holds("recordings") or document.holds("simulate")) and not document.holds("laws"):
-        expected = "an experiment (see `rigbench identify`)"
-        raise InputFaults.one(file, "", "declares an identification", expected)
+    check_kind(document, EXPERIMENT)
     keys, faults = partial(document, ExperimentKeys)
     if keys is None:
         raise InputFaults(faults)
@@ -180,6 +182,7 @@ def _assembled(document: Document, text: str, keys: ExperimentKeys, checked: lis
     sheets = _drawn_alike([each.sheet for each in whole if each.sheet is not None])
     rows = dict.fromkeys(row for each in whole for row in (each.keys and each.keys.laws) or ())
     lines = whole[0].combination.document
+    models = {each.keys.model for each in whole if each.keys is not None}
     return Experiment(
         path=document.file,
         text=text,
@@ -194,6 +197,7 @@ def _assembled(document: Document, text: str, keys: ExperimentKeys, checked: lis
         law_lines={row: lines.line(("laws", row)) for row in rows},
         skipped=tuple(skipped_of(checked)),
         stop_early=keys.stop_early,
+        model=(models.pop() or "") if len(models) == 1 else "",
     )
 
 

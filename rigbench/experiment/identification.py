@@ -11,6 +11,7 @@ from rigbench.arm.case import Case
 from rigbench.arm.files import ArmFiles
 from rigbench.errors import InputFaults
 from rigbench.experiment.expand import spreading
+from rigbench.experiment.file_kind import IDENTIFICATION, check_kind
 from rigbench.experiment.findings import Findings
 from rigbench.experiment.identification_keys import ExcitationKeys, IdentificationKeys, SimulateKeys
 from rigbench.experiment.mismatch import mismatch_of
@@ -98,8 +99,7 @@ def load_identification(path: str | Path) -> DeclaredIdentification:
     """Read and check an identification file, its arm file and recordings; InputFaults with every fault."""
     file, folder = str(path), Path(path).parent
     document = load(file, read_text(Path(path), file, "the identification file"))
-    if document.holds("laws") and not (document.holds("recordings") or document.holds("simulate")):
-        raise InputFaults.one(file, "", "declares an experiment", "an identification (see `rigbench run`)")
+    check_kind(document, IDENTIFICATION)
     keys, faults = partial(document, IdentificationKeys)
     if keys is None:
         raise InputFaults(faults)

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from dataclasses import replace
 
 import numpy as np
 
@@ -49,14 +50,15 @@ def implausible(
     """Return what makes a recording, read without faults, not one of this arm in these units.
 
     By itself: too few samples a second, as when times are in ms; joints beyond their limits; joints that do
-    not move, jump, or outrun their drives; torques that are the same all along or of no drive's size;
-    velocities that are not the positions' own. If there is none of these, what
+    not move, jump, or outrun their drives, single spikes of position aside; torques that are the same all
+    along or of no drive's size; velocities that are not the positions' own. If there is none of these, what
     :func:`rigbench.identify.slips.slip_faults` finds. A model that is merely wrong is no fault.
     """
     rate = recording.rate_hz
     if rate < SLOWEST_HZ:
         problem = f"{rate:.4g} samples a second, so times may be in ms"
         return [table.column_fault(TIME, problem, "seconds, and 20 samples or more in each")]
+    recording = replace(recording, q=without_spikes(recording.q)[0])  # which are left out later, and counted
     faults = [*_range_faults(arm, recording, table), *_still_faults(arm, recording, table)]
     faults = faults or [*_jump_faults(arm, recording, table)]
     faults = faults or [*_speed_faults(arm, recording, table)]
@@ -130,7 +132,7 @@ def _jump_faults(arm: Arm, recording: Recording, table: Table) -> Iterator[Fault
 def _speed_faults(arm: Arm, recording: Recording, table: Table) -> Iterator[Fault]:
     """Yield the joints that outrun their drives, as they do when times are too short."""
     window = min(max(1, round(WINDOW_S * recording.rate_hz)), len(recording.t) - 1)
-    q = without_spikes(recording.q)[0]
+    q = recording.q
     v = np.abs(q[window:] - q[:-window]) * recording.rate_hz / window
     for i, name in enumerate(column_names(arm)["q"]):
         unit, scale = unit_of(arm, i)
@@ -146,7 +148,7 @@ def _speed_faults(arm: Arm, recording: Recording, table: Table) -> Iterator[Faul
 def _speeds(recording: Recording) -> Floats:
     """Return the low-passed speeds (N, n) that the positions say."""
     rate = recording.rate_hz
-    return derivative(low_pass(without_spikes(recording.q)[0], rate, corner_of(recording)), rate)
+    return derivative(low_pass(recording.q, rate, corner_of(recording)), rate)
 
 
 def _velocity_faults(arm: Arm, recording: Recording, v: Floats, table: Table) -> Iterator[Fault]:

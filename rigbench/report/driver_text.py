@@ -30,7 +30,7 @@ def source_words(source: str) -> str:
 def driver_words(strip: DriverStrip) -> str:
     """Say in a sentence what drives the score."""
     sheet, law, condition = strip.key
-    where = f"'{law}' under '{condition}'" + (f", {sheet}" if sheet else "")
+    where = f"'{law}' under '{condition}'" + (f" ({sheet})" if sheet else "")
     name = score_words(strip.score)[0]
     if not len(strip.draws):
         return f"No draw of {where} counts yet, so nothing shows what drives its {name}."

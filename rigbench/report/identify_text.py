@@ -37,7 +37,7 @@ def _head(done: Identification) -> list[str]:
     if found.spikes:
         lines.append(f"{counted(found.spikes, 'recorded sample')} taken for spikes and left out")
     if outliers := int(found.outliers.sum()):
-        lines.append(f"{outliers} samples of a joint's torque were left out as outliers")
+        lines.append(f"{counted(outliers, 'sample')} of a joint's torque left out as outliers")
     return lines
 
 
@@ -46,17 +46,19 @@ def _torques(done: Identification) -> list[str]:
     errors = done.torque_errors
     of = "a motion that was not fitted" if done.checked else "the motion that was fitted"
     lines = [f"Error of predicted torques, rms [N m; N], on {of} ({done.rows.name})", ""]
-    lines.append(
-        f"  {'joint':<16}" + "".join(f"{word:>{NUMBER}}" for word in ("varies by", "declared", "identified"))
-    )
     arm = done.files.arm()
+    wide = max(16, *map(len, arm.joints))
+    lines.append(
+        f"  {'joint':<{wide}}"
+        + "".join(f"{word:>{NUMBER}}" for word in ("varies by", "declared", "identified"))
+    )
     for i, joint in enumerate(arm.joints):
         numbers = (
             errors["declared"].measured_nm[i],
             errors["declared"].rms_nm[i],
             errors["identified"].rms_nm[i],
         )
-        lines.append(f"  {joint[:16]:<16}" + "".join(f"{number:>{NUMBER}.3g}" for number in numbers))
+        lines.append(f"  {joint:<{wide}}" + "".join(f"{number:>{NUMBER}.3g}" for number in numbers))
     shown = Shown(done)
     left = noise_words(shown) if done.checked else "That is no test; a check would be."
     return [*lines, "", *textwrap.wrap(f"{torque_words(shown)} {left}", 100)]

@@ -28,7 +28,7 @@ def needs_text(found: Sequence[LawNeeds], design: NeedsDesign, width: int) -> st
     parts = []
     for needs in found:
         parts += [_head(needs, design), *_table(needs, width)]
-        parts += [f"All together: {together_words(needs)} times the declared spreads."]
+        parts += [f"All together: {together_words(needs)}."]
         parts += [*notes(needs, design), advice(needs, design)]
     parts.append(READING)
     broken = (part if "\n" in part else textwrap.fill(part, max(width, 40)) for part in parts)

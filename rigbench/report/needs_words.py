@@ -119,8 +119,10 @@ def _keeps_everywhere(alone: Alone, design: NeedsDesign) -> bool:
 
 
 def together_words(needs: LawNeeds) -> str:
-    """Say by which factor all spreads together may be scaled."""
-    return tolerated_words(needs.together.found.tolerated)
+    """Say by which factor all spreads together may be scaled, if any is known."""
+    tolerated = needs.together.found.tolerated
+    known = tolerated.high > 0 and not (tolerated.low <= 0 and math.isinf(tolerated.high))
+    return tolerated_words(tolerated) + (" times the declared spreads" if known else "")
 
 
 def notes(needs: LawNeeds, design: NeedsDesign) -> Iterator[str]:

@@ -123,10 +123,10 @@ def any_random(results: Results) -> bool:
 
 
 def arm_words(results: Results) -> str:
-    """Say which arm moves, and how."""
-    return (
-        f"Arm: {results.arm}. Motion{'s' if len(results.motions) > 1 else ''}: {', '.join(results.motions)}."
-    )
+    """Say which arm moves, what all laws believe where that is another one, and how it moves."""
+    believed = f" The laws believe {results.model}." if results.model else ""
+    motions = f"Motion{'s' if len(results.motions) > 1 else ''}: {', '.join(results.motions)}."
+    return f"Arm: {results.arm}.{believed} {motions}"
 
 
 def tolerance_words(results: Results) -> str:

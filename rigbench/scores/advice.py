@@ -52,7 +52,8 @@ def _of_sheets(results: Results) -> str:
     for sheet in results.sheets:
         groups.setdefault(_in_brief(SheetStanding(results, sheet)), []).append(sheet)
     if len(groups) == 1:
-        return f"in all {len(results.sheets)} sheets: {next(iter(groups))}"
+        count = len(results.sheets)
+        return f"in {'both' if count == 2 else f'all {count}'} sheets: {next(iter(groups))}"
     said = [f"in {_names(sheets)}: {head}" for head, sheets in list(groups.items())[:MOST]]
     rest = sum(len(sheets) for sheets in list(groups.values())[MOST:])
     return "; ".join([*said, *([f"{counted(rest, 'sheet')} more differ from these"] if rest else [])])

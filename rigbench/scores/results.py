@@ -181,7 +181,7 @@ class Results:
     ``comparisons`` are of each pair of laws at each level of all sources together. ``counted`` holds the
     draws that count in each cell that is possible, their ``worst`` the scores named by ``compared``.
     ``stop_early``: columns stop as soon as they are settled, and all shares have intervals that hold at any
-    number of draws.
+    number of draws. ``model``: the file of what all laws believe, where that is another arm.
     """
 
     title: str
@@ -204,6 +204,7 @@ class Results:
     compared: tuple[str, ...] = ()
     level_search: LevelSearch | None = None
     stop_early: bool = False
+    model: str = ""
 
     def cell(self, sheet: str, law: str, condition: str) -> Cell:
         """Return the one cell of that name; KeyError if there is none."""

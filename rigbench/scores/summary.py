@@ -44,6 +44,7 @@ def summarise(
     search: Searched | None = None,
     stop_early: bool = False,
     settled: Mapping[tuple[str, str], int] | None = None,
+    model: str = "",
 ) -> Results:
     """Return what the runs of a campaign, finished or not, show: rows, or columns where they are many.
 
@@ -53,7 +54,8 @@ def summarise(
     what they would combine can't be combined. The draws' main scores are kept for comparisons, and those
     that are named by ``also``. A ``search`` for each draw's own limit gives the tolerated levels in place of
     the ladder. Of a campaign that may ``stop_early``, ``settled`` holds after how many draws the column of a
-    sheet and condition was settled: no more of them count there.
+    sheet and condition was settled: no more of them count there. ``model`` names what all laws believe, where
+    that is another arm.
     """
     frame = Frame(tuple(sheets), tuple(laws), tuple(columns), tuple(motions))
     limited = () if tolerance is None else tolerance.limited
@@ -68,6 +70,7 @@ def summarise(
     results = Results(
         title=title,
         arm=arm,
+        model=model,
         motions=frame.motions,
         tolerance=tolerance,
         draws=draws,

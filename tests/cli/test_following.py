@@ -7,6 +7,7 @@ import signal
 import subprocess
 import sys
 from collections.abc import Callable
+from dataclasses import replace
 from pathlib import Path
 
 import pytest
@@ -31,6 +32,7 @@ def test_the_standing_in_words() -> None:
     assert shown.standing_words(STANDING) == words
     two = Standing("all at 1", (SoFar("a", 1, 2),), sheets=3)
     assert shown.standing_words(two) == "draws that keep under 'all at 1', all 3 sheets: a 1 of 2"
+    assert "under 'all at 1', both sheets: a 1" in shown.standing_words(replace(two, sheets=2))
     assert shown.standing_words(None) == ""
 
 

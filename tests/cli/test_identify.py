@@ -248,6 +248,8 @@ def test_files_of_another_kind_are_told_as_such(call: Callable[..., Result], log
     for command, file, said in (
         ("identify", experiments / "first-look.yaml", "declares an experiment; expected an identification"),
         ("check", logs / "logs.yaml", "declares an identification; expected an experiment"),
+        ("run", ARM, "declares an arm; expected an experiment (for this one see `rigbench audit`)"),
+        ("identify", ARM, "declares an arm; expected an identification"),
     ):
         result = call(command, str(file))
         assert result.exit_code == 2

@@ -169,7 +169,9 @@ def test_another_model(load: Load, folder: Path) -> None:
     """`model` names the arm file that the controllers believe."""
     text = (folder / "arm.yaml").read_text("utf-8").replace("coulomb: 3.0", "coulomb: 4.0")
     (folder / "identified.yaml").write_text(text, encoding="utf-8")
-    run = load(model="identified.yaml").sheets[0].first
+    experiment = load(model="identified.yaml")
+    run = experiment.sheets[0].first
+    assert experiment.plan().model == "identified.yaml"
     assert run.model is not None
     assert run.model.arm().drives.coulomb[0] == 4
     assert run.arm.arm().drives.coulomb[0] == 3

@@ -174,6 +174,7 @@ def test_the_model_and_the_arm_can_be_swept(load: Load, folder: Path) -> None:
     assert [sheet.first.arm.arm().drives.coulomb[0] for sheet in experiment.sheets] == [3, 4]
     experiment = swept(load, {"model": ["arm.yaml", "other.yaml"]})
     assert [s.first.model.arm().drives.coulomb[0] for s in experiment.sheets if s.first.model] == [3, 4]
+    assert experiment.model == ""  # the sheets' names say it
 
 
 def test_a_key_that_the_file_leaves_out_can_be_swept(load: Load) -> None:

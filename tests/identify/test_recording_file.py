@@ -330,6 +330,22 @@ def said_of(tmp_path, true, believed, change, v=False, motion=MOTION):
     return [str(fault) for fault in implausible(believed, GRAVITY, recording, table)]
 
 
+def test_single_spikes_of_position_are_no_fault(tmp_path, planar2):
+    """Within the joint's limits or far beyond, they are left out later; a joint that only spikes stands still."""
+
+    def spiked(factor):
+        def change(recording):
+            q = recording.q * np.array([factor, 1.0])
+            q[[200, 450, 700], 0] += np.radians([40.0, -40.0, 400.0])
+            return replace(recording, q=q)
+
+        return change
+
+    assert said_of(tmp_path, planar2, planar2, spiked(1.0)) == []
+    (said,) = said_of(tmp_path, planar2, planar2, spiked(0.0))
+    assert "joint shoulder moves by 0 deg" in said
+
+
 @pytest.mark.parametrize("what", ["q", "torque"])
 def test_both_columns_are_named_where_either_may_be_of_the_wrong_sign(tmp_path, what):
     """The mirror image of an arm with a plane of symmetry about a vertical axis turns the other way, no more."""

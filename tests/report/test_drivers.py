@@ -124,6 +124,8 @@ def test_the_table_says_what_the_numbers_do(make_results: Callable[..., Results]
         said
         == f"The tool peak of 'computed torque' under 'together 0.25' goes with payload, over 80 draws, of which {failed} fail."
     )
+    of_sheet = driver_words(replace(strip, key=("control_hz 500", *strip.key[1:])))
+    assert of_sheet == said.replace("0.25' goes", "0.25' (control_hz 500) goes")
     for width in (40, 100):
         text = driver_text(strip, width)
         assert max(map(len, text.splitlines())) <= width

@@ -6,6 +6,7 @@ import math
 from dataclasses import replace
 from itertools import combinations
 from pathlib import Path
+from types import SimpleNamespace
 
 import numpy as np
 import pytest
@@ -276,6 +277,17 @@ def test_more_than_noise_is_told(done: Identification) -> None:
     )
     assert "there is more in it, which these parameters don't explain." in printed
     assert "more than before" not in " ".join(identify_text(done).split())
+
+
+def test_long_names_of_joints_are_printed_whole(done: Identification) -> None:
+    """Two that begin alike are told apart, and the columns still stand beneath their heads."""
+    arm = done.files.arm()
+    names = ("a_joint_whose_name_is_long_1", "a_joint_whose_name_is_long_2")
+    files = SimpleNamespace(arm=lambda: replace(arm, joints=names))
+    printed = identify_text(replace(done, files=files)).splitlines()  # type: ignore[arg-type]
+    head, *rows = [line for line in printed if line.startswith(("  joint", "  a_joint"))]
+    assert [row.split()[0] for row in rows] == list(names)
+    assert {len(row) for row in rows} == {len(head)}
 
 
 @pytest.mark.parametrize("width", [8, 20, 31, 200])

@@ -60,7 +60,8 @@ def law_needs(sources: int, law: str = "computed torque", **changes: object) -> 
     )
     together = Alone(FoundLevel(LEVELS[0], 73, 0, 0), 0, True)
     values = {"points": 128, "planned": 128, "dropped": 0, "unfinished": 0, "missing": 0, "scale": "score"}
-    return LawNeeds("", law, found, together, **(values | changes))  # type: ignore[arg-type]
+    values["together"] = together
+    return LawNeeds("", law, found, **(values | changes))  # type: ignore[arg-type]
 
 
 def design_of(*found: LawNeeds, level: float = 1.0) -> NeedsDesign:
@@ -170,3 +171,17 @@ def test_text_keeps_within_the_width(width: int) -> None:
     text = needs_text([needs], design_of(needs), width)
     assert max(map(len, text.splitlines())) <= width
     assert text.count("payload") >= 3
+
+
+@pytest.mark.parametrize(
+    ("level", "said"),
+    [
+        (LEVELS[0], "All together: 0.9 (0.63 to 1.25) times the declared spreads."),
+        (LEVELS[3], "All together: not shown yet."),
+        (Tolerated(None, 0.0, 0.0), "All together: none: misses at level 0."),
+    ],
+)
+def test_all_together_is_a_multiple_only_where_one_is_known(level: Tolerated, said: str) -> None:
+    """What is not known has no unit."""
+    needs = law_needs(1, together=Alone(FoundLevel(level, 73, 0, 0), 0, True))
+    assert said in needs_text([needs], design_of(needs), 100)

@@ -187,3 +187,11 @@ def test_a_tolerated_level_takes_a_tolerance_and_levels(make_results: Callable[.
 def test_a_level_is_said_once(name: str, at: float | None, said: str) -> None:
     """A condition's head tells its level, unless its name does already or there is none."""
     assert level_words(Column(name, at, random=True, ladder=False)) == said
+
+
+def test_another_model_is_named_beside_the_arm(make_results: Callable[..., Results]) -> None:
+    """Where the laws believe another arm than the one that moves, 'nominal' is not free of mismatch."""
+    results = make_results(1, 1)
+    assert "believe" not in arm_words(results)
+    named = arm_words(replace(results, model="cad.yaml"))
+    assert named.startswith(f"Arm: {results.arm}. The laws believe cad.yaml. Motion")

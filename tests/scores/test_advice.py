@@ -234,6 +234,7 @@ def test_sheets_that_agree_are_advised_at_once() -> None:
     laws = {"frail": FRAIL, "robust": ROBUST}
     swapped = {"frail": ROBUST, "robust": FRAIL}
     assert advise(sheets_of(laws, laws, laws)).startswith("In all 3 sheets: take 'robust', which")
+    assert advise(sheets_of(laws, laws)).startswith("In both sheets: take 'robust', which")
     advice = advise(sheets_of(laws, swapped, laws))
     assert advice.startswith("In 'a' and 'c': take 'robust'")
     assert "; in 'b': take 'frail'" in advice
