@@ -20,13 +20,21 @@ __all__ = ["check", "run", "status"]
 def check(file: Experiment, as_json: Json = False) -> None:
     """Validate an experiment and print its plan, the draws it needs, an estimated time and the store's size.
 
+    Or validate an identification, its recordings included, and print what it takes.
     All faults of all its files are printed at once. A short run of each law is done to measure the time; it
     is given up after 60 s.
     """
     with telling(as_json):
-        from rigbench.cli.check import check_experiment
+        from rigbench.experiment.file_kind import IDENTIFICATION, kind_of_file
 
-        check_experiment(file, as_json)
+        if kind_of_file(file) == IDENTIFICATION:
+            from rigbench.cli.check_identification import check_identification
+
+            check_identification(file, as_json)
+        else:
+            from rigbench.cli.check import check_experiment
+
+            check_experiment(file, as_json)
 
 
 @app.command(epilog="Example: rigbench run experiments/first-look.yaml --jobs 2")

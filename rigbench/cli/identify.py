@@ -15,8 +15,10 @@ def identify_arm(path: str, output: str | None, as_json: bool) -> None:
     from rigbench.experiment.identification import load_identification
     from rigbench.identify.covariance_file import covariance_document
     from rigbench.identify.identified import write_identified, write_loaded
+    from rigbench.report.identify_numbers import Shown
     from rigbench.report.identify_picture import identify_picture
     from rigbench.report.identify_text import identify_text
+    from rigbench.report.identify_verdict import unexplained_joints, worse_joints
     from rigbench.report.load_text import load_document
 
     declared = load_identification(path)
@@ -44,6 +46,8 @@ def identify_arm(path: str, output: str | None, as_json: bool) -> None:
         load = {} if done.load is None else {"load": load_document(done.load)}
         tracks = [asdict(one) for one in done.tracked]
         told = {"files": files, "torque_error_nm": errors, "checked": checked, "tool_peak": tracks}
+        shown = Shown(done)
+        told |= {"worse_at": worse_joints(shown), "unexplained_at": unexplained_joints(shown)}
         print_json(told | base | load)
     else:
         show(identify_text(done))

@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
-from rigbench.errors import InputFaults
-from rigbench.yamlfile import Document
+from pathlib import Path
 
-__all__ = ["EXPERIMENT", "IDENTIFICATION", "check_kind"]
+from rigbench.errors import InputFaults
+from rigbench.yamlfile import Document, load, read_text
+
+__all__ = ["EXPERIMENT", "IDENTIFICATION", "check_kind", "kind_of_file"]
 
 EXPERIMENT, IDENTIFICATION, ARM = "an experiment", "an identification", "an arm"
 COMMANDS = {EXPERIMENT: "`rigbench run`", IDENTIFICATION: "`rigbench identify`", ARM: "`rigbench audit`"}
@@ -17,6 +19,11 @@ def check_kind(document: Document, wanted: str) -> None:
     if kind not in (None, wanted):
         expected = f"{wanted} (for this one see {COMMANDS[kind]})"
         raise InputFaults.one(document.file, "", f"declares {kind}", expected)
+
+
+def kind_of_file(file: str) -> str | None:
+    """Return what a file declares; None where its keys don't tell. InputFaults if it is no YAML."""
+    return _kind_of(load(file, read_text(Path(file), file, "the experiment file")))
 
 
 def _kind_of(document: Document) -> str | None:

@@ -11,7 +11,15 @@ from rigbench.report.cautions import BEFORE_A_REAL_ARM, CAUTION
 from rigbench.report.identify_numbers import Shown
 from rigbench.report.words import figure
 
-__all__ = ["caution_words", "known_words", "left_words", "noise_words", "torque_words"]
+__all__ = [
+    "caution_words",
+    "known_words",
+    "left_words",
+    "noise_words",
+    "torque_words",
+    "unexplained_joints",
+    "worse_joints",
+]
 
 MUCH_LEFT = 1.5
 """Times the noise from which on what is left on another motion is more than noise (our choice: chance
@@ -29,10 +37,9 @@ def torque_words(shown: Shown) -> str:
         f"Predicted torques were off by {_range(before)} % of how much they vary; with the identified arm it "
         f"is {_range(after)} %"
     )
-    worse = shown.errors["identified"].rms_nm > shown.errors["declared"].rms_nm
-    if not worse.any():
+    if not (worse := worse_joints(shown)):
         return f"{said}."
-    return f"{said}, but more than before at {_names(shown, worse)}: don't use this arm before you know why."
+    return f"{said}, but more than before at {_names(worse)}: don't use this arm before you know why."
 
 
 def left_words(shown: Shown) -> str:
@@ -48,10 +55,20 @@ def noise_words(shown: Shown) -> str:
     """Say whether what is left on a motion that was not fitted is noise."""
     times = shown.errors["identified"].rms_nm / shown.done.found.noise
     said = f"What is left is {_range(times)} times the noise of the fit"
-    much = times > MUCH_LEFT
-    if not much.any():
+    if not (much := unexplained_joints(shown)):
         return f"{said}."
-    return f"{said}: at {_names(shown, much)} there is more in it, which these parameters don't explain."
+    return f"{said}: at {_names(much)} there is more in it, which these parameters don't explain."
+
+
+def worse_joints(shown: Shown) -> list[str]:
+    """Name the joints whose torques the identified arm predicts worse than the declared one."""
+    return _joints(shown, shown.errors["identified"].rms_nm > shown.errors["declared"].rms_nm)
+
+
+def unexplained_joints(shown: Shown) -> list[str]:
+    """Name the joints at which more than noise is left of a motion that was not fitted."""
+    times = shown.errors["identified"].rms_nm / shown.done.found.noise
+    return _joints(shown, times > MUCH_LEFT) if shown.done.checked else []
 
 
 def known_words(shown: Shown) -> str:
@@ -75,8 +92,11 @@ def caution_words(shown: Shown) -> str:
     return BEFORE_A_REAL_ARM if shown.done.truth is None else f"{CAUTION} {BEFORE_A_REAL_ARM}"
 
 
-def _names(shown: Shown, which: NDArray[bool_]) -> str:
-    names = [name for name, is_one in zip(shown.joints, which, strict=True) if is_one]
+def _joints(shown: Shown, which: NDArray[bool_]) -> list[str]:
+    return [name for name, is_one in zip(shown.joints, which, strict=True) if is_one]
+
+
+def _names(names: list[str]) -> str:
     more = len(names) - MOST_NAMES
     return ", ".join(names[:MOST_NAMES]) + (f" and {more} more" if more > 0 else "")
 

@@ -75,6 +75,7 @@ def test_practice_finds_the_hidden_machine(call: Callable[..., Result], tmp_path
     assert result.exit_code == 0, result.stderr
     done = json.loads(result.stdout)
     assert done["checked"] is True
+    assert (done["worse_at"], done["unexplained_at"]) == ([], [])
     for joint, before in done["torque_error_nm"]["declared"].items():
         assert 10 * done["torque_error_nm"]["identified"][joint] < before
     assert all(Path(file).stat().st_size > 100 for file in done["files"].values())
@@ -242,12 +243,28 @@ def test_a_folder_that_cannot_be_is_the_disks_fault(call: Callable[..., Result],
     assert "can't be written" in result.stderr
 
 
+def test_an_identification_can_be_checked_before_it_is_done(call: Callable[..., Result], logs: Path) -> None:
+    """`check` reads and judges recordings, or says what practice takes, and searches nothing; faults are told as ever."""
+    told = call("check", str(logs / "logs.yaml"))
+    assert told.exit_code == 0, told.stderr
+    assert "logs.yaml: in order" in told.stdout
+    assert "recordings: " in told.stdout
+    assert "a.csv, 12001 rows in 12 s" in told.stdout
+    (logs / "practise.yaml").write_text(TRACKED)
+    document = json.loads(call("check", str(logs / "practise.yaml"), "--json").stdout)
+    assert (document["practice"], document["recordings"], document["motions"]) == (True, [], ["reach"])
+    said = call("check", str(logs / "practise.yaml")).stdout
+    assert "excitation: 5 harmonics, 3 times 4 s, from at most 10 rounds of search" in said
+    (logs / "a.csv").write_text("t_s,q_deg.shoulder\n")
+    assert call("check", str(logs / "logs.yaml")).exit_code == 2
+
+
 def test_files_of_another_kind_are_told_as_such(call: Callable[..., Result], logs: Path) -> None:
     """One fault that says what the file is and which command takes it; empty files too."""
     experiments = ARM.parents[2] / "experiments"
     for command, file, said in (
         ("identify", experiments / "first-look.yaml", "declares an experiment; expected an identification"),
-        ("check", logs / "logs.yaml", "declares an identification; expected an experiment"),
+        ("run", logs / "logs.yaml", "declares an identification; expected an experiment"),
         ("run", ARM, "declares an arm; expected an experiment (for this one see `rigbench audit`)"),
         ("identify", ARM, "declares an arm; expected an identification"),
     ):
