@@ -15,9 +15,9 @@ from functools import cached_property, lru_cache
 import numpy as np
 
 from rigbench.arm.arm import Arm, Floats
-from rigbench.arm.bounded_fit import bounded_fit
 from rigbench.arm.log_cholesky import Coordinates
-from rigbench.arm.vector import LINK, vector_of, with_vector
+from rigbench.arm.nearest_parameters import nearest_parameters
+from rigbench.arm.vector import vector_of, with_vector
 from rigbench.arm.whitening import floored, whitening
 
 __all__ = ["FARTHEST", "Knowledge", "deviations", "known_arm"]
@@ -49,6 +49,9 @@ class Knowledge:
         """A digest (hex, 40 digits) of all of it."""
         whole = [getattr(self, field.name) for field in fields(self)]
         return hashlib.blake2b(json.dumps(whole).encode(), digest_size=20).hexdigest()
+
+    def __hash__(self) -> int:
+        return hash(self.digest)  # each run looks machines up by it; thousands of numbers are hashed once
 
 
 def deviations(u: Floats) -> Floats:
@@ -82,17 +85,6 @@ def _known_arm(arm: Arm, knowledge: Knowledge, departure: Row) -> Arm:
     shift = np.array(departure)
     size = max(1.0, float(np.sqrt(np.mean(shift**2))))
     target = combination @ origin + np.linalg.cholesky(covariance) @ shift
-    whitened, hold = whitening(covariance * size**2), np.eye(len(origin))
-
-    def misfit(z: Floats) -> Floats:
-        return np.concatenate([whitened(combination @ about.values(z) - target), z])
-
-    def slope(z: Floats) -> Floats:
-        return np.vstack([whitened(combination @ about.slope(z)), hold])
-
-    links = LINK * arm.n
-    least = np.full(len(origin), -np.inf)
-    least[links:] = -origin[links:] / scales
-    values = about.values(bounded_fit(misfit, slope, least, 1e-9))
-    values[links:] = np.maximum(values[links:], 0.0)
+    whitened, held = whitening(covariance * size**2), np.ones(len(origin))
+    values = nearest_parameters(about, combination, target, whitened, held, len(scales), 1e-9)
     return with_vector(arm, values, knowledge.terms)

@@ -9,7 +9,7 @@ import numpy as np
 
 from rigbench.arm.arm import PARAMETERS, Arm, Floats
 
-__all__ = ["LINK", "vector_of", "with_vector"]
+__all__ = ["LINK", "vector_labels", "vector_of", "with_vector"]
 
 LINK = len(PARAMETERS)
 """Parameters of a link."""
@@ -29,6 +29,12 @@ def vector_of(arm: Arm, terms: Sequence[str]) -> Floats:
         "offset": np.zeros(arm.n),
     }
     return np.concatenate([arm.parameters.ravel(), *(own[name] for name in terms)])
+
+
+def vector_labels(links: Sequence[str], joints: Sequence[str], terms: Sequence[str]) -> tuple[str, ...]:
+    """Name the entries of a vector: 'Ixx.<link>' and so on, then '<term>.<joint>'."""
+    bodies = [f"{name}.{link}" for link in links for name in PARAMETERS]
+    return (*bodies, *(f"{term}.{joint}" for term in terms for joint in joints))
 
 
 def with_vector(arm: Arm, vector: Floats, terms: Sequence[str]) -> Arm:

@@ -9,7 +9,7 @@ import typer
 from rigbench import __version__
 from rigbench.cli.usage import Commands
 
-__all__ = ["Experiment", "Json", "StoreFile", "app"]
+__all__ = ["ArmFile", "Experiment", "Json", "Picture", "StoreFile", "app"]
 
 app = typer.Typer(
     name="rigbench",
@@ -25,7 +25,9 @@ app = typer.Typer(
 )
 
 Experiment = Annotated[str, typer.Argument(metavar="FILE", help="the experiment file (YAML)")]
+ArmFile = Annotated[str, typer.Argument(metavar="ARM", help="the arm file (YAML)")]
 StoreFile = Annotated[str, typer.Argument(metavar="STORE", help="the store that 'run' filled")]
+Picture = Annotated[str | None, typer.Option("--output", "-o", help="draw it too: a .png, .svg or .pdf file")]
 Json = Annotated[
     bool, typer.Option("--json", help="print the result, or the faults, as one JSON document on stdout")
 ]

@@ -47,16 +47,12 @@ def _recorded(declared: DeclaredIdentification) -> Iterator[str]:
     for what, recordings in (groups | {"check": check}).items():
         for recording in recordings:
             rows = counted(len(recording.t), "row")
-            yield f"{what}: {recording.name}, {rows} in {_seconds(recording):.4g} s"
-
-
-def _seconds(recording: Recording) -> float:
-    return float(recording.t[-1] - recording.t[0])
+            yield f"{what}: {recording.name}, {rows} in {recording.duration_s:.4g} s"
 
 
 def _document(declared: DeclaredIdentification, count: int) -> dict[str, object]:
     def told(recordings: tuple[Recording, ...]) -> list[dict[str, object]]:
-        return [{"file": r.name, "rows": len(r.t), "seconds": _seconds(r)} for r in recordings]
+        return [{"file": r.name, "rows": len(r.t), "seconds": r.duration_s} for r in recordings]
 
     return {
         "file": declared.path,

@@ -36,9 +36,10 @@ def identify_arm(path: str, output: str | None, as_json: bool) -> None:
     files |= dict(zip(("loaded arm", "loaded urdf"), map(str, loaded), strict=False))
     files["picture"] = str(picture)
     if as_json:
+        shown = Shown(done)
         errors = {
-            whose: dict(zip(done.files.arm().joints, error.rms_nm.tolist(), strict=True))
-            for whose, error in done.torque_errors.items()
+            whose: dict(zip(shown.joints, error.rms_nm.tolist(), strict=True))
+            for whose, error in shown.errors.items()
         }
         known = covariance_document(done.result, terms, done.found)
         condition, checked = done.found.condition, done.checked
@@ -46,7 +47,6 @@ def identify_arm(path: str, output: str | None, as_json: bool) -> None:
         load = {} if done.load is None else {"load": load_document(done.load)}
         tracks = [asdict(one) for one in done.tracked]
         told = {"files": files, "torque_error_nm": errors, "checked": checked, "tool_peak": tracks}
-        shown = Shown(done)
         told |= {"worse_at": worse_joints(shown), "unexplained_at": unexplained_joints(shown)}
         print_json(told | base | load)
     else:

@@ -10,7 +10,7 @@ from typing import Annotated
 
 import typer
 
-from rigbench.cli.app import Json, app
+from rigbench.cli.app import ArmFile, Json, Picture, app
 from rigbench.cli.output import telling
 
 __all__ = ["audit", "demo", "gears", "identify", "laws", "schema"]
@@ -18,11 +18,8 @@ __all__ = ["audit", "demo", "gears", "identify", "laws", "schema"]
 
 @app.command(epilog="Example: rigbench audit robots_demo/tray6/arm.yaml -o audit.png")
 def audit(
-    arm: Annotated[str, typer.Argument(metavar="ARM", help="the arm file (YAML)")],
-    output: Annotated[
-        str | None,
-        typer.Option("--output", "-o", help="draw it too: a .png, .svg or .pdf file"),
-    ] = None,
+    arm: ArmFile,
+    output: Picture = None,
     as_json: Json = False,
 ) -> None:
     """Show whether engine and model agree on an arm, and which physics_hz it needs.
@@ -37,7 +34,7 @@ def audit(
 
 @app.command(epilog="Example: rigbench gears robots_demo/tray6/arm.yaml --ratios 1,10,50,100 -o gears.png")
 def gears(
-    arm: Annotated[str, typer.Argument(metavar="ARM", help="the arm file (YAML)")],
+    arm: ArmFile,
     ratios: Annotated[
         str | None,
         typer.Option(metavar="1,10,50", help="gear ratios, split by commas; from 1 to 200 if left out"),
@@ -52,10 +49,7 @@ def gears(
             metavar="SECONDS", help="time of the motion's leg; half of the speed limits is taken if left out"
         ),
     ] = None,
-    output: Annotated[
-        str | None,
-        typer.Option("--output", "-o", help="draw it too: a .png, .svg or .pdf file"),
-    ] = None,
+    output: Picture = None,
     as_json: Json = False,
 ) -> None:
     """Show what each gear ratio does to inertia, disturbance, damping and tracking, and what it costs.

@@ -10,7 +10,7 @@ from typing import Annotated
 
 import typer
 
-from rigbench.cli.app import Json, StoreFile, app
+from rigbench.cli.app import Json, Picture, StoreFile, app
 from rigbench.cli.output import telling
 
 __all__ = ["export", "gains", "gate", "matrix", "needs", "report", "trace", "worst"]
@@ -229,10 +229,7 @@ def trace(
 def needs(
     store: StoreFile,
     law: Annotated[str | None, typer.Option(help="of this law alone")] = None,
-    output: Annotated[
-        str | None,
-        typer.Option("--output", "-o", help="draw it too: a .png, .svg or .pdf file"),
-    ] = None,
+    output: Picture = None,
     as_json: Json = False,
 ) -> None:
     """Show which sources of mismatch must be known, and how well.
@@ -249,10 +246,7 @@ def needs(
 @app.command(epilog="Example: rigbench worst results/best-gains.sqlite -o worst.png")
 def worst(
     store: StoreFile,
-    output: Annotated[
-        str | None,
-        typer.Option("--output", "-o", help="draw it too: a .png, .svg or .pdf file"),
-    ] = None,
+    output: Picture = None,
     as_json: Json = False,
 ) -> None:
     """Print the worst machines found within the mismatch, and from which level on a law was found to miss.

@@ -9,8 +9,8 @@ import numpy as np
 import scipy.linalg
 from numpy.typing import NDArray
 
-from rigbench.arm.arm import PARAMETERS, PRISMATIC, Arm, Floats
-from rigbench.arm.vector import LINK
+from rigbench.arm.arm import PRISMATIC, Arm, Floats
+from rigbench.arm.vector import LINK, vector_labels
 from rigbench.errors import InputFaults
 from rigbench.identify.regressor import LINKS_ALONE, Terms, parameter_labels, regressor
 
@@ -89,7 +89,7 @@ def base_of_load(arm: Arm, gravity: tuple[float, float, float]) -> Base:
     What torques tell of it with the arm known. Its parameters are in the last link's frame, so its columns
     of the regressor are those of the last link. The rest as in :func:`base_of`.
     """
-    labels = tuple(f"{name}.load" for name in PARAMETERS)
+    labels = vector_labels(("load",), (), ())
     y = _random_states(arm, gravity, LINKS_ALONE)[:, -LINK:]
     return _base(arm.name, labels, y, _order(arm, LINKS_ALONE)[-LINK:])
 

@@ -8,8 +8,8 @@ import numpy as np
 import scipy.linalg
 
 from rigbench.arm.arm import Arm, Floats
-from rigbench.arm.bounded_fit import bounded_fit
 from rigbench.arm.log_cholesky import Coordinates
+from rigbench.arm.nearest_parameters import nearest_parameters
 from rigbench.arm.vector import LINK, with_vector
 from rigbench.arm.whitening import floored, whitening
 from rigbench.identify.estimate import Estimate
@@ -74,19 +74,11 @@ def consistent(
     about = Coordinates(declared, links // LINK, scales)
     size = np.abs(combination) @ np.abs(declared) + np.abs(found.values)
     whitened = whitening(floored(found.covariance, size))
-
-    def misfit(z: Floats) -> Floats:
-        return np.concatenate([whitened(combination @ about.values(z) - found.values), z / spreads])
-
-    def slope(z: Floats) -> Floats:
-        return np.vstack([whitened(combination @ about.slope(z)), np.diag(1 / spreads)])
-
     drive_terms = [name for name in terms.names if name != "offset"]
     end = links + arm.n * len(drive_terms)
-    least = np.full(len(declared), -np.inf)
-    least[links:end] = -declared[links:end] / scales[: end - links]
-    values = about.values(bounded_fit(misfit, slope, least, 1e-12, MOST_STEPS))
-    values[links:end] = np.maximum(values[links:end], 0.0)
+    values = nearest_parameters(
+        about, combination, found.values, whitened, spreads, end - links, 1e-12, MOST_STEPS
+    )
     seen = whitened(combination @ Coordinates(values, links // LINK, scales).slope(np.zeros(len(values))))
     kept = np.delete(np.arange(len(values)), np.s_[own:links])
     return Consistent(

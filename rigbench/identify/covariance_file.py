@@ -10,10 +10,10 @@ from typing import Annotated, Any, Literal
 import numpy as np
 from pydantic import Field
 
-from rigbench.arm.arm import PARAMETERS, PRISMATIC, Arm, Floats
+from rigbench.arm.arm import PRISMATIC, Arm, Floats
 from rigbench.arm.knowledge import Knowledge
 from rigbench.arm.log_cholesky import Coordinates
-from rigbench.arm.vector import LINK, vector_of
+from rigbench.arm.vector import LINK, vector_labels, vector_of
 from rigbench.errors import Fault, InputFaults, nearest
 from rigbench.identify.consistent import Consistent
 from rigbench.identify.estimate import Estimate
@@ -156,7 +156,7 @@ def _of_another_arm(file: str, keys: CovarianceKeys, arm: Arm) -> Iterator[Fault
 
 def _misfits(file: str, keys: CovarianceKeys) -> Iterator[Fault]:
     """Yield what doesn't fit together in a file of the right links and joints."""
-    labels = _labels(keys)
+    labels = vector_labels(keys.links, keys.joints, keys.terms)
     drives, b = len(keys.joints) * len(keys.terms), len(keys.base)
     for name, count in (("values", len(labels)), ("scales", drives), ("covariance", b)):
         if len(getattr(keys, name)) != count:
@@ -185,12 +185,6 @@ def _misfits(file: str, keys: CovarianceKeys) -> Iterator[Fault]:
         yield Fault(file, None, "covariance", problem, "positive definite")
 
 
-def _labels(keys: CovarianceKeys) -> tuple[str, ...]:
-    """Name the parameters that the file is about, in the order of ``values``."""
-    links = [f"{name}.{link}" for link in keys.links for name in PARAMETERS]
-    return (*links, *(f"{term}.{joint}" for term in keys.terms for joint in keys.joints))
-
-
 def _firsts(keys: CovarianceKeys) -> list[str]:
     """Return the parameter that each sum is called by."""
     return [next(iter(base.of)) for base in keys.base]
@@ -198,8 +192,8 @@ def _firsts(keys: CovarianceKeys) -> list[str]:
 
 def _knowledge(keys: CovarianceKeys) -> Knowledge:
     """Return what is known of all but offsets."""
-    labels = [label for label in _labels(keys) if not label.startswith("offset.")]
     terms = tuple(term for term in keys.terms if term != "offset")
+    labels = vector_labels(keys.links, keys.joints, terms)
     firsts = _firsts(keys)
     kept = [i for i, first in enumerate(firsts) if not first.startswith("offset.")]
     return Knowledge(

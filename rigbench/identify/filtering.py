@@ -153,7 +153,7 @@ def rows_of(
         )
     least = 2 * TRIM / corner_hz + 1 / (KEPT * corner_hz)
     if len(recording.t) <= least * rate + 1:
-        problem = f"{recording.t[-1] - recording.t[0]:.3g} s are too short for a filter at {corner_hz:g} Hz"
+        problem = f"{recording.duration_s:.3g} s are too short for a filter at {corner_hz:g} Hz"
         raise InputFaults.one(recording.name, "t_s", problem, f"more than {least:g} s")
     every = max(1, int(rate / (DENSE * corner_hz)))
     columns = [x for x in (recording.q, recording.torque, recording.v) if x is not None]

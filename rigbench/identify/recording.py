@@ -26,9 +26,14 @@ class Recording:
     torque: Floats  # (N, n) [N m or N]
 
     @property
+    def duration_s(self) -> float:
+        """Time from the first sample to the last [s]."""
+        return float(self.t[-1] - self.t[0])
+
+    @property
     def rate_hz(self) -> float:
         """Samples a second [Hz]."""
-        return (len(self.t) - 1) / float(self.t[-1] - self.t[0])
+        return (len(self.t) - 1) / self.duration_s
 
 
 def of_run(

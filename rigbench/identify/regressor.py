@@ -7,10 +7,10 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from rigbench.arm.arm import PARAMETERS, Arm, Floats
+from rigbench.arm.arm import Arm, Floats
 from rigbench.arm.dynamics import newton_euler, place
 from rigbench.arm.kernel import kernel
-from rigbench.arm.vector import vector_of
+from rigbench.arm.vector import vector_labels, vector_of
 
 __all__ = ["LINKS_ALONE", "Terms", "link_regressor", "parameter_labels", "parameter_values", "regressor"]
 
@@ -86,8 +86,7 @@ def regressor(
 
 def parameter_labels(arm: Arm, terms: Terms) -> tuple[str, ...]:
     """Name the parameters: 'Ixx.<link>' and so on, then '<term>.<joint>'."""
-    links = [f"{name}.{link}" for link in arm.links for name in PARAMETERS]
-    return (*links, *(f"{name}.{joint}" for name in terms.names for joint in arm.joints))
+    return vector_labels(arm.links, arm.joints, terms.names)
 
 
 def parameter_values(arm: Arm, terms: Terms) -> Floats:

@@ -43,45 +43,39 @@ def _head(done: Identification) -> list[str]:
 
 def _torques(done: Identification) -> list[str]:
     """One line a joint: how much its torque varies, and what is left of it; then what to make of that."""
-    errors = done.torque_errors
+    shown = Shown(done)
+    errors = shown.errors
     of = "a motion that was not fitted" if done.checked else "the motion that was fitted"
     lines = [f"Error of predicted torques, rms [N m; N], on {of} ({done.rows.name})", ""]
-    arm = done.files.arm()
-    wide = max(16, *map(len, arm.joints))
+    wide = max(16, *map(len, shown.joints))
     lines.append(
         f"  {'joint':<{wide}}"
         + "".join(f"{word:>{NUMBER}}" for word in ("varies by", "declared", "identified"))
     )
-    for i, joint in enumerate(arm.joints):
+    for i, joint in enumerate(shown.joints):
         numbers = (
             errors["declared"].measured_nm[i],
             errors["declared"].rms_nm[i],
             errors["identified"].rms_nm[i],
         )
         lines.append(f"  {joint:<{wide}}" + "".join(f"{number:>{NUMBER}.3g}" for number in numbers))
-    shown = Shown(done)
     left = noise_words(shown) if done.checked else "That is no test; a check would be."
     return [*lines, "", *textwrap.wrap(f"{torque_words(shown)} {left}", 100)]
 
 
 def _parameters(done: Identification) -> list[str]:
     """One line a base parameter: declared, estimated with its interval, identified and, if known, true."""
-    low, high = done.found.interval()
-    words = ["declared", "estimate", "+-", "identified", *(["true"] if done.true_values is not None else [])]
+    found, true = done.found, done.true_values
+    low, high = found.interval()
+    words = ["declared", "estimate", "+-", "identified", *([] if true is None else ["true"])]
     lines = [
         "Base parameters [SI units], estimate with its 95 % interval; identified: of the arm that can exist",
         "",
     ]
     lines.append("  " + "".join(f"{word:>{NUMBER}}" for word in words))
-    for i, name in enumerate(done.found.base.names):
-        numbers = [
-            done.declared_values[i],
-            done.found.values[i],
-            (high[i] - low[i]) / 2,
-            done.identified_values[i],
-        ]
-        if done.true_values is not None:
-            numbers.append(done.true_values[i])
+    columns = [done.declared_values, found.values, (high - low) / 2, done.identified_values]
+    columns += [] if true is None else [true]
+    for name, *numbers in zip(found.base.names, *columns, strict=True):
         lines.append("  " + "".join(f"{number:>{NUMBER}.4g}" for number in numbers) + f"  {name}")
     return lines
 
