@@ -49,6 +49,12 @@ def build_arm(
     )
 
 
+@pytest.fixture(scope="session")
+def built() -> Callable[..., Arm]:
+    """:func:`build_arm`, for the conftest files of folders."""
+    return build_arm
+
+
 def bar(mass: float, cog: float, inertia: float) -> np.ndarray:
     """Ten parameters of a bar along -z with its centre of gravity ``cog`` below the joint.
 

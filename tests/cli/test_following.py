@@ -66,17 +66,8 @@ def test_the_bar_at_a_terminal(at_terminal: Callable[..., object], trial_text: s
     assert "'rigbench run trial.yaml' goes on from here" in terminal.said
 
 
-def test_watching_until_it_is_complete(
-    call: Callable[..., Result],
-    run_here: Callable[..., Result],
-    trial_text: str,
-    trial: Path,
-    monkeypatch: pytest.MonkeyPatch,
-) -> None:
-    """Not at a terminal: a line whenever runs were stored, then the status as it is in the end."""
-    monkeypatch.setattr(watch, "LINE_EVERY_S", 0.2)
-    trial.write_text(trial_text.replace("draws: 3", "draws: 80"), encoding="utf-8")
-    run_here("trial.yaml", "--draws", "1")
+def watched_campaign(call: Callable[..., Result]) -> Result:
+    """Run trial.yaml to its end in a process of its own, watched by `status --watch`."""
     campaign = subprocess.Popen(
         [sys.executable, "-m", "rigbench", "run", "trial.yaml", "--jobs", "0"],
         stdout=subprocess.DEVNULL,
@@ -88,6 +79,21 @@ def test_watching_until_it_is_complete(
     finally:
         campaign.kill()
         campaign.wait(timeout=60)
+    return watched
+
+
+def test_watching_until_it_is_complete(
+    call: Callable[..., Result],
+    run_here: Callable[..., Result],
+    trial_text: str,
+    trial: Path,
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:
+    """Not at a terminal: a line whenever runs were stored, then the status as it is in the end."""
+    monkeypatch.setattr(watch, "LINE_EVERY_S", 0.2)
+    trial.write_text(trial_text.replace("draws: 3", "draws: 80"), encoding="utf-8")
+    run_here("trial.yaml", "--draws", "1")
+    watched = watched_campaign(call)
     assert watched.exit_code == 0
     lines = [line for line in watched.stdout.splitlines() if " of 162 runs done, 0 failed. " in line]
     assert lines[-1].startswith("162 of 162 runs done, 0 failed. Take 'computed torque'")
@@ -114,17 +120,7 @@ def test_watching_until_its_studies_are_finished(
     assert json.loads(call("status", "results/trial.sqlite", "--json").stdout)["notes"] == [
         "Not finished: find_level."
     ]
-    campaign = subprocess.Popen(
-        [sys.executable, "-m", "rigbench", "run", "trial.yaml", "--jobs", "0"],
-        stdout=subprocess.DEVNULL,
-        stderr=subprocess.DEVNULL,
-    )
-    try:
-        watched = call("status", "results/trial.sqlite", "--watch")
-        assert campaign.wait(timeout=60) == 0
-    finally:
-        campaign.kill()
-        campaign.wait(timeout=60)
+    watched = watched_campaign(call)
     first, *_, last = [line for line in watched.stdout.splitlines() if "8 of 8 runs done, 0 failed. " in line]
     assert first.endswith("Not finished: find_level.")
     assert "Not finished" not in last

@@ -170,17 +170,21 @@ LOADED_FAULTS = {
 }  # fmt: skip
 
 
-@pytest.mark.parametrize("fault", LOADED_FAULTS)
-def test_faults_about_loads(call: Callable[..., Result], loaded_logs: Path, fault: str) -> None:
-    """Each is told with its place, and ends with exit code 2."""
-    old, new, said = LOADED_FAULTS[fault]
-    path = loaded_logs / "logs.yaml"
+def check_fault(call: Callable[..., Result], folder: Path, old: str, new: str, said: str) -> None:
+    """With ``new`` in place of ``old`` in the folder's logs.yaml there is a fault that says so, and exit code 2."""
+    path = folder / "logs.yaml"
     assert old in path.read_text()
     path.write_text(path.read_text().replace(old, new))
-    result = call("identify", str(path), "-o", str(loaded_logs / "out"))
+    result = call("identify", str(path), "-o", str(folder / "out"))
     assert result.exit_code == 2
     assert said in result.stderr
     assert "Traceback" not in result.stderr
+
+
+@pytest.mark.parametrize("fault", LOADED_FAULTS)
+def test_faults_about_loads(call: Callable[..., Result], loaded_logs: Path, fault: str) -> None:
+    """Each is told with its place, and ends with exit code 2."""
+    check_fault(call, loaded_logs, *LOADED_FAULTS[fault])
 
 
 FAULTS = {
@@ -207,14 +211,7 @@ FAULTS = {
 @pytest.mark.parametrize("fault", FAULTS)
 def test_faults_of_the_file(call: Callable[..., Result], logs: Path, fault: str) -> None:
     """Each is told with the file's name, and ends with exit code 2."""
-    old, new, said = FAULTS[fault]
-    path = logs / "logs.yaml"
-    assert old in path.read_text()
-    path.write_text(path.read_text().replace(old, new))
-    result = call("identify", str(path), "-o", str(logs / "out"))
-    assert result.exit_code == 2
-    assert said in result.stderr
-    assert "Traceback" not in result.stderr
+    check_fault(call, logs, *FAULTS[fault])
 
 
 def test_a_bad_recording_is_named_with_line_and_column(call: Callable[..., Result], logs: Path) -> None:

@@ -35,13 +35,6 @@ ROBOTS = Path(__file__).resolve().parents[2] / "robots_demo"
 PLANAR2 = ArmFiles.read(ROBOTS / "planar2" / "arm.yaml")
 LINKS = Terms(rotor=False, viscous=False, coulomb=False)
 MOTION = FourierMotion((0.2, -0.3), ((0.9, -0.45), (-0.7, 0.35)), ((0.4, -0.1), (0.8, -0.2)), 4.0, 4)
-TRAY6_MOTION = FourierMotion(
-    centre=(0.0, -0.9, 1.0, 0.1, 0.5, -0.2),
-    sine=((0.9, -0.45), (0.5, -0.25), (0.6, -0.3), (0.5, -0.25), (-0.7, 0.35), (0.9, -0.45)),
-    cosine=((0.4, -0.1), (-0.4, 0.1), (0.5, -0.125), (-0.8, 0.2), (0.4, -0.1), (0.8, -0.2)),
-    period_s=4.0,
-    periods=2,
-)
 BODY = from_inertia(2.3, np.array([0.12, -0.03, 0.05]), np.diag([0.02, 0.03, 0.04]) + 0.002)
 """A load that is no point, in the last link's frame."""
 
@@ -347,27 +340,32 @@ def test_the_loaded_arm_reads_back(tmp_path):
         write_loaded(tmp_path, "b", PLANAR2.with_drives([("all", "viscous", 1.0)]), LINKS, done.loaded_arm)
 
 
-def said_of(path, true, believed, change=lambda recording: recording):
+@pytest.fixture
+def said_of(tmp_path, tray6_motion):
     """What is said of a recording with a load, of ``true`` after ``change``, beside the believed arm."""
-    motion = MOTION if true.n == 2 else TRAY6_MOTION
-    t = np.arange(0, motion.duration_s, 1 / 500)
-    q, v, a = motion.reference(t)
-    torque = formula_torque(true, q, v, a) + 0.1 * np.random.default_rng(0).normal(size=q.shape)
-    write_recording(path / "full.csv", believed, change(Recording("made", t, q, None, torque)))
-    recording, table = read_recording(path / "full.csv", believed)
-    return [str(fault) for fault in implausible(believed, GRAVITY, recording, table)]
+
+    def said(true, believed, change=lambda recording: recording):
+        motion = MOTION if true.n == 2 else tray6_motion
+        t = np.arange(0, motion.duration_s, 1 / 500)
+        q, v, a = motion.reference(t)
+        torque = formula_torque(true, q, v, a) + 0.1 * np.random.default_rng(0).normal(size=q.shape)
+        write_recording(tmp_path / "full.csv", believed, change(Recording("made", t, q, None, torque)))
+        recording, table = read_recording(tmp_path / "full.csv", believed)
+        return [str(fault) for fault in implausible(believed, GRAVITY, recording, table)]
+
+    return said
 
 
-def test_a_load_makes_no_good_log_implausible(tmp_path, planar2, tray6):
+def test_a_load_makes_no_good_log_implausible(said_of, planar2, tray6):
     """4 kg at the tool of an arm of 6 kg, whose elbow then needs several times the torque; and 3 kg at that of
     tray6, whose masses are 1.4 times and whose friction is not in the model at all."""
     heavy = carrying(planar2, from_inertia(4.0, np.array([0.4, 0, 0.1]), np.zeros((3, 3))))
-    assert said_of(tmp_path, heavy, planar2) == []
-    assert said_of(tmp_path, heavy.replaced(1.4 * heavy.parameters), planar2) == []
+    assert said_of(heavy, planar2) == []
+    assert said_of(heavy.replaced(1.4 * heavy.parameters), planar2) == []
     nothing = {name: np.zeros(6) for name in ("viscous", "coulomb", "static")}
     poor = tray6.replaced(drives=replace(tray6.drives, **nothing))
     laden = carrying(tray6.replaced(1.4 * tray6.parameters), 1.3 * BODY)
-    assert said_of(tmp_path, laden, poor) == []
+    assert said_of(laden, poor) == []
 
 
 SLIPS = {
@@ -381,10 +379,10 @@ SLIPS = {
     ("arm", "slip"),
     [("planar2", "torques in N mm"), ("planar2", "torques swapped"), *(("tray6", s) for s in SLIPS)],
 )
-def test_slips_are_still_named_with_a_load(request, tmp_path, arm, slip):
+def test_slips_are_still_named_with_a_load(request, said_of, arm, slip):
     """A load is no excuse for a wrong unit: no load that the arm might carry explains it."""
     believed, (change, expected) = request.getfixturevalue(arm), SLIPS[slip]
-    assert re.search(expected, "\n".join(said_of(tmp_path, carrying(believed, BODY), believed, change)))
+    assert re.search(expected, "\n".join(said_of(carrying(believed, BODY), believed, change)))
 
 
 def test_a_load_is_hardly_held_to_its_first_guess(tray6):
